@@ -1,0 +1,84 @@
+"""One property of the material as it stands on the sheet."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import NDArray
+
+Floats = NDArray[np.float64]
+
+
+@dataclass(frozen=True)
+class Property:
+    """A property with its uncertainty, method and window.
+
+    Attributes
+    ----------
+    name
+        Stable name, for example ``youngs_modulus``.
+    symbol
+        The standard's symbol, for example ``E``, ``Rp0.2``.
+    value
+        Value in `unit`; NaN where it could not be determined (the reason stands in `notes`).
+    unit
+        Internal unit (``MPa`` or empty).
+    standard_uncertainty
+        Standard uncertainty in `unit`.
+    method
+        The method in words, with the standard that it follows.
+    window
+        Bounds of the data used, with their meaning, for example ``{"strain": (0.0005, 0.0025)}``.
+    notes
+        What was assumed or left out, a sentence each.
+    contributions
+        Standard uncertainty contributions in `unit` by source; their root sum of squares is
+        `standard_uncertainty`.
+    """
+
+    name: str
+    symbol: str
+    value: float
+    unit: str
+    standard_uncertainty: float
+    method: str
+    window: dict[str, tuple[float, float]] = field(default_factory=dict)
+    notes: tuple[str, ...] = ()
+    contributions: dict[str, float] = field(default_factory=dict)
+
+
+@dataclass(frozen=True)
+class Curve:
+    """Stress and strain at the same instants: what all properties are read from.
+
+    Attributes
+    ----------
+    time_s
+        Instants on the machine's clock, s, shape (n,).
+    force_N, stress_MPa
+        Force and nominal stress (force over original section).
+    axial, transverse
+        Engineering strains.
+    u_axial, u_transverse
+        Standard uncertainties of the strains from grey noise.
+    area_mm2
+        Original cross-section S0.
+    peak_force_N, u_peak_force_N
+        Largest force of the whole load record (denser than the frames) and its statistical
+        standard uncertainty.
+    peak_time_s
+        When that was, on the machine's clock.
+    """
+
+    time_s: Floats
+    force_N: Floats
+    stress_MPa: Floats
+    axial: Floats
+    transverse: Floats
+    u_axial: Floats
+    u_transverse: Floats
+    area_mm2: float
+    peak_force_N: float
+    u_peak_force_N: float
+    peak_time_s: float

@@ -1,0 +1,144 @@
+"""Quantities with units, as people write them: ``"12.5 mm"`` to a float in internal units and back.
+
+Internal units are mm, N, MPa, s, Hz, deg and mm/px; strain has none.  This is the only room that
+converts, once, at the edge.
+"""
+
+from __future__ import annotations
+
+import re
+from functools import cache
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    import pint
+
+#: Internal unit of each kind of quantity.
+UNITS = {
+    "length": "mm",
+    "force": "N",
+    "stress": "MPa",
+    "time": "s",
+    "rate": "Hz",
+    "angle": "deg",
+    "scale": "mm/px",
+    "speed": "mm/s",
+    "stiffness": "N/mm",
+    "strain": "",
+    "fraction": "",
+}
+
+#: An example of each kind, for messages.
+EXAMPLES = {
+    "length": "12.5 mm",
+    "force": "4.2 kN",
+    "stress": "120 MPa",
+    "time": "1.25 s",
+    "rate": "5 Hz",
+    "angle": "2.5 deg",
+    "scale": "0.021 mm/px",
+    "speed": "2 mm/min",
+    "stiffness": "20 kN/mm",
+    "strain": "0.2 %",
+    "fraction": "0.5 %",
+}
+
+#: Spellings that testing machines write and pint does not know.
+_SPELLINGS = {
+    "kn": "kN",
+    "mpa": "MPa",
+    "gpa": "GPa",
+    "sec": "s",
+    "secs": "s",
+    "µm/m": "ppm",
+    "um/m": "ppm",
+    "µε": "ppm",
+    "ue": "ppm",
+    "mm/mm": "dimensionless",
+    "n/mm²": "N/mm**2",
+    "n/mm2": "N/mm**2",
+    "fps": "Hz",
+    "°": "deg",
+}
+
+
+@cache
+def registry() -> pint.UnitRegistry[Any]:
+    """Return the one unit registry, built at first use because that takes a moment."""
+    import pint
+
+    return pint.UnitRegistry()
+
+
+_QUANTITY = re.compile(r"\s*(?P<number>[-+]?(\d+\.?\d*|\.\d+)([eE][-+]?\d+)?)\s*(?P<unit>\S.*)?$")
+
+
+def parse(written: str | float, kind: str) -> float:
+    """Turn what a person wrote into a float in internal units.
+
+    Parameters
+    ----------
+    written
+        ``"12.5 mm"``, or a bare number, which is taken as being in the internal unit already.
+    kind
+        A key of `UNITS`.
+
+    Returns
+    -------
+    float
+        The value in ``UNITS[kind]``.
+
+    Raises
+    ------
+    ValueError
+        If the text is not a quantity of that kind; the message says what one looks like.
+    """
+    if isinstance(written, bool) or not isinstance(written, str | int | float):
+        raise ValueError(f"{written!r} is not a {kind}; write for example \"{EXAMPLES[kind]}\"")
+    if not isinstance(written, str):
+        return float(written)
+    found = _QUANTITY.match(written)
+    if found is None:
+        raise ValueError(f"'{written}' is not a {kind}; write for example \"{EXAMPLES[kind]}\"")
+    number, unit = float(found["number"]), found["unit"]
+    return number if unit is None else number * factor(unit, kind)
+
+
+def factor(unit: str, kind: str) -> float:
+    """Return what one `unit` is worth in the internal unit of `kind`.
+
+    Raises
+    ------
+    ValueError
+        If the unit is unknown or measures something else.
+    """
+    import pint
+
+    spelled = _SPELLINGS.get(unit.strip().lower(), unit.strip())
+    # pint's own "px" is a printer's 1/96 inch; the camera's pixel is what it calls "pixel".
+    spelled = re.sub(r"\bpx\b", "pixel", spelled.replace("²", "**2").replace("%", "percent"))
+    # pint evaluates exponents; a unit longer than any real one is not worth the risk.
+    if len(spelled) > 24 or not re.fullmatch(r"[\w\s*/^.µΩ°()-]+", spelled):
+        raise ValueError(f"'{unit}' is not a unit; write for example \"{EXAMPLES[kind]}\"")
+    try:
+        return float(registry().Quantity(1.0, spelled).to(_target(kind)).magnitude)
+    except (pint.errors.PintError, ValueError, TypeError, ArithmeticError, AttributeError) as error:
+        raise ValueError(
+            f"'{unit}' is not a unit of {kind}; write for example \"{EXAMPLES[kind]}\""
+        ) from error
+
+
+def _target(kind: str) -> str:
+    return UNITS[kind].replace("px", "pixel") or "dimensionless"
+
+
+#: How people like to read each internal unit.
+_DISPLAY = {"youngs_modulus": ("GPa", 1e-3), "shear_modulus": ("GPa", 1e-3)}
+
+
+def for_people(value: float, unit: str, name: str = "") -> tuple[float, str]:
+    """Return value and unit as a report shows them (moduli in GPa from 1 GPa up)."""
+    shown, by = _DISPLAY.get(name, (unit, 1.0))
+    if unit == "MPa" and shown == "GPa" and abs(value) >= 1.0 / by:
+        return value * by, shown
+    return value, unit

@@ -1,0 +1,56 @@
+"""What the gauges read in every frame: the product of the strain stage."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+Floats = NDArray[np.float64]
+
+
+@dataclass(frozen=True)
+class GaugeHistory:
+    """Gauge readings against time; one entry per frame, none dropped.
+
+    Attributes
+    ----------
+    frame
+        Frame numbers, shape (n,), counted from 0.
+    name
+        The frames' file (or page) names.
+    time_s
+        Time of each frame on the camera's clock, s.
+    axial, transverse, shear
+        Mean engineering strains of the gauge region in coupon axes, dimensionless; NaN where the
+        frame could not be measured.  ``shear`` is the engineering shear angle.
+    extensometer
+        Strain between the two end bands, ΔL/L0.
+    u_axial, u_transverse, u_shear, u_extensometer
+        Standard uncertainties from grey noise, overlap of subsets accounted for.
+    shift_px
+        Mean motion of the gauge along the coupon axis and across it, px, shape (n, 2).
+    valid_fraction
+        Share of the region's subsets that were measured.
+    status
+        ``"ok"``, or the reason why the frame was not (or only partly) measured.
+    """
+
+    frame: NDArray[np.int64]
+    name: tuple[str, ...]
+    time_s: Floats
+    axial: Floats
+    transverse: Floats
+    shear: Floats
+    extensometer: Floats
+    u_axial: Floats
+    u_transverse: Floats
+    u_shear: Floats
+    u_extensometer: Floats
+    shift_px: Floats
+    valid_fraction: Floats
+    status: tuple[str, ...]
+
+    def __len__(self) -> int:
+        return len(self.frame)

@@ -1,0 +1,69 @@
+"""The load record as read, and the clock that joins it to the frames."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from pathlib import Path
+
+import numpy as np
+from numpy.typing import NDArray
+
+Floats = NDArray[np.float64]
+
+
+@dataclass(frozen=True)
+class LoadRecord:
+    """The testing machine's record in internal units, shape (n,) each, rows in order of time.
+
+    Attributes
+    ----------
+    path
+        The file.
+    time_s
+        The machine's clock, s.
+    force_N
+        Force, N, tension positive.
+    displacement_mm
+        Crosshead travel, mm, where a column was named.
+    extensometer
+        Strain of a contact extensometer, dimensionless, where a column was named.
+    columns
+        What was understood: for each quantity, header and unit.
+    notes
+        Doubts met while reading.
+    """
+
+    path: Path
+    time_s: Floats
+    force_N: Floats
+    displacement_mm: Floats | None = None
+    extensometer: Floats | None = None
+    columns: dict[str, str] = field(default_factory=dict)
+    notes: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True)
+class Clock:
+    """Machine time = offset + (1 + drift) × camera time.
+
+    Attributes
+    ----------
+    offset_s, offset_standard_uncertainty_s
+        Offset and its standard uncertainty, s.
+    drift
+        Relative difference of the clocks' rates.
+    method
+        How it was found, in words.
+    notes
+        What was assumed, a sentence each.
+    """
+
+    offset_s: float
+    offset_standard_uncertainty_s: float
+    drift: float
+    method: str
+    notes: tuple[str, ...] = ()
+
+    def machine_time(self, camera_time_s: Floats) -> Floats:
+        """Return the machine's time of each camera time, s."""
+        return self.offset_s + (1.0 + self.drift) * camera_time_s

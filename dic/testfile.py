@@ -1,0 +1,288 @@
+"""One test's description (TOML) as a validated model; the only place that knows its keys."""
+
+from __future__ import annotations
+
+import tomllib
+from math import pi
+from pathlib import Path
+from typing import Annotated, Any, Literal, TypeVar
+
+from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, ValidationError, model_validator
+
+from dic.errors import TestFileError, nearest
+from dic.quantities import parse
+
+#: A test file is a page of text; anything larger is something else.
+MAX_BYTES = 1_000_000
+
+
+def quantity(kind: str, **limits: Any) -> Any:
+    """Return the annotated float type of a quantity that people may write with its unit."""
+    return Annotated[float, BeforeValidator(lambda written: parse(written, kind)), Field(**limits)]
+
+
+Length = quantity("length", gt=0, allow_inf_nan=False)
+Time = quantity("time", allow_inf_nan=False)
+Rate = quantity("rate", gt=0, allow_inf_nan=False)
+Scale = quantity("scale", gt=0, allow_inf_nan=False)
+Fraction = quantity("fraction", ge=0, lt=1)
+Strain = quantity("strain", allow_inf_nan=False)
+Stress = quantity("stress", allow_inf_nan=False)
+Column = str | int
+
+
+class Section(BaseModel):
+    """A table of the test file: no key but the known ones, and nothing changes after reading."""
+
+    model_config = ConfigDict(extra="forbid", frozen=True)
+
+
+class Specimen(Section):
+    """The coupon as measured before the test, lengths in mm."""
+
+    label: str = "coupon"
+    material: str = ""
+    shape: Literal["flat", "round"] = "flat"
+    width: Length | None = None
+    thickness: Length | None = None
+    diameter: Length | None = None
+    width_uncertainty: Length | None = None
+    thickness_uncertainty: Length | None = None
+    diameter_uncertainty: Length | None = None
+
+    @model_validator(mode="after")
+    def _dimensions_of_its_shape(self) -> Specimen:
+        needed = ("diameter",) if self.shape == "round" else ("width", "thickness")
+        missing = [key for key in needed if getattr(self, key) is None]
+        if missing:
+            raise ValueError(
+                f"a {self.shape} coupon needs {' and '.join(needed)}; {' and '.join(missing)} missing"
+            )
+        return self
+
+    @property
+    def area(self) -> float:
+        """Original cross-section S0, mm²."""
+        if self.diameter is not None:
+            return pi * self.diameter**2 / 4
+        assert self.width is not None and self.thickness is not None  # noqa: S101  (validated above)
+        return self.width * self.thickness
+
+    @property
+    def visible_width(self) -> float:
+        """Width (or diameter) that the camera sees, mm."""
+        seen = self.width if self.shape == "flat" else self.diameter
+        assert seen is not None  # noqa: S101  (validated above)
+        return seen
+
+    @property
+    def area_uncertainty(self) -> float | None:
+        """Relative standard uncertainty of S0, or None where no dimension's uncertainty is given."""
+        parts = [
+            (self.width, self.width_uncertainty, 1),
+            (self.thickness, self.thickness_uncertainty, 1),
+            (self.diameter, self.diameter_uncertainty, 2),
+        ]
+        shares = [power * u / value for value, u, power in parts if value and u]
+        return sum(share**2 for share in shares) ** 0.5 if shares else None
+
+
+class Frames(Section):
+    """Where the frames are and which clock they carry."""
+
+    source: str
+    rate: Rate | None = None
+    times: str | None = None
+    clock: Literal["tags"] | None = None
+    start: Time = 0.0
+    reference: int | tuple[int, int] | None = None
+
+    @model_validator(mode="after")
+    def _one_clock(self) -> Frames:
+        given = [key for key in ("rate", "times", "clock") if getattr(self, key) is not None]
+        if len(given) != 1:
+            found = " and ".join(given) or "none"
+            raise ValueError(f"give exactly one of rate, times or clock (found {found})")
+        return self
+
+
+class LoadRecord(Section):
+    """The testing machine's record: file, columns, units where the headers are silent."""
+
+    source: str
+    time: Column
+    force: Column
+    displacement: Column | None = None
+    extensometer: Column | None = None
+    units: dict[str, str] = Field(default_factory=dict)
+    force_uncertainty: Fraction | None = None
+
+
+class Camera(Section):
+    """Scale and optics."""
+
+    scale: Scale | None = None
+    stand_off: Length | None = None
+    telecentric: bool = False
+
+
+class Gauge(Section):
+    """Where strain is averaged."""
+
+    axis: str = "auto"
+    region: Literal["auto"] | tuple[float, float, float, float] = "auto"
+    length: Length | None = None
+
+    @model_validator(mode="after")
+    def _axis_is_known(self) -> Gauge:
+        self.axis_angle  # noqa: B018  (raises when it cannot be read)
+        return self
+
+    @property
+    def axis_angle(self) -> float | None:
+        """Angle of the pull from the picture's vertical, deg clockwise as seen; None for ``auto``."""
+        named = {"auto": None, "vertical": 0.0, "horizontal": 90.0}
+        if self.axis in named:
+            return named[self.axis]
+        return parse(self.axis, "angle")
+
+
+class Correlation(Section):
+    """How subsets are matched."""
+
+    subset: int = Field(31, ge=9, le=201)
+    step: int | None = Field(None, ge=1, le=200)
+    shape: Literal["affine"] = "affine"
+    spline: Literal["quintic"] = "quintic"
+    smoothing: float = Field(0.65, ge=0, le=3)
+
+
+class Maps(Section):
+    """The local strain maps: window of the local fit, in subsets across."""
+
+    window: int = Field(5, ge=3, le=99)
+
+
+class Sync(Section):
+    """How the camera's clock is put on the machine's."""
+
+    offset: Literal["auto"] | Time = "auto"
+    drift: float = Field(0.0, gt=-0.1, lt=0.1)
+
+
+class ModulusWindow(Section):
+    """Window of the modulus, in strain or in stress."""
+
+    strain: tuple[Strain, Strain] | None = None
+    stress: tuple[Stress, Stress] | None = None
+
+    @model_validator(mode="after")
+    def _one_window(self) -> ModulusWindow:
+        given = [window for window in (self.strain, self.stress) if window is not None]
+        if len(given) != 1 or not given[0][0] < given[0][1]:
+            raise ValueError("give one of strain = [low, high] or stress = [low, high], low before high")
+        return self
+
+
+class Properties(Section):
+    """What is evaluated, and in which windows."""
+
+    modulus: Literal["auto"] | ModulusWindow = "auto"
+    proof: tuple[Strain, ...] = (0.002,)
+
+
+class TestFile(Section):
+    """A whole test as described by the user."""
+
+    __test__ = False
+
+    specimen: Specimen
+    frames: Frames
+    load_record: LoadRecord
+    camera: Camera = Camera()
+    gauge: Gauge = Gauge()
+    correlation: Correlation = Correlation()
+    maps: Maps = Maps()
+    sync: Sync = Sync()
+    properties: Properties = Properties()
+    path: Path = Field(default=Path("test.toml"), exclude=True)
+
+    def beside(self, name: str) -> Path:
+        """Return the path of a file that the test file names relative to itself."""
+        return self.path.parent / name
+
+
+Model = TypeVar("Model", bound=BaseModel)
+
+
+def load(path: str | Path) -> TestFile:
+    """Read and check a test file.
+
+    Parameters
+    ----------
+    path
+        The TOML file.
+
+    Returns
+    -------
+    TestFile
+        The description, all quantities in internal units.
+
+    Raises
+    ------
+    TestFileError
+        If the file is missing, is not TOML, or has a key or value that is not understood.
+    """
+    path = Path(path)
+    return read_toml(path, TestFile).model_copy(update={"path": path})
+
+
+def read_toml(path: Path, model: type[Model]) -> Model:
+    """Read a TOML file into a validated model.
+
+    Raises
+    ------
+    TestFileError
+        One sentence about the first thing that is wrong, with its key.
+    """
+    try:
+        if path.stat().st_size > MAX_BYTES:
+            raise TestFileError("is far too large for a description", where=str(path))
+        content = tomllib.loads(path.read_text(encoding="utf-8-sig"))
+    except OSError as error:
+        raise TestFileError(
+            f"cannot be read ({error.strerror})", where=str(path), remedy="check the path"
+        ) from error
+    except (tomllib.TOMLDecodeError, UnicodeDecodeError, RecursionError) as error:
+        raise TestFileError(f"is not valid TOML ({error})", where=str(path)) from error
+    try:
+        return model.model_validate(content)
+    except ValidationError as error:
+        raise _explain(error, model, path) from error
+
+
+def _explain(error: ValidationError, model: type[BaseModel], path: Path) -> TestFileError:
+    """Turn pydantic's first complaint into one sentence in the user's terms."""
+    first = error.errors(include_url=False)[0]
+    *sections, key = [str(part) for part in first["loc"]] or [""]
+    where = f"{path}, [{'.'.join(sections) or key}]"
+    if first["type"] == "extra_forbidden":
+        known = _keys_at(model, sections)
+        return TestFileError(f"'{key}' is not a key of this file", where=where, remedy=nearest(key, known))
+    if first["type"] == "missing":
+        kind = "key" if sections else "section"
+        return TestFileError(f"the {kind} '{key}' is missing", where=where, remedy="add it")
+    said = first["msg"].removeprefix("Value error, ")
+    said = said[:1].lower() + said[1:] if not said.startswith("'") else said
+    return TestFileError(f"{key}: {said}" if sections else said, where=where)
+
+
+def _keys_at(model: type[BaseModel], sections: list[str]) -> list[str]:
+    """List the keys that a section knows, walking down the models by name."""
+    for section in sections:
+        field = model.model_fields.get(section)
+        inner = field.annotation if field else None
+        if not (isinstance(inner, type) and issubclass(inner, BaseModel)):
+            break
+        model = inner
+    return [name for name, field in model.model_fields.items() if not field.exclude]
