@@ -94,7 +94,7 @@ def parse(written: str | float, kind: str) -> float:
         If the text is not a quantity of that kind; the message says what one looks like.
     """
     if isinstance(written, bool) or not isinstance(written, str | int | float):
-        raise ValueError(f"{written!r} is not a {kind}; write for example \"{EXAMPLES[kind]}\"")
+        raise ValueError(f'{written!r} is not a {kind}; write for example "{EXAMPLES[kind]}"')
     if not isinstance(written, str):
         return float(written)
     found = _QUANTITY.match(written)
@@ -130,6 +130,26 @@ def factor(unit: str, kind: str) -> float:
 
 def _target(kind: str) -> str:
     return UNITS[kind].replace("px", "pixel") or "dimensionless"
+
+
+_HEADER = re.compile(
+    r"\s*(?P<name>.*?)\s*(?:\((?P<round>[^()]*)\)|\[(?P<square>[^\[\]]*)\]|\s/\s*(?P<slash>\S+)|_(?P<tail>s|N|kN|mm))?\s*$"
+)
+
+
+def split_header(header: str) -> tuple[str, str | None]:
+    """Split a column's header into name and unit: "Force (kN)", "Load [lbf]", "Kraft / N", "time_s".
+
+    Returns
+    -------
+    name, unit
+        The unit is None where the header names none.
+    """
+    found = _HEADER.match(header)
+    if found is None:
+        return header.strip(), None
+    unit = found["round"] or found["square"] or found["slash"] or found["tail"]
+    return found["name"], unit.strip() if unit else None
 
 
 #: How people like to read each internal unit.

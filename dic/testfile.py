@@ -93,16 +93,15 @@ class Frames(Section):
     source: str
     rate: Rate | None = None
     times: str | None = None
-    clock: Literal["tags"] | None = None
     start: Time = 0.0
     reference: int | tuple[int, int] | None = None
 
     @model_validator(mode="after")
     def _one_clock(self) -> Frames:
-        given = [key for key in ("rate", "times", "clock") if getattr(self, key) is not None]
+        given = [key for key in ("rate", "times") if getattr(self, key) is not None]
         if len(given) != 1:
             found = " and ".join(given) or "none"
-            raise ValueError(f"give exactly one of rate, times or clock (found {found})")
+            raise ValueError(f"give either rate or times (found {found})")
         return self
 
 

@@ -1,0 +1,29 @@
+"""The one registry of what can become of a subset: constants, decoder and explanation."""
+
+from __future__ import annotations
+
+from enum import IntEnum
+
+
+class Flag(IntEnum):
+    """State of one subset in one frame; everything but `CONVERGED` leaves NaN."""
+
+    CONVERGED = 0
+    MASKED = 1
+    LOW_TEXTURE = 2
+    OUT_OF_VIEW = 3
+    NOT_CONVERGED = 4
+    DECORRELATED = 5
+    NO_FRAME = 6
+
+
+#: What each flag means, for people.
+MEANING = {
+    Flag.CONVERGED: "measured",
+    Flag.MASKED: "not on the coupon's textured area",
+    Flag.LOW_TEXTURE: "too little texture in the subset to locate it",
+    Flag.OUT_OF_VIEW: "moved out of the picture",
+    Flag.NOT_CONVERGED: "the matching did not settle",
+    Flag.DECORRELATED: "the pattern no longer resembles its reference",
+    Flag.NO_FRAME: "the frame could not be read",
+}
