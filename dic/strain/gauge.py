@@ -1,0 +1,221 @@
+"""The virtual gauges: mean strains of a region and the extensometer between its ends.
+
+Every reading is a weighted sum of subset displacements; the same weights, carried down to the
+pixels, give its standard uncertainty with the overlap of subsets accounted for.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import NDArray
+
+from dic.correlation.kernels import spread_weights
+from dic.correlation.matching import Match
+from dic.correlation.reference import Reference
+from dic.correlation.splines import blur
+from dic.errors import PatternError
+from dic.strain.tensors import engineering
+
+Floats = NDArray[np.float64]
+
+#: Subsets below which no mean strain is given: a plane has three unknowns per component.
+LEAST_SUBSETS = 6
+
+
+@dataclass(frozen=True)
+class Region:
+    """A rectangle in coupon axes on the reference picture.
+
+    Attributes
+    ----------
+    centre
+        x and y, px.
+    length, width
+        Along and across the pull, px.
+    axial, transverse
+        Unit vectors (x, y) along and across.
+    """
+
+    centre: Floats
+    length: float
+    width: float
+    axial: Floats
+    transverse: Floats
+
+    def coordinates(self, x: NDArray[np.generic], y: NDArray[np.generic]) -> tuple[Floats, Floats]:
+        """Return the coordinates along and across, from the centre, px."""
+        dx, dy = x - self.centre[0], y - self.centre[1]
+        return (
+            dx * self.axial[0] + dy * self.axial[1],
+            dx * self.transverse[0] + dy * self.transverse[1],
+        )
+
+    def corners(self) -> Floats:
+        """Return the four corners in order, shape (4, 2), columns x and y."""
+        along, across = self.axial * self.length / 2, self.transverse * self.width / 2
+        c = self.centre
+        return np.array([c - along - across, c - along + across, c + along + across, c + along - across])
+
+
+@dataclass(frozen=True)
+class Reading:
+    """What the gauges read in one frame; see `dic.strain.history.GaugeHistory` for the terms."""
+
+    axial: float
+    transverse: float
+    shear: float
+    extensometer: float
+    bending: float
+    u_axial: float
+    u_transverse: float
+    u_shear: float
+    u_extensometer: float
+    shift_px: tuple[float, float]
+    valid_fraction: float
+    status: str
+
+
+@dataclass(frozen=True)
+class _Weights:
+    """Weights of the valid subsets' u and v, shape (m,) each, by reading; and their noise gains."""
+
+    plane: Floats  # value, ∂/∂x and ∂/∂y of a plane, shape (3, m)
+    twist: Floats  # the product term along·across, shape (m,)
+    ends: tuple[Floats, Floats]  # means of the two end bands
+    length: Floats  # vector between the centres of the end bands, px
+    gains: dict[str, float]  # standard deviation per grey level of noise
+
+
+@dataclass
+class GaugeReader:
+    """Reads the gauges frame by frame.
+
+    Weights depend on which subsets are valid, which rarely changes; they are kept until it does.
+
+    Parameters
+    ----------
+    reference
+        The prepared reference.
+    region
+        Where strain is averaged.
+    length
+        Distance between the extensometer's bands, px; None for the whole region.
+    """
+
+    reference: Reference
+    region: Region
+    length: float | None = None
+    _kept: tuple[bytes, _Weights] | None = field(default=None, repr=False)
+
+    def __post_init__(self) -> None:
+        self._along, self._across = self.region.coordinates(self.reference.x, self.reference.y)
+        self._member = (abs(self._along) <= self.region.length / 2) & (
+            abs(self._across) <= self.region.width / 2
+        )
+        if self._member.sum() < LEAST_SUBSETS:
+            raise PatternError(
+                f"the gauge region holds only {self._member.sum()} subsets",
+                where="gauge.region",
+                remedy="make it larger, or the subsets or their step smaller",
+            )
+        span = float(np.ptp(self._along[self._member]))
+        if self.length is not None and self.length > span:
+            raise PatternError(
+                f"a gauge length of {self.length:.0f} px does not fit: the subsets span {span:.0f} px",
+                where="gauge.length",
+                remedy="shorten it or enlarge gauge.region",
+            )
+
+    def read(self, match: Match) -> Reading:
+        """Return the readings of one frame; NaN and the reason where too little is left."""
+        valid = self._member & match.converged
+        share = float(valid.sum() / self._member.sum())
+        if valid.sum() < LEAST_SUBSETS:
+            return _lost("every subset lost" if not valid.any() else "too few subsets left", share)
+        weights = self._weights(valid)
+        if weights is None:
+            return _lost("no subsets left at an end of the gauge", share)
+        moved = np.stack([match.u[valid], match.v[valid]])  # (2, m)
+        gradient = moved @ weights.plane[1:].T
+        axial, transverse, shear = engineering(gradient, self.region.axial, self.region.transverse)
+        one, other = (moved @ end for end in weights.ends)
+        stretch = np.linalg.norm(weights.length + other - one) / np.linalg.norm(weights.length)
+        noise = match.noise_grey * np.sqrt(1.0 + 1.0 / self.reference.frames)
+        mean = moved @ weights.plane[0]
+        return Reading(
+            axial=float(axial),
+            transverse=float(transverse),
+            shear=float(shear),
+            extensometer=float(stretch - 1.0),
+            bending=float(self.region.axial @ moved @ weights.twist * self.region.width / 2),
+            u_axial=weights.gains["axial"] * noise,
+            u_transverse=weights.gains["transverse"] * noise,
+            u_shear=weights.gains["shear"] * noise,
+            u_extensometer=weights.gains["extensometer"] * noise,
+            shift_px=(float(mean @ self.region.axial), float(mean @ self.region.transverse)),
+            valid_fraction=share,
+            status="ok",
+        )
+
+    def _weights(self, valid: NDArray[np.bool_]) -> _Weights | None:
+        key = valid.tobytes()
+        if self._kept is None or self._kept[0] != key:
+            made = self._make_weights(valid)
+            if made is None:
+                return None
+            self._kept = key, made
+        return self._kept[1]
+
+    def _make_weights(self, valid: NDArray[np.bool_]) -> _Weights | None:
+        x = self.reference.x[valid] - self.region.centre[0]
+        y = self.reference.y[valid] - self.region.centre[1]
+        along, across = self._along[valid], self._across[valid]
+        plane = np.linalg.pinv(np.column_stack([np.ones(len(x)), x, y]))
+        twist = np.linalg.pinv(np.column_stack([np.ones(len(x)), along, across, along * across]))[3]
+        bands = self._bands(along)
+        if bands is None:
+            return None
+        ends = tuple(band / band.sum() for band in bands)
+        length = np.array([(ends[1] - ends[0]) @ x, (ends[1] - ends[0]) @ y])
+        a, t = self.region.axial, self.region.transverse
+        slope_a, slope_t = a @ plane[1:], t @ plane[1:]
+        stretch = (ends[1] - ends[0]) / np.linalg.norm(length)
+        on = {
+            "axial": (a[0] * slope_a, a[1] * slope_a),
+            "transverse": (t[0] * slope_t, t[1] * slope_t),
+            "shear": (t[0] * slope_a + a[0] * slope_t, t[1] * slope_a + a[1] * slope_t),
+            "extensometer": (a[0] * stretch, a[1] * stretch),
+        }
+        gains = {name: self._noise_gain(valid, *pair) for name, pair in on.items()}
+        return _Weights(plane, twist, (ends[0], ends[1]), length, gains)
+
+    def _bands(self, along: Floats) -> tuple[Floats, Floats] | None:
+        """Mark the subsets of the two end bands, one subset deep each."""
+        members = self._along[self._member]
+        depth = self.reference.grid.subset
+        middle = (members.min() + members.max()) / 2
+        half = (self.length if self.length is not None else np.ptp(members) - depth) / 2
+        half = max(half, 0.0)
+        low = (abs(along - (middle - half)) <= depth / 2).astype(float)
+        high = (abs(along - (middle + half)) <= depth / 2).astype(float)
+        return (low, high) if low.any() and high.any() else None
+
+    def _noise_gain(self, valid: NDArray[np.bool_], on_u: Floats, on_v: Floats) -> float:
+        """Return a reading's standard deviation for pixel noise of one grey level in one frame."""
+        reference, kit = self.reference, self.reference.estimator
+        pixels = np.zeros(reference.shape)
+        spread_weights(
+            reference.f, reference.fx, reference.fy, reference.shape[1],
+            kit.mean[valid], kit.norm[valid], kit.average[valid], kit.along[valid], kit.inverse[valid],
+            reference.x[valid], reference.y[valid], reference.grid.half,
+            np.ascontiguousarray(on_u), np.ascontiguousarray(on_v), pixels,
+        )  # fmt: skip
+        # Raw noise is smoothed before it meets these weights, so the weights are smoothed instead.
+        return float(np.linalg.norm(blur(pixels.astype(np.float32), reference.smoothing)))
+
+
+def _lost(reason: str, share: float) -> Reading:
+    nan = float("nan")
+    return Reading(nan, nan, nan, nan, nan, nan, nan, nan, nan, (nan, nan), share, reason)
