@@ -1,1 +1,1 @@
-"""x."""
+"""The command line: one module per command, thin; no computing here."""

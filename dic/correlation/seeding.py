@@ -21,7 +21,7 @@ def whole_pixel_shift(reference: Image, frame: Image, grid: Grid) -> NDArray[np.
     reference, frame
         Smoothed pictures of one size, shape (rows, columns).
     grid
-        The subsets; the patch lies around their middle one.
+        The subsets; the patch lies around the one nearest their middle.
 
     Returns
     -------
@@ -33,10 +33,11 @@ def whole_pixel_shift(reference: Image, frame: Image, grid: Grid) -> NDArray[np.
     Plain normalised cross-correlation over the whole frame (whitened phase correlation is biased
     on small windows); sub-pixel work is left to the matching.
     """
-    rows, columns = np.nonzero(grid.inside)
-    middle = len(rows) // 2
-    x, y = int(grid.x[columns[middle]]), int(grid.y[rows[middle]])
-    half = min(PATCH_PX, *reference.shape) // 2
+    all_x, all_y = (part[grid.inside] for part in grid.centres())
+    middle = int(np.argmin((all_x - all_x.mean()) ** 2 + (all_y - all_y.mean()) ** 2))
+    x, y = int(all_x[middle]), int(all_y[middle])
+    # A third of the picture leaves a third of it on either side to move by.
+    half = min(PATCH_PX, *(side // 3 for side in reference.shape)) // 2
     top = min(max(y - half, 0), reference.shape[0] - 2 * half - 1)
     left = min(max(x - half, 0), reference.shape[1] - 2 * half - 1)
     patch = reference[top : top + 2 * half + 1, left : left + 2 * half + 1]

@@ -57,14 +57,20 @@ def _from_file(path: Path, names: list[str]) -> NDArray[np.float64]:
     try:
         if path.stat().st_size > MOST_BYTES:
             raise FrameError("is far too large for a list of frame times", where=str(path))
-        table = pd.read_csv(path, sep=None, engine="python", encoding="utf-8-sig")
+        with path.open(encoding="utf-8-sig") as file:
+            header = file.readline(10_000)
+            separator = next((mark for mark in "\t;" if mark in header), ",")
+        table = pd.read_csv(path, sep=separator, encoding="utf-8-sig")
     except (OSError, UnicodeDecodeError, pd.errors.ParserError, pd.errors.EmptyDataError) as error:
         raise FrameError(
             f"cannot be read ({' '.join(str(error).split())})", where=str(path), remedy="check frames.times"
         ) from error
     column = _time_column(table, path)
     time = pd.to_numeric(table[column], errors="coerce").to_numpy(float)
-    time = time * factor(split_header(column)[1] or "s", "time")
+    try:
+        time = time * factor(split_header(column)[1] or "s", "time")
+    except ValueError as error:
+        raise FrameError(str(error), where=f"{path}, column '{column}'") from error
     named = [other for other in table.columns if set(names) <= set(table[other].astype(str))]
     if named and len(set(names)) == len(names):
         rows = {str(name): row for row, name in enumerate(table[named[0]])}

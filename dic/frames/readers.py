@@ -94,6 +94,8 @@ def list_pages(path: Path) -> list[Page]:
     """
     try:
         pages = READERS[path.suffix.lower()].pages(path)
+        if not pages:
+            raise ValueError("it holds no picture")
     except Exception as error:  # the decoders raise whatever their authors chose
         raise _unreadable(path, error) from error
     for page in pages:

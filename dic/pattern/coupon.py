@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 from dataclasses import dataclass
 
 import numpy as np
@@ -19,6 +20,8 @@ TEXTURE_WINDOW_PX = 15
 LEAST_CONTRAST = 3.0
 #: Stretches of an edge that are located one by one and then joined by a straight line.
 STRETCHES = 24
+#: Pixels that straddle the edge show background too; so much is kept clear of it.
+EDGE_MARGIN_PX = 2.0
 
 
 @dataclass(frozen=True)
@@ -78,6 +81,7 @@ def find_coupon(image: NDArray[np.generic], axis_angle_deg: float | None = None)
     if len(sound) == 2:
         (left, tilt_left), (right, tilt_right) = sound
         width = (right - left) * float(np.cos(np.arctan((tilt_left + tilt_right) / 2)))
+        mask &= _between(mask.shape, angle, left + EDGE_MARGIN_PX, right - EDGE_MARGIN_PX)
     method = "given" if given else f"from {len(sound)} edges" if sound else "from the textured area's shape"
     return Coupon(mask, (angle + 90.0) % 180.0 - 90.0, method, width, speckle_size(grey, mask))
 
@@ -159,7 +163,7 @@ def _edge_line(
     t = np.arange(near - reach, near + reach + 1, 0.5)
     positions, offsets = [], []
     ends = np.linspace(np.percentile(along, 2), np.percentile(along, 98), STRETCHES + 1)
-    for first, last in zip(ends[:-1], ends[1:], strict=True):
+    for first, last in itertools.pairwise(ends):
         s = np.arange(first, last)
         x = centre[0] + s[:, None] * axial[0] + t[None, :] * transverse[0]
         y = centre[1] + s[:, None] * axial[1] + t[None, :] * transverse[1]
@@ -173,6 +177,14 @@ def _edge_line(
     if len(positions) < STRETCHES // 4:
         return None
     return _robust_line(np.array(positions), np.array(offsets))
+
+
+def _between(shape: tuple[int, ...], angle_deg: float, left: float, right: float) -> Mask:
+    """Mark the pixels whose coordinate across the coupon lies between two offsets from the middle."""
+    _, transverse = axes(angle_deg)
+    rows, columns = np.ogrid[: shape[0], : shape[1]]
+    across = (columns - (shape[1] - 1) / 2) * transverse[0] + (rows - (shape[0] - 1) / 2) * transverse[1]
+    return np.asarray((across >= left) & (across <= right))
 
 
 def _half_crossing(scatter: NDArray[np.float64], t: NDArray[np.float64]) -> float | None:

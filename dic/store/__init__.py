@@ -1,0 +1,1 @@
+"""What lies on disk: fields, histories, results."""

@@ -44,6 +44,16 @@ class Region:
     axial: Floats
     transverse: Floats
 
+    @classmethod
+    def around(cls, mask: NDArray[np.bool_], axial: Floats, transverse: Floats) -> Region:
+        """Return the smallest rectangle in coupon axes that holds all of a mask, shape (rows, columns)."""
+        y, x = np.nonzero(mask)
+        points = np.stack([x, y], axis=1).astype(float)
+        along, across = points @ axial, points @ transverse
+        middle = (along.min() + along.max()) / 2, (across.min() + across.max()) / 2
+        centre = middle[0] * axial + middle[1] * transverse
+        return cls(centre, float(np.ptp(along)) + 1, float(np.ptp(across)) + 1, axial, transverse)
+
     def coordinates(self, x: NDArray[np.generic], y: NDArray[np.generic]) -> tuple[Floats, Floats]:
         """Return the coordinates along and across, from the centre, px."""
         dx, dy = x - self.centre[0], y - self.centre[1]
@@ -171,17 +181,17 @@ class GaugeReader:
     def _make_weights(self, valid: NDArray[np.bool_]) -> _Weights | None:
         x = self.reference.x[valid] - self.region.centre[0]
         y = self.reference.y[valid] - self.region.centre[1]
-        along, across = self._along[valid], self._across[valid]
+        along, across, depth = self._along[valid], self._across[valid], self.reference.grid.subset
         plane = np.linalg.pinv(np.column_stack([np.ones(len(x)), x, y]))
         twist = np.linalg.pinv(np.column_stack([np.ones(len(x)), along, across, along * across]))[3]
-        bands = self._bands(along)
-        if bands is None:
+        half = self._half_length()
+        ends = _end(along + half, across, depth), _end(along - half, across, depth)
+        if ends[0] is None or ends[1] is None:
             return None
-        ends = tuple(band / band.sum() for band in bands)
-        length = np.array([(ends[1] - ends[0]) @ x, (ends[1] - ends[0]) @ y])
+        length = 2 * half * self.region.axial
         a, t = self.region.axial, self.region.transverse
         slope_a, slope_t = a @ plane[1:], t @ plane[1:]
-        stretch = (ends[1] - ends[0]) / np.linalg.norm(length)
+        stretch = (ends[1] - ends[0]) / (2 * half)
         on = {
             "axial": (a[0] * slope_a, a[1] * slope_a),
             "transverse": (t[0] * slope_t, t[1] * slope_t),
@@ -191,16 +201,10 @@ class GaugeReader:
         gains = {name: self._noise_gain(valid, *pair) for name, pair in on.items()}
         return _Weights(plane, twist, (ends[0], ends[1]), length, gains)
 
-    def _bands(self, along: Floats) -> tuple[Floats, Floats] | None:
-        """Mark the subsets of the two end bands, one subset deep each."""
-        members = self._along[self._member]
-        depth = self.reference.grid.subset
-        middle = (members.min() + members.max()) / 2
-        half = (self.length if self.length is not None else np.ptp(members) - depth) / 2
-        half = max(half, 0.0)
-        low = (abs(along - (middle - half)) <= depth / 2).astype(float)
-        high = (abs(along - (middle + half)) <= depth / 2).astype(float)
-        return (low, high) if low.any() and high.any() else None
+    def _half_length(self) -> float:
+        """Return half the gauge length: as given, else what leaves a whole band at either end."""
+        span = float(np.ptp(self._along[self._member]))
+        return max(self.length if self.length is not None else span - self.reference.grid.subset, 1.0) / 2
 
     def _noise_gain(self, valid: NDArray[np.bool_], on_u: Floats, on_v: Floats) -> float:
         """Return a reading's standard deviation for pixel noise of one grey level in one frame."""
@@ -214,6 +218,20 @@ class GaugeReader:
         )  # fmt: skip
         # Raw noise is smoothed before it meets these weights, so the weights are smoothed instead.
         return float(np.linalg.norm(blur(pixels.astype(np.float32), reference.smoothing)))
+
+
+def _end(along: Floats, across: Floats, depth: int) -> Floats | None:
+    """Return the weights of the mean displacement at an end of the gauge, from a band one subset deep.
+
+    A plane through the band, taken on the gauge's axis at the end itself, so that a band whose
+    subsets lie lopsided does not turn shear into stretch.
+    """
+    band = np.flatnonzero(abs(along) <= depth / 2)
+    if not len(band):
+        return None
+    weights = np.zeros(len(along))
+    weights[band] = np.linalg.pinv(np.column_stack([np.ones(len(band)), along[band], across[band]]))[0]
+    return weights
 
 
 def _lost(reason: str, share: float) -> Reading:

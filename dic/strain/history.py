@@ -7,6 +7,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from dic.strain.gauge import Reading
+
 Floats = NDArray[np.float64]
 
 
@@ -27,6 +29,8 @@ class GaugeHistory:
         frame could not be measured.  ``shear`` is the engineering shear angle.
     extensometer
         Strain between the two end bands, ΔL/L0.
+    bending
+        Axial strain at the region's right edge less that at its middle, from in-plane bending.
     u_axial, u_transverse, u_shear, u_extensometer
         Standard uncertainties from grey noise, overlap of subsets accounted for.
     shift_px
@@ -51,6 +55,28 @@ class GaugeHistory:
     shift_px: Floats
     valid_fraction: Floats
     status: tuple[str, ...]
+    bending: Floats
 
     def __len__(self) -> int:
         return len(self.frame)
+
+
+def gather(readings: list[Reading], names: tuple[str, ...], time_s: Floats) -> GaugeHistory:
+    """Put the frames' readings one below the other."""
+
+    def column(key: str) -> Floats:
+        return np.array([getattr(reading, key) for reading in readings], dtype=float)
+
+    return GaugeHistory(
+        frame=np.arange(len(readings)),
+        name=names,
+        time_s=time_s,
+        status=tuple(reading.status for reading in readings),
+        **{
+            key: column(key)
+            for key in (
+                "axial", "transverse", "shear", "extensometer", "bending", "shift_px", "valid_fraction",
+                "u_axial", "u_transverse", "u_shear", "u_extensometer",
+            )
+        },
+    )  # fmt: skip

@@ -1,0 +1,65 @@
+"""What the commands put on the screen: progress and short tables."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Iterator
+from contextlib import contextmanager
+from typing import TYPE_CHECKING
+
+from rich.console import Console
+from rich.markup import escape
+from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn, TimeRemainingColumn
+from rich.table import Table
+
+from dic.store.tables import stated, title_of
+
+if TYPE_CHECKING:
+    from dic.measurement import Measurement
+    from dic.pipeline import Progress as Report
+    from synthetic_images.comparison import Compared
+
+console = Console(highlight=False)
+
+
+@contextmanager
+def frames_progress(what: str) -> Iterator[Report]:
+    """Show a bar with frames per second and time left; yields the function to call after each frame."""
+    columns = (
+        TextColumn("{task.description:<9}"),
+        BarColumn(),
+        MofNCompleteColumn(),
+        TextColumn("{task.fields[pace]:>12}"),
+        TimeRemainingColumn(),
+    )
+    with Progress(*columns, console=console) as bar:
+        task = bar.add_task(what, total=None, pace="")
+
+        def report(done: int, total: int) -> None:
+            speed = bar.tasks[task].finished_speed or bar.tasks[task].speed
+            bar.update(task, completed=done, total=total, pace=f"{speed:.1f} frames/s" if speed else "")
+
+        yield report
+
+
+def show_measurement(measurement: Measurement) -> None:
+    """Print the properties, the warnings and where the report lies."""
+    table = Table(title=escape(measurement.test.specimen.label), title_justify="left")
+    for heading in ("property", "symbol", "value (k = 2)", "note"):
+        table.add_column(heading)
+    for item in measurement.properties.values():
+        reason = item.notes[0] if item.notes and item.value != item.value else ""
+        table.add_row(title_of(item.name), item.symbol, stated(item)[0], escape(reason))
+    console.print(table)
+    for notice in measurement.notices:
+        console.print(f"warning: {escape(notice.text)}")
+    console.print(f"report: {escape(str(measurement.folder / 'report.html'))}", soft_wrap=True)
+
+
+def show_comparison(rows: Iterable[Compared]) -> None:
+    """Print measured beside true values, and whether the stated interval holds the truth."""
+    table = Table(title="measured beside true", title_justify="left")
+    for heading in ("property", "measured (k = 2)", "true", "off by", "truth inside"):
+        table.add_column(heading, justify="left" if heading == "property" else "right")
+    for row in rows:
+        table.add_row(row.title, row.measured, row.true, f"{row.off_percent:+.3f} %", "yes" if row.inside else "NO")
+    console.print(table)

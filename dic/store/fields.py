@@ -1,0 +1,159 @@
+"""Displacement and strain fields on disk, written frame by frame, opened by xarray.
+
+The file gets its final name only when the last frame is in it, so a broken run leaves nothing that
+looks like a result.
+"""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Iterator
+from pathlib import Path
+from types import TracebackType
+from typing import Any
+
+import h5netcdf
+import numpy as np
+from numpy.typing import NDArray
+
+from dic.correlation.flags import MEANING, Flag
+from dic.correlation.grid import Grid
+from dic.correlation.matching import Match
+from dic.errors import StoreError
+from dic.strain.maps import StrainMap
+
+NAME = "fields.nc"
+
+#: Variables with their type and what they are.
+_VARIABLES: dict[str, tuple[str, str, str]] = {
+    "u": ("f8", "px", "displacement along x, to the right"),
+    "v": ("f8", "px", "displacement along y, down"),
+    "strain_axial": ("f4", "1", "engineering strain along the pull"),
+    "strain_transverse": ("f4", "1", "engineering strain across the pull"),
+    "strain_shear": ("f4", "1", "change of the right angle between the coupon axes"),
+    "correlation": ("f4", "1", "zero-mean normalised cross-correlation"),
+    "sigma_u": ("f4", "px", "standard uncertainty of u"),
+    "sigma_v": ("f4", "px", "standard uncertainty of v"),
+    "flag": ("u1", "1", "state of the subset"),
+}
+
+
+class FieldsWriter:
+    """Writes one frame after the other; use as a context manager.
+
+    Parameters
+    ----------
+    folder
+        Result folder.
+    grid
+        The subsets.
+    time_s
+        Camera time of every frame, s.
+    attributes
+        Settings that readers of the file need, and the key of `stored_key`.
+    """
+
+    def __init__(
+        self, folder: Path, grid: Grid, time_s: NDArray[np.float64], attributes: dict[str, Any]
+    ) -> None:
+        self._final = folder / NAME
+        self._partial = folder / (NAME + ".part")
+        self._grid = grid
+        self._next = 0
+        try:
+            self._file = h5netcdf.File(self._partial, "w")
+        except OSError as error:
+            raise StoreError(
+                f"cannot be written ({error})", where=str(folder), remedy="choose another --out"
+            ) from error
+        file = self._file
+        file.dimensions = {"frame": len(time_s), "y": len(grid.y), "x": len(grid.x)}
+        file.create_variable("frame", ("frame",), data=np.arange(len(time_s)))
+        file.create_variable("time", ("frame",), data=time_s).attrs["long_name"] = "camera time in seconds"
+        file.create_variable("y", ("y",), data=grid.y).attrs["units"] = "px"
+        file.create_variable("x", ("x",), data=grid.x).attrs["units"] = "px"
+        for name, (dtype, unit, meaning) in _VARIABLES.items():
+            fill = Flag.NO_FRAME if dtype == "u1" else np.nan
+            variable = file.create_variable(
+                name, ("frame", "y", "x"), dtype, fillvalue=fill, chunks=(1, *grid.shape)
+            )
+            variable.attrs.update({"units": unit, "long_name": meaning})
+        file["flag"].attrs["flag_values"] = np.array(list(MEANING), np.uint8)
+        file["flag"].attrs["flag_meanings"] = " ".join(flag.name.lower() for flag in MEANING)
+        noise = file.create_variable("noise_grey", ("frame",), "f8", fillvalue=np.nan)
+        noise.attrs["long_name"] = "grey noise of one frame, median over the subsets, in grey levels"
+        file.attrs.update(attributes)
+
+    def __enter__(self) -> FieldsWriter:
+        return self
+
+    def put(self, match: Match, strains: StrainMap) -> None:
+        """Append the next frame."""
+        inside = self._grid.inside
+        values = {
+            "u": spread(match.u, inside),
+            "v": spread(match.v, inside),
+            "strain_axial": strains.axial,
+            "strain_transverse": strains.transverse,
+            "strain_shear": strains.shear,
+            "correlation": spread(match.correlation, inside),
+            "sigma_u": spread(match.sigma_u, inside),
+            "sigma_v": spread(match.sigma_v, inside),
+        }
+        flag = np.full(inside.shape, Flag.MASKED, np.uint8)
+        flag[inside] = match.flag
+        for name, value in {**values, "flag": flag}.items():
+            self._file[name][self._next] = value
+        self._file["noise_grey"][self._next] = match.noise_grey
+        self._next += 1
+
+    def __exit__(
+        self, kind: type[BaseException] | None, value: BaseException | None, trace: TracebackType | None
+    ) -> None:
+        self._file.close()
+        if kind is None:
+            os.replace(self._partial, self._final)
+        else:
+            self._partial.unlink(missing_ok=True)
+
+
+def spread(values: NDArray[np.float64], inside: NDArray[np.bool_]) -> NDArray[np.float64]:
+    """Lay the inside subsets' values out on the grid, shape (ny, nx), NaN elsewhere."""
+    field = np.full(inside.shape, np.nan)
+    field[inside] = values
+    return field
+
+
+def stored_attributes(folder: Path) -> dict[str, Any]:
+    """Return the attributes of the fields in a folder; empty where there are none that can be used."""
+    try:
+        with h5netcdf.File(folder / NAME, "r") as file:
+            return dict(file.attrs)
+    except OSError:
+        return {}
+
+
+def median_noise(folder: Path) -> float:
+    """Return the grey noise of one frame, median over the frames, grey levels."""
+    with h5netcdf.File(folder / NAME, "r") as file:
+        return float(np.nanmedian(file["noise_grey"][:]))
+
+
+def stored_matches(folder: Path, grid: Grid) -> Iterator[Match]:
+    """Yield what tracking once found, frame by frame, as tracking itself would."""
+    inside = grid.inside
+    with h5netcdf.File(folder / NAME, "r") as file:
+        for frame, noise in enumerate(file["noise_grey"][:]):
+            parameters = np.full((int(inside.sum()), 6), np.nan)
+            parameters[:, 0] = file["u"][frame][inside]
+            parameters[:, 3] = file["v"][frame][inside]
+            flag = file["flag"][frame][inside]
+            yield Match(
+                parameters=parameters,
+                correlation=file["correlation"][frame][inside].astype(float),
+                sigma_u=file["sigma_u"][frame][inside].astype(float),
+                sigma_v=file["sigma_v"][frame][inside].astype(float),
+                flag=flag,
+                iterations=np.zeros(len(flag), np.uint8),
+                noise_grey=float(noise),
+            )

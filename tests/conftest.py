@@ -1,0 +1,54 @@
+"""Truth images shared by the tests: a texture given by a formula, moved, and photographed."""
+
+import numpy as np
+import pytest
+
+from dic.correlation import lay_grid, match_frame, prepare_reference, smooth, spline_image
+from synthetic_images import Camera, Cosines, Dots, rigid
+
+SHAPE = (190, 260)  # lopsided on purpose
+SMOOTHING = 0.65
+
+
+def _texture(kind, seed):
+    if kind == "dots":
+        return Dots(4.5, area=(320, 260), seed=seed)
+    return Cosines(4.0, seed=seed)
+
+
+@pytest.fixture(scope="session")
+def photograph():
+    """Return a function that photographs a texture after a motion."""
+
+    def take(motion=None, *, kind="dots", noise=0.0, frame=0, seed=1, shape=SHAPE, **camera):
+        texture, motion = _texture(kind, seed), motion or rigid(0, 0)
+        lens = Camera(noise=noise, **{"bits": 16 if noise == 0 else 8, **camera})
+        return lens.photograph(lambda x, y: texture(*motion.inverse(x, y)), shape, frame=frame, seed=seed)
+
+    return take
+
+
+@pytest.fixture(scope="session")
+def prepared():
+    """Return a function that lays subsets over a picture and prepares it as reference."""
+
+    def prepare(image, *, subset=31, step=15, margin=8, frames=1):
+        mask = np.zeros(image.shape, bool)
+        mask[margin:-margin, margin:-margin] = True
+        scale = 255.0 if image.max() < 256 else 65535.0
+        grid = lay_grid(mask, subset, step)
+        return prepare_reference(image, grid, smoothing=SMOOTHING, frames=frames, full_scale=scale)
+
+    return prepare
+
+
+@pytest.fixture(scope="session")
+def matched():
+    """Return a function that matches one picture, from zero motion or a given start."""
+
+    def match(reference, image, start=None):
+        if start is None:
+            start = np.zeros((len(reference.x), 6))
+        return match_frame(reference, spline_image(smooth(image, SMOOTHING)), start)
+
+    return match

@@ -1,0 +1,161 @@
+"""Frames written by independent libraries (tifffile, Pillow, OpenCV) read to identical pixels."""
+
+import cv2
+import numpy as np
+import pytest
+import tifffile
+from PIL import Image
+
+from dic.errors import FrameError
+from dic.frames import open_frames
+from dic.testfile import Frames
+
+RNG = np.random.default_rng(3)
+
+
+def grey(bits=8, shape=(30, 44)):
+    kind = np.uint8 if bits == 8 else np.uint16
+    return RNG.integers(0, 2**bits, shape).astype(kind)
+
+
+def section(**keys):
+    return Frames(**{"source": "frames", "rate": "5 Hz", **keys})
+
+
+@pytest.fixture
+def folder(tmp_path):
+    (tmp_path / "frames").mkdir()
+    return tmp_path
+
+
+@pytest.mark.parametrize("bits", [8, 12, 16])
+@pytest.mark.parametrize("writer", ["tifffile", "opencv", "pillow", "png"])
+def test_pixels_are_identical_whoever_wrote_them(folder, bits, writer):
+    images = [grey(bits) for _ in range(3)]
+    for k, image in enumerate(images):
+        path = folder / "frames" / f"f{k}.{'png' if writer == 'png' else 'tif'}"
+        if writer == "tifffile":
+            tifffile.imwrite(path, image)
+        elif writer == "pillow":
+            Image.fromarray(image).save(path)
+        else:
+            cv2.imwrite(str(path), image)
+    source = open_frames(section(), folder)
+    assert len(source) == 3
+    for k, image in enumerate(images):
+        assert source[k].dtype == image.dtype
+        assert np.array_equal(source[k], image)
+    assert source.full_scale() == 2**bits - 1
+
+
+def test_natural_order_and_foreign_files(folder):
+    for name in ("cam_10.tif", "cam_9.tif", "cam_1.tif", ".cam_0.tif", "notes.txt", "Thumbs.db"):
+        path = folder / "frames" / name
+        tifffile.imwrite(path, grey()) if name.endswith("tif") else path.write_text("x")
+    assert open_frames(section(), folder).names == ("cam_1.tif", "cam_9.tif", "cam_10.tif")
+
+
+def test_a_pattern_selects(folder):
+    for name in ("a1.tif", "a2.tif", "a3.tif", "b1.tif"):
+        tifffile.imwrite(folder / "frames" / name, grey())
+    assert len(open_frames(section(source="frames/a*.tif"), folder)) == 3
+
+
+def test_pages_of_one_file(folder):
+    stack = np.stack([grey() for _ in range(4)])
+    tifffile.imwrite(folder / "stack.tif", stack, photometric="minisblack")
+    source = open_frames(section(source="stack.tif", start="2 s"), folder)
+    assert source.names[1] == "stack.tif#2"
+    assert np.array_equal(source[3], stack[3])
+    np.testing.assert_allclose(source.time_s, [2, 2.2, 2.4, 2.6])
+
+
+def write(folder, images):
+    for k, image in enumerate(images):
+        tifffile.imwrite(folder / "frames" / f"f{k}.tif", image)
+
+
+def test_times_from_a_file_by_name_whatever_the_order(folder):
+    write(folder, [grey() for _ in range(3)])
+    (folder / "t.csv").write_text("frame,time (ms)\nf2.tif,700\nf0.tif,100\nf1.tif,450\n")
+    source = open_frames(Frames(source="frames", times="t.csv"), folder)
+    np.testing.assert_allclose(source.time_s, [0.1, 0.45, 0.7])
+
+
+def test_times_from_a_file_by_row(folder):
+    write(folder, [grey() for _ in range(3)])
+    (folder / "t.csv").write_text("time\n0\n1.5\n2\n")
+    np.testing.assert_allclose(
+        open_frames(Frames(source="frames", times="t.csv"), folder).time_s, [0, 1.5, 2]
+    )
+
+
+@pytest.mark.parametrize(
+    ("content", "said"),
+    [
+        ("time\n0\n1\n", "lists 2 times for 3 frames"),
+        ("time\n0\n1\n1\n", "does not increase"),
+        ("time\n0\nx\n1\n", "no time for frame f1.tif"),
+        ("clock\n0\n1\n2\n", "no column 'time'"),
+        ("time (kg)\n0\n1\n2\n", "'kg' is not a unit"),
+        ("", "cannot be read"),
+    ],
+)
+def test_times_files_that_cannot_be_used(folder, content, said):
+    write(folder, [grey() for _ in range(3)])
+    (folder / "t.csv").write_text(content)
+    with pytest.raises(FrameError, match=said):
+        open_frames(Frames(source="frames", times="t.csv"), folder)
+
+
+def test_no_frames(folder):
+    with pytest.raises(FrameError, match="no frames found"):
+        open_frames(section(), folder)
+    with pytest.raises(FrameError, match="no frames found"):
+        open_frames(section(source="elsewhere"), folder)
+
+
+def test_fewer_than_three(folder):
+    write(folder, [grey(), grey()])
+    with pytest.raises(FrameError, match="holds 2 frames, and a test needs at least 3"):
+        open_frames(section(), folder)
+
+
+def test_unequal_size_names_the_odd_one(folder):
+    write(folder, [grey(), grey(shape=(30, 45)), grey()])
+    with pytest.raises(FrameError, match=r"f1\.tif: is 45 × 30 px uint8 where f0\.tif is 44 × 30"):
+        open_frames(section(), folder)
+
+
+def test_a_damaged_file_is_named(folder):
+    write(folder, [grey(), grey(), grey()])
+    (folder / "frames" / "f1.tif").write_bytes(b"II*\0garbage")
+    with pytest.raises(FrameError, match=r"f1\.tif: cannot be read as a picture"):
+        open_frames(section(), folder)
+
+
+def test_truncated_pixels_are_found_when_read(folder):
+    write(folder, [grey(), grey(), grey()])
+    path = folder / "frames" / "f1.tif"
+    path.write_bytes(path.read_bytes()[:-600])
+    source = open_frames(section(), folder)
+    with pytest.raises(FrameError, match="f1.tif"):
+        source[1]
+
+
+def test_colour_is_refused_for_now(folder):
+    write(folder, [grey(shape=(30, 44, 3)) for _ in range(3)])
+    with pytest.raises(FrameError, match="not a grey picture"):
+        open_frames(section(), folder)
+
+
+def test_an_absurd_size_is_refused_before_it_is_allocated(folder):
+    """A header may claim anything; 10^10 px would be 10 GB."""
+    for k in range(3):
+        path = folder / "frames" / f"f{k}.tif"
+        tifffile.imwrite(path, grey())
+        with tifffile.TiffFile(path, mode="r+b") as tiff:
+            tiff.pages[0].tags["ImageWidth"].overwrite(100_000)
+            tiff.pages[0].tags["ImageLength"].overwrite(100_000)
+    with pytest.raises(FrameError, match="claims 100000 × 100000 px"):
+        open_frames(section(), folder)
