@@ -69,6 +69,9 @@ class Curve:
         standard uncertainty.
     peak_time_s
         When that was, on the machine's clock.
+    peak_at_end
+        Whether the record ends before the force drops again, so that the coupon could perhaps have
+        borne more.
     """
 
     time_s: Floats
@@ -82,3 +85,43 @@ class Curve:
     peak_force_N: float
     u_peak_force_N: float
     peak_time_s: float
+    peak_at_end: bool = False
+
+
+@dataclass(frozen=True)
+class ModulusLine:
+    """The straight line through the elastic part, stress = intercept + slope · strain.
+
+    The proof stress at an offset lies where the curve meets ``intercept + slope · (strain - offset)``,
+    so this line and a `Property`'s value are all that a drawing of the construction needs.
+
+    Attributes
+    ----------
+    slope
+        Young's modulus, MPa; NaN where it could not be determined, like the others.
+    intercept
+        Stress of the line at zero strain, MPa.
+    low, high
+        Strains between which the frames used lie.
+    """
+
+    slope: float
+    intercept: float
+    low: float
+    high: float
+
+
+@dataclass(frozen=True)
+class Evaluation:
+    """What a stress-strain curve gave.
+
+    Attributes
+    ----------
+    properties
+        By name, in the order of the sheet; a property that could not be had stands there as NaN.
+    line
+        The line behind Young's modulus.
+    """
+
+    properties: dict[str, Property]
+    line: ModulusLine

@@ -1,0 +1,128 @@
+"""Force at the instants of the frames, from a record that is denser and noisy."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.ndimage import median_filter, uniform_filter1d
+from scipy.signal import savgol_filter
+
+from dic.sync.record import Clock, LoadRecord
+
+Floats = NDArray[np.float64]
+
+#: Samples around each one that its noise is estimated from: enough to know it to some 10 %, few enough to
+#: follow a noise that grows with the force.
+NOISE_WINDOW = 301
+#: Median of the absolute value of a standard normal variable.
+_NORMAL_MEDIAN = 0.6745
+
+
+def force_noise(record: LoadRecord) -> Floats:
+    """Estimate the standard deviation of the force's noise around every sample.
+
+    Each sample is compared with the straight line between its neighbours, and the root mean square of
+    these misses over `NOISE_WINDOW` samples is taken, each held to four times their median: so neither
+    the loading nor a fracture looks like noise.
+
+    Parameters
+    ----------
+    record
+        The load record, at least three samples.
+
+    Returns
+    -------
+    Floats
+        Standard deviation, N, shape (n,).
+    """
+    t, force = record.time_s, record.force_N
+    share = (t[1:-1] - t[:-2]) / (t[2:] - t[:-2])
+    miss = force[1:-1] - ((1 - share) * force[:-2] + share * force[2:])
+    own = np.abs(miss) / np.sqrt(1 + share**2 + (1 - share) ** 2)
+    size = min(NOISE_WINDOW, len(own))
+    typical = median_filter(own, size=size, mode="nearest") / _NORMAL_MEDIAN
+    spread = np.sqrt(uniform_filter1d(np.minimum(own, 4 * typical) ** 2, size, mode="nearest"))
+    return np.pad(spread, 1, mode="edge")
+
+
+def smoothed_force(record: LoadRecord, width_s: float) -> Floats:
+    """Average the force's noise where that cannot distort the force.
+
+    Every sample is replaced by the mean of the widest symmetric window, at most `width_s` long, in
+    which the record is a straight line within its own noise; the mean is then the line's value at the
+    sample.  At the start of loading, at a sharp yield point and at fracture the windows shrink by
+    themselves, down to the sample alone.
+
+    Parameters
+    ----------
+    record
+        The load record.
+    width_s
+        Longest window, s.
+
+    Returns
+    -------
+    Floats
+        Force, N, shape (n,).
+    """
+    t, force = record.time_s, record.force_N
+    noise_variance = force_noise(record) ** 2
+    best = force.copy()
+    for half in _half_windows(t, width_s):
+        size = 2 * half + 1
+        mean, variance = _about_line(force, half)
+        # Three standard deviations of a variance with that many degrees of freedom.
+        straight = variance <= noise_variance * (1 + 3 * np.sqrt(2 / (size - 2)))
+        inside = np.zeros(len(t), dtype=bool)
+        inside[half:-half] = t[2 * half :] - t[: -2 * half] <= width_s
+        best = np.where(straight & inside, mean, best)
+    return best
+
+
+def _half_windows(t: Floats, width_s: float) -> list[int]:
+    """Return the half widths to try, in samples: doubling, then the widest."""
+    samples = min(width_s / float(np.median(np.diff(t))), len(t))
+    widest = int((samples - 1) / 2) if np.isfinite(samples) else 0
+    doubling = [2**k for k in range(20) if 2**k < widest]
+    return [*doubling, widest] if widest >= 1 else []
+
+
+def _about_line(force: Floats, half: int) -> tuple[Floats, Floats]:
+    """Return each window's mean and its residual variance about a straight line."""
+    size = 2 * half + 1
+    mean = uniform_filter1d(force, size)
+    slope = savgol_filter(force, size, polyorder=1, deriv=1, mode="nearest")
+    total = uniform_filter1d(force**2, size) - mean**2
+    explained = slope**2 * half * (half + 1) / 3
+    return mean, np.maximum(total - explained, 0) * size / (size - 2)
+
+
+def force_at(record: LoadRecord, clock: Clock, camera_time_s: Floats) -> Floats:
+    """Return the force at the instants of the frames.
+
+    The record is smoothed over at most one frame interval (see `smoothed_force`), then interpolated
+    linearly.  One interval uses every sample of a dense record once, so the remaining noise of
+    different frames stays independent, as a regression over frames assumes.
+
+    Parameters
+    ----------
+    record
+        The load record.
+    clock
+        The machine's time of the frames.
+    camera_time_s
+        Times of the frames on the camera's clock, s, shape (n,).
+
+    Returns
+    -------
+    Floats
+        Force, N, shape (n,); NaN outside the record.
+    """
+    at = clock.machine_time(camera_time_s)
+    smooth = smoothed_force(record, frame_interval(at))
+    return np.interp(at, record.time_s, smooth, left=np.nan, right=np.nan)
+
+
+def frame_interval(times_s: Floats) -> float:
+    """Return the usual time between frames, s; 0 for a single frame."""
+    return float(np.median(np.diff(times_s))) if len(times_s) > 1 else 0.0

@@ -1,0 +1,277 @@
+"""Reading the testing machine's record: columns by name or number, units from headers or test file."""
+
+from __future__ import annotations
+
+import csv
+import re
+from pathlib import Path
+from textwrap import shorten
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from dic.errors import LoadRecordError, nearest
+from dic.quantities import EXAMPLES, factor
+from dic.sync.record import LoadRecord
+from dic.testfile import Column
+from dic.testfile import LoadRecord as Section
+
+Floats = NDArray[np.float64]
+
+#: A day at 1 kHz with five columns stays below this; anything larger is something else.
+MAX_BYTES = 500_000_000
+#: Fewer rows are no test.
+MIN_ROWS = 5
+#: Longest header line that is looked at.
+MAX_HEADER = 100_000
+
+_KINDS = {"time": "time", "force": "force", "displacement": "length", "extensometer": "strain"}
+
+_HEADER = re.compile(
+    r"(?P<name>.*?)\s*(?:\((?P<round>[^()]*)\)|\[(?P<square>[^\[\]]*)\]|/\s*(?P<slash>[^\s()\[\]]+))$"
+)
+#: No real header is longer, and the pattern's work grows faster than the text.
+_LONGEST_HEADER = 200
+
+
+def read_load_record(section: Section, path: Path) -> LoadRecord:
+    """Read the machine's record from a text table.
+
+    The first line holds the headers; columns are separated by tab, semicolon or comma, whichever of
+    these, in this order, stands in it.  Where the separator is not the comma, numbers may have a
+    decimal comma.  A column is named by its header, by its header without the unit if that is
+    unambiguous, or by its number, counted from 1.  The unit stands in the header, as in "Force (kN)",
+    "Load [lbf]" or "Kraft / N", or in the test file's ``units`` under the header or under the
+    quantity (``time``, ``force``, ``displacement``, ``extensometer``).
+
+    Parameters
+    ----------
+    section
+        The test file's description of the record.
+    path
+        The file, UTF-8 with or without byte-order mark.
+
+    Returns
+    -------
+    LoadRecord
+        Time, force and the other named columns in internal units.
+
+    Raises
+    ------
+    LoadRecordError
+        If the file cannot be read, a column or unit is not understood, a value is not a number, time
+        does not increase, or fewer than `MIN_ROWS` rows are there.
+    """
+    headers, separator = _headers(path)
+    written = {quantity: getattr(section, quantity) for quantity in _KINDS}
+    positions = {
+        quantity: _position(column, headers, quantity, path)
+        for quantity, column in written.items()
+        if column is not None
+    }
+    _refuse_stray_units(section.units, headers, path)
+    units = {
+        quantity: _unit(quantity, headers[position], section.units, path)
+        for quantity, position in positions.items()
+    }
+    table = _table(path, separator, sorted(set(positions.values())), len(headers))
+    values = {
+        quantity: _numbers(table[position], separator, headers[position], path)
+        * factor(units[quantity], _KINDS[quantity])
+        for quantity, position in positions.items()
+    }
+    _check_time(values["time"], table.index, path)
+    return LoadRecord(
+        path=path,
+        time_s=values["time"],
+        force_N=values["force"],
+        displacement_mm=values.get("displacement"),
+        extensometer=values.get("extensometer"),
+        columns={
+            quantity: f"{_split(headers[position])[0]} ({units[quantity]})"
+            for quantity, position in positions.items()
+        },
+    )
+
+
+def _headers(path: Path) -> tuple[list[str], str]:
+    """Return the headers and the separator."""
+    try:
+        if path.stat().st_size > MAX_BYTES:
+            raise LoadRecordError(
+                f"is larger than {MAX_BYTES // 1_000_000} MB",
+                where=str(path),
+                remedy="export only this test, or at a lower rate",
+            )
+        with path.open(encoding="utf-8-sig", newline="") as file:
+            line = file.readline(MAX_HEADER)
+    except OSError as error:
+        raise LoadRecordError(
+            f"cannot be read ({error.strerror})", where=str(path), remedy="check load_record.source"
+        ) from error
+    except UnicodeDecodeError as error:
+        raise _no_text(path) from error
+    separator = next((mark for mark in "\t;" if mark in line), ",")
+    headers = next(csv.reader([line], delimiter=separator), [])
+    if "\0" in line or not any(header.strip() for header in headers):
+        raise LoadRecordError(
+            "has no line of column headers at its top", where=str(path), remedy="export the record as CSV"
+        )
+    return [header.strip() for header in headers], separator
+
+
+def _no_text(path: Path) -> LoadRecordError:
+    return LoadRecordError("is not UTF-8 text", where=str(path), remedy="export the record as CSV in UTF-8")
+
+
+def _split(header: str) -> tuple[str, str]:
+    """Return name and unit of a header; the unit is empty where it says none."""
+    found = _HEADER.match(header) if len(header) <= _LONGEST_HEADER else None
+    if found is None:
+        return header, ""
+    return found["name"], (found["round"] or found["square"] or found["slash"] or "").strip()
+
+
+def _position(column: Column, headers: list[str], quantity: str, path: Path) -> int:
+    """Return where a column stands, counted from 0."""
+    where = f"{path}, load_record.{quantity}"
+    there = shorten(", ".join(f"'{header}'" for header in headers), 300, placeholder=" …")
+    if isinstance(column, int):
+        if 1 <= column <= len(headers):
+            return column - 1
+        raise LoadRecordError(
+            f"there is no column {column}, the file has {len(headers)} ({there})",
+            where=where,
+            remedy="count from 1",
+        )
+    found = [i for i, header in enumerate(headers) if header == column.strip()]
+    found = found or [i for i, header in enumerate(headers) if _split(header)[0] == column.strip()]
+    if len(found) == 1:
+        return found[0]
+    if found:
+        raise LoadRecordError(
+            f"'{column}' fits {len(found)} columns ({there})",
+            where=where,
+            remedy="give the column's number, counted from 1",
+        )
+    hint = nearest(column, headers)
+    remedy = hint if hint.endswith("?") else "name one of them, or give its number counted from 1"
+    raise LoadRecordError(f"there is no column '{column}', only {there}", where=where, remedy=remedy)
+
+
+def _refuse_stray_units(units: dict[str, str], headers: list[str], path: Path) -> None:
+    """Raise if a unit is given for something that is not there."""
+    known = {*headers, *(_split(header)[0] for header in headers), *_KINDS}
+    for key in units:
+        if key not in known:
+            raise LoadRecordError(
+                f"there is no column or quantity '{key}'",
+                where=f"{path}, load_record.units",
+                remedy=nearest(key, known),
+            )
+
+
+def _unit(quantity: str, header: str, units: dict[str, str], path: Path) -> str:
+    """Return a column's unit, checked to be one of its quantity."""
+    name, in_header = _split(header)
+    given = next((units[key] for key in (header, name, quantity) if key in units), None)
+    where = f"{path}, column '{header}'"
+    kind = _KINDS[quantity]
+    unit = in_header if given is None else given
+    if not unit:
+        raise LoadRecordError(
+            "says no unit",
+            where=where,
+            remedy=f'add load_record.units = {{ {quantity} = "{EXAMPLES[kind].split()[-1]}" }}',
+        )
+    try:
+        worth = factor(unit, kind)
+    except ValueError as error:
+        raise LoadRecordError(
+            str(error),
+            where=where,
+            remedy=f"correct it, or give the right one as load_record.units.{quantity}",
+        ) from error
+    if given is not None and _contradicts(in_header, worth, kind):
+        raise LoadRecordError(
+            f"the header says {in_header} but load_record.units says {given}",
+            where=where,
+            remedy="remove the wrong one",
+        )
+    return unit
+
+
+def _contradicts(in_header: str, worth: float, kind: str) -> bool:
+    """Tell whether a header names another unit; a remark like "(filtered)" is no unit."""
+    try:
+        return bool(in_header) and factor(in_header, kind) != worth
+    except ValueError:
+        return False
+
+
+def _table(path: Path, separator: str, positions: list[int], width: int) -> pd.DataFrame:
+    """Read the columns at `positions` as text, indexed by line of the file, blank lines left out."""
+    try:
+        table = pd.read_csv(
+            path,
+            sep=separator,
+            header=None,
+            names=list(range(width)),
+            usecols=positions,
+            index_col=False,
+            skiprows=1,
+            dtype=str,
+            keep_default_na=False,
+            skip_blank_lines=False,
+            encoding="utf-8-sig",
+        )
+    except UnicodeDecodeError as error:
+        raise _no_text(path) from error
+    except pd.errors.EmptyDataError:
+        table = pd.DataFrame(columns=positions, dtype=str)
+    except (pd.errors.ParserError, OSError, ValueError) as error:
+        raise LoadRecordError(
+            f"is no table ({shorten(str(error), 120, placeholder=' …')})",
+            where=str(path),
+            remedy="export the record as CSV",
+        ) from error
+    table.index = table.index + 2
+    # A short or blank line leaves cells missing even where empty cells are kept as text.
+    table = table.fillna("")
+    table = table[(table != "").any(axis=1)]
+    if len(table) < MIN_ROWS:
+        raise LoadRecordError(
+            f"holds {len(table)} rows of data, at least {MIN_ROWS} are needed",
+            where=str(path),
+            remedy="export the whole test",
+        )
+    return table
+
+
+def _numbers(text: pd.Series[str], separator: str, header: str, path: Path) -> Floats:
+    """Turn a column's text into numbers."""
+    if separator != ",":
+        text = text.str.replace(",", ".", regex=False)
+    values = np.asarray(pd.to_numeric(text, errors="coerce"), dtype=np.float64)
+    bad = np.flatnonzero(~np.isfinite(values))
+    if bad.size:
+        cell = shorten(str(text.iloc[bad[0]]), 60, placeholder=" …")
+        raise LoadRecordError(
+            f"'{cell}' is not a number",
+            where=f"{path}, row {text.index[bad[0]]}, column '{header}'",
+            remedy="correct or remove the row",
+        )
+    return values
+
+
+def _check_time(time_s: Floats, lines: pd.Index[int], path: Path) -> None:
+    """Raise where time stands still or runs back."""
+    back = np.flatnonzero(np.diff(time_s) <= 0)
+    if back.size:
+        here = back[0] + 1
+        raise LoadRecordError(
+            f"time does not increase (from {time_s[here - 1]:g} s to {time_s[here]:g} s)",
+            where=f"{path}, row {lines[here]}",
+            remedy="export one test only, with enough digits in the time",
+        )
