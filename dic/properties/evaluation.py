@@ -56,29 +56,18 @@ def evaluate(
     are common factors of every stress; they cancel in Poisson's ratio.  The clock's contribution is
     half the change that a shift by plus and minus one standard uncertainty makes.
     """
-    sheet = _Sheet(curve, loading_of(curve), clock, _common_factors(specimen, force_uncertainty))
+    common = {"force calibration": force_uncertainty, "section": specimen.area_uncertainty}
+    sheet = _Sheet(curve, clock, common, section)
+    proofs = [(f"{100 * offset:g}", sheet.proof(offset)) for offset in section.proof]
     entries = [
         ("youngs_modulus", "E", "MPa", sheet.youngs_modulus),
         ("poissons_ratio", "ν", "", sheet.poissons_ratio),
         ("shear_modulus", "G", "MPa", sheet.shear_modulus),
-        *(
-            (
-                f"proof_stress_{_percent(offset, '_')}",
-                f"Rp{_percent(offset, '.')}",
-                "MPa",
-                sheet.proof(offset),
-            )
-            for offset in section.proof
-        ),
+        *((f"proof_stress_{at.replace('.', '_')}", f"Rp{at}", "MPa", read) for at, read in proofs),
         ("tensile_strength", "Rm", "MPa", sheet.tensile_strength),
     ]
-    sheet.find_elastic(section)
     properties = {name: _entry(name, symbol, unit, read) for name, symbol, unit, read in entries}
     return Evaluation(properties, sheet.modulus_line())
-
-
-def _percent(offset: float, point: str) -> str:
-    return f"{100 * offset:g}".replace(".", point)
 
 
 @dataclass(frozen=True)
@@ -110,20 +99,15 @@ def _entry(name: str, symbol: str, unit: str, read: Callable[[], _Reading]) -> P
     )
 
 
-def _common_factors(specimen: Specimen, force_uncertainty: float | None) -> dict[str, float | None]:
-    """Return the relative standard uncertainties that all stresses share, None where not given."""
-    return {"force calibration": force_uncertainty, "section": specimen.area_uncertainty}
-
-
 class _Sheet:
-    """The readings of one curve."""
+    """The readings of one curve; `common` holds relative uncertainties that all stresses share."""
 
-    def __init__(self, curve: Curve, loading: Loading, clock: Clock, common: dict[str, float | None]) -> None:
-        self.curve, self.loading, self.clock, self.common = curve, loading, clock, common
-        self._elastic: Elastic | Undetermined = Undetermined("no frame was evaluated")
-
-    def find_elastic(self, section: Properties) -> None:
-        """Fit the elastic part, which most properties rest on."""
+    def __init__(
+        self, curve: Curve, clock: Clock, common: dict[str, float | None], section: Properties
+    ) -> None:
+        self.curve, self.clock, self.common = curve, clock, common
+        self.loading = loading_of(curve)
+        self._elastic: Elastic | Undetermined
         try:
             self._elastic = fit_elastic(self.loading, section.modulus)
         except Undetermined as reason:
@@ -146,13 +130,12 @@ class _Sheet:
     def youngs_modulus(self) -> _Reading:
         elastic, line = self.elastic, self.elastic.line
         relative = line.u_slope / line.slope
-        notes = [
-            f"relative standard error of the slope {100 * relative:.2g} %, r² = {line.r_squared:.6f}, {line.n} frames"
+        quality = [
+            f"relative standard error of the slope {100 * relative:.2g} %, "
+            f"r² = {line.r_squared:.6f}, {line.n} frames"
         ]
         if relative > GOOD_SLOPE:
-            notes.append(
-                f"the slope scatters by more than the {100 * GOOD_SLOPE:g} % that ISO 6892-1 asks for"
-            )
+            quality.append(f"the slope scatters by more than the {100 * GOOD_SLOPE:g} % of ISO 6892-1")
         value = elastic.modulus
         shifts = self._with_clock(lambda loading: 1 / _slope(loading, loading.strain, elastic.window).slope)
         statistics = {"scatter": value * relative * few_readings(line.n - 2), "clock": shifts}
@@ -161,7 +144,7 @@ class _Sheet:
             f"least-squares line of strain on stress, {elastic.rule}",
             statistics | self._of_stress(value),
             self._window(),
-            (*notes, *elastic.notes, *self._left_out(), _OPTICS),
+            (*quality, *elastic.notes, *self._left_out(), _OPTICS),
         )
 
     def poissons_ratio(self) -> _Reading:
@@ -238,15 +221,14 @@ class _Sheet:
     def tensile_strength(self) -> _Reading:
         curve = self.curve
         value = curve.peak_force_N / curve.area_mm2
-        notes = (
-            ("the record ends before the force drops: the coupon may bear more",) if curve.peak_at_end else ()
-        )
+        unbroken = "the record ends before the force drops: the coupon may bear more"
         return _Reading(
             value,
-            "largest force of the record, from a parabola through its noise, over the original section (ISO 6892-1)",
+            "largest force of the record, by a parabola through its noise, over the original section "
+            "(ISO 6892-1)",
             {"scatter": curve.u_peak_force_N / curve.area_mm2} | self._of_stress(value),
             {"time_s": (curve.peak_time_s, curve.peak_time_s)},
-            (*notes, *self._left_out()),
+            (*([unbroken] if curve.peak_at_end else []), *self._left_out()),
         )
 
     def _of_stress(self, value: float) -> dict[str, float]:
@@ -281,7 +263,8 @@ def _slope(loading: Loading, strain: Floats, window: slice) -> Line:
     there = np.isfinite(strain)
     if there.sum() < MIN_FRAMES:
         raise Undetermined(
-            f"the transverse strain was measured in {there.sum()} frames of the window, {MIN_FRAMES} are needed"
+            f"the transverse strain was measured in {there.sum()} frames of the window, "
+            f"{MIN_FRAMES} are needed"
         )
     return straight_line(stress[there], strain[there])
 

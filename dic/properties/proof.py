@@ -100,7 +100,7 @@ def _on_parabola(loading: Loading, line: Line, here: slice, offset: float) -> Cr
     if width == 0:
         return None
     design = np.vander((strain - middle) / width, 3)
-    fit: Floats = np.linalg.lstsq(design, stress, rcond=None)[0]
+    fit = np.linalg.lstsq(design, stress, rcond=None)[0].astype(np.float64)
     variance = float(np.sum((stress - design @ fit) ** 2)) / free
     # The elastic part's residuals, as stress, are the largest that noise alone can do here.
     allowed = (line.residual_s / line.slope) ** 2
