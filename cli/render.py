@@ -1,4 +1,4 @@
-"""`tauten render`: make a virtual test from a scenario."""
+"""``tauten render``: make a virtual test from a scenario."""
 
 from __future__ import annotations
 
@@ -15,16 +15,11 @@ def render(
     out: Annotated[Path, typer.Argument(help="Folder to fill; new, empty or an earlier render.")],
 ) -> None:
     """Make a virtual test: frames, load record, test file and the truth behind them."""
-    from rich.console import Console
-    from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn, TimeRemainingColumn
-
+    from dic_cli.screen import frames_progress
     from synthetic_images import load_scenario
     from synthetic_images import render as render_files
 
     described = load_scenario(scenario)
-    columns = (TextColumn("rendering"), BarColumn(), MofNCompleteColumn(), TimeRemainingColumn())
-    console = Console(stderr=True)
-    with Progress(*columns, console=console) as bar:
-        task = bar.add_task("rendering", total=described.camera.frames)
-        test = render_files(described, out, lambda done, total: bar.update(task, completed=done, total=total))
-    typer.echo(f"{test}\nThe truth behind it: {test.parent / 'truth.json'}")
+    with frames_progress("rendering") as progress:
+        test = render_files(described, out, progress)
+    typer.echo(f"{test}\nThe truth behind it: {test.with_name('truth.json')}")
