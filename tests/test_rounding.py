@@ -1,0 +1,71 @@
+"""Rounding to the uncertainty's digits."""
+
+from decimal import Decimal
+
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+
+from dic.rounding import decimals_for, fixed, uncertainty_alone, with_uncertainty
+
+positive = st.floats(min_value=1e-12, max_value=1e12)
+values = st.floats(min_value=-1e12, max_value=1e12)
+
+
+# JCGM 100:2008 (GUM) 7.2.6 rounds an uncertainty of 28.05 kHz (y = 10,057,62... ) to two digits, and
+# 7.2.2 writes a nominally 100 g standard as 100.021 47 g with u = 0.35 mg [from memory].
+@pytest.mark.parametrize(
+    ("value", "u", "written"),
+    [
+        (100.02147, 0.00035, "100.02147 ± 0.00035 g"),
+        (70.1234, 0.2123, "70.12 ± 0.21 g"),
+        (71234.0, 1234.0, "71200 ± 1200 g"),
+        (1.0, 0.0996, "1.00 ± 0.10 g"),
+        (-0.0004, 0.21, "0.00 ± 0.21 g"),
+        (1.0, 99.6, "0 ± 100 g"),
+    ],
+)
+def test_written_as_the_gum_asks(value, u, written):
+    assert with_uncertainty(value, u, "g") == written
+
+
+def test_without_value_or_uncertainty_says_so():
+    assert with_uncertainty(float("nan"), 1.0, "MPa") == "not determined"
+    assert with_uncertainty(12.345, float("nan"), "MPa") == "12.35 MPa (uncertainty not determined)"
+    assert with_uncertainty(12.345, 0.0) == "12.35 (uncertainty not determined)"
+    assert uncertainty_alone(float("nan"), "MPa") == "not determined"
+    assert uncertainty_alone(0.0, "MPa") == "0 MPa"
+
+
+@given(positive)
+def test_an_uncertainty_keeps_two_significant_digits(u):
+    shown = Decimal(fixed(u, decimals_for(u)))
+    digits = shown.scaleb(decimals_for(u))
+    assert digits == digits.to_integral_value()
+    assert 10 <= digits <= 99
+
+
+@given(values, positive)
+def test_rounding_moves_a_value_by_half_a_last_place_at_most(value, u):
+    decimals = decimals_for(u)
+    moved = abs(Decimal(fixed(value, decimals)) - Decimal(repr(value)))
+    assert moved <= Decimal("0.5").scaleb(-decimals)
+    # Half a unit of the second digit is at most 5 % of the uncertainty: rounding stays hidden in it.
+    assert moved <= Decimal("0.05") * Decimal(fixed(u, decimals))
+
+
+@given(values, positive)
+def test_rounding_twice_changes_nothing_and_the_sign_is_symmetric(value, u):
+    decimals = decimals_for(u)
+    once = fixed(value, decimals)
+    assert fixed(float(once), decimals) == once
+    assert fixed(-value, decimals).removeprefix("-") == once.removeprefix("-")
+
+
+# Fifteen digits survive the way through a float, so another unit changes no digit.
+@given(st.integers(-(10**12), 10**12), st.integers(1, 10**6), st.integers(-3, 3))
+def test_another_power_of_ten_of_the_unit_moves_only_the_point(value, u, power):
+    here, there = [[float(Decimal(n).scaleb(p)) for n in (value, u)] for p in (-3, power)]
+    assert decimals_for(there[1]) == decimals_for(here[1]) - (power + 3)
+    written = [Decimal(fixed(number, decimals_for(of))) for number, of in (here, there)]
+    assert written[0].scaleb(power + 3) == written[1]
