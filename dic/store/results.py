@@ -1,0 +1,182 @@
+"""The results as files that other programs read: ``results.json`` and ``history.csv``."""
+
+from __future__ import annotations
+
+import json
+import os
+from collections.abc import Mapping
+from contextlib import suppress
+from math import isfinite
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from dic.errors import StoreError
+from dic.rounding import COVERAGE_FACTOR
+from dic.store.tables import history_table
+
+if TYPE_CHECKING:
+    from dic.measurement import Measurement
+    from dic.properties.result import Property
+
+
+def write_results(measurement: Measurement, folder: Path) -> None:
+    """Write ``results.json`` and ``history.csv``, each whole or not at all.
+
+    Parameters
+    ----------
+    measurement
+        What the test gave.
+    folder
+        Where the files go; made if it does not exist.
+
+    Raises
+    ------
+    StoreError
+        If the folder cannot be written.
+    """
+    table = history_table(measurement.history, measurement.curve)
+    rows = table.to_csv(index=False, na_rep="NaN", lineterminator="\n")
+    text = json.dumps(results_of(measurement), indent=2, ensure_ascii=False, allow_nan=False)
+    write_whole(folder, "history.csv", encoded(rows))
+    write_whole(folder, "results.json", encoded(text + "\n"))
+
+
+def remove_results(folder: Path) -> None:
+    """Remove what an earlier run left, so that a run that fails leaves nothing that looks like its result.
+
+    Raises
+    ------
+    StoreError
+        If a file cannot be removed.
+    """
+    for name in ("results.json", "history.csv", "report.html"):
+        try:
+            (folder / name).unlink(missing_ok=True)
+        except OSError as error:
+            raise StoreError(
+                f"the earlier result cannot be removed ({error.strerror})",
+                where=str(folder / name),
+                remedy="close the file where it is open, or choose another folder with --out",
+            ) from error
+
+
+def results_of(measurement: Measurement) -> dict[str, Any]:
+    """Gather everything that ``results.json`` says, in types that JSON knows.
+
+    Returns
+    -------
+    dict
+        Numbers in internal units (MPa, s, deg, px); what is not a finite number is None.
+    """
+    test, clock, scene = measurement.test, measurement.clock, measurement.scene
+    content = {
+        "specimen": {"label": test.specimen.label, "material": test.specimen.material},
+        "properties": {name: _property(item) for name, item in measurement.properties.items()},
+        "sync": {
+            "offset_s": clock.offset_s,
+            "offset_standard_uncertainty_s": clock.offset_standard_uncertainty_s,
+            "drift": clock.drift,
+            "method": clock.method,
+            "notes": clock.notes,
+        },
+        "alignment": {
+            "axis_angle_deg": scene.axis_angle_deg,
+            "axis_method": scene.axis_method,
+            **measurement.alignment,
+        },
+        "quality": measurement.quality,
+        "warnings": [{"code": notice.code, "text": notice.text} for notice in measurement.notices],
+        "provenance": measurement.provenance,
+    }
+    plain: dict[str, Any] = _plain(content)
+    return plain
+
+
+def _property(item: Property) -> dict[str, Any]:
+    notes = item.notes
+    if not isfinite(item.value) and not notes:
+        notes = ("The value could not be determined; no reason was recorded.",)
+    return {
+        "value": item.value,
+        "unit": item.unit,
+        "standard_uncertainty": item.standard_uncertainty,
+        "method": item.method,
+        "window": item.window,
+        "notes": notes,
+        "symbol": item.symbol,
+        "coverage_factor": COVERAGE_FACTOR,
+        "expanded_uncertainty": COVERAGE_FACTOR * item.standard_uncertainty,
+        "contributions": item.contributions,
+    }
+
+
+def _plain(content: Any) -> Any:
+    """Turn paths, arrays and NumPy scalars into what JSON knows, and NaN, which it lacks, into None."""
+    if isinstance(content, Mapping):
+        return {str(key): _plain(value) for key, value in content.items()}
+    if isinstance(content, list | tuple):
+        return [_plain(value) for value in content]
+    if isinstance(content, np.ndarray | np.generic):
+        return _plain(content.tolist())
+    if isinstance(content, float):
+        return content if isfinite(content) else None
+    if content is None or isinstance(content, str | int):
+        return content
+    return str(content)
+
+
+def encoded(text: str) -> bytes:
+    """Encode as UTF-8, with an escape for what a broken file name may carry."""
+    return text.encode("utf-8", "backslashreplace")
+
+
+def write_whole(folder: Path, name: str, content: bytes) -> Path:
+    """Write a file below `folder` so that it is there whole or not at all.
+
+    Parameters
+    ----------
+    folder
+        The result folder.
+    name
+        File name, or relative path, below it.
+    content
+        What to write.
+
+    Returns
+    -------
+    Path
+        The file.
+
+    Raises
+    ------
+    StoreError
+        If the file cannot be written, or would lie outside the folder.
+    """
+    path = folder / name
+    if not path.parent.resolve().is_relative_to(folder.resolve()):
+        raise StoreError(
+            f"'{name}' would lie outside the result folder",
+            where=str(folder),
+            remedy="remove the link that leads out of it",
+        )
+    # In the same folder, because a rename is whole only within one file system.
+    temporary = path.with_name(f".{path.name}.{os.getpid()}.part")
+    try:
+        path.parent.mkdir(parents=True, exist_ok=True)
+        temporary.unlink(missing_ok=True)
+        # "x" follows no link that somebody may have laid there.
+        with temporary.open("xb") as file:
+            file.write(content)
+        os.replace(temporary, path)
+    except OSError as error:
+        raise StoreError(
+            f"cannot be written ({error.strerror})",
+            where=str(path),
+            remedy="check the folder's rights and free space, and close the file where it is open",
+        ) from error
+    finally:
+        with suppress(OSError):
+            temporary.unlink(missing_ok=True)
+    return path

@@ -1,0 +1,117 @@
+"""Results as tables: the history for a spreadsheet, the properties for a terminal."""
+
+from __future__ import annotations
+
+from math import isfinite
+from textwrap import wrap
+from typing import TYPE_CHECKING
+
+from dic.quantities import for_people
+from dic.rounding import COVERAGE_FACTOR, uncertainty_alone, with_uncertainty
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+    from dic.measurement import Measurement
+    from dic.properties.result import Curve, Property
+    from dic.strain.history import GaugeHistory
+
+#: Names that people use for the properties.
+TITLES = {
+    "youngs_modulus": "Young's modulus",
+    "poissons_ratio": "Poisson's ratio",
+    "shear_modulus": "Shear modulus",
+    "tensile_strength": "Tensile strength",
+}
+
+
+def history_table(history: GaugeHistory, curve: Curve) -> pd.DataFrame:
+    """Put the gauge readings and the stress at the same instants side by side, one row per frame.
+
+    Parameters
+    ----------
+    history
+        Gauge readings, n frames.
+    curve
+        Stress at the same frames, n instants.
+
+    Returns
+    -------
+    pandas.DataFrame
+        n rows.  Times in s (``time_s`` on the camera's clock, ``machine_time_s`` on the machine's),
+        force in N, stress in MPa, strains without unit; NaN where not measured, the reason in ``status``.
+    """
+    import pandas as pd
+
+    return pd.DataFrame(
+        {
+            "frame": history.frame,
+            "time_s": history.time_s,
+            "force_N": curve.force_N,
+            "stress_MPa": curve.stress_MPa,
+            "strain_axial": history.axial,
+            "strain_transverse": history.transverse,
+            "strain_shear": history.shear,
+            "u_strain_axial": history.u_axial,
+            "u_strain_transverse": history.u_transverse,
+            "valid_fraction": history.valid_fraction,
+            "status": list(history.status),
+            # Further columns stand behind those that other programs may count on.
+            "machine_time_s": curve.time_s,
+            "strain_extensometer": history.extensometer,
+            "strain_bending": history.bending,
+            "u_strain_shear": history.u_shear,
+            "u_strain_extensometer": history.u_extensometer,
+            "shift_axial_px": history.shift_px[:, 0],
+            "shift_transverse_px": history.shift_px[:, 1],
+            "name": list(history.name),
+        }
+    )
+
+
+def title_of(name: str) -> str:
+    """Return the name that people use for a property, for example ``0.2 % proof stress``."""
+    if name.startswith("proof_stress_"):
+        return f"{name.removeprefix('proof_stress_').replace('_', '.')} % proof stress"
+    return TITLES.get(name, name.replace("_", " ").capitalize())
+
+
+def shown_in(item: Property) -> tuple[float, str]:
+    """Return the factor from a property's internal unit to the one that people read, and that unit."""
+    value, unit = for_people(item.value, item.unit, item.name)
+    # The uncertainty follows the value's unit, whatever its own size.
+    return (value / item.value if item.value and isfinite(item.value) else 1.0), unit
+
+
+def stated(item: Property) -> tuple[str, str]:
+    """Return a property as people read it.
+
+    Returns
+    -------
+    tuple of str
+        The value with its expanded uncertainty (k = 2), and the standard uncertainty alone.
+    """
+    scale, unit = shown_in(item)
+    standard = item.standard_uncertainty * scale
+    expanded = with_uncertainty(item.value * scale, COVERAGE_FACTOR * standard, unit)
+    return expanded, uncertainty_alone(standard, unit)
+
+
+def properties_text(measurement: Measurement) -> str:
+    """Write the properties and the warnings as plain text, for ``print``.
+
+    Returns
+    -------
+    str
+        A table with one property a line, its coverage factor, and each warning below.
+    """
+    specimen = measurement.test.specimen
+    heading = f"{specimen.label} ({specimen.material})" if specimen.material else specimen.label
+    rows = [(title_of(item.name), item.symbol, stated(item)[0]) for item in measurement.properties.values()]
+    widths = [max((len(row[column]) for row in rows), default=0) for column in (0, 1)]
+    lines = [heading, ""]
+    lines += [f"  {title:<{widths[0]}}  {symbol:<{widths[1]}}  {text}" for title, symbol, text in rows]
+    lines += ["", f"± is the expanded uncertainty, k = {COVERAGE_FACTOR:g} (about 95 %)."]
+    for notice in measurement.notices:
+        lines += wrap(f"Warning: {notice.text}", 96, subsequent_indent="         ")
+    return "\n".join(lines)
