@@ -1,0 +1,278 @@
+"""Pictures: strain maps over the photograph, and where the gauge lay on the coupon."""
+
+from __future__ import annotations
+
+from functools import cache
+from math import floor, isfinite, log10
+from typing import TYPE_CHECKING
+
+import numpy as np
+from matplotlib.axes import Axes
+from matplotlib.colors import Colormap, ListedColormap
+from matplotlib.patches import Polygon, Rectangle
+from matplotlib.ticker import MaxNLocator
+
+from dic.measurement import Measurement, Scene
+from dic.report.figures import WIDTH, Drawing, legend_above, sheet, strain_unit
+from dic.report.moments import Moment
+from dic.rounding import uncertainty_alone
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+#: Pixels of the photograph that a printed panel can show across.
+_MOST_PIXELS = 900
+
+_HIGHLIGHT = "#b8560f"
+
+
+def draw_maps(measurement: Measurement, fields: xr.Dataset, moments: list[Moment]) -> list[Drawing]:
+    """Draw the axial, transverse and shear strain at each moment over the reference photograph.
+
+    Parameters
+    ----------
+    measurement
+        What the test gave.
+    fields
+        Fields on (frame, y, x), in the reference picture's coordinates.
+    moments
+        Which frames; one that the fields do not hold is left out.
+
+    Returns
+    -------
+    list of Drawing
+        One figure for each moment.
+    """
+    kept = set(fields["frame"].values.tolist())
+    history = measurement.history
+    return [
+        _map(measurement, fields.sel(frame=int(history.frame[moment.row])), moment)
+        for moment in moments
+        if int(history.frame[moment.row]) in kept
+    ]
+
+
+def draw_scene(measurement: Measurement) -> Drawing:
+    """Draw gauge region, axis, subset and strain window on the reference photograph."""
+    scene = measurement.scene
+    rows, columns = scene.photograph.shape
+    figure, (axes,) = sheet(height=float(np.clip(WIDTH * rows / columns, 2.2, 5.4)) + 0.5)
+    _photograph(axes, scene, (0, columns, 0, rows), fade=0.25)
+    axes.add_patch(_outline(scene, lw=1.6, label="gauge region"))
+    _arrow(axes, scene)
+    _squares(axes, scene)
+    _scale_bar(axes, scene)
+    # The picture's frame is narrower than the sheet for a tall coupon; the legend then needs one column.
+    legend_above(axes, 1 if rows > columns else 2)
+    reading = (
+        "The reference picture with the region whose strain is averaged (outline) and the direction of "
+        f"the pull (arrow, {scene.axis_angle_deg:.2f}° clockwise from the vertical; {scene.axis_method}). "
+        f"The filled squares show one subset ({scene.subset_px} px, the patch that is recognised again) "
+        f"and the window over which a point of the strain maps is formed ({_gauge_size(scene)}). The "
+        "outline should lie wholly on the speckled coupon, clear of edges and grips."
+    )
+    alt = (
+        "Reference photograph of the coupon with the outline of the gauge region and an arrow along the pull."
+    )
+    return Drawing("gauge-on-coupon", "Where the strain was measured", reading, alt, figure, vector=False)
+
+
+def _map(measurement: Measurement, field: xr.Dataset, moment: Moment) -> Drawing:
+    scene, curve, history = measurement.scene, measurement.curve, measurement.history
+    left, right, top, bottom = view = _view(field, scene)
+    tall = bottom - top > right - left
+    shape = (1, 3) if tall else (3, 1)
+    ratio = (bottom - top) / (right - left)
+    height = (
+        np.clip(WIDTH / 3 * ratio + 0.9, 2.4, 6.0) if tall else np.clip(3 * (WIDTH * ratio + 0.6), 3.0, 7.5)
+    )
+    figure, panels = sheet(*shape, height=float(height))
+    spreads = []
+    for axes, component in zip(panels, ("axial", "transverse", "shear"), strict=True):
+        _photograph(axes, scene, view, fade=0.55)
+        spreads.append(_panel(axes, field, component, tall))
+        axes.add_patch(_outline(scene, lw=0.9))
+    _scale_bar(panels[0], scene)
+    panels[-1].add_patch(_square(scene.map_gauge_px, left, top, view, fill=False, ec="black", lw=1.0))
+    frame, row = int(history.frame[moment.row]), moment.row
+    reading = (
+        f"Frame {frame} ({history.name[row]}) at {curve.time_s[row]:.2f} s, stress "
+        f"{curve.stress_MPa[row]:.4g} MPa, axial strain {_sized(curve.axial[row])} over the gauge "
+        f"(outline). Each point is formed over a window of {_gauge_size(scene)} (black square); nothing "
+        f"smaller can be seen. Scatter over the map (standard deviation): {', '.join(spreads)}. A coupon "
+        "pulled straight shows even colour; a slope from side to side is bending, a band or spot is local "
+        "yielding, a weak place or lost pattern. Points that could not be measured are left out. Colours "
+        "span the middle 98 % of the values."
+    )
+    alt = f"Maps of axial, transverse and shear strain over the photograph of the coupon, frame {frame}."
+    title = f"{moment.letter}: {moment.title}"
+    return Drawing(f"map-{moment.letter.lower()}", title, reading, alt, figure, vector=False)
+
+
+def _panel(axes: Axes, field: xr.Dataset, component: str, tall: bool) -> str:
+    """Draw one component; return its scatter in words."""
+    strain = field[f"strain_{component}"].values
+    if not np.isfinite(strain).any():
+        axes.set_title(f"{component}: not measured", fontsize=8)
+        return f"{component} not measured"
+    low, high = np.nanpercentile(strain, [1, 99])
+    if component == "shear":
+        # Zero has a meaning for shear: its sign is a direction.  Axial and transverse run one way.
+        low, high = -max(abs(low), abs(high)), max(abs(low), abs(high))
+    scale, unit = strain_unit(np.array([low, high]))
+    # A field without any variation still needs a colour scale of some width.
+    margin = 0.0 if high > low else max(abs(high) * 1e-3, 1e-6)
+    picture = axes.imshow(
+        strain * scale,
+        extent=_extent(field),
+        cmap=_about_zero() if component == "shear" else "cividis",
+        vmin=(low - margin) * scale,
+        vmax=(high + margin) * scale,
+        interpolation="nearest",
+        alpha=0.9,
+    )
+    axes.set_title(f"{component}, {unit}", fontsize=8)
+    bar = axes.figure.colorbar(
+        picture,
+        ax=axes,
+        location="bottom" if tall else "right",
+        extend="both",
+        fraction=0.05,
+        pad=0.02,
+        aspect=14,
+    )
+    bar.locator = MaxNLocator(nbins=2 if tall else 4)
+    bar.ax.tick_params(labelsize=7)
+    bar.update_ticks()
+    spread = float(np.nanstd(strain))
+    scale, unit = strain_unit(spread)
+    return f"{component} {uncertainty_alone(spread * scale, unit)}"
+
+
+def _sized(strain: float) -> str:
+    scale, unit = strain_unit(strain)
+    return f"{strain * scale:.4g} {unit}"
+
+
+@cache
+def _about_zero() -> Colormap:
+    """Return a colour map from blue over near-white to brown, even on both sides of the middle.
+
+    Straight lines in CIELAB make equal steps of value equal steps to the eye, and the two ends differ
+    for colour-blind people as well.
+    """
+    from skimage.color import lab2rgb
+
+    side = np.linspace(1.0, 0.0, 128)[:, np.newaxis]
+    middle, blue, brown = (
+        np.array([95.0, 0.0, 0.0]),
+        np.array([35.0, 0.0, -36.0]),
+        np.array([35.0, 20.0, 38.0]),
+    )
+    halves = [middle + side * (blue - middle), (middle + side * (brown - middle))[::-1]]
+    return ListedColormap(np.clip(lab2rgb(np.concatenate(halves)), 0.0, 1.0), name="about_zero")
+
+
+def _extent(field: xr.Dataset) -> tuple[float, float, float, float]:
+    """Return left, right, bottom and top of the map, px: half a step beyond the outer subset centres."""
+    x, y = field["x"].values, field["y"].values
+    half = 0.5 * float(field.attrs["step_px"])
+    return float(x.min()) - half, float(x.max()) + half, float(y.max()) + half, float(y.min()) - half
+
+
+def _view(field: xr.Dataset, scene: Scene) -> tuple[float, float, float, float]:
+    """Return left, right, top and bottom of the part of the photograph that is shown, px."""
+    left, right, bottom, top = _extent(field)
+    border = 0.12 * min(right - left, bottom - top)
+    rows, columns = scene.photograph.shape
+    return (
+        max(left - border, 0),
+        min(right + border, columns),
+        max(top - border, 0),
+        min(bottom + border, rows),
+    )
+
+
+def _photograph(axes: Axes, scene: Scene, view: tuple[float, float, float, float], fade: float) -> None:
+    """Show the photograph, lightened by `fade` so that what lies on it stands out."""
+    left, right, top, bottom = view
+    stride = max(1, round(max(right - left, bottom - top) / _MOST_PIXELS))
+    grey = scene.photograph[::stride, ::stride] / 255.0
+    rows, columns = scene.photograph.shape
+    axes.imshow(
+        fade + (1.0 - fade) * grey,
+        extent=(-0.5, columns - 0.5, rows - 0.5, -0.5),
+        cmap="gray",
+        vmin=0.0,
+        vmax=1.0,
+    )
+    axes.set(xlim=(left, right), ylim=(bottom, top), xticks=[], yticks=[], aspect="equal", autoscale_on=False)
+    axes.grid(visible=False)
+    axes.spines[:].set_visible(False)
+
+
+def _outline(scene: Scene, lw: float, label: str = "") -> Polygon:
+    return Polygon(scene.region, closed=True, fill=False, ec=_HIGHLIGHT, lw=lw, label=label)
+
+
+def _arrow(axes: Axes, scene: Scene) -> None:
+    """Draw a double arrow along the pull, through the middle of the gauge."""
+    angle = np.deg2rad(scene.axis_angle_deg)
+    along = np.array([-np.sin(angle), np.cos(angle)])
+    centre = scene.region.mean(axis=0)
+    half = 0.4 * np.ptp(scene.region @ along)
+    style = {"arrowstyle": "<->", "color": _HIGHLIGHT, "lw": 1.6, "shrinkA": 0, "shrinkB": 0}
+    axes.annotate("", centre + half * along, centre - half * along, arrowprops=style)
+
+
+def _squares(axes: Axes, scene: Scene) -> None:
+    """Draw one subset inside one strain window, at the gauge's middle beside the arrow."""
+    centre = scene.region.mean(axis=0)
+    sizes = [
+        (scene.map_gauge_px, "strain window of the maps", "#f4e3c8"),
+        (scene.subset_px, "subset", "#14506e"),
+    ]
+    for size, label, colour in sizes:
+        if isfinite(size):
+            corner = centre - size / 2
+            axes.add_patch(
+                Rectangle(corner, size, size, fc=colour, ec="black", lw=0.8, alpha=0.85, label=label)
+            )
+
+
+def _square(
+    size: float, left: float, top: float, view: tuple[float, float, float, float], **style: object
+) -> Rectangle:
+    inset = 0.02 * (view[3] - view[2])
+    return Rectangle((left + inset, top + inset), size, size, **style)  # type: ignore[arg-type]
+
+
+def _scale_bar(axes: Axes, scene: Scene) -> None:
+    """Draw a bar of a round number of millimetres, where the scale is known."""
+    if not (isfinite(scene.scale_mm) and scene.scale_mm > 0):
+        return
+    (left, right), (bottom, top) = axes.get_xlim(), axes.get_ylim()
+    length = _round_length(0.4 * (right - left) * scene.scale_mm)
+    start, level = left + 0.06 * (right - left), bottom - 0.03 * (bottom - top)
+    axes.plot(
+        [start, start + length / scene.scale_mm], [level, level], color="black", lw=2.5, solid_capstyle="butt"
+    )
+    text = axes.annotate(
+        f"{length:g} mm", (start, level), xytext=(1, 5), textcoords="offset points", fontsize=7
+    )
+    text.set_bbox({"boxstyle": "square,pad=0.15", "fc": "white", "ec": "none", "alpha": 0.8})
+
+
+def _round_length(length: float) -> float:
+    """Return the largest of 1, 2, 5, 10, ... that is not longer."""
+    power = 10.0 ** floor(log10(length))
+    # Just below a power of ten the logarithm rounds up, and that power is the answer as nearly as can be.
+    return max((step * power for step in (1.0, 2.0, 5.0) if step * power <= length), default=power)
+
+
+def _gauge_size(scene: Scene) -> str:
+    """Say the size of the maps' strain window (virtual strain gauge) in px and mm."""
+    if not isfinite(scene.map_gauge_px):
+        return "unknown size"
+    size = f"{scene.map_gauge_px:g} px"
+    return f"{size} = {scene.map_gauge_px * scene.scale_mm:.3g} mm" if isfinite(scene.scale_mm) else size

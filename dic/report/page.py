@@ -1,0 +1,178 @@
+"""The report: one page that opens in any browser with no network, and its figures as files."""
+
+from __future__ import annotations
+
+from base64 import b64encode
+from dataclasses import dataclass
+from importlib.resources import files
+from math import isfinite
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from jinja2 import Environment, StrictUndefined
+from markupsafe import Markup
+
+from dic.measurement import Measurement, Scene
+from dic.properties.result import Property
+from dic.report import words
+from dic.report.clocks import draw_clocks
+from dic.report.curves import draw_curves
+from dic.report.figures import Drawing, house_style, render
+from dic.report.maps import draw_maps, draw_scene
+from dic.report.moments import choose_moments
+from dic.rounding import COVERAGE_FACTOR, uncertainty_alone, with_uncertainty
+from dic.store.results import encoded, write_whole
+from dic.store.tables import shown_in, stated, title_of
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+_MEDIA = {"svg": "image/svg+xml", "png": "image/png"}
+
+
+@dataclass(frozen=True)
+class Picture:
+    """A figure as the template sees it: its words and the picture itself as a data URI."""
+
+    name: str
+    title: str
+    reading: str
+    alt: str
+    source: str
+
+
+def write_report(measurement: Measurement, fields: xr.Dataset, folder: Path) -> Path:
+    """Write ``report.html`` and ``figures/*.png`` and ``*.svg``.
+
+    Parameters
+    ----------
+    measurement
+        What the test gave.
+    fields
+        Displacement and strain fields on (frame, y, x); ``attrs`` say ``step_px``.
+    folder
+        The result folder.
+
+    Returns
+    -------
+    Path
+        The page.
+
+    Raises
+    ------
+    StoreError
+        If the folder cannot be written.
+    """
+    label = measurement.test.specimen.label
+    with house_style():
+        moments = choose_moments(measurement)
+        groups = {
+            "curves": draw_curves(measurement, moments),
+            "maps": draw_maps(measurement, fields, moments),
+            "scene": [draw_scene(measurement)],
+            "clocks": draw_clocks(measurement),
+        }
+        pictures = {
+            name: [_published(drawing, label, folder) for drawing in drawings]
+            for name, drawings in groups.items()
+        }
+    _remove_stale(folder, {picture.name for group in pictures.values() for picture in group})
+    return write_whole(folder, "report.html", encoded(_page(measurement, pictures)))
+
+
+def _published(drawing: Drawing, label: str, folder: Path) -> Picture:
+    """Save a figure in both formats and return it as the page carries it."""
+    content = render(drawing, label)
+    for ending, data in content.items():
+        write_whole(folder, f"figures/{drawing.name}.{ending}", data)
+    ending = "svg" if drawing.vector else "png"
+    source = f"data:{_MEDIA[ending]};base64,{b64encode(content[ending]).decode()}"
+    return Picture(drawing.name, drawing.title, drawing.reading, drawing.alt, source)
+
+
+def _remove_stale(folder: Path, names: set[str]) -> None:
+    """Remove maps and fits of an earlier evaluation that this one does not have."""
+    sometimes = {
+        "elastic-part",
+        "modulus-residuals",
+        "clocks",
+        *(f"map-{letter}" for letter in "abcdefghijklmnop"),
+    }
+    for name in sometimes - names:
+        for ending in _MEDIA:
+            (folder / "figures" / f"{name}.{ending}").unlink(missing_ok=True)
+
+
+def _page(measurement: Measurement, pictures: dict[str, list[Picture]]) -> str:
+    room = files("dic.report")
+    environment = Environment(
+        autoescape=True, undefined=StrictUndefined, trim_blocks=True, lstrip_blocks=True
+    )
+    template = environment.from_string(room.joinpath("page.html").read_text(encoding="utf-8"))
+    test = measurement.test
+    return template.render(
+        style=Markup(room.joinpath("page.css").read_text(encoding="utf-8")),  # noqa: S704  (our own file)
+        specimen=test.specimen,
+        day=words.day(measurement.provenance),
+        frames=len(measurement.history),
+        area=f"{measurement.curve.area_mm2:.4g} mm²",
+        k=f"{COVERAGE_FACTOR:g}",
+        properties=[_entry(item) for item in measurement.properties.values()],
+        notices=measurement.notices,
+        pictures=pictures,
+        clock=measurement.clock,
+        offset=with_uncertainty(
+            measurement.clock.offset_s, COVERAGE_FACTOR * measurement.clock.offset_standard_uncertainty_s, "s"
+        ),
+        record_notes=measurement.record.notes,
+        columns=measurement.record.columns,
+        alignment=words.labelled(
+            {"axis_angle_deg": measurement.scene.axis_angle_deg, **measurement.alignment}
+        ),
+        quality=words.labelled({"noise_grey": measurement.scene.noise_grey, **measurement.quality}),
+        settings=words.flat(test.model_dump(mode="json", exclude_none=True)) + _worked_out(measurement.scene),
+        provenance=words.grouped(
+            # The test file has its own table already.
+            {key: value for key, value in measurement.provenance.items() if key != "test_file"}
+        ),
+        cautions=words.CAUTIONS,
+    )
+
+
+def _worked_out(scene: Scene) -> list[tuple[str, str]]:
+    """Return the settings that the program chose or found itself."""
+    return [
+        ("scale in force", f"{scene.scale_mm:.5g} mm/px" if isfinite(scene.scale_mm) else "unknown"),
+        ("subset in force", f"{scene.subset_px} px, one every {scene.step_px} px"),
+        ("strain window of the maps", f"{scene.map_gauge_px:g} px"),
+        ("axis in force", f"{scene.axis_angle_deg:.3f}° from the vertical, {scene.axis_method}"),
+    ]
+
+
+def _entry(item: Property) -> dict[str, Any]:
+    """Return a property as the template shows it."""
+    value, standard = stated(item)
+    return {
+        "anchor": words.identifier(item.name),
+        "title": title_of(item.name),
+        "symbol": words.symbol(item.symbol),
+        "value": value,
+        "standard": standard,
+        "method": item.method,
+        "window": words.window(item.window),
+        # One range names the window; the others say the same in other quantities.
+        "short_window": words.window(dict(list(item.window.items())[:1])),
+        "notes": item.notes,
+        "contributions": _contributions(item),
+    }
+
+
+def _contributions(item: Property) -> list[tuple[str, str, float]]:
+    """Return source, standard uncertainty and share of the variance in percent, the largest first."""
+    known = {source: abs(u) for source, u in item.contributions.items() if isfinite(u)}
+    total = sum(u**2 for u in known.values())
+    scale, unit = shown_in(item)
+    return [
+        (source, uncertainty_alone(u * scale, unit), 100 * u**2 / total if total else 0.0)
+        for source, u in sorted(known.items(), key=lambda pair: -pair[1])
+    ]

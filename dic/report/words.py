@@ -1,0 +1,165 @@
+"""Numbers and names in the words of the page."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Mapping
+from datetime import datetime
+from math import isfinite
+from typing import Any
+
+import numpy as np
+from markupsafe import Markup
+
+from dic.report.figures import strain_unit
+
+#: Units that the end of a name stands for.
+_UNITS = {
+    "percent": "%",
+    "deg": "°",
+    "px": "px",
+    "mm": "mm",
+    "s": "s",
+    "MPa": "MPa",
+    "N": "N",
+    "grey": "grey levels",
+}
+
+#: What people should know about a figure, by its name in ``results.json``.
+MEANINGS = {
+    "axis_angle_deg": (
+        "Direction of the pull",
+        "Angle from the picture's vertical, clockwise; strains are turned into this direction first.",
+    ),
+    "bending_percent": (
+        "Bending in the picture's plane",
+        "How much more the gauge's edge stretches than its middle, in the modulus window; much of it "
+        "means that the grips pull crookedly. Bending through the thickness cannot be seen by one camera.",
+    ),
+    "shear_percent": (
+        "Shear per axial strain",
+        "In the modulus window; it should be small where the axis was found well and the material has no "
+        "preferred direction.",
+    ),
+    "valid_fraction": (
+        "Subsets measured",
+        "Share of the gauge's subsets that were recognised again, in the middle frame of all; it should stay "
+        "near 100 %.",
+    ),
+    "subsets": ("Subsets", "How many patches were followed in every frame."),
+    "speckle_px": ("Speckle size", "3 to 5 px is good (common practice)."),
+    "grey_range_percent": (
+        "Contrast",
+        "Grey range of the speckles as a share of the camera's full scale; the more, the less noise in "
+        "strain.",
+    ),
+    "saturated_fraction": ("Clipped pixels", "Share of pixels at full scale, where the pattern is lost."),
+    "noise_grey": ("Camera noise", "Scatter of one pixel in one frame, from what matching left over."),
+}
+
+#: What lies behind each number of the report, in the order of importance.
+CAUTIONS = (
+    "The values describe this coupon in this test. A measured strength or modulus is not a design "
+    "allowable; those come from many tests, a standard's statistics and a licensed engineer's judgement.",
+    "Whether the test conforms to a standard is decided by that standard and, where it applies, by an "
+    "accredited laboratory; this report states what was done, not that it conforms.",
+    "One camera sees one face and one plane. Bending through the thickness is invisible to it and "
+    "falsifies strains; where that matters, measure the opposite face as well.",
+    "Motion of the coupon towards or away from the camera looks like strain, the same amount in both "
+    "directions.",
+    "Uncertainties contain what their tables list and nothing else; notes name what was left out.",
+)
+
+
+def symbol(text: str) -> Markup:
+    """Set a property's symbol as standards print it: a letter in italics, its index lowered."""
+    letter, index = text[:1], text[1:]
+    return (
+        Markup("<i>{}</i><sub>{}</sub>").format(letter, index)
+        if index
+        else Markup("<i>{}</i>").format(letter)
+    )
+
+
+def window(bounds: Mapping[str, tuple[float, float]]) -> str:
+    """Say the bounds of the data that were used."""
+    return "; ".join(_range(name, low, high) for name, (low, high) in bounds.items())
+
+
+def _range(name: str, low: float, high: float) -> str:
+    stem, _, ending = name.rpartition("_")
+    scale, unit = 1.0, _UNITS.get(ending, "")
+    if name == "strain":
+        scale, unit = strain_unit(np.array([low, high]))
+    low_text, high_text = f"{low * scale:.4g}", f"{high * scale:.4g}"
+    bounds = low_text if low_text == high_text else f"{low_text} to {high_text}"
+    return f"{stem if unit and stem else name} {bounds} {unit}".rstrip()
+
+
+def labelled(figures: Mapping[str, Any]) -> list[tuple[str, str, str]]:
+    """Return label, value with unit, and meaning of figures whose names end in their units."""
+    return [_labelled(name, value) for name, value in figures.items()]
+
+
+def _labelled(name: str, value: Any) -> tuple[str, str, str]:
+    stem, _, ending = name.rpartition("_")
+    unit = _UNITS.get(ending, "")
+    label, meaning = MEANINGS.get(name, (heading(stem if unit else name), ""))
+    if not isinstance(value, int | float | np.number):
+        return label, str(value), meaning
+    if not isfinite(value):
+        return label, "not determined", meaning
+    if ending == "fraction":
+        return label, f"{100 * value:.4g} %", meaning
+    if "strain" in name and not unit:
+        scale, unit = strain_unit(float(value))
+        return label, f"{value * scale:.3g} {unit}", meaning
+    return label, f"{value:.4g} {unit}".rstrip(), meaning
+
+
+def heading(name: str) -> str:
+    """Turn a key into words."""
+    words = name.replace("_", " ").strip()
+    return words[:1].upper() + words[1:]
+
+
+def day(provenance: Mapping[str, Any]) -> str:
+    """Return the day of the evaluation, or say that it was not recorded."""
+    try:
+        return datetime.fromisoformat(str(provenance["made"])).strftime("%Y-%m-%d %H:%M %Z").strip()
+    except (KeyError, ValueError):
+        return "date not recorded"
+
+
+def flat(content: Mapping[str, Any], prefix: str = "") -> list[tuple[str, str]]:
+    """Return keys and values of nested settings as rows, inner keys behind a dot."""
+    rows: list[tuple[str, str]] = []
+    for key, value in content.items():
+        name = f"{prefix}{key}"
+        if isinstance(value, Mapping):
+            rows += flat(value, f"{name}.")
+        elif isinstance(value, list | tuple):
+            rows.append(
+                (name, ", ".join(f"{item:g}" if isinstance(item, float) else str(item) for item in value))
+            )
+        elif isinstance(value, float):
+            rows.append((name, f"{value:.6g}"))
+        else:
+            rows.append((name, str(value)))
+    return rows
+
+
+def grouped(content: Mapping[str, Any]) -> list[tuple[str, list[tuple[str, str]]]]:
+    """Return nested content as tables: a heading and its rows, loose values first."""
+    loose = {key: value for key, value in content.items() if not isinstance(value, Mapping)}
+    tables = [("General", flat(loose))] if loose else []
+    nested = {key: value for key, value in content.items() if isinstance(value, Mapping)}
+    return tables + [(_CAPTIONS.get(key, heading(key)), flat(value)) for key, value in nested.items()]
+
+
+_CAPTIONS = {"sha256": "Fingerprints of the inputs (SHA-256)"}
+
+
+def identifier(name: str) -> str:
+    """Return a name that can serve as an anchor."""
+    return re.sub(r"[^a-z0-9]+", "-", name.lower()).strip("-")
