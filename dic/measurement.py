@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dic.errors import Notice
-from dic.properties.result import Curve, Property
+from dic.properties.result import Curve, ModulusLine, Property
 from dic.strain.history import GaugeHistory
 from dic.sync.record import Clock, LoadRecord
 from dic.testfile import TestFile
@@ -73,6 +73,10 @@ class Measurement:
         How the clocks were joined.
     curve
         Stress and strain at the frames.
+    line
+        The straight line behind Young's modulus, for drawing.
+    line
+        The modulus line.
     properties
         By name, in the order of the sheet.
     alignment, quality
@@ -91,6 +95,7 @@ class Measurement:
     record: LoadRecord
     clock: Clock
     curve: Curve
+    line: ModulusLine
     properties: dict[str, Property]
     alignment: dict[str, float]
     quality: dict[str, float]
