@@ -75,8 +75,6 @@ class Measurement:
         Stress and strain at the frames.
     line
         The straight line behind Young's modulus, for drawing.
-    line
-        The modulus line.
     properties
         By name, in the order of the sheet.
     alignment, quality
