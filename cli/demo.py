@@ -9,9 +9,9 @@ import typer
 
 
 def demo(
-    out: Annotated[Path, typer.Argument(metavar="[OUT]", help="Folder for the example and its results.")] = Path(
-        "tauten-demo"
-    ),
+    out: Annotated[
+        Path, typer.Argument(metavar="[OUT]", help="Folder for the example and its results.")
+    ] = Path("tauten-demo"),
 ) -> None:
     """Render an invented tension test, measure it, and print measured beside true values."""
     from dic.pipeline import measure

@@ -61,5 +61,7 @@ def show_comparison(rows: Iterable[Compared]) -> None:
     for heading in ("property", "measured (k = 2)", "true", "off by", "truth inside"):
         table.add_column(heading, justify="left" if heading == "property" else "right")
     for row in rows:
-        table.add_row(row.title, row.measured, row.true, f"{row.off_percent:+.3f} %", "yes" if row.inside else "NO")
+        table.add_row(
+            row.title, row.measured, row.true, f"{row.off_percent:+.3f} %", "yes" if row.inside else "NO"
+        )
     console.print(table)

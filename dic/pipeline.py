@@ -1,5 +1,4 @@
-"""The main job, one short function per stage: frames → pattern → correlation → strain → sync →
-properties → report.
+"""The main job: frames → pattern → correlation → strain → sync → properties → report.
 
 Tracking is one loop around a pure function of (reference, frame, prediction); its displacement
 fields go to the store as they come.  When frames and tracking settings are those of the stored
@@ -80,6 +79,7 @@ def measure(
     source = open_frames(test.frames, test.path.parent)
     record = read_load_record(test.load_record, test.beside(test.load_record.source))
     setup = set_up(test, source)
+    folder.mkdir(parents=True, exist_ok=True)
     remove_results(folder)
     history = read_gauges(test, setup, folder, progress)
     clock = fit_clock(history.time_s, history.axial, history.u_axial, record, test.sync)
@@ -159,7 +159,7 @@ def _given_region(shape: tuple[int, ...], region: Any) -> NDArray[np.bool_]:
         return np.ones(shape, bool)
     x, y, width, height = region
     if not (
-        width > 0 and height > 0 and 0 <= x and x + width <= shape[1] and 0 <= y and y + height <= shape[0]
+        width > 0 and height > 0 and x >= 0 and x + width <= shape[1] and y >= 0 and y + height <= shape[0]
     ):
         raise TestFileError(
             f"the region x {x:g} to {x + width:g}, y {y:g} to {y + height:g} px is not inside the picture",
@@ -306,16 +306,22 @@ def alignment(history: GaugeHistory, found: Evaluation) -> dict[str, float]:
 
 
 def _tracking_doubts(history: GaugeHistory) -> list[Notice]:
-    lost = [name for name, status in zip(history.name, history.status, strict=True) if status != "ok"]
-    if not lost:
-        return []
-    return [
-        Notice(
-            "frames_lost",
-            f"{len(lost)} of {len(history)} frames could not be measured (first: {lost[0]}); "
-            "see the column status of history.csv.",
-        )
-    ]
+    found = []
+    for code, missing, what in (
+        ("frames_lost", np.isnan(history.axial), "could not be measured"),
+        ("extensometer_lost", np.isnan(history.extensometer) & np.isfinite(history.axial),
+         "have no extensometer reading because an end of the gauge left the picture or was lost"),
+    ):  # fmt: skip
+        if missing.any():
+            first = history.name[int(np.argmax(missing))]
+            found.append(
+                Notice(
+                    code,
+                    f"{missing.sum()} of {len(history)} frames {what} (first: {first}); "
+                    "see the column status of history.csv.",
+                )
+            )
+    return found
 
 
 def _eight_bits(image: NDArray[np.float64], full_scale: float) -> NDArray[np.uint8]:

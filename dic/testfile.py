@@ -5,7 +5,7 @@ from __future__ import annotations
 import tomllib
 from math import pi
 from pathlib import Path
-from typing import Annotated, Any, Literal, TypeVar
+from typing import Annotated, Literal, TypeVar
 
 from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, ValidationError, model_validator
 
@@ -16,18 +16,18 @@ from dic.quantities import parse
 MAX_BYTES = 1_000_000
 
 
-def quantity(kind: str, **limits: Any) -> Any:
-    """Return the annotated float type of a quantity that people may write with its unit."""
-    return Annotated[float, BeforeValidator(lambda written: parse(written, kind)), Field(**limits)]
+def quantity(kind: str) -> BeforeValidator:
+    """Return the validator of a quantity that people may write with its unit."""
+    return BeforeValidator(lambda written: parse(written, kind))
 
 
-Length = quantity("length", gt=0, allow_inf_nan=False)
-Time = quantity("time", allow_inf_nan=False)
-Rate = quantity("rate", gt=0, allow_inf_nan=False)
-Scale = quantity("scale", gt=0, allow_inf_nan=False)
-Fraction = quantity("fraction", ge=0, lt=1)
-Strain = quantity("strain", allow_inf_nan=False)
-Stress = quantity("stress", allow_inf_nan=False)
+Length = Annotated[float, quantity("length"), Field(gt=0, allow_inf_nan=False)]
+Time = Annotated[float, quantity("time"), Field(allow_inf_nan=False)]
+Rate = Annotated[float, quantity("rate"), Field(gt=0, allow_inf_nan=False)]
+Scale = Annotated[float, quantity("scale"), Field(gt=0, allow_inf_nan=False)]
+Fraction = Annotated[float, quantity("fraction"), Field(ge=0, lt=1)]
+Strain = Annotated[float, quantity("strain"), Field(allow_inf_nan=False)]
+Stress = Annotated[float, quantity("stress"), Field(allow_inf_nan=False)]
 Column = str | int
 
 
@@ -65,7 +65,8 @@ class Specimen(Section):
         """Original cross-section S0, mm²."""
         if self.diameter is not None:
             return pi * self.diameter**2 / 4
-        assert self.width is not None and self.thickness is not None  # noqa: S101  (validated above)
+        assert self.width is not None  # noqa: S101  (validated above)
+        assert self.thickness is not None  # noqa: S101
         return self.width * self.thickness
 
     @property

@@ -25,7 +25,7 @@ class Compared:
 
 
 def compare(measured: Iterable[Property], truth: Path) -> list[Compared]:
-    """Hold measured properties against a virtual test's ``truth.json``; those without a truth are left out."""
+    """Hold measured properties against a virtual test's ``truth.json``; left out is what has no truth."""
     known = json.loads(truth.read_text(encoding="utf-8"))["properties"]
     rows = []
     for item in measured:

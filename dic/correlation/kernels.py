@@ -72,7 +72,7 @@ def _value(c: Any, i: Any, stride: Any, tx: Any, ty: Any) -> Any:
 @njit(fastmath=_FAST, forceinline=True)
 def _run(c: Any, i: Any, stride: Any, tx: Any, dtx: Any, ty: Any, dty: Any,
          f: Any, fx: Any, fy: Any, q: Any, n: Any, xi: Any) -> Any:  # fmt: skip
-    """Sums over one run of n pixels: g, g², gf, gfₓ, gf_y, gfₓξ, gf_yξ."""
+    """Return sums over one run of n pixels: g, g², gf, gfₓ, gf_y, gfₓξ, gf_yξ."""
     s, ss, sf, sx, sy, sxx, syx = _F(0), _F(0), _F(0), _F(0), _F(0), _F(0), _F(0)
     blocks = _U((n + 7) // 8) * _U(8)
     for k in range(blocks):
@@ -103,7 +103,7 @@ def _pixels_left(start: Any, slope: Any, n: Any) -> Any:
 @njit(fastmath=_FAST)
 def _subset_sums(c: Any, stride: Any, margin: Any, f: Any, fx: Any, fy: Any, width: Any,
                  x: Any, y: Any, half: Any, p: Any, sums: Any) -> None:  # fmt: skip
-    """Sums over a whole subset: g, g², gf, then g times the six steepest-descent images."""
+    """Write sums over a whole subset: g, g², gf, then g times the six steepest-descent images."""
     sums[:] = 0.0
     side = 2 * half + 1
     for eta in range(-half, half + 1):
@@ -203,8 +203,10 @@ def _descent(fx: Any, fy: Any, xi: Any, eta: Any, j: Any) -> None:
 
 @njit(parallel=True, cache=True)
 def solve_subsets(c: Any, stride: Any, margin: Any, rows: Any, columns: Any,
-                  f: Any, fx: Any, fy: Any, mean: Any, norm: Any, average: Any, along: Any, inverse: Any,
-                  xs: Any, ys: Any, half: Any, start: Any, tolerance: Any, most: Any, least: Any) -> Any:  # fmt: skip
+                  f: Any, fx: Any, fy: Any,
+                  mean: Any, norm: Any, average: Any, along: Any, inverse: Any,
+                  xs: Any, ys: Any, half: Any,
+                  start: Any, tolerance: Any, most: Any, least: Any) -> Any:  # fmt: skip
     """Match every subset by inverse compositional Gauss–Newton on ZNSSD.
 
     Parameters
@@ -299,7 +301,8 @@ def solve_subsets(c: Any, stride: Any, margin: Any, rows: Any, columns: Any,
 
 @njit(cache=True)
 def spread_weights(f: Any, fx: Any, fy: Any, width: Any, mean: Any, norm: Any, average: Any, along: Any,
-                   inverse: Any, xs: Any, ys: Any, half: Any, on_u: Any, on_v: Any, out: Any) -> None:  # fmt: skip
+                   inverse: Any, xs: Any, ys: Any, half: Any,
+                   on_u: Any, on_v: Any, out: Any) -> None:  # fmt: skip
     """Add up how every pixel's grey enters a weighted sum of displacements.
 
     A gauge reads Σ (on_u·u + on_v·v); each u and v is a weighted sum of the grey values in its

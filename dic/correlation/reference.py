@@ -7,7 +7,6 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from dic.correlation.flags import Flag
 from dic.correlation.grid import Grid
 from dic.correlation.kernels import gram
 from dic.correlation.splines import Image, blur, flat, gradients, smooth
@@ -66,7 +65,7 @@ def _estimator(products: Floats, pixels: int) -> Estimator:
     hessian -= along[:, :, None] * along[:, None, :]
     inverse = np.full_like(hessian, np.nan)
     # Twelve digits of the sixteen lost: no texture in some direction.
-    sound = np.isfinite(hessian).all(axis=(1, 2))
+    sound = np.asarray(np.isfinite(hessian).all(axis=(1, 2)))
     sound[sound] = np.linalg.cond(hessian[sound]) < 1e12
     inverse[sound] = np.linalg.inv(hessian[sound])
     return Estimator(mean, norm, average, along, inverse)
@@ -156,7 +155,7 @@ def prepare_reference(
     # The raw noise of a pixel reaches the sums through the smoothing once more.
     spread = estimator.noise_gain(gram(*(flat(blur(part, smoothing)) for part in (grey, fx, fy)), *where))
     one_level = full_scale / 255.0
-    usable = (spread < (MOST_SPREAD_PX / one_level) ** 2).all(axis=1)
+    usable = np.asarray((spread < (MOST_SPREAD_PX / one_level) ** 2).all(axis=1))
     return Reference(
         grid=grid,
         shape=(grey.shape[0], grey.shape[1]),

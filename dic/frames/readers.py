@@ -57,7 +57,11 @@ def _tiff_read(page: Page) -> NDArray[Any]:
         return np.asarray(tiff.pages[page.index].asarray())
 
 
-_PNG_TYPES = {"L": np.dtype(np.uint8), "I;16": np.dtype(np.uint16), "I": np.dtype(np.int32)}
+_PNG_TYPES: dict[str, np.dtype[Any]] = {
+    "L": np.dtype(np.uint8),
+    "I;16": np.dtype(np.uint16),
+    "I": np.dtype(np.int32),
+}
 
 
 def _png_pages(path: Path) -> list[Page]:

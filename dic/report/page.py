@@ -158,7 +158,7 @@ def _entry(item: Property) -> dict[str, Any]:
         "symbol": words.symbol(item.symbol),
         "value": value,
         "standard": standard,
-        "method": item.method,
+        "method": item.method if isfinite(item.value) else "",
         "window": words.window(item.window),
         # One range names the window; the others say the same in other quantities.
         "short_window": words.window(dict(list(item.window.items())[:1])),

@@ -43,8 +43,8 @@ MEANINGS = {
     ),
     "valid_fraction": (
         "Subsets measured",
-        "Share of the gauge's subsets that were recognised again, in the middle frame of all; it should stay "
-        "near 100 %.",
+        "Share of the gauge's subsets that were recognised again, median over the frames; it should stay near "
+        "100 %.",
     ),
     "subsets": ("Subsets", "How many patches were followed in every frame."),
     "speckle_px": ("Speckle size", "3 to 5 px is good (common practice)."),

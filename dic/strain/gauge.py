@@ -93,8 +93,7 @@ class _Weights:
 
     plane: Floats  # value, ∂/∂x and ∂/∂y of a plane, shape (3, m)
     twist: Floats  # the product term along·across, shape (m,)
-    ends: tuple[Floats, Floats]  # means of the two end bands
-    length: Floats  # vector between the centres of the end bands, px
+    ends: tuple[Floats, Floats] | None  # means of the two end bands; None where one is lost
     gains: dict[str, float]  # standard deviation per grey level of noise
 
 
@@ -145,20 +144,16 @@ class GaugeReader:
         if valid.sum() < LEAST_SUBSETS:
             return _lost("every subset lost" if not valid.any() else "too few subsets left", share)
         weights = self._weights(valid)
-        if weights is None:
-            return _lost("no subsets left at an end of the gauge", share)
         moved = np.stack([match.u[valid], match.v[valid]])  # (2, m)
         gradient = moved @ weights.plane[1:].T
         axial, transverse, shear = engineering(gradient, self.region.axial, self.region.transverse)
-        one, other = (moved @ end for end in weights.ends)
-        stretch = np.linalg.norm(weights.length + other - one) / np.linalg.norm(weights.length)
         noise = match.noise_grey * np.sqrt(1.0 + 1.0 / self.reference.frames)
         mean = moved @ weights.plane[0]
         return Reading(
             axial=float(axial),
             transverse=float(transverse),
             shear=float(shear),
-            extensometer=float(stretch - 1.0),
+            extensometer=self._extensometer(moved, weights),
             bending=float(self.region.axial @ moved @ weights.twist * self.region.width / 2),
             u_axial=weights.gains["axial"] * noise,
             u_transverse=weights.gains["transverse"] * noise,
@@ -166,40 +161,45 @@ class GaugeReader:
             u_extensometer=weights.gains["extensometer"] * noise,
             shift_px=(float(mean @ self.region.axial), float(mean @ self.region.transverse)),
             valid_fraction=share,
-            status="ok",
+            status="ok" if weights.ends is not None else "no subsets left at an end of the extensometer",
         )
 
-    def _weights(self, valid: NDArray[np.bool_]) -> _Weights | None:
+    def _extensometer(self, moved: Floats, weights: _Weights) -> float:
+        """Return ΔL/L₀ between the ends, however the gauge has turned; NaN where an end is lost."""
+        if weights.ends is None:
+            return float("nan")
+        first, last = (moved @ end for end in weights.ends)
+        length = 2 * self._half_length()
+        return float(np.linalg.norm(length * self.region.axial + last - first) / length - 1.0)
+
+    def _weights(self, valid: NDArray[np.bool_]) -> _Weights:
         key = valid.tobytes()
         if self._kept is None or self._kept[0] != key:
-            made = self._make_weights(valid)
-            if made is None:
-                return None
-            self._kept = key, made
+            self._kept = key, self._make_weights(valid)
         return self._kept[1]
 
-    def _make_weights(self, valid: NDArray[np.bool_]) -> _Weights | None:
+    def _make_weights(self, valid: NDArray[np.bool_]) -> _Weights:
         x = self.reference.x[valid] - self.region.centre[0]
         y = self.reference.y[valid] - self.region.centre[1]
         along, across, depth = self._along[valid], self._across[valid], self.reference.grid.subset
         plane = np.linalg.pinv(np.column_stack([np.ones(len(x)), x, y]))
         twist = np.linalg.pinv(np.column_stack([np.ones(len(x)), along, across, along * across]))[3]
         half = self._half_length()
-        ends = _end(along + half, across, depth), _end(along - half, across, depth)
-        if ends[0] is None or ends[1] is None:
-            return None
-        length = 2 * half * self.region.axial
+        first, last = _end(along + half, across, depth), _end(along - half, across, depth)
+        ends = (first, last) if first is not None and last is not None else None
         a, t = self.region.axial, self.region.transverse
         slope_a, slope_t = a @ plane[1:], t @ plane[1:]
-        stretch = (ends[1] - ends[0]) / (2 * half)
         on = {
             "axial": (a[0] * slope_a, a[1] * slope_a),
             "transverse": (t[0] * slope_t, t[1] * slope_t),
             "shear": (t[0] * slope_a + a[0] * slope_t, t[1] * slope_a + a[1] * slope_t),
-            "extensometer": (a[0] * stretch, a[1] * stretch),
         }
         gains = {name: self._noise_gain(valid, *pair) for name, pair in on.items()}
-        return _Weights(plane, twist, (ends[0], ends[1]), length, gains)
+        gains["extensometer"] = float("nan")
+        if ends is not None:
+            stretch = (ends[1] - ends[0]) / (2 * half)
+            gains["extensometer"] = self._noise_gain(valid, a[0] * stretch, a[1] * stretch)
+        return _Weights(plane, twist, ends, gains)
 
     def _half_length(self) -> float:
         """Return half the gauge length: as given, else what leaves a whole band at either end."""

@@ -139,7 +139,7 @@ def test_truncated_pixels_are_found_when_read(folder):
     path = folder / "frames" / "f1.tif"
     path.write_bytes(path.read_bytes()[:-600])
     source = open_frames(section(), folder)
-    with pytest.raises(FrameError, match="f1.tif"):
+    with pytest.raises(FrameError, match=r"f1\.tif"):
         source[1]
 
 

@@ -68,7 +68,7 @@ def test_a_given_axis_is_kept():
     ],
 )
 def test_no_texture_is_an_error_with_its_reason(image):
-    with pytest.raises(PatternError, match="one grey value|no textured area"):
+    with pytest.raises(PatternError, match=r"one grey value|no textured area"):
         find_coupon(image)
 
 

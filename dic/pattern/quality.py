@@ -1,0 +1,67 @@
+"""How well the picture can be tracked: figures and warnings."""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from dic.errors import Notice
+from dic.pattern.coupon import Coupon
+
+#: Share of clipped pixels from which the pattern is harmed.  Common practice, no published source.
+MOST_SATURATED = 0.01
+#: Speckles each way that a subset should hold (iDICs Good Practices Guide, doi 10.32720/idics/gpg.ed1).
+LEAST_SPECKLES = 3.0
+
+
+def picture_quality(
+    image: NDArray[np.floating | np.integer], coupon: Coupon, full_scale: float
+) -> dict[str, float]:
+    """Return figures of the textured area: speckle size, grey range, share of clipped pixels."""
+    grey = image[coupon.mask].astype(float)
+    low, high = np.percentile(grey, [5, 95])
+    return {
+        "speckle_px": coupon.speckle_px,
+        "grey_range_percent": float(100 * (high - low) / full_scale),
+        "saturated_fraction": float(np.mean(grey >= full_scale)),
+    }
+
+
+def doubts(quality: dict[str, float], subset: int) -> list[Notice]:
+    """Return a warning, with its remedy, for each figure outside common practice."""
+    found = []
+    speckle = quality["speckle_px"]
+    if speckle < 2.5:
+        found.append(
+            Notice(
+                "small_speckles",
+                f"The speckles are about {speckle:.1f} px, too small for the camera to show without bias; "
+                "spray coarser ones or move closer (3 to 5 px is good).",
+            )
+        )
+    if subset < LEAST_SPECKLES * speckle:
+        better = 2 * int(np.ceil(LEAST_SPECKLES * speckle / 2)) + 1
+        found.append(
+            Notice(
+                "small_subset",
+                f"A subset of {subset} px holds fewer than three speckles of {speckle:.1f} px; "
+                f"set correlation.subset to {better} or more.",
+            )
+        )
+    if quality["saturated_fraction"] > MOST_SATURATED:
+        found.append(
+            Notice(
+                "saturated",
+                f"{quality['saturated_fraction']:.0%} of the coupon's pixels are clipped; "
+                "dim the light or shorten the exposure.",
+            )
+        )
+    if quality["grey_range_percent"] < 15:
+        found.append(
+            Notice(
+                "low_contrast",
+                f"The pattern uses {quality['grey_range_percent']:.0f} % of the camera's grey range; "
+                "more light or a stronger pattern lowers the noise in strain.",
+            )
+        )
+    return found
