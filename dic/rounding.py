@@ -73,7 +73,10 @@ def uncertainty_alone(uncertainty: float, unit: str = "") -> str:
         return "not determined"
     if uncertainty == 0:
         return f"0 {unit}".rstrip()
-    return f"{fixed(uncertainty, decimals_for(uncertainty))} {unit}".rstrip()
+    decimals = decimals_for(uncertainty)
+    # A row of zeros is hard to count.
+    text = fixed(uncertainty, decimals) if decimals <= 6 else f"{uncertainty:.1e}"
+    return f"{text} {unit}".rstrip()
 
 
 def _quantize(number: Decimal, decimals: int) -> Decimal:

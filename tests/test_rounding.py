@@ -37,6 +37,11 @@ def test_without_value_or_uncertainty_says_so():
     assert uncertainty_alone(0.0, "MPa") == "0 MPa"
 
 
+def test_an_uncertainty_alone():
+    assert uncertainty_alone(0.1049, "GPa") == "0.10 GPa"
+    assert uncertainty_alone(1.14e-8) == "1.1e-08"
+
+
 @given(positive)
 def test_an_uncertainty_keeps_two_significant_digits(u):
     shown = Decimal(fixed(u, decimals_for(u)))

@@ -84,7 +84,7 @@ def _map(measurement: Measurement, field: xr.Dataset, moment: Moment) -> Drawing
     shape = (1, 3) if tall else (3, 1)
     ratio = (bottom - top) / (right - left)
     height = (
-        np.clip(WIDTH / 3 * ratio + 0.9, 2.4, 6.0) if tall else np.clip(3 * (WIDTH * ratio + 0.6), 3.0, 7.5)
+        np.clip(WIDTH / 3 * ratio + 0.9, 2.4, 6.0) if tall else np.clip(3 * (WIDTH * ratio + 0.45), 3.0, 7.5)
     )
     figure, panels = sheet(*shape, height=float(height))
     spreads = []

@@ -108,6 +108,7 @@ def _page(measurement: Measurement, pictures: dict[str, list[Picture]]) -> str:
     environment = Environment(
         autoescape=True, undefined=StrictUndefined, trim_blocks=True, lstrip_blocks=True
     )
+    environment.filters.update(breakable=words.breakable, share=words.share)
     template = environment.from_string(room.joinpath("page.html").read_text(encoding="utf-8"))
     test = measurement.test
     return template.render(

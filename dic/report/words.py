@@ -43,8 +43,8 @@ MEANINGS = {
     ),
     "valid_fraction": (
         "Subsets measured",
-        "Share of the gauge's subsets that were recognised again, median over the frames; it should stay near "
-        "100 %.",
+        "Share of the gauge's subsets that were recognised again, median over the frames; it should stay "
+        "near 100 %.",
     ),
     "subsets": ("Subsets", "How many patches were followed in every frame."),
     "speckle_px": ("Speckle size", "3 to 5 px is good (common practice)."),
@@ -81,6 +81,17 @@ def symbol(text: str) -> Markup:
     )
 
 
+def breakable(text: str) -> Markup:
+    """Allow a key to go on in the next line after its dots and underscores."""
+    pieces = re.split(r"(?<=[._])", text)
+    return Markup("<wbr>").join(pieces)
+
+
+def share(percent: float) -> str:
+    """Say a share, a small one without pretending that it is none."""
+    return "< 1 %" if 0 < percent < 1 else f"{percent:.0f} %"
+
+
 def window(bounds: Mapping[str, tuple[float, float]]) -> str:
     """Say the bounds of the data that were used."""
     return "; ".join(_range(name, low, high) for name, (low, high) in bounds.items())
@@ -110,11 +121,15 @@ def _labelled(name: str, value: Any) -> tuple[str, str, str]:
     if not isfinite(value):
         return label, "not determined", meaning
     if ending == "fraction":
-        return label, f"{100 * value:.4g} %", meaning
+        return label, f"{100 * value:.3g} %", meaning
     if "strain" in name and not unit:
         scale, unit = strain_unit(float(value))
         return label, f"{value * scale:.3g} {unit}", meaning
-    return label, f"{value:.4g} {unit}".rstrip(), meaning
+    if unit == "°":
+        return label, f"{value:.2f}°", meaning
+    # Whole numbers are counts; of the rest three digits tell enough.
+    text = f"{value:.0f}" if float(value).is_integer() else f"{value:.3g}"
+    return label, f"{text} {unit}".rstrip(), meaning
 
 
 def heading(name: str) -> str:

@@ -109,12 +109,29 @@ def test_symbols_are_set_and_escaped():
     assert words.symbol("<b>") == "<i>&lt;</i><sub>b&gt;</sub>"
 
 
+def test_keys_break_at_their_joints_and_stay_escaped():
+    assert words.breakable("gauge.max_<b>") == "gauge.<wbr>max_<wbr>&lt;b&gt;"
+    assert words.breakable("plain") == "plain"
+
+
+def test_small_shares_are_not_called_none():
+    assert [words.share(value) for value in (0.0, 0.2, 1.4, 100.0)] == ["0 %", "< 1 %", "1 %", "100 %"]
+
+
 def test_figures_in_words():
     rows = words.labelled(
-        {"bending_percent": 3.21, "edge_shift_px": 0.5, "valid_fraction": 0.998, "strain_noise": 4e-6,
-         "shear_percent": float("nan"), "camera": "left"}
-    )  # fmt: skip
-    assert [row[1] for row in rows] == ["3.21 %", "0.5 px", "99.8 %", "4 µm/m", "not determined", "left"]
+        {
+            "bending_percent": 3.21,
+            "edge_shift_px": 0.5,
+            "valid_fraction": 0.998,
+            "strain_noise": 4e-6,
+            "tilt_deg": 0.0006,
+            "shear_percent": float("nan"),
+            "camera": "left",
+        }
+    )
+    shown = ["3.21 %", "0.5 px", "99.8 %", "4 µm/m", "0.00°", "not determined", "left"]
+    assert [row[1] for row in rows] == shown
     assert rows[1][0] == "Edge shift"
     assert "crooked" in rows[0][2]
 
