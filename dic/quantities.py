@@ -43,6 +43,8 @@ EXAMPLES = {
     "fraction": "0.5 %",
 }
 
+_A = {kind: "an" if kind[0] in "aeiou" else "a" for kind in UNITS}
+
 #: Spellings that testing machines write and pint does not know.
 _SPELLINGS = {
     "kn": "kN",
@@ -94,12 +96,12 @@ def parse(written: str | float, kind: str) -> float:
         If the text is not a quantity of that kind; the message says what one looks like.
     """
     if isinstance(written, bool) or not isinstance(written, str | int | float):
-        raise ValueError(f'{written!r} is not a {kind}; write for example "{EXAMPLES[kind]}"')
+        raise ValueError(f'{written!r} is not {_A[kind]} {kind}; write for example "{EXAMPLES[kind]}"')
     if not isinstance(written, str):
         return float(written)
     found = _QUANTITY.match(written)
     if found is None:
-        raise ValueError(f"'{written}' is not a {kind}; write for example \"{EXAMPLES[kind]}\"")
+        raise ValueError(f"'{written}' is not {_A[kind]} {kind}; write for example \"{EXAMPLES[kind]}\"")
     number, unit = float(found["number"]), found["unit"]
     return number if unit is None else number * factor(unit, kind)
 

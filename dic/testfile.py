@@ -261,9 +261,13 @@ def read_toml(path: Path, model: type[Model]) -> Model:
         raise _explain(error, model, path) from error
 
 
+#: A mistyped key also makes the right one missing, and a choice complains of every alternative.
+_TELLING = {"extra_forbidden": 0, "value_error": 1, "literal_error": 3}
+
+
 def _explain(error: ValidationError, model: type[BaseModel], path: Path) -> TestFileError:
-    """Turn pydantic's first complaint into one sentence in the user's terms."""
-    first = error.errors(include_url=False)[0]
+    """Turn pydantic's most telling complaint into one sentence in the user's terms."""
+    first = min(error.errors(include_url=False), key=lambda said: _TELLING.get(said["type"], 2))
     *sections, key = [str(part) for part in first["loc"]] or [""]
     where = f"{path}, [{'.'.join(sections) or key}]"
     if first["type"] == "extra_forbidden":

@@ -52,3 +52,43 @@ def matched():
         return match_frame(reference, spline_image(smooth(image, SMOOTHING)), start)
 
     return match
+
+
+@pytest.fixture(scope="session")
+def small_scenario():
+    """Return a scenario, as text, of a small elastic test that runs in a second or two."""
+    return SMALL
+
+
+SMALL = """
+seed = 3
+[specimen]
+label = "small"
+width = "10 mm"
+thickness = "2 mm"
+[material]
+law = "elastic"
+youngs_modulus = "70 GPa"
+poissons_ratio = 0.33
+[texture]
+kind = "dots"
+diameter = 4.5
+[view]
+rows = 260
+columns = 180
+coupon_width = 130
+[camera]
+frames = 22
+rate = "2 Hz"
+offset = "1.5 s"
+bits = 8
+noise = "1 %"
+[machine]
+free_length = "60 mm"
+speed = "2 mm/min"
+start = "4 s"
+stiffness = "5 kN/mm"
+[load_record]
+rate = "20 Hz"
+force_noise = "2 N"
+"""

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -58,6 +58,16 @@ class Match:
     def v(self) -> Floats:
         """Displacement along y (down), px."""
         return self.parameters[:, 3]
+
+    def filled_from(self, other: Match) -> Match:
+        """Return this match with the subsets that only `other` found taken from there."""
+        take = other.converged & ~self.converged
+        merged = {
+            name: np.where(take if mine.ndim == 1 else take[:, None], getattr(other, name), mine)
+            for name, mine in vars(self).items()
+            if isinstance(mine, np.ndarray)
+        }
+        return replace(self, **merged)
 
     @property
     def converged(self) -> NDArray[np.bool_]:

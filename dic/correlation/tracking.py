@@ -64,7 +64,8 @@ def _match_next(reference: Reference, frame: NDArray[np.generic], last: Floats |
         best = seeded if best is None else _better(best, seeded)
     lost = reference.usable & ~best.converged
     if lost.any() and best.converged.sum() >= 3:
-        best = _better(best, match_frame(reference, spline, _completed(best, reference)))
+        start = np.where(lost[:, None], _completed(best, reference), np.nan)
+        best = best.filled_from(match_frame(reference, spline, start))
     return best
 
 

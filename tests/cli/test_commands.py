@@ -1,0 +1,69 @@
+"""The command line as a person meets it: exit statuses, messages, help."""
+
+import subprocess
+import sys
+
+import pytest
+
+COMMAND = [sys.executable, "-m", "dic_cli.main"]
+
+
+def tauten(*arguments, cwd=None):
+    return subprocess.run(
+        [*COMMAND, *map(str, arguments)], capture_output=True, text=True, cwd=cwd, check=False
+    )
+
+
+@pytest.mark.parametrize("command", [[], ["run"], ["demo"], ["render"]])
+def test_help(command):
+    found = tauten(*command, "--help")
+    assert found.returncode == 0
+    assert "Usage" in found.stdout
+
+
+def test_help_imports_nothing_heavy():
+    code = "import sys, dic_cli.main; print(*sys.modules)"
+    loaded = subprocess.run(
+        [sys.executable, "-c", code], capture_output=True, text=True, check=True
+    ).stdout.split()
+    assert not {"numpy", "numba", "scipy", "cv2", "pandas", "pint", "pydantic", "matplotlib"} & set(loaded)
+
+
+def test_a_wrong_input_is_status_2_and_one_sentence(tmp_path):
+    (tmp_path / "test.toml").write_text("[specimen]\nwidth = 3\n")
+    found = tauten("run", tmp_path / "test.toml")
+    assert found.returncode == 2
+    assert found.stderr.startswith("tauten: ")
+    assert found.stderr.count("\n") == 1
+    assert "Traceback" not in found.stderr
+
+
+def test_a_missing_file_is_status_2(tmp_path):
+    found = tauten("run", tmp_path / "none.toml")
+    assert found.returncode == 2
+    assert "none.toml" in found.stderr
+
+
+def test_an_unknown_command_is_status_2():
+    assert tauten("mesure").returncode == 2
+
+
+def test_a_broken_program_is_status_1(tmp_path):
+    code = (
+        "import dic_cli.main as m, dic_cli.run as r\n"
+        "import sys; sys.modules['dic.pipeline'] = None\n"
+        f"sys.argv = ['tauten', 'run', {str(tmp_path / 'x.toml')!r}]\n"
+        "m.main()\n"
+    )
+    found = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=False)
+    assert found.returncode == 1
+
+
+def test_render_then_run(tmp_path, small_scenario):
+    (tmp_path / "small.toml").write_text(small_scenario)
+    made = tauten("render", "small.toml", "made", cwd=tmp_path)
+    assert made.returncode == 0, made.stderr
+    found = tauten("run", "made/test.toml", "--out", "results", cwd=tmp_path)
+    assert found.returncode == 0, found.stderr
+    assert "Young's modulus" in found.stdout
+    assert (tmp_path / "results" / "report.html").exists()

@@ -1,0 +1,41 @@
+"""The house's own rules: packaging, direction of imports, what may not stand in it."""
+
+import ast
+import tomllib
+from pathlib import Path
+
+import pytest
+
+ROOT = Path(__file__).parent.parent
+
+
+def test_every_package_is_listed_for_installation():
+    said = set(tomllib.loads((ROOT / "pyproject.toml").read_text())["tool"]["setuptools"]["packages"])
+    found = {str(p.parent.relative_to(ROOT)).replace("/", ".") for r in ("dic", "cli", "synthetic_images")
+             for p in (ROOT / r).rglob("__init__.py")}  # fmt: skip
+    assert {name.replace("cli", "dic_cli", 1) if name == "cli" else name for name in found} == said
+
+
+#: Stages in the order of the measurement; none may import a later one.
+STAGES = ["frames", "pattern", "correlation", "strain", "sync", "properties", "report"]
+
+
+def imports(path):
+    for node in ast.walk(ast.parse(path.read_text())):
+        if isinstance(node, ast.ImportFrom) and node.module:
+            yield node.module
+        elif isinstance(node, ast.Import):
+            yield from (alias.name for alias in node.names)
+
+
+@pytest.mark.parametrize("stage", STAGES)
+def test_no_stage_reaches_back(stage):
+    later = STAGES[STAGES.index(stage) + 1 :]
+    for path in (ROOT / "dic" / stage).glob("*.py"):
+        for name in imports(path):
+            assert not any(name.startswith(f"dic.{other}") for other in later), f"{path.name} imports {name}"
+
+
+def test_dic_knows_neither_command_line_nor_truth():
+    for path in (ROOT / "dic").rglob("*.py"):
+        assert not any(name.startswith(("dic_cli", "synthetic_images")) for name in imports(path)), path

@@ -1,0 +1,189 @@
+"""The main job end to end on virtual tests, and each kind of wrong input."""
+
+import json
+import shutil
+
+import numpy as np
+import pytest
+import xarray as xr
+
+import dic
+from dic.errors import InputError
+from synthetic_images import compare, load_scenario, render, scenarios
+
+#: Largest error of each property in percent, as required of the program.
+DEMO = {"youngs_modulus": 0.3, "poissons_ratio": 1.0, "proof_stress_0_2": 0.5, "tensile_strength": 0.5}
+GRAVEL = {"youngs_modulus": 0.5, "poissons_ratio": 1.5}
+
+
+@pytest.fixture(scope="module", params=["demo", "gravel"])
+def rendered(request, tmp_path_factory):
+    folder = tmp_path_factory.mktemp(request.param)
+    test = render(load_scenario(scenarios()[request.param]), folder / "test")
+    return request.param, test, dic.measure(test, folder / "results")
+
+
+def test_properties_are_true_and_their_intervals_hold_the_truth(rendered):
+    name, test, result = rendered
+    rows = {row.name: row for row in compare(result.properties.values(), test.with_name("truth.json"))}
+    limits = DEMO if name == "demo" else GRAVEL
+    assert limits.keys() <= rows.keys()
+    for key, limit in limits.items():
+        assert abs(rows[key].off_percent) < limit, key
+        assert rows[key].inside, key
+
+
+def test_strains_follow_the_truth_frame_by_frame(rendered):
+    """Against the scenario's own strain at the gauge; 2e-5 allows the reference frame's noise and bias."""
+    _, test, result = rendered
+    truth = json.loads(test.with_name("truth.json").read_text())["frames"]
+    seen = np.isfinite(result.history.axial)
+    assert seen.sum() >= 0.9 * len(seen)
+    np.testing.assert_allclose(result.history.axial[seen], np.array(truth["strain_axial"])[seen], atol=2e-5)
+    np.testing.assert_allclose(
+        result.history.transverse[seen], np.array(truth["strain_transverse"])[seen], atol=5e-5
+    )
+
+
+def test_the_clock_is_found(rendered):
+    _, test, result = rendered
+    truth = json.loads(test.with_name("truth.json").read_text())["sync"]["offset_s"]
+    clock = result.clock
+    assert clock.offset_s == pytest.approx(truth, abs=max(0.02, 3 * clock.offset_standard_uncertainty_s))
+
+
+def test_everything_promised_lies_in_the_folder(rendered):
+    _, _, result = rendered
+    for name in ("results.json", "history.csv", "fields.nc", "report.html"):
+        assert (result.folder / name).stat().st_size > 0
+    with result.to_xarray() as fields:
+        assert isinstance(fields, xr.Dataset)
+        assert fields.strain_axial.dims == ("frame", "y", "x")
+    assert len(result.to_pandas()) == len(result.history)
+    assert "Young's modulus" in str(result)
+
+
+@pytest.fixture(scope="module")
+def small(tmp_path_factory, small_scenario):
+    folder = tmp_path_factory.mktemp("small")
+    scenario = folder / "small.toml"
+    scenario.write_text(small_scenario)
+    return render(load_scenario(scenario), folder / "test")
+
+
+@pytest.fixture
+def copy(small, tmp_path):
+    shutil.copytree(small.parent, tmp_path / "test")
+    return tmp_path / "test" / "test.toml"
+
+
+def edited(path, old, new):
+    text = path.read_text()
+    assert old in text
+    path.write_text(text.replace(old, new))
+    return path
+
+
+def test_a_second_run_with_other_dimensions_does_not_track_again(copy, monkeypatch):
+    first = dic.measure(copy)
+    edited(copy, 'thickness = "2 mm"', 'thickness = "4 mm"')
+
+    def never(*_):
+        raise AssertionError("tracked again")
+
+    monkeypatch.setattr("dic.pipeline.track", never)
+    second = dic.measure(copy)
+    np.testing.assert_array_equal(first.history.axial, second.history.axial)
+    ratio = first.properties["youngs_modulus"].value / second.properties["youngs_modulus"].value
+    assert ratio == pytest.approx(2.0, rel=1e-6)
+
+
+def test_changed_frames_or_settings_are_tracked_again(copy):
+    first = dic.measure(copy)
+    with copy.open("a") as file:
+        file.write("\n[correlation]\nsubset = 25\n")
+    second = dic.measure(copy)
+    assert not np.array_equal(first.history.axial, second.history.axial)
+
+
+def test_the_same_input_gives_the_same_results(copy, tmp_path):
+    one, other = dic.measure(copy, tmp_path / "a"), dic.measure(copy, tmp_path / "b")
+    assert (one.folder / "history.csv").read_bytes() == (other.folder / "history.csv").read_bytes()
+
+
+def test_a_given_offset_is_used_as_it_is(copy):
+    with copy.open("a") as file:
+        file.write('\n[sync]\noffset = "1.5 s"\n')
+    assert dic.measure(copy).clock.offset_s == 1.5
+
+
+def remove_frames(test, keep):
+    for path in sorted((test.parent / "frames").iterdir())[keep:]:
+        path.unlink()
+
+
+def overwrite_frames(test, image_of):
+    import tifffile
+
+    for k, path in enumerate(sorted((test.parent / "frames").iterdir())):
+        tifffile.imwrite(path, image_of(k, tifffile.imread(path)))
+
+
+def spoil_force(test):
+    record = test.with_name("machine.csv")
+    lines = record.read_text().splitlines()
+    lines[30] = lines[30].rsplit(",", 1)[0] + ",overload"
+    record.write_text("\n".join(lines))
+
+
+def other_patterns(k, image):
+    rng = np.random.default_rng(k)
+    return rng.integers(0, 255, image.shape).astype(np.uint8) if k else image
+
+
+BAD = {
+    "no frames": (lambda t: edited(t, 'source = "frames"', 'source = "elsewhere"'), "no frames found"),
+    "two frames": (lambda t: remove_frames(t, 2), "at least 3"),
+    "unequal size": (
+        lambda t: overwrite_frames(t, lambda k, i: i[: -(k == 2) or None]),
+        r"cam_00003\.tif: is 180 × 259 px",
+    ),
+    "unreadable": (
+        lambda t: (t.parent / "frames" / "cam_00004.tif").write_bytes(b"junk"),
+        r"cam_00004\.tif: cannot be read",
+    ),
+    "unknown key": (lambda t: edited(t, "rate = ", "rte = "), "did you mean 'rate'"),
+    "wrong unit": (lambda t: edited(t, '"10 mm"', '"10 kg"'), r"width: 'kg' is not a unit of length"),
+    "column not found": (lambda t: edited(t, 'force = "Force"', 'force = "Load"'), "Force"),
+    "force not a number": (spoil_force, "overload"),
+    "no overlap": (
+        lambda t: t.open("a").write('\n[sync]\noffset = "1 h"\n'),
+        "overlap",
+    ),
+    "no texture": (
+        lambda t: overwrite_frames(t, lambda k, i: np.full_like(i, 90)),
+        "one grey value everywhere",
+    ),
+    "every subset lost": (lambda t: overwrite_frames(t, other_patterns), "every subset was lost"),
+}
+
+
+@pytest.mark.parametrize("kind", BAD)
+def test_wrong_input_is_one_clear_sentence_and_leaves_no_result(copy, kind):
+    spoil, said = BAD[kind]
+    spoil(copy)
+    with pytest.raises(InputError, match=said) as caught:
+        dic.measure(copy, copy.parent / "out")
+    assert str(caught.value).count("\n") == 0
+    left = {path.name for path in (copy.parent / "out").glob("*")}
+    assert not left & {"results.json", "history.csv", "report.html"}
+    assert not any(name.endswith(".part") for name in left)
+
+
+def test_a_failing_rerun_takes_the_old_results_away(copy):
+    dic.measure(copy, copy.parent / "out")
+    with copy.open("a") as file:
+        file.write('\n[sync]\noffset = "1 h"\n')
+    with pytest.raises(InputError):
+        dic.measure(copy, copy.parent / "out")
+    assert not (copy.parent / "out" / "results.json").exists()
