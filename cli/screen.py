@@ -11,6 +11,7 @@ from rich.markup import escape
 from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn, TimeRemainingColumn
 from rich.table import Table
 
+from dic.quantities import for_people
 from dic.store.tables import stated, title_of
 
 if TYPE_CHECKING:
@@ -61,7 +62,12 @@ def show_comparison(rows: Iterable[Compared]) -> None:
     for heading in ("property", "measured (k = 2)", "true", "off by", "truth inside"):
         table.add_column(heading, justify="left" if heading == "property" else "right")
     for row in rows:
+        value, unit = for_people(row.true, row.item.unit, row.item.name)
         table.add_row(
-            row.title, row.measured, row.true, f"{row.off_percent:+.3f} %", "yes" if row.inside else "NO"
+            title_of(row.item.name),
+            stated(row.item)[0],
+            f"{value:.6g} {unit}".rstrip(),
+            f"{row.off_percent:+.3f} %",
+            "yes" if row.inside else "NO",
         )
     console.print(table)

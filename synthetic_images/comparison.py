@@ -8,40 +8,28 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from dic.properties.result import Property
-from dic.quantities import for_people
-from dic.store.tables import stated, title_of
 
 
 @dataclass(frozen=True)
 class Compared:
-    """One property: texts for people, the relative error in percent, and whether k = 2 holds the truth."""
+    """One property beside its true value, in the property's own unit."""
 
-    name: str
-    title: str
-    measured: str
-    true: str
-    off_percent: float
-    inside: bool
+    item: Property
+    true: float
+
+    @property
+    def off_percent(self) -> float:
+        """Relative error, percent."""
+        return 100 * (self.item.value - self.true) / self.true
+
+    @property
+    def inside(self) -> bool:
+        """Whether the stated interval, k = 2, holds the truth."""
+        return abs(self.item.value - self.true) <= 2 * self.item.standard_uncertainty
 
 
 def compare(measured: Iterable[Property], truth: Path) -> list[Compared]:
     """Hold measured properties against a virtual test's ``truth.json``; left out is what has no truth."""
     known = json.loads(truth.read_text(encoding="utf-8"))["properties"]
-    rows = []
-    for item in measured:
-        true = known.get(item.name, {}).get("value")
-        if true is None:
-            continue
-        value, unit = for_people(true, item.unit, item.name)
-        error = item.value - true
-        rows.append(
-            Compared(
-                name=item.name,
-                title=title_of(item.name),
-                measured=stated(item)[0],
-                true=f"{value:.6g} {unit}".rstrip(),
-                off_percent=100 * error / true,
-                inside=abs(error) <= 2 * item.standard_uncertainty,
-            )
-        )
-    return rows
+    pairs = [(item, known.get(item.name, {}).get("value")) for item in measured]
+    return [Compared(item, true) for item, true in pairs if true is not None]

@@ -25,7 +25,7 @@ def rendered(request, tmp_path_factory):
 
 def test_properties_are_true_and_their_intervals_hold_the_truth(rendered):
     name, test, result = rendered
-    rows = {row.name: row for row in compare(result.properties.values(), test.with_name("truth.json"))}
+    rows = {row.item.name: row for row in compare(result.properties.values(), test.with_name("truth.json"))}
     limits = DEMO if name == "demo" else GRAVEL
     assert limits.keys() <= rows.keys()
     for key, limit in limits.items():

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -62,7 +63,7 @@ class Match:
     def filled_from(self, other: Match) -> Match:
         """Return this match with the subsets that only `other` found taken from there."""
         take = other.converged & ~self.converged
-        merged = {
+        merged: dict[str, Any] = {
             name: np.where(take if mine.ndim == 1 else take[:, None], getattr(other, name), mine)
             for name, mine in vars(self).items()
             if isinstance(mine, np.ndarray)
