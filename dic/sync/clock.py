@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
-from math import hypot, sqrt
+from math import hypot, inf, sqrt
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.interpolate import make_interp_spline
 from scipy.optimize import minimize_scalar
 
 from dic.errors import ClockError
@@ -22,13 +23,20 @@ BEGINNING = 0.001
 LOADED_FRAMES = 6
 #: Frames at rest that must lie within the record, so that a start can be told from a mere slope.
 REST_FRAMES = 3
-#: Share of the beginning's strain below which a frame counts as at rest.
-AT_REST = 0.05
-#: Misfit (share of the beginning's strain) beyond which strain does not follow force at all.
-WORST_MISFIT = 0.1
+#: Share of the beginning's strain below which a frame counts as at rest, if noise is smaller than that.
+AT_REST = 0.01
+#: Misfit (share of the beginning's strain) beyond which strain does not follow force at all: the worst
+#: that a parabola through a rest and a slope leaves is about as much.
+WORST_MISFIT = 0.05
+#: Frames on either side of the best offset that the record has to allow, so that the best is no mere end.
+MARGIN = 1.5
 #: Window in which the force is smoothed, in frame intervals: wide enough that an offset does not win
 #: because single samples of noise happen to suit it, narrow enough to keep the start's corner.
 SMOOTHING = 0.5
+#: Sample spacings over which the force is averaged after that: with two, the noise left does not depend
+#: on where between two samples a frame falls (weights 1/4, 1/2, 1/4 on a sample, 1/16, 7/16, 7/16, 1/16
+#: midway), so the offset is not drawn to where the noise is least, as it is with one or none.
+SPACINGS = 2
 #: Force is a polynomial of this degree in the model: constant, slope and a gentle curvature.
 DEGREE = 2
 
@@ -45,8 +53,9 @@ def fit_clock(
     offset is the one with which the force explains the strain of the frames best.  a, b and c follow
     for each offset by linear least squares, which leaves one unknown; it is searched on a grid over
     all offsets that overlap, then refined.  The curvature c keeps elastomers and a slightly bent coupon
-    from shifting the clock, and makes a mere slope, which fits at any offset, look as uncertain as
-    it is.  Rigid motion while grips seat does not disturb: neither strain nor force knows of it.
+    from shifting the clock.  A mere slope fits at any offset, so both clocks have to show some frames
+    of rest first, and no other offset may do as well.  Rigid motion while grips seat does not disturb:
+    neither strain nor force knows of it.
 
     Parameters
     ----------
@@ -70,7 +79,9 @@ def fit_clock(
     Raises
     ------
     ClockError
-        If frames and record do not overlap, or the data cannot tell the offset to within one frame.
+        If frames and record do not overlap; or if the data cannot tell the offset to within one frame:
+        too few frames or no loading, not enough rest before it on either clock, a misfit, several
+        offsets that explain the strain alike.
     """
     if section.offset != "auto":
         clock = Clock(
@@ -85,16 +96,13 @@ def fit_clock(
     time, strain, u = _beginning(camera_time_s, axial, u_axial)
     time = (1 + section.drift) * time
     interval = frame_interval(time)
-    misfit = _Misfit(time, strain, record, SMOOTHING * interval)
+    noise = float(np.median(u))
+    misfit = _Misfit(time, strain, record, noise)
     offset = misfit.best_offset()
-    rounded = _Misfit(time, strain, record, interval).refined(offset)
-    uncertainty = hypot(misfit.uncertainty(offset, float(np.median(u))), (rounded - offset) / sqrt(3))
+    rounded = _Misfit(time, strain, record, noise, widening=2).refined(offset)
+    uncertainty = hypot(misfit.uncertainty(offset), (rounded - offset) / sqrt(3))
     if uncertainty > interval:
-        raise ClockError(
-            f"the start of loading tells the offset only to ± {uncertainty:.2g} s, more than one frame",
-            where=str(record.path),
-            remedy=_REMEDY,
-        )
+        raise _cannot_tell(f"the start of loading tells the offset only to ± {uncertainty:.2g} s")
     return Clock(
         offset,
         uncertainty,
@@ -119,11 +127,9 @@ def _beginning(time: Floats, axial: Floats, u_axial: Floats) -> tuple[Floats, Fl
     """Return time, strain and its uncertainty of the measured frames up to a small strain."""
     measured = np.isfinite(axial) & np.isfinite(u_axial)
     if measured.sum() < REST_FRAMES + LOADED_FRAMES:
-        raise ClockError(
+        raise _cannot_tell(
             f"only {measured.sum()} frames were measured, {REST_FRAMES + LOADED_FRAMES} are needed "
-            "to find the start of loading",
-            where="sync",
-            remedy=_REMEDY,
+            "to find the start of loading"
         )
     time, u = time[measured], u_axial[measured]
     strain = axial[measured] - np.median(axial[measured][:REST_FRAMES])
@@ -133,12 +139,14 @@ def _beginning(time: Floats, axial: Floats, u_axial: Floats) -> tuple[Floats, Fl
     # Twenty times the noise, so that a short gauge on a stiff coupon still sees a slope.
     limit = max(BEGINNING, 20 * float(np.median(u)))
     last = _first_passage(steady, limit)
-    while (steady[:last] > AT_REST * limit).sum() < LOADED_FRAMES and last < len(steady):
+    while (steady[:last] > limit / LOADED_FRAMES / 2).sum() < LOADED_FRAMES and last < len(steady):
         limit *= 1.25
         last = _first_passage(steady, limit)
     if steady.max() < 20 * float(np.median(u)):
-        raise ClockError("the strain never rises above its noise", where="sync", remedy=_REMEDY)
-    return time[:last], strain[:last], u[:last]
+        raise _cannot_tell("the strain never rises above its noise")
+    # What lies above the limit before it is first passed is a badly tracked frame.
+    early = np.flatnonzero(size[:last] <= limit)
+    return time[early], strain[early], u[early]
 
 
 def _first_passage(steady: Floats, limit: float) -> int:
@@ -148,21 +156,31 @@ def _first_passage(steady: Floats, limit: float) -> int:
 
 
 class _Misfit:
-    """How badly force explains the strain of the first frames, as a function of the offset alone."""
+    """How badly force explains the strain of the first frames, as a function of the offset alone.
 
-    def __init__(self, time: Floats, strain: Floats, record: LoadRecord, width_s: float) -> None:
-        self.time, self.strain, self.record = time, strain, record
+    `widening` doubles the smoothing, to see what it does to the corner where loading starts.
+    """
+
+    def __init__(
+        self, time: Floats, strain: Floats, record: LoadRecord, noise: float, *, widening: int = 1
+    ) -> None:
+        self.time, self.strain, self.record, self.noise = time, strain, record, noise
         self.interval = frame_interval(time)
+        smooth = smoothed_force(record, widening * SMOOTHING * self.interval)
         # In units of its largest value, so that force and its square are of one size.
-        smooth = smoothed_force(record, width_s)
-        self.force = smooth / np.abs(smooth).max(initial=np.finfo(float).tiny)
+        force = smooth / np.abs(smooth).max(initial=np.finfo(float).tiny)
+        self.integral = make_interp_spline(record.time_s, force, k=1).antiderivative()
+        self.spacing = widening * SPACINGS * float(np.median(np.diff(record.time_s)))
         self.size = float(np.abs(strain).max())
-        self.at_rest = np.abs(strain) < AT_REST * self.size
+        self.at_rest = np.abs(strain) < max(AT_REST * self.size, 3 * noise)
 
     def force_at(self, offset: Floats) -> Floats:
         """Return the force of each frame at each offset, NaN outside the record, shape (k, n)."""
         at = np.asarray(offset)[:, None] + self.time
-        return np.interp(at, self.record.time_s, self.force, left=np.nan, right=np.nan)
+        half = self.spacing / 2
+        force = (self.integral(at + half) - self.integral(at - half)) / self.spacing
+        inside = (at >= self.record.time_s[0]) & (at <= self.record.time_s[-1])
+        return np.where(inside, force, np.nan)
 
     def mean_square(self, offset: Floats) -> Floats:
         """Return the residual variance of strain at each offset, inf where the record says too little."""
@@ -184,61 +202,65 @@ class _Misfit:
         return np.where(enough & rises, square, np.inf)
 
     def best_offset(self) -> float:
-        """Return the offset of least misfit."""
+        """Return the offset of least misfit; raise where there is none, or more than one."""
         step = self.interval / 2
+        margin = int(MARGIN * self.interval / step)
         grid = np.arange(
             self.record.time_s[0] - self.time[-1], self.record.time_s[-1] - self.time[0] + step, step
         )
         # Blocks bound the memory of a long record.
         found = np.concatenate([self.mean_square(grid[i : i + 5000]) for i in range(0, len(grid), 5000)])
         best = int(np.argmin(found))
-        if not np.isfinite(found[best]):
-            raise ClockError(
-                "at no offset does the record cover the start of loading that the frames show",
-                where=str(self.record.path),
-                remedy=_REMEDY,
-            )
-        if not np.isfinite(found[max(best - 1, 0) : best + 2]).all() or found[best] > self._tolerable():
-            raise ClockError(
-                "the strain of the first frames does not follow the record's force at any offset",
-                where=str(self.record.path),
-                remedy=_REMEDY,
+        around = np.arange(best - margin, best + margin + 1)
+        if around[0] < 0 or around[-1] >= len(grid) or not np.isfinite(found[around]).all():
+            raise _cannot_tell("record and frames do not both begin some frames before the loading")
+        if found[best] > (WORST_MISFIT * self.size) ** 2:
+            raise _cannot_tell("the strain of the first frames does not follow the force")
+        # Three standard deviations of a variance with that many degrees of freedom.
+        rivals = found < found[best] * (1 + 3 * sqrt(2 / max(len(self.time) - DEGREE - 2, 1)))
+        if np.ptp(grid[rivals]) > 2 * self.interval:
+            raise _cannot_tell(
+                f"offsets from {grid[rivals][0]:.4g} s to {grid[rivals][-1]:.4g} s explain the strain alike"
             )
         return self.refined(float(grid[best]))
 
     def refined(self, near: float) -> float:
         """Return the offset of least misfit within half a frame of a guess."""
-        step = self.interval / 2
+        # Noise makes shallow hollows, so the deepest is picked before the search descends into it.
+        fine = near + np.linspace(-0.5, 0.5, 41) * self.interval
+        deepest = fine[np.argmin(self.mean_square(fine))]
         finer = minimize_scalar(
             lambda offset: float(self.mean_square(np.array([offset]))[0]),
-            bounds=(near - step, near + step),
+            bounds=(deepest - self.interval / 40, deepest + self.interval / 40),
             method="bounded",
             options={"xatol": 1e-4 * self.interval},
         )
         return float(finer.x)
 
-    def _tolerable(self) -> float:
-        return (WORST_MISFIT * self.size) ** 2
-
-    def uncertainty(self, offset: float, u_strain: float) -> float:
+    def uncertainty(self, offset: float) -> float:
         """Return the offset's standard uncertainty.
 
-        The derivative of strain with respect to the offset is taken over half a frame, because the
-        slope between neighbouring samples of the record is mostly noise.  `u_strain` is the least
-        that a frame's noise can be, should the few residuals be small by luck.
+        The derivative of strain with respect to the offset is taken over a frame to either side, because
+        the slope between neighbouring samples of the record is mostly noise; what noise is left in it is
+        no information and is subtracted.  A frame's noise is at least its grey noise, should the few
+        residuals be small by luck.
         """
-        step = self.interval / 4
+        step = self.interval
         before, here, after = self.force_at(offset + np.array([-step, 0.0, step]))
         inside = np.isfinite(before + here + after)
         design = np.vander(here[inside], DEGREE + 1)
-        strain = self.strain[inside]
-        fit = np.linalg.lstsq(design, strain, rcond=None)[0]
+        fit = np.linalg.lstsq(design, self.strain[inside], rcond=None)[0]
         slope = (np.polyval(fit, after[inside]) - np.polyval(fit, before[inside])) / (2 * step)
         own = slope - design @ np.linalg.lstsq(design, slope, rcond=None)[0]
-        noise = max(sqrt(float(self.mean_square(np.array([offset]))[0])), u_strain)
-        information = float(own @ own)
-        spread = noise * few_readings(len(strain) - DEGREE - 2)
-        return spread / sqrt(information) if information > 0 else np.inf
+        noise = max(sqrt(float(self.mean_square(np.array([offset]))[0])), self.noise)
+        information = float(own @ own) - len(own) * noise**2 / (2 * step**2)
+        if information <= 0:
+            return inf
+        return noise * few_readings(len(own) - DEGREE - 2) / sqrt(information)
+
+
+def _cannot_tell(why: str) -> ClockError:
+    return ClockError(why, where="sync.offset", remedy=_REMEDY)
 
 
 def _less_projections(column: Floats, inside: NDArray[np.bool_], basis: list[Floats]) -> Floats:

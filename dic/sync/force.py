@@ -40,8 +40,8 @@ def force_noise(record: LoadRecord) -> Floats:
     miss = force[1:-1] - ((1 - share) * force[:-2] + share * force[2:])
     own = np.abs(miss) / np.sqrt(1 + share**2 + (1 - share) ** 2)
     size = min(NOISE_WINDOW, len(own))
-    typical = median_filter(own, size=size, mode="nearest") / _NORMAL_MEDIAN
-    spread = np.sqrt(uniform_filter1d(np.minimum(own, 4 * typical) ** 2, size, mode="nearest"))
+    typical = median_filter(own, size=size) / _NORMAL_MEDIAN
+    spread = np.sqrt(uniform_filter1d(np.minimum(own, 4 * typical) ** 2, size))
     return np.pad(spread, 1, mode="edge")
 
 
@@ -74,15 +74,16 @@ def smoothed_force(record: LoadRecord, width_s: float) -> Floats:
         # Three standard deviations of a variance with that many degrees of freedom.
         straight = variance <= noise_variance * (1 + 3 * np.sqrt(2 / (size - 2)))
         inside = np.zeros(len(t), dtype=bool)
-        inside[half:-half] = t[2 * half :] - t[: -2 * half] <= width_s
+        inside[half:-half] = t[2 * half :] - t[: -2 * half] <= width_s * (1 + 1e-6)
         best = np.where(straight & inside, mean, best)
     return best
 
 
 def _half_windows(t: Floats, width_s: float) -> list[int]:
     """Return the half widths to try, in samples: doubling, then the widest."""
-    samples = min(width_s / float(np.median(np.diff(t))), len(t))
-    widest = int((samples - 1) / 2) if np.isfinite(samples) else 0
+    # The millionth keeps a window that fits exactly from hanging on the last bit of a time.
+    samples = min(width_s / float(np.median(np.diff(t))) + 1e-6, len(t))
+    widest = int((samples - 1) / 2)
     doubling = [2**k for k in range(20) if 2**k < widest]
     return [*doubling, widest] if widest >= 1 else []
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import csv
 import re
+import warnings
 from pathlib import Path
 from textwrap import shorten
 
@@ -25,6 +26,8 @@ MAX_BYTES = 500_000_000
 MIN_ROWS = 5
 #: Longest header line that is looked at.
 MAX_HEADER = 100_000
+
+_SEPARATE = "export it as CSV, with semicolons or tabs between columns if numbers have a decimal comma"
 
 _KINDS = {"time": "time", "force": "force", "displacement": "length", "extensometer": "strain"}
 
@@ -75,10 +78,10 @@ def read_load_record(section: Section, path: Path) -> LoadRecord:
         quantity: _unit(quantity, headers[position], section.units, path)
         for quantity, position in positions.items()
     }
-    table = _table(path, separator, sorted(set(positions.values())), len(headers))
+    table = _table(path, separator, len(headers))
     values = {
         quantity: _numbers(table[position], separator, headers[position], path)
-        * factor(units[quantity], _KINDS[quantity])
+        * _worth(units[quantity], _KINDS[quantity])
         for quantity, position in positions.items()
     }
     _check_time(values["time"], table.index, path)
@@ -186,7 +189,7 @@ def _unit(quantity: str, header: str, units: dict[str, str], path: Path) -> str:
             remedy=f'add load_record.units = {{ {quantity} = "{EXAMPLES[kind].split()[-1]}" }}',
         )
     try:
-        worth = factor(unit, kind)
+        worth = _worth(unit, kind)
     except ValueError as error:
         raise LoadRecordError(
             str(error),
@@ -202,44 +205,65 @@ def _unit(quantity: str, header: str, units: dict[str, str], path: Path) -> str:
     return unit
 
 
+def _worth(unit: str, kind: str) -> float:
+    """Return what one `unit` is worth in the internal unit of `kind`.
+
+    No unit of time, force, length or strain needs an exponent, and one from a stranger's header could
+    be large enough to keep the unit library busy for ever.
+    """
+    if not all(part.strip().isalpha() or part.strip() == "%" for part in unit.split("/")):
+        raise ValueError(f"'{unit}' is not a unit of {kind}; write for example \"{EXAMPLES[kind]}\"")
+    return factor(unit, kind)
+
+
 def _contradicts(in_header: str, worth: float, kind: str) -> bool:
     """Tell whether a header names another unit; a remark like "(filtered)" is no unit."""
     try:
-        return bool(in_header) and factor(in_header, kind) != worth
+        return bool(in_header) and _worth(in_header, kind) != worth
     except ValueError:
         return False
 
 
-def _table(path: Path, separator: str, positions: list[int], width: int) -> pd.DataFrame:
-    """Read the columns at `positions` as text, indexed by line of the file, blank lines left out."""
+def _table(path: Path, separator: str, width: int) -> pd.DataFrame:
+    """Read the cells as text, indexed by line of the file, blank lines left out.
+
+    One more column than there are headers is read: text there means that a row's cells are not where
+    the headers say, as with a decimal comma in a file whose separator is the comma.
+    """
     try:
-        table = pd.read_csv(
-            path,
-            sep=separator,
-            header=None,
-            names=list(range(width)),
-            usecols=positions,
-            index_col=False,
-            skiprows=1,
-            dtype=str,
-            keep_default_na=False,
-            skip_blank_lines=False,
-            encoding="utf-8-sig",
-        )
+        with warnings.catch_warnings():
+            warnings.simplefilter("error", pd.errors.ParserWarning)
+            table = pd.read_csv(
+                path,
+                sep=separator,
+                header=None,
+                names=list(range(width + 1)),
+                index_col=False,
+                skiprows=1,
+                dtype=str,
+                keep_default_na=False,
+                skip_blank_lines=False,
+                encoding="utf-8-sig",
+            )
     except UnicodeDecodeError as error:
         raise _no_text(path) from error
-    except pd.errors.EmptyDataError:
-        table = pd.DataFrame(columns=positions, dtype=str)
-    except (pd.errors.ParserError, OSError, ValueError) as error:
+    except (pd.errors.ParserError, pd.errors.ParserWarning, OSError, ValueError) as error:
         raise LoadRecordError(
-            f"is no table ({shorten(str(error), 120, placeholder=' …')})",
+            f"is no table of {width} columns ({shorten(str(error), 120, placeholder=' …')})",
             where=str(path),
-            remedy="export the record as CSV",
+            remedy=_SEPARATE,
         ) from error
     table.index = table.index + 2
     # A short or blank line leaves cells missing even where empty cells are kept as text.
     table = table.fillna("")
     table = table[(table != "").any(axis=1)]
+    longer = np.flatnonzero(table[width] != "")
+    if longer.size:
+        raise LoadRecordError(
+            f"holds more than the {width} cells that the headers name",
+            where=f"{path}, row {table.index[longer[0]]}",
+            remedy=_SEPARATE,
+        )
     if len(table) < MIN_ROWS:
         raise LoadRecordError(
             f"holds {len(table)} rows of data, at least {MIN_ROWS} are needed",

@@ -1,0 +1,94 @@
+"""Properties of materials whose answers are closed formulas; curves without noise, densely sampled."""
+
+import numpy as np
+import pytest
+
+from dic.properties import Curve, evaluate
+from dic.sync import Clock
+from dic.testfile import ModulusWindow, Properties, Specimen
+
+COUPON = Specimen(width=12.5, thickness=2.0)
+CLOCK = Clock(0.0, 0.0, 0.0, "one clock")
+
+
+def curve(strain, transverse, stress):
+    """Make a curve of one frame per point; the coupon breaks after the last."""
+    n = len(strain)
+    peak = int(np.argmax(stress))
+    return Curve(
+        time_s=np.arange(n, dtype=float),
+        force_N=stress * COUPON.area,
+        stress_MPa=stress,
+        axial=strain,
+        transverse=transverse,
+        u_axial=np.zeros(n),
+        u_transverse=np.zeros(n),
+        area_mm2=COUPON.area,
+        peak_force_N=float(stress[peak] * COUPON.area),
+        u_peak_force_N=0.0,
+        peak_time_s=float(peak),
+    )
+
+
+@pytest.mark.parametrize(
+    ("youngs_modulus", "yield_point", "exponent"), [(70e3, 280.0, 20), (205e3, 520.0, 11), (114e3, 880.0, 35)]
+)
+def test_ramberg_osgood(youngs_modulus, yield_point, exponent):
+    """Ramberg and Osgood (NACA TN 902, 1943), written so that the 0.2 % proof stress is a parameter."""
+    stress = np.linspace(0, 1.25 * yield_point, 4000)
+    plastic = 0.002 * (stress / yield_point) ** exponent
+    strain = stress / youngs_modulus + plastic
+    transverse = -0.3 * stress / youngs_modulus - plastic / 2
+    offsets = (0.002, 0.001, 0.01)
+    found = evaluate(
+        curve(strain, transverse, stress), COUPON, None, CLOCK, Properties(proof=offsets)
+    ).properties
+    # At 40 % of the proof stress the plastic strain is 0.002·0.4ⁿ, for n = 11 a share of 1e-4 of the
+    # window's strain, and far less for the others.
+    assert found["youngs_modulus"].value == pytest.approx(youngs_modulus, rel=1e-4)
+    assert found["poissons_ratio"].value == pytest.approx(0.3, rel=1e-4)
+    for offset in offsets:
+        name = f"proof_stress_{100 * offset:g}".replace(".", "_")
+        exact = yield_point * (offset / 0.002) ** (1 / exponent)
+        # The modulus' own 1e-4 of the elastic strain at the crossing, seen by a curve at most a quarter
+        # as steep as the line.
+        assert found[name].value == pytest.approx(exact, rel=3e-5)
+
+
+@pytest.mark.parametrize(("strength", "exponent"), [(530.0, 0.22), (310.0, 0.1)])
+def test_hollomon(strength, exponent):
+    """Hollomon's law (1945) with Considère's maximum: Rm = K (n/e)ⁿ at engineering strain eⁿ - 1."""
+    true_strain = np.linspace(1e-6, 2 * exponent, 20_001)
+    stress = strength * true_strain**exponent * np.exp(-true_strain)
+    measured = curve(np.expm1(true_strain), np.expm1(-true_strain / 2), stress)
+    found = evaluate(measured, COUPON, None, CLOCK, Properties(modulus="auto")).properties
+    # The maximum is flat: a grid of n/10000 misses it by a part in 1e8 at most.
+    assert found["tensile_strength"].value == pytest.approx(
+        strength * (exponent / np.e) ** exponent, rel=1e-8
+    )
+    at = int(measured.peak_time_s)
+    # One step of the grid.
+    assert measured.axial[at] == pytest.approx(np.expm1(exponent), abs=1.2e-4 * exponent)
+
+
+@pytest.mark.parametrize("shear", [0.4, 1.7])
+def test_neo_hookean(shear):
+    """Incompressible neo-Hookean rubber: σ = μ(λ - λ⁻²), λ_t = λ^(-1/2), so E = 3μ and ν = 1/2 at first."""
+    stretch = np.linspace(1.0, 1.3, 30_001)
+    stress = shear * (stretch - stretch**-2)
+    measured = curve(stretch - 1, stretch**-0.5 - 1, stress)
+    middle = 0.0015
+    found = evaluate(measured, COUPON, None, CLOCK, Properties()).properties
+    # The default window 0.0005 to 0.0025 sees the slope at its middle, dσ/dε = μ(1 + 2λ⁻³); the curve's
+    # third derivative changes a line's slope there by less than 1e-5.
+    exact = shear * (1 + 2 * (1 + middle) ** -3)
+    assert found["youngs_modulus"].value == pytest.approx(exact, rel=2e-5)
+    assert exact == pytest.approx(3 * shear, rel=2.1 * middle)
+    assert "ISO 527-1" in found["youngs_modulus"].method
+    # -dε_t/dε = λ^(-3/2)/2.
+    assert found["poissons_ratio"].value == pytest.approx(0.5 * (1 + middle) ** -1.5, rel=2e-5)
+    small = Properties(modulus=ModulusWindow(strain=(0.0, 0.0002)))
+    found = evaluate(measured, COUPON, None, CLOCK, small).properties
+    # Middle of the window 1e-4: tangent 3μ(1 - 2e-4).
+    assert found["youngs_modulus"].value == pytest.approx(3 * shear, rel=2.5e-4)
+    assert found["shear_modulus"].value == pytest.approx(shear, rel=2.5e-4)

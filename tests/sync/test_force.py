@@ -1,0 +1,91 @@
+"""Force at the frames: what smoothing may and may not do."""
+
+from pathlib import Path
+
+import numpy as np
+import pytest
+
+from dic.sync import Clock, LoadRecord, force_at
+from dic.sync.force import force_noise, frame_interval, smoothed_force
+
+TIME = np.arange(0, 60, 0.02)
+N = len(TIME)
+CLOCK = Clock(2.5, 0.0, 0.0, "known")
+
+
+def record(force, time=TIME):
+    return LoadRecord(Path("machine.csv"), time, force)
+
+
+def noise(seed, size, n=N):
+    return np.random.default_rng(seed).normal(0, size, n)
+
+
+def test_a_straight_record_is_read_exactly():
+    camera = np.arange(0, 40, 0.2)
+    found = force_at(record(30 * TIME - 7), Clock(2.5, 0.0, 1e-4, "known"), camera)
+    # Rounding of a few numbers of size 1000.
+    np.testing.assert_allclose(found, 30 * (2.5 + 1.0001 * camera) - 7, rtol=1e-11)
+
+
+def test_outside_the_record_is_nothing():
+    found = force_at(record(TIME), CLOCK, np.array([-3.0, -2.5, 10.0, 57.4, 58.0]))
+    assert np.isnan(found).tolist() == [True, False, False, False, True]
+
+
+def test_a_single_frame_is_interpolated():
+    assert force_at(record(TIME**2), CLOCK, np.array([7.5]))[0] == pytest.approx(100.0, rel=1e-12)
+
+
+@pytest.mark.parametrize("size", [0.1, 5.0])
+def test_noise_is_estimated_on_a_ramp_with_a_fracture(size):
+    force = np.where(TIME < 45, 100 * TIME, 0) + noise(1, size)
+    # 301 samples tell a standard deviation to about 5 %; five times that covers 3000 overlapping windows.
+    np.testing.assert_allclose(force_noise(record(force)), size, rtol=0.25)
+
+
+def test_noise_is_estimated_for_uneven_sampling():
+    time = np.sort(np.random.default_rng(2).uniform(0, 60, 3000))
+    force = 1000 * time + noise(3, 5.0)
+    # On a straight line the comparison with both neighbours is exact for any spacing.
+    np.testing.assert_allclose(force_noise(record(force, time)), 5.0, rtol=0.25)
+
+
+def test_smoothing_takes_the_noise_out_of_a_ramp():
+    error = []
+    for seed in range(20):
+        force = 100 * TIME + noise(seed, 5.0)
+        error.append((smoothed_force(record(force), 0.2) - 100 * TIME)[50:-50])
+    scatter = np.std(error)
+    # Windows of 9 samples would give 5/3; some are refused by chance, which leaves a little more.
+    assert 5 / 3 * 0.95 < scatter < 5 / 3 * 1.15
+    # Mean of 58000 values with correlation over 9.
+    assert abs(np.mean(error)) < 4 * scatter / np.sqrt(58_000 / 9)
+
+
+def test_smoothing_keeps_a_fracture():
+    force = np.where(TIME < 45, 100 * TIME, 0) + noise(5, 5.0)
+    error = smoothed_force(record(force), 0.2) - np.where(TIME < 45, 100 * TIME, 0)
+    # No more than noise of a single sample (four standard deviations of 3000), where the step is 4500 N.
+    assert np.abs(error).max() < 4 * 5.0
+
+
+@pytest.mark.parametrize(("size", "share"), [(1.0, 2 / 3), (0.1, 1 / 20)])
+def test_smoothing_shrinks_at_a_corner(size, share):
+    truth = 100 * np.clip(TIME - 20, 0, None)
+    errors = [smoothed_force(record(truth + noise(seed, size)), 0.2) - truth for seed in range(40)]
+    # Unrestrained, nine samples would round the corner by 100·0.16/8 = 2 N at its deepest.  What is left
+    # is about the noise of one sample, the least that could be told from noise.
+    unrestrained = 100 * 0.16 / 8
+    assert np.abs(np.mean(errors, axis=0)[990:1010]).max() < share * unrestrained
+
+
+def test_a_window_wider_than_the_record_is_no_harm():
+    force = 100 * TIME[:7] + noise(6, 1.0, 7)
+    assert np.isfinite(smoothed_force(record(force, TIME[:7]), 1e6)).all()
+    assert smoothed_force(record(force, TIME[:7]), 0.0).tolist() == force.tolist()
+
+
+def test_frame_interval():
+    assert frame_interval(np.array([0.0, 0.2, 0.4, 1.4])) == pytest.approx(0.2, rel=1e-12)
+    assert frame_interval(np.array([3.0])) == 0.0
