@@ -16,7 +16,7 @@ from dic.sync.record import Clock, LoadRecord
 Floats = NDArray[np.float64]
 
 #: Force within this share of the peak counts as the peak's surroundings.
-TOP = 0.01
+TOP = 0.02
 #: Points from which a cubic term and the scatter can be told.
 MIN_POINTS = 6
 

@@ -1,0 +1,114 @@
+"""An invented tension test: Ramberg-Osgood coupon, frames and record with noise, everything from formulas."""
+
+from dataclasses import dataclass
+from pathlib import Path
+
+import numpy as np
+import pytest
+
+from dic.properties import make_curve
+from dic.strain.history import GaugeHistory
+from dic.sync import Clock, LoadRecord
+from dic.testfile import Specimen
+
+E, NU, RP02, EXPONENT = 70e3, 0.33, 280.0, 20
+STRESS = np.linspace(0, 1.3 * RP02, 40_001)
+STRAIN = STRESS / E + 0.002 * (STRESS / RP02) ** EXPONENT
+
+
+@dataclass(frozen=True)
+class Pull:
+    """One draw, and what is true of it."""
+
+    history: GaugeHistory
+    record: LoadRecord
+    clock: Clock
+    specimen: Specimen
+    truth: dict[str, float]
+
+    @property
+    def curve(self):
+        return make_curve(self.history, self.record, self.clock, self.specimen.area)
+
+
+@pytest.fixture(scope="session")
+def pull():
+    """Return a function that draws a test.
+
+    Nominal uncertainties given (relative force and section, clock in s) are also the sizes of the
+    errors drawn, so a stated interval can be held against the truth.
+    """
+
+    def draw(
+        seed=0,
+        *,
+        sign=1.0,
+        rate=4e-4,
+        fracture=0.025,
+        strain_noise=3e-6,
+        force_noise=0.001,
+        u_force=0.0,
+        u_thickness=0.0,
+        u_clock=0.0,
+        interval=0.2,
+        transverse_bias=0.0,
+    ):
+        r = np.random.default_rng(seed)
+        calibration = 1 + u_force * r.normal()
+        thickness = 2.0 + u_thickness * r.normal()
+        lag = u_clock * r.normal()
+        start, end = 2.0, 2.0 + fracture / rate
+
+        def strain_at(time):
+            return np.where(time <= end, rate * np.clip(time - start, 0, None), 0.0)
+
+        def stress_at(time):
+            return np.interp(strain_at(time), STRAIN, STRESS)
+
+        machine = np.arange(0, end + 3, 0.02)
+        force = 25.0 * stress_at(machine)
+        force = calibration * force + r.normal(0, force_noise * force.max(), len(force))
+        camera = np.arange(0.05, end + 2, interval) + r.uniform(0, 0.02)
+        n = len(camera)
+        elastic = stress_at(camera) / E
+        plastic = strain_at(camera) - elastic
+        across = -(NU * elastic + 0.5 * plastic)
+        axial = strain_at(camera) + r.normal(0, strain_noise, n)
+        across = across + r.normal(0, strain_noise, n) + transverse_bias
+        u = np.full(n, strain_noise)
+        history = GaugeHistory(
+            frame=np.arange(n),
+            name=tuple(f"{i:04d}.tif" for i in range(n)),
+            time_s=camera,
+            axial=sign * axial,
+            transverse=sign * across,
+            shear=np.zeros(n),
+            extensometer=sign * axial,
+            u_axial=u,
+            u_transverse=u,
+            u_shear=u,
+            u_extensometer=u,
+            shift_px=np.zeros((n, 2)),
+            valid_fraction=np.ones(n),
+            status=("ok",) * n,
+            bending=np.zeros(n),
+        )
+        peak = float(np.interp(fracture, STRAIN, STRESS))
+        return Pull(
+            history=history,
+            record=LoadRecord(Path("machine.csv"), machine, sign * force),
+            clock=Clock(lag, u_clock, 0.0, "drawn"),
+            specimen=Specimen(
+                width=12.5, thickness=thickness, thickness_uncertainty=u_thickness if u_thickness else None
+            ),
+            truth={
+                "youngs_modulus": E,
+                "poissons_ratio": NU,
+                "shear_modulus": E / (2 * (1 + NU)),
+                "proof_stress_0_2": sign * RP02,
+                "proof_stress_0_1": sign * RP02 * 0.5 ** (1 / EXPONENT),
+                "tensile_strength": sign * peak,
+            },
+        )
+
+    return draw
