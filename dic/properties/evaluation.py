@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 from dic.properties.hooke import shear_modulus
 from dic.properties.loading import MIN_FRAMES, Loading, Undetermined, loading_of
-from dic.properties.modulus import Elastic, fit_elastic
+from dic.properties.modulus import LARGEST_YIELD_STRAIN, Elastic, fit_elastic
 from dic.properties.proof import crossing
 from dic.properties.result import Curve, Evaluation, ModulusLine, Property
 from dic.sync.record import Clock
@@ -208,12 +208,14 @@ class _Sheet:
                 "modulus line": found.u_line * few_readings(elastic.line.n - 2),
                 "clock": self._with_clock(shifted),
             }
+            bends = "the curve bends all along, as no metal's does: an offset point, not a yield point"
+            gradual = found.stress / elastic.modulus > LARGEST_YIELD_STRAIN
             return _Reading(
                 sign * found.stress,
                 f"modulus line shifted by {100 * offset:g} % strain from its own zero (ISO 6892-1)",
                 statistics | self._of_stress(found.stress),
                 {"strain": _range(sign * np.array([found.low, found.high]))},
-                (*elastic.notes, *self._left_out()),
+                (*([bends] if gradual else []), *elastic.notes, *self._left_out()),
             )
 
         return read
