@@ -24,12 +24,13 @@ from dic.errors import Notice, PatternError, TestFileError, TrackingError
 from dic.frames import FrameSource, open_frames
 from dic.measurement import Measurement, Scene
 from dic.pattern import Coupon, axes, doubts, find_coupon, picture_quality
-from dic.properties import Evaluation, evaluate, make_curve
+from dic.properties import Curve, Evaluation, evaluate, make_curve
+from dic.properties import doubts as property_doubts
 from dic.report import write_report
 from dic.store import fields
 from dic.store.results import remove_results, write_results
 from dic.strain import GaugeHistory, GaugeReader, Region, gather, gauge_size, strain_map
-from dic.sync import Clock, LoadRecord, fit_clock, read_load_record
+from dic.sync import Clock, LoadRecord, fit_clock, given_clock, read_load_record
 from dic.testfile import Correlation, TestFile, load
 
 #: Called with the frames done and the frames there are.
@@ -76,11 +77,12 @@ def measure(
     """
     test = test if isinstance(test, TestFile) else load(test)
     folder = Path(out) if out is not None else default_folder(test.path)
+    # First of all, so that a run that fails leaves no earlier results that could be taken for its own.
+    remove_results(folder)
     source = open_frames(test.frames, test.path.parent)
     record = read_load_record(test.load_record, test.beside(test.load_record.source))
+    given_clock(source.time_s, record, test.sync)  # before tracking, which takes longest
     setup = set_up(test, source)
-    folder.mkdir(parents=True, exist_ok=True)
-    remove_results(folder)
     history = read_gauges(test, setup, folder, progress)
     clock = fit_clock(history.time_s, history.axial, history.u_axial, record, test.sync)
     measurement = _evaluated(test, setup, history, record, clock, folder)
@@ -173,13 +175,17 @@ def _given_region(shape: tuple[int, ...], region: Any) -> NDArray[np.bool_]:
 
 def read_gauges(test: TestFile, setup: Setup, folder: Path, progress: Progress | None) -> GaugeHistory:
     """Track the frames, or take up what was tracked before, and read the gauges in each."""
-    reader = GaugeReader(setup.reference, setup.region, _gauge_length(test, setup))
+    reader = _reader(test, setup)
     readings = []
     for done, match in enumerate(tracked_or_stored(test, setup, folder), start=1):
         readings.append(reader.read(match))
         if progress is not None:
             progress(done, len(setup.source))
     return gather(readings, setup.source.names, setup.source.time_s)
+
+
+def _reader(test: TestFile, setup: Setup) -> GaugeReader:
+    return GaugeReader(setup.reference, setup.region, _gauge_length(test, setup))
 
 
 def _gauge_length(test: TestFile, setup: Setup) -> float | None:
@@ -215,6 +221,7 @@ def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[M
         "axis_angle_deg": setup.coupon.axis_angle_deg,
     }
     measured = 0
+    folder.mkdir(parents=True, exist_ok=True)
     with fields.FieldsWriter(folder, grid, source.time_s, attributes) as writer:
         pictures = (source[index] for index in range(len(source)))
         for match in track(pictures, setup.reference):
@@ -255,6 +262,7 @@ def _evaluated(
     curve = make_curve(history, record, clock, test.specimen.area)
     found = evaluate(curve, test.specimen, test.load_record.force_uncertainty, clock, test.properties)
     stored = fields.stored_attributes(folder)
+    extensometer_px = _reader(test, setup).extensometer_px
     grid = setup.reference.grid
     scene = Scene(
         photograph=_eight_bits(setup.image, setup.source.full_scale()),
@@ -279,10 +287,20 @@ def _evaluated(
         alignment=alignment(history, found),
         quality={
             **setup.quality,
+            "gauge_region_length_px": setup.region.length,
+            "gauge_region_width_px": setup.region.width,
+            "extensometer_length_px": extensometer_px,
+            "pixel_mm": setup.scale_mm,
             "subsets": float(grid.inside.sum()),
             "valid_fraction": float(np.nanmedian(history.valid_fraction)),
         },
-        notices=tuple(setup.notices + _tracking_doubts(history)),
+        notices=(
+            *setup.source.notices,
+            *setup.notices,
+            *_tracking_doubts(history),
+            *_clock_doubts(history, curve),
+            *property_doubts(found.properties, test.specimen, test.load_record.force_uncertainty),
+        ),
         provenance=provenance.collect(test, record, str(stored["frames_sha256"])),
         folder=folder,
     )
@@ -322,6 +340,19 @@ def _tracking_doubts(history: GaugeHistory) -> list[Notice]:
                 )
             )
     return found
+
+
+def _clock_doubts(history: GaugeHistory, curve: Curve) -> list[Notice]:
+    outside = np.isnan(curve.force_N)
+    if not outside.any():
+        return []
+    return [
+        Notice(
+            "frames_outside_record",
+            f"{outside.sum()} of {len(history)} frames lie outside the load record's time and have no force; "
+            "check frames.rate or frames.times, and sync.offset.",
+        )
+    ]
 
 
 def _eight_bits(image: NDArray[np.float64], full_scale: float) -> NDArray[np.uint8]:

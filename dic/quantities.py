@@ -100,10 +100,18 @@ def parse(written: str | float, kind: str) -> float:
     if not isinstance(written, str):
         return float(written)
     found = _QUANTITY.match(written)
+    if found is not None and re.match(r",\d", found["unit"] or ""):
+        raise ValueError(f"'{written}' has a decimal comma; write a point")
     if found is None:
         raise ValueError(f"'{written}' is not {_A[kind]} {kind}; write for example \"{EXAMPLES[kind]}\"")
     number, unit = float(found["number"]), found["unit"]
     return number if unit is None else number * factor(unit, kind)
+
+
+#: Names joined by * and /, each with a one-digit exponent at most: what pint is given to evaluate must
+#: not be able to grow.
+_NAME = r"[^\W\d_][^\W\d]*(?:(?:\^|\*\*)-?\d)?"
+_UNIT = re.compile(rf"(?:1\s*/\s*)?{_NAME}(?:\s*[*/·]\s*{_NAME}|\s+{_NAME})*$")
 
 
 def factor(unit: str, kind: str) -> float:
@@ -118,13 +126,19 @@ def factor(unit: str, kind: str) -> float:
 
     spelled = _SPELLINGS.get(unit.strip().lower(), unit.strip())
     # pint's own "px" is a printer's 1/96 inch; the camera's pixel is what it calls "pixel".
-    spelled = re.sub(r"\bpx\b", "pixel", spelled.replace("²", "**2").replace("%", "percent"))
-    # pint evaluates exponents; a unit longer than any real one is not worth the risk.
-    if len(spelled) > 24 or not re.fullmatch(r"[\w\s*/^.µΩ°()-]+", spelled):
+    spelled = re.sub(r"\bpx\b", "pixel", spelled.replace("²", "**2").replace("%", " percent ").strip())
+    if len(spelled) > 40 or not _UNIT.match(spelled):
         raise ValueError(f"'{unit}' is not a unit; write for example \"{EXAMPLES[kind]}\"")
     try:
         return float(registry().Quantity(1.0, spelled).to(_target(kind)).magnitude)
-    except (pint.errors.PintError, ValueError, TypeError, ArithmeticError, AttributeError) as error:
+    except (
+        pint.errors.PintError,
+        ValueError,
+        TypeError,
+        ArithmeticError,
+        AttributeError,
+        AssertionError,
+    ) as error:
         raise ValueError(
             f"'{unit}' is not a unit of {kind}; write for example \"{EXAMPLES[kind]}\""
         ) from error

@@ -119,11 +119,9 @@ class LoadRecord(Section):
 
 
 class Camera(Section):
-    """Scale and optics."""
+    """Scale."""
 
     scale: Scale | None = None
-    stand_off: Length | None = None
-    telecentric: bool = False
 
 
 class Gauge(Section):

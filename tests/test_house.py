@@ -1,6 +1,7 @@
 """The house's own rules: packaging, direction of imports, what may not stand in it."""
 
 import ast
+import re
 import tomllib
 from pathlib import Path
 
@@ -39,3 +40,26 @@ def test_no_stage_reaches_back(stage):
 def test_dic_knows_neither_command_line_nor_truth():
     for path in (ROOT / "dic").rglob("*.py"):
         assert not any(name.startswith(("dic_cli", "synthetic_images")) for name in imports(path)), path
+
+
+def test_the_readmes_examples_are_valid(tmp_path):
+    from dic.testfile import load
+    from synthetic_images import load_scenario
+
+    readme = (ROOT / "README.md").read_text()
+    test_file, scenario = re.findall(r"```toml\n(.*?)```", readme, re.DOTALL)
+    for name, text in (("test.toml", test_file), ("scenario.toml", scenario)):
+        (tmp_path / name).write_text(text)
+    assert load(tmp_path / "test.toml").specimen.width == 12.51
+    assert load_scenario(tmp_path / "scenario.toml").seed == 1
+
+
+def test_the_readmes_keys_are_all_there():
+    from dic.testfile import TestFile
+
+    readme = (ROOT / "README.md").read_text()
+    for name, section in TestFile.model_fields.items():
+        if section.exclude:
+            continue
+        for key in section.annotation.model_fields:
+            assert key in readme, f"{name}.{key} is not in the README"

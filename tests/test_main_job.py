@@ -157,7 +157,7 @@ BAD = {
     "column not found": (lambda t: edited(t, 'force = "Force"', 'force = "Load"'), "Force"),
     "force not a number": (spoil_force, "overload"),
     "no overlap": (
-        lambda t: t.open("a").write('\n[sync]\noffset = "1 h"\n'),
+        lambda t: t.write_text(t.read_text() + '\n[sync]\noffset = "1 h"\n'),
         "overlap",
     ),
     "no texture": (

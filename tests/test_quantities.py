@@ -42,6 +42,17 @@ def test_nonsense_is_refused(text):
         parse(text, "length")
 
 
+@pytest.mark.parametrize("unit", ["N**9**9**9", "9⁹⁹⁹⁹", "N/", "m^99", "N*", "(((", "m**-9**9", "¹²", ""])
+def test_hostile_units_are_refused_at_once(unit):
+    with pytest.raises(ValueError, match="is not a unit"):
+        factor(unit, "force")
+
+
+def test_a_decimal_comma_is_told_so():
+    with pytest.raises(ValueError, match="write a point"):
+        parse("12,50 mm", "length")
+
+
 @pytest.mark.parametrize(
     ("header", "name", "unit"),
     [

@@ -23,6 +23,9 @@ if TYPE_CHECKING:
 #: Pixels of the photograph that a printed panel can show across.
 _MOST_PIXELS = 900
 
+#: Colours span at least this many standard deviations of the map at rest.
+NOISE_SPAN = 12.0
+
 _HIGHLIGHT = "#b8560f"
 
 
@@ -45,11 +48,23 @@ def draw_maps(measurement: Measurement, fields: xr.Dataset, moments: list[Moment
     """
     kept = set(fields["frame"].values.tolist())
     history = measurement.history
+    rest = _at_rest(measurement, fields)
     return [
-        _map(measurement, fields.sel(frame=int(history.frame[moment.row])), moment)
+        _map(measurement, fields.sel(frame=int(history.frame[moment.row])), moment, rest)
         for moment in moments
         if int(history.frame[moment.row]) in kept
     ]
+
+
+def _at_rest(measurement: Measurement, fields: xr.Dataset) -> dict[str, float]:
+    """Return each map's scatter in the frame that is strained least, the reference itself left out."""
+    strain = np.abs(measurement.history.axial)
+    # The reference is the one frame that matches itself, to rounding.
+    strain = np.where(strain > 1e-9, strain, np.nan)
+    if not np.isfinite(strain).any():
+        return {}
+    still = fields.isel(frame=int(np.nanargmin(strain)))
+    return {name: float(still[f"strain_{name}"].std()) for name in ("axial", "transverse", "shear")}
 
 
 def draw_scene(measurement: Measurement) -> Drawing:
@@ -69,7 +84,7 @@ def draw_scene(measurement: Measurement) -> Drawing:
         f"the pull (arrow, {scene.axis_angle_deg:.2f}° clockwise from the vertical; {scene.axis_method}). "
         f"The filled squares show one subset ({scene.subset_px} px, the patch that is recognised again) "
         f"and the window over which a point of the strain maps is formed ({_gauge_size(scene)}). The "
-        "outline should lie wholly on the speckled coupon, clear of edges and grips."
+        "outline should lie on the speckled coupon and leave out the grips."
     )
     alt = (
         "Reference photograph of the coupon with the outline of the gauge region and an arrow along the pull."
@@ -77,7 +92,7 @@ def draw_scene(measurement: Measurement) -> Drawing:
     return Drawing("gauge-on-coupon", "Where the strain was measured", reading, alt, figure, vector=False)
 
 
-def _map(measurement: Measurement, field: xr.Dataset, moment: Moment) -> Drawing:
+def _map(measurement: Measurement, field: xr.Dataset, moment: Moment, rest: dict[str, float]) -> Drawing:
     scene, curve, history = measurement.scene, measurement.curve, measurement.history
     left, right, top, bottom = view = _view(field, scene)
     tall = bottom - top > right - left
@@ -90,7 +105,7 @@ def _map(measurement: Measurement, field: xr.Dataset, moment: Moment) -> Drawing
     spreads = []
     for axes, component in zip(panels, ("axial", "transverse", "shear"), strict=True):
         _photograph(axes, scene, view, fade=0.55)
-        spreads.append(_panel(axes, field, component, tall))
+        spreads.append(_panel(axes, field, component, tall, rest.get(component, 0.0)))
         axes.add_patch(_outline(scene, lw=0.9))
     _scale_bar(panels[0], scene)
     panels[-1].add_patch(_square(scene.map_gauge_px, left, top, view, fill=False, ec="black", lw=1.0))
@@ -99,23 +114,28 @@ def _map(measurement: Measurement, field: xr.Dataset, moment: Moment) -> Drawing
         f"Frame {frame} ({history.name[row]}) at {curve.time_s[row]:.2f} s, stress "
         f"{curve.stress_MPa[row]:.4g} MPa, axial strain {_sized(curve.axial[row])} over the gauge "
         f"(outline). Each point is formed over a window of {_gauge_size(scene)} (black square); nothing "
-        f"smaller can be seen. Scatter over the map (standard deviation): {', '.join(spreads)}. A coupon "
-        "pulled straight shows even colour; a slope from side to side is bending, a band or spot is local "
-        "yielding, a weak place or lost pattern. Points that could not be measured are left out. Colours "
-        "span the middle 98 % of the values."
+        f"smaller can be seen. Scatter over the map (standard deviation): {', '.join(spreads)}. Fine "
+        "mottling is the camera's noise"
+        + (f" ({_sized(rest['axial'])} in the axial map of a frame at rest)" if rest else "")
+        + "; a slope from side to side is bending, a band or spot well above the mottling is local yielding, "
+        "a weak place or lost pattern. Points that could not be measured are left out. Colours span the "
+        "middle 98 % of the values, and never less than the noise."
     )
     alt = f"Maps of axial, transverse and shear strain over the photograph of the coupon, frame {frame}."
     title = f"{moment.letter}: {moment.title}"
     return Drawing(f"map-{moment.letter.lower()}", title, reading, alt, figure, vector=False)
 
 
-def _panel(axes: Axes, field: xr.Dataset, component: str, tall: bool) -> str:
+def _panel(axes: Axes, field: xr.Dataset, component: str, tall: bool, noise: float) -> str:
     """Draw one component; return its scatter in words."""
     strain = field[f"strain_{component}"].values
     if not np.isfinite(strain).any():
         axes.set_title(f"{component}: not measured", fontsize=8)
         return f"{component} not measured"
     low, high = np.nanpercentile(strain, [1, 99])
+    # Colours that span less than the noise would show nothing else.
+    missing = max(0.0, NOISE_SPAN * noise - (high - low)) / 2
+    low, high = low - missing, high + missing
     if component == "shear":
         # Zero has a meaning for shear: its sign is a direction.  Axial and transverse run one way.
         low, high = -max(abs(low), abs(high)), max(abs(low), abs(high))
@@ -151,7 +171,7 @@ def _panel(axes: Axes, field: xr.Dataset, component: str, tall: bool) -> str:
 
 def _sized(strain: float) -> str:
     scale, unit = strain_unit(strain)
-    return f"{strain * scale:.4g} {unit}"
+    return f"{strain * scale:.3g} {unit}"
 
 
 @cache

@@ -47,7 +47,17 @@ MEANINGS = {
         "near 100 %.",
     ),
     "subsets": ("Subsets", "How many patches were followed in every frame."),
-    "speckle_px": ("Speckle size", "3 to 5 px is good (common practice)."),
+    "gauge_region_length_px": ("Gauge region, along", "Strain is averaged over this length."),
+    "gauge_region_width_px": ("Gauge region, across", "Strain is averaged over this width."),
+    "extensometer_length_px": (
+        "Extensometer length",
+        "Distance between the two end bands whose change is the extensometer reading in history.csv.",
+    ),
+    "pixel_mm": ("Size of a pixel", "On the coupon; strains do not depend on it."),
+    "speckle_px": (
+        "Speckle size",
+        "3 to 5 px is good (common practice); larger ones want larger subsets and show less detail.",
+    ),
     "grey_range_percent": (
         "Contrast",
         "Grey range of the speckles as a share of the camera's full scale; the more, the less noise in "

@@ -137,6 +137,11 @@ class GaugeReader:
                 remedy="shorten it or enlarge gauge.region",
             )
 
+    @property
+    def extensometer_px(self) -> float:
+        """Gauge length of the extensometer, px."""
+        return 2 * self._half_length()
+
     def read(self, match: Match) -> Reading:
         """Return the readings of one frame; NaN and the reason where too little is left."""
         valid = self._member & match.converged

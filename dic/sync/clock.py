@@ -19,6 +19,9 @@ Floats = NDArray[np.float64]
 
 #: Strain up to which nearly every solid answers force by a smooth, hardly curved line.
 BEGINNING = 0.001
+#: Share of the largest strain at the most: in a short test the last frames are left out, so that the
+#: record still reaches the others when the offset is varied.
+LARGEST_SHARE = 0.8
 #: Frames wanted while that strain is reached; with fewer, more of the test is used.
 LOADED_FRAMES = 6
 #: Frames at rest that must lie within the record, so that a start can be told from a mere slope.
@@ -83,16 +86,9 @@ def fit_clock(
         too few frames or no loading, not enough rest before it on either clock, a misfit, several
         offsets that explain the strain alike.
     """
-    if section.offset != "auto":
-        clock = Clock(
-            section.offset,
-            0.0,
-            section.drift,
-            "given in the test file",
-            ("not included: the uncertainty of the given offset",),
-        )
-        _require_overlap(clock, camera_time_s, record)
-        return clock
+    given = given_clock(camera_time_s, record, section)
+    if given is not None:
+        return given
     time, strain, u = _beginning(camera_time_s, axial, u_axial)
     time = (1 + section.drift) * time
     interval = frame_interval(time)
@@ -112,12 +108,33 @@ def fit_clock(
     )
 
 
+def given_clock(camera_time_s: Floats, record: LoadRecord, section: Sync) -> Clock | None:
+    """Return the clock that the test file gives, or None where the offset has to be found.
+
+    Raises
+    ------
+    ClockError
+        If frames and record do not overlap on it.
+    """
+    if section.offset == "auto":
+        return None
+    clock = Clock(
+        section.offset,
+        0.0,
+        section.drift,
+        "given in the test file",
+        ("not included: the uncertainty of the given offset",),
+    )
+    _require_overlap(clock, camera_time_s, record)
+    return clock
+
+
 def _require_overlap(clock: Clock, camera_time_s: Floats, record: LoadRecord) -> None:
     at = clock.machine_time(camera_time_s)
     if at.max() < record.time_s[0] or at.min() > record.time_s[-1]:
         raise ClockError(
-            f"the frames run from {at.min():g} s to {at.max():g} s of the machine's clock, "
-            f"the record from {record.time_s[0]:g} s to {record.time_s[-1]:g} s",
+            f"the two clocks do not overlap: the frames run from {at.min():g} s to {at.max():g} s of the "
+            f"machine's clock, the record from {record.time_s[0]:g} s to {record.time_s[-1]:g} s",
             where=str(record.path),
             remedy="correct sync.offset",
         )
@@ -137,7 +154,7 @@ def _beginning(time: Floats, axial: Floats, u_axial: Floats) -> tuple[Floats, Fl
     # A median of three keeps one badly tracked frame from ending the beginning.
     steady = np.median([size, np.append(size[1:], size[-1]), np.append(size[0], size[:-1])], axis=0)
     # Twenty times the noise, so that a short gauge on a stiff coupon still sees a slope.
-    limit = max(BEGINNING, 20 * float(np.median(u)))
+    limit = min(max(BEGINNING, 20 * float(np.median(u))), LARGEST_SHARE * float(steady.max()))
     last = _first_passage(steady, limit)
     while (steady[:last] > limit / LOADED_FRAMES / 2).sum() < LOADED_FRAMES and last < len(steady):
         limit *= 1.25
