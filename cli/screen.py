@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Iterator
 from contextlib import contextmanager
+from math import isfinite
 from typing import TYPE_CHECKING
 
 from rich.console import Console
@@ -45,12 +46,14 @@ def frames_progress(what: str) -> Iterator[Report]:
 def show_measurement(measurement: Measurement) -> None:
     """Print the properties, the warnings and where the report lies."""
     table = Table(title=escape(measurement.test.specimen.label), title_justify="left")
-    for heading in ("property", "symbol", "value (k = 2)", "note"):
+    for heading in ("property", "symbol", "value (k = 2)"):
         table.add_column(heading)
     for item in measurement.properties.values():
-        reason = item.notes[0] if item.notes and item.value != item.value else ""
-        table.add_row(title_of(item.name), item.symbol, stated(item)[0], escape(reason))
+        table.add_row(title_of(item.name), item.symbol, stated(item)[0])
     console.print(table)
+    for item in measurement.properties.values():
+        if not isfinite(item.value):
+            console.print(f"no {escape(title_of(item.name))}: {escape('; '.join(item.notes))}")
     for notice in measurement.notices:
         console.print(f"warning: {escape(notice.text)}")
     console.print(f"report: {escape(str(measurement.folder / 'report.html'))}", soft_wrap=True)
