@@ -81,3 +81,8 @@ def uncertainty_alone(uncertainty: float, unit: str = "") -> str:
 
 def _quantize(number: Decimal, decimals: int) -> Decimal:
     return number.quantize(Decimal(1).scaleb(-decimals, _EXACT), context=_EXACT)
+
+
+def three_digits(value: float) -> str:
+    """Write a number to three significant digits, never with an exponent below a million."""
+    return f"{float(f'{value:.3g}'):.6g}"

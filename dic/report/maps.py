@@ -15,7 +15,7 @@ from matplotlib.ticker import MaxNLocator
 from dic.measurement import Measurement, Scene
 from dic.report.figures import WIDTH, Drawing, legend_above, sheet, strain_unit
 from dic.report.moments import Moment
-from dic.rounding import uncertainty_alone
+from dic.rounding import three_digits, uncertainty_alone
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -171,7 +171,7 @@ def _panel(axes: Axes, field: xr.Dataset, component: str, tall: bool, noise: flo
 
 def _sized(strain: float) -> str:
     scale, unit = strain_unit(strain)
-    return f"{strain * scale:.3g} {unit}"
+    return f"{three_digits(strain * scale)} {unit}"
 
 
 @cache

@@ -12,6 +12,7 @@ import numpy as np
 from markupsafe import Markup
 
 from dic.report.figures import strain_unit
+from dic.rounding import three_digits
 
 #: Units that the end of a name stands for.
 _UNITS = {
@@ -134,11 +135,11 @@ def _labelled(name: str, value: Any) -> tuple[str, str, str]:
         return label, f"{100 * value:.3g} %", meaning
     if "strain" in name and not unit:
         scale, unit = strain_unit(float(value))
-        return label, f"{value * scale:.3g} {unit}", meaning
+        return label, f"{three_digits(value * scale)} {unit}", meaning
     if unit == "°":
         return label, f"{value:.2f}°", meaning
     # Whole numbers are counts; of the rest three digits tell enough.
-    text = f"{value:.0f}" if float(value).is_integer() else f"{value:.3g}"
+    text = f"{value:.0f}" if float(value).is_integer() else three_digits(value)
     return label, f"{text} {unit}".rstrip(), meaning
 
 
