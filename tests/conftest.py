@@ -3,11 +3,10 @@
 import numpy as np
 import pytest
 
-from dic.correlation import lay_grid, match_frame, prepare_reference, smooth, spline_image
+from dic.correlation import Settings, lay_grid, match_frame, prepare_reference, spline_image
 from synthetic_images import Camera, Cosines, Dots, rigid
 
 SHAPE = (190, 260)  # lopsided on purpose
-SMOOTHING = 0.65
 
 
 def _texture(kind, seed):
@@ -32,12 +31,15 @@ def photograph():
 def prepared():
     """Return a function that lays subsets over a picture and prepares it as reference."""
 
-    def prepare(image, *, subset=31, step=15, margin=8, frames=1):
+    def prepare(image, *, subset=31, step=15, margin=8, frames=1, **settings):
         mask = np.zeros(image.shape, bool)
         mask[margin:-margin, margin:-margin] = True
         scale = 255.0 if image.max() < 256 else 65535.0
         grid = lay_grid(mask, subset, step)
-        return prepare_reference(image, grid, smoothing=SMOOTHING, frames=frames, full_scale=scale)
+        how = Settings(full_scale=scale, **settings)
+        return prepare_reference(
+            image, grid.x, grid.y, subset=grid.subset, settings=how, mask=mask, frames=frames
+        )
 
     return prepare
 
@@ -47,9 +49,10 @@ def matched():
     """Return a function that matches one picture, from zero motion or a given start."""
 
     def match(reference, image, start=None):
+        settings = reference.settings
         if start is None:
-            start = np.zeros((len(reference.x), 6))
-        return match_frame(reference, spline_image(smooth(image, SMOOTHING)), start)
+            start = np.zeros((len(reference.x), 2 * len(settings.shape)))
+        return match_frame(reference, spline_image(image, settings.kind, settings.smoothing), start)
 
     return match
 

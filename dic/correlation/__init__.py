@@ -3,21 +3,23 @@
 from dic.correlation.flags import MEANING, Flag
 from dic.correlation.grid import Grid, lay_grid
 from dic.correlation.matching import Match, match_frame
-from dic.correlation.reference import Reference, prepare_reference
-from dic.correlation.splines import SplineImage, smooth, spline_image
-from dic.correlation.tracking import track
+from dic.correlation.reference import Reference, Settings, prepare_reference
+from dic.correlation.splines import Prefilter, SplineImage, spline_image
+from dic.correlation.tracking import Tracker, track
 
 __all__ = [
     "MEANING",
     "Flag",
     "Grid",
     "Match",
+    "Prefilter",
     "Reference",
+    "Settings",
     "SplineImage",
+    "Tracker",
     "lay_grid",
     "match_frame",
     "prepare_reference",
-    "smooth",
     "spline_image",
     "track",
 ]

@@ -15,6 +15,7 @@ class Flag(IntEnum):
     NOT_CONVERGED = 4
     DECORRELATED = 5
     NO_FRAME = 6
+    SATURATED = 7
 
 
 #: What each flag means, for people.
@@ -26,4 +27,5 @@ MEANING = {
     Flag.NOT_CONVERGED: "the matching did not settle",
     Flag.DECORRELATED: "the pattern no longer resembles its reference",
     Flag.NO_FRAME: "the frame could not be read",
+    Flag.SATURATED: "too many clipped pixels",
 }

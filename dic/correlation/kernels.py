@@ -1,8 +1,8 @@
 """The inner loops: plain arrays in, plain arrays out, no options, no messages.
 
-Every function here is called by others in this file only or through the fronts in `reference`,
-`matching` and `dic.strain.precision`.  They stay together because Numba's disk cache does not notice
-a change of a callee in another file.
+Every function here is called by others in this file only or through the fronts in `splines`,
+`reference`, `matching` and `dic.strain.gauge`.  They stay together because Numba's disk cache does
+not notice a change of a callee in another file.
 
 The form that makes it fast: all that Gauss–Newton needs from the deformed image are sums that are
 linear in the interpolated grey value (plus its square), so one pass over a subset gives them all.
@@ -10,8 +10,13 @@ Along a row the whole-pixel part of the displacement is constant for long runs; 
 loads are contiguous and the B-spline weights are polynomials of a linear ramp, so the compiler
 vectorises.  A run is worked off in whole blocks of eight, the surplus masked away.
 
-Warp of a subset, with ξ, η counted from its centre: x = x₀+ξ + u + uₓξ + u_yη, y = y₀+η + v + vₓξ +
-v_yη; the parameters stand in the order (u, uₓ, u_y, v, vₓ, v_y).
+Warp of a subset, with ξ, η counted from its centre: x = x₀+ξ + u(ξ, η), y = y₀+η + v(ξ, η).  The
+parameters are the coefficients of u and then of v in the powers (1, ξ, η), for the quadratic shape
+(1, ξ, η, ξ², ξη, η²).
+
+Two arguments are never read, only counted: `taps`, a tuple as long as the spline has taps each way,
+and `shape`, one as long as u has parameters.  Their lengths are types, so that each combination is
+compiled on its own, with the branches on them already taken.
 """
 
 from __future__ import annotations
@@ -26,6 +31,15 @@ _FAST = {"reassoc", "contract", "nsz", "arcp"}
 _F = np.float32
 _U = np.uint64
 
+# NumPy's rules for division: by zero it gives infinity or NaN, which the checks below refuse, where
+# Python's would stop the whole frame.
+_inlined = njit(fastmath=_FAST, forceinline=True, error_model="numpy")
+_exactly_inlined = njit(forceinline=True, error_model="numpy")
+_fast = njit(fastmath=_FAST, error_model="numpy")
+_exact = njit(error_model="numpy")
+_serial = njit(cache=True, error_model="numpy")
+_parallel = njit(parallel=True, cache=True, error_model="numpy")
+
 # States that solve_subsets can report (values of flags.Flag).
 _CONVERGED, _OUT_OF_VIEW, _NOT_CONVERGED, _DECORRELATED = 0, 3, 4, 5
 
@@ -33,11 +47,26 @@ _CONVERGED, _OUT_OF_VIEW, _NOT_CONVERGED, _DECORRELATED = 0, 3, 4, 5
 _FIRST_RATE = 0.03
 
 
-@njit(fastmath=_FAST, forceinline=True)
-def _weights(t: Any) -> Any:
-    """Quintic B-spline weights of the six taps around a point that lies t behind the third."""
-    c = _F(1 / 120)
-    t2 = t * t
+# ---- B-spline values -------------------------------------------------------------------------
+
+
+@_inlined
+def _weights4(t: Any) -> Any:
+    """Cubic B-spline weights of four taps; the point lies t behind the second."""
+    s, t2 = _F(1) - t, t * t
+    t3 = t2 * t
+    return (
+        s * s * s * _F(1 / 6),
+        _F(2 / 3) - t2 + _F(0.5) * t3,
+        _F(1 / 6) + _F(0.5) * (t + t2 - t3),
+        t3 * _F(1 / 6),
+    )
+
+
+@_inlined
+def _weights6(t: Any) -> Any:
+    """Quintic B-spline weights of six taps; the point lies t behind the third."""
+    c, t2 = _F(1 / 120), t * t
     w0 = ((((_F(5) - t) * t - _F(10)) * t + _F(10)) * t - _F(5)) * t + _F(1)
     w1 = ((((_F(5) * t - _F(20)) * t + _F(20)) * t + _F(20)) * t - _F(50)) * t + _F(26)
     w2 = ((_F(30) - _F(10) * t) * t2 - _F(60)) * t2 + _F(66)
@@ -47,182 +76,383 @@ def _weights(t: Any) -> Any:
     return w0 * c, w1 * c, w2 * c, w3 * c, w4 * c, w5 * c
 
 
-@njit(fastmath=_FAST, forceinline=True)
-def _row(c: Any, i: Any, w: Any) -> Any:
+@_inlined
+def _weights8(t: Any) -> Any:
+    """Septic B-spline weights of eight taps; the point lies t behind the fourth."""
+    c = _F(1 / 5040)
+    s, t2 = _F(1) - t, t * t
+    s2, t3 = s * s, t2 * t
+    s3 = s2 * s
+    w0 = s3 * s3 * s
+    w7 = t3 * t3 * t
+    w1 = _septic_next(s)
+    w6 = _septic_next(t)
+    w2 = _septic_third(s)
+    w5 = _septic_third(t)
+    w3 = _septic_middle(s)
+    w4 = _septic_middle(t)
+    return w0 * c, w1 * c, w2 * c, w3 * c, w4 * c, w5 * c, w6 * c, w7 * c
+
+
+@_inlined
+def _septic_next(t: Any) -> Any:
+    return (
+        (((((_F(-7) * t + _F(7)) * t + _F(21)) * t + _F(35)) * t + _F(35)) * t + _F(21)) * t + _F(7)
+    ) * t + _F(1)
+
+
+@_inlined
+def _septic_third(t: Any) -> Any:
+    return (
+        (((((_F(21) * t - _F(42)) * t - _F(84)) * t) * t + _F(280)) * t + _F(504)) * t + _F(392)
+    ) * t + _F(120)
+
+
+@_inlined
+def _septic_middle(t: Any) -> Any:
+    return (
+        (((((_F(-35) * t + _F(105)) * t + _F(105)) * t - _F(315)) * t - _F(665)) * t + _F(315)) * t + _F(1715)
+    ) * t + _F(1191)
+
+
+@_inlined
+def _row4(c: Any, r: Any, o: Any, w: Any) -> Any:
+    return w[0] * c[r + o[0]] + w[1] * c[r + o[1]] + w[2] * c[r + o[2]] + w[3] * c[r + o[3]]
+
+
+@_inlined
+def _row6(c: Any, i: Any, w: Any) -> Any:
     return (
         w[0] * c[i] + w[1] * c[i + _U(1)] + w[2] * c[i + _U(2)]
         + w[3] * c[i + _U(3)] + w[4] * c[i + _U(4)] + w[5] * c[i + _U(5)]
     )  # fmt: skip
 
 
-@njit(fastmath=_FAST, forceinline=True)
-def _value(c: Any, i: Any, stride: Any, tx: Any, ty: Any) -> Any:
-    """Interpolated grey value; i is the upper left of the 6 × 6 taps."""
-    w, h = _weights(tx), _weights(ty)
+@_inlined
+def _row8(c: Any, i: Any, w: Any) -> Any:
     return (
-        h[0] * _row(c, i, w)
-        + h[1] * _row(c, i + stride, w)
-        + h[2] * _row(c, i + _U(2) * stride, w)
-        + h[3] * _row(c, i + _U(3) * stride, w)
-        + h[4] * _row(c, i + _U(4) * stride, w)
-        + h[5] * _row(c, i + _U(5) * stride, w)
+        w[0] * c[i] + w[1] * c[i + _U(1)] + w[2] * c[i + _U(2)] + w[3] * c[i + _U(3)]
+        + w[4] * c[i + _U(4)] + w[5] * c[i + _U(5)] + w[6] * c[i + _U(6)] + w[7] * c[i + _U(7)]
+    )  # fmt: skip
+
+
+@_inlined
+def _value(taps: Any, c: Any, k: Any, r: Any, o: Any, tx: Any, ty: Any) -> Any:
+    """Interpolated grey value k pixels into a run.
+
+    `r` and `o` are the places of the first four rows and columns of taps; with six or eight taps
+    the others follow at the same distance.
+    """
+    if len(taps) == 4:
+        w, h = _weights4(tx), _weights4(ty)
+        return (
+            h[0] * _row4(c, r[0] + k, o, w)
+            + h[1] * _row4(c, r[1] + k, o, w)
+            + h[2] * _row4(c, r[2] + k, o, w)
+            + h[3] * _row4(c, r[3] + k, o, w)
+        )
+    i, stride = r[0] + o[0] + k, r[1] - r[0]
+    if len(taps) == 6:
+        w, h = _weights6(tx), _weights6(ty)
+        return (
+            h[0] * _row6(c, i, w)
+            + h[1] * _row6(c, i + stride, w)
+            + h[2] * _row6(c, i + _U(2) * stride, w)
+            + h[3] * _row6(c, i + _U(3) * stride, w)
+            + h[4] * _row6(c, i + _U(4) * stride, w)
+            + h[5] * _row6(c, i + _U(5) * stride, w)
+        )
+    w, h = _weights8(tx), _weights8(ty)
+    return (
+        h[0] * _row8(c, i, w)
+        + h[1] * _row8(c, i + stride, w)
+        + h[2] * _row8(c, i + _U(2) * stride, w)
+        + h[3] * _row8(c, i + _U(3) * stride, w)
+        + h[4] * _row8(c, i + _U(4) * stride, w)
+        + h[5] * _row8(c, i + _U(5) * stride, w)
+        + h[6] * _row8(c, i + _U(6) * stride, w)
+        + h[7] * _row8(c, i + _U(7) * stride, w)
     )
 
 
-@njit(fastmath=_FAST, forceinline=True)
-def _run(c: Any, i: Any, stride: Any, tx: Any, dtx: Any, ty: Any, dty: Any,
-         f: Any, fx: Any, fy: Any, q: Any, n: Any, xi: Any) -> Any:  # fmt: skip
-    """Return sums over one run of n pixels: g, g², gf, gfₓ, gf_y, gfₓξ, gf_yξ."""
-    s, ss, sf, sx, sy, sxx, syx = _F(0), _F(0), _F(0), _F(0), _F(0), _F(0), _F(0)
+# ---- Sums over a subset ----------------------------------------------------------------------
+
+
+@_inlined
+def _run(taps: Any, shape: Any, c: Any, r: Any, o: Any, tx: Any, dtx: Any, ddtx: Any,
+         ty: Any, dty: Any, ddty: Any, f: Any, fx: Any, fy: Any, m: Any,
+         q: Any, n: Any, xi: Any) -> Any:  # fmt: skip
+    """Return sums over one run of n pixels: g, g², gf, and g times fₓ, fₓξ, fₓξ², f_y, f_yξ, f_yξ²."""
+    s, ss, sf = _F(0), _F(0), _F(0)
+    x0, x1, x2, y0, y1, y2 = _F(0), _F(0), _F(0), _F(0), _F(0), _F(0)
     blocks = _U((n + 7) // 8) * _U(8)
     for k in range(blocks):
         ramp = _F(k)
-        g = _value(c, i + k, stride, tx + ramp * dtx, ty + ramp * dty)
-        g = g if k < _U(n) else _F(0)
+        if len(shape) == 3:
+            g = _value(taps, c, k, r, o, tx + ramp * dtx, ty + ramp * dty)
+        else:
+            g = _value(taps, c, k, r, o, tx + ramp * (dtx + ramp * ddtx), ty + ramp * (dty + ramp * ddty))
         p = q + k
+        g = g * m[p] if k < _U(n) else _F(0)
         gxi = g * (xi + ramp)
         s += g
         ss += g * g
         sf += g * f[p]
-        sx += g * fx[p]
-        sy += g * fy[p]
-        sxx += gxi * fx[p]
-        syx += gxi * fy[p]
-    return s, ss, sf, sx, sy, sxx, syx
+        x0 += g * fx[p]
+        y0 += g * fy[p]
+        x1 += gxi * fx[p]
+        y1 += gxi * fy[p]
+        if len(shape) == 6:
+            gxx = gxi * (xi + ramp)
+            x2 += gxx * fx[p]
+            y2 += gxx * fy[p]
+    return s, ss, sf, x0, x1, x2, y0, y1, y2
 
 
-@njit(fastmath=_FAST, forceinline=True)
+@_inlined
 def _pixels_left(start: Any, slope: Any, n: Any) -> Any:
-    """How many of n pixels keep the whole-pixel offset that the first one has."""
+    """How many of n pixels keep the whole-pixel offset that the first one has, on a linear ramp."""
     room = np.floor(start) + 1.0 - start if slope > 0 else start - np.floor(start)
     if abs(slope) * n <= room:
         return n
     return min(n, int(room / abs(slope)) + 1)
 
 
-@njit(fastmath=_FAST)
-def _subset_sums(c: Any, stride: Any, margin: Any, f: Any, fx: Any, fy: Any, width: Any,
+@_exactly_inlined
+def _pixels_left_on_a_bow(start: Any, slope: Any, bow: Any, n: Any) -> Any:
+    """Do the same on a quadratic ramp, where the offset may turn back: look pixel by pixel."""
+    whole = np.floor(start)
+    for k in range(1, n):
+        if np.floor(start + k * (slope + k * bow)) != whole:
+            return k
+    return n
+
+
+@_exactly_inlined
+def _tap_row(index: Any, sampling: Any, stride: Any, plane: Any) -> Any:
+    """Where a row of coefficients lies: with two samples per pixel, odd rows are planes of their own."""
+    if sampling == 1:
+        return _U(index * stride)
+    return _U((index & 1) * 2 * plane + (index >> 1) * stride)
+
+
+@_exactly_inlined
+def _tap_column(index: Any, sampling: Any, plane: Any) -> Any:
+    if sampling == 1:
+        return _U(index)
+    return _U((index & 1) * plane + (index >> 1))
+
+
+@_exactly_inlined
+def _taps_at(column: Any, row: Any, sampling: Any, stride: Any, plane: Any) -> Any:
+    """Return the places of the first four rows and columns of taps."""
+    return (
+        (
+            _tap_row(row, sampling, stride, plane), _tap_row(row + 1, sampling, stride, plane),
+            _tap_row(row + 2, sampling, stride, plane), _tap_row(row + 3, sampling, stride, plane),
+        ),
+        (
+            _tap_column(column, sampling, plane), _tap_column(column + 1, sampling, plane),
+            _tap_column(column + 2, sampling, plane), _tap_column(column + 3, sampling, plane),
+        ),
+    )  # fmt: skip
+
+
+@_fast
+def _subset_sums(taps: Any, shape: Any, c: Any, sampling: Any, stride: Any, plane: Any, margin: Any,
+                 f: Any, fx: Any, fy: Any, m: Any, width: Any,
                  x: Any, y: Any, half: Any, p: Any, sums: Any) -> None:  # fmt: skip
-    """Write sums over a whole subset: g, g², gf, then g times the six steepest-descent images."""
+    """Write sums over a whole subset: g, g², gf, then g times the steepest-descent images."""
     sums[:] = 0.0
     side = 2 * half + 1
+    count = len(shape)
+    back = len(taps) // 2 - 1
     for eta in range(-half, half + 1):
         left = p[0] + p[2] * eta - p[1] * half
-        top = p[3] + p[5] * eta - p[4] * half
+        top = p[count] + p[count + 2] * eta - p[count + 1] * half
+        dx, dy, ddx, ddy = p[1], p[count + 1], 0.0, 0.0
+        if len(shape) == 6:
+            left += p[3] * half * half - p[4] * half * eta + p[5] * eta * eta
+            top += p[count + 3] * half * half - p[count + 4] * half * eta + p[count + 5] * eta * eta
+            dx += p[4] * eta - 2.0 * p[3] * half
+            dy += p[count + 4] * eta - 2.0 * p[count + 3] * half
+            ddx, ddy = p[3], p[count + 3]
         done = 0
         while done < side:
-            du, dv = left + p[1] * done, top + p[4] * done
-            n = _pixels_left(du, p[1], side - done)
-            n = _pixels_left(dv, p[4], n)
+            # in units of the coefficients' sampling
+            du = sampling * (left + done * (dx + done * ddx))
+            dv = sampling * (top + done * (dy + done * ddy))
+            slope_x, slope_y = sampling * (dx + 2.0 * done * ddx), sampling * (dy + 2.0 * done * ddy)
+            if len(shape) == 3:
+                n = _pixels_left(dv, slope_y, _pixels_left(du, slope_x, side - done))
+            else:
+                n = _pixels_left_on_a_bow(du, slope_x, sampling * ddx, side - done)
+                n = _pixels_left_on_a_bow(dv, slope_y, sampling * ddy, n)
             iu, iv = int(np.floor(du)), int(np.floor(dv))
             column = x - half + done
-            tap = _U((y + eta + iv + margin - 2) * stride + column + iu + margin - 2)
-            s, ss, sf, sx, sy, sxx, syx = _run(
-                c, tap, _U(stride), _F(du - iu), _F(p[1]), _F(dv - iv), _F(p[4]),
-                f, fx, fy, _U((y + eta) * width + column), n, _F(done - half),
+            u = sampling * (column + margin) + iu - back
+            v = sampling * (y + eta + margin) + iv - back
+            r, o = _taps_at(u, v, sampling, stride, plane)
+            s, ss, sf, x0, x1, x2, y0, y1, y2 = _run(
+                taps, shape, c, r, o,
+                _F(du - iu), _F(slope_x), _F(sampling * ddx), _F(dv - iv), _F(slope_y), _F(sampling * ddy),
+                f, fx, fy, m, _U((y + eta) * width + column), n, _F(done - half),
             )  # fmt: skip
             sums[0] += s
             sums[1] += ss
             sums[2] += sf
-            sums[3] += sx
-            sums[4] += sxx
-            sums[5] += sx * eta
-            sums[6] += sy
-            sums[7] += syx
-            sums[8] += sy * eta
+            sums[3] += x0
+            sums[4] += x1
+            sums[5] += x0 * eta
+            sums[3 + count] += y0
+            sums[4 + count] += y1
+            sums[5 + count] += y0 * eta
+            if len(shape) == 6:
+                sums[6] += x2
+                sums[7] += x1 * eta
+                sums[8] += x0 * (eta * eta)
+                sums[6 + count] += y2
+                sums[7 + count] += y1 * eta
+                sums[8 + count] += y0 * (eta * eta)
             done += n
 
 
-@njit(forceinline=True)
-def _in_view(x: Any, y: Any, half: Any, p: Any, rows: Any, columns: Any) -> Any:
-    for sx in (-half, half):
-        for sy in (-half, half):
-            px = x + sx + p[0] + p[1] * sx + p[2] * sy
-            py = y + sy + p[3] + p[4] * sx + p[5] * sy
+# ---- Warps -----------------------------------------------------------------------------------
+
+
+@_exactly_inlined
+def _displaced(shape: Any, p: Any, first: Any, xi: Any, eta: Any) -> Any:
+    """Displacement component whose parameters begin at `first`."""
+    d = p[first] + p[first + 1] * xi + p[first + 2] * eta
+    if len(shape) == 6:
+        d += p[first + 3] * xi * xi + p[first + 4] * xi * eta + p[first + 5] * eta * eta
+    return d
+
+
+@_exactly_inlined
+def _in_view(shape: Any, x: Any, y: Any, half: Any, p: Any, rows: Any, columns: Any) -> Any:
+    for xi in (-half, half):
+        for eta in (-half, half):
+            px = x + xi + _displaced(shape, p, 0, xi, eta)
+            py = y + eta + _displaced(shape, p, len(shape), xi, eta)
             if not (0.0 <= px <= columns - 1.0 and 0.0 <= py <= rows - 1.0):
                 return False
     return True
 
 
-@njit
-def _compose_inverse(p: Any, d: Any) -> None:
-    """Replace the warp p by p ∘ d⁻¹."""
-    a, b, e, g = 1.0 + d[1], d[2], d[4], 1.0 + d[5]
-    det = a * g - b * e
-    ia, ib, ie, ig = g / det, -b / det, -e / det, a / det
-    iu, iv = -(ia * d[0] + ib * d[3]), -(ie * d[0] + ig * d[3])
-    p0, p1, p2, p3, p4, p5 = p[0], 1.0 + p[1], p[2], p[3], p[4], 1.0 + p[5]
-    p[0] = p0 + p1 * iu + p2 * iv
-    p[1] = p1 * ia + p2 * ie - 1.0
-    p[2] = p1 * ib + p2 * ig
-    p[3] = p3 + p4 * iu + p5 * iv
-    p[4] = p4 * ia + p5 * ie
-    p[5] = p4 * ib + p5 * ig - 1.0
+@_exact
+def _compose_inverse(shape: Any, p: Any, d: Any) -> None:
+    """Replace the warp p by p ∘ d⁻¹: exactly for affine shapes, to first order in d for quadratic ones.
+
+    What the quadratic form leaves out vanishes with the step, so the solution is the same.
+    """
+    if len(shape) == 3:
+        a, b, e, g = 1.0 + d[1], d[2], d[4], 1.0 + d[5]
+        det = a * g - b * e
+        ia, ib, ie, ig = g / det, -b / det, -e / det, a / det
+        iu, iv = -(ia * d[0] + ib * d[3]), -(ie * d[0] + ig * d[3])
+        p0, p1, p2, p3, p4, p5 = p[0], 1.0 + p[1], p[2], p[3], p[4], 1.0 + p[5]
+        p[0] = p0 + p1 * iu + p2 * iv
+        p[1] = p1 * ia + p2 * ie - 1.0
+        p[2] = p1 * ib + p2 * ig
+        p[3] = p3 + p4 * iu + p5 * iv
+        p[4] = p4 * ia + p5 * ie
+        p[5] = p4 * ib + p5 * ig - 1.0
+    else:
+        q = p.copy()
+        for k in (0, 6):
+            # p(ξ − d(ξ)) − d(ξ), cut behind the second power
+            gx, gxx, gxy = q[k + 1], 2.0 * q[k + 3], q[k + 4]
+            gy, gyx, gyy = q[k + 2], q[k + 4], 2.0 * q[k + 5]
+            for power in range(6):
+                p[k + power] -= d[k + power] + gx * d[power] + gy * d[6 + power]
+            p[k + 1] -= gxx * d[0] + gyx * d[6]
+            p[k + 2] -= gxy * d[0] + gyy * d[6]
+            p[k + 3] -= gxx * d[1] + gyx * d[7]
+            p[k + 4] -= gxx * d[2] + gxy * d[1] + gyx * d[8] + gyy * d[7]
+            p[k + 5] -= gxy * d[2] + gyy * d[8]
 
 
-@njit(parallel=True, cache=True)
-def gram(f: Any, fx: Any, fy: Any, width: Any, xs: Any, ys: Any, half: Any) -> Any:
-    """Sum the products of every two of (1, f, and the six steepest-descent images) over each subset.
+# ---- Whole subsets ---------------------------------------------------------------------------
+
+
+@_exactly_inlined
+def _descent(fx: Any, fy: Any, xi: Any, eta: Any, j: Any) -> None:
+    """Steepest-descent images at one pixel; `j` has as many places as there are parameters."""
+    count = j.size // 2
+    for first, slope in ((0, fx), (count, fy)):
+        j[first], j[first + 1], j[first + 2] = slope, slope * xi, slope * eta
+        if count == 6:
+            j[first + 3], j[first + 4], j[first + 5] = slope * xi * xi, slope * xi * eta, slope * eta * eta
+
+
+@_parallel
+def gram(f: Any, fx: Any, fy: Any, m: Any, width: Any, xs: Any, ys: Any, half: Any, parameters: Any) -> Any:
+    """Sum the products of every two of (1, f, and the steepest-descent images) over each subset.
 
     Parameters
     ----------
-    f, fx, fy
-        Reference grey and gradients, flat.
+    f, fx, fy, m
+        Reference grey, gradients and mask (0 or 1), flat.
     width
         Elements per row.
     xs, ys, half
         Subset centres, shape (n,), and pixels on either side.
+    parameters
+        6 or 12.
 
     Returns
     -------
     products
-        Shape (n, 8, 8).
+        Shape (n, 2 + parameters, 2 + parameters).
     """
-    products = np.zeros((xs.size, 8, 8))
+    size = 2 + parameters
+    products = np.zeros((xs.size, size, size))
     for i in prange(xs.size):
-        b = np.ones(8)
+        b = np.ones(size)
         for eta in range(-half, half + 1):
             for xi in range(-half, half + 1):
                 q = (ys[i] + eta) * width + xs[i] + xi
+                if m[q] == 0:
+                    continue
                 b[1] = f[q]
                 _descent(fx[q], fy[q], xi, eta, b[2:])
-                for k in range(8):
-                    for m in range(k + 1):
-                        products[i, k, m] += b[k] * b[m]
-        for k in range(8):
-            for m in range(k):
-                products[i, m, k] = products[i, k, m]
+                for k in range(size):
+                    for n in range(k + 1):
+                        products[i, k, n] += b[k] * b[n]
+        for k in range(size):
+            for n in range(k):
+                products[i, n, k] = products[i, k, n]
     return products
 
 
-@njit(forceinline=True)
-def _descent(fx: Any, fy: Any, xi: Any, eta: Any, j: Any) -> None:
-    j[0], j[1], j[2] = fx, fx * xi, fx * eta
-    j[3], j[4], j[5] = fy, fy * xi, fy * eta
-
-
-@njit(parallel=True, cache=True)
-def solve_subsets(c: Any, stride: Any, margin: Any, rows: Any, columns: Any,
-                  f: Any, fx: Any, fy: Any,
-                  mean: Any, norm: Any, average: Any, along: Any, inverse: Any,
-                  xs: Any, ys: Any, half: Any,
-                  start: Any, tolerance: Any, most: Any, least: Any) -> Any:  # fmt: skip
+@_parallel
+def solve_subsets(taps: Any, shape: Any, c: Any, sampling: Any, stride: Any, plane: Any, margin: Any,
+                  rows: Any, columns: Any, f: Any, fx: Any, fy: Any, m: Any,
+                  pixels: Any, mean: Any, norm: Any, average: Any, along: Any, inverse: Any,
+                  xs: Any, ys: Any, half: Any, start: Any,
+                  tolerance: Any, travel: Any, most: Any, least: Any) -> Any:  # fmt: skip
     """Match every subset by inverse compositional Gauss–Newton on ZNSSD.
 
     Parameters
     ----------
-    c, stride, margin
-        Spline coefficients of the frame, flat and padded.
+    taps, shape
+        See the top of the file.
+    c, sampling, stride, plane, margin
+        Spline coefficients of the frame, flat and padded: samples per pixel, elements per row and
+        per plane, pixels of margin.
     rows, columns
         Size of the frame.
-    f, fx, fy, mean, norm, average, along, inverse
+    f, fx, fy, m, pixels, mean, norm, average, along, inverse
         The prepared reference.
     xs, ys, half
         Subset centres and half width.
     start
-        Starting parameters, shape (n, 6); a row with NaN is left alone and flagged not converged.
+        Starting parameters, shape (n, p); a row with NaN is left alone and flagged not converged.
     tolerance
         Remaining error, px, below which the iteration stops.
+    travel
+        Distance from the start, px, beyond which a subset is given up.
     most
         Iterations at the most.
     least
@@ -231,77 +461,120 @@ def solve_subsets(c: Any, stride: Any, margin: Any, rows: Any, columns: Any,
     Returns
     -------
     p
-        Parameters, shape (n, 6); NaN where not converged.
+        Parameters, shape (n, p); NaN where not converged.
     correlation
         ZNCC at the solution, shape (n,).
-    noise
-        Root mean square residual in the reference's grey levels, shape (n,).
+    residual
+        Sum of squared residuals in the reference's grey levels, shape (n,).
     flag, iterations
         Shape (n,).
     """
-    count = xs.size
-    p = np.full((count, 6), np.nan)
-    correlation, noise = np.full(count, np.nan), np.full(count, np.nan)
+    count, size = xs.size, 2 * len(shape)
+    p = np.full((count, size), np.nan)
+    correlation, residual = np.full(count, np.nan), np.full(count, np.nan)
     flag, iterations = np.full(count, _NOT_CONVERGED, np.uint8), np.zeros(count, np.uint8)
-    pixels = (2 * half + 1) ** 2
     reach = half * half / 3.0
     for i in prange(count):
-        q, sums, right, d = start[i].copy(), np.empty(9), np.empty(6), np.empty(6)
-        before, zncc, left = 0.0, 0.0, 0.0
+        q, sums, right, d = start[i].copy(), np.empty(3 + size), np.empty(size), np.empty(size)
+        before, zncc, left, gg, scale = 0.0, 0.0, 0.0, 0.0, 0.0
         state = _NOT_CONVERGED
         for iteration in range(most):
             if np.isnan(q.sum()):
                 break
-            if not _in_view(xs[i], ys[i], half, q, rows, columns):
+            if not _in_view(shape, xs[i], ys[i], half, q, rows, columns):
                 state = _OUT_OF_VIEW
                 break
-            _subset_sums(c, stride, margin, f, fx, fy, columns, xs[i], ys[i], half, q, sums)
+            _subset_sums(
+                taps, shape, c, sampling, stride, plane, margin, f, fx, fy, m, columns,
+                xs[i], ys[i], half, q, sums,
+            )  # fmt: skip
             iterations[i] = iteration + 1
-            gg = sums[1] - sums[0] * sums[0] / pixels
+            gg = sums[1] - sums[0] * sums[0] / pixels[i]
             if not gg > 0.0:
                 state = _DECORRELATED
                 break
             unit = (sums[2] - mean[i] * sums[0]) / norm[i]
             scale = norm[i] / np.sqrt(gg)
-            for a in range(6):
+            for a in range(size):
                 right[a] = sums[3 + a] - average[i, a] * sums[0] - along[i, a] * unit
             gain = 0.0
-            for a in range(6):
+            for a in range(size):
                 d[a] = 0.0
-                for b in range(6):
+                for b in range(size):
                     d[a] += scale * inverse[i, a, b] * right[b]
                 gain += d[a] * right[a]
+            n = len(shape)
             step = np.sqrt(
-                d[0] * d[0] + d[3] * d[3]
-                + reach * (d[1] * d[1] + d[2] * d[2] + d[4] * d[4] + d[5] * d[5])
+                d[0] * d[0] + d[n] * d[n]
+                + reach * (d[1] * d[1] + d[2] * d[2] + d[n + 1] * d[n + 1] + d[n + 2] * d[n + 2])
             )  # fmt: skip
             if not step < half:
                 break
-            _compose_inverse(q, d)
+            _compose_inverse(shape, q, d)
+            if not (abs(q[0] - start[i, 0]) < travel and abs(q[n] - start[i, n]) < travel):
+                break
             # What the step explains of the residual is known without another pass.
             zncc = unit / np.sqrt(gg)
-            left = gg - unit * unit - gain / scale
+            left = max(gg - unit * unit - gain / scale, 0.0)
             rate = _FIRST_RATE if iteration == 0 else min(1.0, step / before)
             if step * rate < tolerance:
                 state = _CONVERGED
                 break
             before = step
         if state == _CONVERGED:
-            explained = 1.0 - max(left, 0.0) / (gg if gg > 0.0 else 1.0)
-            zncc = np.sqrt(max(explained, 0.0)) if zncc > 0.0 else zncc
+            zncc = np.sqrt(max(1.0 - left / gg, 0.0)) if zncc > 0.0 else zncc
+            correlation[i] = zncc
             if zncc < least:
                 state = _DECORRELATED
             else:
                 p[i] = q
-                noise[i] = np.sqrt(max(left, 0.0) / (pixels - 8)) * scale
-            correlation[i] = zncc
+                residual[i] = left * scale * scale
         flag[i] = state
-    return p, correlation, noise, flag, iterations
+    return p, correlation, residual, flag, iterations
 
 
-@njit(cache=True)
-def spread_weights(f: Any, fx: Any, fy: Any, width: Any, mean: Any, norm: Any, average: Any, along: Any,
-                   inverse: Any, xs: Any, ys: Any, half: Any,
+@_parallel
+def residuals(taps: Any, shape: Any, c: Any, sampling: Any, stride: Any, plane: Any, margin: Any,
+              f: Any, m: Any, width: Any, mean: Any, norm: Any,
+              xs: Any, ys: Any, half: Any, p: Any) -> Any:  # fmt: skip
+    """Return what matching leaves of some subsets: reference less frame, gain and offset taken out.
+
+    Parameters are those of `solve_subsets` with the solution p in place of the start; the result has
+    shape (n, side, side), zero where the mask is.
+    """
+    side, count, back = 2 * half + 1, len(shape), len(taps) // 2 - 1
+    out = np.zeros((xs.size, side, side))
+    for i in prange(xs.size):
+        total, square, pixels = 0.0, 0.0, 0.0
+        for row in range(side):
+            for column in range(side):
+                xi, eta = column - half, row - half
+                q = (ys[i] + eta) * width + xs[i] + xi
+                if m[q] == 0:
+                    continue
+                u = sampling * (xs[i] + xi + margin + _displaced(shape, p[i], 0, xi, eta))
+                v = sampling * (ys[i] + eta + margin + _displaced(shape, p[i], count, xi, eta))
+                iu, iv = int(np.floor(u)), int(np.floor(v))
+                a, b = iu - back, iv - back
+                r, o = _taps_at(a, b, sampling, stride, plane)
+                g = _value(taps, c, _U(0), r, o, _F(u - iu), _F(v - iv))
+                out[i, row, column] = g
+                total += g
+                square += g * g
+                pixels += 1.0
+        middle = total / pixels
+        scale = norm[i] / np.sqrt(square - total * middle)
+        for row in range(side):
+            for column in range(side):
+                q = (ys[i] + row - half) * width + xs[i] + column - half
+                if m[q] != 0:
+                    out[i, row, column] = f[q] - mean[i] - scale * (out[i, row, column] - middle)
+    return out
+
+
+@_serial
+def spread_weights(f: Any, fx: Any, fy: Any, m: Any, width: Any, mean: Any, norm: Any, average: Any,
+                   along: Any, inverse: Any, xs: Any, ys: Any, half: Any,
                    on_u: Any, on_v: Any, out: Any) -> None:  # fmt: skip
     """Add up how every pixel's grey enters a weighted sum of displacements.
 
@@ -309,21 +582,105 @@ def spread_weights(f: Any, fx: Any, fy: Any, width: Any, mean: Any, norm: Any, a
     subset.  `out`, shape (rows, columns), receives the sum of those weights, so that overlapping
     subsets share their pixels' noise as they do in truth.
     """
-    j, row = np.empty(6), np.empty(6)
+    size = average.shape[1]
+    j, row = np.empty(size), np.empty(size)
     for i in range(xs.size):
         if on_u[i] == 0.0 and on_v[i] == 0.0:
             continue
-        for a in range(6):
-            row[a] = on_u[i] * inverse[i, 0, a] + on_v[i] * inverse[i, 3, a]
+        for a in range(size):
+            row[a] = on_u[i] * inverse[i, 0, a] + on_v[i] * inverse[i, size // 2, a]
         steady, tied = 0.0, 0.0
-        for a in range(6):
+        for a in range(size):
             steady += row[a] * average[i, a]
             tied += row[a] * along[i, a]
         for eta in range(-half, half + 1):
             for xi in range(-half, half + 1):
                 q = (ys[i] + eta) * width + xs[i] + xi
+                if m[q] == 0:
+                    continue
                 _descent(fx[q], fy[q], xi, eta, j)
                 weight = -steady - tied * (f[q] - mean[i]) / norm[i]
-                for a in range(6):
+                for a in range(size):
                     weight += row[a] * j[a]
                 out[ys[i] + eta, xs[i] + xi] += weight
+
+
+# ---- Filtering -------------------------------------------------------------------------------
+
+
+@_inlined
+def _weigh(source: Any, offset: Any, stride: Any, weights: Any, target: Any, first: Any, n: Any) -> None:
+    """target[first + i] = Σ weights[k]·source[offset + k·stride + i], eight taps at a time.
+
+    `weights` holds a multiple of eight.  Eight taps per pass keep what is summed up in registers.
+    """
+    for i in range(_U(n)):
+        target[first + i] = _F(0)
+    for k in range(0, weights.size, 8):
+        a0, a1, a2, a3 = weights[k], weights[k + 1], weights[k + 2], weights[k + 3]
+        a4, a5, a6, a7 = weights[k + 4], weights[k + 5], weights[k + 6], weights[k + 7]
+        o = offset + _U(k) * stride
+        for i in range(_U(n)):
+            target[first + i] += (
+                a0 * source[o + i] + a1 * source[o + stride + i]
+                + a2 * source[o + _U(2) * stride + i] + a3 * source[o + _U(3) * stride + i]
+                + a4 * source[o + _U(4) * stride + i] + a5 * source[o + _U(5) * stride + i]
+                + a6 * source[o + _U(6) * stride + i] + a7 * source[o + _U(7) * stride + i]
+            )  # fmt: skip
+
+
+@_exactly_inlined
+def _mirrored(i: Any, n: Any) -> Any:
+    """Index of the pixel that a place beyond the rim repeats, mirrored about the outermost pixel."""
+    if n == 1:
+        return 0
+    i = i % (2 * n - 2)
+    return i if i < n else 2 * n - 2 - i
+
+
+@_parallel
+def filter_tiles(image: Any, level: Any, down: Any, across: Any, lead: Any, tiles: Any, tile_rows: Any,
+                 tile_columns: Any, margin: Any, stride: Any, plane: Any, out: Any) -> None:  # fmt: skip
+    """Filter an image tile by tile with every pair of a vertical and a horizontal filter.
+
+    Parameters
+    ----------
+    image, level
+        Grey values as stored, shape (rows, columns), and the grey that is taken as zero.
+    down, across
+        Filters, shape (phases, taps), a multiple of eight taps each.
+    lead
+        Taps before a filter's middle.
+    tiles
+        Upper left corners of the tiles in the padded image, shape (n, 2), rows and columns.
+    tile_rows, tile_columns
+        Size of a tile.
+    margin, stride, plane
+        Layout of the result: pixels of margin on every side, elements per row and per plane.
+    out
+        Result, flat: one plane per pair of phases, the vertical phase counting first.
+    """
+    rows, columns = image.shape
+    taps = down.shape[1]
+    for t in prange(tiles.shape[0]):
+        height = min(tile_rows, rows + 2 * margin - tiles[t, 0])
+        width = min(tile_columns, columns + 2 * margin - tiles[t, 1])
+        wide = width + taps
+        grey = np.empty((height + taps) * wide, np.float32)
+        part = np.empty(height * wide, np.float32)
+        for r in range(height + taps):
+            row = _mirrored(tiles[t, 0] + r - lead - margin, rows)
+            first = tiles[t, 1] - lead - margin
+            if first >= 0 and first + wide <= columns:
+                for i in range(wide):
+                    grey[r * wide + i] = _F(image[row, first + i]) - level
+            else:
+                for i in range(wide):
+                    grey[r * wide + i] = _F(image[row, _mirrored(first + i, columns)]) - level
+        for vertical in range(down.shape[0]):
+            for r in range(height):
+                _weigh(grey, _U(r * wide), _U(wide), down[vertical], part, _U(r * wide), wide)
+            for horizontal in range(across.shape[0]):
+                base = (vertical * across.shape[0] + horizontal) * plane + tiles[t, 0] * stride + tiles[t, 1]
+                for r in range(height):
+                    _weigh(part, _U(r * wide), _U(1), across[horizontal], out, _U(base + r * stride), width)

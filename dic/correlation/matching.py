@@ -8,10 +8,11 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from dic.correlation.filters import noise_gains
 from dic.correlation.flags import Flag
 from dic.correlation.kernels import solve_subsets
 from dic.correlation.reference import Reference
-from dic.correlation.splines import MARGIN, SplineImage, blur
+from dic.correlation.splines import MARGIN, SplineImage
 
 Floats = NDArray[np.float64]
 
@@ -20,16 +21,20 @@ TOLERANCE_PX = 1e-4
 MOST_ITERATIONS = 25
 #: Correlation below which a match is not believed.  Common practice, no published source.
 LEAST_CORRELATION = 0.7
+#: A subset that ends farther than this from where it started has found something else, or needs a
+#: better start; coefficients are made this far around the starts.
+TRAVEL_PX = 12.0
 
 
 @dataclass(frozen=True)
 class Match:
-    """Displacements of all inside subsets in one frame, shape (n,) each, n as in the reference.
+    """Displacements of all subsets in one frame, shape (n,) each, n as in the reference.
 
     Attributes
     ----------
     parameters
-        u, uₓ, u_y, v, vₓ, v_y, shape (n, 6); NaN where not converged.
+        u, uₓ, u_y (and uₓₓ/2, u_xy, u_yy/2 for quadratic shapes), then v alike, shape (n, p); NaN where
+        not converged.
     correlation
         Zero-mean normalised cross-correlation, 0 to 1.
     sigma_u, sigma_v
@@ -40,6 +45,8 @@ class Match:
         Gauss–Newton iterations used.
     noise_grey
         Grey noise of one raw frame, median over the subsets, grey levels.
+    links
+        How many references lie between the first one and this frame; each adds its own matching error.
     """
 
     parameters: Floats
@@ -49,6 +56,7 @@ class Match:
     flag: NDArray[np.uint8]
     iterations: NDArray[np.uint8]
     noise_grey: float
+    links: int = 0
 
     @property
     def u(self) -> Floats:
@@ -58,7 +66,19 @@ class Match:
     @property
     def v(self) -> Floats:
         """Displacement along y (down), px."""
-        return self.parameters[:, 3]
+        return self.parameters[:, self.parameters.shape[1] // 2]
+
+    @property
+    def converged(self) -> NDArray[np.bool_]:
+        """Which subsets were measured."""
+        return self.flag == Flag.CONVERGED
+
+    def with_noise(self, felt: float) -> Match:
+        """Return this match with the noise as the matching feels it (`dic.correlation.noise`)."""
+        if not (np.isfinite(felt) and self.noise_grey > 0):
+            return self
+        ratio = felt / self.noise_grey
+        return replace(self, noise_grey=felt, sigma_u=ratio * self.sigma_u, sigma_v=ratio * self.sigma_v)
 
     def filled_from(self, other: Match) -> Match:
         """Return this match with the subsets that only `other` found taken from there."""
@@ -70,11 +90,6 @@ class Match:
         }
         return replace(self, **merged)
 
-    @property
-    def converged(self) -> NDArray[np.bool_]:
-        """Which subsets were measured."""
-        return self.flag == Flag.CONVERGED
-
 
 def match_frame(reference: Reference, frame: SplineImage, start: Floats) -> Match:
     """Match all subsets of the reference in one frame.
@@ -84,9 +99,9 @@ def match_frame(reference: Reference, frame: SplineImage, start: Floats) -> Matc
     reference
         From `prepare_reference`.
     frame
-        From `spline_image` of the frame smoothed as the reference was.
+        From `dic.correlation.splines.Prefilter`, with the reference's kind and smoothing.
     start
-        Starting parameters, shape (n, 6), within a few px of the truth.
+        Starting parameters, shape (n, p), within a few px of the truth; NaN rows are left out.
 
     Returns
     -------
@@ -99,17 +114,17 @@ def match_frame(reference: Reference, frame: SplineImage, start: Floats) -> Matc
     on the zero-mean normalised sum of squared differences, gain and offset projected out.
     """
     rows, columns = frame.shape
-    kit = reference.estimator
+    kit, settings = reference.estimator, reference.settings
     start = np.where(reference.usable[:, None], start, np.nan)
     p, correlation, residual, flag, iterations = solve_subsets(
-        frame.coefficients, frame.stride, MARGIN, rows, columns,
-        reference.f, reference.fx, reference.fy,
-        kit.mean, kit.norm, kit.average, kit.along, kit.inverse,
-        reference.x, reference.y, reference.grid.half,
-        np.ascontiguousarray(start), TOLERANCE_PX, MOST_ITERATIONS, LEAST_CORRELATION,
+        frame.taps, settings.shape, frame.coefficients, frame.sampling, frame.stride, frame.plane, MARGIN,
+        rows, columns, reference.f, reference.fx, reference.fy, reference.mask,
+        kit.pixels, kit.mean, kit.norm, kit.average, kit.along, kit.inverse,
+        reference.x, reference.y, reference.half,
+        np.ascontiguousarray(start), TOLERANCE_PX, TRAVEL_PX, MOST_ITERATIONS, LEAST_CORRELATION,
     )  # fmt: skip
-    flag[~reference.usable] = Flag.LOW_TEXTURE
-    noise = residual / residual_share(reference.smoothing, reference.frames)
+    flag = np.where(reference.usable, flag, reference.unusable)
+    noise = np.sqrt(residual / (reference.freedom * residual_gain(reference)))
     sigma = noise[:, None] * np.sqrt(reference.spread * (1.0 + 1.0 / reference.frames))
     found = noise[flag == Flag.CONVERGED]
     return Match(
@@ -123,11 +138,21 @@ def match_frame(reference: Reference, frame: SplineImage, start: Floats) -> Matc
     )
 
 
-def residual_share(smoothing: float, frames: int) -> float:
-    """Return the residual's standard deviation per unit of raw noise in one frame.
+def residual_gain(reference: Reference) -> float:
+    """Return the residual's variance per variance that one raw frame's noise keeps after smoothing.
 
-    Smoothing leaves Σk² of the noise's variance, and both pictures contribute.
+    The frame's noise passes through the interpolation too, the reference's is that of a mean.
     """
-    impulse = np.zeros((33, 33), np.float32)
-    impulse[16, 16] = 1.0
-    return float(np.sqrt((blur(impulse, smoothing) ** 2).sum() * (1.0 + 1.0 / frames)))
+    settings = reference.settings
+    smoothed, between = noise_gains(settings.kind, settings.smoothing)
+    return between / smoothed + 1.0 / reference.frames
+
+
+def boxes(reference: Reference, start: Floats) -> Floats:
+    """Return where in the frame subsets may end that start so: left, top, right, bottom, shape (n, 4)."""
+    half, n = reference.half, start.shape[1] // 2
+    reach_x = half * (1.0 + np.abs(start[:, 1]) + np.abs(start[:, 2])) + TRAVEL_PX
+    reach_y = half * (1.0 + np.abs(start[:, n + 1]) + np.abs(start[:, n + 2])) + TRAVEL_PX
+    x, y = reference.x + start[:, 0], reference.y + start[:, n]
+    corners = np.stack([x - reach_x, y - reach_y, x + reach_x, y + reach_y], axis=1)
+    return corners[np.isfinite(corners).all(axis=1)]

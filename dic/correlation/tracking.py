@@ -1,25 +1,41 @@
-"""Tracking in time: each frame starts where the last ones say the subsets will be."""
+"""Tracking in time: each frame starts where the last ones say the subsets will be.
+
+When the pattern has changed so much that correlation falls, a later frame becomes the reference: a
+new *link*.  Displacements are chained back to the first reference, and each link's matching error
+stays in the uncertainty.
+"""
 
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from dic.correlation.flags import Flag
-from dic.correlation.matching import Match, match_frame
-from dic.correlation.reference import Reference
-from dic.correlation.seeding import whole_pixel_shift
-from dic.correlation.splines import smooth, spline_image
+from dic.correlation.matching import Match, boxes, match_frame, residual_gain
+from dic.correlation.noise import probe_noise
+from dic.correlation.reference import Reference, prepare_reference
+from dic.correlation.seeding import find_again
+from dic.correlation.splines import Prefilter, SplineImage, smooth
 
 Floats = NDArray[np.float64]
+Ints = NDArray[np.int64]
+Frame = NDArray[np.integer | np.floating]
 
 #: Below this share of converged subsets the prediction is not trusted and the frame is seeded anew.
 LEAST_SHARE = 0.5
+#: A frame becomes the next reference when its median correlation has fallen to this share of the
+#: first frames'; low enough that links stay few, high enough that no subset is lost before.
+RENEW_BELOW = 0.9
+#: Smoothing with which matching starts from several px away: measured capture 100 % from 4 px.
+ROUGH_PX = 1.5
+#: Subsets matched roughly around the place that seeding found.
+SEEDS = 9
 
 
-def track(frames: Iterable[NDArray[np.generic]], reference: Reference) -> Iterator[Match]:
+def track(frames: Iterable[Frame], reference: Reference, neighbours: Ints) -> Iterator[Match]:
     """Match frame after frame, each predicted from the two before it.
 
     Parameters
@@ -27,49 +43,112 @@ def track(frames: Iterable[NDArray[np.generic]], reference: Reference) -> Iterat
     frames
         Grey values, shape (rows, columns) each, of the reference's size.
     reference
-        The prepared reference.
+        The prepared reference, n subsets.
+    neighbours
+        Numbers of each subset's neighbours, −1 for none, shape (n, 8).
 
     Yields
     ------
     Match
-        One per frame, in order.  A frame in which all is lost does not harm the next one, which is
-        predicted from the last good frames or, failing that, seeded anew.
+        One per frame, in order, displacements from the reference.  A frame in which all is lost does
+        not harm the next one, which is predicted from the last good frames or seeded anew.
     """
-    last: Floats | None = None
-    pace = np.zeros((len(reference.x), 6))
+    tracker = Tracker(reference, neighbours)
     for frame in frames:
-        match = _match_next(reference, frame, last, pace)
+        yield tracker.follow(frame)
+
+
+class Tracker:
+    """Follows the subsets of a reference from frame to frame; see `track`."""
+
+    def __init__(self, reference: Reference, neighbours: Ints) -> None:
+        self._first = reference
+        self._neighbours = neighbours
+        self._prefilter = Prefilter(reference.shape, reference.settings.kind, reference.settings.smoothing)
+        self._base: Match | None = None  # motion from the first reference to the present one
+        self._links = 0
+        self._begin(reference, None)
+
+    def _begin(self, reference: Reference, start: Floats | None) -> None:
+        """Take up a reference; `start` says where its subsets are, None if that is unknown."""
+        self._reference, self._probe = reference, probe_noise(reference)
+        self._gain = residual_gain(reference)
+        self._last, self._pace = start, 0.0 * start if start is not None else None
+        self._fresh = np.nan  # correlation that the reference starts with
+        self._missed, self._patience = 0, 1
+
+    def follow(self, frame: Frame) -> Match:
+        """Match the next frame."""
+        match, spline = self._match(frame)
+        match = match.with_noise(self._probe.felt(self._reference, spline, match.parameters, self._gain))
         if match.converged.any():
-            now = _completed(match, reference)
-            pace = now - last if last is not None else pace
-            last = now
+            now = completed(match, self._reference, self._neighbours)
+            self._pace = now - self._last if self._last is not None else None
+            self._last = now
         else:
-            pace = np.zeros_like(pace)
-        yield match
+            self._pace = None
+        whole = self._chained(match)
+        self._renew(frame, match, whole)
+        return whole
+
+    def _match(self, frame: Frame) -> tuple[Match, SplineImage]:
+        reference = self._reference
+        best: Match | None = None
+        if self._last is not None:
+            best, spline = self._from(frame, self._last if self._pace is None else self._last + self._pace)
+            if share(best, reference) < LEAST_SHARE and self._pace is not None:
+                # A jump: the coupon may have stopped or slipped since the last frame.
+                again, spline = self._from(frame, self._last)
+                best = _better(best, again)
+        spline = self._prefilter(frame) if best is None or self._incomplete(best) else spline
+        if best is None or share(best, reference) < LEAST_SHARE:
+            return self._searched(frame, spline, best), spline
+        self._missed, self._patience = 0, 1
+        if self._incomplete(best):
+            best = grow(reference, spline, best, self._neighbours)
+        return best, spline
+
+    def _incomplete(self, match: Match) -> bool:
+        """Whether subsets are lost that may still be in the picture."""
+        return bool((self._reference.usable & ~match.converged & (match.flag != Flag.OUT_OF_VIEW)).any())
+
+    def _from(self, frame: Frame, start: Floats) -> tuple[Match, SplineImage]:
+        spline = self._prefilter(frame, boxes(self._reference, start))
+        return match_frame(self._reference, spline, start), spline
+
+    def _searched(self, frame: Frame, spline: SplineImage, best: Match | None) -> Match:
+        """Look for the coupon anew; after each failure twice as many frames pass before the next search."""
+        self._missed += 1
+        if best is not None and self._missed < self._patience:
+            return best
+        seeded = seed(self._reference, frame, spline, self._neighbours)
+        found = share(seeded, self._reference) >= LEAST_SHARE
+        self._missed, self._patience = 0, 1 if found else 2 * self._patience
+        return seeded if best is None else _better(best, seeded)
+
+    def _chained(self, match: Match) -> Match:
+        if self._base is None:
+            return match
+        x, y = self._first.x + self._base.u, self._first.y + self._base.v
+        return chain(self._base, match, x - self._reference.x, y - self._reference.y, self._links)
+
+    def _renew(self, frame: Frame, match: Match, whole: Match) -> None:
+        """Make the frame the reference if correlation has fallen."""
+        if share(match, self._reference) < LEAST_SHARE:
+            return
+        level = float(np.median(match.correlation[match.converged]))
+        if not np.isfinite(self._fresh):
+            self._fresh = level
+        if level >= RENEW_BELOW * self._fresh:
+            return
+        self._base, self._links = whole, self._links + 1
+        start = np.zeros((len(whole.u), 2 * len(self._first.settings.shape)))
+        start[~whole.converged] = np.nan
+        self._begin(renewed(self._first, frame, self._first.x + whole.u, self._first.y + whole.v), start)
 
 
-def _match_next(reference: Reference, frame: NDArray[np.generic], last: Floats | None, pace: Floats) -> Match:
-    smoothed = smooth(frame, reference.smoothing)
-    spline = spline_image(smoothed)
-    best: Match | None = None
-    if last is not None:
-        best = match_frame(reference, spline, last + pace)
-        if _share(best, reference) < LEAST_SHARE:
-            # A jump: the coupon may have stopped or slipped since the last frame.
-            best = _better(best, match_frame(reference, spline, last))
-    if best is None or _share(best, reference) < LEAST_SHARE:
-        start = np.zeros((len(reference.x), 6))
-        start[:, [0, 3]] = whole_pixel_shift(reference.grey, smoothed, reference.grid)
-        seeded = match_frame(reference, spline, start)
-        best = seeded if best is None else _better(best, seeded)
-    lost = reference.usable & ~best.converged
-    if lost.any() and best.converged.sum() >= 3:
-        start = np.where(lost[:, None], _completed(best, reference), np.nan)
-        best = best.filled_from(match_frame(reference, spline, start))
-    return best
-
-
-def _share(match: Match, reference: Reference) -> float:
+def share(match: Match, reference: Reference) -> float:
+    """Return the share of the usable subsets that were measured."""
     return float(match.converged.sum() / max(int(reference.usable.sum()), 1))
 
 
@@ -77,15 +156,179 @@ def _better(one: Match, other: Match) -> Match:
     return other if other.converged.sum() > one.converged.sum() else one
 
 
-def _completed(match: Match, reference: Reference) -> Floats:
-    """Fill lost subsets' parameters from a plane through the others: starting values, never results."""
-    good = match.flag == Flag.CONVERGED
-    filled = match.parameters.copy()
-    if good.all():
-        return filled
-    x, y = reference.x.astype(float), reference.y.astype(float)
-    basis = np.column_stack([np.ones(len(x)), x - x.mean(), y - y.mean()])
-    plane, *_ = np.linalg.lstsq(basis[good], match.parameters[good][:, [0, 3]], rcond=None)
-    filled[~good] = np.median(match.parameters[good], axis=0)
-    filled[np.ix_(~good, [0, 3])] = basis[~good] @ plane
+def seed(reference: Reference, frame: Frame, spline: SplineImage, neighbours: Ints) -> Match:
+    """Match a frame about which nothing is known, outwards from a few subsets that were found again.
+
+    Parameters
+    ----------
+    reference, neighbours
+        As for `track`.
+    frame, spline
+        Grey values and their coefficients, whole.
+
+    Returns
+    -------
+    Match
+        All not converged where the coupon was not found.
+    """
+    picture = reference.f[: reference.shape[0] * reference.shape[1]].reshape(reference.shape)
+    usable = np.flatnonzero(reference.usable)
+    size = 2 * len(reference.settings.shape)
+    start = np.full((len(reference.x), size), np.nan)
+    if len(usable):
+        found = find_again(picture, smooth(frame, 0.0), reference.x[usable], reference.y[usable])
+        away = (reference.x[usable] - found.place[0]) ** 2 + (reference.y[usable] - found.place[1]) ** 2
+        near = usable[np.argsort(away, kind="stable")[:SEEDS]]
+        start[near] = _guess(found.shift, found.gradient, found.place, reference, near)
+        start = settle(reference, picture, frame, start)
+    return grow(reference, spline, match_frame(reference, spline, start), neighbours)
+
+
+def _guess(shift: Floats, gradient: Floats, place: Floats, reference: Reference, which: Ints) -> Floats:
+    size = 2 * len(reference.settings.shape)
+    start = np.zeros((len(which), size))
+    away = np.stack([reference.x[which], reference.y[which]], axis=1) - place
+    for first, row in ((0, 0), (size // 2, 1)):
+        start[:, first] = shift[row] + away @ gradient[row]
+        start[:, first + 1 : first + 3] = gradient[row]
+    return start
+
+
+def settle(reference: Reference, picture: Frame, frame: Frame, start: Floats) -> Floats:
+    """Mend starts that are several px off by matching on strongly smoothed pictures.
+
+    Parameters
+    ----------
+    reference
+        The prepared reference.
+    picture
+        Its grey values, shape (rows, columns).
+    frame
+        The frame's, alike.
+    start
+        Starting parameters, shape (n, p); rows of NaN are left out.
+
+    Returns
+    -------
+    ndarray
+        Better starts, shape (n, p); NaN where the rough matching failed too.
+    """
+    which = np.flatnonzero(np.isfinite(start).all(axis=1))
+    settings = replace(reference.settings, smoothing=ROUGH_PX)
+    rough = prepare_reference(
+        picture, reference.x[which], reference.y[which], subset=reference.subset, settings=settings
+    )
+    spline = Prefilter(reference.shape, settings.kind, ROUGH_PX)(frame, boxes(rough, start[which]))
+    better = np.full_like(start, np.nan)
+    better[which] = match_frame(rough, spline, start[which]).parameters
+    return better
+
+
+def grow(reference: Reference, spline: SplineImage, match: Match, neighbours: Ints) -> Match:
+    """Try lost subsets again, each from its best-matched neighbour, until no more are found.
+
+    Reliability-guided order (Pan 2009, doi 10.1364/AO.48.001535), a whole front of subsets at a time.
+    """
+    tried = np.zeros(len(reference.x), bool)
+    while True:
+        good = match.converged
+        lost = reference.usable & ~good & ~tried & (good[neighbours] & (neighbours >= 0)).any(axis=1)
+        if not lost.any():
+            return match
+        front = np.flatnonzero(lost)
+        start = np.full_like(match.parameters, np.nan)
+        start[front] = _from_neighbours(reference, match, neighbours[front], front)
+        again = match_frame(reference, spline, start)
+        tried |= lost
+        # A subset that failed may succeed from a neighbour that is found later.
+        tried &= ~(again.converged[neighbours] & (neighbours >= 0)).any(axis=1)
+        match = match.filled_from(again)
+        if not again.converged.any():
+            return match
+
+
+def _from_neighbours(reference: Reference, match: Match, around: Ints, which: Ints) -> Floats:
+    """Extrapolate the best-matched neighbour's motion to each subset of `which`."""
+    score = np.where((around >= 0) & match.converged[around], match.correlation[around], -1.0)
+    best = around[np.arange(len(which)), np.argmax(score, axis=1)]
+    start = match.parameters[best].copy()
+    dx, dy = reference.x[which] - reference.x[best], reference.y[which] - reference.y[best]
+    for first in (0, start.shape[1] // 2):
+        start[:, first] += start[:, first + 1] * dx + start[:, first + 2] * dy
+    return start
+
+
+def completed(match: Match, reference: Reference, neighbours: Ints) -> Floats:
+    """Fill lost subsets' parameters from their neighbours': starting values, never results."""
+    filled, known = match.parameters.copy(), match.converged.copy()
+    while not known.all():
+        front = np.flatnonzero(~known & (known[neighbours] & (neighbours >= 0)).any(axis=1))
+        if not len(front):
+            break
+        guess = replace(match, parameters=filled, flag=np.where(known, Flag.CONVERGED, Flag.NOT_CONVERGED))
+        guess = replace(guess, correlation=np.where(known, 1.0, np.nan))
+        filled[front] = _from_neighbours(reference, guess, neighbours[front], front)
+        known[front] = True
     return filled
+
+
+def renewed(first: Reference, frame: Frame, x: Floats, y: Floats) -> Reference:
+    """Prepare a frame as the next reference, its subsets around the pixels nearest to x and y.
+
+    Subsets that are lost or would reach out of the picture are flagged and stay so.
+    """
+    rows, columns = first.shape
+    half = first.half
+    with np.errstate(invalid="ignore"):
+        held = (x >= half) & (x <= columns - 1 - half) & (y >= half) & (y <= rows - 1 - half)
+    place_x = np.where(held, np.rint(np.where(held, x, 0)), half).astype(np.int64)
+    place_y = np.where(held, np.rint(np.where(held, y, 0)), half).astype(np.int64)
+    reference = prepare_reference(frame, place_x, place_y, subset=first.subset, settings=first.settings)
+    flag = np.where(held, reference.unusable, Flag.OUT_OF_VIEW)
+    flag = np.where(np.isfinite(x), flag, Flag.DECORRELATED)
+    flag = np.where(first.usable, flag, first.unusable)
+    return replace(reference, unusable=flag.astype(np.uint8))
+
+
+def chain(base: Match, match: Match, dx: Floats, dy: Floats, links: int) -> Match:
+    """Join the motion to the present reference with the motion from there.
+
+    Parameters
+    ----------
+    base
+        From the first reference to the present one.
+    match
+        From the present one, whose subsets sit at whole pixels near the points that `base` leads to.
+    dx, dy
+        From the present subsets' centres to those points, px, shape (n,).
+    links
+        How many references there are before the present one.
+
+    Returns
+    -------
+    Match
+        From the first reference; affine parameters; uncertainties added in squares.
+    """
+    n = match.parameters.shape[1] // 2
+    p, b = match.parameters, base.parameters
+    half = b.shape[1] // 2
+    joined = np.empty((len(p), 6))
+    joined[:, 0] = base.u + p[:, 0] + p[:, 1] * dx + p[:, 2] * dy
+    joined[:, 3] = base.v + p[:, n] + p[:, n + 1] * dx + p[:, n + 2] * dy
+    second = _deformation(p, n)
+    gradient = second @ _deformation(b, half) - np.eye(2)
+    joined[:, 1:3], joined[:, 4:6] = gradient[:, 0], gradient[:, 1]
+    lost = ~match.converged
+    joined[lost] = np.nan
+    return replace(
+        match,
+        parameters=joined,
+        sigma_u=np.hypot(base.sigma_u, match.sigma_u),
+        sigma_v=np.hypot(base.sigma_v, match.sigma_v),
+        links=links,
+    )
+
+
+def _deformation(parameters: Floats, n: int) -> Floats:
+    rows = np.stack([parameters[:, 1:3], parameters[:, n + 1 : n + 3]], axis=1)
+    return rows + np.eye(2)
