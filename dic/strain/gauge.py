@@ -16,6 +16,7 @@ from dic.correlation.matching import Match
 from dic.correlation.reference import Reference
 from dic.correlation.splines import blur
 from dic.errors import PatternError
+from dic.strain.periodic import PeriodicSums, SmoothField, periodic_sums
 from dic.strain.tensors import engineering
 
 Floats = NDArray[np.float64]
@@ -71,7 +72,11 @@ class Region:
 
 @dataclass(frozen=True)
 class Reading:
-    """What the gauges read in one frame; see `dic.strain.history.GaugeHistory` for the terms."""
+    """What the gauges read in one frame; see `dic.strain.history.GaugeHistory` for the terms.
+
+    `response` says by how much each reading is false per px of periodic error, and `sums` what the
+    frame adds to the determination of that error (`dic.strain.periodic`).
+    """
 
     axial: float
     transverse: float
@@ -85,6 +90,8 @@ class Reading:
     shift_px: tuple[float, float]
     valid_fraction: float
     status: str
+    response: dict[str, float] = field(default_factory=dict)
+    sums: PeriodicSums = field(default_factory=PeriodicSums)
 
 
 @dataclass(frozen=True)
@@ -94,6 +101,8 @@ class _Weights:
     plane: Floats  # value, ∂/∂x and ∂/∂y of a plane, shape (3, m)
     twist: Floats  # the product term along·across, shape (m,)
     ends: tuple[Floats, Floats] | None  # means of the two end bands; None where one is lost
+    on: dict[str, tuple[Floats, Floats]]  # weights of u and of v in each reading, for small strains
+    smooth: SmoothField
     gains: dict[str, float]  # standard deviation per grey level of noise
 
 
@@ -152,7 +161,9 @@ class GaugeReader:
         moved = np.stack([match.u[valid], match.v[valid]])  # (2, m)
         gradient = moved @ weights.plane[1:].T
         axial, transverse, shear = engineering(gradient, self.region.axial, self.region.transverse)
-        noise = match.noise_grey * np.sqrt(1.0 + 1.0 / self.reference.frames)
+        # Each further link is matched between two single frames.
+        noise = match.noise_grey * np.sqrt(1.0 + 1.0 / self.reference.frames + 2.0 * match.links)
+        sine = np.sin(2 * np.pi * moved)
         mean = moved @ weights.plane[0]
         return Reading(
             axial=float(axial),
@@ -167,6 +178,10 @@ class GaugeReader:
             shift_px=(float(mean @ self.region.axial), float(mean @ self.region.transverse)),
             valid_fraction=share,
             status="ok" if weights.ends is not None else "no subsets left at an end of the extensometer",
+            response={name: float(sine[0] @ on[0] + sine[1] @ on[1]) for name, on in weights.on.items()},
+            sums=periodic_sums(
+                weights.smooth, moved[0], moved[1], match.sigma_u[valid], match.sigma_v[valid]
+            ),
         )
 
     def _extensometer(self, moved: Floats, weights: _Weights) -> float:
@@ -186,7 +201,7 @@ class GaugeReader:
     def _make_weights(self, valid: NDArray[np.bool_]) -> _Weights:
         x = self.reference.x[valid] - self.region.centre[0]
         y = self.reference.y[valid] - self.region.centre[1]
-        along, across, depth = self._along[valid], self._across[valid], self.reference.grid.subset
+        along, across, depth = self._along[valid], self._across[valid], self.reference.subset
         plane = np.linalg.pinv(np.column_stack([np.ones(len(x)), x, y]))
         twist = np.linalg.pinv(np.column_stack([np.ones(len(x)), along, across, along * across]))[3]
         half = self._half_length()
@@ -199,30 +214,30 @@ class GaugeReader:
             "transverse": (t[0] * slope_t, t[1] * slope_t),
             "shear": (t[0] * slope_a + a[0] * slope_t, t[1] * slope_a + a[1] * slope_t),
         }
-        gains = {name: self._noise_gain(valid, *pair) for name, pair in on.items()}
-        gains["extensometer"] = float("nan")
         if ends is not None:
             stretch = (ends[1] - ends[0]) / (2 * half)
-            gains["extensometer"] = self._noise_gain(valid, a[0] * stretch, a[1] * stretch)
-        return _Weights(plane, twist, ends, gains)
+            on["extensometer"] = (a[0] * stretch, a[1] * stretch)
+        gains = {"extensometer": float("nan")}
+        gains |= {name: self._noise_gain(valid, *pair) for name, pair in on.items()}
+        return _Weights(plane, twist, ends, on, SmoothField(x, y), gains)
 
     def _half_length(self) -> float:
         """Return half the gauge length: as given, else what leaves a whole band at either end."""
         span = float(np.ptp(self._along[self._member]))
-        return max(self.length if self.length is not None else span - self.reference.grid.subset, 1.0) / 2
+        return max(self.length if self.length is not None else span - self.reference.subset, 1.0) / 2
 
     def _noise_gain(self, valid: NDArray[np.bool_], on_u: Floats, on_v: Floats) -> float:
         """Return a reading's standard deviation for pixel noise of one grey level in one frame."""
         reference, kit = self.reference, self.reference.estimator
         pixels = np.zeros(reference.shape)
         spread_weights(
-            reference.f, reference.fx, reference.fy, reference.shape[1],
+            reference.f, reference.fx, reference.fy, reference.mask, reference.shape[1],
             kit.mean[valid], kit.norm[valid], kit.average[valid], kit.along[valid], kit.inverse[valid],
-            reference.x[valid], reference.y[valid], reference.grid.half,
+            reference.x[valid], reference.y[valid], reference.half,
             np.ascontiguousarray(on_u), np.ascontiguousarray(on_v), pixels,
         )  # fmt: skip
         # Raw noise is smoothed before it meets these weights, so the weights are smoothed instead.
-        return float(np.linalg.norm(blur(pixels.astype(np.float32), reference.smoothing)))
+        return float(np.linalg.norm(blur(pixels.astype(np.float32), reference.settings.smoothing)))
 
 
 def _end(along: Floats, across: Floats, depth: int) -> Floats | None:

@@ -8,6 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dic.strain.gauge import Reading
+from dic.strain.periodic import Periodic, determine
 
 Floats = NDArray[np.float64]
 
@@ -37,6 +38,8 @@ class GaugeHistory:
         Mean motion of the gauge along the coupon axis and across it, px, shape (n, 2).
     valid_fraction
         Share of the region's subsets that were measured.
+    periodic
+        The interpolation's periodic error, and whether the strains were corrected for it.
     status
         ``"ok"``, or the reason why the frame was not (or only partly) measured.
     """
@@ -56,27 +59,48 @@ class GaugeHistory:
     valid_fraction: Floats
     status: tuple[str, ...]
     bending: Floats
+    periodic: Periodic
 
     def __len__(self) -> int:
         return len(self.frame)
 
 
-def gather(readings: list[Reading], names: tuple[str, ...], time_s: Floats) -> GaugeHistory:
-    """Put the frames' readings one below the other."""
+def gather(
+    readings: list[Reading], names: tuple[str, ...], time_s: Floats, *, correct: bool = True
+) -> GaugeHistory:
+    """Put the frames' readings one below the other, corrected for the periodic error where it is known.
+
+    Parameters
+    ----------
+    readings
+        One per frame, in order.
+    names, time_s
+        The frames' names and camera times.
+    correct
+        Whether to take off the periodic error where the test determines it.
+
+    Returns
+    -------
+    GaugeHistory
+        Readings of all frames.
+    """
+    periodic = determine([reading.sums for reading in readings], correct)
 
     def column(key: str) -> Floats:
         return np.array([getattr(reading, key) for reading in readings], dtype=float)
 
+    columns = {key: column(key) for key in ("bending", "shift_px", "valid_fraction")}
+    for key in ("axial", "transverse", "shear", "extensometer"):
+        columns[key], columns[f"u_{key}"] = column(key), column(f"u_{key}")
+        if periodic.applied:
+            response = np.array([reading.response.get(key, np.nan) for reading in readings])
+            columns[key] = columns[key] - periodic.amplitude_px * response
+            columns[f"u_{key}"] = np.hypot(columns[f"u_{key}"], periodic.u_amplitude_px * response)
     return GaugeHistory(
         frame=np.arange(len(readings)),
         name=names,
         time_s=time_s,
         status=tuple(reading.status for reading in readings),
-        **{
-            key: column(key)
-            for key in (
-                "axial", "transverse", "shear", "extensometer", "bending", "shift_px", "valid_fraction",
-                "u_axial", "u_transverse", "u_shear", "u_extensometer",
-            )
-        },
-    )  # fmt: skip
+        periodic=periodic,
+        **columns,
+    )
