@@ -129,6 +129,7 @@ class Gauge(Section):
 
     axis: str = "auto"
     region: Literal["auto"] | tuple[float, float, float, float] = "auto"
+    subsets: Literal["everywhere", "ends"] = "everywhere"
     length: Length | None = None
 
     @model_validator(mode="after")
@@ -150,9 +151,10 @@ class Correlation(Section):
 
     subset: int = Field(31, ge=9, le=201)
     step: int | None = Field(None, ge=1, le=200)
-    shape: Literal["affine"] = "affine"
-    spline: Literal["quintic"] = "quintic"
-    smoothing: float = Field(0.65, ge=0, le=3)
+    shape: Literal["affine", "quadratic"] = "affine"
+    spline: Literal["cubic", "quintic", "septic", "twofold"] = "twofold"
+    smoothing: float = Field(0.5, ge=0, le=3)
+    periodic: Literal["auto", "off"] = "auto"
 
 
 class Maps(Section):

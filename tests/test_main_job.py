@@ -91,7 +91,7 @@ def test_a_second_run_with_other_dimensions_does_not_track_again(copy, monkeypat
     def never(*_):
         raise AssertionError("tracked again")
 
-    monkeypatch.setattr("dic.pipeline.track", never)
+    monkeypatch.setattr("dic.sequence.track", never)
     second = dic.measure(copy)
     np.testing.assert_array_equal(first.history.axial, second.history.axial)
     ratio = first.properties["youngs_modulus"].value / second.properties["youngs_modulus"].value

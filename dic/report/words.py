@@ -55,6 +55,19 @@ MEANINGS = {
         "Distance between the two end bands whose change is the extensometer reading in history.csv.",
     ),
     "pixel_mm": ("Size of a pixel", "On the coupon; strains do not depend on it."),
+    "reference_frames": (
+        "Frames in the reference",
+        "Frames at rest that were averaged into the picture that strain counts from.",
+    ),
+    "periodic_error_px": (
+        "Periodic error of the interpolation",
+        "Amplitude C of C·sin(2πu) as this test shows it, u in px.",
+    ),
+    "u_periodic_error_px": ("Its standard uncertainty", "From leaving out one frame at a time."),
+    "periodic_error_corrected": (
+        "Corrected for it",
+        "1 where the strains were corrected: only where the test determines the amplitude well.",
+    ),
     "speckle_px": (
         "Speckle size",
         "3 to 5 px is good (common practice); larger ones want larger subsets and show less detail.",
@@ -139,7 +152,7 @@ def _labelled(name: str, value: Any) -> tuple[str, str, str]:
     if unit == "°":
         return label, f"{value:.2f}°", meaning
     # Whole numbers are counts; of the rest three digits tell enough.
-    text = f"{value:.0f}" if float(value).is_integer() else three_digits(value)
+    text = f"{value:.0f}" if float(value).is_integer() else three_digits(float(value))
     return label, f"{text} {unit}".rstrip(), meaning
 
 

@@ -67,11 +67,11 @@ class FieldsWriter:
                 f"cannot be written ({error})", where=str(folder), remedy="choose another --out"
             ) from error
         file = self._file
-        file.dimensions = {"frame": len(time_s), "y": len(grid.y), "x": len(grid.x)}
+        file.dimensions = {"frame": len(time_s), "y": grid.shape[0], "x": grid.shape[1]}
         file.create_variable("frame", ("frame",), data=np.arange(len(time_s)))
         file.create_variable("time", ("frame",), data=time_s).attrs["long_name"] = "camera time in seconds"
-        file.create_variable("y", ("y",), data=grid.y).attrs["units"] = "px"
-        file.create_variable("x", ("x",), data=grid.x).attrs["units"] = "px"
+        file.create_variable("y", ("y",), data=grid.rows).attrs["units"] = "px"
+        file.create_variable("x", ("x",), data=grid.columns).attrs["units"] = "px"
         for name, (dtype, unit, meaning) in _VARIABLES.items():
             fill = Flag.NO_FRAME if dtype == "u1" else np.nan
             variable = file.create_variable(
@@ -82,6 +82,8 @@ class FieldsWriter:
         file["flag"].attrs["flag_meanings"] = " ".join(flag.name.lower() for flag in MEANING)
         noise = file.create_variable("noise_grey", ("frame",), "f8", fillvalue=np.nan)
         noise.attrs["long_name"] = "grey noise of one frame, median over the subsets, in grey levels"
+        links = file.create_variable("links", ("frame",), "i4")
+        links.attrs["long_name"] = "references between the first one and the frame"
         file.attrs.update(attributes)
 
     def __enter__(self) -> FieldsWriter:
@@ -105,7 +107,12 @@ class FieldsWriter:
         for name, value in {**values, "flag": flag}.items():
             self._file[name][self._next] = value
         self._file["noise_grey"][self._next] = match.noise_grey
+        self._file["links"][self._next] = match.links
         self._next += 1
+
+    def note(self, name: str, value: str) -> None:
+        """Add an attribute that is known only at the end."""
+        self._file.attrs[name] = value
 
     def __exit__(
         self, kind: type[BaseException] | None, value: BaseException | None, trace: TracebackType | None
@@ -143,7 +150,7 @@ def stored_matches(folder: Path, grid: Grid) -> Iterator[Match]:
     """Yield what tracking once found, frame by frame, as tracking itself would."""
     inside = grid.inside
     with h5netcdf.File(folder / NAME, "r") as file:
-        for frame, noise in enumerate(file["noise_grey"][:]):
+        for frame, (noise, links) in enumerate(zip(file["noise_grey"][:], file["links"][:], strict=True)):
             parameters = np.full((int(inside.sum()), 6), np.nan)
             parameters[:, 0] = file["u"][frame][inside]
             parameters[:, 3] = file["v"][frame][inside]
@@ -156,4 +163,5 @@ def stored_matches(folder: Path, grid: Grid) -> Iterator[Match]:
                 flag=flag,
                 iterations=np.zeros(len(flag), np.uint8),
                 noise_grey=float(noise),
+                links=int(links),
             )

@@ -8,6 +8,7 @@ import pytest
 
 from dic.properties import make_curve
 from dic.strain.history import GaugeHistory
+from dic.strain.periodic import Periodic
 from dic.sync import Clock, LoadRecord
 from dic.testfile import Specimen
 
@@ -92,6 +93,7 @@ def pull():
             valid_fraction=np.ones(n),
             status=("ok",) * n,
             bending=np.zeros(n),
+            periodic=Periodic(float("nan"), float("nan"), 0, False),
         )
         peak = float(np.interp(fracture, STRAIN, STRESS))
         return Pull(

@@ -11,6 +11,7 @@ from dic.errors import Notice
 from dic.measurement import Measurement, Scene
 from dic.properties.result import Curve, ModulusLine, Property
 from dic.strain.history import GaugeHistory
+from dic.strain.periodic import Periodic
 from dic.sync.record import Clock, LoadRecord
 from dic.testfile import TestFile
 
@@ -57,6 +58,7 @@ def make_histories():
         valid_fraction=np.where(np.isfinite(axial), 0.998, 0.2),
         status=tuple("too few subsets measured" if k == LOST else "ok" for k in range(n)),
         bending=0.04 * axial,
+        periodic=Periodic(float("nan"), float("nan"), 0, False),
     )
     clock = Clock(3.37, 0.0041, 0.0, "found from when loading starts", ("The drift was taken as zero.",))
     times = clock.machine_time(camera)

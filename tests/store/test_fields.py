@@ -36,7 +36,7 @@ def test_xarray_opens_what_was_written(tmp_path):
     with xr.open_dataset(tmp_path / fields.NAME) as found:
         assert found.u.dims == ("frame", "y", "x")
         assert found.u.shape == (3, 2, 3)
-        np.testing.assert_allclose(found.x, GRID.x)
+        np.testing.assert_allclose(found.x, GRID.columns)
         np.testing.assert_allclose(found.time, [0, 0.2, 0.4])
         assert float(found.u.sel(frame=2, y=15, x=20)) == 2.0
         assert np.isnan(found.u.values[:, ~GRID.inside]).all()

@@ -1,0 +1,202 @@
+"""What is settled before the first frame is tracked: coupon, gauge region, prepared reference."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from dic.correlation import Grid, Reference, Settings, Tracker, lay_grid, prepare_reference
+from dic.errors import Notice, PatternError, TestFileError
+from dic.frames import FrameSource
+from dic.pattern import Coupon, axes, doubts, find_coupon, picture_quality
+from dic.strain import GaugeReader, Region
+from dic.testfile import Correlation, TestFile
+
+#: Frames averaged into the reference at the most: random error falls by √(1 + 1/n)/√2, so that the
+#: sixteenth frame brings 0.2 %.
+MOST_AVERAGED = 16
+#: A frame counts as at rest while the coupon's mean motion stays below this; more would blur the mean.
+REST_PX = 0.05
+#: ... and while nothing stretches it by more than this many standard uncertainties.
+REST_SIGMAS = 4.0
+
+
+@dataclass(frozen=True)
+class Setup:
+    """All that is known before the first frame is tracked.
+
+    Attributes
+    ----------
+    source
+        The frames.
+    image
+        Reference picture, grey values, shape (rows, columns).
+    coupon
+        Where it is.
+    region
+        Where strain is averaged.
+    grid, reference
+        The subsets, and all that matching needs of them.
+    scale_mm
+        mm per px, NaN where unknown.
+    extensometer_px
+        Gauge length as asked for, px; None for the whole region.
+    quality
+        Figures of the pattern.
+    notices
+        Doubts about it.
+    """
+
+    source: FrameSource
+    image: NDArray[np.float64]
+    coupon: Coupon
+    region: Region
+    grid: Grid
+    reference: Reference
+    scale_mm: float
+    extensometer_px: float | None
+    quality: dict[str, float]
+    notices: tuple[Notice, ...]
+
+    def reader(self) -> GaugeReader:
+        """Return a fresh reader of the gauges."""
+        return GaugeReader(self.reference, self.region, self.extensometer_px)
+
+
+def set_up(test: TestFile, source: FrameSource) -> Setup:
+    """Find the coupon in the reference picture and prepare everything that later frames share.
+
+    Raises
+    ------
+    PatternError
+        If no textured area is found or no subset fits.
+    TestFileError
+        If region, gauge length or reference frames do not fit the pictures.
+    """
+    first, last = _reference_frames(source, test.frames.reference)
+    image = _mean(source, first, last)
+    full_scale = source.full_scale()
+    coupon = find_coupon(image, test.gauge.axis_angle)
+    mask = coupon.mask & _given_region(image.shape, test.gauge.region)
+    region = Region.around(mask, *axes(coupon.axis_angle_deg))
+    scale_mm = test.camera.scale or test.specimen.visible_width / coupon.width_px
+    length = _gauge_length(test, scale_mm)
+    grid = _grid(test, mask, region, length)
+    reference = _prepared(test.correlation, image, grid, mask, last - first + 1, full_scale)
+    if test.frames.reference is None:
+        still = _frames_at_rest(source, reference, grid, GaugeReader(reference, region, length))
+        if still > 1:
+            image = _mean(source, 0, still - 1)
+            reference = _prepared(test.correlation, image, grid, mask, still, full_scale)
+    quality = picture_quality(image, coupon, full_scale)
+    return Setup(
+        source=source,
+        image=image,
+        coupon=coupon,
+        region=region,
+        grid=grid,
+        reference=reference,
+        scale_mm=scale_mm,
+        extensometer_px=length,
+        quality={**quality, "reference_frames": float(reference.frames)},
+        notices=tuple(doubts(quality, grid.subset)),
+    )
+
+
+def _prepared(
+    settings: Correlation,
+    image: NDArray[np.float64],
+    grid: Grid,
+    mask: NDArray[np.bool_],
+    frames: int,
+    full_scale: float,
+) -> Reference:
+    how = Settings(settings.spline, settings.smoothing, settings.shape == "quadratic", full_scale)
+    return prepare_reference(
+        image, grid.x, grid.y, subset=grid.subset, settings=how, mask=mask, frames=frames
+    )
+
+
+def _grid(test: TestFile, mask: NDArray[np.bool_], region: Region, length: float | None) -> Grid:
+    """Lay the subsets: everywhere on the mask, or in the end bands of the gauge only."""
+    subset, settings = test.correlation.subset, test.correlation
+    wanted = mask
+    if test.gauge.subsets == "ends":
+        rows, columns = np.nonzero(mask)
+        along, _ = region.coordinates(columns, rows)
+        # bands deep enough for two rows of subsets
+        ends = (length or region.length - 3 * subset) / 2
+        wanted = np.zeros_like(mask)
+        here = abs(abs(along) - ends) <= 1.5 * subset
+        wanted[rows[here], columns[here]] = True
+    grid = lay_grid(wanted, subset, settings.step or max(subset // 3, 1))
+    if not grid.inside.any():
+        raise PatternError(
+            f"no subset of {subset} px fits on the textured area inside the region",
+            where="gauge.region and correlation.subset",
+            remedy="enlarge the region, make the subset smaller, or check the pattern",
+        )
+    return grid
+
+
+def _reference_frames(source: FrameSource, said: int | tuple[int, int] | None) -> tuple[int, int]:
+    first, last = said if isinstance(said, tuple) else (said or 0, said or 0)
+    if not 0 <= first <= last < len(source):
+        raise TestFileError(
+            f"there are no frames {first} to {last}",
+            where="frames.reference",
+            remedy=f"frames are counted from 0 to {len(source) - 1}",
+        )
+    return first, last
+
+
+def _mean(source: FrameSource, first: int, last: int) -> NDArray[np.float64]:
+    total = np.zeros(source.shape)
+    for index in range(first, last + 1):
+        total += source[index]
+    return total / (last - first + 1)
+
+
+def _frames_at_rest(source: FrameSource, reference: Reference, grid: Grid, reader: GaugeReader) -> int:
+    """Count the frames at the beginning in which the coupon neither moves nor stretches."""
+    tracker = Tracker(reference, grid.neighbours())
+    for index in range(1, min(MOST_AVERAGED, len(source))):
+        reading = reader.read(tracker.follow(source[index]))
+        moved = float(np.hypot(*reading.shift_px))
+        strained = abs(reading.axial) > REST_SIGMAS * reading.u_axial
+        if not moved < REST_PX or strained:
+            return index
+    return min(MOST_AVERAGED, len(source))
+
+
+def _given_region(shape: tuple[int, ...], region: Any) -> NDArray[np.bool_]:
+    """Mark the rectangle that the test file gives, or everything."""
+    if region == "auto":
+        return np.ones(shape, bool)
+    x, y, width, height = region
+    if not (
+        width > 0 and height > 0 and x >= 0 and x + width <= shape[1] and y >= 0 and y + height <= shape[0]
+    ):
+        raise TestFileError(
+            f"the region x {x:g} to {x + width:g}, y {y:g} to {y + height:g} px is not inside the picture",
+            where="gauge.region",
+            remedy=f"the picture is {shape[1]} px wide and {shape[0]} px high",
+        )
+    mask = np.zeros(shape, bool)
+    mask[round(y) : round(y + height), round(x) : round(x + width)] = True
+    return mask
+
+
+def _gauge_length(test: TestFile, scale_mm: float) -> float | None:
+    if test.gauge.length is None:
+        return None
+    if not np.isfinite(scale_mm):
+        raise TestFileError(
+            "the scale is unknown because the coupon's edges are not in view",
+            where="gauge.length",
+            remedy='give camera.scale, for example "0.021 mm/px"',
+        )
+    return test.gauge.length / scale_mm

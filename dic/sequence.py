@@ -1,0 +1,88 @@
+"""The tracking half: frame after frame through matching into the store, or out of the store again."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+from collections.abc import Iterator
+from concurrent.futures import ThreadPoolExecutor
+from pathlib import Path
+
+from dic import provenance
+from dic.correlation import Match, track
+from dic.errors import TrackingError
+from dic.frames import FrameSource
+from dic.frames.readers import Grey
+from dic.preparation import Setup
+from dic.store import fields
+from dic.strain import gauge_size, strain_map
+from dic.testfile import TestFile
+
+
+def tracked_or_stored(test: TestFile, setup: Setup, folder: Path) -> Iterator[Match]:
+    """Yield one match per frame, from the store if it holds this very tracking, else by tracking."""
+    key = tracking_key(test, setup.source)
+    if fields.stored_attributes(folder).get("tracking_key") == key:
+        yield from fields.stored_matches(folder, setup.grid)
+    else:
+        yield from _tracked(test, setup, folder, key)
+
+
+def tracking_key(test: TestFile, source: FrameSource) -> str:
+    """Return a digest of all that tracking depends on."""
+    said = {
+        "version": provenance.VERSION,
+        "frames": source.listing(),
+        "times": source.time_s.tolist(),
+        "reference": test.frames.reference,
+        "correlation": test.correlation.model_dump(exclude={"periodic"}),
+        "maps": test.maps.model_dump(),
+        "axis": test.gauge.axis,
+        "region": test.gauge.region,
+        "subsets": (test.gauge.subsets, test.gauge.length if test.gauge.subsets == "ends" else None),
+    }
+    return hashlib.sha256(json.dumps(said, sort_keys=True).encode()).hexdigest()
+
+
+def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[Match]:
+    grid, source, window = setup.grid, setup.source, test.maps.window
+    attributes = {
+        "tracking_key": key,
+        "subset_px": grid.subset,
+        "step_px": grid.step,
+        "map_gauge_px": gauge_size(window, grid.step, grid.subset),
+        "strain_measure": "engineering, in coupon axes",
+        "axis_angle_deg": setup.coupon.axis_angle_deg,
+    }
+    directions = setup.region.axial, setup.region.transverse
+    measured = 0
+    folder.mkdir(parents=True, exist_ok=True)
+    with (
+        ThreadPoolExecutor(1) as hashing,
+        fields.FieldsWriter(folder, grid, source.time_s, attributes) as writer,
+    ):
+        hashed = hashing.submit(source.sha256)
+        for match in track(_read_ahead(source), setup.reference, grid.neighbours()):
+            u, v = (fields.spread(part, grid.inside) for part in (match.u, match.v))
+            writer.put(match, strain_map(u, v, window, grid.step, directions))
+            measured += bool(match.converged.any())
+            yield match
+        # The frames of the reference always match; alone they say nothing.
+        if measured <= setup.reference.frames:
+            raise TrackingError(
+                "every subset was lost in every frame",
+                where=test.frames.source,
+                remedy="check that all frames show the same coupon, sharp and with the same light",
+            )
+        writer.note("frames_sha256", hashed.result())
+
+
+def _read_ahead(source: FrameSource) -> Iterator[Grey]:
+    """Yield the frames, the next one being read while the last one is worked on."""
+    with ThreadPoolExecutor(1) as reading:
+        coming = reading.submit(source.__getitem__, 0)
+        for index in range(1, len(source) + 1):
+            frame = coming.result()
+            if index < len(source):
+                coming = reading.submit(source.__getitem__, index)
+            yield frame
