@@ -63,7 +63,7 @@ class Setup:
 
     def reader(self) -> GaugeReader:
         """Return a fresh reader of the gauges."""
-        return GaugeReader(self.reference, self.region, self.extensometer_px)
+        return GaugeReader(self.reference, self.grid, self.region, self.extensometer_px)
 
 
 def set_up(test: TestFile, source: FrameSource) -> Setup:
@@ -87,7 +87,7 @@ def set_up(test: TestFile, source: FrameSource) -> Setup:
     grid = _grid(test, mask, region, length)
     reference = _prepared(test.correlation, image, grid, mask, last - first + 1, full_scale)
     if test.frames.reference is None:
-        still = _frames_at_rest(source, reference, grid, GaugeReader(reference, region, length))
+        still = _frames_at_rest(source, reference, grid, GaugeReader(reference, grid, region, length))
         if still > 1:
             image = _mean(source, 0, still - 1)
             reference = _prepared(test.correlation, image, grid, mask, still, full_scale)

@@ -575,20 +575,21 @@ def residuals(taps: Any, shape: Any, c: Any, sampling: Any, stride: Any, plane: 
 @_serial
 def spread_weights(f: Any, fx: Any, fy: Any, m: Any, width: Any, mean: Any, norm: Any, average: Any,
                    along: Any, inverse: Any, xs: Any, ys: Any, half: Any,
-                   on_u: Any, on_v: Any, out: Any) -> None:  # fmt: skip
-    """Add up how every pixel's grey enters a weighted sum of displacements.
+                   on: Any, out: Any) -> None:  # fmt: skip
+    """Add up how every pixel's grey enters a weighted sum of the subsets' affine parameters.
 
-    A gauge reads Σ (on_u·u + on_v·v); each u and v is a weighted sum of the grey values in its
-    subset.  `out`, shape (rows, columns), receives the sum of those weights, so that overlapping
-    subsets share their pixels' noise as they do in truth.
+    A gauge reads Σ on·(u, uₓ, u_y, v, vₓ, v_y), `on` of shape (n, 6); each parameter is a weighted sum
+    of the grey values in its subset.  `out`, shape (rows, columns), receives the sum of those weights,
+    so that overlapping subsets share their pixels' noise as they do in truth.
     """
     size = average.shape[1]
     j, row = np.empty(size), np.empty(size)
     for i in range(xs.size):
-        if on_u[i] == 0.0 and on_v[i] == 0.0:
-            continue
-        for a in range(size):
-            row[a] = on_u[i] * inverse[i, 0, a] + on_v[i] * inverse[i, size // 2, a]
+        row[:] = 0.0
+        for k in range(6):
+            which = k if k < 3 else size // 2 + k - 3
+            for a in range(size):
+                row[a] += on[i, k] * inverse[i, which, a]
         steady, tied = 0.0, 0.0
         for a in range(size):
             steady += row[a] * average[i, a]

@@ -69,6 +69,12 @@ class Match:
         return self.parameters[:, self.parameters.shape[1] // 2]
 
     @property
+    def affine(self) -> Floats:
+        """u, uₓ, u_y, v, vₓ, v_y at the subset centres, px, shape (n, 6)."""
+        half = self.parameters.shape[1] // 2
+        return self.parameters[:, [0, 1, 2, half, half + 1, half + 2]]
+
+    @property
     def converged(self) -> NDArray[np.bool_]:
         """Which subsets were measured."""
         return self.flag == Flag.CONVERGED

@@ -75,6 +75,15 @@ class Estimator:
     along: Floats
     inverse: Floats
 
+    def information(self) -> Floats:
+        """Return how well each subset's affine parameters are determined: inverse covariances, (n, 6, 6).
+
+        In units of the reciprocal noise variance; the order is u, uₓ, u_y, v, vₓ, v_y.
+        """
+        half = self.average.shape[1] // 2
+        which = np.array([0, 1, 2, half, half + 1, half + 2])
+        return np.linalg.inv(self.inverse[:, which[:, None], which])
+
     def noise(self, products: Floats, kept: float) -> tuple[Floats, Floats]:
         """Return how pixel noise enters displacements and residual.
 

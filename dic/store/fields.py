@@ -23,11 +23,17 @@ from dic.errors import StoreError
 from dic.strain.maps import StrainMap
 
 NAME = "fields.nc"
+#: Variables that hold the subsets' affine motion, in the order of `Match.affine`.
+AFFINE = ("u", "u_x", "u_y", "v", "v_x", "v_y")
 
 #: Variables with their type and what they are.
 _VARIABLES: dict[str, tuple[str, str, str]] = {
     "u": ("f8", "px", "displacement along x, to the right"),
     "v": ("f8", "px", "displacement along y, down"),
+    "u_x": ("f4", "1", "slope of u along x, as matched"),
+    "u_y": ("f4", "1", "slope of u along y, as matched"),
+    "v_x": ("f4", "1", "slope of v along x, as matched"),
+    "v_y": ("f4", "1", "slope of v along y, as matched"),
     "strain_axial": ("f4", "1", "engineering strain along the pull"),
     "strain_transverse": ("f4", "1", "engineering strain across the pull"),
     "strain_shear": ("f4", "1", "change of the right angle between the coupon axes"),
@@ -93,8 +99,7 @@ class FieldsWriter:
         """Append the next frame."""
         inside = self._grid.inside
         values = {
-            "u": spread(match.u, inside),
-            "v": spread(match.v, inside),
+            **{name: spread(part, inside) for name, part in zip(AFFINE, match.affine.T, strict=True)},
             "strain_axial": strains.axial,
             "strain_transverse": strains.transverse,
             "strain_shear": strains.shear,
@@ -151,9 +156,7 @@ def stored_matches(folder: Path, grid: Grid) -> Iterator[Match]:
     inside = grid.inside
     with h5netcdf.File(folder / NAME, "r") as file:
         for frame, (noise, links) in enumerate(zip(file["noise_grey"][:], file["links"][:], strict=True)):
-            parameters = np.full((int(inside.sum()), 6), np.nan)
-            parameters[:, 0] = file["u"][frame][inside]
-            parameters[:, 3] = file["v"][frame][inside]
+            parameters = np.stack([file[name][frame][inside] for name in AFFINE], axis=1).astype(float)
             flag = file["flag"][frame][inside]
             yield Match(
                 parameters=parameters,

@@ -10,7 +10,9 @@ from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy import ndimage
 
+from dic.correlation.grid import Grid
 from dic.correlation.kernels import spread_weights
 from dic.correlation.matching import Match
 from dic.correlation.reference import Reference
@@ -23,6 +25,8 @@ Floats = NDArray[np.float64]
 
 #: Subsets below which no mean strain is given: a plane has three unknowns per component.
 LEAST_SUBSETS = 6
+#: Rounds in which the weights are evened; more change a gauge's scatter by less than 0.1 %.
+EVENING_STEPS = 40
 
 
 @dataclass(frozen=True)
@@ -96,12 +100,12 @@ class Reading:
 
 @dataclass(frozen=True)
 class _Weights:
-    """Weights of the valid subsets' u and v, shape (m,) each, by reading; and their noise gains."""
+    """How the m valid subsets' motions enter the readings; `Match.affine` has six numbers for each."""
 
-    plane: Floats  # value, ∂/∂x and ∂/∂y of a plane, shape (3, m)
-    twist: Floats  # the product term along·across, shape (m,)
+    motion: Floats  # to the affine motion of the whole gauge, shape (6, m, 6)
+    twist: Floats  # to the product term along·across of u and v, shape (m,)
     ends: tuple[Floats, Floats] | None  # means of the two end bands; None where one is lost
-    on: dict[str, tuple[Floats, Floats]]  # weights of u and of v in each reading, for small strains
+    on: dict[str, Floats]  # to each reading, for small strains, shape (m, 6)
     smooth: SmoothField
     gains: dict[str, float]  # standard deviation per grey level of noise
 
@@ -114,8 +118,8 @@ class GaugeReader:
 
     Parameters
     ----------
-    reference
-        The prepared reference.
+    reference, grid
+        The prepared reference, and the grid that its subsets lie on.
     region
         Where strain is averaged.
     length
@@ -123,6 +127,7 @@ class GaugeReader:
     """
 
     reference: Reference
+    grid: Grid
     region: Region
     length: float | None = None
     _kept: tuple[bytes, _Weights] | None = field(default=None, repr=False)
@@ -158,13 +163,14 @@ class GaugeReader:
         if valid.sum() < LEAST_SUBSETS:
             return _lost("every subset lost" if not valid.any() else "too few subsets left", share)
         weights = self._weights(valid)
-        moved = np.stack([match.u[valid], match.v[valid]])  # (2, m)
-        gradient = moved @ weights.plane[1:].T
+        affine = match.affine[valid]
+        moved = affine[:, [0, 3]].T
+        whole = np.einsum("pmk,mk->p", weights.motion, affine).reshape(2, 3)
+        mean, gradient = whole[:, 0], whole[:, 1:]
         axial, transverse, shear = engineering(gradient, self.region.axial, self.region.transverse)
         # Each further link is matched between two single frames.
         noise = match.noise_grey * np.sqrt(1.0 + 1.0 / self.reference.frames + 2.0 * match.links)
-        sine = np.sin(2 * np.pi * moved)
-        mean = moved @ weights.plane[0]
+        sine = _periodic(affine)
         return Reading(
             axial=float(axial),
             transverse=float(transverse),
@@ -178,7 +184,7 @@ class GaugeReader:
             shift_px=(float(mean @ self.region.axial), float(mean @ self.region.transverse)),
             valid_fraction=share,
             status="ok" if weights.ends is not None else "no subsets left at an end of the extensometer",
-            response={name: float(sine[0] @ on[0] + sine[1] @ on[1]) for name, on in weights.on.items()},
+            response={name: float((sine * on).sum()) for name, on in weights.on.items()},
             sums=periodic_sums(
                 weights.smooth, moved[0], moved[1], match.sigma_u[valid], match.sigma_v[valid]
             ),
@@ -202,31 +208,32 @@ class GaugeReader:
         x = self.reference.x[valid] - self.region.centre[0]
         y = self.reference.y[valid] - self.region.centre[1]
         along, across, depth = self._along[valid], self._across[valid], self.reference.subset
-        plane = np.linalg.pinv(np.column_stack([np.ones(len(x)), x, y]))
+        information = self.reference.estimator.information()[valid]
+        motion = _pooled(x, y, information * even_weights(self.grid, valid)[:, None, None])
         twist = np.linalg.pinv(np.column_stack([np.ones(len(x)), along, across, along * across]))[3]
         half = self._half_length()
         first, last = _end(along + half, across, depth), _end(along - half, across, depth)
         ends = (first, last) if first is not None and last is not None else None
         a, t = self.region.axial, self.region.transverse
-        slope_a, slope_t = a @ plane[1:], t @ plane[1:]
-        on = {
-            "axial": (a[0] * slope_a, a[1] * slope_a),
-            "transverse": (t[0] * slope_t, t[1] * slope_t),
-            "shear": (t[0] * slope_a + a[0] * slope_t, t[1] * slope_a + a[1] * slope_t),
-        }
+
+        def moving(direction: Floats, along: Floats) -> Floats:
+            """Weights of how much farther along one direction the gauge moves per length along another."""
+            return np.einsum("p,pmk->mk", np.outer(direction, np.append(0.0, along)).ravel(), motion)
+
+        on = {"axial": moving(a, a), "transverse": moving(t, t), "shear": moving(a, t) + moving(t, a)}
         if ends is not None:
-            stretch = (ends[1] - ends[0]) / (2 * half)
-            on["extensometer"] = (a[0] * stretch, a[1] * stretch)
+            on["extensometer"] = np.zeros((len(x), 6))
+            on["extensometer"][:, [0, 3]] = np.outer((ends[1] - ends[0]) / (2 * half), a)
         gains = {"extensometer": float("nan")}
-        gains |= {name: self._noise_gain(valid, *pair) for name, pair in on.items()}
-        return _Weights(plane, twist, ends, on, SmoothField(x, y), gains)
+        gains |= {name: self._noise_gain(valid, weights) for name, weights in on.items()}
+        return _Weights(motion, twist, ends, on, SmoothField(x, y), gains)
 
     def _half_length(self) -> float:
         """Return half the gauge length: as given, else what leaves a whole band at either end."""
         span = float(np.ptp(self._along[self._member]))
         return max(self.length if self.length is not None else span - self.reference.subset, 1.0) / 2
 
-    def _noise_gain(self, valid: NDArray[np.bool_], on_u: Floats, on_v: Floats) -> float:
+    def _noise_gain(self, valid: NDArray[np.bool_], on: Floats) -> float:
         """Return a reading's standard deviation for pixel noise of one grey level in one frame."""
         reference, kit = self.reference, self.reference.estimator
         pixels = np.zeros(reference.shape)
@@ -234,10 +241,79 @@ class GaugeReader:
             reference.f, reference.fx, reference.fy, reference.mask, reference.shape[1],
             kit.mean[valid], kit.norm[valid], kit.average[valid], kit.along[valid], kit.inverse[valid],
             reference.x[valid], reference.y[valid], reference.half,
-            np.ascontiguousarray(on_u), np.ascontiguousarray(on_v), pixels,
+            np.ascontiguousarray(on), pixels,
         )  # fmt: skip
         # Raw noise is smoothed before it meets these weights, so the weights are smoothed instead.
         return float(np.linalg.norm(blur(pixels.astype(np.float32), reference.settings.smoothing)))
+
+
+def even_weights(grid: Grid, valid: NDArray[np.bool_]) -> Floats:
+    """Return weights of the valid subsets with which all pixels count alike, shape (m,).
+
+    Overlapping subsets use the pixels in the middle of a gauge many times and those at its ends, which
+    have the longest lever, once.  Weights are raised where the coverage that they add up to is low, and
+    lowered where it is high, until it is even (the multiplicative scheme of Richardson 1972,
+    doi 10.1364/JOSA.62.000055).
+    """
+    across = max(round(grid.subset / grid.step), 1)
+    box = np.ones(across)
+    weights = np.zeros(grid.shape)
+    weights[grid.inside] = valid
+    weights = np.pad(weights, across // 2)  # the outermost subsets reach beyond their centres
+
+    def summed(values: Floats) -> Floats:
+        rows = ndimage.correlate1d(values, box, axis=1, mode="constant")
+        return np.asarray(ndimage.correlate1d(rows, box, axis=0, mode="constant"))
+
+    share = np.maximum(summed((summed(weights) > 0).astype(float)), 1.0)
+    for _ in range(EVENING_STEPS):
+        coverage = summed(weights)
+        wanting = np.divide(1.0, coverage, out=np.zeros_like(coverage), where=coverage > 1e-12)
+        weights = weights * summed(wanting) / share
+    inner = weights[across // 2 : across // 2 + grid.shape[0], across // 2 : across // 2 + grid.shape[1]]
+    return np.asarray(inner[grid.inside][valid])
+
+
+def _pooled(x: Floats, y: Floats, information: Floats) -> Floats:
+    """Return the weights with which subsets' motions join to the affine motion of the whole gauge.
+
+    Least squares over displacements and gradients of all subsets, each with the weight that its
+    texture gives it: with subsets side by side that is the fit of one affine motion to all the
+    gauge's pixels, and no other use of them scatters less.
+
+    Parameters
+    ----------
+    x, y
+        Centres from the gauge's centre, shape (m,).
+    information
+        Inverse covariances of the subsets' affine parameters, shape (m, 6, 6).
+
+    Returns
+    -------
+    ndarray
+        Shape (6, m, 6): for u and then v the value at the centre, slope along x and along y.
+    """
+    model = np.tile(np.eye(6), (len(x), 1, 1))
+    for first in (0, 3):
+        model[:, first, first + 1], model[:, first, first + 2] = x, y
+    weighted = np.einsum("mki,mkl->mil", model, information)
+    normal = np.einsum("mil,mlj->ij", weighted, model)
+    # Centred and scaled by their diagonal, the equations are well conditioned.
+    scale = 1 / np.sqrt(np.diag(normal))
+    inverse = np.linalg.inv(normal * np.outer(scale, scale)) * np.outer(scale, scale)
+    return np.einsum("ij,mjl->iml", inverse, weighted)
+
+
+def _periodic(affine: Floats) -> Floats:
+    """Return the error of each parameter per px of periodic error C·sin(2πu), shape (m, 6)."""
+    false = np.empty_like(affine)
+    for first in (0, 3):
+        phase = 2 * np.pi * affine[:, first]
+        false[:, first] = np.sin(phase)
+        false[:, first + 1 : first + 3] = (
+            2 * np.pi * np.cos(phase)[:, None] * affine[:, first + 1 : first + 3]
+        )
+    return false
 
 
 def _end(along: Floats, across: Floats, depth: int) -> Floats | None:
