@@ -9,6 +9,7 @@ from math import nan
 import numpy as np
 from numpy.typing import NDArray
 
+from dic.properties.doubts import GOOD_SLOPE, missing_uncertainties
 from dic.properties.hooke import shear_modulus
 from dic.properties.loading import MIN_FRAMES, Loading, Undetermined, loading_of
 from dic.properties.modulus import LARGEST_YIELD_STRAIN, Elastic, fit_elastic
@@ -20,9 +21,10 @@ from dic.uncertainty import Line, combine, few_readings, straight_line
 
 Floats = NDArray[np.float64]
 
-#: ISO 6892-1's annex on the modulus asks for a relative standard error of the slope below this [from memory].
-GOOD_SLOPE = 0.01
-_OPTICS = "not included: false strain from motion towards the camera and from lens distortion"
+_OPTICS = (
+    "not included: false strain from motion towards the camera and from lens distortion, what is left of the "
+    "interpolation's bias, and the error of the axis"
+)
 
 
 def evaluate(
@@ -57,7 +59,11 @@ def evaluate(
     half the change that a shift by plus and minus one standard uncertainty makes.
     """
     common = {"force calibration": force_uncertainty, "section": specimen.area_uncertainty}
-    sheet = _Sheet(curve, clock, common, section)
+    gaps = {
+        "force calibration": ["load_record.force_uncertainty"] if force_uncertainty is None else [],
+        "section": missing_uncertainties(specimen),
+    }
+    sheet = _Sheet(curve, clock, common, gaps, section)
     proofs = [(f"{100 * offset:g}", sheet.proof(offset)) for offset in section.proof]
     entries = [
         ("youngs_modulus", "E", "MPa", sheet.youngs_modulus),
@@ -100,18 +106,31 @@ def _entry(name: str, symbol: str, unit: str, read: Callable[[], _Reading]) -> P
 
 
 class _Sheet:
-    """The readings of one curve; `common` holds relative uncertainties that all stresses share."""
+    """The readings of one curve.
+
+    `common` holds relative uncertainties that all stresses share, `gaps` the keys that each lacks.
+    """
 
     def __init__(
-        self, curve: Curve, clock: Clock, common: dict[str, float | None], section: Properties
+        self,
+        curve: Curve,
+        clock: Clock,
+        common: dict[str, float | None],
+        gaps: dict[str, list[str]],
+        section: Properties,
     ) -> None:
-        self.curve, self.clock, self.common = curve, clock, common
+        self.curve, self.clock, self.common, self.gaps = curve, clock, common, gaps
         self.loading = loading_of(curve)
         self._elastic: Elastic | Undetermined
         try:
+            self._require_load()
             self._elastic = fit_elastic(self.loading, section.modulus)
         except Undetermined as reason:
             self._elastic = reason
+
+    def _require_load(self) -> None:
+        if not np.isfinite(self.curve.peak_force_N):
+            raise Undetermined("the force of the load record never rises above its noise")
 
     @property
     def elastic(self) -> Elastic:
@@ -144,7 +163,7 @@ class _Sheet:
             f"least-squares line of strain on stress, {elastic.rule}",
             statistics | self._of_stress(value),
             self._window(),
-            (*quality, *elastic.notes, *self._left_out(), _OPTICS),
+            (*quality, *elastic.notes, *self._left_out(), *self._left_out_of_strain()),
         )
 
     def poissons_ratio(self) -> _Reading:
@@ -164,7 +183,7 @@ class _Sheet:
             f"slopes of transverse and axial strain against the same force (ASTM E132), {elastic.rule}",
             {"scatter": scatter, "clock": self._with_clock(ratio)},
             self._window(),
-            (*elastic.notes, _OPTICS),
+            (*elastic.notes, *self._left_out_of_strain()),
         )
 
     def shear_modulus(self) -> _Reading:
@@ -187,7 +206,12 @@ class _Sheet:
             "E / 2(1 + ν), for an isotropic material",
             statistics | self._of_stress(value),
             self._window(),
-            ("the correlation of E and ν is included", *elastic.notes, *self._left_out(), _OPTICS),
+            (
+                "the correlation of E and ν is included",
+                *elastic.notes,
+                *self._left_out(),
+                *self._left_out_of_strain(),
+            ),
         )
 
     def proof(self, offset: float) -> Callable[[], _Reading]:
@@ -215,22 +239,36 @@ class _Sheet:
                 f"modulus line shifted by {100 * offset:g} % strain from its own zero (ISO 6892-1)",
                 statistics | self._of_stress(found.stress),
                 {"strain": _range(sign * np.array([found.low, found.high]))},
-                (*([bends] if gradual else []), *elastic.notes, *self._left_out()),
+                (
+                    *([bends] if gradual else []),
+                    *elastic.notes,
+                    *self._left_out(),
+                    *self._left_out_of_strain(),
+                ),
             )
 
         return read
 
     def tensile_strength(self) -> _Reading:
+        self._require_load()
         curve = self.curve
         value = curve.peak_force_N / curve.area_mm2
-        unbroken = "the record ends before the force drops: the coupon may bear more"
+        notes = []
+        if curve.peak_at_end:
+            notes.append("the record ends before the force drops: the coupon may bear more")
+        if curve.spikes_s:
+            notes.append(_spikes(curve.spikes_s))
+        statistics = {
+            "scatter": curve.u_peak_force_N / curve.area_mm2,
+            "fracture between two samples": curve.u_peak_between_N / curve.area_mm2,
+        }
         return _Reading(
             value,
-            "largest force of the record, by a parabola through its noise, over the original section "
-            "(ISO 6892-1)",
-            {"scatter": curve.u_peak_force_N / curve.area_mm2} | self._of_stress(value),
+            "largest force of the record, by a parabola through its noise, over the original section"
+            + (" (ISO 6892-1)" if value > 0 else ""),
+            statistics | self._of_stress(value),
             {"time_s": (curve.peak_time_s, curve.peak_time_s)},
-            (*([unbroken] if curve.peak_at_end else []), *self._left_out()),
+            (*notes, *self._left_out()),
         )
 
     def _of_stress(self, value: float) -> dict[str, float]:
@@ -238,11 +276,18 @@ class _Sheet:
         return {source: abs(value) * u for source, u in self.common.items() if u is not None}
 
     def _left_out(self) -> tuple[str, ...]:
-        keys = {"force calibration": "load_record.force_uncertainty", "section": "specimen's *_uncertainty"}
         return tuple(
-            f"not included: {source}, whose uncertainty is not given ({keys[source]})"
-            for source, u in self.common.items()
-            if u is None
+            f"not included: {source}, whose uncertainty is not wholly given ({', '.join(keys)} missing)"
+            for source, keys in self.gaps.items()
+            if keys
+        )
+
+    def _left_out_of_strain(self) -> tuple[str, ...]:
+        if self.clock.offset_standard_uncertainty_s > 0:
+            return (_OPTICS,)
+        return (
+            "not included: the clocks, whose offset was given without an uncertainty (sync.offset)",
+            _OPTICS,
         )
 
     def _with_clock(self, read: Callable[[Loading], float]) -> float:
@@ -257,6 +302,14 @@ class _Sheet:
             "stress_MPa": _range(loading.sign * loading.stress[here]),
             "time_s": _range(loading.time_s[here]),
         }
+
+
+def _spikes(times_s: tuple[float, ...]) -> str:
+    count = "1 sample" if len(times_s) == 1 else f"{len(times_s)} samples"
+    return (
+        f"left out: {count} of the force far off those before and after (at {times_s[0]:.5g} s of the "
+        "machine's clock" + (", and later)" if len(times_s) > 1 else ")")
+    )
 
 
 def _slope(loading: Loading, strain: Floats, window: slice) -> Line:

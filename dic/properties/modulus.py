@@ -65,7 +65,8 @@ def fit_elastic(loading: Loading, wanted: ModulusWindow | str) -> Elastic:
     wanted
         A window in strain or stress, or ``"auto"``: 10 % to 40 % of the yield point as ISO 6892-1's
         annex on the modulus has it, the yield point being the 0.2 % proof stress that the line itself
-        gives, repeated until the window stays.  Without a yield point: the strains of ISO 527-1.
+        gives, repeated until the window stays.  Where that cannot be had: the strains of ISO 527-1, with
+        the reason in the notes.
 
     Returns
     -------
@@ -78,12 +79,15 @@ def fit_elastic(loading: Loading, wanted: ModulusWindow | str) -> Elastic:
         If the window holds too few frames, or strain does not grow with stress in it.
     """
     if isinstance(wanted, str):
-        return _between_shares_of_yield(loading) or _fit(
-            loading,
-            passage(loading.strain, *PLASTICS),
-            "strain 0.0005 to 0.0025 (ISO 527-1)",
-            ("the curve shows no yield point like a metal's, so the window is that for plastics",),
-        )
+        try:
+            return _between_shares_of_yield(loading)
+        except Undetermined as reason:
+            return _fit(
+                loading,
+                passage(loading.strain, *PLASTICS),
+                "strain 0.0005 to 0.0025 (ISO 527-1)",
+                (f"the window is that for plastics: {reason}",),
+            )
     if wanted.strain is not None:
         low, high = _along(loading, wanted.strain)
         return _fit(loading, passage(loading.strain, low, high), f"strain {low:g} to {high:g}, as given")
@@ -98,22 +102,22 @@ def _along(loading: Loading, window: tuple[float, float]) -> tuple[float, float]
     return (-high, -low) if loading.sign < 0 and high <= 0 else (low, high)
 
 
-def _between_shares_of_yield(loading: Loading) -> Elastic | None:
-    """Fit between shares of the yield point; None if there is none."""
+def _between_shares_of_yield(loading: Loading) -> Elastic:
+    """Fit between shares of the yield point; raise with the reason why that cannot be."""
     yield_point = _first_guess(loading)
     found: Elastic | None = None
     for _ in range(ROUNDS):
         window = passage(loading.stress, *(share * yield_point for share in SHARES))
         if found is not None and window == found.window:
             break
-        try:
-            found = _fit(
-                loading, window, "10 % to 40 % of the 0.2 % proof stress (ISO 6892-1, annex on the modulus)"
-            )
-            yield_point = crossing(loading, found.line, window.stop, YIELD_OFFSET).stress
-        except Undetermined:
-            return None
-    return found if found and yield_point / found.modulus < LARGEST_YIELD_STRAIN else None
+        found = _fit(
+            loading, window, "10 % to 40 % of the 0.2 % proof stress (ISO 6892-1, annex on the modulus)"
+        )
+        yield_point = crossing(loading, found.line, window.stop, YIELD_OFFSET).stress
+    assert found is not None  # noqa: S101  (there is a first round)
+    if yield_point / found.modulus >= LARGEST_YIELD_STRAIN:
+        raise Undetermined("the curve bends all along and shows no yield point like a metal's")
+    return found
 
 
 def _first_guess(loading: Loading) -> float:

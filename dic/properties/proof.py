@@ -7,6 +7,8 @@ from math import inf, sqrt
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.interpolate import PchipInterpolator
+from scipy.optimize import brentq
 
 from dic.properties.loading import Loading, Undetermined
 from dic.uncertainty import Line, few_readings
@@ -49,7 +51,7 @@ def crossing(loading: Loading, line: Line, start: int, offset: float) -> Crossin
     The line keeps its own intercept, so a toe, or a strain that was not zero at zero force, does not
     count as plastic (ISO 6892-1; ASTM E8/E8M).  Around the first frame beyond the line, and the one
     after it, a parabola through eight frames takes the noise out; where it does not fit (a sharp yield
-    point, few frames), a narrower one or the straight line between the two frames is used.
+    point, few frames), a narrower one or a monotone cubic through the frames is used.
 
     Parameters
     ----------
@@ -132,12 +134,19 @@ def _meeting(fit: Floats, line: Line, middle: float, width: float, offset: float
 
 
 def _between_frames(loading: Loading, line: Line, after: int, plastic: Floats, offset: float) -> Crossing:
-    """Meet the line with the chord of the two frames around it."""
+    """Meet the line between the two frames around it, on a monotone cubic in time.
+
+    A chord would lie below any curve that bends; a monotone cubic bends with it but adds no hump beside a
+    sharp yield point (Fritsch and Butland, SIAM J. Sci. Stat. Comput. 5, 1984, doi:10.1137/0905021).
+    """
     pair = slice(after - 1, after + 1)
-    share = -plastic[after - 1] / (plastic[after] - plastic[after - 1])
-    step = float(np.diff(loading.strain[pair])[0])
-    tangent = float(np.diff(loading.stress[pair])[0]) / step if step else 0.0
-    strain = float(loading.strain[after - 1]) + float(share) * step
+    near = slice(max(after - 3, 0), after + 3)
+    time = loading.time_s[near]
+    course = PchipInterpolator(time, np.column_stack([plastic, loading.strain, loading.stress])[near])
+    when = brentq(lambda at: float(course(at)[0]), *loading.time_s[pair])
+    strain = float(course(when)[1])
+    _, stretching, rising = course.derivative()(when)
+    tangent = float(rising / stretching) if stretching else 0.0
     scatter = line.residual_s / line.slope
     bounds = (float(loading.strain[pair].min()), float(loading.strain[pair].max()))
     return _crossing(line, offset, strain, tangent, scatter, bounds)

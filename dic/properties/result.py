@@ -66,12 +66,16 @@ class Curve:
         Original cross-section S0.
     peak_force_N, u_peak_force_N
         Largest force of the whole load record (denser than the frames) and its statistical
-        standard uncertainty.
+        standard uncertainty; NaN where the record shows no load.
     peak_time_s
         When that was, on the machine's clock.
     peak_at_end
         Whether the record ends before the force drops again, so that the coupon could perhaps have
         borne more.
+    u_peak_between_N
+        Standard uncertainty of the largest force from a fracture between two samples.
+    spikes_s
+        Times of the record's samples that were left out as spikes, on the machine's clock.
     """
 
     time_s: Floats
@@ -86,6 +90,8 @@ class Curve:
     u_peak_force_N: float
     peak_time_s: float
     peak_at_end: bool = False
+    u_peak_between_N: float = 0.0
+    spikes_s: tuple[float, ...] = ()
 
 
 @dataclass(frozen=True)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from math import hypot, inf, sqrt
 
 import numpy as np
@@ -10,7 +11,7 @@ from scipy.interpolate import make_interp_spline
 from scipy.optimize import minimize_scalar
 
 from dic.errors import ClockError
-from dic.sync.force import frame_interval, smoothed_force
+from dic.sync.force import frame_interval, has_load, smoothed_force, wrong_sign
 from dic.sync.record import Clock, LoadRecord
 from dic.testfile import Sync
 from dic.uncertainty import few_readings
@@ -85,16 +86,25 @@ def fit_clock(
         If frames and record do not overlap; or if the data cannot tell the offset to within one frame:
         too few frames or no loading, not enough rest before it on either clock, a misfit, several
         offsets that explain the strain alike.
+    LoadRecordError
+        If the force explains the strain only with its sign turned.
     """
     given = given_clock(camera_time_s, record, section)
     if given is not None:
         return given
+    if not has_load(record):
+        raise _cannot_tell("the force never rises above its noise")
     time, strain, u = _beginning(camera_time_s, axial, u_axial)
     time = (1 + section.drift) * time
     interval = frame_interval(time)
     noise = float(np.median(u))
     misfit = _Misfit(time, strain, record, noise)
-    offset = misfit.best_offset()
+    try:
+        offset = misfit.best_offset()
+    except ClockError:
+        if _fits(_Misfit(time, strain, replace(record, force_N=-record.force_N), noise)):
+            raise wrong_sign(record, longer=bool(strain.sum() > 0)) from None
+        raise
     rounded = _Misfit(time, strain, record, noise, widening=2).refined(offset)
     uncertainty = hypot(misfit.uncertainty(offset), (rounded - offset) / sqrt(3))
     if uncertainty > interval:
@@ -274,6 +284,15 @@ class _Misfit:
         if information <= 0:
             return inf
         return noise * few_readings(len(own) - DEGREE - 2) / sqrt(information)
+
+
+def _fits(misfit: _Misfit) -> bool:
+    """Tell whether there is one offset with which the force explains the strain."""
+    try:
+        misfit.best_offset()
+    except ClockError:
+        return False
+    return True
 
 
 def _cannot_tell(why: str) -> ClockError:

@@ -3,10 +3,12 @@
 from __future__ import annotations
 
 import numpy as np
+from numpy.lib.stride_tricks import sliding_window_view
 from numpy.typing import NDArray
 from scipy.ndimage import median_filter, uniform_filter1d
 from scipy.signal import savgol_filter
 
+from dic.errors import LoadRecordError
 from dic.sync.record import Clock, LoadRecord
 
 Floats = NDArray[np.float64]
@@ -14,6 +16,13 @@ Floats = NDArray[np.float64]
 #: Samples around each one that its noise is estimated from: enough to know it to some 10 %, few enough to
 #: follow a noise that grows with the force.
 NOISE_WINDOW = 301
+#: A spike lasts this many samples at most; what lasts longer may have been borne.
+SPIKE_SAMPLES = 3
+#: Standard deviations of noise by which a spike stands out from either side: prolonging a side by its last
+#: two samples makes √6 of them, and four of those come up once in 30 000.
+SPIKE_NOISE = 10
+#: Noise from this many standard deviations down is no load: one sample in 10⁹ lies beyond.
+NO_LOAD = 6
 #: Median of the absolute value of a standard normal variable.
 _NORMAL_MEDIAN = 0.6745
 
@@ -41,17 +50,18 @@ def force_noise(record: LoadRecord) -> Floats:
     own = np.abs(miss) / np.sqrt(1 + share**2 + (1 - share) ** 2)
     size = min(NOISE_WINDOW, len(own))
     typical = median_filter(own, size=size) / _NORMAL_MEDIAN
-    spread = np.sqrt(uniform_filter1d(np.minimum(own, 4 * typical) ** 2, size))
+    # The filter's running sum can end a rounding error below zero.
+    spread = np.sqrt(np.maximum(uniform_filter1d(np.minimum(own, 4 * typical) ** 2, size), 0))
     return np.pad(spread, 1, mode="edge")
 
 
 def smoothed_force(record: LoadRecord, width_s: float) -> Floats:
     """Average the force's noise where that cannot distort the force.
 
-    Every sample is replaced by the mean of the widest symmetric window, at most `width_s` long, in
-    which the record is a straight line within its own noise; the mean is then the line's value at the
-    sample.  At the start of loading, at a sharp yield point and at fracture the windows shrink by
-    themselves, down to the sample alone.
+    Spikes are bridged (see `force_spikes`).  Every sample is replaced by the mean of the widest symmetric
+    window, at most `width_s` long, in which the record is a straight line within its own noise; the mean
+    is then the line's value at the sample.  At the start of loading, at a sharp yield point and at
+    fracture the windows shrink by themselves, down to the sample alone.
 
     Parameters
     ----------
@@ -65,7 +75,7 @@ def smoothed_force(record: LoadRecord, width_s: float) -> Floats:
     Floats
         Force, N, shape (n,).
     """
-    t, force = record.time_s, record.force_N
+    t, force = record.time_s, without_spikes(record)
     noise_variance = force_noise(record) ** 2
     best = force.copy()
     for half in _half_windows(t, width_s):
@@ -77,6 +87,77 @@ def smoothed_force(record: LoadRecord, width_s: float) -> Floats:
         inside[half:-half] = t[2 * half :] - t[: -2 * half] <= width_s * (1 + 1e-6)
         best = np.where(straight & inside, mean, best)
     return best
+
+
+def force_spikes(record: LoadRecord) -> NDArray[np.bool_]:
+    """Find samples that stand alone: disturbances of the transducer, not force that the coupon bore.
+
+    A spike is a run of at most `SPIKE_SAMPLES` samples that lies beyond both its neighbours, and beyond
+    where the force was heading on either side, by more than noise and the usual change from sample to
+    sample can do.  A last sample before fracture, a yield point or a step is joined to one of its sides.
+    At the ends of the record, where there is one side only, a jump towards zero may be the fracture.
+
+    Parameters
+    ----------
+    record
+        The load record.
+
+    Returns
+    -------
+    NDArray
+        True where a sample is part of a spike, shape (n,).
+    """
+    steps = np.abs(np.diff(record.force_N))
+    usual = float(np.median(steps[steps > 0])) if steps.any() else 0.0
+    allowed = SPIKE_NOISE * force_noise(record) + 2 * usual
+    found = np.zeros(len(record.force_N), dtype=bool)
+    for width in range(1, SPIKE_SAMPLES + 1):
+        for force in (record.force_N, -record.force_N):
+            found |= _standing_out(force, width, allowed)
+    return found
+
+
+def _standing_out(force: Floats, width: int, allowed: Floats) -> NDArray[np.bool_]:
+    """Return the samples of those runs of a width that lie above both sides."""
+    n = len(force)
+    before, after = _heading(force), _heading(force[::-1])[::-1]
+    lowest = sliding_window_view(force, width).min(axis=1)
+    first = np.arange(n - width + 1)
+    last = first + width - 1
+    side = np.fmax(before[first], after[last])
+    one_sided = np.isnan(before[first]) | np.isnan(after[last])
+    alone = (lowest - side > allowed[first]) & (~one_sided | (lowest > np.abs(side)))
+    found = np.zeros(n, dtype=bool)
+    for shift in range(width):
+        found[first[alone] + shift] = True
+    return found
+
+
+def _heading(force: Floats) -> Floats:
+    """Return what the samples before each one reach, or are rising to; NaN for the first."""
+    previous = np.concatenate([[np.nan], force[:-1]])
+    return previous + np.concatenate([[0.0, 0.0], np.maximum(np.diff(force)[:-1], 0)])
+
+
+def without_spikes(record: LoadRecord) -> Floats:
+    """Return the force with straight lines across its spikes, N, shape (n,)."""
+    sound = ~force_spikes(record)
+    return np.interp(record.time_s, record.time_s[sound], record.force_N[sound])
+
+
+def has_load(record: LoadRecord) -> bool:
+    """Tell whether the force ever changes by more than its noise."""
+    return bool(np.ptp(without_spikes(record)) > 2 * NO_LOAD * float(np.median(force_noise(record))))
+
+
+def wrong_sign(record: LoadRecord, *, longer: bool) -> LoadRecordError:
+    """Return the error for a force that goes against the strain."""
+    seen, force = ("longer", "negative") if longer else ("shorter", "positive")
+    return LoadRecordError(
+        f"the coupon gets {seen} while the force is {force}",
+        where=str(record.path),
+        remedy="export the force with tension positive, from a machine zeroed before the test",
+    )
 
 
 def _half_windows(t: Floats, width_s: float) -> list[int]:

@@ -101,7 +101,11 @@ def pull():
             record=LoadRecord(Path("machine.csv"), machine, sign * force),
             clock=Clock(lag, u_clock, 0.0, "drawn"),
             specimen=Specimen(
-                width=12.5, thickness=thickness, thickness_uncertainty=u_thickness if u_thickness else None
+                width=12.5,
+                thickness=thickness,
+                # The width of these tests is exact.
+                width_uncertainty=1e-9 if u_thickness else None,
+                thickness_uncertainty=u_thickness or None,
             ),
             truth={
                 "youngs_modulus": E,

@@ -1,5 +1,6 @@
 """The clock from the start of loading: right to within what it claims, and silent where it cannot know."""
 
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -8,7 +9,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy import stats
 
-from dic.errors import ClockError
+from dic.errors import ClockError, LoadRecordError
 from dic.sync import LoadRecord, clock, fit_clock
 from dic.testfile import Sync
 
@@ -149,10 +150,14 @@ def test_a_coupon_at_rest():
         fit_clock(*pull(rate=0.0), AUTO)
 
 
-def test_a_record_that_ends_too_early():
+@pytest.mark.parametrize(
+    ("samples", "said"), [(40, "never rises above its noise"), (170, "do not both begin")]
+)
+def test_a_record_that_ends_too_early(samples, said):
+    # Loading starts at sample 150 to 160.
     time, axial, u, record = pull()
-    early = LoadRecord(record.path, record.time_s[:40], record.force_N[:40])
-    with pytest.raises(ClockError, match="do not both begin"):
+    early = LoadRecord(record.path, record.time_s[:samples], record.force_N[:samples])
+    with pytest.raises(ClockError, match=said):
         fit_clock(time, axial, u, early, AUTO)
 
 
@@ -191,9 +196,40 @@ def test_a_bare_slope_is_not_given_a_false_certainty(seed, case):
 
 def test_the_record_of_another_test():
     time, axial, u, record = pull()
-    other = LoadRecord(record.path, record.time_s, np.random.default_rng(0).normal(0, 10, len(record.time_s)))
+    cycles = 1000 * np.sin(4 * record.time_s) + np.random.default_rng(0).normal(0, 10, len(record.time_s))
     with pytest.raises(ClockError, match=r"does not follow the force|do not both begin"):
-        fit_clock(time, axial, u, other, AUTO)
+        fit_clock(time, axial, u, replace(record, force_N=cycles), AUTO)
+
+
+@pytest.mark.parametrize("size", [0.0, 10.0])
+def test_a_record_without_load(size):
+    time, axial, u, record = pull()
+    idle = np.random.default_rng(0).normal(0, size, len(record.time_s))
+    with pytest.raises(ClockError, match="the force never rises above its noise"):
+        fit_clock(time, axial, u, replace(record, force_N=idle), AUTO)
+
+
+@pytest.mark.parametrize("seed", range(5))
+@pytest.mark.parametrize("rate", [4e-4, -4e-4])
+def test_a_force_of_the_wrong_sign(seed, rate):
+    time, axial, u, record = pull(seed, rate=rate)
+    said = (
+        "gets longer while the force is negative" if rate > 0 else "gets shorter while the force is positive"
+    )
+    with pytest.raises(LoadRecordError, match=said):
+        fit_clock(time, axial, u, replace(record, force_N=-record.force_N), AUTO)
+
+
+def test_a_spike_in_the_force_does_no_harm():
+    time, axial, u, record = pull(2)
+    spoiled = record.force_N.copy()
+    spoiled[[60, 170, 180]] += [200.0, -300.0, 400.0]
+    sound, found = (
+        fit_clock(time, axial, u, one, AUTO) for one in (record, replace(record, force_N=spoiled))
+    )
+    # A bridged sample changes its frame's force by a share of the noise.
+    assert found.offset_s == pytest.approx(sound.offset_s, abs=sound.offset_standard_uncertainty_s)
+    assert found.offset_standard_uncertainty_s < 1.5 * sound.offset_standard_uncertainty_s
 
 
 @pytest.mark.parametrize("seed", range(5))

@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 
 from dic.sync import Clock, LoadRecord, force_at
-from dic.sync.force import force_noise, frame_interval, smoothed_force
+from dic.sync.force import force_noise, force_spikes, frame_interval, has_load, smoothed_force
 
 TIME = np.arange(0, 60, 0.02)
 N = len(TIME)
@@ -89,3 +89,76 @@ def test_a_window_wider_than_the_record_is_no_harm():
 def test_frame_interval():
     assert frame_interval(np.array([0.0, 0.2, 0.4, 1.4])) == pytest.approx(0.2, rel=1e-12)
     assert frame_interval(np.array([3.0])) == 0.0
+
+
+def broken_ramp(seed, size=5.0):
+    """Return a ramp with a round start that breaks at 45 s."""
+    return np.where(TIME < 45, 100 * np.clip(TIME - 3, 0, None) ** 1.1, 0) + noise(seed, size)
+
+
+@pytest.mark.parametrize("width", [1, 2, 3])
+@pytest.mark.parametrize("at", [20, 700, 1500, 2240, 2600])
+@pytest.mark.parametrize("up", [True, False])
+def test_a_spike_is_found_and_nothing_else(width, at, up):
+    # The places: at rest, on the ramp, just before fracture, afterwards; 300 N is 60 times the noise.
+    force = broken_ramp(11)
+    force[at : at + width] += 300.0 if up else -300.0
+    assert np.flatnonzero(force_spikes(record(force))).tolist() == list(range(at, at + width))
+
+
+def test_a_spike_at_either_end_of_the_record_is_found():
+    force = broken_ramp(12)
+    force[[0, -1]] += 300.0
+    assert np.flatnonzero(force_spikes(record(force))).tolist() == [0, N - 1]
+
+
+def test_the_record_may_stop_with_the_sample_after_fracture():
+    kept = TIME < 45.02
+    assert not force_spikes(record(broken_ramp(13)[kept], TIME[kept])).any()
+
+
+def test_the_rebound_of_a_fracture_is_a_spike():
+    force = broken_ramp(14)
+    force[2250] = -1.2 * force[2240]
+    assert np.flatnonzero(force_spikes(record(force))).tolist() == [2250]
+
+
+@pytest.mark.parametrize(
+    "force",
+    [
+        pytest.param(lambda t: 100 * t, id="ramp"),
+        pytest.param(lambda t: 6000 * (1 - ((t - 30) / 40) ** 2), id="dome"),
+        pytest.param(lambda t: np.minimum(500 * t, 4000) - np.where(t > 8, 300, 0), id="upper yield point"),
+        pytest.param(lambda t: 500 * np.floor(t / 4), id="steps"),
+        pytest.param(lambda t: 3000 + 2000 * np.sin(2 * np.pi * t / 6), id="cycles"),
+        pytest.param(lambda t: 5000 * (1 - np.exp(-t / 3)) + 200 * (t % 5 / 5), id="serrations"),
+        pytest.param(lambda t: np.exp(t / 6), id="stiffening"),
+    ],
+)
+@pytest.mark.parametrize("size", [0.0, 5.0])
+@pytest.mark.parametrize("step", [1, 10, 25])
+def test_no_course_of_a_test_is_a_spike(force, size, step):
+    time = TIME[::step]
+    course = force(time) + noise(15, size, len(time))
+    assert not force_spikes(record(course, time)).any()
+    # A converter's last digit going to and fro is none either.
+    assert not force_spikes(record(np.round(course, -1), time)).any()
+
+
+def test_smoothing_runs_straight_across_a_spike():
+    force = 100 * TIME
+    spoiled = force.copy()
+    spoiled[1500:1502] *= 1.3
+    # Rounding of sums of numbers up to 6000.
+    np.testing.assert_allclose(smoothed_force(record(spoiled), 0.2), force, atol=1e-6)
+
+
+def test_whether_there_is_load():
+    assert has_load(record(broken_ramp(16)))
+    assert has_load(record(-broken_ramp(16)))
+    assert not has_load(record(np.zeros(N)))
+    assert not has_load(record(noise(17, 5.0)))
+    assert not has_load(record(np.full(N, 250.0)))
+    alone = noise(18, 5.0)
+    alone[1000] += 5000
+    assert not has_load(record(alone))
