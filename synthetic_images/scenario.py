@@ -5,40 +5,34 @@ from __future__ import annotations
 from pathlib import Path
 from typing import Annotated, Literal
 
-from pydantic import BeforeValidator, Field, model_validator
+from pydantic import Field, model_validator
 
 from dic.errors import TestFileError, nearest
-from dic.quantities import parse
-from dic.testfile import Gauge, Properties, Section, read_toml
+from dic.testfile import Gauge, Properties, Section, quantity, read_toml
 from synthetic_images.camera import Camera
 from synthetic_images.materials import Elastic, Material, NeoHookean, RambergOsgood
 from synthetic_images.textures import Cosines, Dots, Photograph, Texture
 
 
-def _unit(kind: str) -> BeforeValidator:
-    """Let a number be written with its unit."""
-    return BeforeValidator(lambda written: parse(written, kind))
-
-
 _POSITIVE = Field(gt=0, allow_inf_nan=False)
 _NOT_NEGATIVE = Field(ge=0, allow_inf_nan=False)
 _ANY = Field(allow_inf_nan=False)
-Length = Annotated[float, _unit("length"), _POSITIVE]
-Travel = Annotated[float, _unit("length"), _NOT_NEGATIVE]
-Force = Annotated[float, _unit("force"), _NOT_NEGATIVE]
-Stress = Annotated[float, _unit("stress"), _POSITIVE]
-Stiffness = Annotated[float, _unit("stiffness"), _POSITIVE]
-PullSpeed = Annotated[float, _unit("speed"), _POSITIVE]
-Drift = Annotated[float, _unit("speed"), _ANY]
-Moment = Annotated[float, _unit("time"), _NOT_NEGATIVE]
-Offset = Annotated[float, _unit("time"), _ANY]
-Rate = Annotated[float, _unit("rate"), Field(gt=0, le=100_000)]
-Angle = Annotated[float, _unit("angle"), Field(ge=-180, le=180)]
+Length = Annotated[float, quantity("length"), _POSITIVE]
+Travel = Annotated[float, quantity("length"), _NOT_NEGATIVE]
+Force = Annotated[float, quantity("force"), _NOT_NEGATIVE]
+Stress = Annotated[float, quantity("stress"), _POSITIVE]
+Stiffness = Annotated[float, quantity("stiffness"), _POSITIVE]
+PullSpeed = Annotated[float, quantity("speed"), _POSITIVE]
+Drift = Annotated[float, quantity("speed"), _ANY]
+Moment = Annotated[float, quantity("time"), _NOT_NEGATIVE]
+Offset = Annotated[float, quantity("time"), _ANY]
+Rate = Annotated[float, quantity("rate"), Field(gt=0, le=100_000)]
+Angle = Annotated[float, quantity("angle"), Field(ge=-180, le=180)]
 #: Virtual tests stretch to ten times the length at most; beyond that nothing stays in view.
-Strain = Annotated[float, _unit("strain"), Field(gt=0, le=9)]
-SmallShare = Annotated[float, _unit("fraction"), Field(ge=0, le=0.2)]
-Share = Annotated[float, _unit("fraction"), Field(ge=0, le=1)]
-SignedShare = Annotated[float, _unit("fraction"), Field(ge=-0.5, le=0.5)]
+Strain = Annotated[float, quantity("strain"), Field(gt=0, le=9)]
+SmallShare = Annotated[float, quantity("fraction"), Field(ge=0, le=0.2)]
+Share = Annotated[float, quantity("fraction"), Field(ge=0, le=1)]
+SignedShare = Annotated[float, quantity("fraction"), Field(ge=-0.5, le=0.5)]
 
 #: Limits that keep a mistyped number from filling memory or disk: the first two bound one picture,
 #: the third the folder of frames (20 GB at 8 bits).

@@ -107,6 +107,12 @@ class VirtualTest:
         return camera.offset + np.arange(camera.frames) / camera.rate
 
     @property
+    def record_times(self) -> Floats:
+        """When the load record is sampled, s."""
+        rate = self.scenario.load_record.rate
+        return np.arange(int(self.scenario.record_end * rate) + 1) / rate
+
+    @property
     def fracture_time(self) -> float:
         """When the coupon breaks, s; infinite where it does not."""
         strain, machine = self.scenario.machine.fracture_strain, self.scenario.machine
@@ -202,7 +208,7 @@ class VirtualTest:
     def record(self) -> tuple[Floats, Floats, Floats]:
         """Return the load record: time (s), crosshead (mm) and force (N) as the machine indicates them."""
         settings = self.scenario.load_record
-        time = np.arange(int(self.scenario.record_end * settings.rate) + 1) / settings.rate
+        time = self.record_times
         state = self.at(time)
         noise = {
             name: np.random.default_rng(self.seed(name)).standard_normal(time.size)
@@ -215,9 +221,9 @@ class VirtualTest:
     def properties(self) -> dict[str, tuple[float, str]]:
         """Return the true properties, (value, unit) by the names of a result; NaN where none is reached.
 
-        The tensile strength is the largest stress that the coupon has borne when the record ends.
+        The tensile strength is the largest stress that the coupon has borne by the record's last sample.
         """
-        last = min(self.fracture_time, self.scenario.record_end)
+        last = min(self.fracture_time, float(self.record_times[-1]))
         machine = self.scenario.machine
         strain = float(self._strain(np.array(machine.speed * max(last - machine.start, 0.0))))
         modulus, ratio = self.material.youngs_modulus, self.material.poissons_ratio

@@ -142,6 +142,16 @@ def test_what_is_not_reached_is_null():
     assert whole["fracture_time_s"] is None
 
 
+@pytest.mark.parametrize("fracture", [None, "1.2 %"])
+def test_the_strength_is_what_the_record_can_show(fracture):
+    """The last sample of a coarse record lies before the end; an unseen rise is no strength."""
+    test = VirtualTest(scenario(machine__fracture_strain=fracture, load_record__rate=0.8, camera__frames=7))
+    time, _, _ = test.record()
+    # 8.25 s after the record's beginning the camera stops; the last sample is the sixth interval's.
+    assert time[-1] == 6 / 0.8
+    assert test.properties()["tensile_strength"][0] == pytest.approx(stress_by_hand(0.3 * 4.0), rel=1e-9)
+
+
 def test_slack_without_seating_force_is_free_travel():
     test = VirtualTest(scenario(machine__seating_force=0, machine__slack="0.3 mm"))
     state = test.at([3.5, 4.0, 4.4999, 4.6])  # 0.3 mm are gone at 4.5 s
