@@ -125,7 +125,6 @@ def _page(measurement: Measurement, pictures: dict[str, list[Picture]]) -> str:
         offset=with_uncertainty(
             measurement.clock.offset_s, COVERAGE_FACTOR * measurement.clock.offset_standard_uncertainty_s, "s"
         ),
-        record_notes=measurement.record.notes,
         columns=measurement.record.columns,
         alignment=words.labelled(
             {"axis_angle_deg": measurement.scene.axis_angle_deg, **measurement.alignment}

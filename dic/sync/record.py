@@ -29,8 +29,6 @@ class LoadRecord:
         Strain of a contact extensometer, dimensionless, where a column was named.
     columns
         What was understood: for each quantity, header and unit.
-    notes
-        Doubts met while reading.
     """
 
     path: Path
@@ -39,7 +37,6 @@ class LoadRecord:
     displacement_mm: Floats | None = None
     extensometer: Floats | None = None
     columns: dict[str, str] = field(default_factory=dict)
-    notes: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True)
