@@ -13,7 +13,6 @@ from synthetic_images.camera import Camera
 from synthetic_images.materials import Elastic, Material, NeoHookean, RambergOsgood
 from synthetic_images.textures import Cosines, Dots, Photograph, Texture
 
-
 _POSITIVE = Field(gt=0, allow_inf_nan=False)
 _NOT_NEGATIVE = Field(ge=0, allow_inf_nan=False)
 _ANY = Field(allow_inf_nan=False)
