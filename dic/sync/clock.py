@@ -242,7 +242,10 @@ class _Misfit:
         if around[0] < 0 or around[-1] >= len(grid) or not np.isfinite(found[around]).all():
             raise _cannot_tell("record and frames do not both begin some frames before the loading")
         if found[best] > (WORST_MISFIT * self.size) ** 2:
-            raise _cannot_tell("the strain of the first frames does not follow the force")
+            raise _cannot_tell(
+                "the strain of the first frames does not follow the force",
+                f"check frames.rate, and whether frames or rows are missing, or {_REMEDY}",
+            )
         # Three standard deviations of a variance with that many degrees of freedom.
         rivals = found < found[best] * (1 + 3 * sqrt(2 / max(len(self.time) - DEGREE - 2, 1)))
         if np.ptp(grid[rivals]) > 2 * self.interval:
@@ -295,8 +298,8 @@ def _fits(misfit: _Misfit) -> bool:
     return True
 
 
-def _cannot_tell(why: str) -> ClockError:
-    return ClockError(why, where="sync.offset", remedy=_REMEDY)
+def _cannot_tell(why: str, remedy: str = _REMEDY) -> ClockError:
+    return ClockError(why, where="sync.offset", remedy=remedy)
 
 
 def _less_projections(column: Floats, inside: NDArray[np.bool_], basis: list[Floats]) -> Floats:
