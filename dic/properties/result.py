@@ -116,6 +116,11 @@ class ModulusLine:
     low: float
     high: float
 
+    @property
+    def far(self) -> float:
+        """The end of the window that is farther along the loading, which may be compression."""
+        return max(self.low, self.high, key=abs)
+
 
 @dataclass(frozen=True)
 class Evaluation:

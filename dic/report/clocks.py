@@ -22,13 +22,13 @@ def draw_clocks(measurement: Measurement) -> list[Drawing]:
     if not isfinite(line.slope):
         return []
     called_for = (record.force_N / curve.area_mm2 - line.intercept) / line.slope
-    begun = np.flatnonzero(np.abs(called_for) > abs(line.high))
+    begun = np.flatnonzero(np.abs(called_for) > abs(line.far))
     end = record.time_s[begun[0]] if begun.size else record.time_s[-1]
     # The foot of the ramp is what tells the clocks apart; the rest before it only needs to be seen.
-    start = max(record.time_s[0], end - 3.0 * _ramp_time(record.time_s, called_for, line.high, end))
+    start = max(record.time_s[0], end - 3.0 * _ramp_time(record.time_s, called_for, line.far, end))
     shown = (record.time_s >= start) & (record.time_s <= end)
     seen = (curve.time_s >= start) & (curve.time_s <= end) & np.isfinite(curve.axial)
-    scale, unit = strain_unit(line.high)
+    scale, unit = strain_unit(line.far)
     figure, (axes,) = sheet(height=2.8)
     by_force = thinned(record.time_s[shown], called_for[shown] * scale)
     axes.plot(*by_force, "-", color=AID, lw=1.0, label="called for by the force")

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from math import isfinite
+from math import copysign, isfinite
 
 import numpy as np
 from matplotlib.axes import Axes
@@ -39,10 +39,10 @@ def draw_curves(measurement: Measurement, moments: list[Moment]) -> list[Drawing
 
 
 def proof_stresses(measurement: Measurement) -> list[tuple[float, Property]]:
-    """Return plastic strain and property of each proof stress that was determined."""
+    """Return plastic strain, negative in compression, and property of each proof stress that was found."""
     found = [item for name, item in measurement.properties.items() if name.startswith("proof_stress_")]
     return [
-        (parse(title_of(item.name).removesuffix(" proof stress"), "strain"), item)
+        (copysign(parse(title_of(item.name).removesuffix(" proof stress"), "strain"), item.value), item)
         for item in found
         if isfinite(item.value)
     ]
@@ -52,8 +52,8 @@ def _stress_strain(measurement: Measurement) -> Drawing:
     figure, axes = _stress_axes(3.6)
     scale = _draw_curve(axes, measurement, measurement.curve.axial)
     reading = (
-        "Each dot is one camera frame: how hard the coupon was pulled (force over the section measured "
-        "before the test) against how far the gauge had stretched."
+        "Each dot is one camera frame: how hard the coupon was loaded (force over the section measured "
+        "before the test) against how far the gauge had stretched; pressure and shortening are negative."
     )
     if isfinite(measurement.line.slope):
         _draw_modulus_line(axes, measurement, scale)
@@ -64,9 +64,10 @@ def _stress_strain(measurement: Measurement) -> Drawing:
         axes.axhline(
             strength.value, color=AID, lw=0.8, ls=":", label=f"{strength.symbol} {strength.value:.4g} MPa"
         )
-        reading += " The dotted level is the tensile strength, from the largest force in the load record."
+        reading += " The dotted level is the strength, from the largest force in the load record."
     legend_above(axes)
-    top = np.max(measurement.curve.stress_MPa, initial=0.0, where=np.isfinite(measurement.curve.stress_MPa))
+    stress = measurement.curve.stress_MPa[np.isfinite(measurement.curve.stress_MPa)]
+    top = max(stress, key=abs, default=0.0)
     alt = f"Curve of stress against axial strain; the stress at the frames reaches {top:.4g} MPa."
     return Drawing("stress-strain", "Stress against strain", reading, alt, figure)
 
@@ -75,7 +76,7 @@ def _elastic_part(measurement: Measurement) -> Drawing:
     figure, axes = _stress_axes(3.6)
     line, proofs = measurement.line, proof_stresses(measurement)
     ends = [_zero_strain(measurement) + offset + item.value / line.slope for offset, item in proofs]
-    end = 1.12 * max([1.6 * line.high, *ends], key=abs)
+    end = 1.12 * max([1.6 * line.far, *ends], key=abs)
     scale = _draw_curve(axes, measurement, np.array([end]))
     _draw_modulus_line(axes, measurement, scale)
     _draw_proof(axes, measurement, scale)
@@ -93,8 +94,8 @@ def _elastic_part(measurement: Measurement) -> Drawing:
     )
     if proofs:
         reading += (
-            " The dashed line has the same slope and is shifted to the right by the plastic strain that the "
-            "proof stress allows; where it meets the curve (ring), the proof stress is read."
+            " The dashed line has the same slope and is shifted along the strain axis by the plastic strain "
+            "that the proof stress allows; where it meets the curve (ring), the proof stress is read."
         )
     slope = (
         stated(modulus)[0]
@@ -162,7 +163,10 @@ def _transverse_against_axial(measurement: Measurement) -> Drawing:
         label="frames",
     )
     ratio = measurement.properties.get("poissons_ratio")
-    reading = "How much the gauge narrows while it stretches; the falling slope is Poisson's ratio."
+    reading = (
+        "How much the gauge narrows as it stretches, or widens as it is pressed; the falling slope is "
+        "Poisson's ratio."
+    )
     if ratio is not None and isfinite(ratio.value):
         inside = loading(measurement) & (curve.axial >= line.low) & (curve.axial <= line.high)
         inside &= np.isfinite(curve.transverse)
@@ -184,7 +188,7 @@ def _residuals(measurement: Measurement) -> Drawing:
     figure, (axes,) = sheet(height=2.6)
     curve, line = measurement.curve, measurement.line
     inside = loading(measurement) & (curve.axial >= line.low) & (curve.axial <= line.high)
-    scale, unit = strain_unit(line.high)
+    scale, unit = strain_unit(line.far)
     left = curve.stress_MPa[inside] - line.intercept - line.slope * curve.axial[inside]
     axes.axhline(0.0, color=AID, lw=0.9)
     axes.plot(*thinned(curve.axial[inside] * scale, left), "o", color=AXIAL, ms=3.5)

@@ -81,13 +81,13 @@ def draw_scene(measurement: Measurement) -> Drawing:
     legend_above(axes, 1 if rows > columns else 2)
     reading = (
         "The reference picture with the region whose strain is averaged (outline) and the direction of "
-        f"the pull (arrow, {scene.axis_angle_deg:.2f}° clockwise from the vertical; {scene.axis_method}). "
+        f"loading (arrow, {scene.axis_angle_deg:.2f}° clockwise from the vertical; {scene.axis_method}). "
         f"The filled squares show one subset ({scene.subset_px} px, the patch that is recognised again) "
         f"and the window over which a point of the strain maps is formed ({_gauge_size(scene)}). The "
         "outline should lie on the speckled coupon and leave out the grips."
     )
     alt = (
-        "Reference photograph of the coupon with the outline of the gauge region and an arrow along the pull."
+        "Reference photograph of the coupon with the outline of the gauge region and an arrow along the load."
     )
     return Drawing("gauge-on-coupon", "Where the strain was measured", reading, alt, figure, vector=False)
 

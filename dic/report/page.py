@@ -22,7 +22,7 @@ from dic.report.maps import draw_maps, draw_scene
 from dic.report.moments import choose_moments
 from dic.rounding import COVERAGE_FACTOR, uncertainty_alone, with_uncertainty
 from dic.store.results import encoded, write_whole
-from dic.store.tables import shown_in, stated, title_of
+from dic.store.tables import shown_in, stated
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -114,6 +114,7 @@ def _page(measurement: Measurement, pictures: dict[str, list[Picture]]) -> str:
     return template.render(
         style=Markup(room.joinpath("page.css").read_text(encoding="utf-8")),  # noqa: S704  (our own file)
         specimen=test.specimen,
+        kind="compression" if measurement.curve.peak_force_N < 0 else "tension",
         day=words.day(measurement.provenance),
         frames=len(measurement.history),
         area=f"{measurement.curve.area_mm2:.4g} mm²",
@@ -154,7 +155,7 @@ def _entry(item: Property) -> dict[str, Any]:
     value, standard = stated(item)
     return {
         "anchor": words.identifier(item.name),
-        "title": title_of(item.name),
+        "title": words.title(item),
         "symbol": words.symbol(item.symbol),
         "value": value,
         "standard": standard,

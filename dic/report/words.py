@@ -11,8 +11,10 @@ from typing import Any
 import numpy as np
 from markupsafe import Markup
 
+from dic.properties.result import Property
 from dic.report.figures import strain_unit
 from dic.rounding import three_digits
+from dic.store.tables import title_of
 
 #: Units that the end of a name stands for.
 _UNITS = {
@@ -29,13 +31,13 @@ _UNITS = {
 #: What people should know about a figure, by its name in ``results.json``.
 MEANINGS = {
     "axis_angle_deg": (
-        "Direction of the pull",
+        "Direction of loading",
         "Angle from the picture's vertical, clockwise; strains are turned into this direction first.",
     ),
     "bending_percent": (
         "Bending in the picture's plane",
         "How much more the gauge's edge stretches than its middle, in the modulus window; much of it "
-        "means that the grips pull crookedly. Bending through the thickness cannot be seen by one camera.",
+        "means that the grips load it crookedly. Bending through the thickness cannot be seen by one camera.",
     ),
     "shear_percent": (
         "Shear per axial strain",
@@ -93,6 +95,13 @@ CAUTIONS = (
     "directions.",
     "Uncertainties contain what their tables list and nothing else; notes name what was left out.",
 )
+
+
+def title(item: Property) -> str:
+    """Return what people call a property; the strength by the direction of loading."""
+    if item.name == "tensile_strength" and item.value < 0:
+        return "Compressive strength"
+    return title_of(item.name)
 
 
 def symbol(text: str) -> Markup:

@@ -1,5 +1,6 @@
 """A measurement made up from closed forms, for everything that shows or stores results."""
 
+import dataclasses
 from pathlib import Path
 
 import numpy as np
@@ -152,6 +153,26 @@ def measurement():
             "versions": {"tauten": "0.1.0", "numpy": np.__version__},
             "sha256": {"load_record": "0" * 64, "frames": "f" * 64},
             "test_file": test.model_dump(mode="json"),
+        },
+    )
+
+
+@pytest.fixture(scope="session")
+def pressed(measurement):
+    """Return the same test with every sign of loading turned."""
+    curve, line, history = measurement.curve, measurement.line, measurement.history
+    turned = ("axial", "transverse", "force_N", "stress_MPa", "peak_force_N")
+    return dataclasses.replace(
+        measurement,
+        curve=dataclasses.replace(curve, **{name: -getattr(curve, name) for name in turned}),
+        history=dataclasses.replace(
+            history, axial=-history.axial, transverse=-history.transverse, shear=-history.shear
+        ),
+        record=dataclasses.replace(measurement.record, force_N=-measurement.record.force_N),
+        line=dataclasses.replace(line, low=-line.high, high=-line.low),
+        properties={
+            name: dataclasses.replace(item, value=-item.value) if item.symbol.startswith("R") else item
+            for name, item in measurement.properties.items()
         },
     )
 

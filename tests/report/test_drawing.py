@@ -9,7 +9,8 @@ from hypothesis import strategies as st
 from skimage.color import rgb2lab
 
 from dic.report import figures, maps, words
-from dic.report.curves import proof_stresses
+from dic.report.clocks import draw_clocks
+from dic.report.curves import draw_curves, proof_stresses
 from dic.report.moments import choose_moments, loading
 
 
@@ -24,18 +25,8 @@ def test_moments_follow_the_test(measurement):
     assert curve.stress_MPa[largest] == curve.stress_MPa.max()
 
 
-def test_moments_of_a_compression_test_mirror_those_of_tension(measurement):
-    curve, line = measurement.curve, measurement.line
-    mirrored = dataclasses.replace(
-        measurement,
-        curve=dataclasses.replace(curve, stress_MPa=-curve.stress_MPa, axial=-curve.axial),
-        line=dataclasses.replace(line, low=-line.high, high=-line.low),
-        properties={
-            name: dataclasses.replace(item, value=-item.value)
-            for name, item in measurement.properties.items()
-        },
-    )
-    assert [m.row for m in choose_moments(mirrored)] == [m.row for m in choose_moments(measurement)]
+def test_moments_of_a_compression_test_mirror_those_of_tension(measurement, pressed):
+    assert [m.row for m in choose_moments(pressed)] == [m.row for m in choose_moments(measurement)]
 
 
 def test_a_frame_is_shown_once(measurement):
@@ -143,3 +134,27 @@ def test_settings_become_rows():
         "General",
         "Fingerprints of the inputs (SHA-256)",
     ]
+
+
+def lines_of(drawing):
+    """Return the corners of each line of a figure, guides across the whole sheet left out."""
+    lines = [np.asarray(line.get_xydata()) for line in drawing.figure.axes[0].lines]
+    return [line for line in lines if line[:, 0].tolist() != [0, 1]]
+
+
+def test_figures_of_compression_mirror_those_of_tension(measurement, pressed):
+    turned = [("stress-strain", 4), ("elastic-part", 4), ("modulus-residuals", 1)]
+    up, down = ({one.name: one for one in draw_curves(test, [])} for test in (measurement, pressed))
+    for name, count in turned:
+        assert len(lines_of(up[name])) == count
+        for line, mirrored in zip(lines_of(up[name]), lines_of(down[name]), strict=True):
+            # Half a turn, but for rounding.
+            np.testing.assert_allclose(-mirrored, line, rtol=1e-9, atol=1e-9)
+        if name != "modulus-residuals":
+            np.testing.assert_allclose(
+                [-limit for limit in reversed(down[name].figure.axes[0].get_xlim())],
+                up[name].figure.axes[0].get_xlim(),
+            )
+    [up], [down] = draw_clocks(measurement), draw_clocks(pressed)
+    for line, mirrored in zip(lines_of(up), lines_of(down), strict=True):
+        np.testing.assert_allclose(mirrored * (1, -1), line, rtol=1e-9, atol=1e-9)

@@ -222,3 +222,16 @@ def test_without_a_measured_frame_there_is_still_a_page(measurement, fields, tmp
     )
     page = Page(write_report(blind, fields, tmp_path).read_text(encoding="utf-8"))
     assert "No frame that deserves a map was measured" in page.text
+
+
+def test_compression_is_called_so(pressed, fields, page, tmp_path):
+    text = write_report(pressed, fields, tmp_path).read_text(encoding="utf-8")
+    other = Page(text)
+    assert "compression test by camera" in other.text
+    assert "Compressive strength" in other.text
+    for word in ("tension", "tensile", "Tensile", "pulled", "to the right"):
+        assert word not in other.text, word
+    assert "tension test by camera" in page.text
+    assert "Tensile strength" in page.text
+    [alt] = [attrs["alt"] for attrs in other.all("img") if attrs["alt"].startswith("Curve of stress")]
+    assert re.search(r"reaches -\d{3}", alt)
