@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from dic.correlation import Grid, Reference, Settings, Tracker, lay_grid, prepare_reference
 from dic.errors import Notice, PatternError, TestFileError
 from dic.frames import FrameSource
-from dic.pattern import Coupon, axes, doubts, find_coupon, picture_quality
+from dic.pattern import Coupon, axes, axis_doubts, doubts, find_coupon, picture_quality
 from dic.strain import GaugeReader, Region
 from dic.testfile import Correlation, TestFile
 
@@ -79,8 +79,8 @@ def set_up(test: TestFile, source: FrameSource) -> Setup:
     first, last = _reference_frames(source, test.frames.reference)
     image = _mean(source, first, last)
     full_scale = source.full_scale()
-    coupon = find_coupon(image, test.gauge.axis_angle)
-    mask = coupon.mask & _given_region(image.shape, test.gauge.region)
+    coupon = find_coupon(image, test.gauge.axis_angle, _given_region(image.shape, test.gauge.region))
+    mask = coupon.mask
     region = Region.around(mask, *axes(coupon.axis_angle_deg))
     scale_mm = test.camera.scale or test.specimen.visible_width / coupon.width_px
     length = _gauge_length(test, scale_mm)
@@ -102,7 +102,7 @@ def set_up(test: TestFile, source: FrameSource) -> Setup:
         scale_mm=scale_mm,
         extensometer_px=length,
         quality={**quality, "reference_frames": float(reference.frames)},
-        notices=tuple(doubts(quality, grid.subset)),
+        notices=(*axis_doubts(coupon), *doubts(quality, grid.subset)),
     )
 
 
@@ -172,10 +172,10 @@ def _frames_at_rest(source: FrameSource, reference: Reference, grid: Grid, reade
     return min(MOST_AVERAGED, len(source))
 
 
-def _given_region(shape: tuple[int, ...], region: Any) -> NDArray[np.bool_]:
-    """Mark the rectangle that the test file gives, or everything."""
+def _given_region(shape: tuple[int, ...], region: Any) -> NDArray[np.bool_] | None:
+    """Mark the rectangle that the test file gives; None where it gives none."""
     if region == "auto":
-        return np.ones(shape, bool)
+        return None
     x, y, width, height = region
     if not (
         width > 0 and height > 0 and x >= 0 and x + width <= shape[1] and y >= 0 and y + height <= shape[0]

@@ -27,6 +27,47 @@ def picture_quality(
     }
 
 
+#: Below this clarity of the outline its sides are less than three times its ends, and which is which may
+#: be mistaken.
+CLEAR_OUTLINE = 0.5
+#: Long edges that differ by more than this are no two sides of a straight strip, deg.
+MOST_TAPER_DEG = 0.5
+
+
+def axis_doubts(coupon: Coupon) -> list[Notice]:
+    """Return a warning for each way in which axis or width may be wrong without anybody noticing."""
+    found, given = [], coupon.axis_method == "given"
+    left, right = coupon.edges
+    if left is None or right is None:
+        seen = sum(edge is not None for edge in coupon.edges)
+        found.append(
+            Notice(
+                "edges_not_seen",
+                f"{seen} of the coupon's two long edges {'was' if seen == 1 else 'were'} found, so the scale "
+                "in mm per px is unknown unless camera.scale gives it"
+                + ("." if given else ", and the direction of the pull is less sure; gauge.axis can give it."),
+            )
+        )
+    elif (taper := abs(np.degrees(np.arctan(left.slope) - np.arctan(right.slope)))) > MOST_TAPER_DEG:
+        found.append(
+            Notice(
+                "edges_not_parallel",
+                f"The coupon's long edges differ in direction by {taper:.1f}°; if it is no straight "
+                "strip, give gauge.axis, and camera.scale where lengths matter.",
+            )
+        )
+    if not given and coupon.clarity < CLEAR_OUTLINE:
+        found.append(
+            Notice(
+                "axis_ambiguous",
+                "The textured area ends inside the picture and is not much longer than wide; its longer "
+                f"sides, at {coupon.axis_angle_deg:.1f}° from the vertical, were taken for the coupon's "
+                "edges; if that is wrong, give gauge.axis.",
+            )
+        )
+    return found
+
+
 def doubts(quality: dict[str, float], subset: int) -> list[Notice]:
     """Return a warning, with its remedy, for each figure outside common practice."""
     found = []
