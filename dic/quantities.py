@@ -149,7 +149,7 @@ def _target(kind: str) -> str:
 
 
 _HEADER = re.compile(
-    r"\s*(?P<name>.*?)\s*(?:\((?P<round>[^()]*)\)|\[(?P<square>[^\[\]]*)\]|\s/\s*(?P<slash>\S+)|_(?P<tail>s|N|kN|mm))?\s*$"
+    r"\s*(?P<name>.*?)\s*(?:\((?P<round>[^()]*)\)|\[(?P<square>[^\[\]]*)\]|\s*/\s*(?P<slash>[^\s/()\[\]]+)|_(?P<tail>s|N|kN|mm))?\s*$"
 )
 
 

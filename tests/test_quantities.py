@@ -59,6 +59,7 @@ def test_a_decimal_comma_is_told_so():
         ("Force (kN)", "Force", "kN"),
         ("Load [lbf]", "Load", "lbf"),
         ("Kraft / N", "Kraft", "N"),
+        ("Force/MN", "Force", "MN"),
         ("time_s", "time", "s"),
         ("Time", "Time", None),
         ("Standard force (corr.) (N)", "Standard force (corr.)", "N"),

@@ -74,7 +74,7 @@ def find_again(reference: Image, frame: Image, x: NDArray[np.int64], y: NDArray[
     factor = max(1, round(max(reference.shape) / COARSE_PX))
     coarse, look = _coarse(reference, factor), _coarse(frame, factor)
     side = min(PATCH_PX, *(2 * (edge // 6) + 1 for edge in coarse.shape))
-    places = _places(x, y)
+    places = [_inward(place, reference.shape, side * factor / 2) for place in _places(x, y)]
     plain = [_look(coarse, look, place, factor, side, 0.0, 1.0) for place in places]
     best = max(plain, key=lambda found: found.score)
     if best.score >= PLAIN_SCORE:
@@ -94,6 +94,12 @@ def _places(x: NDArray[np.int64], y: NDArray[np.int64]) -> list[Floats]:
     wanted = [(middle[0], middle[1]), *((a, b) for a in (low[0], high[0]) for b in (low[1], high[1]))]
     nearest = [int(np.argmin((x - a) ** 2 + (y - b) ** 2)) for a, b in wanted]
     return [np.array([float(x[i]), float(y[i])]) for i in nearest]
+
+
+def _inward(place: Floats, shape: tuple[int, ...], half: float) -> Floats:
+    """Move a place so far from the picture's rim that the patch around it is whole."""
+    most = np.array([shape[1] - 1 - half, shape[0] - 1 - half])
+    return np.clip(place, np.minimum(half, most), np.maximum(half, most))
 
 
 def _coarse(image: Image, factor: int) -> Image:

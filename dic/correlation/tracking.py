@@ -31,6 +31,8 @@ LEAST_SHARE = 0.5
 RENEW_BELOW = 0.9
 #: Smoothing with which matching starts from several px away: measured capture 100 % from 4 px.
 ROUGH_PX = 1.5
+#: Measured subsets from which a plane is extrapolated to those that lie apart.
+LEAST_FOR_PLANE = 6
 #: Subsets matched roughly around the place that seeding found.
 SEEDS = 9
 
@@ -228,23 +230,42 @@ def grow(reference: Reference, spline: SplineImage, match: Match, neighbours: In
     """Try lost subsets again, each from its best-matched neighbour, until no more are found.
 
     Reliability-guided order (Pan 2009, doi 10.1364/AO.48.001535), a whole front of subsets at a time.
+    Subsets that no front can reach, because they lie apart, start from the plane through all others.
     """
-    tried = np.zeros(len(reference.x), bool)
+    tried, leapt = np.zeros(len(reference.x), bool), False
     while True:
-        good = match.converged
-        lost = reference.usable & ~good & ~tried & (good[neighbours] & (neighbours >= 0)).any(axis=1)
-        if not lost.any():
-            return match
-        front = np.flatnonzero(lost)
+        lost = reference.usable & ~match.converged & ~tried
+        front = np.flatnonzero(lost & _known_beside(match.converged, neighbours))
         start = np.full_like(match.parameters, np.nan)
-        start[front] = _from_neighbours(reference, match, neighbours[front], front)
-        again = match_frame(reference, spline, start)
-        tried |= lost
-        # A subset that failed may succeed from a neighbour that is found later.
-        tried &= ~(again.converged[neighbours] & (neighbours >= 0)).any(axis=1)
-        match = match.filled_from(again)
-        if not again.converged.any():
+        if len(front):
+            start[front] = _from_neighbours(reference, match, neighbours[front], front)
+            tried[front] = True
+        elif lost.any() and not leapt and match.converged.sum() >= LEAST_FOR_PLANE:
+            leapt, front = True, np.flatnonzero(lost)
+            start[front] = _from_plane(reference, match)[front]
+        else:
             return match
+        again = match_frame(reference, spline, start)
+        # A subset that failed may succeed from a neighbour that is found later.
+        tried &= ~_known_beside(again.converged, neighbours)
+        match = match.filled_from(again)
+
+
+def _known_beside(known: NDArray[np.bool_], neighbours: Ints) -> NDArray[np.bool_]:
+    """Tell which subsets have a neighbour that is known."""
+    return np.asarray((known[neighbours] & (neighbours >= 0)).any(axis=1))
+
+
+def _from_plane(reference: Reference, match: Match) -> Floats:
+    """Extrapolate the plane through all measured displacements to every subset."""
+    good = match.converged
+    x, y = reference.x - reference.x[good].mean(), reference.y - reference.y[good].mean()
+    basis = np.column_stack([np.ones(len(x)), x, y])
+    start = np.zeros_like(match.parameters)
+    for first in (0, start.shape[1] // 2):
+        plane = np.linalg.lstsq(basis[good], match.parameters[good, first], rcond=None)[0]
+        start[:, first], start[:, first + 1 : first + 3] = basis @ plane, plane[1:]
+    return start
 
 
 def _from_neighbours(reference: Reference, match: Match, around: Ints, which: Ints) -> Floats:
@@ -259,14 +280,21 @@ def _from_neighbours(reference: Reference, match: Match, around: Ints, which: In
 
 
 def completed(match: Match, reference: Reference, neighbours: Ints) -> Floats:
-    """Fill lost subsets' parameters from their neighbours': starting values, never results."""
+    """Fill lost subsets' parameters from their neighbours', or from the plane through all others.
+
+    Starting values, never results.
+    """
     filled, known = match.parameters.copy(), match.converged.copy()
+    if known.all():
+        return filled
+    if known.sum() >= LEAST_FOR_PLANE:
+        filled[~known] = _from_plane(reference, match)[~known]
     while not known.all():
-        front = np.flatnonzero(~known & (known[neighbours] & (neighbours >= 0)).any(axis=1))
+        front = np.flatnonzero(~known & _known_beside(known, neighbours))
         if not len(front):
             break
-        guess = replace(match, parameters=filled, flag=np.where(known, Flag.CONVERGED, Flag.NOT_CONVERGED))
-        guess = replace(guess, correlation=np.where(known, 1.0, np.nan))
+        flag = np.where(known, Flag.CONVERGED, Flag.NOT_CONVERGED)
+        guess = replace(match, parameters=filled, flag=flag, correlation=np.where(known, 1.0, np.nan))
         filled[front] = _from_neighbours(reference, guess, neighbours[front], front)
         known[front] = True
     return filled

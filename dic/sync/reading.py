@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import csv
-import re
 import warnings
 from pathlib import Path
 from textwrap import shorten
@@ -13,7 +12,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from dic.errors import LoadRecordError, nearest
-from dic.quantities import EXAMPLES, factor
+from dic.quantities import EXAMPLES, factor, split_header
 from dic.sync.record import LoadRecord
 from dic.testfile import Column
 from dic.testfile import LoadRecord as Section
@@ -30,12 +29,6 @@ MAX_HEADER = 100_000
 _SEPARATE = "export it as CSV, with semicolons or tabs between columns if numbers have a decimal comma"
 
 _KINDS = {"time": "time", "force": "force", "displacement": "length", "extensometer": "strain"}
-
-_HEADER = re.compile(
-    r"(?P<name>.*?)\s*(?:\((?P<round>[^()]*)\)|\[(?P<square>[^\[\]]*)\]|/\s*(?P<slash>[^\s()\[\]]+))$"
-)
-#: No real header is longer, and the pattern's work grows faster than the text.
-_LONGEST_HEADER = 200
 
 
 def read_load_record(section: Section, path: Path) -> LoadRecord:
@@ -92,7 +85,7 @@ def read_load_record(section: Section, path: Path) -> LoadRecord:
         displacement_mm=values.get("displacement"),
         extensometer=values.get("extensometer"),
         columns={
-            quantity: f"{_split(headers[position])[0]} ({units[quantity]})"
+            quantity: f"{split_header(headers[position])[0]} ({units[quantity]})"
             for quantity, position in positions.items()
         },
     )
@@ -128,14 +121,6 @@ def _no_text(path: Path) -> LoadRecordError:
     return LoadRecordError("is not UTF-8 text", where=str(path), remedy="export the record as CSV in UTF-8")
 
 
-def _split(header: str) -> tuple[str, str]:
-    """Return name and unit of a header; the unit is empty where it says none."""
-    found = _HEADER.match(header) if len(header) <= _LONGEST_HEADER else None
-    if found is None:
-        return header, ""
-    return found["name"], (found["round"] or found["square"] or found["slash"] or "").strip()
-
-
 def _position(column: Column, headers: list[str], quantity: str, path: Path) -> int:
     """Return where a column stands, counted from 0."""
     where = f"{path}, load_record.{quantity}"
@@ -149,7 +134,7 @@ def _position(column: Column, headers: list[str], quantity: str, path: Path) -> 
             remedy="count from 1",
         )
     found = [i for i, header in enumerate(headers) if header == column.strip()]
-    found = found or [i for i, header in enumerate(headers) if _split(header)[0] == column.strip()]
+    found = found or [i for i, header in enumerate(headers) if split_header(header)[0] == column.strip()]
     if len(found) == 1:
         return found[0]
     if found:
@@ -165,7 +150,7 @@ def _position(column: Column, headers: list[str], quantity: str, path: Path) -> 
 
 def _refuse_stray_units(units: dict[str, str], headers: list[str], path: Path) -> None:
     """Raise if a unit is given for something that is not there."""
-    known = {*headers, *(_split(header)[0] for header in headers), *_KINDS}
+    known = {*headers, *(split_header(header)[0] for header in headers), *_KINDS}
     for key in units:
         if key not in known:
             raise LoadRecordError(
@@ -177,7 +162,7 @@ def _refuse_stray_units(units: dict[str, str], headers: list[str], path: Path) -
 
 def _unit(quantity: str, header: str, units: dict[str, str], path: Path) -> str:
     """Return a column's unit, checked to be one of its quantity."""
-    name, in_header = _split(header)
+    name, in_header = split_header(header)
     given = next((units[key] for key in (header, name, quantity) if key in units), None)
     where = f"{path}, column '{header}'"
     kind = _KINDS[quantity]
@@ -216,10 +201,10 @@ def _worth(unit: str, kind: str) -> float:
     return factor(unit, kind)
 
 
-def _contradicts(in_header: str, worth: float, kind: str) -> bool:
+def _contradicts(in_header: str | None, worth: float, kind: str) -> bool:
     """Tell whether a header names another unit; a remark like "(filtered)" is no unit."""
     try:
-        return bool(in_header) and _worth(in_header, kind) != worth
+        return in_header is not None and _worth(in_header, kind) != worth
     except ValueError:
         return False
 
