@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import re
 from functools import cache
+from math import isfinite
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
@@ -72,7 +73,9 @@ def registry() -> pint.UnitRegistry[Any]:
     return pint.UnitRegistry()
 
 
-_QUANTITY = re.compile(r"\s*(?P<number>[-+]?(\d+\.?\d*|\.\d+)([eE][-+]?\d+)?)\s*(?P<unit>\S.*)?$")
+_QUANTITY = re.compile(r"\s*(?P<number>[-+]?(\d+(\.\d*)?|\.\d+)([eE][-+]?\d+)?)\s*(?P<unit>\S.*)?$")
+#: No quantity is written longer, and the pattern's work grows faster than the text.
+_LONGEST_QUANTITY = 60
 
 
 def parse(written: str | float, kind: str) -> float:
@@ -97,15 +100,22 @@ def parse(written: str | float, kind: str) -> float:
     """
     if isinstance(written, bool) or not isinstance(written, str | int | float):
         raise ValueError(f'{written!r} is not {_A[kind]} {kind}; write for example "{EXAMPLES[kind]}"')
-    if not isinstance(written, str):
-        return float(written)
-    found = _QUANTITY.match(written)
+    number, unit = _taken_apart(written, kind) if isinstance(written, str) else (float(written), None)
+    value = number if unit is None else number * factor(unit, kind)
+    if not isfinite(value):
+        raise ValueError(f"'{written}' is not a finite {kind}; write for example \"{EXAMPLES[kind]}\"")
+    return value
+
+
+def _taken_apart(written: str, kind: str) -> tuple[float, str | None]:
+    """Return number and unit of a quantity as written; the unit is None where there is none."""
+    found = _QUANTITY.match(written) if len(written) <= _LONGEST_QUANTITY else None
     if found is not None and re.match(r",\d", found["unit"] or ""):
         raise ValueError(f"'{written}' has a decimal comma; write a point")
     if found is None:
-        raise ValueError(f"'{written}' is not {_A[kind]} {kind}; write for example \"{EXAMPLES[kind]}\"")
-    number, unit = float(found["number"]), found["unit"]
-    return number if unit is None else number * factor(unit, kind)
+        shown = written if len(written) <= _LONGEST_QUANTITY else f"{written[:_LONGEST_QUANTITY]} …"
+        raise ValueError(f"'{shown}' is not {_A[kind]} {kind}; write for example \"{EXAMPLES[kind]}\"")
+    return float(found["number"]), found["unit"]
 
 
 #: Names joined by * and /, each with a one-digit exponent at most: what pint is given to evaluate must

@@ -52,22 +52,26 @@ class Specimen(Section):
 
     @model_validator(mode="after")
     def _dimensions_of_its_shape(self) -> Specimen:
-        needed = ("diameter",) if self.shape == "round" else ("width", "thickness")
+        flat, circular = ("width", "thickness"), ("diameter",)
+        needed, foreign = (circular, flat) if self.shape == "round" else (flat, circular)
         missing = [key for key in needed if getattr(self, key) is None]
         if missing:
             raise ValueError(
                 f"a {self.shape} coupon needs {' and '.join(needed)}; {' and '.join(missing)} missing"
             )
+        for key in foreign:
+            for given in (key, f"{key}_uncertainty"):
+                if getattr(self, given) is not None:
+                    raise ValueError(f"a {self.shape} coupon has no {given}; remove it or correct the shape")
         return self
 
     @property
     def area(self) -> float:
         """Original cross-section S0, mm²."""
-        if self.diameter is not None:
-            return pi * self.diameter**2 / 4
-        assert self.width is not None  # noqa: S101  (validated above)
-        assert self.thickness is not None  # noqa: S101
-        return self.width * self.thickness
+        if self.shape == "round":
+            return pi * self.visible_width**2 / 4
+        assert self.thickness is not None  # noqa: S101  (validated above)
+        return self.visible_width * self.thickness
 
     @property
     def visible_width(self) -> float:

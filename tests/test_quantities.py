@@ -42,6 +42,19 @@ def test_nonsense_is_refused(text):
         parse(text, "length")
 
 
+def test_a_long_text_is_refused_before_it_is_looked_at():
+    """Ten thousand digits and a second line: a pattern that tries every division of them never ends."""
+    with pytest.raises(ValueError, match="is not a length; write for example") as caught:
+        parse("1" * 10_000 + "x\ny", "length")
+    assert len(str(caught.value)) < 150
+
+
+@pytest.mark.parametrize("written", ["1e999 mm", "-1e999", "1e308 km", float("inf"), float("nan")])
+def test_what_is_not_finite_is_refused(written):
+    with pytest.raises(ValueError, match="is not a finite length"):
+        parse(written, "length")
+
+
 @pytest.mark.parametrize("unit", ["N**9**9**9", "9⁹⁹⁹⁹", "N/", "m^99", "N*", "(((", "m**-9**9", "¹²", ""])
 def test_hostile_units_are_refused_at_once(unit):
     with pytest.raises(ValueError, match="is not a unit"):

@@ -60,6 +60,10 @@ def test_area_uncertainty_adds_in_squares(tmp_path):
         ('force = 3', "", "the key 'force' is missing"),
         ("[specimen]", "[specimen", "not valid TOML"),
         ("[frames]", '[gauge]\naxis = "askew"\n[frames]', "'askew' is not an angle"),
+        ("[frames]", '[gauge]\naxis = "1e999 deg"\n[frames]', "'1e999 deg' is not a finite angle"),
+        ("[frames]", "diameter = 12\n[frames]", "a flat coupon has no diameter"),
+        ("[frames]", "diameter_uncertainty = 1\n[frames]", "a flat coupon has no diameter_uncertainty"),
+        ("[specimen]", '[specimen]\nshape = "round"\ndiameter = 12', "a round coupon has no width"),
         ("[frames]", "[properties]\nmodulus = { strain = [0.2, 0.1] }\n[frames]", "low before high"),
     ],
 )  # fmt: skip
