@@ -15,7 +15,7 @@ from dic.frames import FrameSource
 from dic.frames.readers import Grey
 from dic.preparation import Setup
 from dic.store import fields
-from dic.strain import gauge_size, strain_map
+from dic.strain import StrainMapper, gauge_size
 from dic.testfile import TestFile
 
 
@@ -54,7 +54,7 @@ def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[M
         "strain_measure": "engineering, in coupon axes",
         "axis_angle_deg": setup.coupon.axis_angle_deg,
     }
-    directions = setup.region.axial, setup.region.transverse
+    mapper = StrainMapper(window, grid.step, (setup.region.axial, setup.region.transverse))
     measured = 0
     folder.mkdir(parents=True, exist_ok=True)
     with (
@@ -64,7 +64,7 @@ def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[M
         hashed = hashing.submit(source.sha256)
         for match in track(_read_ahead(source), setup.reference, grid.neighbours()):
             u, v = (fields.spread(part, grid.inside) for part in (match.u, match.v))
-            writer.put(match, strain_map(u, v, window, grid.step, directions))
+            writer.put(match, mapper.strain(u, v))
             measured += bool(match.converged.any())
             yield match
         # The frames of the reference always match; alone they say nothing.

@@ -23,6 +23,8 @@ from dic.errors import StoreError
 from dic.strain.maps import StrainMap
 
 NAME = "fields.nc"
+#: Frames that are written together.
+AT_ONCE = 8
 #: Variables that hold the subsets' affine motion, in the order of `Match.affine`.
 AFFINE = ("u", "u_x", "u_y", "v", "v_x", "v_y")
 
@@ -66,6 +68,7 @@ class FieldsWriter:
         self._partial = folder / (NAME + ".part")
         self._grid = grid
         self._next = 0
+        self._waiting: list[dict[str, NDArray[Any]]] = []
         try:
             self._file = h5netcdf.File(self._partial, "w")
         except OSError as error:
@@ -109,11 +112,19 @@ class FieldsWriter:
         }
         flag = np.full(inside.shape, Flag.MASKED, np.uint8)
         flag[inside] = match.flag
-        for name, value in {**values, "flag": flag}.items():
-            self._file[name][self._next] = value
-        self._file["noise_grey"][self._next] = match.noise_grey
-        self._file["links"][self._next] = match.links
-        self._next += 1
+        single = {"noise_grey": np.array(match.noise_grey), "links": np.array(match.links)}
+        self._waiting.append({**values, "flag": flag, **single})
+        if len(self._waiting) == AT_ONCE:
+            self._flush()
+
+    def _flush(self) -> None:
+        """Write the frames that wait: each call into the file costs more than its data."""
+        if self._waiting:
+            rows = slice(self._next, self._next + len(self._waiting))
+            for name in self._waiting[0]:
+                self._file[name][rows] = np.stack([frame[name] for frame in self._waiting])
+            self._next = rows.stop
+            self._waiting.clear()
 
     def note(self, name: str, value: str) -> None:
         """Add an attribute that is known only at the end."""
@@ -122,6 +133,8 @@ class FieldsWriter:
     def __exit__(
         self, kind: type[BaseException] | None, value: BaseException | None, trace: TracebackType | None
     ) -> None:
+        if kind is None:
+            self._flush()
         self._file.close()
         if kind is None:
             os.replace(self._partial, self._final)

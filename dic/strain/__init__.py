@@ -2,7 +2,7 @@
 
 from dic.strain.gauge import GaugeReader, Reading, Region
 from dic.strain.history import GaugeHistory, gather
-from dic.strain.maps import StrainMap, gauge_size, strain_map
+from dic.strain.maps import StrainMap, StrainMapper, gauge_size
 from dic.strain.tensors import engineering
 
 __all__ = [
@@ -11,8 +11,8 @@ __all__ = [
     "Reading",
     "Region",
     "StrainMap",
+    "StrainMapper",
     "engineering",
     "gather",
     "gauge_size",
-    "strain_map",
 ]

@@ -4,8 +4,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from dic.pattern import axes
-from dic.strain import engineering, gauge_size, strain_map
-from dic.strain.maps import local_gradient
+from dic.strain import StrainMapper, engineering, gauge_size
 
 
 def test_virtual_gauge_size_is_the_guides_formula():
@@ -21,7 +20,7 @@ def test_a_linear_field_gives_its_own_gradient_with_or_without_gaps(a, b, c, d, 
     x, y = np.meshgrid(np.arange(9.0) * step, np.arange(7.0) * step)
     u, v = a * x + b * y + 1, c * x + d * y - 2
     u[2, 3] = np.nan
-    found = local_gradient(u, v, 3, step)
+    found = StrainMapper(3, step, axes(0.0)).gradient(u, v)
     assert np.isnan(found[2, 3]).all()
     good = np.isfinite(found).all(axis=(2, 3))
     assert good.sum() >= 9 * 7 - 5  # the gap, and corners with fewer than half a window
@@ -31,13 +30,13 @@ def test_a_linear_field_gives_its_own_gradient_with_or_without_gaps(a, b, c, d, 
 def test_too_few_neighbours_are_no_strain():
     u = np.full((7, 7), np.nan)
     u[3, :] = 1.0  # a line of points spans no plane
-    assert np.isnan(local_gradient(u, u, 5, 4)).all()
+    assert np.isnan(StrainMapper(5, 4, axes(0.0)).gradient(u, u)).all()
 
 
 def test_strain_map_turns_into_coupon_axes():
     y, x = np.mgrid[0:60:10.0, 0:80:10.0]
     # Pull along the picture's horizontal by 1 %.
-    found = strain_map(0.01 * x, -0.003 * y, 3, 10, axes(90.0))
+    found = StrainMapper(3, 10, axes(90.0)).strain(0.01 * x, -0.003 * y)
     np.testing.assert_allclose(found.axial[1:-1, 1:-1], 0.01, atol=1e-12)
     np.testing.assert_allclose(found.transverse[1:-1, 1:-1], -0.003, atol=1e-12)
 
@@ -56,3 +55,16 @@ def test_stretch_is_what_remains_after_any_rotation(angle, axial, transverse):
 def test_simple_shear_changes_the_right_angle_by_its_arctangent():
     _, _, shear = engineering(np.array([[0.0, -0.1], [0.0, 0.0]]), *axes(0.0))
     assert abs(shear) == pytest.approx(np.arctan(0.1), abs=1e-12)
+
+
+def test_a_mapper_notices_when_other_subsets_are_valid():
+    y, x = np.mgrid[0:60:10.0, 0:80:10.0]
+    mapper = StrainMapper(3, 10, axes(0.0))
+    whole = mapper.gradient(0.01 * x, 0 * y)
+    u = 0.01 * x
+    u[2, 3] = np.nan
+    part = mapper.gradient(u, 0 * y)
+    assert np.isnan(part[2, 3]).all()
+    good = np.isfinite(part)
+    np.testing.assert_allclose(part[good], whole[good], atol=1e-12)
+    np.testing.assert_array_equal(mapper.gradient(0.01 * x, 0 * y), whole)

@@ -1,0 +1,41 @@
+"""Accuracy and speed with their targets: ``python tests/benchmarks NAME [--json FILE] [--plot FILE]``.
+
+NAME is one of the benchmarks below, or ``all``.
+"""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Annotated
+
+import typer
+from table import Bench, show, write_json
+
+NAMES = ("accuracy", "gauge", "resolution", "speed", "memory")
+
+
+def main(
+    name: Annotated[str, typer.Argument(help="One of " + ", ".join(NAMES) + ", or all.")],
+    json: Annotated[Path | None, typer.Option(help="Write figures and targets as JSON.")] = None,
+    plot: Annotated[Path | None, typer.Option(help="Draw the curves behind the figures (PNG).")] = None,
+) -> None:
+    """Run benchmarks and print a table with the target beside each figure."""
+    from importlib import import_module
+
+    wanted = (
+        [one for one in NAMES if (Path(__file__).parent / f"{one}.py").exists()] if name == "all" else [name]
+    )
+    results: dict[str, Bench] = {}
+    for one in wanted:
+        results[one] = import_module(one).run()
+        show(one, results[one])
+    if json is not None:
+        write_json(json, results)
+    if plot is not None:
+        from table import draw
+
+        draw(plot, results)
+
+
+if __name__ == "__main__":
+    typer.run(main)
