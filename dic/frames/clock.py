@@ -3,17 +3,15 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
 
 from dic.errors import FrameError
+from dic.frames.readers import READERS
 from dic.quantities import factor, split_header
+from dic.tables import Table, read_table
 from dic.testfile import Frames
-
-if TYPE_CHECKING:
-    import pandas as pd
 
 MOST_BYTES = 50_000_000
 
@@ -24,9 +22,9 @@ def frame_times(section: Frames, folder: Path, names: list[str]) -> NDArray[np.f
     Parameters
     ----------
     section
-        ``[frames]`` of the test file: a fixed ``rate``, or ``times``, a CSV with a column of file
+        ``[frames]`` of the test file: a fixed ``rate``, or ``times``, a table with a column of file
         names (or none: then one row per frame, in order) and a column of times whose header holds
-        the unit.
+        the unit, see `dic.tables`.
     folder
         What relative paths start from.
     names
@@ -35,7 +33,7 @@ def frame_times(section: Frames, folder: Path, names: list[str]) -> NDArray[np.f
     Raises
     ------
     FrameError
-        If the file cannot be read, misses a frame, or time does not increase.
+        If the file cannot be read, misses a frame or a unit, or time does not increase.
     """
     if section.rate is not None:
         return section.start + np.arange(len(names)) / section.rate
@@ -52,42 +50,64 @@ def frame_times(section: Frames, folder: Path, names: list[str]) -> NDArray[np.f
 
 
 def _from_file(path: Path, names: list[str]) -> NDArray[np.float64]:
-    import pandas as pd
-
-    try:
-        if path.stat().st_size > MOST_BYTES:
-            raise FrameError("is far too large for a list of frame times", where=str(path))
-        with path.open(encoding="utf-8-sig") as file:
-            header = file.readline(10_000)
-            separator = next((mark for mark in "\t;" if mark in header), ",")
-        table = pd.read_csv(path, sep=separator, encoding="utf-8-sig")
-    except (OSError, UnicodeDecodeError, pd.errors.ParserError, pd.errors.EmptyDataError) as error:
-        raise FrameError(
-            f"cannot be read ({' '.join(str(error).split())})", where=str(path), remedy="check frames.times"
-        ) from error
-    column = _time_column(table, path)
-    time = pd.to_numeric(table[column], errors="coerce").to_numpy(float)
-    try:
-        time = time * factor(split_header(column)[1] or "s", "time")
-    except ValueError as error:
-        raise FrameError(str(error), where=f"{path}, column '{column}'") from error
-    named = [other for other in table.columns if set(names) <= set(table[other].astype(str))]
-    if named and len(set(names)) == len(names):
-        rows = {str(name): row for row, name in enumerate(table[named[0]])}
-        time = time[[rows[name] for name in names]]
+    table = read_table(path, FrameError, key="frames.times", most_bytes=MOST_BYTES)
+    column = _time_column(table)
+    time = table.numbers(column) * _seconds(table, column)
+    rows = _rows_by_name(table, names)
+    if rows is not None:
+        return time[rows]
     if len(time) != len(names):
         raise FrameError(
             f"lists {len(time)} times for {len(names)} frames", where=str(path), remedy="one row per frame"
         )
-    bad = np.flatnonzero(~np.isfinite(time))
-    if len(bad):
-        raise FrameError(f"no time for frame {names[bad[0]]}", where=str(path), remedy="fill it in")
     return time
 
 
-def _time_column(table: pd.DataFrame, path: Path) -> str:
-    for column in table.columns:
-        if split_header(str(column))[0].lower() in ("time", "t"):
-            return str(column)
-    listed = ", ".join(map(str, table.columns))
-    raise FrameError("has no column 'time'", where=str(path), remedy=f"there are: {listed}")
+def _time_column(table: Table) -> int:
+    for position, header in enumerate(table.headers):
+        if split_header(header)[0].lower() in ("time", "t"):
+            return position
+    raise FrameError(
+        "has no column 'time'", where=str(table.path), remedy=f"there are: {', '.join(table.headers)}"
+    )
+
+
+def _seconds(table: Table, column: int) -> float:
+    """Return what the column's unit is worth in seconds."""
+    header = table.headers[column]
+    unit = split_header(header)[1]
+    where = f"{table.path}, column '{header}'"
+    if unit is None:
+        raise FrameError("says no unit", where=where, remedy='write for example "time (s)"')
+    try:
+        return factor(unit, "time")
+    except ValueError as error:
+        raise FrameError(str(error), where=where) from error
+
+
+def _rows_by_name(table: Table, names: list[str]) -> list[int] | None:
+    """Return the row of each frame where the table names frames; None where it lists them in order."""
+    if len(set(names)) < len(names):  # the pages of one file
+        return None
+    for position, header in enumerate(table.headers):
+        cells = table.cells[position].str.strip()
+        if not (cells.isin(names) | cells.str.lower().str.endswith(tuple(READERS))).any():
+            continue
+        rows = {name: row for row, name in enumerate(cells)}
+        missing = [name for name in names if name not in rows]
+        if missing:
+            more = f" and {len(missing) - 1} more" if len(missing) > 1 else ""
+            raise FrameError(
+                f"has no row for frame {missing[0]}{more}",
+                where=f"{table.path}, column '{header}'",
+                remedy="name every frame as its file is named",
+            )
+        twice = cells[cells.isin(names) & cells.duplicated()]
+        if len(twice):
+            raise FrameError(
+                f"names {twice.iloc[0]} twice",
+                where=f"{table.path}, row {twice.index[0]}",
+                remedy="keep one row per frame",
+            )
+        return [rows[name] for name in names]
+    return None

@@ -17,8 +17,8 @@ from dic.errors import FrameError
 
 Grey = NDArray[np.uint8] | NDArray[np.uint16]
 
-#: No camera for this job has more; a header that claims more is damaged.
-MOST_PIXELS = 300_000_000
+#: No camera for this job has more, and a picture takes about 30 bytes per px until it is prepared.
+MOST_PIXELS = 100_000_000
 
 
 @dataclass(frozen=True)
@@ -42,12 +42,20 @@ class Reader:
 def _tiff_pages(path: Path) -> list[Page]:
     import tifffile
 
+    found = []
     with tifffile.TiffFile(path) as tiff:
-        return [
-            Page(path, index, tuple(page.shape), np.dtype(page.dtype))
-            for index, page in enumerate(tiff.pages)
-            if page.dtype is not None
-        ]
+        for index, page in enumerate(tiff.pages):
+            if not isinstance(page, tifffile.TiffPage) or page.dtype is None:
+                continue
+            # A palette's numbers are no brightness, and decoders would hand them out like grey values.
+            if page.photometric != tifffile.PHOTOMETRIC.MINISBLACK:
+                raise _not_grey(
+                    path, f"its colours are {tifffile.PHOTOMETRIC(page.photometric).name.lower()}"
+                )
+            if not 8 <= page.bitspersample <= 16:
+                raise _wrong_depth(path, f"{page.bitspersample}-bit")
+            found.append(Page(path, index, tuple(page.shape), np.dtype(page.dtype)))
+    return found
 
 
 def _tiff_read(page: Page) -> NDArray[Any]:
@@ -57,10 +65,10 @@ def _tiff_read(page: Page) -> NDArray[Any]:
         return np.asarray(tiff.pages[page.index].asarray())
 
 
+#: Pillow's modes of grey pictures.
 _PNG_TYPES: dict[str, np.dtype[Any]] = {
     "L": np.dtype(np.uint8),
     "I;16": np.dtype(np.uint16),
-    "I": np.dtype(np.int32),
 }
 
 
@@ -69,9 +77,11 @@ def _png_pages(path: Path) -> list[Page]:
 
     with Image.open(path, formats=["PNG"]) as picture:
         width, height = picture.size
-        bands = len(picture.getbands())
-        shape = (height, width) if bands == 1 else (height, width, bands)
-        return [Page(path, 0, shape, _PNG_TYPES.get(picture.mode, np.dtype(np.uint8)))]
+        if picture.mode == "1":
+            raise _wrong_depth(path, "1-bit")
+        if picture.mode not in _PNG_TYPES:
+            raise _not_grey(path, f"its colours are {picture.mode}")
+        return [Page(path, 0, (height, width), _PNG_TYPES[picture.mode])]
 
 
 def _png_read(page: Page) -> NDArray[Any]:
@@ -100,22 +110,21 @@ def list_pages(path: Path) -> list[Page]:
         pages = READERS[path.suffix.lower()].pages(path)
         if not pages:
             raise ValueError("it holds no picture")
+    except FrameError:
+        raise
     except Exception as error:  # the decoders raise whatever their authors chose
         raise _unreadable(path, error) from error
     for page in pages:
         if len(page.shape) != 2:
-            raise FrameError(
-                f"is not a grey picture (its shape is {page.shape})",
-                where=str(path),
-                remedy="save frames as single-channel grey",
-            )
+            raise _not_grey(path, f"its shape is {page.shape}")
         if page.dtype not in (np.uint8, np.uint16):
-            raise FrameError(
-                f"holds {page.dtype} values", where=str(path), remedy="save frames as 8 or 16 bits"
-            )
+            raise _wrong_depth(path, str(page.dtype))
         if not 0 < page.shape[0] * page.shape[1] <= MOST_PIXELS:
             raise FrameError(
-                f"claims {page.shape[1]} × {page.shape[0]} px", where=str(path), remedy="the file is damaged"
+                f"claims {page.shape[1]} × {page.shape[0]} px, and {MOST_PIXELS // 1_000_000} million px are "
+                "the most that is read",
+                where=str(path),
+                remedy="crop it to the coupon, or export it anew if it is damaged",
             )
     return pages
 
@@ -135,6 +144,20 @@ def read_page(page: Page) -> Grey:
     if grey.shape != page.shape or grey.dtype != page.dtype:
         raise FrameError("changed while it was being read", where=str(page.path), remedy="copy it anew")
     return grey
+
+
+def _not_grey(path: Path, found: str) -> FrameError:
+    return FrameError(
+        f"is not a grey picture ({found})",
+        where=str(path),
+        remedy="save frames as single-channel grey with black as zero",
+    )
+
+
+def _wrong_depth(path: Path, found: str) -> FrameError:
+    return FrameError(
+        f"holds {found} values", where=str(path), remedy="save frames as 8 to 16 bits, whole numbers"
+    )
 
 
 def _unreadable(path: Path, error: Exception) -> FrameError:

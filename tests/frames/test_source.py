@@ -84,7 +84,24 @@ def test_times_from_a_file_by_name_whatever_the_order(folder):
 
 def test_times_from_a_file_by_row(folder):
     write(folder, [grey() for _ in range(3)])
-    (folder / "t.csv").write_text("time\n0\n1.5\n2\n")
+    (folder / "t.csv").write_text("time (s)\n0\n1.5\n2\n")
+    np.testing.assert_allclose(
+        open_frames(Frames(source="frames", times="t.csv"), folder).time_s, [0, 1.5, 2]
+    )
+
+
+@pytest.mark.parametrize("separator", [";", "\t"])
+def test_times_may_have_a_decimal_comma_where_the_separator_is_another(folder, separator):
+    write(folder, [grey() for _ in range(3)])
+    rows = [("frame", "time (s)"), ("f0.tif", "0,5"), ("f1.tif", "1,25"), ("f2.tif", "2")]
+    (folder / "t.csv").write_text("\ufeff" + "\n".join(separator.join(row) for row in rows), "utf-8")
+    source = open_frames(Frames(source="frames", times="t.csv"), folder)
+    np.testing.assert_allclose(source.time_s, [0.5, 1.25, 2])
+
+
+def test_numbers_of_frames_are_no_names(folder):
+    write(folder, [grey() for _ in range(3)])
+    (folder / "t.csv").write_text("frame,time_s\n1,0\n2,1.5\n3,2\n")
     np.testing.assert_allclose(
         open_frames(Frames(source="frames", times="t.csv"), folder).time_s, [0, 1.5, 2]
     )
@@ -93,12 +110,18 @@ def test_times_from_a_file_by_row(folder):
 @pytest.mark.parametrize(
     ("content", "said"),
     [
-        ("time\n0\n1\n", "lists 2 times for 3 frames"),
-        ("time\n0\n1\n1\n", "does not increase"),
-        ("time\n0\nx\n1\n", "no time for frame f1.tif"),
+        ("time (s)\n0\n1\n", "lists 2 times for 3 frames"),
+        ("time (s)\n0\n1\n1\n", "does not increase"),
+        ("time (s)\n0\nx\n1\n", r"row 3, column 'time \(s\)': 'x' is not a number"),
+        ("time\n0\n1\n2\n", "says no unit"),
         ("clock\n0\n1\n2\n", "no column 'time'"),
         ("time (kg)\n0\n1\n2\n", "'kg' is not a unit"),
-        ("", "cannot be read"),
+        ("", "no line of column headers"),
+        ("frame,time (s)\nf0.tif,0\nf1.tif,1\nf3.tif,2\n", "has no row for frame f2.tif"),
+        ("time (s),frame\n0,f0.tif\n1,f1.tif\n", "has no row for frame f2.tif"),
+        ("frame,time (s)\na0.tif,0\na1.tif,1\na2.tif,2\n", "has no row for frame f0.tif and 2 more"),
+        ("frame,time (s)\nf0.tif,0\nf1.tif,1\nf2.tif,2\nf1.tif,3\n", "row 5: names f1.tif twice"),
+        ("frame,time (s)\nf0.tif,0,5\nf1.tif,1,5\nf2.tif,2,5\n", "more than the 2 cells"),
     ],
 )
 def test_times_files_that_cannot_be_used(folder, content, said):
@@ -141,6 +164,35 @@ def test_truncated_pixels_are_found_when_read(folder):
     source = open_frames(section(), folder)
     with pytest.raises(FrameError, match=r"f1\.tif"):
         source[1]
+
+
+def palette(path):
+    Image.fromarray(grey()).convert("P").save(path)
+
+
+def inverted(path):
+    tifffile.imwrite(path, grey(), photometric="miniswhite")
+
+
+def one_bit(path):
+    Image.fromarray(grey() > 99).save(path)
+
+
+@pytest.mark.parametrize(
+    ("write_one", "ending", "said"),
+    [
+        (palette, "png", "not a grey picture"),
+        (palette, "tif", r"not a grey picture \(its colours are palette\)"),
+        (inverted, "tif", "black as zero"),
+        (one_bit, "png", "holds 1-bit values"),
+        (one_bit, "tif", "holds 1-bit values"),
+    ],
+)
+def test_numbers_that_are_no_brightness_are_refused(folder, write_one, ending, said):
+    for k in range(3):
+        write_one(folder / "frames" / f"f{k}.{ending}")
+    with pytest.raises(FrameError, match=said):
+        open_frames(section(), folder)
 
 
 def test_colour_is_refused_for_now(folder):
