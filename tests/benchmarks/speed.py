@@ -19,7 +19,7 @@ import numba
 import numpy as np
 import tifffile
 from numpy.typing import NDArray
-from scenes import Settings, clean, grid_on, moved, noisy, reference_of, rigid, start_at
+from scenes import Settings, clean, grid_on, noisy, reference_of, rigid, start_at
 from table import Bench
 
 from dic.correlation import Prefilter, Tracker
@@ -165,7 +165,8 @@ def write_test(folder: Path, frames: int) -> Path:
     test = folder / "test.toml"
     test.write_text(
         '[specimen]\nwidth = "10 mm"\nthickness = "2 mm"\n[frames]\nsource = "frames"\nrate = "5 Hz"\n'
-        '[load_record]\nsource = "machine.csv"\ntime = "Time"\nforce = "Force"\n[camera]\nscale = "0.005 mm/px"\n'
+        '[load_record]\nsource = "machine.csv"\ntime = "Time"\nforce = "Force"\n'
+        '[camera]\nscale = "0.005 mm/px"\n'
         '[gauge]\naxis = "vertical"\nregion = [40, 40, 2368, 1968]\n[sync]\noffset = "0 s"\n'
     )
     return test
