@@ -1,8 +1,8 @@
 """The inner loops: plain arrays in, plain arrays out, no options, no messages.
 
-Every function here is called by others in this file only or through the fronts in `splines`,
-`reference`, `matching` and `dic.strain.gauge`.  They stay together because Numba's disk cache does
-not notice a change of a callee in another file.
+Every function here is called by others in this file only or through the fronts in `matching` and
+`noise`.  They stay together because Numba's disk cache does not notice a change of a callee in another
+file; `moments` and `tiles` hold the kernels that stand alone.
 
 The form that makes it fast: all that Gauss–Newton needs from the deformed image are sums that are
 linear in the interpolated grey value (plus its square), so one pass over a subset gives them all.
@@ -24,21 +24,12 @@ from __future__ import annotations
 from typing import Any
 
 import numpy as np
-from numba import njit, prange
+from numba import prange
 
-#: Reassociation and contraction let sums vectorise; NaN and infinity keep their meaning.
-_FAST = {"reassoc", "contract", "nsz", "arcp"}
+from dic.correlation.compiling import exact, exactly_inlined, fast, inlined, parallel
+
 _F = np.float32
 _U = np.uint64
-
-# NumPy's rules for division: by zero it gives infinity or NaN, which the checks below refuse, where
-# Python's would stop the whole frame.
-_inlined = njit(fastmath=_FAST, forceinline=True, error_model="numpy")
-_exactly_inlined = njit(forceinline=True, error_model="numpy")
-_fast = njit(fastmath=_FAST, error_model="numpy")
-_exact = njit(error_model="numpy")
-_serial = njit(cache=True, error_model="numpy")
-_parallel = njit(parallel=True, cache=True, error_model="numpy")
 
 # States that solve_subsets can report (values of flags.Flag).
 _CONVERGED, _OUT_OF_VIEW, _NOT_CONVERGED, _DECORRELATED = 0, 3, 4, 5
@@ -51,7 +42,7 @@ _FIRST_RATE = 0.01
 # ---- B-spline values -------------------------------------------------------------------------
 
 
-@_inlined
+@inlined
 def _weights4(t: Any) -> Any:
     """Cubic B-spline weights of four taps; the point lies t behind the second."""
     s, t2 = _F(1) - t, t * t
@@ -64,7 +55,7 @@ def _weights4(t: Any) -> Any:
     )
 
 
-@_inlined
+@inlined
 def _weights6(t: Any) -> Any:
     """Quintic B-spline weights of six taps; the point lies t behind the third."""
     c, t2 = _F(1 / 120), t * t
@@ -77,7 +68,7 @@ def _weights6(t: Any) -> Any:
     return w0 * c, w1 * c, w2 * c, w3 * c, w4 * c, w5 * c
 
 
-@_inlined
+@inlined
 def _weights8(t: Any) -> Any:
     """Septic B-spline weights of eight taps; the point lies t behind the fourth."""
     c = _F(1 / 5040)
@@ -95,33 +86,33 @@ def _weights8(t: Any) -> Any:
     return w0 * c, w1 * c, w2 * c, w3 * c, w4 * c, w5 * c, w6 * c, w7 * c
 
 
-@_inlined
+@inlined
 def _septic_next(t: Any) -> Any:
     return (
         (((((_F(-7) * t + _F(7)) * t + _F(21)) * t + _F(35)) * t + _F(35)) * t + _F(21)) * t + _F(7)
     ) * t + _F(1)
 
 
-@_inlined
+@inlined
 def _septic_third(t: Any) -> Any:
     return (
         (((((_F(21) * t - _F(42)) * t - _F(84)) * t) * t + _F(280)) * t + _F(504)) * t + _F(392)
     ) * t + _F(120)
 
 
-@_inlined
+@inlined
 def _septic_middle(t: Any) -> Any:
     return (
         (((((_F(-35) * t + _F(105)) * t + _F(105)) * t - _F(315)) * t - _F(665)) * t + _F(315)) * t + _F(1715)
     ) * t + _F(1191)
 
 
-@_inlined
+@inlined
 def _row4(c: Any, r: Any, o: Any, w: Any) -> Any:
     return w[0] * c[r + o[0]] + w[1] * c[r + o[1]] + w[2] * c[r + o[2]] + w[3] * c[r + o[3]]
 
 
-@_inlined
+@inlined
 def _row6(c: Any, i: Any, w: Any) -> Any:
     return (
         w[0] * c[i] + w[1] * c[i + _U(1)] + w[2] * c[i + _U(2)]
@@ -129,7 +120,7 @@ def _row6(c: Any, i: Any, w: Any) -> Any:
     )  # fmt: skip
 
 
-@_inlined
+@inlined
 def _row8(c: Any, i: Any, w: Any) -> Any:
     return (
         w[0] * c[i] + w[1] * c[i + _U(1)] + w[2] * c[i + _U(2)] + w[3] * c[i + _U(3)]
@@ -137,7 +128,7 @@ def _row8(c: Any, i: Any, w: Any) -> Any:
     )  # fmt: skip
 
 
-@_inlined
+@inlined
 def _value(taps: Any, c: Any, k: Any, r: Any, o: Any, tx: Any, ty: Any) -> Any:
     """Interpolated grey value k pixels into a run.
 
@@ -179,7 +170,7 @@ def _value(taps: Any, c: Any, k: Any, r: Any, o: Any, tx: Any, ty: Any) -> Any:
 # ---- Sums over a subset ----------------------------------------------------------------------
 
 
-@_inlined
+@inlined
 def _run(taps: Any, shape: Any, c: Any, r: Any, o: Any, tx: Any, dtx: Any, ddtx: Any,
          ty: Any, dty: Any, ddty: Any, f: Any, fx: Any, fy: Any, m: Any,
          q: Any, n: Any, xi: Any) -> Any:  # fmt: skip
@@ -210,7 +201,7 @@ def _run(taps: Any, shape: Any, c: Any, r: Any, o: Any, tx: Any, dtx: Any, ddtx:
     return s, ss, sf, x0, x1, x2, y0, y1, y2
 
 
-@_inlined
+@inlined
 def _pixels_left(start: Any, slope: Any, n: Any) -> Any:
     """How many of n pixels keep the whole-pixel offset that the first one has, on a linear ramp."""
     room = np.floor(start) + 1.0 - start if slope > 0 else start - np.floor(start)
@@ -219,7 +210,7 @@ def _pixels_left(start: Any, slope: Any, n: Any) -> Any:
     return min(n, int(room / abs(slope)) + 1)
 
 
-@_exactly_inlined
+@exactly_inlined
 def _pixels_left_on_a_bow(start: Any, slope: Any, bow: Any, n: Any) -> Any:
     """Do the same on a quadratic ramp, where the offset may turn back: look pixel by pixel."""
     whole = np.floor(start)
@@ -229,7 +220,7 @@ def _pixels_left_on_a_bow(start: Any, slope: Any, bow: Any, n: Any) -> Any:
     return n
 
 
-@_exactly_inlined
+@exactly_inlined
 def _tap_row(index: Any, sampling: Any, stride: Any, plane: Any) -> Any:
     """Where a row of coefficients lies: with two samples per pixel, odd rows are planes of their own."""
     if sampling == 1:
@@ -237,14 +228,14 @@ def _tap_row(index: Any, sampling: Any, stride: Any, plane: Any) -> Any:
     return _U((index & 1) * 2 * plane + (index >> 1) * stride)
 
 
-@_exactly_inlined
+@exactly_inlined
 def _tap_column(index: Any, sampling: Any, plane: Any) -> Any:
     if sampling == 1:
         return _U(index)
     return _U((index & 1) * plane + (index >> 1))
 
 
-@_exactly_inlined
+@exactly_inlined
 def _taps_at(column: Any, row: Any, sampling: Any, stride: Any, plane: Any) -> Any:
     """Return the places of the first four rows and columns of taps."""
     return (
@@ -259,7 +250,7 @@ def _taps_at(column: Any, row: Any, sampling: Any, stride: Any, plane: Any) -> A
     )  # fmt: skip
 
 
-@_fast
+@fast
 def _subset_sums(taps: Any, shape: Any, c: Any, sampling: Any, stride: Any, plane: Any, margin: Any,
                  f: Any, fx: Any, fy: Any, m: Any, width: Any,
                  x: Any, y: Any, half: Any, p: Any, sums: Any) -> None:  # fmt: skip
@@ -321,7 +312,7 @@ def _subset_sums(taps: Any, shape: Any, c: Any, sampling: Any, stride: Any, plan
 # ---- Warps -----------------------------------------------------------------------------------
 
 
-@_exactly_inlined
+@exactly_inlined
 def _displaced(shape: Any, p: Any, first: Any, xi: Any, eta: Any) -> Any:
     """Displacement component whose parameters begin at `first`."""
     d = p[first] + p[first + 1] * xi + p[first + 2] * eta
@@ -330,7 +321,7 @@ def _displaced(shape: Any, p: Any, first: Any, xi: Any, eta: Any) -> Any:
     return d
 
 
-@_exactly_inlined
+@exactly_inlined
 def _in_view(shape: Any, x: Any, y: Any, half: Any, p: Any, rows: Any, columns: Any) -> Any:
     for xi in (-half, half):
         for eta in (-half, half):
@@ -341,7 +332,7 @@ def _in_view(shape: Any, x: Any, y: Any, half: Any, p: Any, rows: Any, columns: 
     return True
 
 
-@_exact
+@exact
 def _compose_inverse(shape: Any, p: Any, d: Any) -> None:
     """Replace the warp p by p ∘ d⁻¹: exactly for affine shapes, to first order in d for quadratic ones.
 
@@ -377,57 +368,7 @@ def _compose_inverse(shape: Any, p: Any, d: Any) -> None:
 # ---- Whole subsets ---------------------------------------------------------------------------
 
 
-@_exactly_inlined
-def _descent(fx: Any, fy: Any, xi: Any, eta: Any, j: Any) -> None:
-    """Steepest-descent images at one pixel; `j` has as many places as there are parameters."""
-    count = j.size // 2
-    for first, slope in ((0, fx), (count, fy)):
-        j[first], j[first + 1], j[first + 2] = slope, slope * xi, slope * eta
-        if count == 6:
-            j[first + 3], j[first + 4], j[first + 5] = slope * xi * xi, slope * xi * eta, slope * eta * eta
-
-
-@_parallel
-def gram(f: Any, fx: Any, fy: Any, m: Any, width: Any, xs: Any, ys: Any, half: Any, parameters: Any) -> Any:
-    """Sum the products of every two of (1, f, and the steepest-descent images) over each subset.
-
-    Parameters
-    ----------
-    f, fx, fy, m
-        Reference grey, gradients and mask (0 or 1), flat.
-    width
-        Elements per row.
-    xs, ys, half
-        Subset centres, shape (n,), and pixels on either side.
-    parameters
-        6 or 12.
-
-    Returns
-    -------
-    products
-        Shape (n, 2 + parameters, 2 + parameters).
-    """
-    size = 2 + parameters
-    products = np.zeros((xs.size, size, size))
-    for i in prange(xs.size):
-        b = np.ones(size)
-        for eta in range(-half, half + 1):
-            for xi in range(-half, half + 1):
-                q = (ys[i] + eta) * width + xs[i] + xi
-                if m[q] == 0:
-                    continue
-                b[1] = f[q]
-                _descent(fx[q], fy[q], xi, eta, b[2:])
-                for k in range(size):
-                    for n in range(k + 1):
-                        products[i, k, n] += b[k] * b[n]
-        for k in range(size):
-            for n in range(k):
-                products[i, n, k] = products[i, k, n]
-    return products
-
-
-@_parallel
+@parallel
 def solve_subsets(taps: Any, shape: Any, c: Any, sampling: Any, stride: Any, plane: Any, margin: Any,
                   rows: Any, columns: Any, f: Any, fx: Any, fy: Any, m: Any,
                   pixels: Any, mean: Any, norm: Any, average: Any, along: Any, inverse: Any,
@@ -534,7 +475,7 @@ def solve_subsets(taps: Any, shape: Any, c: Any, sampling: Any, stride: Any, pla
     return p, correlation, residual, flag, iterations
 
 
-@_parallel
+@parallel
 def residuals(taps: Any, shape: Any, c: Any, sampling: Any, stride: Any, plane: Any, margin: Any,
               f: Any, m: Any, width: Any, mean: Any, norm: Any,
               xs: Any, ys: Any, half: Any, p: Any) -> Any:  # fmt: skip
@@ -571,118 +512,3 @@ def residuals(taps: Any, shape: Any, c: Any, sampling: Any, stride: Any, plane: 
                 if m[q] != 0:
                     out[i, row, column] = f[q] - mean[i] - scale * (out[i, row, column] - middle)
     return out
-
-
-@_serial
-def spread_weights(f: Any, fx: Any, fy: Any, m: Any, width: Any, mean: Any, norm: Any, average: Any,
-                   along: Any, inverse: Any, xs: Any, ys: Any, half: Any,
-                   on: Any, out: Any) -> None:  # fmt: skip
-    """Add up how every pixel's grey enters a weighted sum of the subsets' affine parameters.
-
-    A gauge reads Σ on·(u, uₓ, u_y, v, vₓ, v_y), `on` of shape (n, 6); each parameter is a weighted sum
-    of the grey values in its subset.  `out`, shape (rows, columns), receives the sum of those weights,
-    so that overlapping subsets share their pixels' noise as they do in truth.
-    """
-    size = average.shape[1]
-    j, row = np.empty(size), np.empty(size)
-    for i in range(xs.size):
-        row[:] = 0.0
-        for k in range(6):
-            which = k if k < 3 else size // 2 + k - 3
-            for a in range(size):
-                row[a] += on[i, k] * inverse[i, which, a]
-        steady, tied = 0.0, 0.0
-        for a in range(size):
-            steady += row[a] * average[i, a]
-            tied += row[a] * along[i, a]
-        for eta in range(-half, half + 1):
-            for xi in range(-half, half + 1):
-                q = (ys[i] + eta) * width + xs[i] + xi
-                if m[q] == 0:
-                    continue
-                _descent(fx[q], fy[q], xi, eta, j)
-                weight = -steady - tied * (f[q] - mean[i]) / norm[i]
-                for a in range(size):
-                    weight += row[a] * j[a]
-                out[ys[i] + eta, xs[i] + xi] += weight
-
-
-# ---- Filtering -------------------------------------------------------------------------------
-
-
-@_inlined
-def _weigh(source: Any, offset: Any, stride: Any, weights: Any, target: Any, first: Any, n: Any) -> None:
-    """target[first + i] = Σ weights[k]·source[offset + k·stride + i], eight taps at a time.
-
-    `weights` holds a multiple of eight.  Eight taps per pass keep what is summed up in registers.
-    """
-    for i in range(_U(n)):
-        target[first + i] = _F(0)
-    for k in range(0, weights.size, 8):
-        a0, a1, a2, a3 = weights[k], weights[k + 1], weights[k + 2], weights[k + 3]
-        a4, a5, a6, a7 = weights[k + 4], weights[k + 5], weights[k + 6], weights[k + 7]
-        o = offset + _U(k) * stride
-        for i in range(_U(n)):
-            target[first + i] += (
-                a0 * source[o + i] + a1 * source[o + stride + i]
-                + a2 * source[o + _U(2) * stride + i] + a3 * source[o + _U(3) * stride + i]
-                + a4 * source[o + _U(4) * stride + i] + a5 * source[o + _U(5) * stride + i]
-                + a6 * source[o + _U(6) * stride + i] + a7 * source[o + _U(7) * stride + i]
-            )  # fmt: skip
-
-
-@_exactly_inlined
-def _mirrored(i: Any, n: Any) -> Any:
-    """Index of the pixel that a place beyond the rim repeats, mirrored about the outermost pixel."""
-    if n == 1:
-        return 0
-    i = i % (2 * n - 2)
-    return i if i < n else 2 * n - 2 - i
-
-
-@_parallel
-def filter_tiles(image: Any, level: Any, down: Any, across: Any, lead: Any, tiles: Any, tile_rows: Any,
-                 tile_columns: Any, margin: Any, stride: Any, plane: Any, out: Any) -> None:  # fmt: skip
-    """Filter an image tile by tile with every pair of a vertical and a horizontal filter.
-
-    Parameters
-    ----------
-    image, level
-        Grey values as stored, shape (rows, columns), and the grey that is taken as zero.
-    down, across
-        Filters, shape (phases, taps), a multiple of eight taps each.
-    lead
-        Taps before a filter's middle.
-    tiles
-        Upper left corners of the tiles in the padded image, shape (n, 2), rows and columns.
-    tile_rows, tile_columns
-        Size of a tile.
-    margin, stride, plane
-        Layout of the result: pixels of margin on every side, elements per row and per plane.
-    out
-        Result, flat: one plane per pair of phases, the vertical phase counting first.
-    """
-    rows, columns = image.shape
-    taps = down.shape[1]
-    for t in prange(tiles.shape[0]):
-        height = min(tile_rows, rows + 2 * margin - tiles[t, 0])
-        width = min(tile_columns, columns + 2 * margin - tiles[t, 1])
-        wide = width + taps
-        grey = np.empty((height + taps) * wide, np.float32)
-        part = np.empty(height * wide, np.float32)
-        for r in range(height + taps):
-            row = _mirrored(tiles[t, 0] + r - lead - margin, rows)
-            first = tiles[t, 1] - lead - margin
-            if first >= 0 and first + wide <= columns:
-                for i in range(wide):
-                    grey[r * wide + i] = _F(image[row, first + i]) - level
-            else:
-                for i in range(wide):
-                    grey[r * wide + i] = _F(image[row, _mirrored(first + i, columns)]) - level
-        for vertical in range(down.shape[0]):
-            for r in range(height):
-                _weigh(grey, _U(r * wide), _U(wide), down[vertical], part, _U(r * wide), wide)
-            for horizontal in range(across.shape[0]):
-                base = (vertical * across.shape[0] + horizontal) * plane + tiles[t, 0] * stride + tiles[t, 1]
-                for r in range(height):
-                    _weigh(part, _U(r * wide), _U(1), across[horizontal], out, _U(base + r * stride), width)

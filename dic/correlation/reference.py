@@ -9,7 +9,7 @@ from numpy.typing import NDArray
 
 from dic.correlation.filters import noise_gains
 from dic.correlation.flags import Flag
-from dic.correlation.kernels import gram
+from dic.correlation.moments import gram
 from dic.correlation.splines import Image, blur, flat, gradients, smooth
 
 Floats = NDArray[np.float64]
@@ -82,7 +82,7 @@ class Estimator:
         """
         half = self.average.shape[1] // 2
         which = np.array([0, 1, 2, half, half + 1, half + 2])
-        return np.linalg.inv(self.inverse[:, which[:, None], which])
+        return np.asarray(np.linalg.inv(self.inverse[:, which[:, None], which]), float)
 
     def noise(self, products: Floats, kept: float) -> tuple[Floats, Floats]:
         """Return how pixel noise enters displacements and residual.
@@ -90,7 +90,7 @@ class Estimator:
         Parameters
         ----------
         products
-            `dic.correlation.kernels.gram` of the images smoothed once more, which is how the noise of
+            `dic.correlation.moments.gram` of the images smoothed once more, which is how the noise of
             raw pixels reaches the sums, shape (n, 2 + p, 2 + p).
         kept
             Variance that white noise of variance one keeps after smoothing.

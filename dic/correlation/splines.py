@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 from scipy import ndimage
 
 from dic.correlation.filters import SPLINES, coefficient_filters, slope_filter, smoothing_filter
-from dic.correlation.kernels import filter_tiles
+from dic.correlation.tiles import filter_tiles
 
 Image = NDArray[np.float32]
 Floats = NDArray[np.float64]

@@ -13,8 +13,8 @@ from numpy.typing import NDArray
 from scipy import ndimage
 
 from dic.correlation.grid import Grid
-from dic.correlation.kernels import spread_weights
 from dic.correlation.matching import Match
+from dic.correlation.moments import spread_weights
 from dic.correlation.reference import Reference
 from dic.correlation.splines import blur
 from dic.errors import PatternError

@@ -11,8 +11,8 @@ from scipy.stats import linregress
 from table import Bench
 
 from dic.correlation import Grid, Prefilter, Reference
-from dic.correlation.kernels import gram
 from dic.correlation.matching import match_frame, residual_gain
+from dic.correlation.moments import gram
 from dic.correlation.noise import probe_noise
 from dic.pattern import axes
 from dic.strain import GaugeHistory, GaugeReader, Reading, Region, gather

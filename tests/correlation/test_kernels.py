@@ -6,7 +6,7 @@ from numba import njit
 from scipy import ndimage
 from scipy.interpolate import BSpline
 
-from dic.correlation import Prefilter, kernels, spline_image
+from dic.correlation import Prefilter, kernels, moments, spline_image
 from dic.correlation.filters import SPLINES
 from dic.correlation.splines import MARGIN, blur, flat, gradients, smooth
 
@@ -175,7 +175,7 @@ def test_gram_is_the_plain_product(picture, parameters):
     mask = np.ones(image.shape, np.float32)
     mask[:18] = 0
     half, x0, y0 = 7, 30, 20
-    found = kernels.gram(
+    found = moments.gram(
         flat(image), flat(fx), flat(fy), flat(mask), WIDTH, np.array([x0]), np.array([y0]), half, parameters
     )[0]
     eta, xi = np.mgrid[-half : half + 1, -half : half + 1].astype(float)
