@@ -120,3 +120,21 @@ def test_the_region_around_a_mask_holds_it(photograph):
     assert around.length == 150
     assert around.width == 140
     np.testing.assert_allclose(around.centre, [129.5, 94.5])
+
+
+def test_one_row_of_subsets_is_enough_for_a_gauge(photograph, matched):
+    """A strip one subset wide: the subsets' own gradients tell what their places cannot."""
+    from dic.correlation import Grid, Settings, prepare_reference
+
+    mask = np.zeros((190, 260), bool)
+    mask[10:180, 114:145] = True
+    rows = np.arange(26, 165, 10)
+    grid = Grid(np.array([129]), rows, np.ones((len(rows), 1), bool), 31, 10)
+    motion = homogeneous(0.01, -0.003, centre=tuple(CENTRE))
+    settings = Settings(full_scale=65535.0)
+    reference = prepare_reference(photograph(), grid.x, grid.y, subset=31, settings=settings, mask=mask)
+    where = Region.around(mask, *axes(0.0))
+    found = GaugeReader(reference, grid, where).read(matched(reference, photograph(motion)))
+    assert found.axial == pytest.approx(0.01, abs=3e-5)
+    assert found.transverse == pytest.approx(-0.003, abs=3e-4)  # from 31 px across
+    assert found.status == "ok"
