@@ -13,6 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dic import provenance
+from dic.errors import InputError
 from dic.frames import open_frames
 from dic.judgement import alignment, reading_doubts
 from dic.measurement import Measurement, Scene
@@ -22,7 +23,8 @@ from dic.properties import evaluate, make_curve
 from dic.report import write_report
 from dic.sequence import tracked_or_stored
 from dic.store import fields
-from dic.store.results import remove_results, write_results
+from dic.store.folder import claim_folder, remove_results
+from dic.store.results import write_results
 from dic.strain import GaugeHistory, gather, gauge_size
 from dic.sync import Clock, LoadRecord, fit_clock, given_clock, read_load_record
 from dic.testfile import TestFile, load
@@ -55,10 +57,7 @@ def measure(
     InputError
         If the input is at fault; the message says what, where, and what to do.
     """
-    test = test if isinstance(test, TestFile) else load(test)
-    folder = Path(out) if out is not None else default_folder(test.path)
-    # First of all, so that a run that fails leaves no earlier results that could be taken for its own.
-    remove_results(folder)
+    test, folder = _opened(test, out)
     source = open_frames(test.frames, test.path.parent)
     record = read_load_record(test.load_record, test.beside(test.load_record.source))
     given_clock(source.time_s, record, test.sync)  # before tracking, which takes longest
@@ -70,6 +69,22 @@ def measure(
     with measurement.to_xarray() as stored:
         write_report(measurement, stored, folder)
     return measurement
+
+
+def _opened(test: TestFile | str | Path, out: str | Path | None) -> tuple[TestFile, Path]:
+    """Return the test and its folder, free of what an earlier run left.
+
+    First of all, so that a run that fails leaves no results that could be taken for its own.
+    """
+    path = test.path if isinstance(test, TestFile) else Path(test)
+    folder = Path(out) if out is not None else default_folder(path)
+    try:
+        test = test if isinstance(test, TestFile) else load(test)
+    except InputError:
+        remove_results(folder)
+        raise
+    claim_folder(folder, test.inputs())
+    return test, folder
 
 
 def default_folder(test_path: Path) -> Path:
@@ -109,7 +124,7 @@ def judged(
         notices=(
             *setup.source.notices,
             *setup.notices,
-            *reading_doubts(history, curve),
+            *reading_doubts(history, curve, extensometer_asked=test.gauge.length is not None),
             *property_doubts(found.properties, test.specimen, test.load_record.force_uncertainty),
         ),
         provenance=provenance.collect(test, record, str(fields.stored_attributes(folder)["frames_sha256"])),

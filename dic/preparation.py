@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import Any
 
@@ -102,7 +103,11 @@ def set_up(test: TestFile, source: FrameSource) -> Setup:
         scale_mm=scale_mm,
         extensometer_px=length,
         quality={**quality, "reference_frames": float(reference.frames)},
-        notices=(*axis_doubts(coupon), *doubts(quality, grid.subset)),
+        notices=(
+            *_subset_taken(test.correlation.subset, grid),
+            *axis_doubts(coupon),
+            *doubts(quality, grid.subset),
+        ),
     )
 
 
@@ -140,6 +145,14 @@ def _grid(test: TestFile, mask: NDArray[np.bool_], region: Region, length: float
             remedy="enlarge the region, make the subset smaller, or check the pattern",
         )
     return grid
+
+
+def _subset_taken(wanted: int, grid: Grid) -> Iterator[Notice]:
+    if grid.subset != wanted:
+        yield Notice(
+            "subset_even",
+            f"A subset has a middle pixel, so correlation.subset = {wanted} was taken as {grid.subset}.",
+        )
 
 
 def _reference_frames(source: FrameSource, said: int | tuple[int, int] | None) -> tuple[int, int]:

@@ -56,7 +56,6 @@ def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[M
     }
     mapper = StrainMapper(window, grid.step, (setup.region.axial, setup.region.transverse))
     measured = 0
-    folder.mkdir(parents=True, exist_ok=True)
     with (
         ThreadPoolExecutor(1) as hashing,
         fields.FieldsWriter(folder, grid, source.time_s, attributes) as writer,

@@ -215,6 +215,12 @@ class TestFile(Section):
         """Return the path of a file that the test file names relative to itself."""
         return self.path.parent / name
 
+    def inputs(self) -> list[Path]:
+        """List the files and folders that the test is read from, whether they exist or not."""
+        frames = self.beside(self.frames.source)
+        named = [self.path, self.beside(self.load_record.source), frames, frames.parent]
+        return named + ([self.beside(self.frames.times)] if self.frames.times else [])
+
 
 Model = TypeVar("Model", bound=BaseModel)
 

@@ -84,26 +84,56 @@ def edited(path, old, new):
     return path
 
 
+def append(path, text):
+    with path.open("a") as file:
+        file.write(f"\n{text}\n")
+
+
+class TrackedAgainError(Exception):
+    pass
+
+
+def tracked_again(*_):
+    raise TrackedAgainError
+
+
 def test_a_second_run_with_other_dimensions_does_not_track_again(copy, monkeypatch):
     first = dic.measure(copy)
     edited(copy, 'thickness = "2 mm"', 'thickness = "4 mm"')
 
-    def never(*_):
-        raise AssertionError("tracked again")
-
-    monkeypatch.setattr("dic.sequence.track", never)
+    monkeypatch.setattr("dic.sequence.track", tracked_again)
     second = dic.measure(copy)
     np.testing.assert_array_equal(first.history.axial, second.history.axial)
     ratio = first.properties["youngs_modulus"].value / second.properties["youngs_modulus"].value
     assert ratio == pytest.approx(2.0, rel=1e-6)
 
 
-def test_changed_frames_or_settings_are_tracked_again(copy):
-    first = dic.measure(copy)
-    with copy.open("a") as file:
-        file.write("\n[correlation]\nsubset = 25\n")
-    second = dic.measure(copy)
-    assert not np.array_equal(first.history.axial, second.history.axial)
+def brighter(k, image):
+    return image + (k == 5)  # one frame only; no grey value is near the top
+
+
+@pytest.mark.parametrize(
+    "change",
+    [
+        lambda test: append(test, "[correlation]\nsubset = 25"),
+        lambda test: append(test, "[maps]\nwindow = 7"),
+        lambda test: overwrite_frames(test, brighter),
+    ],
+)
+def test_changed_frames_or_settings_are_tracked_again(copy, monkeypatch, change):
+    dic.measure(copy)
+    change(copy)
+    monkeypatch.setattr("dic.sequence.track", tracked_again)
+    with pytest.raises(TrackedAgainError):
+        dic.measure(copy)
+
+
+def test_an_even_subset_is_said(copy):
+    append(copy, "[correlation]\nsubset = 24")
+    found = dic.measure(copy)
+    assert found.scene.subset_px == 25
+    (said,) = (notice.text for notice in found.notices if notice.code == "subset_even")
+    assert "24 was taken as 25" in said
 
 
 def test_the_same_input_gives_the_same_results(copy, tmp_path):
@@ -180,10 +210,33 @@ def test_wrong_input_is_one_clear_sentence_and_leaves_no_result(copy, kind):
     assert not any(name.endswith(".part") for name in left)
 
 
-def test_a_failing_rerun_takes_the_old_results_away(copy):
-    dic.measure(copy, copy.parent / "out")
-    with copy.open("a") as file:
-        file.write('\n[sync]\noffset = "1 h"\n')
+#: What of a result folder may outlive a run that failed: the fields are no result, and are not used
+#: unless they fit.
+NO_RESULT = {"fields.nc"}
+
+
+@pytest.mark.parametrize("mistake", ['[sync]\noffset = "1 h"', "[sink]\noffset = 1", "[sync"])
+def test_a_failing_rerun_takes_the_old_results_away(copy, mistake):
+    out = copy.parent / "out"
+    dic.measure(copy, out)
+    assert len(list((out / "figures").iterdir())) > 4
+    append(copy, mistake)
     with pytest.raises(InputError):
-        dic.measure(copy, copy.parent / "out")
-    assert not (copy.parent / "out" / "results.json").exists()
+        dic.measure(copy, out)
+    assert {path.name for path in out.rglob("*.*")} <= NO_RESULT
+
+
+def test_a_load_record_with_a_results_name_survives(copy):
+    """A record may be called history.csv, and the results may be wanted beside it."""
+    record = copy.with_name("machine.csv").rename(copy.with_name("history.csv"))
+    edited(copy, "machine.csv", "history.csv")
+    before = record.read_bytes()
+    with pytest.raises(InputError, match=r"'history\.csv' is read by the test"):
+        dic.measure(copy, copy.parent)
+    assert record.read_bytes() == before
+
+
+def test_results_may_lie_beside_the_inputs(copy):
+    dic.measure(copy, copy.parent)
+    again = dic.measure(copy, copy.parent)
+    assert np.isfinite(again.properties["youngs_modulus"].value)

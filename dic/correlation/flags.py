@@ -14,8 +14,7 @@ class Flag(IntEnum):
     OUT_OF_VIEW = 3
     NOT_CONVERGED = 4
     DECORRELATED = 5
-    NO_FRAME = 6
-    SATURATED = 7
+    SATURATED = 6
 
 
 #: What each flag means, for people.
@@ -26,6 +25,5 @@ MEANING = {
     Flag.OUT_OF_VIEW: "moved out of the picture",
     Flag.NOT_CONVERGED: "the matching did not settle",
     Flag.DECORRELATED: "the pattern no longer resembles its reference",
-    Flag.NO_FRAME: "the frame could not be read",
     Flag.SATURATED: "too many clipped pixels",
 }

@@ -58,7 +58,7 @@ class FieldsWriter:
     time_s
         Camera time of every frame, s.
     attributes
-        Settings that readers of the file need, and the key of `stored_key`.
+        Settings that readers of the file need, and the ``tracking_key`` of `dic.sequence`.
     """
 
     def __init__(
@@ -82,7 +82,8 @@ class FieldsWriter:
         file.create_variable("y", ("y",), data=grid.rows).attrs["units"] = "px"
         file.create_variable("x", ("x",), data=grid.columns).attrs["units"] = "px"
         for name, (dtype, unit, meaning) in _VARIABLES.items():
-            fill = Flag.NO_FRAME if dtype == "u1" else np.nan
+            # A fill value would make xarray read the flags as floats, and every frame is written whole.
+            fill = None if dtype == "u1" else np.nan
             variable = file.create_variable(
                 name, ("frame", "y", "x"), dtype, fillvalue=fill, chunks=(1, *grid.shape)
             )

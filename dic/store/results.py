@@ -37,29 +37,19 @@ def write_results(measurement: Measurement, folder: Path) -> None:
         If the folder cannot be written.
     """
     table = history_table(measurement.history, measurement.curve)
+    table["name"] = [as_text(name) for name in table["name"]]
     rows = table.to_csv(index=False, na_rep="NaN", lineterminator="\n")
     text = json.dumps(results_of(measurement), indent=2, ensure_ascii=False, allow_nan=False)
     write_whole(folder, "history.csv", encoded(rows))
     write_whole(folder, "results.json", encoded(text + "\n"))
 
 
-def remove_results(folder: Path) -> None:
-    """Remove what an earlier run left, so that a run that fails leaves nothing that looks like its result.
+def as_text(cell: str) -> str:
+    """Return a file name so that a spreadsheet shows it and does not take it for a formula.
 
-    Raises
-    ------
-    StoreError
-        If a file cannot be removed.
+    An apostrophe before what a formula may begin with; common practice (OWASP, "CSV injection").
     """
-    for name in ("results.json", "history.csv", "report.html"):
-        try:
-            (folder / name).unlink(missing_ok=True)
-        except OSError as error:
-            raise StoreError(
-                f"the earlier result cannot be removed ({error.strerror})",
-                where=str(folder / name),
-                remedy="close the file where it is open, or choose another folder with --out",
-            ) from error
+    return f"'{cell}" if cell.startswith(("=", "+", "-", "@", "\t", "\r")) else cell
 
 
 def results_of(measurement: Measurement) -> dict[str, Any]:

@@ -38,10 +38,33 @@ def test_a_wrong_input_is_status_2_and_one_sentence(tmp_path):
     assert "Traceback" not in found.stderr
 
 
+TEST = """
+[specimen]
+width = 10
+thickness = 1
+[frames]
+source = "frames"
+rate = 5
+[load_record]
+source = "machine.csv"
+time = "Time"
+force = "Force"
+"""
+
+
 def test_a_missing_file_is_status_2(tmp_path):
     found = tauten("run", tmp_path / "none.toml")
     assert found.returncode == 2
     assert "none.toml" in found.stderr
+
+
+def test_a_folder_that_cannot_be_made_is_status_2(tmp_path):
+    """Nobody can make a folder below a file, not even root."""
+    (tmp_path / "test.toml").write_text(TEST)
+    found = tauten("run", tmp_path / "test.toml", "--out", tmp_path / "test.toml" / "out")
+    assert found.returncode == 2
+    assert "cannot be made" in found.stderr
+    assert "Traceback" not in found.stderr
 
 
 def test_an_unknown_command_is_status_2():

@@ -39,6 +39,8 @@ def test_xarray_opens_what_was_written(tmp_path):
         np.testing.assert_allclose(found.x, GRID.columns)
         np.testing.assert_allclose(found.time, [0, 0.2, 0.4])
         assert float(found.u.sel(frame=2, y=15, x=20)) == 2.0
+        assert found.flag.dtype == np.uint8
+        assert found.flag.attrs["flag_meanings"].split()[Flag.SATURATED] == "saturated"
         assert np.isnan(found.u.values[:, ~GRID.inside]).all()
         assert (found.flag.values[:, ~GRID.inside] == Flag.MASKED).all()
         assert np.isnan(found.u.values[found.flag.values == Flag.DECORRELATED]).all()

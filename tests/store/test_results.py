@@ -13,7 +13,7 @@ import pytest
 
 from dic.errors import StoreError
 from dic.properties.result import Property
-from dic.store.results import encoded, remove_results, results_of, write_results, write_whole
+from dic.store.results import encoded, results_of, write_results, write_whole
 
 
 def test_json_says_what_was_measured(measurement, tmp_path):
@@ -141,15 +141,12 @@ def test_a_link_in_the_folder_is_replaced_and_not_followed(tmp_path):
     assert (folder / "results.json").read_bytes() == b"{}"
 
 
-def test_earlier_results_can_be_removed(measurement, tmp_path):
-    write_results(measurement, tmp_path)
-    (tmp_path / "notes.txt").write_text("the user's own")
-    remove_results(tmp_path)
-    remove_results(tmp_path / "never made")
-    assert [path.name for path in tmp_path.iterdir()] == ["notes.txt"]
-
-
-def test_an_earlier_result_that_stays_is_reported(tmp_path):
-    (tmp_path / "results.json").mkdir()
-    with pytest.raises(StoreError, match="earlier result"):
-        remove_results(tmp_path)
+def test_a_name_that_a_spreadsheet_would_compute_is_text(measurement, tmp_path):
+    history = measurement.history
+    names = ("=1+1.tif", "@x.tif", "+1.tif", "-1.tif", *history.name[4:])
+    write_results(
+        dataclasses.replace(measurement, history=dataclasses.replace(history, name=names)), tmp_path
+    )
+    read = pd.read_csv(tmp_path / "history.csv")["name"]
+    assert read[:4].tolist() == ["'=1+1.tif", "'@x.tif", "'+1.tif", "'-1.tif"]
+    assert read[4:].tolist() == list(history.name[4:])
