@@ -26,14 +26,14 @@ def alignment(history: GaugeHistory, found: Evaluation) -> dict[str, float]:
     }
 
 
-def reading_doubts(history: GaugeHistory, curve: Curve) -> list[Notice]:
-    """Return a warning for frames without strain, without extensometer, or without force."""
+def reading_doubts(history: GaugeHistory, curve: Curve, *, extensometer_asked: bool) -> list[Notice]:
+    """Return a warning for frames without strain, without force, or without an extensometer asked for."""
     strain, ends = np.isnan(history.axial), np.isnan(history.extensometer)
     cases = (
         ("frames_lost", strain, "could not be measured", "see the column status of history.csv"),
         (
             "extensometer_lost",
-            ends & ~strain & ~ends.all(),
+            ends & ~strain & extensometer_asked,
             "have no extensometer reading because an end of the gauge left the picture or was lost",
             "see the column status of history.csv",
         ),
