@@ -41,8 +41,12 @@ def test_photographs_shifted_by_fourier_phase(prepared, matched, name, shift):
 
 
 def test_enhanced_correlation_coefficient_agrees(photograph, prepared, matched):
-    """Reference: cv2.findTransformECC (Evangelidis & Psarakis 2008, doi 10.1109/TPAMI.2008.113), which
-    itself is good to about 0.05 px and 200 µm/m; three times that is allowed."""
+    """Reference: cv2.findTransformECC (Evangelidis & Psarakis 2008, doi 10.1109/TPAMI.2008.113).
+
+    It interpolates linearly and so is off the motion's formula by 0.013 px in the mean, 0.02 px at the
+    rim and 180 µm/m; half as much again is allowed, and 0.025 px at a point for this program's noise.
+    This program's own mean is held against the formula: its noise over 187 subsets is 0.3 mpx.
+    """
     motion = homogeneous(0.004, -0.0012, 0.001, centre=(130, 95), shift=(0.7, -0.4))
     one, other = photograph(noise=0.01), photograph(motion, noise=0.01, frame=1)
     _, warp = cv2.findTransformECC(
@@ -53,10 +57,14 @@ def test_enhanced_correlation_coefficient_agrees(photograph, prepared, matched):
     found = matched(reference, other)
     points = np.stack([reference.x, reference.y, np.ones_like(reference.x)])
     expected = warp @ points - points[:2]
-    np.testing.assert_allclose(found.u, expected[0], atol=0.15)
-    np.testing.assert_allclose(found.v, expected[1], atol=0.15)
+    for part, reference_part in ((found.u, expected[0]), (found.v, expected[1])):
+        np.testing.assert_allclose(part, reference_part, atol=0.045)
+        assert np.mean(part - reference_part) == pytest.approx(0.0, abs=0.02)
     slope = np.polyfit(reference.y, found.v, 1)[0]
-    assert slope == pytest.approx(float(warp[1, 1]) - 1, abs=6e-4)
+    assert slope == pytest.approx(float(warp[1, 1]) - 1, abs=2.7e-4)
+    x, y = motion(reference.x.astype(float), reference.y.astype(float))
+    assert np.mean(found.u - (x - reference.x)) == pytest.approx(0.0, abs=2e-3)
+    assert np.mean(found.v - (y - reference.y)) == pytest.approx(0.0, abs=2e-3)
 
 
 def test_phase_cross_correlation_agrees(photograph, prepared, matched):

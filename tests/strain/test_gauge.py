@@ -40,14 +40,30 @@ def exact_match(reference, motion):
 
 @pytest.mark.parametrize("angle", [0.0, 7.0, 90.0, -30.0])
 def test_readings_of_a_homogeneous_deformation_are_exact(photograph, prepared, angle):
-    """Closed form: the plane fit of a linear field is the field, so only rounding is allowed."""
+    """Closed form: material lines along and across become the columns of the deformation gradient.
+
+    The motion's axis points down and the gauge's up, so that the shear changes its sign.  The plane fit
+    of a linear field is the field: only rounding is allowed.
+    """
     reference = prepared(photograph(noise=0.01))
     motion = homogeneous(0.013, -0.004, 0.002, axis_angle_deg=angle, centre=tuple(CENTRE), shift=(3, -2))
     found = reader_of(reference, region(angle)).read(exact_match(reference, motion))
-    assert found.axial == pytest.approx(0.013, abs=1e-5)
-    assert found.transverse == pytest.approx(-0.004, abs=1e-5)
-    assert abs(found.shear) == pytest.approx(0.002, rel=0.03)
-    assert found.extensometer == pytest.approx(found.axial, abs=1e-5)
+    along, across = np.array([-0.001, 1.013]), np.array([0.996, -0.001])
+    lengths = np.linalg.norm(along), np.linalg.norm(across)
+    assert found.axial == pytest.approx(lengths[0] - 1, abs=1e-12)
+    assert found.transverse == pytest.approx(lengths[1] - 1, abs=1e-12)
+    assert found.shear == pytest.approx(np.arcsin(along @ across / np.prod(lengths)), abs=1e-12)
+    assert found.extensometer == pytest.approx(found.axial, abs=1e-12)
+
+
+@pytest.mark.parametrize(
+    ("angle", "along", "across"), [(0.0, 2.0, 3.0), (90.0, 3.0, -2.0), (-90.0, -3.0, 2.0)]
+)
+def test_the_shift_has_its_sign(photograph, prepared, angle, along, across):
+    """Three px to the right and two up, as the gauge's axes see it: up and right, right and down, ..."""
+    reference = prepared(photograph(noise=0.01))
+    found = reader_of(reference, region(angle)).read(exact_match(reference, rigid(3, -2)))
+    assert found.shift_px == pytest.approx((along, across), abs=1e-12)
 
 
 def test_rigid_rotation_is_no_strain(photograph, prepared):
@@ -59,12 +75,13 @@ def test_rigid_rotation_is_no_strain(photograph, prepared):
         assert strain == pytest.approx(0.0, abs=1e-12)
 
 
-def test_bending_is_read_at_the_edge(photograph, prepared):
-    """Bending adds κ·t; the reading is its value half the region's width from the axis."""
+@pytest.mark.parametrize("curvature", [1e-6, -1e-6])
+def test_bending_is_read_at_the_edge(photograph, prepared, curvature):
+    """Bending adds κ·t; the reading is its value half the region's width to the right of the axis."""
     reference = prepared(photograph(noise=0.01), step=8)
-    bent = Bending(homogeneous(1e-3, -3e-4, centre=tuple(CENTRE)), 0.0, 1e-6, 0.3)
+    bent = Bending(homogeneous(1e-3, -3e-4, centre=tuple(CENTRE)), 0.0, curvature, 0.3)
     found = reader_of(reference, region(width=120), step=8).read(exact_match(reference, bent))
-    assert abs(found.bending) == pytest.approx(1e-6 * 60, rel=1e-3)
+    assert found.bending == pytest.approx(curvature * 60, rel=1e-3)
     # subsets weigh by their texture, so their middle lies up to 3 px beside the axis: κ·3 px
     assert found.axial == pytest.approx(1e-3, abs=3e-6)
 
