@@ -157,9 +157,10 @@ def _quality(setup: Setup, history: GaugeHistory) -> dict[str, float]:
         "pixel_mm": setup.scale_mm,
         "subsets": float(setup.grid.inside.sum()),
         "valid_fraction": float(np.nanmedian(history.valid_fraction)),
-        "periodic_error_px": periodic.amplitude_px,
-        "u_periodic_error_px": periodic.u_amplitude_px,
-        "periodic_error_corrected": float(periodic.applied),
+        "periodic_error_px": periodic.amplitudes_px[0],
+        "u_periodic_error_px": periodic.u_amplitudes_px[0],
+        "periodic_error_second_px": periodic.amplitudes_px[1],
+        "periodic_error_corrected": float(any(periodic.applied)),
     }
 
 

@@ -63,12 +63,13 @@ MEANINGS = {
     ),
     "periodic_error_px": (
         "Periodic error of the interpolation",
-        "Amplitude C of C·sin(2πu) as this test shows it, u in px.",
+        "Amplitude C of C·sin(2πu) in the displacements as this test shows it, u in px.",
     ),
+    "periodic_error_second_px": ("Its second wave", "Amplitude of the part that has two waves per pixel."),
     "u_periodic_error_px": ("Its standard uncertainty", "From leaving out one frame at a time."),
     "periodic_error_corrected": (
         "Corrected for it",
-        "1 where the strains were corrected: only where the test determines the amplitude well.",
+        "1 where the strains were corrected: only where the test determines an amplitude well.",
     ),
     "speckle_px": (
         "Speckle size",

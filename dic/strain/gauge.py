@@ -18,7 +18,7 @@ from dic.correlation.moments import spread_weights
 from dic.correlation.reference import Reference
 from dic.correlation.splines import blur
 from dic.errors import PatternError
-from dic.strain.periodic import PeriodicSums, SmoothField, periodic_sums
+from dic.strain.periodic import PeriodicSums, SmoothField, periodic_error, periodic_sums
 from dic.strain.tensors import engineering
 
 Floats = NDArray[np.float64]
@@ -94,7 +94,7 @@ class Reading:
     shift_px: tuple[float, float]
     valid_fraction: float
     status: str
-    response: dict[str, float] = field(default_factory=dict)
+    response: dict[str, Floats] = field(default_factory=dict)
     sums: PeriodicSums = field(default_factory=PeriodicSums)
 
 
@@ -170,7 +170,7 @@ class GaugeReader:
         axial, transverse, shear = engineering(gradient, self.region.axial, self.region.transverse)
         # Each further link is matched between two single frames.
         noise = match.noise_grey * np.sqrt(1.0 + 1.0 / self.reference.frames + 2.0 * match.links)
-        sine = _periodic(affine)
+        false = periodic_error(affine, self.reference.subset)
         return Reading(
             axial=float(axial),
             transverse=float(transverse),
@@ -184,9 +184,9 @@ class GaugeReader:
             shift_px=(float(mean @ self.region.axial), float(mean @ self.region.transverse)),
             valid_fraction=share,
             status="ok" if weights.ends is not None else "no subsets left at an end of the extensometer",
-            response={name: float((sine * on).sum()) for name, on in weights.on.items()},
+            response={name: (false * on).sum(axis=(1, 2)) for name, on in weights.on.items()},
             sums=periodic_sums(
-                weights.smooth, moved[0], moved[1], match.sigma_u[valid], match.sigma_v[valid]
+                weights.smooth, affine, self.reference.subset, match.sigma_u[valid], match.sigma_v[valid]
             ),
         )
 
@@ -302,18 +302,6 @@ def _pooled(x: Floats, y: Floats, information: Floats) -> Floats:
     scale = 1 / np.sqrt(np.diag(normal))
     inverse = np.linalg.inv(normal * np.outer(scale, scale)) * np.outer(scale, scale)
     return np.einsum("ij,mjl->iml", inverse, weighted)
-
-
-def _periodic(affine: Floats) -> Floats:
-    """Return the error of each parameter per px of periodic error C·sin(2πu), shape (m, 6)."""
-    false = np.empty_like(affine)
-    for first in (0, 3):
-        phase = 2 * np.pi * affine[:, first]
-        false[:, first] = np.sin(phase)
-        false[:, first + 1 : first + 3] = (
-            2 * np.pi * np.cos(phase)[:, None] * affine[:, first + 1 : first + 3]
-        )
-    return false
 
 
 def _end(along: Floats, across: Floats, depth: int) -> Floats | None:

@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dic.strain.gauge import Reading
-from dic.strain.periodic import Periodic, determine
+from dic.strain.periodic import HARMONICS, Periodic, determine
 
 Floats = NDArray[np.float64]
 
@@ -92,10 +92,11 @@ def gather(
     columns = {key: column(key) for key in ("bending", "shift_px", "valid_fraction")}
     for key in ("axial", "transverse", "shear", "extensometer"):
         columns[key], columns[f"u_{key}"] = column(key), column(f"u_{key}")
-        if periodic.applied:
-            response = np.array([reading.response.get(key, np.nan) for reading in readings])
-            columns[key] = columns[key] - periodic.amplitude_px * response
-            columns[f"u_{key}"] = np.hypot(columns[f"u_{key}"], periodic.u_amplitude_px * response)
+        nowhere = np.full(len(HARMONICS), np.nan)
+        response = np.array([reading.response.get(key, nowhere) for reading in readings])
+        size, spread = periodic.correction(response)
+        columns[key] = columns[key] - size
+        columns[f"u_{key}"] = np.hypot(columns[f"u_{key}"], spread)
     return GaugeHistory(
         frame=np.arange(len(readings)),
         name=names,

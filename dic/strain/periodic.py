@@ -1,13 +1,14 @@
 """The interpolation's periodic error, determined from the test itself and taken off the gauges.
 
-Interpolation leaves an error of C·sin(2πu) in each displacement component, u in px.  While a coupon
-stretches, its subsets pass through all sub-pixel places, so the test shows C itself: regress what a
-smooth field leaves of the displacements on sin(2πu).
+Interpolation leaves an error of C₁·sin(2πu) + C₂·sin(4πu) in each displacement component, u in px;
+with a good interpolation both are aliasing, of like size.  While a coupon stretches, its subsets pass
+through all sub-pixel places, so the test shows them itself: regress what a smooth field leaves of the
+displacements on the sines.
 """
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
@@ -25,33 +26,53 @@ LEAST_RATIO = 3.0
 LEAST_FRAMES = 5
 
 
+#: Waves per pixel of the error's parts.
+HARMONICS = (1, 2)
+
+
 @dataclass(frozen=True)
 class PeriodicSums:
-    """One frame's share in the regression: Σ residual·sine, Σ sine², and whether it may be used."""
+    """One frame's share in the regression: Σ residual·sine, Σ sine·sine, and whether it may be used.
 
-    product: float = 0.0
-    square: float = 0.0
+    Shapes (h,) and (h, h), h the number of `HARMONICS`.
+    """
+
+    product: Floats = field(default_factory=lambda: np.zeros(len(HARMONICS)))
+    square: Floats = field(default_factory=lambda: np.zeros((len(HARMONICS), len(HARMONICS))))
     usable: bool = False
 
 
 @dataclass(frozen=True)
 class Periodic:
-    """Amplitude of the periodic error.
+    """Amplitudes of the periodic error, one for each of `HARMONICS`.
 
     Attributes
     ----------
-    amplitude_px, u_amplitude_px
-        C and its standard uncertainty, px; NaN where the test does not determine it.
+    amplitudes_px, u_amplitudes_px
+        C₁, C₂ and their standard uncertainties, px; NaN where the test does not determine them.
     frames
-        Frames that it was determined from.
+        Frames that they were determined from.
     applied
-        Whether the gauges were corrected.
+        Which of them the gauges were corrected for.
     """
 
-    amplitude_px: float
-    u_amplitude_px: float
-    frames: int
-    applied: bool
+    amplitudes_px: tuple[float, ...] = (float("nan"),) * len(HARMONICS)
+    u_amplitudes_px: tuple[float, ...] = (float("nan"),) * len(HARMONICS)
+    frames: int = 0
+    applied: tuple[bool, ...] = (False,) * len(HARMONICS)
+
+    def correction(self, response: Floats) -> tuple[Floats, Floats]:
+        """Return what to take off a reading, and the standard uncertainty that this brings.
+
+        Parameters
+        ----------
+        response
+            The reading's error per px of each amplitude, shape (..., h).
+        """
+        use = np.array(self.applied)
+        size = np.where(use, self.amplitudes_px, 0.0) * response
+        spread = np.where(use, self.u_amplitudes_px, 0.0) * response
+        return size.sum(axis=-1), np.sqrt((spread**2).sum(axis=-1))
 
 
 class SmoothField:
@@ -74,29 +95,62 @@ class SmoothField:
         return values - self._basis @ (self._basis.T @ values)
 
 
-def periodic_sums(field: SmoothField, u: Floats, v: Floats, sigma_u: Floats, sigma_v: Floats) -> PeriodicSums:
-    """Return one frame's share in the regression for C; arguments in px, shape (n,)."""
-    product = square = misfit = 0.0
-    for moved, sigma in ((u, sigma_u), (v, sigma_v)):
+def periodic_error(affine: Floats, subset: int) -> Floats:
+    """Return the error of each subset's parameters per px of each amplitude.
+
+    Parameters
+    ----------
+    affine
+        u, uₓ, u_y, v, vₓ, v_y of each subset, px, shape (n, 6).
+    subset
+        Side of a subset, px.
+
+    Returns
+    -------
+    ndarray
+        Shape (h, n, 6).  Under strain a subset covers several sub-pixel places, over which each sine is
+        averaged: sin(2πhu)·sinc(hN·uₓ)·sinc(hN·u_y).
+    """
+    false = np.empty((len(HARMONICS), *affine.shape))
+    for k, waves in enumerate(HARMONICS):
+        for first in (0, 3):
+            phase, slopes = 2 * np.pi * waves * affine[:, first], affine[:, first + 1 : first + 3]
+            averaged = np.sinc(waves * subset * slopes).prod(axis=1)
+            false[k, :, first] = averaged * np.sin(phase)
+            false[k, :, first + 1 : first + 3] = (averaged * np.cos(phase) * 2 * np.pi * waves)[
+                :, None
+            ] * slopes
+    return false
+
+
+def periodic_sums(
+    smooth: SmoothField, affine: Floats, subset: int, sigma_u: Floats, sigma_v: Floats
+) -> PeriodicSums:
+    """Return one frame's share in the regression; arguments as for `periodic_error`, sigmas in px."""
+    product, square = np.zeros(len(HARMONICS)), np.zeros((len(HARMONICS), len(HARMONICS)))
+    misfit, false = 0.0, periodic_error(affine, subset)
+    for first, sigma in ((0, sigma_u), (3, sigma_v)):
+        moved = affine[:, first]
         if np.ptp(moved) < LEAST_SPAN_PX:
             continue
-        residual, sine = field.left_over(moved), field.left_over(np.sin(2 * np.pi * moved))
-        product += float(residual @ sine)
-        square += float(sine @ sine)
+        residual = smooth.left_over(moved)
+        sines = np.stack([smooth.left_over(one[:, first]) for one in false])
+        product += sines @ residual
+        square += sines @ sines.T
         misfit = max(misfit, float(residual.std() / np.sqrt(np.mean(sigma**2))))
-    return PeriodicSums(product, square, square > 0.0 and misfit < MOST_RESIDUAL)
+    return PeriodicSums(product, square, bool(square[0, 0] > 0.0 and misfit < MOST_RESIDUAL))
 
 
 def determine(sums: list[PeriodicSums], correct: bool = True) -> Periodic:
-    """Join the frames' shares: C by least squares, its uncertainty by leaving out one frame at a time."""
+    """Join the frames' shares: least squares, uncertainties by leaving out one frame at a time."""
     used = [one for one in sums if one.usable]
-    if len(used) < LEAST_FRAMES:
-        return Periodic(float("nan"), float("nan"), len(used), False)
-    product, square = np.array([s.product for s in used]), np.array([s.square for s in used])
-    amplitude = product.sum() / square.sum()
-    without = (product.sum() - product) / (square.sum() - square)
     n = len(used)
-    uncertainty = float(np.sqrt((n - 1) / n * ((without - without.mean()) ** 2).sum()))
-    return Periodic(
-        float(amplitude), uncertainty, n, bool(correct and abs(amplitude) > LEAST_RATIO * uncertainty)
-    )
+    if n < LEAST_FRAMES:
+        return Periodic(frames=n)
+    products, squares = np.array([one.product for one in used]), np.array([one.square for one in used])
+    amplitudes = np.linalg.solve(squares.sum(axis=0), products.sum(axis=0))
+    rest = squares.sum(axis=0) - squares, (products.sum(axis=0) - products)[..., None]
+    without = np.linalg.solve(*rest)[..., 0]
+    spread = np.sqrt((n - 1) / n * ((without - without.mean(axis=0)) ** 2).sum(axis=0))
+    applied = correct & (np.abs(amplitudes) > LEAST_RATIO * spread)
+    return Periodic(tuple(amplitudes.tolist()), tuple(spread.tolist()), n, tuple(applied.tolist()))

@@ -93,7 +93,7 @@ def pull():
             valid_fraction=np.ones(n),
             status=("ok",) * n,
             bending=np.zeros(n),
-            periodic=Periodic(float("nan"), float("nan"), 0, False),
+            periodic=Periodic(),
         )
         peak = float(np.interp(fracture, STRAIN, STRESS))
         return Pull(

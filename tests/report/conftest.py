@@ -59,7 +59,7 @@ def make_histories():
         valid_fraction=np.where(np.isfinite(axial), 0.998, 0.2),
         status=tuple("too few subsets measured" if k == LOST else "ok" for k in range(n)),
         bending=0.04 * axial,
-        periodic=Periodic(float("nan"), float("nan"), 0, False),
+        periodic=Periodic(),
     )
     clock = Clock(3.37, 0.0041, 0.0, "found from when loading starts", ("The drift was taken as zero.",))
     times = clock.machine_time(camera)
