@@ -44,7 +44,7 @@ def reading_doubts(history: GaugeHistory, curve: Curve, *, extensometer_asked: b
             "check frames.rate or frames.times, and sync.offset",
         ),
     )
-    return [
+    found = [
         Notice(
             code,
             f"{missing.sum()} of {len(history)} frames {what} "
@@ -53,3 +53,12 @@ def reading_doubts(history: GaugeHistory, curve: Curve, *, extensometer_asked: b
         for code, missing, what, remedy in cases
         if missing.any()
     ]
+    if len(curve.spikes_s):
+        found.append(
+            Notice(
+                "force_spikes",
+                f"{len(curve.spikes_s)} single peaks in the force were left out (first: at "
+                f"{curve.spikes_s[0]:.4g} s); check the load cell's cable and the record.",
+            )
+        )
+    return found

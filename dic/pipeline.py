@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dic import provenance
-from dic.errors import InputError
+from dic.errors import ClockError, InputError
 from dic.frames import open_frames
 from dic.judgement import alignment, reading_doubts
 from dic.measurement import Measurement, Scene
@@ -63,7 +63,7 @@ def measure(
     given_clock(source.time_s, record, test.sync)  # before tracking, which takes longest
     setup = set_up(test, source)
     history = read_gauges(test, setup, folder, progress)
-    clock = fit_clock(history.time_s, history.axial, history.u_axial, record, test.sync)
+    clock = _clock(test, setup, history, record)
     measurement = judged(test, setup, history, record, clock, folder)
     write_results(measurement, folder)
     with measurement.to_xarray() as stored:
@@ -102,6 +102,18 @@ def read_gauges(test: TestFile, setup: Setup, folder: Path, progress: Progress |
     return gather(
         readings, setup.source.names, setup.source.time_s, correct=test.correlation.periodic != "off"
     )
+
+
+def _clock(test: TestFile, setup: Setup, history: GaugeHistory, record: LoadRecord) -> Clock:
+    """Fit the clock; if that fails, doubts about the frames that were met before may be the reason."""
+    try:
+        return fit_clock(history.time_s, history.axial, history.u_axial, record, test.sync)
+    except ClockError as error:
+        doubts = [notice.text.rstrip(".") for notice in setup.source.notices]
+        if not doubts:
+            raise
+        remedy = "; ".join([error.remedy, *doubts])
+        raise ClockError(error.what, where=error.where, remedy=remedy) from error
 
 
 def judged(

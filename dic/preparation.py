@@ -19,6 +19,8 @@ from dic.testfile import Correlation, TestFile
 #: Frames averaged into the reference at the most: random error falls by √(1 + 1/n)/√2, so that the
 #: sixteenth frame brings 0.2 %.
 MOST_AVERAGED = 16
+#: A subset smaller than this is never the remedy: it would not hold three speckles of 3 px.
+LEAST_SUBSET = 9
 #: A frame counts as at rest while the coupon's mean motion stays below this; more would blur the mean.
 REST_PX = 0.05
 #: ... and while nothing stretches it by more than this many standard uncertainties.
@@ -139,12 +141,25 @@ def _grid(test: TestFile, mask: NDArray[np.bool_], region: Region, length: float
         wanted[rows[here], columns[here]] = True
     grid = lay_grid(wanted, subset, settings.step or max(subset // 3, 1))
     if not grid.inside.any():
+        smaller = _largest_subset(wanted)
+        cure = (
+            f"set correlation.subset to {smaller} or less" if smaller >= LEAST_SUBSET else "check the pattern"
+        )
         raise PatternError(
             f"no subset of {subset} px fits on the textured area inside the region",
             where="gauge.region and correlation.subset",
-            remedy="enlarge the region, make the subset smaller, or check the pattern",
+            remedy=f"enlarge the region, or {cure}",
         )
     return grid
+
+
+def _largest_subset(mask: NDArray[np.bool_]) -> int:
+    """Return the largest odd side with which a subset still fits on the mask, or less than one."""
+    from scipy.ndimage import distance_transform_cdt
+
+    # in the chessboard metric, how far a square may reach to every side
+    reach = distance_transform_cdt(np.pad(mask, 1), metric="chessboard").max()
+    return 2 * int(reach) - 1
 
 
 def _subset_taken(wanted: int, grid: Grid) -> Iterator[Notice]:

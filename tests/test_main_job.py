@@ -216,6 +216,14 @@ BAD = {
         lambda t: t.write_text(t.read_text() + '\n[sync]\noffset = "1 h"\n'),
         "overlap",
     ),
+    "subset too large": (
+        lambda t: t.write_text(t.read_text() + "\n[correlation]\nsubset = 201\n"),
+        r"set correlation\.subset to 1[0-3]\d or less",
+    ),
+    "frames missing": (
+        lambda t: [(t.parent / "frames" / f"cam_{k:05d}.tif").unlink() for k in range(8, 15)],
+        "Frame numbers jump from cam_00007.tif to cam_00015.tif",
+    ),
     "no texture": (
         lambda t: overwrite_frames(t, lambda k, i: np.full_like(i, 90)),
         "one grey value everywhere",

@@ -34,9 +34,10 @@ STRAIGHT_PX = 0.5
 STEEPEST = 0.1
 #: An edge counts if so many rays, and this share of all that met the coupon, lie on one line.
 LEAST_RAYS, LEAST_SHARE = 30, 0.3
-#: The angle counts as settled below this step, deg; no strain feels it.
+#: The angle counts as settled below this step times the number of rounds, deg: on a short edge it swings by
+#: a few hundredths, which no strain feels.
 SETTLED_DEG = 0.01
-MOST_ROUNDS = 15
+MOST_ROUNDS = 8
 #: Smaller steps are halved: which rays lie on the line changes with it, and the angle could swing.
 GENTLE_DEG = 0.2
 
@@ -117,14 +118,14 @@ def long_edges(grey: NDArray[np.float32], mask: Mask, angle_deg: float, *, turn:
         Left and right one; None where there is no straight edge in view.
     """
     outline = np.nonzero(mask ^ ndimage.binary_erosion(mask, border_value=1))
-    for _ in range(MOST_ROUNDS):
+    for done in range(1, MOST_ROUNDS + 1):
         edges = _edge(grey, outline, angle_deg, -1), _edge(grey, outline, angle_deg, 1)
         sound = [edge for edge in edges if edge is not None]
         if not turn or not sound:
             return angle_deg, edges
         slope = np.average([edge.slope for edge in sound], weights=[edge.weight for edge in sound])
         step = float(np.degrees(np.arctan(slope)))
-        if abs(step) < SETTLED_DEG:
+        if abs(step) < SETTLED_DEG * done:
             return angle_deg, edges
         angle_deg += step if abs(step) > GENTLE_DEG else step / 2
     return float("nan"), edges

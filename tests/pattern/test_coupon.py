@@ -58,6 +58,16 @@ def test_axis_and_width_are_found(tilt, margin, width, length, background, hole,
     assert axis_doubts(found) == []
 
 
+@pytest.mark.parametrize(
+    ("tilt", "margin", "background", "turned"), [(6, 25, 0.1, True), (3, 15, 0.95, False)]
+)
+def test_a_short_edge_settles(tilt, margin, background, turned):
+    image = scene(tilt, 230, (180, 230 + 2 * margin), background=background)
+    found = find_coupon(np.ascontiguousarray(image.T) if turned else image)
+    assert abs(off_axis(found, 90 - tilt if turned else tilt)) < 0.15  # 180 px long
+    assert found.width_px == pytest.approx(230, rel=0.004)
+
+
 @pytest.mark.parametrize("texture", [Cosines(4.0, seed=2), Dots(9.0, area=(900, 900), seed=2)])
 def test_other_textures(texture):
     found = find_coupon(scene(2.0, 150, (300, 220), texture=texture))
