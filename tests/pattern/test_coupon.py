@@ -64,7 +64,7 @@ def test_axis_and_width_are_found(tilt, margin, width, length, background, hole,
 def test_a_short_edge_settles(tilt, margin, background, turned):
     image = scene(tilt, 230, (180, 230 + 2 * margin), background=background)
     found = find_coupon(np.ascontiguousarray(image.T) if turned else image)
-    assert abs(off_axis(found, 90 - tilt if turned else tilt)) < 0.15  # 180 px long
+    assert abs(off_axis(found, 90 - tilt if turned else tilt)) < 0.1
     assert found.width_px == pytest.approx(230, rel=0.004)
 
 
