@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-import csv
-import warnings
 from pathlib import Path
 from textwrap import shorten
 
@@ -14,6 +12,7 @@ from numpy.typing import NDArray
 from dic.errors import LoadRecordError, nearest
 from dic.quantities import EXAMPLES, factor, split_header
 from dic.sync.record import LoadRecord
+from dic.tables import read_table
 from dic.testfile import Column
 from dic.testfile import LoadRecord as Section
 
@@ -23,10 +22,6 @@ Floats = NDArray[np.float64]
 MAX_BYTES = 500_000_000
 #: Fewer rows are no test.
 MIN_ROWS = 5
-#: Longest header line that is looked at.
-MAX_HEADER = 100_000
-
-_SEPARATE = "export it as CSV, with semicolons or tabs between columns if numbers have a decimal comma"
 
 _KINDS = {"time": "time", "force": "force", "displacement": "length", "extensometer": "strain"}
 
@@ -34,12 +29,11 @@ _KINDS = {"time": "time", "force": "force", "displacement": "length", "extensome
 def read_load_record(section: Section, path: Path) -> LoadRecord:
     """Read the machine's record from a text table.
 
-    The first line holds the headers; columns are separated by tab, semicolon or comma, whichever of
-    these, in this order, stands in it.  Where the separator is not the comma, numbers may have a
-    decimal comma.  A column is named by its header, by its header without the unit if that is
-    unambiguous, or by its number, counted from 1.  The unit stands in the header, as in "Force (kN)",
-    "Load [lbf]" or "Kraft / N", or in the test file's ``units`` under the header or under the
-    quantity (``time``, ``force``, ``displacement``, ``extensometer``).
+    For headers, separators and decimal commas see `dic.tables`.  A column is named by its header, by
+    its header without the unit if that is unambiguous, or by its number, counted from 1.  The unit
+    stands in the header, as in "Force (kN)", "Load [lbf]" or "Kraft / N", or in the test file's
+    ``units`` under the header or under the quantity (``time``, ``force``, ``displacement``,
+    ``extensometer``).
 
     Parameters
     ----------
@@ -59,7 +53,8 @@ def read_load_record(section: Section, path: Path) -> LoadRecord:
         If the file cannot be read, a column or unit is not understood, a value is not a number, time
         does not increase, or fewer than `MIN_ROWS` rows are there.
     """
-    headers, separator = _headers(path)
+    table = read_table(path, LoadRecordError, key="load_record.source", most_bytes=MAX_BYTES)
+    headers = table.headers
     written = {quantity: getattr(section, quantity) for quantity in _KINDS}
     positions = {
         quantity: _position(column, headers, quantity, path)
@@ -71,13 +66,17 @@ def read_load_record(section: Section, path: Path) -> LoadRecord:
         quantity: _unit(quantity, headers[position], section.units, path)
         for quantity, position in positions.items()
     }
-    table = _table(path, separator, len(headers))
+    if len(table.cells) < MIN_ROWS:
+        raise LoadRecordError(
+            f"holds {len(table.cells)} rows of data, at least {MIN_ROWS} are needed",
+            where=str(path),
+            remedy="export the whole test",
+        )
     values = {
-        quantity: _numbers(table[position], separator, headers[position], path)
-        * _worth(units[quantity], _KINDS[quantity])
+        quantity: table.numbers(position) * _worth(units[quantity], _KINDS[quantity])
         for quantity, position in positions.items()
     }
-    _check_time(values["time"], table.index, path)
+    _check_time(values["time"], table.cells.index, path)
     return LoadRecord(
         path=path,
         time_s=values["time"],
@@ -89,36 +88,6 @@ def read_load_record(section: Section, path: Path) -> LoadRecord:
             for quantity, position in positions.items()
         },
     )
-
-
-def _headers(path: Path) -> tuple[list[str], str]:
-    """Return the headers and the separator."""
-    try:
-        if path.stat().st_size > MAX_BYTES:
-            raise LoadRecordError(
-                f"is larger than {MAX_BYTES // 1_000_000} MB",
-                where=str(path),
-                remedy="export only this test, or at a lower rate",
-            )
-        with path.open(encoding="utf-8-sig", newline="") as file:
-            line = file.readline(MAX_HEADER)
-    except OSError as error:
-        raise LoadRecordError(
-            f"cannot be read ({error.strerror})", where=str(path), remedy="check load_record.source"
-        ) from error
-    except UnicodeDecodeError as error:
-        raise _no_text(path) from error
-    separator = next((mark for mark in "\t;" if mark in line), ",")
-    headers = next(csv.reader([line], delimiter=separator), [])
-    if "\0" in line or not any(header.strip() for header in headers):
-        raise LoadRecordError(
-            "has no line of column headers at its top", where=str(path), remedy="export the record as CSV"
-        )
-    return [header.strip() for header in headers], separator
-
-
-def _no_text(path: Path) -> LoadRecordError:
-    return LoadRecordError("is not UTF-8 text", where=str(path), remedy="export the record as CSV in UTF-8")
 
 
 def _position(column: Column, headers: list[str], quantity: str, path: Path) -> int:
@@ -207,71 +176,6 @@ def _contradicts(in_header: str | None, worth: float, kind: str) -> bool:
         return in_header is not None and _worth(in_header, kind) != worth
     except ValueError:
         return False
-
-
-def _table(path: Path, separator: str, width: int) -> pd.DataFrame:
-    """Read the cells as text, indexed by line of the file, blank lines left out.
-
-    One more column than there are headers is read: text there means that a row's cells are not where
-    the headers say, as with a decimal comma in a file whose separator is the comma.
-    """
-    try:
-        with warnings.catch_warnings():
-            warnings.simplefilter("error", pd.errors.ParserWarning)
-            table = pd.read_csv(
-                path,
-                sep=separator,
-                header=None,
-                names=list(range(width + 1)),
-                index_col=False,
-                skiprows=1,
-                dtype=str,
-                keep_default_na=False,
-                skip_blank_lines=False,
-                encoding="utf-8-sig",
-            )
-    except UnicodeDecodeError as error:
-        raise _no_text(path) from error
-    except (pd.errors.ParserError, pd.errors.ParserWarning, OSError, ValueError) as error:
-        raise LoadRecordError(
-            f"is no table of {width} columns ({shorten(str(error), 120, placeholder=' …')})",
-            where=str(path),
-            remedy=_SEPARATE,
-        ) from error
-    table.index = table.index + 2
-    # A short or blank line leaves cells missing even where empty cells are kept as text.
-    table = table.fillna("")
-    table = table[(table != "").any(axis=1)]
-    longer = np.flatnonzero(table[width] != "")
-    if longer.size:
-        raise LoadRecordError(
-            f"holds more than the {width} cells that the headers name",
-            where=f"{path}, row {table.index[longer[0]]}",
-            remedy=_SEPARATE,
-        )
-    if len(table) < MIN_ROWS:
-        raise LoadRecordError(
-            f"holds {len(table)} rows of data, at least {MIN_ROWS} are needed",
-            where=str(path),
-            remedy="export the whole test",
-        )
-    return table
-
-
-def _numbers(text: pd.Series[str], separator: str, header: str, path: Path) -> Floats:
-    """Turn a column's text into numbers."""
-    if separator != ",":
-        text = text.str.replace(",", ".", regex=False)
-    values = np.asarray(pd.to_numeric(text, errors="coerce"), dtype=np.float64)
-    bad = np.flatnonzero(~np.isfinite(values))
-    if bad.size:
-        cell = shorten(str(text.iloc[bad[0]]), 60, placeholder=" …")
-        raise LoadRecordError(
-            f"'{cell}' is not a number",
-            where=f"{path}, row {text.index[bad[0]]}, column '{header}'",
-            remedy="correct or remove the row",
-        )
-    return values
 
 
 def _check_time(time_s: Floats, lines: pd.Index[int], path: Path) -> None:
