@@ -192,6 +192,7 @@ def whole_run(bench: Bench) -> None:
             source = open_frames(test.frames, folder)
             setup = set_up(test, source)
             stamps: list[float] = []
+            (folder / name).mkdir()
             read_gauges(test, setup, folder / name, lambda *_, s=stamps: s.append(time.perf_counter()))
             rate = (len(stamps) - 6) / (stamps[-1] - stamps[5])
             reading = best_of(lambda s=source: s[7], 9)
