@@ -8,6 +8,8 @@ from collections.abc import Iterator
 from concurrent.futures import ThreadPoolExecutor
 from pathlib import Path
 
+from threadpoolctl import threadpool_limits
+
 from dic import provenance
 from dic.correlation import Match, track
 from dic.errors import TrackingError
@@ -57,6 +59,8 @@ def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[M
     mapper = StrainMapper(window, grid.step, (setup.region.axial, setup.region.transverse))
     measured = 0
     with (
+        # BLAS threads spin for a while after each small product, on the cores that the kernels need.
+        threadpool_limits(1, user_api="blas"),
         ThreadPoolExecutor(1) as hashing,
         fields.FieldsWriter(folder, grid, source.time_s, attributes) as writer,
     ):

@@ -185,9 +185,7 @@ class GaugeReader:
             valid_fraction=share,
             status="ok" if weights.ends is not None else "no subsets left at an end of the extensometer",
             response={name: (false * on).sum(axis=(1, 2)) for name, on in weights.on.items()},
-            sums=periodic_sums(
-                weights.smooth, affine, self.reference.subset, match.sigma_u[valid], match.sigma_v[valid]
-            ),
+            sums=periodic_sums(weights.smooth, affine, false, match.sigma_u[valid], match.sigma_v[valid]),
         )
 
     def _extensometer(self, moved: Floats, weights: _Weights) -> float:

@@ -124,11 +124,11 @@ def periodic_error(affine: Floats, subset: int) -> Floats:
 
 
 def periodic_sums(
-    smooth: SmoothField, affine: Floats, subset: int, sigma_u: Floats, sigma_v: Floats
+    smooth: SmoothField, affine: Floats, false: Floats, sigma_u: Floats, sigma_v: Floats
 ) -> PeriodicSums:
-    """Return one frame's share in the regression; arguments as for `periodic_error`, sigmas in px."""
+    """Return one frame's share in the regression; `false` is the frame's `periodic_error`, sigmas in px."""
     product, square = np.zeros(len(HARMONICS)), np.zeros((len(HARMONICS), len(HARMONICS)))
-    misfit, false = 0.0, periodic_error(affine, subset)
+    misfit = 0.0
     for first, sigma in ((0, sigma_u), (3, sigma_v)):
         moved = affine[:, first]
         if np.ptp(moved) < LEAST_SPAN_PX:

@@ -11,7 +11,7 @@ from table import Bench
 
 from dic.correlation import Prefilter
 from dic.correlation.tracking import seed, settle
-from dic.strain.periodic import HARMONICS, SmoothField, determine, periodic_sums
+from dic.strain.periodic import HARMONICS, SmoothField, determine, periodic_error, periodic_sums
 from synthetic_images import Affine, homogeneous
 
 SHAPE = (420, 620)
@@ -103,7 +103,9 @@ def correction(kind: str, settings: Settings) -> NDArray[np.float64]:
     for k, strain in enumerate(np.linspace(0.003, 0.02, 24)):
         motion = homogeneous(strain, -0.3 * strain, centre=middle, shift=(0.13 * k, 0.37 * k))
         found = matched(reference, noisy(clean(kind, motion, shape), 500 + k), start_at(reference, motion))
-        sums.append(periodic_sums(field, found.affine, reference.subset, found.sigma_u, found.sigma_v))
+        sums.append(
+            periodic_sums(field, found.affine, periodic_error(found.affine, 31), found.sigma_u, found.sigma_v)
+        )
     sines = np.stack([np.sin(2 * np.pi * waves * SHIFTS) for waves in HARMONICS], axis=1)
     return determine(sums).correction(sines)[0]
 

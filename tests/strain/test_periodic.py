@@ -22,7 +22,9 @@ def sums(strain, amplitude, *, disturbed=0.0, noise=SIGMA, shift=0.0):
             for waves, size in ((1, amplitude), (2, -amplitude / 2))
         )
         affine[:, column] = w + false + RNG.normal(0, noise, w.shape)
-    return periodic_sums(field, affine, 31, np.full(X.shape, SIGMA), np.full(X.shape, SIGMA))
+    return periodic_sums(
+        field, affine, periodic_error(affine, 31), np.full(X.shape, SIGMA), np.full(X.shape, SIGMA)
+    )
 
 
 def test_the_amplitude_is_found_within_its_uncertainty():
