@@ -34,11 +34,14 @@ def frames_progress(what: str) -> Iterator[Report]:
         TimeRemainingColumn(),
     )
     with Progress(*columns, console=console) as bar:
-        task = bar.add_task(what, total=None, pace="")
+        # shown from the first frame on: an input that is refused has no progress
+        task = bar.add_task(what, total=None, pace="", visible=False)
 
         def report(done: int, total: int) -> None:
             speed = bar.tasks[task].finished_speed or bar.tasks[task].speed
-            bar.update(task, completed=done, total=total, pace=f"{speed:.1f} frames/s" if speed else "")
+            bar.update(
+                task, visible=True, completed=done, total=total, pace=f"{speed:.1f} frames/s" if speed else ""
+            )
 
         yield report
 
