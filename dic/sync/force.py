@@ -6,7 +6,7 @@ import numpy as np
 from numpy.lib.stride_tricks import sliding_window_view
 from numpy.typing import NDArray
 from scipy.ndimage import median_filter, uniform_filter1d
-from scipy.signal import savgol_filter
+from scipy.signal import oaconvolve
 
 from dic.errors import LoadRecordError
 from dic.sync.record import Clock, LoadRecord
@@ -75,9 +75,14 @@ def smoothed_force(record: LoadRecord, width_s: float) -> Floats:
     Floats
         Force, N, shape (n,).
     """
-    t, force = record.time_s, without_spikes(record)
-    noise_variance = force_noise(record) ** 2
-    best = force.copy()
+    return _smoothed(record, width_s)[0]
+
+
+def _smoothed(record: LoadRecord, width_s: float) -> tuple[Floats, Floats]:
+    """Return the smoothed force and the standard deviation of the noise that is left in it."""
+    t, force, noise = record.time_s, without_spikes(record), force_noise(record)
+    noise_variance = noise**2
+    best, samples = force.copy(), np.ones(len(t))
     for half in _half_windows(t, width_s):
         size = 2 * half + 1
         mean, variance = _about_line(force, half)
@@ -86,7 +91,8 @@ def smoothed_force(record: LoadRecord, width_s: float) -> Floats:
         inside = np.zeros(len(t), dtype=bool)
         inside[half:-half] = t[2 * half :] - t[: -2 * half] <= width_s * (1 + 1e-6)
         best = np.where(straight & inside, mean, best)
-    return best
+        samples = np.where(straight & inside, size, samples)
+    return best, noise / np.sqrt(samples)
 
 
 def force_spikes(record: LoadRecord) -> NDArray[np.bool_]:
@@ -173,7 +179,9 @@ def _about_line(force: Floats, half: int) -> tuple[Floats, Floats]:
     """Return each window's mean and its residual variance about a straight line."""
     size = 2 * half + 1
     mean = uniform_filter1d(force, size)
-    slope = savgol_filter(force, size, polyorder=1, deriv=1, mode="nearest")
+    # A line's least-squares slope; by Fourier transform, because windows may be ten thousand samples long.
+    places = np.arange(half, -half - 1, -1.0)
+    slope = oaconvolve(np.pad(force - force[0], half, mode="edge"), places, "valid") / np.sum(places**2)
     total = uniform_filter1d(force**2, size) - mean**2
     explained = slope**2 * half * (half + 1) / 3
     return mean, np.maximum(total - explained, 0) * size / (size - 2)
@@ -200,9 +208,17 @@ def force_at(record: LoadRecord, clock: Clock, camera_time_s: Floats) -> Floats:
     Floats
         Force, N, shape (n,); NaN outside the record.
     """
+    return force_and_noise_at(record, clock, camera_time_s)[0]
+
+
+def force_and_noise_at(record: LoadRecord, clock: Clock, camera_time_s: Floats) -> tuple[Floats, Floats]:
+    """Return what `force_at` does, and the standard deviation of the noise that is left in it, N."""
     at = clock.machine_time(camera_time_s)
-    smooth = smoothed_force(record, frame_interval(at))
-    return np.interp(at, record.time_s, smooth, left=np.nan, right=np.nan)
+    force, noise = (
+        np.interp(at, record.time_s, values, left=np.nan, right=np.nan)
+        for values in _smoothed(record, frame_interval(at))
+    )
+    return force, noise
 
 
 def frame_interval(times_s: Floats) -> float:
