@@ -28,8 +28,13 @@ class InputError(TautenError):
         self.what, self.where, self.remedy = what, where, remedy
         place = f"{where}: " if where else ""
         cure = f"; {remedy}" if remedy else ""
-        sentence = f"{place}{what}{cure}"
+        sentence = printable(f"{place}{what}{cure}")
         super().__init__(sentence if sentence.endswith(("?", ".")) else f"{sentence}.")
+
+
+def printable(text: str) -> str:
+    """Return a text on one line, without what in a stranger's headers could steer a terminal."""
+    return "".join(letter if letter.isprintable() else " " for letter in text)
 
 
 class TestFileError(InputError):

@@ -3,22 +3,53 @@
 from __future__ import annotations
 
 import tomllib
+from contextlib import suppress
 from math import pi
 from pathlib import Path
-from typing import Annotated, Literal, TypeVar
+from textwrap import shorten
+from typing import Annotated, Any, Literal, TypeVar
 
-from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, ValidationError, model_validator
+from pydantic import (
+    AfterValidator,
+    BaseModel,
+    BeforeValidator,
+    ConfigDict,
+    Field,
+    ValidationError,
+    model_validator,
+)
+from pydantic_core import PydanticCustomError
 
 from dic.errors import TestFileError, nearest
-from dic.quantities import parse
+from dic.quantities import EXAMPLES, parse
 
 #: A test file is a page of text; anything larger is something else.
 MAX_BYTES = 1_000_000
+#: What the usual file systems allow.
+LONGEST_NAME, LONGEST_PATH = 255, 1000
 
 
 def quantity(kind: str) -> BeforeValidator:
     """Return the validator of a quantity that people may write with its unit."""
-    return BeforeValidator(lambda written: parse(written, kind))
+    return BeforeValidator(lambda written: parse(_filled_in(written, EXAMPLES[kind]), kind))
+
+
+def _filled_in(written: Any, example: str) -> Any:
+    """Return what was written unless it is blank, as `tauten new` leaves what only the user knows."""
+    if isinstance(written, str) and not written.strip():
+        raise PydanticCustomError("to_fill_in", "fill it in", {"example": example})
+    return written
+
+
+def _is_name(written: str) -> str:
+    """Return what was written if a file or a column could be called so."""
+    if any(ord(letter) < ord(" ") or letter == "\x7f" for letter in written):
+        raise ValueError("holds a control character, which no name does")
+    if any(len(part.encode()) > LONGEST_NAME for part in written.replace("\\", "/").split("/")):
+        raise ValueError(f"holds a name of more than {LONGEST_NAME} bytes")
+    if len(written) > LONGEST_PATH:
+        raise ValueError(f"is longer than {LONGEST_PATH} characters")
+    return written
 
 
 Length = Annotated[float, quantity("length"), Field(gt=0, allow_inf_nan=False)]
@@ -28,7 +59,11 @@ Scale = Annotated[float, quantity("scale"), Field(gt=0, allow_inf_nan=False)]
 Fraction = Annotated[float, quantity("fraction"), Field(ge=0, lt=1)]
 Strain = Annotated[float, quantity("strain"), Field(allow_inf_nan=False)]
 Stress = Annotated[float, quantity("stress"), Field(allow_inf_nan=False)]
-Column = str | int
+FileName = Annotated[
+    str, BeforeValidator(lambda written: _filled_in(written, "frames")), AfterValidator(_is_name)
+]
+Column = Annotated[str | int, BeforeValidator(lambda written: _filled_in(written, "Force"))]
+Unit = Annotated[str, BeforeValidator(lambda written: _filled_in(written, "kN"))]
 
 
 class Section(BaseModel):
@@ -95,9 +130,9 @@ class Specimen(Section):
 class Frames(Section):
     """Where the frames are and which clock they carry."""
 
-    source: str
+    source: FileName
     rate: Rate | None = None
-    times: str | None = None
+    times: FileName | None = None
     start: Time = 0.0
     reference: int | tuple[int, int] | None = None
 
@@ -113,12 +148,12 @@ class Frames(Section):
 class LoadRecord(Section):
     """The testing machine's record: file, columns, units where the headers are silent."""
 
-    source: str
+    source: FileName
     time: Column
     force: Column
     displacement: Column | None = None
     extensometer: Column | None = None
-    units: dict[str, str] = Field(default_factory=dict)
+    units: dict[str, Unit] = Field(default_factory=dict)
     force_uncertainty: Fraction | None = None
 
 
@@ -256,39 +291,76 @@ def read_toml(path: Path, model: type[Model]) -> Model:
         One sentence about the first thing that is wrong, with its key.
     """
     try:
-        if path.stat().st_size > MAX_BYTES:
-            raise TestFileError("is far too large for a description", where=str(path))
-        content = tomllib.loads(path.read_text(encoding="utf-8-sig"))
-    except OSError as error:
-        raise TestFileError(
-            f"cannot be read ({error.strerror})", where=str(path), remedy="check the path"
-        ) from error
-    except (tomllib.TOMLDecodeError, UnicodeDecodeError, RecursionError) as error:
-        raise TestFileError(f"is not valid TOML ({error})", where=str(path)) from error
-    try:
-        return model.model_validate(content)
+        return model.model_validate(_content(path))
     except ValidationError as error:
         raise _explain(error, model, path) from error
 
 
+def _content(path: Path) -> dict[str, Any]:
+    try:
+        if path.exists() and not path.is_file():  # a pipe or a device may have no end
+            raise TestFileError("is not a file", where=str(path), remedy="name the test file itself")
+        if path.stat().st_size > MAX_BYTES:
+            raise TestFileError("is far too large for a description", where=str(path))
+        return tomllib.loads(path.read_text(encoding="utf-8-sig"))
+    except OSError as error:
+        raise TestFileError(
+            f"cannot be read ({error.strerror})", where=str(path), remedy="check the path"
+        ) from error
+    # the parser lets through what int() and the calendar refuse
+    except (ValueError, RecursionError) as error:
+        raise TestFileError(
+            f"is not valid TOML ({error})", where=str(path), remedy="correct it there"
+        ) from error
+
+
+def sound_sections(path: Path) -> dict[str, Section]:
+    """Read what can be read of a test file whose sections are not all right yet.
+
+    Returns
+    -------
+    dict
+        Each section that is right by itself, under its name.
+
+    Raises
+    ------
+    TestFileError
+        If the file is missing or is not TOML.
+    """
+    content = _content(path)
+    sections: dict[str, Section] = {}
+    for name, field in TestFile.model_fields.items():
+        if isinstance(model := field.annotation, type) and issubclass(model, Section) and name in content:
+            with suppress(ValidationError):
+                sections[name] = model.model_validate(content[name])
+    return sections
+
+
 #: A mistyped key also makes the right one missing, and a choice complains of every alternative.
-_TELLING = {"extra_forbidden": 0, "value_error": 1, "literal_error": 3}
+_TELLING = {"extra_forbidden": 0, "to_fill_in": 1, "value_error": 2, "literal_error": 4}
 
 
 def _explain(error: ValidationError, model: type[BaseModel], path: Path) -> TestFileError:
     """Turn pydantic's most telling complaint into one sentence in the user's terms."""
-    first = min(error.errors(include_url=False), key=lambda said: _TELLING.get(said["type"], 2))
-    *sections, key = [str(part) for part in first["loc"]] or [""]
+    said = error.errors(include_url=False)
+    first = min(said, key=lambda one: _TELLING.get(one["type"], 3))
+    *sections, key = [shorten(str(part), 60, placeholder=" …") for part in first["loc"]] or [""]
     where = f"{path}, [{'.'.join(sections) or key}]"
     if first["type"] == "extra_forbidden":
         known = _keys_at(model, sections)
         return TestFileError(f"'{key}' is not a key of this file", where=where, remedy=nearest(key, known))
+    if first["type"] == "to_fill_in":
+        places = [one["loc"] for one in said if one["type"] == "to_fill_in"]
+        # where a value may be of several kinds, the last part names one of them
+        blank = dict.fromkeys(".".join(str(part) for part in at if "(" not in str(part)) for at in places)
+        example = f'for example {key} = "{first["ctx"]["example"]}"'
+        return TestFileError(f"fill in {' and '.join(blank)}", where=str(path), remedy=example)
     if first["type"] == "missing":
         kind = "key" if sections else "section"
         return TestFileError(f"the {kind} '{key}' is missing", where=where, remedy="add it")
-    said = first["msg"].removeprefix("Value error, ")
-    said = said[:1].lower() + said[1:] if not said.startswith("'") else said
-    return TestFileError(f"{key}: {said}" if sections else said, where=where)
+    what = first["msg"].removeprefix("Value error, ")
+    what = what[:1].lower() + what[1:] if not what.startswith("'") else what
+    return TestFileError(f"{key}: {what}" if sections else what, where=where)
 
 
 def _keys_at(model: type[BaseModel], sections: list[str]) -> list[str]:

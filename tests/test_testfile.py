@@ -1,7 +1,9 @@
+import os
+
 import pytest
 
 from dic.errors import TestFileError
-from dic.testfile import load
+from dic.testfile import load, sound_sections
 
 GOOD = """
 [specimen]
@@ -64,6 +66,18 @@ def test_area_uncertainty_adds_in_squares(tmp_path):
         ("[frames]", "diameter = 12\n[frames]", "a flat coupon has no diameter"),
         ("[frames]", "diameter_uncertainty = 1\n[frames]", "a flat coupon has no diameter_uncertainty"),
         ("[specimen]", '[specimen]\nshape = "round"\ndiameter = 12', "a round coupon has no width"),
+        ("12.5 mm", "", 'fill in specimen.width; for example width = "12.5 mm"'),
+        ('rate = "300 1/min"', 'rate = " "', "fill in frames.rate"),
+        ('source = "frames"', 'source = ""', "fill in frames.source"),
+        ('force = 3', 'force = ""\nunits = { Force = "" }',
+         "fill in load_record.force and load_record.units.Force"),
+        ("[frames]", '[sync]\noffset = ""\n[frames]', "fill in sync.offset;"),
+        ("m.csv", "m\\u0000.csv", "control character"),
+        ("m.csv", "m" * 300, "more than 255 bytes"),
+        ("m.csv", "m/" * 600, "longer than 1000"),
+        ("rate =", "rate_\n=", "not valid TOML"),
+        ('rate = "300 1/min"', "rate = " + "1" * 5000, "not valid TOML"),
+        ('rate = "300 1/min"', "rate = 2026-02-30", "not valid TOML"),
         ("[frames]", "[properties]\nmodulus = { strain = [0.2, 0.1] }\n[frames]", "low before high"),
     ],
 )  # fmt: skip
@@ -78,6 +92,26 @@ def test_not_a_text_file(tmp_path):
     path.write_bytes(b"\xff\xfe\x00")
     with pytest.raises(TestFileError, match="not valid TOML"):
         load(path)
+
+
+@pytest.mark.parametrize("name", ["/dev/zero", "pipe", "folder"])
+def test_what_has_no_end_is_not_read(tmp_path, name):
+    os.mkfifo(tmp_path / "pipe")
+    (tmp_path / "folder").mkdir()
+    with pytest.raises(TestFileError, match="is not a file"):
+        load(tmp_path / name)
+
+
+def test_a_message_is_one_line_that_steers_no_terminal(tmp_path):
+    with pytest.raises(TestFileError) as caught:
+        load(written(tmp_path, GOOD + '"\\u001b[2J\\n" = 1\n'))
+    assert str(caught.value).isprintable()
+
+
+def test_sections_that_are_right_by_themselves(tmp_path):
+    found = sound_sections(written(tmp_path, GOOD.replace("12.5 mm", "") + '[sync]\noffset = "soon"\n'))
+    assert set(found) == {"frames", "load_record"}
+    assert found["frames"].rate == pytest.approx(5.0)
 
 
 def test_far_too_large(tmp_path):
