@@ -54,6 +54,7 @@ def _is_name(written: str) -> str:
 
 Length = Annotated[float, quantity("length"), Field(gt=0, allow_inf_nan=False)]
 Time = Annotated[float, quantity("time"), Field(allow_inf_nan=False)]
+Duration = Annotated[float, quantity("time"), Field(gt=0, allow_inf_nan=False)]
 Rate = Annotated[float, quantity("rate"), Field(gt=0, allow_inf_nan=False)]
 Scale = Annotated[float, quantity("scale"), Field(gt=0, allow_inf_nan=False)]
 Fraction = Annotated[float, quantity("fraction"), Field(ge=0, lt=1)]
@@ -133,15 +134,28 @@ class Frames(Section):
     source: FileName
     rate: Rate | None = None
     times: FileName | None = None
+    clock: Literal["tags", "names", "modified"] | None = None
+    name_time: str | None = None
     start: Time = 0.0
+    exposure: Duration | None = None
     reference: int | tuple[int, int] | None = None
 
     @model_validator(mode="after")
     def _one_clock(self) -> Frames:
-        given = [key for key in ("rate", "times") if getattr(self, key) is not None]
+        # A counter in the names needs a rate to become a time.
+        counted = self.clock == "names" and "{frame}" in (self.name_time or "")
+        if (self.clock == "names") != (self.name_time is not None):
+            raise ValueError('clock = "names" and name_time belong together, and one is missing')
+        if counted and self.rate is None:
+            raise ValueError("{frame} in name_time counts frames, and needs rate beside it")
+        given = [
+            key
+            for key in ("rate", "times", "clock")
+            if getattr(self, key) is not None and not (key == "rate" and counted)
+        ]
         if len(given) != 1:
             found = " and ".join(given) or "none"
-            raise ValueError(f"give either rate or times (found {found})")
+            raise ValueError(f"give one of rate, times or clock (found {found})")
         return self
 
 

@@ -2,112 +2,228 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+from dataclasses import dataclass
+from datetime import datetime
+from itertools import pairwise
+from math import ceil
 from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
 
-from dic.errors import FrameError
-from dic.frames.readers import READERS
-from dic.quantities import factor, split_header
-from dic.tables import Table, read_table
+from dic.errors import FrameError, Notice
+from dic.frames import instants
+from dic.frames.doubts import gap_doubts, listed, number_doubts, order_doubts
+from dic.frames.even import even_rate
+from dic.frames.names import name_pattern, times_in_names
+from dic.frames.tags import Place, Tags, read_tags
+from dic.frames.times import times_from_file
 from dic.testfile import Frames
 
-MOST_BYTES = 50_000_000
+
+@dataclass(frozen=True)
+class FrameClock:
+    """The camera's clock.
+
+    Attributes
+    ----------
+    order
+        Places of the frames in order of time, shape (n,).
+    time_s
+        Time of each frame in that order, s, shape (n,).
+    epoch
+        Date and time of the camera's time zero, on the clock that wrote the stamps, without a time
+        zone; None where only differences of time are known.
+    notices
+        Doubts about the times.
+    """
+
+    order: NDArray[np.int64]
+    time_s: NDArray[np.float64]
+    epoch: datetime | None = None
+    notices: tuple[Notice, ...] = ()
 
 
-def frame_times(section: Frames, folder: Path, names: list[str]) -> NDArray[np.float64]:
-    """Return the time of each frame, s, shape (n,).
+@dataclass(frozen=True)
+class _Stamps:
+    """Instants of the frames in the order of their names, ns."""
+
+    ns: Sequence[int]
+    where: str
+    remedy: str
+    dated: bool = True
+    notices: tuple[Notice, ...] = ()
+
+
+def frame_clock(
+    section: Frames, folder: Path, pages: Sequence[Place], tags: Sequence[Tags] | None = None
+) -> FrameClock:
+    """Return the time of each frame.
 
     Parameters
     ----------
     section
-        ``[frames]`` of the test file: a fixed ``rate``, or ``times``, a table with a column of file
-        names (or none: then one row per frame, in order) and a column of times whose header holds
-        the unit, see `dic.tables`.
+        ``[frames]`` of the test file: a fixed ``rate``; ``times``, a table, see `dic.frames.times`; or
+        a ``clock`` that the files carry themselves.
     folder
         What relative paths start from.
-    names
-        The frames' file names in order.
+    pages
+        The frames in natural order of their names.
+    tags
+        The files' tags, where they are known already.
 
     Raises
     ------
     FrameError
-        If the file cannot be read, misses a frame or a unit, or time does not increase.
+        If a frame has no time, or two have the same.
     """
-    if section.rate is not None:
-        return section.start + np.arange(len(names)) / section.rate
-    assert section.times is not None  # noqa: S101  (the test file's check)
-    time = section.start + _from_file(folder / section.times, names)
-    back = np.flatnonzero(~(np.diff(time) > 0))
-    if len(back):
+    names = [page.path.name for page in pages]
+    if section.clock is None and section.times is None:
+        assert section.rate is not None  # noqa: S101  (the test file's check)
+        time_s = section.start + np.arange(len(names)) / section.rate
+        return FrameClock(np.arange(len(names)), time_s, None, tuple(number_doubts(names)))
+    if section.times is not None:
+        found = times_from_file(folder / section.times, names)
+        stamps = _Stamps(found.ns, section.times, "correct the times file", found.dated)
+        return _ordered(names, stamps, section.start, zero=None if found.dated else 0, keep=not found.named)
+    if section.clock == "names":
+        return _ordered(names, _from_names(section, names), section.start)
+    if section.clock == "modified":
+        return _ordered(names, _from_dates(pages), section.start, keep=True)
+    return _from_tags(section, names, read_tags(pages) if tags is None else tags)
+
+
+def _ordered(
+    names: list[str], stamps: _Stamps, start: float, *, zero: int | None = None, keep: bool = False
+) -> FrameClock:
+    """Put frames in order of their stamps, time counted from the first one or from `zero`.
+
+    With `keep`, stamps that are not in order already are refused.
+    """
+    ns = stamps.ns
+    order = np.array(sorted(range(len(ns)), key=ns.__getitem__), dtype=np.int64)
+    out = next((k for k in range(1, len(ns)) if ns[k] <= ns[k - 1]), None) if keep else None
+    if out is not None:
         raise FrameError(
-            f"time does not increase from frame {names[back[0]]} to {names[back[0] + 1]}",
-            where=section.times,
-            remedy="correct the times file",
+            f"time does not increase from frame {names[out - 1]} to {names[out]}",
+            where=stamps.where,
+            remedy=stamps.remedy,
         )
-    return time
-
-
-def _from_file(path: Path, names: list[str]) -> NDArray[np.float64]:
-    table = read_table(path, FrameError, key="frames.times", most_bytes=MOST_BYTES)
-    column = _time_column(table)
-    time = table.numbers(column) * _seconds(table, column)
-    rows = _rows_by_name(table, names)
-    if rows is not None:
-        return time[rows]
-    if len(time) != len(names):
+    equal = next((k for k in range(1, len(ns)) if ns[order[k]] == ns[order[k - 1]]), None)
+    if equal is not None:
+        count = sum(ns[a] == ns[b] for a, b in pairwise(order))
+        more = f" ({count} such pairs)" if count > 1 else ""
         raise FrameError(
-            f"lists {len(time)} times for {len(names)} frames", where=str(path), remedy="one row per frame"
+            f"frames {names[order[equal - 1]]} and {names[order[equal]]} have the same time{more}",
+            where=stamps.where,
+            remedy=stamps.remedy,
         )
-    return time
+    first = ns[order[0]] if zero is None else zero
+    time_s = start + np.array([(ns[k] - first) / instants.SECOND for k in order])
+    in_order = [names[k] for k in order]
+    notices = (*stamps.notices, *order_doubts(names, order.tolist()), *gap_doubts(in_order, time_s))
+    epoch = _epoch(first, start) if stamps.dated else None
+    return FrameClock(order, time_s, epoch, notices)
 
 
-def _time_column(table: Table) -> int:
-    for position, header in enumerate(table.headers):
-        if split_header(header)[0].lower() in ("time", "t"):
-            return position
-    raise FrameError(
-        "has no column 'time'", where=str(table.path), remedy=f"there are: {', '.join(table.headers)}"
-    )
-
-
-def _seconds(table: Table, column: int) -> float:
-    """Return what the column's unit is worth in seconds."""
-    header = table.headers[column]
-    unit = split_header(header)[1]
-    where = f"{table.path}, column '{header}'"
-    if unit is None:
-        raise FrameError("says no unit", where=where, remedy='write for example "time (s)"')
+def _epoch(first: int, start: float) -> datetime | None:
+    """Return the date and time of the camera's time zero, from the first frame's instant, ns, and time, s."""
     try:
-        return factor(unit, "time")
-    except ValueError as error:
-        raise FrameError(str(error), where=where) from error
-
-
-def _rows_by_name(table: Table, names: list[str]) -> list[int] | None:
-    """Return the row of each frame where the table names frames; None where it lists them in order."""
-    if len(set(names)) < len(names):  # the pages of one file
+        return instants.to_datetime(first - round(start * instants.SECOND))
+    except OverflowError:
         return None
-    for position, header in enumerate(table.headers):
-        cells = table.cells[position].str.strip()
-        if not (cells.isin(names) | cells.str.lower().str.endswith(tuple(READERS))).any():
-            continue
-        rows = {name: row for row, name in enumerate(cells)}
-        missing = [name for name in names if name not in rows]
-        if missing:
-            more = f" and {len(missing) - 1} more" if len(missing) > 1 else ""
-            raise FrameError(
-                f"has no row for frame {missing[0]}{more}",
-                where=f"{table.path}, column '{header}'",
-                remedy="name every frame as its file is named",
-            )
-        twice = cells[cells.isin(names) & cells.duplicated()]
-        if len(twice):
-            raise FrameError(
-                f"names {twice.iloc[0]} twice",
-                where=f"{table.path}, row {twice.index[0]}",
-                remedy="keep one row per frame",
-            )
-        return [rows[name] for name in names]
+
+
+def _from_names(section: Frames, names: list[str]) -> _Stamps:
+    assert section.name_time is not None  # noqa: S101  (the test file's check)
+    try:
+        pattern = name_pattern(section.name_time)
+    except ValueError as error:
+        raise FrameError(str(error), where="frames.name_time") from error
+    ns = times_in_names(pattern, names, section.rate)
+    remedy = "correct frames.name_time so that it says the whole time, or give frames.rate"
+    return _Stamps(ns, f"frames.name_time = '{section.name_time}'", remedy, pattern.dated)
+
+
+def _from_dates(pages: Sequence[Place]) -> _Stamps:
+    ns = []
+    for page in pages:
+        state = page.path.stat()
+        local = datetime.fromtimestamp(state.st_mtime_ns // instants.SECOND)
+        whole = instants.from_parts(*local.timetuple()[:6])
+        assert whole is not None  # noqa: S101  (a date that the system gave)
+        ns.append(whole + state.st_mtime_ns % instants.SECOND)
+    notice = Notice(
+        "clock_modified",
+        "Frame times are the files' modification dates, which say when a file was written, not when the "
+        "shutter opened, and which copying or unpacking may change; give a rate, a times file or another "
+        "clock if there is one.",
+    )
+    where, remedy = (
+        'frames.clock = "modified"',
+        "the files were copied or changed; give a rate or a times file",
+    )
+    return _Stamps(ns, where, remedy, notices=(notice,))
+
+
+def _from_tags(section: Frames, names: list[str], tags: Sequence[Tags]) -> FrameClock:
+    stamps = best_stamps(tags)
+    if stamps is None:
+        without = [name for name, one in zip(names, tags, strict=True) if not any(one.taken)]
+        whose = listed(without) if without else "some of the frames"
+        raise FrameError(
+            f"no time stamp common to all frames ({whose})",
+            where='frames.clock = "tags"',
+            remedy="give a rate or a times file, or take out the files without a stamp",
+        )
+    remedy = "give a rate or a times file"
+    if any(one % instants.SECOND for one in stamps):
+        return _ordered(names, _Stamps(stamps, 'frames.clock = "tags"', remedy), section.start)
+    return _from_whole_seconds(names, stamps, section.start)
+
+
+def best_stamps(tags: Sequence[Tags]) -> list[int] | None:
+    """Return the instants from the tag nearest to the shutter that all frames have, ns; None without."""
+    for column in zip(*(one.taken for one in tags), strict=True):
+        known = [instant for instant in column if instant is not None]
+        if len(known) == len(tags):
+            return known
     return None
+
+
+def _from_whole_seconds(names: list[str], stamps: list[int], start: float) -> FrameClock:
+    """Take the even rate that explains stamps without sub-seconds, or the stamps if they all differ."""
+    where, remedy = 'frames.clock = "tags"', "the stamps are whole seconds: give a rate or a times file"
+    seconds = np.array([one // instants.SECOND for one in stamps], dtype=np.int64)
+    even = even_rate(seconds) if (np.diff(seconds) >= 0).all() else None
+    if even is not None:
+        notice = Notice(
+            "stamps_whole_seconds",
+            f"The files' time stamps are whole seconds; frames were taken as evenly {even.interval_s:.6g} s "
+            f"apart (standard uncertainty {_two_digits(even.u_interval_s)} s), which explains every stamp. "
+            "Give frames.rate if it is known better.",
+        )
+        time_s = start + even.interval_s * np.arange(len(stamps), dtype=np.float64)
+        return FrameClock(
+            np.arange(len(stamps)), time_s, _epoch(round(even.first_s * instants.SECOND), start), (notice,)
+        )
+    coarse = Notice(
+        "stamps_whole_seconds",
+        "The files' time stamps are whole seconds, and no even rate explains them; each time may be wrong by "
+        "up to 1 s. Give a times file if there is one.",
+    )
+    return _ordered(names, _Stamps(stamps, where, remedy, notices=(coarse,)), start)
+
+
+def _two_digits(value: float) -> str:
+    """Write an uncertainty with two digits, rounded up so that it is not understated."""
+    if not value > 0:
+        return "0"
+    unit = 10.0 ** (np.floor(np.log10(value)) - 1)
+    return f"{ceil(value / unit - 1e-9) * unit:.2g}"
+
+
+def exposure_of(section: Frames, pages: Sequence[Place]) -> float | None:
+    """Return the exposure time, s: as given, else as the first file says it; None where it does not."""
+    return section.exposure if section.exposure is not None else read_tags(pages[:1])[0].exposure_s

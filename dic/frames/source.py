@@ -3,10 +3,8 @@
 from __future__ import annotations
 
 import hashlib
-import re
-from collections.abc import Iterator
 from dataclasses import dataclass
-from itertools import pairwise
+from datetime import datetime
 from pathlib import Path
 
 import numpy as np
@@ -14,7 +12,7 @@ from natsort import natsorted, ns
 from numpy.typing import NDArray
 
 from dic.errors import FrameError, Notice
-from dic.frames.clock import frame_times
+from dic.frames.clock import exposure_of, frame_clock
 from dic.frames.readers import READERS, Grey, Page, list_pages, read_page
 from dic.testfile import Frames
 
@@ -33,11 +31,18 @@ class FrameSource:
         Time of each frame on the camera's clock, s, shape (n,).
     notices
         Doubts about the frames.
+    epoch
+        Date and time of the camera's time zero, on the clock that wrote the files' stamps, without a
+        time zone; None where only differences of time are known.
+    exposure_s
+        Exposure time of a frame, s; None where unknown.
     """
 
     pages: tuple[Page, ...]
     time_s: NDArray[np.float64]
     notices: tuple[Notice, ...] = ()
+    epoch: datetime | None = None
+    exposure_s: float | None = None
 
     def __len__(self) -> int:
         return len(self.pages)
@@ -117,29 +122,9 @@ def open_frames(section: Frames, folder: Path) -> FrameSource:
                 where=str(page.path),
                 remedy="all frames of a test have one size and depth; take out what does not belong",
             )
-    names = [page.path.name for page in pages]
-    return FrameSource(pages, frame_times(section, folder, names), tuple(_missing_numbers(names, section)))
-
-
-def _missing_numbers(names: list[str], section: Frames) -> Iterator[Notice]:
-    """Warn of gaps in the numbering, which a fixed rate would turn into wrong times."""
-    numbers = [
-        int(found[-1]) if (found := re.findall(r"\d{1,12}", Path(name).stem)) else None for name in names
-    ]
-    gaps = [
-        (one, other)
-        for (one, a), (other, b) in pairwise(zip(names, numbers, strict=True))
-        if a is not None and b is not None and b - a > 1
-    ]
-    steps = {b - a for a, b in pairwise(n for n in numbers if n is not None)}
-    # Every second number, say, is a way of numbering; a jump among ones is a gap.
-    if section.rate is not None and gaps and 1 in steps:
-        yield Notice(
-            "frame_numbers_missing",
-            f"Frame numbers jump from {gaps[0][0]} to {gaps[0][1]}"
-            + (f" and in {len(gaps) - 1} more places" if len(gaps) > 1 else "")
-            + "; if frames are missing, all later times are too early: give frames.times instead of a rate.",
-        )
+    clock = frame_clock(section, folder, pages)
+    pages = tuple(pages[k] for k in clock.order)
+    return FrameSource(pages, clock.time_s, clock.notices, clock.epoch, exposure_of(section, pages))
 
 
 def _size(page: Page) -> str:

@@ -1,0 +1,47 @@
+"""Instants as whole nanoseconds since 1970, so that stamps keep their last digit; and their text."""
+
+from __future__ import annotations
+
+import re
+from datetime import datetime, timedelta
+
+SECOND = 1_000_000_000
+_ZERO = datetime(1970, 1, 1)
+#: ``2026:05:04 10:20:30`` as EXIF and TIFF write it, or ISO 8601, with any part of a second.
+_STAMP = re.compile(
+    r"\s*(\d{4})[:/.-](\d{1,2})[:/.-](\d{1,2})[T ]"
+    r"\s?(\d{1,2}):(\d{1,2}):(\d{1,2})(?:[.,](\d{1,9}))?[\s\0]*Z?",
+    re.ASCII,
+)
+#: No stamp is longer.
+_LONGEST = 60
+
+
+def from_text(text: str) -> int | None:
+    """Return the instant that a stamp names, on the clock that wrote it; None where it is no stamp."""
+    found = _STAMP.fullmatch(text) if len(text) <= _LONGEST else None
+    if found is None:
+        return None
+    *parts, digits = found.groups()
+    return from_parts(*(int(part) for part in parts), nanoseconds=fraction(digits or ""))
+
+
+def from_parts(
+    year: int, month: int, day: int, hour: int = 0, minute: int = 0, second: int = 0, *, nanoseconds: int = 0
+) -> int | None:
+    """Return the instant of a date and a time of day; None where the calendar has no such day or time."""
+    try:
+        whole = datetime(year, month, day, hour, minute, second) - _ZERO
+    except ValueError:
+        return None
+    return (whole // timedelta(seconds=1)) * SECOND + nanoseconds
+
+
+def fraction(digits: str) -> int:
+    """Return the nanoseconds of the digits behind a second's decimal point, nine of them at most."""
+    return int(digits.ljust(9, "0")[:9])
+
+
+def to_datetime(instant: int) -> datetime:
+    """Return an instant for people, to the microsecond."""
+    return _ZERO + timedelta(microseconds=instant // 1000)
