@@ -1,0 +1,192 @@
+"""What a test file's inputs hold and what will be assumed, found before anything is computed."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from dic.errors import InputError, Notice
+from dic.frames import FrameSource, open_frames
+from dic.inspection.doubts import dimension_doubts, frame_doubts, missing_uncertainties, record_doubts
+from dic.inspection.looking import Progress, look_at_frames, look_at_record
+from dic.inspection.seen import FramesSeen, Inspection
+from dic.sync import LoadRecord, given_clock, read_load_record
+from dic.testfile import Frames, Specimen, Sync, TestFile, load, sound_sections
+from dic.testfile import LoadRecord as RecordSection
+
+
+def inspect(test: TestFile | str | Path, progress: Progress | None = None) -> Inspection:
+    """Read everything that a test file names, and compute nothing.
+
+    Where one input is at fault, its error is kept and the other is still inspected.
+
+    Parameters
+    ----------
+    test
+        A test file, or its path.
+    progress
+        Called after each frame that was read.
+
+    Returns
+    -------
+    Inspection
+        What was seen; its `errors` are empty if a run can begin.
+
+    Raises
+    ------
+    TestFileError
+        If the test file is missing or is not TOML.
+    """
+    errors: list[str] = []
+    warnings: list[Notice] = []
+    path = test.path if isinstance(test, TestFile) else Path(test)
+    sections = _sections(test, errors)
+    source = _attempt(lambda: _opened_frames(sections, path), errors)
+    record = _attempt(lambda: _opened_record(sections, path), errors)
+    seen = None
+    if source is not None:
+        warnings += source.notices
+        seen = look_at_frames(source, sections["frames"], errors, progress)
+        warnings += frame_doubts(seen)
+    if record is not None:
+        warnings += record_doubts(record)
+    warnings += _specimen_doubts(sections, record, seen)
+    return Inspection(
+        test_file=str(path),
+        frames=seen,
+        record=None if record is None else look_at_record(record),
+        overlap=_overlap(source, record, sections, errors, warnings),
+        assumed=tuple(assumptions(sections)),
+        errors=tuple(errors),
+        warnings=tuple(warnings),
+    )
+
+
+def _sections(test: TestFile | str | Path, errors: list[str]) -> dict[str, Any]:
+    """Return the sections that are right, under their names; all of them if the test file is."""
+    if isinstance(test, TestFile):
+        return dict(test)
+    try:
+        return dict(load(test))
+    except InputError as error:
+        found = sound_sections(Path(test))
+        errors.append(str(error))
+        return dict(found)
+
+
+def _attempt(read: Callable[[], Any], errors: list[str]) -> Any:
+    try:
+        return read()
+    except InputError as error:
+        errors.append(str(error))
+        return None
+
+
+def _opened_frames(sections: dict[str, Any], path: Path) -> FrameSource | None:
+    section: Frames | None = sections.get("frames")
+    return None if section is None else open_frames(section, path.parent)
+
+
+def _opened_record(sections: dict[str, Any], path: Path) -> LoadRecord | None:
+    section: RecordSection | None = sections.get("load_record")
+    return None if section is None else read_load_record(section, path.parent / section.source)
+
+
+def _specimen_doubts(
+    sections: dict[str, Any], record: LoadRecord | None, seen: FramesSeen | None
+) -> Iterator[Notice]:
+    specimen: Specimen | None = sections.get("specimen")
+    if specimen is None:
+        return
+    camera = sections.get("camera")
+    yield from dimension_doubts(
+        specimen,
+        most_force=None if record is None else float(np.nanmax(np.abs(record.force_N))),
+        scale=None if camera is None else camera.scale,
+        picture=None if seen is None else max(seen.rows, seen.columns),
+    )
+    section = sections.get("load_record")
+    yield from missing_uncertainties(specimen, None if section is None else section.force_uncertainty)
+
+
+def _overlap(
+    source: FrameSource | None,
+    record: LoadRecord | None,
+    sections: dict[str, Any],
+    errors: list[str],
+    warnings: list[Notice],
+) -> str:
+    """Say how frames and record lie on one clock, as far as that is known before tracking."""
+    if source is None or record is None:
+        return "unknown, because one of the two cannot be read"
+    section: Sync = sections.get("sync") or Sync()
+    filmed = float(source.time_s[-1] - source.time_s[0]) * (1 + section.drift)
+    recorded = float(record.time_s[-1] - record.time_s[0])
+    try:
+        clock = given_clock(source.time_s, record, section)
+    except InputError as error:
+        errors.append(str(error))
+        return "none"
+    if clock is None:
+        if filmed > recorded:
+            warnings.append(
+                Notice(
+                    "record_shorter",
+                    f"The frames last {filmed:.4g} s and the record {recorded:.4g} s, so some frames will "
+                    "have no force; check the frames' clock, and that the whole test was exported.",
+                )
+            )
+        return (
+            f"the offset will be found from the start of loading; the frames last {filmed:.4g} s, the record "
+            f"{recorded:.4g} s"
+        )
+    at = clock.machine_time(source.time_s)
+    inside = (at >= record.time_s[0]) & (at <= record.time_s[-1])
+    if not inside.all():
+        warnings.append(
+            Notice(
+                "frames_outside",
+                f"{int((~inside).sum())} of {len(at)} frames lie outside the record and will have no force; "
+                "check sync.offset.",
+            )
+        )
+    return (
+        f"{int(inside.sum())} of {len(at)} frames lie within the record; they run from {at[0]:.4g} s to "
+        f"{at[-1]:.4g} s of its clock"
+    )
+
+
+def assumptions(sections: dict[str, Any]) -> Iterator[str]:
+    """Say each default in force that bears on the result, a sentence each.
+
+    Parameters
+    ----------
+    sections
+        The sections of a test file that are right, under their names.
+    """
+    frames, camera, gauge = (sections.get(name) for name in ("frames", "camera", "gauge"))
+    sync, properties, correlation = (sections.get(name) for name in ("sync", "properties", "correlation"))
+    if frames is not None and frames.reference is None:
+        yield "Strain counts from the frames at rest at the beginning, up to 16 of them (frames.reference)."
+    if camera is None or camera.scale is None:
+        yield "The scale follows from the coupon's width between its long edges (camera.scale)."
+    if gauge is None or gauge.axis == "auto":
+        yield "The direction of the pull is found from the coupon's long edges (gauge.axis)."
+    if gauge is None or gauge.region == "auto":
+        yield "Strain is averaged over the whole textured part of the coupon (gauge.region)."
+    if gauge is None or gauge.length is None:
+        yield "No extensometer length is asked for: its reading covers the whole region (gauge.length)."
+    if correlation is not None:
+        yield f"Patches of {correlation.subset} px are followed (correlation.subset)."
+    if sync is None or sync.offset == "auto":
+        yield "The clocks are joined where loading starts; some rest must be filmed first (sync.offset)."
+    if sync is None or sync.drift == 0:
+        yield "Camera and machine clock run equally fast (sync.drift)."
+    if properties is None or properties.modulus == "auto":
+        yield "The modulus window is found from the curve (properties.modulus)."
+    if properties is not None:
+        shown = ", ".join(f"{100 * offset:g} %" for offset in properties.proof) or "none"
+        yield f"Proof stresses at offsets of {shown} (properties.proof)."

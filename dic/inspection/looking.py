@@ -1,0 +1,122 @@
+"""Reading frames and load record for what they hold."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from dic.errors import InputError
+from dic.frames import FrameSource
+from dic.inspection.seen import ColumnSeen, Exposure, FramesSeen, RecordSeen
+from dic.sync import LoadRecord
+from dic.testfile import Frames
+
+#: Called with the frames done and the frames there are.
+Progress = Callable[[int, int], None]
+
+#: An interval counts as a gap from this multiple of the usual one.
+GAP = 1.5
+
+
+def look_at_frames(
+    source: FrameSource, section: Frames, errors: list[str], progress: Progress | None
+) -> FramesSeen:
+    """Read every frame once, one in memory beside the one before."""
+    full_scale = source.full_scale()
+    wanted = {0, len(source) // 2, len(source) - 1}
+    exposures, doubles, means = [], [], []
+    before: NDArray[Any] | None = None
+    for index, name in enumerate(source.names):
+        try:
+            grey = source[index]
+        except InputError as error:
+            errors.append(str(error))
+        else:
+            means.append(float(grey.mean()))
+            if before is not None and np.array_equal(grey, before):
+                doubles.append(name)
+            if index in wanted:
+                exposures.append(_exposure(name, grey, full_scale))
+            before = grey
+        if progress is not None:
+            progress(index + 1, len(source))
+    step = np.diff(source.time_s)
+    usual = float(np.median(step))
+    return FramesSeen(
+        count=len(source),
+        rows=source.shape[0],
+        columns=source.shape[1],
+        stored_bits=8 * source.pages[0].dtype.itemsize,
+        full_scale=full_scale,
+        first=source.names[0],
+        last=source.names[-1],
+        first_s=float(source.time_s[0]),
+        last_s=float(source.time_s[-1]),
+        interval_s=usual,
+        shortest_s=float(step.min()),
+        longest_s=float(step.max()),
+        clock=_clock_in_words(section),
+        gaps=tuple((source.names[k], source.names[k + 1]) for k in np.flatnonzero(step > GAP * usual)),
+        doubles=tuple(doubles),
+        exposures=tuple(exposures),
+        brightness_drift=float(np.max(np.abs(np.array(means) / max(means[0], 1e-9) - 1)))
+        if means
+        else np.nan,
+    )
+
+
+def _exposure(name: str, grey: NDArray[Any], full_scale: float) -> Exposure:
+    dark, median, bright = np.percentile(grey, [5, 50, 95])
+    slope = np.diff(grey.astype(np.float32), axis=1)
+    steep = float(np.sqrt(np.mean(slope**2)))
+    return Exposure(
+        frame=name,
+        dark=float(dark),
+        median=float(median),
+        bright=float(bright),
+        clipped=float(np.mean(grey >= full_scale)),
+        detail_px=float(grey.std() / steep) if steep > 0 else float("nan"),
+    )
+
+
+def _clock_in_words(section: Frames) -> str:
+    if section.rate is not None:
+        return f"a fixed rate of {section.rate:g} Hz"
+    if section.times is not None:
+        return f"the file {section.times}"
+    return "the frames themselves"
+
+
+#: Arrays of the load record: quantity, attribute, unit of its values.
+_ARRAYS = (
+    ("time", "time_s", "s"),
+    ("force", "force_N", "N"),
+    ("displacement", "displacement_mm", "mm"),
+    ("extensometer", "extensometer", "1"),
+)
+
+
+def look_at_record(record: LoadRecord) -> RecordSeen:
+    """Return rates, ranges and columns of a load record."""
+    step = np.diff(record.time_s)
+    columns = []
+    for quantity, attribute, unit in _ARRAYS:
+        values = getattr(record, attribute)
+        if values is not None:
+            header = record.columns.get(quantity, quantity)
+            columns.append(
+                ColumnSeen(quantity, header, float(np.nanmin(values)), float(np.nanmax(values)), unit)
+            )
+    return RecordSeen(
+        file=str(record.path),
+        rows=len(record.time_s),
+        first_s=float(record.time_s[0]),
+        last_s=float(record.time_s[-1]),
+        interval_s=float(np.median(step)),
+        shortest_s=float(step.min()),
+        longest_s=float(step.max()),
+        columns=tuple(columns),
+    )

@@ -1,0 +1,49 @@
+"""``tauten inspect`` as a person, or a program, meets it."""
+
+import json
+import subprocess
+import sys
+
+import pytest
+
+from synthetic_images import load_scenario, render
+
+
+def inspected(*arguments, cwd):
+    return subprocess.run(
+        [sys.executable, "-m", "dic_cli.main", "inspect", *arguments],
+        capture_output=True,
+        text=True,
+        cwd=cwd,
+        check=False,
+    )
+
+
+@pytest.fixture(scope="module")
+def virtual_test(tmp_path_factory, small_scenario):
+    folder = tmp_path_factory.mktemp("inspected")
+    (folder / "small.toml").write_text(small_scenario)
+    render(load_scenario(folder / "small.toml"), folder / "made")
+    return folder / "made"
+
+
+def test_a_sound_test(virtual_test):
+    before = set(virtual_test.rglob("*"))
+    found = inspected("test.toml", cwd=virtual_test)
+    assert found.returncode == 0, found.stderr
+    assert "22, from cam_00001.tif to cam_00022.tif" in found.stdout
+    assert "Crosshead (mm)" in found.stdout
+    assert "tauten run test.toml" in found.stdout
+    assert set(virtual_test.rglob("*")) == before
+
+
+def test_json_is_all_there_is_on_stdout_even_if_an_input_is_at_fault(virtual_test):
+    text = (virtual_test / "test.toml").read_text()
+    (virtual_test / "other.toml").write_text(text.replace("machine.csv", "none.csv"))
+    found = inspected("other.toml", "--json", cwd=virtual_test)
+    assert found.returncode == 2
+    said = json.loads(found.stdout)
+    assert said["record"] is None
+    assert said["frames"]["count"] == 22
+    assert "none.csv" in said["errors"][0]
+    assert found.stderr == f"tauten: {said['errors'][0]}\n"
