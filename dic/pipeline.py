@@ -135,6 +135,7 @@ def judged(
         quality=_quality(setup, history),
         notices=(
             *setup.source.notices,
+            *record.notices,
             *setup.notices,
             *reading_doubts(history, curve, extensometer_asked=test.gauge.length is not None),
             *property_doubts(found.properties, test.specimen, test.load_record.force_uncertainty),

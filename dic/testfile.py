@@ -163,11 +163,17 @@ class LoadRecord(Section):
     """The testing machine's record: file, columns, units where the headers are silent."""
 
     source: FileName
-    time: Column
-    force: Column
+    sheet: str | None = None
+    decimal: Literal[".", ","] | None = None
+    segment: Literal["all"] | Annotated[int, Field(ge=1)] | None = None
+    time: Column | None = None
+    force: Column | None = None
     displacement: Column | None = None
     extensometer: Column | None = None
+    extensometer_length: Length | None = None
+    trigger: Column | None = None
     units: dict[str, Unit] = Field(default_factory=dict)
+    tare: bool | Annotated[Time, Field(gt=0)] = False
     force_uncertainty: Fraction | None = None
 
 

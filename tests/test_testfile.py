@@ -59,7 +59,7 @@ def test_area_uncertainty_adds_in_squares(tmp_path):
         ('thickness = "0.2 cm"', "", "thickness missing"),
         ('rate = "300 1/min"', "", "give one of rate, times or clock"),
         ('rate = "300 1/min"', 'rate = "5 Hz"\ntimes = "t.csv"', "give one of rate, times or clock"),
-        ('force = 3', "", "the key 'force' is missing"),
+        ('source = "m.csv"', "", "the key 'source' is missing"),
         ("[specimen]", "[specimen", "not valid TOML"),
         ("[frames]", '[gauge]\naxis = "askew"\n[frames]', "'askew' is not an angle"),
         ("[frames]", '[gauge]\naxis = "1e999 deg"\n[frames]', "'1e999 deg' is not a finite angle"),

@@ -4,5 +4,17 @@ from dic.sync.clock import fit_clock, given_clock
 from dic.sync.force import force_at, has_load
 from dic.sync.reading import read_load_record
 from dic.sync.record import Clock, LoadRecord
+from dic.sync.survey import ColumnSurvey, RecordSurvey, look_at_record
 
-__all__ = ["Clock", "LoadRecord", "fit_clock", "force_at", "given_clock", "has_load", "read_load_record"]
+__all__ = [
+    "Clock",
+    "ColumnSurvey",
+    "LoadRecord",
+    "RecordSurvey",
+    "fit_clock",
+    "force_at",
+    "given_clock",
+    "has_load",
+    "look_at_record",
+    "read_load_record",
+]

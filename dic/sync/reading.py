@@ -1,46 +1,50 @@
-"""Reading the testing machine's record: columns by name or number, units from headers or test file."""
+"""Reading the testing machine's record: its columns in internal units, on one running clock."""
 
 from __future__ import annotations
 
+from collections.abc import Iterable, Sequence
+from dataclasses import replace
+from itertools import pairwise
 from pathlib import Path
-from textwrap import shorten
 
 import numpy as np
-import pandas as pd
 from numpy.typing import NDArray
 
-from dic.errors import LoadRecordError, nearest
-from dic.quantities import EXAMPLES, factor, split_header
+from dic.errors import LoadRecordError, Notice
+from dic.sync.columns import Header, Unit, find_columns, headers_of, refuse_stray_units, unit_of
+from dic.sync.idle import tared
+from dic.sync.instants import Instants, Segment, find_segments, from_clock, refuse_backwards, spread_stamps
 from dic.sync.record import LoadRecord
-from dic.tables import read_table
-from dic.testfile import Column
+from dic.tables import Break, Table, read_table
 from dic.testfile import LoadRecord as Section
 
 Floats = NDArray[np.float64]
 
-#: A day at 1 kHz with five columns stays below this; anything larger is something else.
-MAX_BYTES = 500_000_000
+#: Five million numbers, which is what a table may hold, of some twenty characters each.
+MAX_BYTES = 100_000_000
 #: Fewer rows are no test.
 MIN_ROWS = 5
-
-_KINDS = {"time": "time", "force": "force", "displacement": "length", "extensometer": "strain"}
+#: Share of the rows in which time or force may be missing; more is no accident.
+MOST_MISSING = 0.05
+#: Rows in succession in which they may be.
+LONGEST_GAP = 10
 
 
 def read_load_record(section: Section, path: Path) -> LoadRecord:
-    """Read the machine's record from a text table.
+    """Read the machine's record from a text table or a workbook.
 
-    For headers, separators and decimal commas see `dic.tables`.  A column is named by its header, by
-    its header without the unit if that is unambiguous, or by its number, counted from 1.  The unit
-    stands in the header, as in "Force (kN)", "Load [lbf]" or "Kraft / N", or in the test file's
-    ``units`` under the header or under the quantity (``time``, ``force``, ``displacement``,
-    ``extensometer``).
+    For what a table may look like see `dic.tables`.  A column is named by its header, by its header
+    without the unit if that is unambiguous, or by its number, counted from 1; time and force are
+    recognised by their headers if they are not named.  The unit stands in the header, as in "Force (kN)",
+    "Load [lbf]" or "Kraft / N", in a row of its own below, or in the test file's ``units`` under the
+    header or under the quantity.
 
     Parameters
     ----------
     section
         The test file's description of the record.
     path
-        The file, UTF-8 with or without byte-order mark.
+        The file.
 
     Returns
     -------
@@ -50,21 +54,18 @@ def read_load_record(section: Section, path: Path) -> LoadRecord:
     Raises
     ------
     LoadRecordError
-        If the file cannot be read, a column or unit is not understood, a value is not a number, time
-        does not increase, or fewer than `MIN_ROWS` rows are there.
+        If the file cannot be read, a column or unit is not understood, too many values are missing, time
+        runs back or starts anew, or fewer than `MIN_ROWS` rows are there.
     """
-    table = read_table(path, LoadRecordError, key="load_record.source", most_bytes=MAX_BYTES)
-    headers = table.headers
-    written = {quantity: getattr(section, quantity) for quantity in _KINDS}
-    positions = {
-        quantity: _position(column, headers, quantity, path)
-        for quantity, column in written.items()
-        if column is not None
-    }
-    _refuse_stray_units(section.units, headers, path)
+    table = open_record(path, section.decimal, section.sheet)
+    headers = headers_of(table)
+    named = {q: getattr(section, q) for q in ("time", "force", "displacement", "extensometer", "trigger")}
+    columns = find_columns(table, named, headers, path)
+    refuse_stray_units(section.units, headers, path)
     units = {
-        quantity: _unit(quantity, headers[position], section.units, path)
-        for quantity, position in positions.items()
+        quantity: unit_of(quantity, header, section.units, path)
+        for quantity, header in columns.items()
+        if quantity != "trigger" and not (quantity == "time" and table.is_instant(header.position))
     }
     if len(table.cells) < MIN_ROWS:
         raise LoadRecordError(
@@ -72,119 +73,209 @@ def read_load_record(section: Section, path: Path) -> LoadRecord:
             where=str(path),
             remedy="export the whole test",
         )
-    values = {
-        quantity: table.numbers(position) * _worth(units[quantity], _KINDS[quantity])
-        for quantity, position in positions.items()
-    }
-    _check_time(values["time"], table.cells.index, path)
-    return LoadRecord(
+    instants = read_instants(table, columns["time"], units.get("time"))
+    values = {q: _values(table, header, units.get(q)) for q, header in columns.items() if q != "time"}
+    whole = _whole_rows(table, columns, {"time": instants.time_s, "force": values["force"]})
+    rows, time_s, joined = _one_clock(table, instants.time_s, whole, section.segment)
+    record = LoadRecord(
         path=path,
-        time_s=values["time"],
-        force_N=values["force"],
-        displacement_mm=values.get("displacement"),
-        extensometer=values.get("extensometer"),
-        columns={
-            quantity: f"{split_header(headers[position])[0]} ({units[quantity]})"
-            for quantity, position in positions.items()
-        },
+        time_s=time_s,
+        force_N=values["force"][rows],
+        displacement_mm=_taken(values, "displacement", rows),
+        extensometer=_strain(values, units.get("extensometer"), section.extensometer_length, rows, path),
+        trigger=_taken(values, "trigger", rows),
+        epoch=instants.epoch,
+        columns={q: _shown(header, units.get(q), instants, q) for q, header in columns.items()},
+        notices=(
+            *table.notices,
+            *instants.notices,
+            *decimals_assumed(table, columns.values()),
+            *_missing(table, columns, whole, values),
+            *joined,
+        ),
+    )
+    return tared(record, section.tare)
+
+
+def open_record(path: Path, decimal: str | None = None, sheet: str | None = None) -> Table:
+    """Read the table that a record is."""
+    return read_table(
+        path,
+        LoadRecordError,
+        key="load_record.source",
+        most_bytes=MAX_BYTES,
+        decimal=decimal,
+        sheet=sheet,
     )
 
 
-def _position(column: Column, headers: list[str], quantity: str, path: Path) -> int:
-    """Return where a column stands, counted from 0."""
-    where = f"{path}, load_record.{quantity}"
-    there = shorten(", ".join(f"'{header}'" for header in headers), 300, placeholder=" …")
-    if isinstance(column, int):
-        if 1 <= column <= len(headers):
-            return column - 1
-        raise LoadRecordError(
-            f"there is no column {column}, the file has {len(headers)} ({there})",
-            where=where,
-            remedy="count from 1",
-        )
-    found = [i for i, header in enumerate(headers) if header == column.strip()]
-    found = found or [i for i, header in enumerate(headers) if split_header(header)[0] == column.strip()]
-    if len(found) == 1:
-        return found[0]
-    if found:
-        raise LoadRecordError(
-            f"'{column}' fits {len(found)} columns ({there})",
-            where=where,
-            remedy="give the column's number, counted from 1",
-        )
-    hint = nearest(column, headers)
-    remedy = hint if hint.endswith("?") else "name one of them, or give its number counted from 1"
-    raise LoadRecordError(f"there is no column '{column}', only {there}", where=where, remedy=remedy)
+def read_instants(table: Table, header: Header, unit: Unit | None) -> Instants:
+    """Return a column's times."""
+    if table.is_instant(header.position):
+        return from_clock(table.texts(header.position), table.path)
+    assert unit is not None  # noqa: S101  (numbers have a unit)
+    return Instants(table.values(header.position) * unit.worth, None, unit.text)
 
 
-def _refuse_stray_units(units: dict[str, str], headers: list[str], path: Path) -> None:
-    """Raise if a unit is given for something that is not there."""
-    known = {*headers, *(split_header(header)[0] for header in headers), *_KINDS}
-    for key in units:
-        if key not in known:
+def _values(table: Table, header: Header, unit: Unit | None) -> Floats:
+    return table.values(header.position) * (unit.worth if unit else 1.0)
+
+
+def decimals_assumed(table: Table, headers: Iterable[Header]) -> tuple[Notice, ...]:
+    """Say where cells such as 1,234 can be read either way."""
+    doubtful = [
+        (table.name(header.position), table.decimal_of(header.position).mark)
+        for header in headers
+        if not table.is_instant(header.position) and table.decimal_of(header.position).assumed
+    ]
+    if not doubtful:
+        return ()
+    names = ", ".join(name for name, _ in doubtful)
+    mark = doubtful[0][1]
+    other = "." if mark == "," else ","
+    word = {",": "a decimal comma", ".": "a decimal point"}[mark]
+    text = (
+        f"{table.path.name}: the numbers of {names} can be read either way and were taken to have {word}; "
+        f'say load_record.decimal = "{mark}" to confirm it, or "{other}".'
+    )
+    return (Notice("record_decimal", text),)
+
+
+def _whole_rows(table: Table, columns: dict[str, Header], needed: dict[str, Floats]) -> NDArray[np.bool_]:
+    """Tell which rows hold time and force; raise where too many do not."""
+    whole = np.ones(len(table.cells), dtype=bool)
+    for quantity, values in needed.items():
+        bad = np.flatnonzero(~np.isfinite(values))
+        longest = max(map(len, np.split(bad, np.flatnonzero(np.diff(bad) > 1) + 1)))
+        if bad.size > MOST_MISSING * len(values) or longest > LONGEST_GAP:
+            raise table.no_number(columns[quantity].position, int(bad[0]))
+        whole[bad] = False
+    if whole.sum() < MIN_ROWS:
+        raise LoadRecordError(f"holds only {whole.sum()} whole rows", where=str(table.path))
+    return whole
+
+
+def _missing(
+    table: Table, columns: dict[str, Header], whole: NDArray[np.bool_], values: dict[str, Floats]
+) -> tuple[Notice, ...]:
+    """Say which rows were left out, and in how many an optional column holds no number."""
+    found = []
+    if not whole.all():
+        rows = [int(row) for row in table.cells.index[~whole]]
+        named = ", ".join(map(str, rows[:10])) + (f" and {len(rows) - 10} more" if len(rows) > 10 else "")
+        text = (
+            f"{table.path.name}: row{'s' if len(rows) > 1 else ''} {named} left out, as time or force is no "
+            "number there; if the load cell was overloaded, the largest force is not in the record."
+        )
+        found.append(Notice("record_rows_left_out", text))
+    for quantity in values.keys() - {"force"}:
+        header, none = columns[quantity], int(np.isnan(values[quantity]).sum())
+        if none == len(table.cells):
+            raise table.no_number(header.position, 0)
+        if none:
+            text = f"{table.path.name}: column {table.name(header.position)} holds no number in {none} rows."
+            found.append(Notice("record_values_missing", text))
+    return tuple(found)
+
+
+def _one_clock(
+    table: Table, time_s: Floats, whole: NDArray[np.bool_], wanted: str | int | None
+) -> tuple[NDArray[np.intp], Floats, tuple[Notice, ...]]:
+    """Return the rows that are used and their times, which increase; and what was joined or spread."""
+    rows = np.flatnonzero(whole)
+    before: NDArray[np.intp] = np.cumsum(whole) - whole
+    breaks = tuple(replace(b, before=int(before[b.before])) for b in table.breaks if b.before < len(before))
+    time, lines = time_s[rows], table.cells.index.to_numpy()[rows]
+    segments = find_segments(time, breaks)
+    notices: tuple[Notice, ...] = ()
+    if isinstance(wanted, int):
+        if wanted > len(segments):
             raise LoadRecordError(
-                f"there is no column or quantity '{key}'",
-                where=f"{path}, load_record.units",
-                remedy=nearest(key, known),
+                f"there is no segment {wanted}, only {len(segments)}: {listed(segments, time, lines)}",
+                where=f"{table.path}, load_record.segment",
             )
-
-
-def _unit(quantity: str, header: str, units: dict[str, str], path: Path) -> str:
-    """Return a column's unit, checked to be one of its quantity."""
-    name, in_header = split_header(header)
-    given = next((units[key] for key in (header, name, quantity) if key in units), None)
-    where = f"{path}, column '{header}'"
-    kind = _KINDS[quantity]
-    unit = in_header if given is None else given
-    if not unit:
+        part = segments[wanted - 1]
+        here = slice(part.first, part.last)
+        rows, time, lines = rows[here], time[here], lines[here]
+        if len(rows) < MIN_ROWS:
+            raise LoadRecordError(
+                f"segment {wanted} holds only {len(rows)} rows, at least {MIN_ROWS} are needed",
+                where=str(table.path),
+            )
+        segments = [Segment(0, len(rows))]
+    elif len(segments) > 1 and wanted is None:
         raise LoadRecordError(
-            "says no unit",
-            where=where,
-            remedy=f'add load_record.units = {{ {quantity} = "{EXAMPLES[kind].split()[-1]}" }}',
+            f"time starts anew, so there are {len(segments)} segments: {listed(segments, time, lines)}",
+            where=f"{table.path}, row {lines[segments[1].first]}",
+            remedy='say which with load_record.segment = 1, or "all" to put them end to end',
         )
-    try:
-        worth = _worth(unit, kind)
-    except ValueError as error:
-        raise LoadRecordError(
-            str(error),
-            where=where,
-            remedy=f"correct it, or give the right one as load_record.units.{quantity}",
-        ) from error
-    if given is not None and _contradicts(in_header, worth, kind):
-        raise LoadRecordError(
-            f"the header says {in_header} but load_record.units says {given}",
-            where=where,
-            remedy="remove the wrong one",
+    elif breaks and not isinstance(wanted, int):
+        notices = (_joined(table, breaks),)
+    for part in segments:
+        refuse_backwards(time[part.first : part.last], lines[part.first : part.last], table.path)
+    if len(segments) > 1:
+        time = _end_to_end(time, segments)
+        text = (
+            f"{table.path.name}: {len(segments)} segments were put end to end, as asked; how long the "
+            "machine paused between them is not in the record and counts as one sample."
         )
-    return unit
+        notices = (*notices, Notice("record_segments", text))
+    time, spread = spread_stamps(time, table.path)
+    return rows, time, (*notices, *spread)
 
 
-def _worth(unit: str, kind: str) -> float:
-    """Return what one `unit` is worth in the internal unit of `kind`.
-
-    No unit of time, force, length or strain needs an exponent, and one from a stranger's header could
-    be large enough to keep the unit library busy for ever.
-    """
-    if not all(part.strip().isalpha() or part.strip() == "%" for part in unit.split("/")):
-        raise ValueError(f"'{unit}' is not a unit of {kind}; write for example \"{EXAMPLES[kind]}\"")
-    return factor(unit, kind)
-
-
-def _contradicts(in_header: str | None, worth: float, kind: str) -> bool:
-    """Tell whether a header names another unit; a remark like "(filtered)" is no unit."""
-    try:
-        return in_header is not None and _worth(in_header, kind) != worth
-    except ValueError:
-        return False
+def _joined(table: Table, breaks: Sequence[Break]) -> Notice:
+    row, words = breaks[0].row, breaks[0].words
+    text = (
+        f"{table.path.name}: text between the data left out ({len(breaks)} "
+        f"place{'s' if len(breaks) > 1 else ''}, first row {row}: '{words}'); time runs on there, so "
+        "the parts were joined."
+    )
+    return Notice("record_joined", text)
 
 
-def _check_time(time_s: Floats, lines: pd.Index[int], path: Path) -> None:
-    """Raise where time stands still or runs back."""
-    back = np.flatnonzero(np.diff(time_s) <= 0)
-    if back.size:
-        here = back[0] + 1
+def _end_to_end(time: Floats, segments: list[Segment]) -> Floats:
+    """Let each segment begin one usual interval after the one before has ended."""
+    steps = np.diff(time)
+    usual = float(np.median(steps[steps > 0])) if (steps > 0).any() else 0.0
+    shifted = time.copy()
+    for before, part in pairwise(segments):
+        shift = shifted[before.last - 1] + usual - time[part.first]
+        shifted[part.first : part.last] += shift
+    return shifted
+
+
+def listed(segments: list[Segment], time: Floats, lines: NDArray[np.int64]) -> str:
+    """Return segments with rows and times, for messages."""
+    shown = [
+        f"{k} (rows {lines[s.first]} to {lines[s.last - 1]}, {time[s.first]:g} to {time[s.last - 1]:g} s)"
+        for k, s in enumerate(segments[:8], start=1)
+    ]
+    return ", ".join(shown) + (" …" if len(segments) > 8 else "")
+
+
+def _taken(values: dict[str, Floats], quantity: str, rows: NDArray[np.intp]) -> Floats | None:
+    return values[quantity][rows] if quantity in values else None
+
+
+def _strain(
+    values: dict[str, Floats], unit: Unit | None, length_mm: float | None, rows: NDArray[np.intp], path: Path
+) -> Floats | None:
+    """Return the contact extensometer's strain; an elongation counts per gauge length."""
+    reading = _taken(values, "extensometer", rows)
+    if reading is None or unit is None or unit.kind == "strain":
+        return reading
+    if length_mm is None:
         raise LoadRecordError(
-            f"time does not increase (from {time_s[here - 1]:g} s to {time_s[here]:g} s)",
-            where=f"{path}, row {lines[here]}",
-            remedy="export one test only, with enough digits in the time",
+            f"the extensometer's column is an elongation ({unit.text}), and its gauge length is not given",
+            where=str(path),
+            remedy='add load_record.extensometer_length = "50 mm"',
         )
+    return reading / length_mm
+
+
+def _shown(header: Header, unit: Unit | None, instants: Instants, quantity: str) -> str:
+    """Return header and unit for people."""
+    name = header.name or f"column {header.position + 1}"
+    text = unit.text if unit else instants.style if quantity == "time" else ""
+    return f"{name} ({text})" if text else name

@@ -3,10 +3,13 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, field
+from datetime import datetime
 from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
+
+from dic.errors import Notice
 
 Floats = NDArray[np.float64]
 
@@ -24,11 +27,17 @@ class LoadRecord:
     force_N
         Force, N, tension positive.
     displacement_mm
-        Crosshead travel, mm, where a column was named.
+        Crosshead travel, mm, where a column was named; NaN where it says none.
     extensometer
-        Strain of a contact extensometer, dimensionless, where a column was named.
+        Strain of a contact extensometer, dimensionless, where a column was named; NaN where it says none.
+    trigger
+        Frame counter or trigger signal as written, where a column was named; NaN where it says none.
+    epoch
+        Date and wall-clock time at ``time_s`` = 0, without a time zone, where the record holds dates.
     columns
         What was understood: for each quantity, header and unit.
+    notices
+        What was left out, assumed or changed, and what to do if that is wrong.
     """
 
     path: Path
@@ -36,7 +45,10 @@ class LoadRecord:
     force_N: Floats
     displacement_mm: Floats | None = None
     extensometer: Floats | None = None
+    trigger: Floats | None = None
+    epoch: datetime | None = None
     columns: dict[str, str] = field(default_factory=dict)
+    notices: tuple[Notice, ...] = ()
 
 
 @dataclass(frozen=True)

@@ -1,0 +1,302 @@
+"""Which column of a record holds what, and in which unit."""
+
+from __future__ import annotations
+
+import re
+import unicodedata
+from collections.abc import Mapping
+from dataclasses import dataclass
+from pathlib import Path
+from textwrap import shorten
+
+from dic.errors import LoadRecordError, nearest
+from dic.quantities import EXAMPLES, factor, split_header
+from dic.tables import Table
+from dic.testfile import Column
+
+#: Kinds of unit that each quantity may have; the trigger has none.
+KINDS: dict[str, tuple[str, ...]] = {
+    "time": ("time",),
+    "force": ("force",),
+    "displacement": ("length",),
+    "extensometer": ("strain", "length"),
+    "trigger": (),
+}
+
+#: What headers call each quantity, in lower case without accents, as whole words.
+_WORDS = {
+    "time": "time zeit temps tiempo tempo tijd tid t elapsed prufzeit testzeit laufzeit messzeit "
+    "uhrzeit timestamp zeitstempel hora heure ora czas",
+    "force": "force load kraft last prufkraft standardkraft messkraft zugkraft axialkraft fuerza "
+    "carga carico forza effort charge kracht f sila loadcell",
+    "displacement": "displacement crosshead traverse traversenweg weg prufweg standardweg stroke hub "
+    "position extension deplacement course desplazamiento spostamento corsa traversa "
+    "actuator elongation",
+    "extensometer": "extensometer strain dehnung extensometre extensometro extenso clip deformation "
+    "deformacion deformazione allungamento allongement langenanderung eps",
+    "trigger": "trigger frame frames bild bilder kamera camera image ttl framecounter",
+}
+_KNOWN = {quantity: frozenset(words.split()) for quantity, words in _WORDS.items()}
+#: Used where nothing else is called a time.
+_DATES = frozenset({"date", "datum", "fecha", "data", "datetime"})
+
+
+@dataclass(frozen=True)
+class Header:
+    """A column's header.
+
+    Attributes
+    ----------
+    position
+        The column, counted from 0.
+    text
+        As it stands in the file.
+    name
+        Without the unit.
+    unit
+        The unit in it or below it; None where there is none.
+    """
+
+    position: int
+    text: str
+    name: str
+    unit: str | None
+
+    @property
+    def words(self) -> frozenset[str]:
+        """The name's words in lower case, without accents and numbers."""
+        plain = unicodedata.normalize("NFKD", self.name[:200].lower())
+        plain = "".join(c for c in plain if not unicodedata.combining(c))
+        return frozenset(re.findall(r"[^\W\d_]+", plain))
+
+    def guess(self) -> str | None:
+        """Return the quantity that name and unit stand for, if any."""
+        if _is_clock_unit(self.unit):
+            return "time"
+        named = [q for q, words in _KNOWN.items() if self.words & words and self.fits(q)]
+        if named:
+            # "Strain time" would be odd, "extensometer displacement" is the extensometer's.
+            order = ("trigger", "extensometer", "time", "force", "displacement")
+            return min(named, key=order.index)
+        if self.words & _DATES and self.unit is None:
+            return "time"
+        by_unit = [q for q in ("time", "force") if self.unit is not None and self.fits(q)]
+        return by_unit[0] if by_unit else None
+
+    def fits(self, quantity: str) -> bool:
+        """Tell whether the unit, where there is one, is one of the quantity."""
+        if self.unit is None or not _reads_as_unit(self.unit):
+            return True
+        if quantity == "trigger":
+            return not any(_is_of(self.unit, kind) for kind in ("time", "force", "length"))
+        return any(_is_of(self.unit, kind) for kind in KINDS[quantity])
+
+
+def headers_of(table: Table) -> list[Header]:
+    """Return a table's headers, taken apart into name and unit."""
+    found = []
+    for position, text in enumerate(table.headers):
+        name, unit = split_header(text)
+        below = table.units[position] if position < len(table.units) else None
+        found.append(Header(position, text, name, below or unit))
+    return found
+
+
+def find_columns(
+    table: Table, named: Mapping[str, Column | None], headers: list[Header], path: Path
+) -> dict[str, Header]:
+    """Return the column of each quantity: as named, and time and force by their headers if not named.
+
+    Raises
+    ------
+    LoadRecordError
+        If a named column is not there, or time or force cannot be told.
+    """
+    taken = {
+        quantity: headers[_position(column, headers, quantity, path)]
+        for quantity, column in named.items()
+        if column is not None
+    }
+    for quantity in ("time", "force"):
+        if quantity not in taken:
+            used = {header.position for header in taken.values()}
+            taken[quantity] = _recognised(table, quantity, headers, used, path)
+    return {quantity: taken[quantity] for quantity in KINDS if quantity in taken}
+
+
+def _recognised(table: Table, quantity: str, headers: list[Header], used: set[int], path: Path) -> Header:
+    """Return the one column whose header says that it is this quantity."""
+    there = [header for header in headers if header.guess() == quantity and header.position not in used]
+    called = [header for header in there if header.words & _KNOWN[quantity]]
+    found = called or there
+    where = f"{path}, load_record.{quantity}"
+    if len(found) == 1:
+        return found[0]
+    if found:
+        raise LoadRecordError(
+            f"{len(found)} columns could be the {quantity}: {listed(found)}",
+            where=where,
+            remedy=f"say which, for example load_record.{quantity} = {found[0].position + 1}",
+        )
+    if not any(table.headers):
+        raise _no_headers(table.path)
+    raise LoadRecordError(
+        f"no column can be told to be the {quantity} ({listed(headers)})",
+        where=where,
+        remedy=f"name it, or give its number, as load_record.{quantity}",
+    )
+
+
+def listed(headers: list[Header]) -> str:
+    """Return columns with their numbers, for messages."""
+    return shorten(", ".join(f"{h.position + 1} '{h.text}'" for h in headers), 300, placeholder=" …")
+
+
+def _no_headers(path: Path) -> LoadRecordError:
+    return LoadRecordError(
+        "has no line of column headers at its top",
+        where=str(path),
+        remedy="export it with headers, or give the columns' numbers and load_record.units",
+    )
+
+
+def _position(column: Column, headers: list[Header], quantity: str, path: Path) -> int:
+    """Return where a column stands, counted from 0."""
+    where = f"{path}, load_record.{quantity}"
+    there = shorten(", ".join(f"'{header.text}'" for header in headers), 300, placeholder=" …")
+    if isinstance(column, int):
+        if 1 <= column <= len(headers):
+            return column - 1
+        raise LoadRecordError(
+            f"there is no column {column}, the file has {len(headers)} ({there})",
+            where=where,
+            remedy="count from 1",
+        )
+    if not any(header.text for header in headers):
+        raise _no_headers(path)
+    found = [h.position for h in headers if h.text == column.strip()]
+    found = found or [h.position for h in headers if h.name == column.strip()]
+    if len(found) == 1:
+        return found[0]
+    if found:
+        raise LoadRecordError(
+            f"'{column}' fits {len(found)} columns ({there})",
+            where=where,
+            remedy="give the column's number, counted from 1",
+        )
+    hint = nearest(column, [header.text for header in headers])
+    remedy = hint if hint.endswith("?") else "name one of them, or give its number counted from 1"
+    raise LoadRecordError(f"there is no column '{column}', only {there}", where=where, remedy=remedy)
+
+
+def refuse_stray_units(units: Mapping[str, str], headers: list[Header], path: Path) -> None:
+    """Raise if a unit is given for something that is not there."""
+    known = {*(h.text for h in headers), *(h.name for h in headers), *KINDS}
+    for key in units:
+        if key not in known:
+            raise LoadRecordError(
+                f"there is no column or quantity '{key}'",
+                where=f"{path}, load_record.units",
+                remedy=nearest(key, known),
+            )
+
+
+@dataclass(frozen=True)
+class Unit:
+    """A column's unit.
+
+    Attributes
+    ----------
+    text
+        As written.
+    worth
+        What one is in the internal unit.
+    kind
+        What it measures.
+    """
+
+    text: str
+    worth: float
+    kind: str
+
+
+def unit_of(quantity: str, header: Header, units: Mapping[str, str], path: Path) -> Unit:
+    """Return a column's unit, checked to be one of its quantity.
+
+    Raises
+    ------
+    LoadRecordError
+        If there is none, it is none of the quantity, or test file and header contradict each other.
+    """
+    given = next((units[key] for key in (header.text, header.name, quantity) if units.get(key)), None)
+    where = f"{path}, column '{header.text}'"
+    text = header.unit if given is None else given
+    kinds = KINDS[quantity]
+    if not text:
+        raise LoadRecordError(
+            "says no unit",
+            where=where,
+            remedy=f'add load_record.units = {{ {quantity} = "{EXAMPLES[kinds[0]].split()[-1]}" }}',
+        )
+    kind = next((kind for kind in kinds if _is_of(text, kind)), kinds[0])
+    try:
+        worth = _worth(text, kind)
+    except ValueError as error:
+        raise LoadRecordError(
+            str(error),
+            where=where,
+            remedy=f"correct it, or give the right one as load_record.units.{quantity}",
+        ) from error
+    if given is not None and _contradicts(header.unit, worth, kind):
+        raise LoadRecordError(
+            f"the header says {header.unit} but load_record.units says {given}",
+            where=where,
+            remedy="remove the wrong one",
+        )
+    return Unit(text, worth, kind)
+
+
+def _worth(unit: str, kind: str) -> float:
+    """Return what one `unit` is worth in the internal unit of `kind`.
+
+    No unit of time, force, length or strain needs an exponent, and one from a stranger's header could
+    be large enough to keep the unit library busy for ever.
+    """
+    if kind == "strain" and unit.strip() in ("1", "-", "--"):
+        return 1.0
+    if not all(part.strip().isalpha() or part.strip() == "%" for part in unit.split("/")):
+        raise ValueError(f"'{unit}' is not a unit of {kind}; write for example \"{EXAMPLES[kind]}\"")
+    return factor(unit, kind)
+
+
+def _is_of(unit: str, kind: str) -> bool:
+    try:
+        _worth(unit, kind)
+    except ValueError:
+        return False
+    return True
+
+
+def _reads_as_unit(unit: str) -> bool:
+    """Tell a unit from a remark such as "(filtered)"."""
+    if len(unit) > 20:
+        return False
+    for kind in EXAMPLES:
+        try:
+            factor(unit, kind)
+        except ValueError:
+            continue
+        return True
+    return False
+
+
+def _is_clock_unit(unit: str | None) -> bool:
+    return unit is not None and bool(re.fullmatch(r"(?:hh?:)?mm?:ss?(?:[.,]\w+)?", unit.lower()))
+
+
+def _contradicts(in_header: str | None, worth: float, kind: str) -> bool:
+    """Tell whether a header names another unit; a remark like "(filtered)" is no unit."""
+    try:
+        return in_header is not None and _worth(in_header, kind) != worth
+    except ValueError:
+        return False

@@ -1,0 +1,211 @@
+"""What can be told about a record before anything is asked of it."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from datetime import datetime
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from dic.errors import LoadRecordError, Notice
+from dic.sync.columns import Header, headers_of, unit_of
+from dic.sync.instants import find_segments
+from dic.sync.reading import decimals_assumed, open_record, read_instants
+from dic.tables import Table
+from dic.tables.layout import NAMES
+
+Floats = NDArray[np.float64]
+
+
+@dataclass(frozen=True)
+class ColumnSurvey:
+    """One column of a record.
+
+    Attributes
+    ----------
+    number
+        Counted from 1.
+    header, unit
+        As they stand in the file; the unit is None where there is none.
+    quantity
+        What it seems to be: ``time``, ``force``, ``displacement``, ``extensometer`` or ``trigger``; None
+        where that cannot be told.
+    low, high
+        Least and largest number, in the column's unit (s for clock times); NaN where there is none.
+    missing
+        Rows without a number.
+    """
+
+    number: int
+    header: str
+    unit: str | None
+    quantity: str | None
+    low: float
+    high: float
+    missing: int
+
+
+@dataclass(frozen=True)
+class SegmentSurvey:
+    """A stretch of a record within which time runs on: rows of the file, and times, s."""
+
+    first_row: int
+    last_row: int
+    start_s: float
+    end_s: float
+
+
+@dataclass(frozen=True)
+class RecordSurvey:
+    """What a record holds.
+
+    Attributes
+    ----------
+    path, sheet
+        The file, and the sheet that was asked for.
+    encoding, separator, decimal
+        How it is written; the separator in words, the decimal mark of most columns.
+    heading
+        Lines above the headers.
+    columns
+        Its columns.
+    rows
+        Rows of data.
+    segments
+        Stretches within which time runs on; none where no column could be told to be the time.
+    interval_s
+        Median, least and largest time between rows, s; NaN where time is unknown.
+    start_s, end_s
+        First and last time, s; NaN where time is unknown.
+    epoch
+        Date and wall-clock time at ``start_s``, where the record holds dates.
+    notices
+        Doubts, with remedies.
+    """
+
+    path: Path
+    sheet: str | None
+    encoding: str
+    separator: str
+    decimal: str
+    heading: int
+    columns: tuple[ColumnSurvey, ...]
+    rows: int
+    segments: tuple[SegmentSurvey, ...]
+    interval_s: tuple[float, float, float]
+    start_s: float
+    end_s: float
+    epoch: datetime | None
+    notices: tuple[Notice, ...]
+
+    def candidates(self, quantity: str) -> tuple[ColumnSurvey, ...]:
+        """Return the columns that could hold a quantity."""
+        return tuple(column for column in self.columns if column.quantity == quantity)
+
+
+def look_at_record(path: Path, sheet: str | None = None, decimal: str | None = None) -> RecordSurvey:
+    """Tell what a load record holds, without being told what to look for.
+
+    Parameters
+    ----------
+    path
+        The file.
+    sheet
+        A workbook's sheet.
+    decimal
+        The decimal mark, where it is known.
+
+    Raises
+    ------
+    LoadRecordError
+        If the file cannot be read or is no table.
+    """
+    table = open_record(Path(path), decimal, sheet)
+    headers = headers_of(table)
+    columns = tuple(_column(table, header) for header in headers)
+    numbers = [header for header in headers if columns[header.position].missing < len(table.cells)]
+    notices = [*table.notices, *decimals_assumed(table, [h for h in numbers if not _mixed(table, h)])]
+    called = [header for header in headers if columns[header.position].quantity == "time"]
+    time_s, epoch = np.full(len(table.cells), np.nan), None
+    if len(called) == 1:
+        try:
+            instant = table.is_instant(called[0].position)
+            unit = None if instant else unit_of("time", called[0], {}, table.path)
+            read = read_instants(table, called[0], unit)
+            time_s, epoch = read.time_s, read.epoch
+            notices += read.notices
+        except LoadRecordError as error:
+            notices.append(Notice("record_time", str(error)))
+    marks = [table.decimal_of(h.position).mark for h in numbers if not _mixed(table, h)]
+    return RecordSurvey(
+        path=table.path,
+        sheet=sheet,
+        encoding=table.encoding,
+        separator=NAMES[table.separator],
+        decimal=max(marks, key=marks.count) if marks else ".",
+        heading=table.heading,
+        columns=columns,
+        rows=len(table.cells),
+        **_timing(table, time_s),
+        epoch=epoch,
+        notices=tuple(notices),
+    )
+
+
+def _column(table: Table, header: Header) -> ColumnSurvey:
+    position = header.position
+    clock = table.is_instant(position)
+    if _mixed(table, header):
+        values = np.full(len(table.cells), np.nan)
+    else:
+        values = read_instants(table, header, None).time_s if clock else table.values(position)
+    there = values[np.isfinite(values)]
+    return ColumnSurvey(
+        number=position + 1,
+        header=header.text,
+        unit=header.unit,
+        quantity=header.guess() or ("time" if clock else None),
+        low=float(there.min()) if there.size else float("nan"),
+        high=float(there.max()) if there.size else float("nan"),
+        missing=len(values) - there.size,
+    )
+
+
+def _mixed(table: Table, header: Header) -> bool:
+    """Tell whether a column's decimal marks contradict each other."""
+    if table.is_instant(header.position):
+        return False
+    try:
+        table.decimal_of(header.position)
+    except LoadRecordError:
+        return True
+    return False
+
+
+def _timing(table: Table, time_s: Floats) -> dict[str, Any]:
+    seen = np.flatnonzero(np.isfinite(time_s))
+    if seen.size < 2:
+        nan = float("nan")
+        return {"segments": (), "interval_s": (nan, nan, nan), "start_s": nan, "end_s": nan}
+    time, lines = time_s[seen], table.cells.index.to_numpy()[seen]
+    segments = find_segments(time, ())
+    steps = np.concatenate([np.diff(time[s.first : s.last]) for s in segments])
+    spread = (
+        (float(np.median(steps)), float(steps.min()), float(steps.max()))
+        if steps.size
+        else (float("nan"),) * 3
+    )
+    return {
+        "segments": tuple(
+            SegmentSurvey(
+                int(lines[s.first]), int(lines[s.last - 1]), float(time[s.first]), float(time[s.last - 1])
+            )
+            for s in segments
+        ),
+        "interval_s": spread,
+        "start_s": float(time[0]),
+        "end_s": float(time[-1]),
+    }

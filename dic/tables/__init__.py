@@ -1,0 +1,5 @@
+"""Tables of numbers as machines, cameras and spreadsheets export them, in text or in a workbook."""
+
+from dic.tables.table import Break, Table, read_table
+
+__all__ = ["Break", "Table", "read_table"]
