@@ -17,7 +17,7 @@ from dic.frames import FrameSource
 from dic.frames.readers import Grey
 from dic.preparation import Setup
 from dic.store import fields
-from dic.strain import StrainMapper, gauge_size
+from dic.strain import StrainMapper, Window
 from dic.testfile import TestFile
 
 
@@ -34,11 +34,12 @@ def tracking_key(test: TestFile, source: FrameSource) -> str:
     """Return a digest of all that tracking depends on."""
     said = {
         "version": provenance.VERSION,
+        "variables": list(fields.VARIABLES),
         "frames": source.listing(),
         "times": source.time_s.tolist(),
         "reference": test.frames.reference,
         "correlation": test.correlation.model_dump(exclude={"periodic"}),
-        "maps": test.maps.model_dump(),
+        "maps": test.maps.model_dump(exclude={"measure"}),
         "axis": test.gauge.axis,
         "region": test.gauge.region,
         "subsets": (test.gauge.subsets, test.gauge.length if test.gauge.subsets == "ends" else None),
@@ -47,16 +48,26 @@ def tracking_key(test: TestFile, source: FrameSource) -> str:
 
 
 def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[Match]:
-    grid, source, window = setup.grid, setup.source, test.maps.window
+    grid, source = setup.grid, setup.source
+    window = Window(
+        test.maps.window,
+        grid.step,
+        grid.subset,
+        test.maps.degree,
+        test.maps.weighting,
+        test.correlation.shape,
+    )
     attributes = {
         "tracking_key": key,
         "subset_px": grid.subset,
         "step_px": grid.step,
-        "map_gauge_px": gauge_size(window, grid.step, grid.subset),
+        "map_gauge_px": window.size_px,
+        "map_gauge_mm": window.size_px * setup.scale_mm,
+        **window.attributes(),
         "strain_measure": "engineering, in coupon axes",
         "axis_angle_deg": setup.coupon.axis_angle_deg,
     }
-    mapper = StrainMapper(window, grid.step, (setup.region.axial, setup.region.transverse))
+    mapper = StrainMapper(window, (setup.region.axial, setup.region.transverse))
     measured = 0
     with (
         # BLAS threads spin for a while after each small product, on the cores that the kernels need.
@@ -66,8 +77,8 @@ def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[M
     ):
         hashed = hashing.submit(source.sha256)
         for match in track(_read_ahead(source), setup.reference, grid.neighbours()):
-            u, v = (fields.spread(part, grid.inside) for part in (match.u, match.v))
-            writer.put(match, mapper.strain(u, v))
+            parts = (match.u, match.v, match.sigma_u, match.sigma_v)
+            writer.put(match, mapper.strain(*(fields.spread(part, grid.inside) for part in parts)))
             measured += bool(match.converged.any())
             yield match
         # The frames of the reference always match; alone they say nothing.

@@ -217,9 +217,21 @@ class Correlation(Section):
 
 
 class Maps(Section):
-    """The local strain maps: window of the local fit, in subsets across."""
+    """The local strain maps: window of the local fit in subsets across, the fit, what is drawn."""
 
     window: int = Field(5, ge=3, le=99)
+    degree: Literal[1, 2] = 1
+    weighting: Literal["even", "gaussian"] = "even"
+    measure: Literal["engineering", "green_lagrange", "hencky"] = "engineering"
+
+    @model_validator(mode="after")
+    def _window_has_a_middle(self) -> Maps:
+        if self.window % 2 == 0:
+            raise ValueError(
+                f"window must be odd, so that it has a middle subset; write {self.window - 1} or "
+                f"{self.window + 1} in place of {self.window}"
+            )
+        return self
 
 
 class Sync(Section):

@@ -16,6 +16,7 @@ from dic.measurement import Measurement, Scene
 from dic.report.figures import WIDTH, Drawing, legend_above, sheet, strain_unit
 from dic.report.moments import Moment
 from dic.rounding import three_digits, uncertainty_alone
+from dic.strain import MapFlag, measures
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -27,6 +28,12 @@ _MOST_PIXELS = 900
 NOISE_SPAN = 12.0
 
 _HIGHLIGHT = "#b8560f"
+
+_MEASURES = {
+    "engineering": "The maps show engineering strain.",
+    "green_lagrange": "The maps show Green–Lagrange strain; the gauge's mean is engineering strain.",
+    "hencky": "The maps show Hencky (logarithmic) strain; the gauge's mean is engineering strain.",
+}
 
 
 def draw_maps(measurement: Measurement, fields: xr.Dataset, moments: list[Moment]) -> list[Drawing]:
@@ -49,11 +56,21 @@ def draw_maps(measurement: Measurement, fields: xr.Dataset, moments: list[Moment
     kept = set(fields["frame"].values.tolist())
     history = measurement.history
     rest = _at_rest(measurement, fields)
+    measure = measurement.test.maps.measure
     return [
-        _map(measurement, fields.sel(frame=int(history.frame[moment.row])), moment, rest)
+        _map(measurement, _measured(fields.sel(frame=int(history.frame[moment.row])), measure), moment, rest)
         for moment in moments
         if int(history.frame[moment.row]) in kept
     ]
+
+
+def _measured(field: xr.Dataset, measure: str) -> xr.Dataset:
+    """Return one frame's fields with the strains of the measure that is to be drawn."""
+    if measure == "engineering":
+        return field
+    found = measures(field, measure)
+    drawn = {f"strain_{name}": found[name] for name in ("axial", "transverse", "shear")}
+    return field.assign(drawn | {"u_strain_axial": found["u_axial"]})
 
 
 def _at_rest(measurement: Measurement, fields: xr.Dataset) -> dict[str, float]:
@@ -113,8 +130,10 @@ def _map(measurement: Measurement, field: xr.Dataset, moment: Moment, rest: dict
     reading = (
         f"Frame {frame} ({history.name[row]}) at {curve.time_s[row]:.2f} s, stress "
         f"{curve.stress_MPa[row]:.4g} MPa, axial strain {_sized(curve.axial[row])} over the gauge "
-        f"(outline). Each point is formed over a window of {_gauge_size(scene)} (black square); nothing "
-        f"smaller can be seen. Scatter over the map (standard deviation): {', '.join(spreads)}. Fine "
+        f"(outline). {_MEASURES[measurement.test.maps.measure]} Each point is formed over a window of "
+        f"{_gauge_size(scene)} (black square); nothing smaller can be seen. {_certainty(field)}"
+        "Scatter over the map (standard deviation): "
+        f"{', '.join(spreads)}. Fine "
         "mottling is the camera's noise"
         + (f" ({_sized(rest['axial'])} in the axial map of a frame at rest)" if rest else "")
         + "; a slope from side to side is bending, a band or spot well above the mottling is local yielding, "
@@ -124,6 +143,21 @@ def _map(measurement: Measurement, field: xr.Dataset, moment: Moment, rest: dict
     alt = f"Maps of axial, transverse and shear strain over the photograph of the coupon, frame {frame}."
     title = f"{moment.letter}: {moment.title}"
     return Drawing(f"map-{moment.letter.lower()}", title, reading, alt, figure, vector=False)
+
+
+def _certainty(field: xr.Dataset) -> str:
+    """Say how sure a point is and which share of the points leans on part of a window."""
+    u = float(np.nanmedian(field["u_strain_axial"].values))
+    flag = field["map_flag"].values
+    made = int((flag <= MapFlag.ONE_SIDED).sum())
+    if not (made and isfinite(u)):
+        return ""
+    share = 100 * int((flag == MapFlag.ONE_SIDED).sum()) / made
+    return (
+        f"Standard uncertainty of one point's axial strain: {_sized(u)} (median); {share:.0f} % of the "
+        "points lie at an edge, a hole or a lost patch, where the window is one-sided and the uncertainty "
+        "larger. "
+    )
 
 
 def _panel(axes: Axes, field: xr.Dataset, component: str, tall: bool, noise: float) -> str:

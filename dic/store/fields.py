@@ -20,7 +20,9 @@ from dic.correlation.flags import MEANING, Flag
 from dic.correlation.grid import Grid
 from dic.correlation.matching import Match
 from dic.errors import StoreError
-from dic.strain.maps import StrainMap
+from dic.strain.maps import MEANING as MAP_MEANING
+from dic.strain.maps import MapFlag, StrainMap
+from dic.strain.measures import GRADIENT
 
 NAME = "fields.nc"
 #: Frames that are written together.
@@ -29,7 +31,7 @@ AT_ONCE = 8
 AFFINE = ("u", "u_x", "u_y", "v", "v_x", "v_y")
 
 #: Variables with their type and what they are.
-_VARIABLES: dict[str, tuple[str, str, str]] = {
+VARIABLES: dict[str, tuple[str, str, str]] = {
     "u": ("f8", "px", "displacement along x, to the right"),
     "v": ("f8", "px", "displacement along y, down"),
     "u_x": ("f8", "1", "slope of u along x, as matched"),
@@ -39,10 +41,16 @@ _VARIABLES: dict[str, tuple[str, str, str]] = {
     "strain_axial": ("f4", "1", "engineering strain along the pull"),
     "strain_transverse": ("f4", "1", "engineering strain across the pull"),
     "strain_shear": ("f4", "1", "change of the right angle between the coupon axes"),
+    "u_strain_axial": ("f4", "1", "standard uncertainty of strain_axial"),
+    "gradient_u_x": ("f4", "1", "slope of u along x, fitted over the maps' window"),
+    "gradient_u_y": ("f4", "1", "slope of u along y, fitted over the maps' window"),
+    "gradient_v_x": ("f4", "1", "slope of v along x, fitted over the maps' window"),
+    "gradient_v_y": ("f4", "1", "slope of v along y, fitted over the maps' window"),
     "correlation": ("f4", "1", "zero-mean normalised cross-correlation"),
     "sigma_u": ("f4", "px", "standard uncertainty of u"),
     "sigma_v": ("f4", "px", "standard uncertainty of v"),
     "flag": ("u1", "1", "state of the subset"),
+    "map_flag": ("u1", "1", "how the point of the strain maps came about"),
 }
 
 
@@ -81,15 +89,18 @@ class FieldsWriter:
         file.create_variable("time", ("frame",), data=time_s).attrs["long_name"] = "camera time in seconds"
         file.create_variable("y", ("y",), data=grid.rows).attrs["units"] = "px"
         file.create_variable("x", ("x",), data=grid.columns).attrs["units"] = "px"
-        for name, (dtype, unit, meaning) in _VARIABLES.items():
+        for name, (dtype, unit, meaning) in VARIABLES.items():
             # A fill value would make xarray read the flags as floats, and every frame is written whole.
             fill = None if dtype == "u1" else np.nan
             variable = file.create_variable(
                 name, ("frame", "y", "x"), dtype, fillvalue=fill, chunks=(1, *grid.shape)
             )
             variable.attrs.update({"units": unit, "long_name": meaning})
-        file["flag"].attrs["flag_values"] = np.array(list(MEANING), np.uint8)
-        file["flag"].attrs["flag_meanings"] = " ".join(flag.name.lower() for flag in MEANING)
+        names: tuple[tuple[str, list[Flag] | list[MapFlag]], ...]
+        names = ("flag", list(MEANING)), ("map_flag", list(MAP_MEANING))
+        for name, flags in names:
+            file[name].attrs["flag_values"] = np.array(flags, np.uint8)
+            file[name].attrs["flag_meanings"] = " ".join(flag.name.lower() for flag in flags)
         noise = file.create_variable("noise_grey", ("frame",), "f8", fillvalue=np.nan)
         noise.attrs["long_name"] = "grey noise of one frame, median over the subsets, in grey levels"
         links = file.create_variable("links", ("frame",), "i4")
@@ -102,11 +113,14 @@ class FieldsWriter:
     def put(self, match: Match, strains: StrainMap) -> None:
         """Append the next frame."""
         inside = self._grid.inside
-        values = {
+        values: dict[str, NDArray[Any]] = {
             **{name: spread(part, inside) for name, part in zip(AFFINE, match.affine.T, strict=True)},
             "strain_axial": strains.axial,
             "strain_transverse": strains.transverse,
             "strain_shear": strains.shear,
+            "u_strain_axial": strains.u_axial,
+            **{name: strains.gradient[..., k // 2, k % 2] for k, name in enumerate(GRADIENT)},
+            "map_flag": strains.flag,
             "correlation": spread(match.correlation, inside),
             "sigma_u": spread(match.sigma_u, inside),
             "sigma_v": spread(match.sigma_v, inside),

@@ -194,6 +194,8 @@ def fields():
             "strain_axial": (on_grid, axial),
             "strain_transverse": (on_grid, transverse),
             "strain_shear": (on_grid, rng.normal(0, 6e-5, shape)),
+            "u_strain_axial": (on_grid, np.full(shape, 6e-5)),
+            "map_flag": (on_grid, np.zeros(shape, np.uint8)),
         },
         coords={"frame": history.frame, "time": ("frame", history.time_s), "y": y, "x": x},
         attrs={"map_gauge_px": MAP_GAUGE, "subset_px": SUBSET, "step_px": STEP},

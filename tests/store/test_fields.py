@@ -6,7 +6,7 @@ import xarray as xr
 from dic.correlation import Flag, Grid
 from dic.correlation.matching import Match
 from dic.store import fields
-from dic.strain import StrainMap
+from dic.strain import MapFlag, StrainMap
 
 GRID = Grid(np.array([20, 30, 40]), np.array([15, 25]), np.array([[1, 1, 0], [1, 1, 1]], bool), 15, 10)
 
@@ -22,7 +22,8 @@ def match(k):
 
 def strains():
     part = np.where(GRID.inside, 0.001, np.nan)
-    return StrainMap(part, -0.3 * part, 0 * part)
+    gradient = np.stack([0 * part, part, part, 2 * part], axis=-1).reshape(*part.shape, 2, 2)
+    return StrainMap(gradient, part, -0.3 * part, 0 * part, 0.1 * part, np.uint8(3) * ~GRID.inside)
 
 
 def write(folder, frames=3):
@@ -41,6 +42,8 @@ def test_xarray_opens_what_was_written(tmp_path):
         assert float(found.u.sel(frame=2, y=15, x=20)) == 2.0
         assert found.flag.dtype == np.uint8
         assert found.flag.attrs["flag_meanings"].split()[Flag.SATURATED] == "saturated"
+        assert float(found.gradient_v_y.sel(frame=1, y=15, x=20)) == np.float32(0.002)
+        assert found.map_flag.attrs["flag_meanings"].split()[MapFlag.ONE_SIDED] == "one_sided"
         assert np.isnan(found.u.values[:, ~GRID.inside]).all()
         assert (found.flag.values[:, ~GRID.inside] == Flag.MASKED).all()
         assert np.isnan(found.u.values[found.flag.values == Flag.DECORRELATED]).all()
