@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
+from dic.comparison import ClipOn
 from dic.errors import Notice
 from dic.properties.result import Curve, ModulusLine, Property
 from dic.strain.history import GaugeHistory
@@ -85,6 +86,8 @@ class Measurement:
         Versions, hashes of the inputs, parameters in force.
     folder
         Where the results lie; the fields are in ``fields.nc``.
+    clip_on
+        Comparison with a clip-on extensometer; None where the load record has none.
     """
 
     test: TestFile
@@ -100,6 +103,7 @@ class Measurement:
     notices: tuple[Notice, ...]
     provenance: dict[str, Any]
     folder: Path = field(default=Path())
+    clip_on: ClipOn | None = None
 
     def to_pandas(self) -> pd.DataFrame:
         """Return the history as a table, the columns those of ``history.csv``."""

@@ -13,6 +13,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dic import provenance
+from dic.comparison import compare
+from dic.comparison import doubts as clip_on_doubts
 from dic.errors import ClockError, InputError
 from dic.frames import open_frames
 from dic.judgement import alignment, reading_doubts
@@ -122,6 +124,16 @@ def judged(
     """Go from gauge histories to properties."""
     curve = make_curve(history, record, clock, test.specimen.area)
     found = evaluate(curve, test.specimen, test.load_record.force_uncertainty, clock, test.properties)
+    first = test.frames.first_reference
+    clip_on = compare(
+        record,
+        clock,
+        history,
+        curve,
+        found.properties["youngs_modulus"],
+        reference=slice(first, first + setup.reference.frames),
+        length_mm=test.load_record.extensometer_length,
+    )
     return Measurement(
         test=test,
         scene=_scene(test, setup, folder),
@@ -139,9 +151,11 @@ def judged(
             *setup.notices,
             *reading_doubts(history, curve, extensometer_asked=test.gauge.length is not None),
             *property_doubts(found.properties, test.specimen, test.load_record.force_uncertainty),
+            *clip_on_doubts(clip_on),
         ),
         provenance=provenance.collect(test, record, str(fields.stored_attributes(folder)["frames_sha256"])),
         folder=folder,
+        clip_on=clip_on,
     )
 
 

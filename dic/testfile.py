@@ -140,6 +140,11 @@ class Frames(Section):
     exposure: Duration | None = None
     reference: int | tuple[int, int] | None = None
 
+    @property
+    def first_reference(self) -> int:
+        """Frame that strain counts from, the first one where several are averaged."""
+        return self.reference[0] if isinstance(self.reference, tuple) else self.reference or 0
+
     @model_validator(mode="after")
     def _one_clock(self) -> Frames:
         # A counter in the names needs a rate to become a time.

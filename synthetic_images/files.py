@@ -111,8 +111,20 @@ def _write_record(test: VirtualTest, path: Path) -> None:
     time, crosshead, force = test.record()
     kilo = np.abs(force).max() >= _KILO_FROM
     header = f"Time (s),Crosshead (mm),Force ({'kN' if kilo else 'N'})"
-    columns = np.column_stack([time, crosshead, force / 1000 if kilo else force])
-    np.savetxt(path, columns, fmt=["%.4f", "%.5f", "%.6f"], delimiter=",", header=header, comments="")
+    columns, formats = [time, crosshead, force / 1000 if kilo else force], ["%.4f", "%.5f", "%.6f"]
+    if (contact := test.contact_strain()) is not None:
+        header += ",Extensometer (%)"
+        columns.append(100 * contact)
+        formats.append("%.6f")
+    np.savetxt(
+        path,
+        np.column_stack(columns),
+        fmt=formats,
+        delimiter=",",
+        header=header,
+        comments="",
+        encoding="utf-8",
+    )
 
 
 def _test_file(test: VirtualTest) -> dict[str, Any]:
@@ -140,6 +152,10 @@ def _test_file(test: VirtualTest) -> dict[str, Any]:
             content["specimen"][f"{side}_uncertainty"] = f"{uncertainty:.6g} mm"
     if record.force_uncertainty:
         content["load_record"]["force_uncertainty"] = f"{100 * record.force_uncertainty:.6g} %"
+    if record.extensometer_gain is not None:
+        content["load_record"]["extensometer"] = "Extensometer"
+        if record.extensometer_length is not None:
+            content["load_record"]["extensometer_length"] = f"{record.extensometer_length:.6g} mm"
     for name in ("gauge", "properties"):
         if (section := getattr(scenario, name)) is not None:
             content[name] = section.model_dump(exclude_none=True, exclude_unset=True)
@@ -181,6 +197,8 @@ def truth(test: VirtualTest) -> dict[str, Any]:
             "force_factor": readings.force_factor,
             "width_mm": readings.width_mm - scenario.specimen.width,
             "thickness_mm": readings.thickness_mm - scenario.specimen.thickness,
+            "extensometer_gain": scenario.load_record.extensometer_gain,
+            "extensometer_offset": scenario.load_record.extensometer_offset,
         },
         "frames": {
             "machine_time_s": test.frame_times.tolist(),

@@ -29,6 +29,7 @@ Rate = Annotated[float, quantity("rate"), Field(gt=0, le=100_000)]
 Angle = Annotated[float, quantity("angle"), Field(ge=-180, le=180)]
 #: Virtual tests stretch to ten times the length at most; beyond that nothing stays in view.
 Strain = Annotated[float, quantity("strain"), Field(gt=0, le=9)]
+SmallStrain = Annotated[float, quantity("strain"), Field(ge=-0.2, le=0.2)]
 SmallShare = Annotated[float, quantity("fraction"), Field(ge=0, le=0.2)]
 Share = Annotated[float, quantity("fraction"), Field(ge=0, le=1)]
 SignedShare = Annotated[float, quantity("fraction"), Field(ge=-0.5, le=0.5)]
@@ -190,6 +191,18 @@ class Record(Section):
     force_noise: Force = 0.0
     force_uncertainty: SmallShare = 0.0
     crosshead_noise: Travel = 0.0
+    extensometer_gain: float | None = Field(None, gt=0, le=10)
+    extensometer_offset: SmallStrain = 0.0
+    extensometer_noise: SmallShare = 0.0
+    extensometer_length: Length | None = None
+    extensometer_removed: Strain | None = None
+
+    @model_validator(mode="after")
+    def _extensometer_is_there(self) -> Record:
+        given = [key for key in self.model_fields_set if key.startswith("extensometer_")]
+        if given and self.extensometer_gain is None:
+            raise ValueError(f"{given[0]} needs extensometer_gain; add it (1 for a true one)")
+        return self
 
 
 class Scenario(Section):

@@ -29,7 +29,7 @@ _HALVINGS = 70
 #: The realisation of a texture is larger than the picture by this, px, for what moves into view.
 _MARGIN = 64
 #: Each random thing draws from its own stream, so that changing one leaves the others as they were.
-_STREAMS = {"texture": 1, "noise": 2, "force": 3, "crosshead": 4, "errors": 5}
+_STREAMS = {"texture": 1, "noise": 2, "force": 3, "crosshead": 4, "errors": 5, "extensometer": 6}
 
 
 @dataclass(frozen=True)
@@ -217,6 +217,21 @@ class VirtualTest:
         force = self.readings().force_factor * state.force_N + settings.force_noise * noise["force"]
         crosshead = state.crosshead_mm + settings.crosshead_noise * noise["crosshead"]
         return time, crosshead, force
+
+    def contact_strain(self) -> Floats | None:
+        """Return the clip-on extensometer's strain at the record's times; None where there is none.
+
+        It is taken off when the strain reaches `extensometer_removed`, and then reads nothing but noise.
+        """
+        settings = self.scenario.load_record
+        if settings.extensometer_gain is None:
+            return None
+        axial = self.at(self.record_times).axial
+        strain = settings.extensometer_gain * axial + settings.extensometer_offset
+        if settings.extensometer_removed is not None:
+            strain[np.maximum.accumulate(axial) >= settings.extensometer_removed] = 0.0
+        noise = np.random.default_rng(self.seed("extensometer")).standard_normal(axial.size)
+        return strain + settings.extensometer_noise * noise
 
     def properties(self) -> dict[str, tuple[float, str]]:
         """Return the true properties, (value, unit) by the names of a result; NaN where none is reached.

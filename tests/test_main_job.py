@@ -274,3 +274,16 @@ def test_results_may_lie_beside_the_inputs(copy):
     dic.measure(copy, copy.parent)
     again = dic.measure(copy, copy.parent)
     assert np.isfinite(again.properties["youngs_modulus"].value)
+
+
+def test_a_clip_on_in_the_record_is_compared(tmp_path, small_scenario):
+    """Gain and offset as the scenario has them, within three stated standard uncertainties."""
+    scenario = tmp_path / "clip.toml"
+    keys = "extensometer_gain = 1.02\nextensometer_offset = 5e-5\nextensometer_noise = 5e-6"
+    scenario.write_text(small_scenario.replace("[load_record]", f"[load_record]\n{keys}"))
+    whole = dic.measure(render(load_scenario(scenario), tmp_path / "test"), tmp_path / "out").clip_on.whole
+    assert whole.slope == pytest.approx(1.02, abs=3 * whole.u_slope)
+    assert whole.offset == pytest.approx(5e-5, abs=3 * whole.u_offset)
+    assert whole.u_slope < 0.01
+    said = json.loads((tmp_path / "out" / "results.json").read_text())["clip_on"]
+    assert said["slope"] == whole.slope

@@ -12,9 +12,11 @@ from typing import TYPE_CHECKING, Any
 from jinja2 import Environment, StrictUndefined
 from markupsafe import Markup
 
+from dic.comparison import ClipOn
 from dic.measurement import Measurement, Scene
 from dic.properties.result import Property
 from dic.report import words
+from dic.report.clip_on import agreement_rows, class_rows, draw_clip_on
 from dic.report.clocks import draw_clocks
 from dic.report.curves import draw_curves
 from dic.report.figures import Drawing, house_style, render
@@ -71,6 +73,7 @@ def write_report(measurement: Measurement, fields: xr.Dataset, folder: Path) -> 
             "maps": draw_maps(measurement, fields, moments),
             "scene": [draw_scene(measurement)],
             "clocks": draw_clocks(measurement),
+            "clip_on": draw_clip_on(measurement),
         }
         pictures = {
             name: [_published(drawing, label, folder) for drawing in drawings]
@@ -95,6 +98,8 @@ def _remove_stale(folder: Path, names: set[str]) -> None:
     sometimes = {
         "elastic-part",
         "modulus-residuals",
+        "clip-on-curves",
+        "clip-on-difference",
         "clocks",
         *(f"map-{letter}" for letter in "abcdefghijklmnop"),
     }
@@ -127,6 +132,7 @@ def _page(measurement: Measurement, pictures: dict[str, list[Picture]]) -> str:
             measurement.clock.offset_s, COVERAGE_FACTOR * measurement.clock.offset_standard_uncertainty_s, "s"
         ),
         columns=measurement.record.columns,
+        clip_on=_clip_on(measurement.clip_on),
         alignment=words.labelled(
             {"axis_angle_deg": measurement.scene.axis_angle_deg, **measurement.alignment}
         ),
@@ -138,6 +144,22 @@ def _page(measurement: Measurement, pictures: dict[str, list[Picture]]) -> str:
         ),
         cautions=words.CAUTIONS,
     )
+
+
+def _clip_on(found: ClipOn | None) -> dict[str, Any] | None:
+    """Return the comparison with a clip-on extensometer as the template shows it."""
+    if found is None:
+        return None
+    until = (
+        f"{found.used_until_s:.4g} s of the machine's clock" if isfinite(found.used_until_s) else "no frame"
+    )
+    return {
+        "agreements": agreement_rows(found),
+        "classes": class_rows(found),
+        "ended": found.ended,
+        "until": until,
+        "notes": found.notes,
+    }
 
 
 def _worked_out(scene: Scene) -> list[tuple[str, str]]:

@@ -6,17 +6,20 @@ import json
 import os
 from collections.abc import Mapping
 from contextlib import suppress
+from dataclasses import asdict
 from math import isfinite
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from dic.comparison.clip_on import METHOD
 from dic.errors import StoreError
 from dic.rounding import COVERAGE_FACTOR
 from dic.store.tables import history_table
 
 if TYPE_CHECKING:
+    from dic.comparison import ClipOn
     from dic.measurement import Measurement
     from dic.properties.result import Property
 
@@ -77,11 +80,32 @@ def results_of(measurement: Measurement) -> dict[str, Any]:
             **measurement.alignment,
         },
         "quality": measurement.quality,
+        **({"clip_on": _clip_on(measurement.clip_on)} if measurement.clip_on is not None else {}),
         "warnings": [{"code": notice.code, "text": notice.text} for notice in measurement.notices],
         "provenance": measurement.provenance,
     }
     plain: dict[str, Any] = _plain(content)
     return plain
+
+
+def _clip_on(found: ClipOn) -> dict[str, Any]:
+    """Say the comparison with a clip-on extensometer; the line over all frames compared stands first."""
+    return {
+        **asdict(found.whole),
+        "modulus_window": asdict(found.window),
+        "method": METHOD,
+        "gauge_length_mm": found.gauge_length_mm,
+        "used_until_s": found.used_until_s,
+        "ended": found.ended,
+        "stations": {
+            "strain": found.station_strain,
+            "difference": found.station_difference,
+            "u_difference": found.u_station,
+            "coverage_factor": found.coverage_factor,
+        },
+        "classes": [asdict(one) for one in found.classes],
+        "notes": found.notes,
+    }
 
 
 def _property(item: Property) -> dict[str, Any]:

@@ -1,6 +1,7 @@
 """Contributions to a standard uncertainty, and the straight line that most of them come from."""
 
+from dic.uncertainty.both import LineOfBoth, line_of_both
 from dic.uncertainty.budget import combine, few_readings
 from dic.uncertainty.line import Line, straight_line
 
-__all__ = ["Line", "combine", "few_readings", "straight_line"]
+__all__ = ["Line", "LineOfBoth", "combine", "few_readings", "line_of_both", "straight_line"]

@@ -13,10 +13,10 @@ from scipy.optimize import brentq
 from typer.testing import CliRunner
 
 import dic.testfile
-from dic.errors import StoreError
+from dic.errors import StoreError, TestFileError
 from dic_cli.render import render as render_command
 from synthetic_images.files import render, truth
-from synthetic_images.scenario import Scenario
+from synthetic_images.scenario import Scenario, load_scenario
 from synthetic_images.virtual_test import VirtualTest
 
 CONTENT = {
@@ -275,3 +275,31 @@ def test_command_makes_a_shipped_or_own_scenario(tmp_path):
     assert result.exit_code == 0, result.output
     assert "test.toml" in result.output
     assert dic.testfile.load(tmp_path / "out" / "test.toml").frames.rate == 0.5
+
+
+def with_clip_on(tmp_path, text, keys):
+    path = tmp_path / "scenario.toml"
+    path.write_text(text.replace("[load_record]", f"[load_record]\n{keys}"))
+    return VirtualTest(load_scenario(path))
+
+
+def test_clip_on_reads_gain_offset_and_noise(tmp_path, small_scenario):
+    keys = "extensometer_gain = 1.02\nextensometer_offset = 1e-4\nextensometer_noise = 2e-6"
+    test = with_clip_on(tmp_path, small_scenario, keys)
+    miss = test.contact_strain() - (1.02 * test.at(test.record_times).axial + 1e-4)
+    # A standard deviation of 250 samples is known to 4 %; four times that.
+    assert np.std(miss) == pytest.approx(2e-6, rel=0.18)
+    assert abs(np.mean(miss)) < 4 * 2e-6 / np.sqrt(len(miss))
+
+
+def test_clip_on_can_be_taken_off(tmp_path, small_scenario):
+    test = with_clip_on(tmp_path, small_scenario, "extensometer_gain = 1\nextensometer_removed = 0.0005")
+    strain, true = test.contact_strain(), test.at(test.record_times).axial
+    np.testing.assert_array_equal(strain, np.where(true < 0.0005, true, 0.0))
+    assert strain[-1] == 0.0 < strain.max()
+
+
+def test_without_gain_there_is_no_clip_on(tmp_path, small_scenario):
+    assert with_clip_on(tmp_path, small_scenario, "").contact_strain() is None
+    with pytest.raises(TestFileError, match="needs extensometer_gain"):
+        with_clip_on(tmp_path, small_scenario, "extensometer_noise = 1e-6")
