@@ -11,7 +11,7 @@ from typing import Annotated
 import typer
 from table import Bench, show, write_json
 
-NAMES = ("accuracy", "gauge", "resolution", "speed")
+NAMES = ("accuracy", "gauge", "memory", "resolution", "speed")
 
 
 def main(
