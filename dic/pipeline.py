@@ -16,14 +16,14 @@ from dic import provenance
 from dic.comparison import compare
 from dic.comparison import doubts as clip_on_doubts
 from dic.errors import ClockError, InputError
-from dic.frames import open_frames
+from dic.frames import open_frames, unreadable_frames
 from dic.judgement import alignment, reading_doubts
 from dic.measurement import Measurement, Scene
 from dic.preparation import Setup, set_up
 from dic.properties import doubts as property_doubts
 from dic.properties import evaluate, make_curve
 from dic.report import write_report
-from dic.sequence import tracked_or_stored
+from dic.sequence import tracked_or_stored, unreadable
 from dic.store import fields
 from dic.store.folder import claim_folder, remove_results
 from dic.store.results import write_results
@@ -147,6 +147,7 @@ def judged(
         quality=_quality(setup, history),
         notices=(
             *setup.source.notices,
+            *unreadable_frames(setup.source.names, unreadable(folder)),
             *record.notices,
             *setup.notices,
             *reading_doubts(history, curve, extensometer_asked=test.gauge.length is not None),

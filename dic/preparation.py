@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dic.correlation import Grid, Reference, Settings, Tracker, lay_grid, prepare_reference
-from dic.errors import Notice, PatternError, TestFileError
+from dic.errors import FrameError, Notice, PatternError, TestFileError
 from dic.frames import FrameSource
 from dic.pattern import Coupon, axes, axis_doubts, doubts, find_coupon, picture_quality
 from dic.strain import GaugeReader, Region
@@ -192,7 +192,10 @@ def _frames_at_rest(source: FrameSource, reference: Reference, grid: Grid, reade
     """Count the frames at the beginning in which the coupon neither moves nor stretches."""
     tracker = Tracker(reference, grid.neighbours())
     for index in range(1, min(MOST_AVERAGED, len(source))):
-        reading = reader.read(tracker.follow(source[index]))
+        try:
+            reading = reader.read(tracker.follow(source[index]))
+        except FrameError:
+            return index
         moved = float(np.hypot(*reading.shift_px))
         strained = abs(reading.axial) > REST_SIGMAS * reading.u_axial
         if not moved < REST_PX or strained:

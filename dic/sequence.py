@@ -12,8 +12,8 @@ from threadpoolctl import threadpool_limits
 
 from dic import provenance
 from dic.correlation import Match, track
-from dic.errors import TrackingError
-from dic.frames import FrameSource
+from dic.errors import FrameError, TrackingError
+from dic.frames import FrameSource, check_damage
 from dic.frames.readers import Grey
 from dic.preparation import Setup
 from dic.store import fields
@@ -38,6 +38,7 @@ def tracking_key(test: TestFile, source: FrameSource) -> str:
         "frames": source.listing(),
         "times": source.time_s.tolist(),
         "reference": test.frames.reference,
+        "mosaic": test.frames.mosaic,
         "correlation": test.correlation.model_dump(exclude={"periodic"}),
         "maps": test.maps.model_dump(exclude={"measure"}),
         "axis": test.gauge.axis,
@@ -69,6 +70,7 @@ def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[M
     }
     mapper = StrainMapper(window, (setup.region.axial, setup.region.transverse))
     measured = 0
+    damage: dict[int, str] = {}
     with (
         # BLAS threads spin for a while after each small product, on the cores that the kernels need.
         threadpool_limits(1, user_api="blas"),
@@ -76,11 +78,12 @@ def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[M
         fields.FieldsWriter(folder, grid, source.time_s, attributes) as writer,
     ):
         hashed = hashing.submit(source.sha256)
-        for match in track(_read_ahead(source), setup.reference, grid.neighbours()):
+        for match in track(_read_ahead(source, damage), setup.reference, grid.neighbours()):
             parts = (match.u, match.v, match.sigma_u, match.sigma_v)
             writer.put(match, mapper.strain(*(fields.spread(part, grid.inside) for part in parts)))
             measured += bool(match.converged.any())
             yield match
+        check_damage(damage, len(source), test.frames.source)
         # The frames of the reference always match; alone they say nothing.
         if measured <= setup.reference.frames:
             raise TrackingError(
@@ -89,14 +92,28 @@ def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[M
                 remedy="check that all frames show the same coupon, sharp and with the same light",
             )
         writer.note("frames_sha256", hashed.result())
+        writer.note("unreadable_frames", json.dumps(damage))
 
 
-def _read_ahead(source: FrameSource) -> Iterator[Grey]:
-    """Yield the frames, the next one being read while the last one is worked on."""
+def unreadable(folder: Path) -> dict[int, str]:
+    """Return why frames could not be used when the stored fields were tracked, by frame number."""
+    said = json.loads(str(fields.stored_attributes(folder).get("unreadable_frames", "{}")))
+    return {int(index): str(why) for index, why in said.items()}
+
+
+def _read_ahead(source: FrameSource, damage: dict[int, str]) -> Iterator[Grey | None]:
+    """Yield the frames, the next one being read while the last one is worked on.
+
+    A frame that cannot be read is None, and the reason goes into `damage`.
+    """
     with ThreadPoolExecutor(1) as reading:
         coming = reading.submit(source.__getitem__, 0)
-        for index in range(1, len(source) + 1):
-            frame = coming.result()
-            if index < len(source):
-                coming = reading.submit(source.__getitem__, index)
+        for index in range(len(source)):
+            frame: Grey | None = None
+            try:
+                frame = coming.result()
+            except FrameError as error:
+                damage[index] = error.what
+            if index + 1 < len(source):
+                coming = reading.submit(source.__getitem__, index + 1)
             yield frame

@@ -27,6 +27,8 @@ from dic.quantities import EXAMPLES, parse
 MAX_BYTES = 1_000_000
 #: What the usual file systems allow.
 LONGEST_NAME, LONGEST_PATH = 255, 1000
+#: Files that bring their own frame times.
+VIDEO_ENDINGS = (".avi", ".mp4", ".mov", ".mkv")
 
 
 def quantity(kind: str) -> BeforeValidator:
@@ -139,6 +141,13 @@ class Frames(Section):
     start: Time = 0.0
     exposure: Duration | None = None
     reference: int | tuple[int, int] | None = None
+    mosaic: Literal["RGGB", "BGGR", "GRBG", "GBRG"] | None = None
+
+    @property
+    def own_times(self) -> bool:
+        """Whether the frames are those of a video, with the times that it gives them."""
+        video = Path(self.source).suffix.lower() in VIDEO_ENDINGS
+        return video and self.rate is None and self.times is None and self.clock is None
 
     @property
     def first_reference(self) -> int:
@@ -158,7 +167,7 @@ class Frames(Section):
             for key in ("rate", "times", "clock")
             if getattr(self, key) is not None and not (key == "rate" and counted)
         ]
-        if len(given) != 1:
+        if len(given) != 1 and not self.own_times:
             found = " and ".join(given) or "none"
             raise ValueError(f"give one of rate, times or clock (found {found})")
         return self

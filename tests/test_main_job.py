@@ -201,12 +201,12 @@ BAD = {
     "no frames": (lambda t: edited(t, 'source = "frames"', 'source = "elsewhere"'), "no frames found"),
     "two frames": (lambda t: remove_frames(t, 2), "at least 3"),
     "unequal size": (
-        lambda t: overwrite_frames(t, lambda k, i: i[: -(k == 2) or None]),
-        r"cam_00003\.tif: is 180 × 259 px",
+        lambda t: overwrite_frames(t, lambda k, i: i[: -(k > 9) or None]),
+        r"cam_00011\.tif: 12 of 22 frames cannot be used; .* is 180 × 259 px",
     ),
     "unreadable": (
-        lambda t: (t.parent / "frames" / "cam_00004.tif").write_bytes(b"junk"),
-        r"cam_00004\.tif: cannot be read",
+        lambda t: (t.parent / "frames" / "cam_00001.tif").write_bytes(b"junk"),
+        r"cam_00001\.tif: cannot be read",
     ),
     "unknown key": (lambda t: edited(t, "rate = ", "rte = "), "did you mean 'rate'"),
     "wrong unit": (lambda t: edited(t, '"10 mm"', '"10 kg"'), r"width: 'kg' is not a unit of length"),
@@ -268,6 +268,39 @@ def test_a_load_record_with_a_results_name_survives(copy):
     with pytest.raises(InputError, match=r"'history\.csv' is read by the test"):
         dic.measure(copy, copy.parent)
     assert record.read_bytes() == before
+
+
+def test_damaged_frames_are_missing_and_the_rest_is_measured(copy, monkeypatch):
+    """One cut short, which only reading shows, one empty and one of another size: against the undamaged
+    test, the readings of all other frames stay within the noise of a reference of fewer frames."""
+    whole = dic.measure(copy, copy.parent / "whole").history
+    frames = sorted((copy.parent / "frames").iterdir())
+    frames[4].write_bytes(b"")
+    frames[12].write_bytes(frames[12].read_bytes()[:-9000])
+    overwrite_frame(frames[15], lambda image: image[:-1])
+    first = dic.measure(copy)
+    history = first.history
+    lost = np.isin(history.frame, [4, 12, 15])
+    assert set(np.array(history.status)[lost]) == {"the frame could not be read"}
+    assert np.isnan(history.axial[lost]).all()
+    assert np.isfinite(history.axial[~lost]).all()
+    allowed = 4 * np.hypot(history.u_axial, whole.u_axial)[~lost]
+    assert (abs(history.axial - whole.axial)[~lost] < allowed).all()
+    (said,) = (notice.text for notice in first.notices if notice.code == "frames_unreadable")
+    for words in ("3 of 22 frames", "cam_00005.tif cannot be read", "cam_00013.tif", "180 × 259 px"):
+        assert words in said
+    with first.to_xarray() as fields:
+        assert (fields.flag.values[lost] != 0).all()
+    monkeypatch.setattr("dic.sequence.track", tracked_again)
+    again = dic.measure(copy)
+    assert again.notices == first.notices
+    assert again.history.status == history.status
+
+
+def overwrite_frame(path, change):
+    import tifffile
+
+    tifffile.imwrite(path, change(tifffile.imread(path)))
 
 
 def test_results_may_lie_beside_the_inputs(copy):

@@ -15,6 +15,7 @@ class Flag(IntEnum):
     NOT_CONVERGED = 4
     DECORRELATED = 5
     SATURATED = 6
+    NO_PICTURE = 7
 
 
 #: What each flag means, for people.
@@ -26,4 +27,5 @@ MEANING = {
     Flag.NOT_CONVERGED: "the matching did not settle",
     Flag.DECORRELATED: "the pattern no longer resembles its reference",
     Flag.SATURATED: "too many clipped pixels",
+    Flag.NO_PICTURE: "the frame could not be read",
 }

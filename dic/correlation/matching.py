@@ -144,6 +144,22 @@ def match_frame(reference: Reference, frame: SplineImage, start: Floats) -> Matc
     )
 
 
+def lost_match(reference: Reference, flag: Flag, links: int = 0) -> Match:
+    """Return the match of a frame in which nothing is measured, every subset with the same flag."""
+    count = len(reference.x)
+    nowhere = np.full(count, np.nan)
+    return Match(
+        parameters=np.full((count, 2 * len(reference.settings.shape)), np.nan),
+        correlation=nowhere,
+        sigma_u=nowhere,
+        sigma_v=nowhere,
+        flag=np.full(count, flag, np.uint8),
+        iterations=np.zeros(count, np.uint8),
+        noise_grey=float("nan"),
+        links=links,
+    )
+
+
 def residual_gain(reference: Reference) -> float:
     """Return the residual's variance per variance that one raw frame's noise keeps after smoothing.
 

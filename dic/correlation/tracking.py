@@ -14,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dic.correlation.flags import Flag
-from dic.correlation.matching import Match, boxes, match_frame, residual_gain
+from dic.correlation.matching import Match, boxes, lost_match, match_frame, residual_gain
 from dic.correlation.noise import probe_noise
 from dic.correlation.reference import Reference, prepare_reference
 from dic.correlation.seeding import find_again
@@ -37,13 +37,13 @@ LEAST_FOR_PLANE = 6
 SEEDS = 9
 
 
-def track(frames: Iterable[Frame], reference: Reference, neighbours: Ints) -> Iterator[Match]:
+def track(frames: Iterable[Frame | None], reference: Reference, neighbours: Ints) -> Iterator[Match]:
     """Match frame after frame, each predicted from the two before it.
 
     Parameters
     ----------
     frames
-        Grey values, shape (rows, columns) each, of the reference's size.
+        Grey values, shape (rows, columns) each, of the reference's size; None for one that is missing.
     reference
         The prepared reference, n subsets.
     neighbours
@@ -57,7 +57,7 @@ def track(frames: Iterable[Frame], reference: Reference, neighbours: Ints) -> It
     """
     tracker = Tracker(reference, neighbours)
     for frame in frames:
-        yield tracker.follow(frame)
+        yield tracker.follow(frame) if frame is not None else tracker.pass_over()
 
 
 class Tracker:
@@ -92,6 +92,12 @@ class Tracker:
         whole = self._chained(match)
         self._renew(frame, match, whole)
         return whole
+
+    def pass_over(self) -> Match:
+        """Go on over a frame that is missing; the next one is predicted from what the motion was."""
+        if self._last is not None and self._pace is not None:
+            self._last = self._last + self._pace
+        return lost_match(self._first, Flag.NO_PICTURE, self._links)
 
     def _match(self, frame: Frame) -> tuple[Match, SplineImage]:
         reference = self._reference

@@ -64,8 +64,8 @@ def frame_clock(
     Parameters
     ----------
     section
-        ``[frames]`` of the test file: a fixed ``rate``; ``times``, a table, see `dic.frames.times`; or
-        a ``clock`` that the files carry themselves.
+        ``[frames]`` of the test file: a fixed ``rate``; ``times``, a table, see
+        `dic.frames.times`; a ``clock`` that the files carry themselves; or nothing, for a video.
     folder
         What relative paths start from.
     pages
@@ -79,6 +79,8 @@ def frame_clock(
         If a frame has no time, or two have the same.
     """
     names = [page.path.name for page in pages]
+    if section.own_times:
+        return _from_film(section, pages)
     if section.clock is None and section.times is None:
         assert section.rate is not None  # noqa: S101  (the test file's check)
         time_s = section.start + np.arange(len(names)) / section.rate
@@ -133,6 +135,18 @@ def _epoch(first: int, start: float) -> datetime | None:
         return instants.to_datetime(first - round(start * instants.SECOND))
     except OverflowError:
         return None
+
+
+def _from_film(section: Frames, pages: Sequence[Place]) -> FrameClock:
+    """Take the times that a video gives its own frames."""
+    times = np.array([getattr(page, "time_s", None) for page in pages], dtype=float)
+    if not (np.diff(times) > 0).all():
+        raise FrameError(
+            "gives its frames no increasing times", where=section.source, remedy="give frames.rate"
+        )
+    names = [f"{page.path.name}#{page.index + 1}" for page in pages]
+    time_s = section.start + times
+    return FrameClock(np.arange(len(pages)), time_s, None, tuple(gap_doubts(names, time_s)))
 
 
 def _from_names(section: Frames, names: list[str]) -> _Stamps:

@@ -3,20 +3,27 @@
 from __future__ import annotations
 
 import hashlib
-from dataclasses import dataclass
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass, replace
 from datetime import datetime
+from functools import cached_property
 from pathlib import Path
 
 import numpy as np
-from natsort import natsorted, ns
 from numpy.typing import NDArray
 
 from dic.errors import FrameError, Notice
 from dic.frames.clock import exposure_of, frame_clock
-from dic.frames.readers import READERS, Grey, Page, list_pages, read_page
+from dic.frames.depth import Depth, depth_in_use
+from dic.frames.folder import find_frames
+from dic.frames.readers import Grey, Page, list_pages, read_page, read_stored, reader_of
 from dic.testfile import Frames
 
 LEAST_FRAMES = 3
+#: Share of frames that may be unreadable; with more, something else than single frames is wrong.
+MOST_DAMAGED = 0.5
+#: Share of clipped colour values in the first frame that is worth a word.
+MANY_CLIPPED = 0.01
 
 
 @dataclass(frozen=True)
@@ -26,7 +33,7 @@ class FrameSource:
     Attributes
     ----------
     pages
-        Where each frame lies, shape (n,).
+        Where each frame lies, shape (n,); the first one is sound.
     time_s
         Time of each frame on the camera's clock, s, shape (n,).
     notices
@@ -48,8 +55,13 @@ class FrameSource:
         return len(self.pages)
 
     def __getitem__(self, index: int) -> Grey:
-        """Read one frame, grey values as stored, shape (rows, columns)."""
+        """Read one frame's grey values, shape (rows, columns); `FrameError` if it is damaged."""
         return read_page(self.pages[index])
+
+    @property
+    def damage(self) -> dict[int, str]:
+        """Why frames cannot be used, as far as their headers tell, by frame number."""
+        return {index: page.damage for index, page in enumerate(self.pages) if page.damage}
 
     @property
     def shape(self) -> tuple[int, int]:
@@ -63,12 +75,24 @@ class FrameSource:
         several = len({page.path for page in self.pages}) < len(self.pages)
         return tuple(f"{p.path.name}#{p.index + 1}" if several else p.path.name for p in self.pages)
 
+    @cached_property
+    def depth(self) -> Depth:
+        """Depth in use, from a few frames."""
+        return depth_in_use(self.pages[0], self._samples())
+
     def full_scale(self) -> float:
-        """Return the largest grey value the camera gives: the depth in use in the first frame."""
-        if self.pages[0].dtype == np.uint8:
-            return 255.0
-        brightest = int(self[0].max())
-        return float(next(top for top in (1023, 4095, 16383, 65535) if brightest <= top))
+        """Return the grey value of a saturated pixel."""
+        return self.depth.full_scale
+
+    def _samples(self) -> Iterator[NDArray[np.integer]]:
+        """Read first, middle and last frame, of a video, which is read forward only, the first."""
+        video = self.pages[0].film is not None
+        for index in (0,) if video else (0, len(self) // 2, len(self) - 1):
+            try:
+                yield read_stored(self.pages[index])
+            except FrameError:
+                if index == 0:
+                    raise
 
     def listing(self) -> str:
         """Return a digest of names, sizes and dates: whether these are still the same files."""
@@ -82,8 +106,11 @@ class FrameSource:
         """Return the SHA-256 over the contents of all files in order."""
         digest = hashlib.sha256()
         for path in dict.fromkeys(page.path for page in self.pages):
-            with path.open("rb") as file:
-                digest.update(hashlib.file_digest(file, "sha256").digest())
+            try:
+                with path.open("rb") as file:
+                    digest.update(hashlib.file_digest(file, "sha256").digest())
+            except OSError as error:
+                digest.update(f"unreadable: {error.strerror}".encode())
         return digest.hexdigest()
 
 
@@ -105,48 +132,100 @@ def open_frames(section: Frames, folder: Path) -> FrameSource:
     Raises
     ------
     FrameError
-        If there are none or fewer than three, if one is unreadable or of another size, or if the
-        times do not fit.
+        If there are none or fewer than three, if the first one or more than half of them cannot be
+        read or are of another size, or if the times do not fit.
     """
-    paths = _find(folder / section.source)
-    pages = tuple(page for path in paths for page in list_pages(path))
-    if len(pages) < LEAST_FRAMES:
+    paths, notices = find_frames(
+        folder / section.source, folder / section.times if section.times is not None else None
+    )
+    listed = [page for path in paths for page in _listed(path, alone=len(paths) == 1)]
+    if len(listed) < LEAST_FRAMES:
         raise FrameError(
-            f"holds {len(pages)} frame{'s' * (len(pages) != 1)}, and a test needs at least {LEAST_FRAMES}",
+            f"holds {len(listed)} frame{'s' * (len(listed) != 1)}, and a test needs at least {LEAST_FRAMES}",
             where=section.source,
         )
-    for page in pages:
-        if page.shape != pages[0].shape or page.dtype != pages[0].dtype:
-            raise FrameError(
-                f"is {_size(page)} where {pages[0].path.name} is {_size(pages[0])}",
-                where=str(page.path),
-                remedy="all frames of a test have one size and depth; take out what does not belong",
-            )
-    clock = frame_clock(section, folder, pages)
-    pages = tuple(pages[k] for k in clock.order)
-    return FrameSource(pages, clock.time_s, clock.notices, clock.epoch, exposure_of(section, pages))
+    clock = frame_clock(section, folder, listed)
+    pages = _fitting([listed[k] for k in clock.order], section.mosaic)
+    notices += [*_kind_doubts(pages), *clock.notices]
+    return FrameSource(pages, clock.time_s, tuple(notices), clock.epoch, exposure_of(section, pages))
 
 
-def _size(page: Page) -> str:
-    return f"{page.shape[1]} × {page.shape[0]} px {page.dtype}"
+def unreadable_frames(names: tuple[str, ...], damage: Mapping[int, str]) -> Iterator[Notice]:
+    """Say which frames are missing from a test, and why.
 
-
-def _find(source: Path) -> list[Path]:
-    """List the picture files behind a folder, a file or a glob, in natural order."""
-    if source.is_file():
-        found = [source]
-    elif source.is_dir():
-        found = list(source.iterdir())
-    elif source.parent.is_dir():
-        found = list(source.parent.glob(source.name))
-    else:
-        found = []
-    pictures = [p for p in found if p.suffix.lower() in READERS and not p.name.startswith(".")]
-    if not pictures:
-        there = source.exists() or (source.parent.is_dir() and "*" in source.name)
-        raise FrameError(
-            "no frames found" if there else "no frames found, because it does not exist",
-            where=str(source),
-            remedy=f"name a folder, a file or a pattern of {', '.join(READERS)} files",
+    Parameters
+    ----------
+    names
+        All frames' names.
+    damage
+        Reasons by frame number.
+    """
+    if damage:
+        said = "; ".join(f"{names[index]} {why}" for index, why in sorted(damage.items())[:3])
+        more = f"; and {len(damage) - 3} more" if len(damage) > 3 else ""
+        yield Notice(
+            "frames_unreadable",
+            f"{len(damage)} of {len(names)} frames could not be used and have no readings: {said}{more}.",
         )
-    return natsorted(pictures, key=lambda path: path.name, alg=ns.PATH)
+
+
+def check_damage(damage: Mapping[int, str], frames: int, where: str) -> None:
+    """Refuse a test of which most frames cannot be used."""
+    if len(damage) > MOST_DAMAGED * frames:
+        index, why = min(damage.items())
+        raise FrameError(
+            f"{len(damage)} of {frames} frames cannot be used; the first of them, frame {index}, {why}",
+            where=where,
+            remedy="export the frames anew, and take out what does not belong",
+        )
+
+
+def _listed(path: Path, *, alone: bool) -> list[Page]:
+    """List the pictures of a file; one of many that cannot be listed is one damaged picture."""
+    try:
+        return list_pages(path)
+    except FrameError as error:
+        if alone:
+            raise
+        return [Page(path, damage=error.what, remedy=error.remedy)]
+
+
+def _fitting(pages: list[Page], mosaic: str | None) -> tuple[Page, ...]:
+    """Mark the pictures that are not of the first one's size and depth; that one must be sound."""
+    first, fitting = pages[0], []
+    if first.damage:
+        raise FrameError(first.damage, where=str(first.path), remedy=first.remedy)
+    if mosaic is not None and first.channels > 1:
+        raise FrameError(
+            "is in colour, not a mosaic", where=str(first.path), remedy="leave out frames.mosaic"
+        )
+    for page in pages:
+        same = (page.shape, page.top, page.kind) == (first.shape, first.top, first.kind)
+        if not (same or page.damage):
+            page = replace(page, damage=f"is {page.size()} where {first.path.name} is {first.size()}")
+        fitting.append(replace(page, kind=mosaic) if mosaic is not None else page)
+    damage = {index: page.damage for index, page in enumerate(fitting) if page.damage}
+    check_damage(damage, len(fitting), str(fitting[min(damage, default=0)].path))
+    return tuple(fitting)
+
+
+def _kind_doubts(pages: tuple[Page, ...]) -> Iterator[Notice]:
+    """Say what was made of colours, and whether some of them are clipped where grey is not."""
+    if any(page.alpha for page in pages):
+        yield Notice("alpha_ignored", "The frames have a transparency channel, which was ignored.")
+    if pages[0].kind != "colour":
+        return
+    yield Notice(
+        "frames_in_colour",
+        "The frames are in colour; grey was taken as (red + 2 green + blue)/4. A monochrome camera resolves "
+        "finer speckles.",
+    )
+    stored = read_stored(pages[0])
+    top = depth_in_use(pages[0], [stored]).full_scale
+    clipped = float((stored >= top).any(axis=2).mean() - (stored >= top).all(axis=2).mean())
+    if clipped > MANY_CLIPPED and not reader_of(pages[0].path).video:
+        yield Notice(
+            "colour_clipped",
+            f"In {100 * clipped:.0f} % of the first frame's pixels one colour is clipped where grey as a "
+            "whole is not; expose less, or balance the light.",
+        )

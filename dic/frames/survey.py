@@ -181,7 +181,9 @@ def clocks_found(source: FrameSource) -> dict[str, ClockFound]:
     """
     tags = read_tags(source.pages)
     pattern = suggested_pattern([page.path.name for page in source.pages])
-    wanted = {
+    video = source.pages[0].film is not None
+    wanted: dict[str, dict[str, str] | None] = {
+        "video": {} if video else None,
         "tags": {"clock": "tags"} if best_stamps(tags) is not None else None,
         "names": {"clock": "names", "name_time": pattern} if pattern is not None else None,
         "modified": {"clock": "modified"},
@@ -191,7 +193,7 @@ def clocks_found(source: FrameSource) -> dict[str, ClockFound]:
         if keys is None:
             continue
         try:
-            section = Frames.model_validate({"source": ".", **keys})
+            section = Frames.model_validate({"source": source.pages[0].path.name, **keys})
             clock = frame_clock(section, Path(), source.pages, tags)
         except FrameError:
             continue

@@ -12,6 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy import ndimage
 
+from dic.correlation.flags import MEANING, Flag
 from dic.correlation.grid import Grid
 from dic.correlation.matching import Match
 from dic.correlation.moments import spread_weights
@@ -161,7 +162,7 @@ class GaugeReader:
         valid = self._member & match.converged
         share = float(valid.sum() / self._member.sum())
         if valid.sum() < LEAST_SUBSETS:
-            return _lost("every subset lost" if not valid.any() else "too few subsets left", share)
+            return _lost(_why_lost(match, valid), share)
         weights = self._weights(valid)
         affine = match.affine[valid]
         moved = affine[:, [0, 3]].T
@@ -314,6 +315,12 @@ def _end(along: Floats, across: Floats, depth: int) -> Floats | None:
     weights = np.zeros(len(along))
     weights[band] = np.linalg.pinv(np.column_stack([np.ones(len(band)), along[band], across[band]]))[0]
     return weights
+
+
+def _why_lost(match: Match, valid: NDArray[np.bool_]) -> str:
+    if (match.flag == Flag.NO_PICTURE).all():
+        return MEANING[Flag.NO_PICTURE]
+    return "every subset lost" if not valid.any() else "too few subsets left"
 
 
 def _lost(reason: str, share: float) -> Reading:
