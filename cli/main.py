@@ -7,7 +7,7 @@ import sys
 import typer
 
 from dic.errors import InputError
-from dic_cli import demo, inspect, render, run
+from dic_cli import demo, inspect, new, render, run
 
 app = typer.Typer(
     name="tauten",
@@ -18,6 +18,7 @@ app = typer.Typer(
     pretty_exceptions_enable=False,
 )
 app.command()(demo.demo)
+app.command()(new.new)
 app.command()(inspect.inspect)
 app.command()(run.run)
 app.command()(render.render)

@@ -66,6 +66,10 @@ FileName = Annotated[
     str, BeforeValidator(lambda written: _filled_in(written, "frames")), AfterValidator(_is_name)
 ]
 Column = Annotated[str | int, BeforeValidator(lambda written: _filled_in(written, "Force"))]
+Segment = Annotated[
+    Literal["all"] | Annotated[int, Field(ge=1)],
+    BeforeValidator(lambda written: _filled_in(written, "all")),
+]
 Unit = Annotated[str, BeforeValidator(lambda written: _filled_in(written, "kN"))]
 
 
@@ -179,7 +183,7 @@ class LoadRecord(Section):
     source: FileName
     sheet: str | None = None
     decimal: Literal[".", ","] | None = None
-    segment: Literal["all"] | Annotated[int, Field(ge=1)] | None = None
+    segment: Segment | None = None
     time: Column | None = None
     force: Column | None = None
     displacement: Column | None = None
@@ -398,9 +402,12 @@ def _explain(error: ValidationError, model: type[BaseModel], path: Path) -> Test
     if first["type"] == "to_fill_in":
         places = [one["loc"] for one in said if one["type"] == "to_fill_in"]
         # where a value may be of several kinds, the last part names one of them
-        blank = dict.fromkeys(".".join(str(part) for part in at if "(" not in str(part)) for at in places)
+        blank = list(
+            dict.fromkeys(".".join(str(part) for part in at if "(" not in str(part)) for at in places)
+        )
+        listed = " and ".join(filter(None, [", ".join(blank[:-1]), blank[-1]]))
         example = f'for example {key} = "{first["ctx"]["example"]}"'
-        return TestFileError(f"fill in {' and '.join(blank)}", where=str(path), remedy=example)
+        return TestFileError(f"fill in {listed}", where=str(path), remedy=example)
     if first["type"] == "missing":
         kind = "key" if sections else "section"
         return TestFileError(f"the {kind} '{key}' is missing", where=where, remedy="add it")

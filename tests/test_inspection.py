@@ -104,7 +104,7 @@ def test_a_gap_in_the_times_is_named(laid_out, tmp_path):
     (tmp_path / "t.csv").write_text("time (s)\n0\n1\n2\n3\n5\n6\n7\n8\n")
     found = inspect(laid_out(('rate = "2 Hz"', 'times = "t.csv"')))
     assert found.frames.gaps == (("cam_4.tif", "cam_5.tif"),)
-    assert "frames_gap" in codes(found)
+    assert "frames_dropped" in codes(found)
 
 
 @pytest.mark.parametrize(

@@ -30,20 +30,13 @@ MOST_UNCERTAIN = 0.1
 
 
 def frame_doubts(seen: FramesSeen) -> Iterator[Notice]:
-    """Warn of gaps, doubles and exposure that harm the measurement."""
-    if seen.gaps:
-        one, other = seen.gaps[0]
-        yield Notice(
-            "frames_gap",
-            f"{len(seen.gaps)} interval{'s are' if len(seen.gaps) > 1 else ' is'} longer than usual, the "
-            f"first from {one} to {other}; if frames were lost there, nothing is measured in between.",
-        )
+    """Warn of doubles and exposure that harm the measurement."""
     if seen.doubles:
         yield Notice(
             "frames_doubled",
             f"{len(seen.doubles)} frame{'s show' if len(seen.doubles) > 1 else ' shows'} exactly the picture "
-            f"before, the first is {seen.doubles[0]}; a camera that froze shows no new instant: take such "
-            "frames out and give each frame's time.",
+            f"before, the first is {seen.doubles[0]}; a camera that froze shows no new instant: slow it down "
+            "or film to a faster disk.",
         )
     worst = max(seen.exposures, key=lambda one: one.clipped, default=None)
     if worst is not None and worst.clipped > MOST_CLIPPED:
@@ -76,7 +69,7 @@ def frame_doubts(seen: FramesSeen) -> Iterator[Notice]:
 
 def record_doubts(record: LoadRecord) -> Iterator[Notice]:
     """Warn of a force that is none, or of the wrong sign, and pass on what reading the record met."""
-    yield from getattr(record, "notices", ())
+    yield from record.notices
     if not has_load(record):
         yield Notice(
             "record_no_load",

@@ -10,15 +10,13 @@ from numpy.typing import NDArray
 
 from dic.errors import InputError
 from dic.frames import FrameSource
+from dic.frames.doubts import gaps, same_picture
 from dic.inspection.seen import ColumnSeen, Exposure, FramesSeen, RecordSeen
 from dic.sync import LoadRecord
 from dic.testfile import Frames
 
 #: Called with the frames done and the frames there are.
 Progress = Callable[[int, int], None]
-
-#: An interval counts as a gap from this multiple of the usual one.
-GAP = 1.5
 
 
 def look_at_frames(
@@ -36,7 +34,7 @@ def look_at_frames(
             errors.append(str(error))
         else:
             means.append(float(grey.mean()))
-            if before is not None and np.array_equal(grey, before):
+            if before is not None and same_picture(grey, before):
                 doubles.append(name)
             if index in wanted:
                 exposures.append(_exposure(name, grey, full_scale))
@@ -59,7 +57,7 @@ def look_at_frames(
         shortest_s=float(step.min()),
         longest_s=float(step.max()),
         clock=_clock_in_words(section),
-        gaps=tuple((source.names[k], source.names[k + 1]) for k in np.flatnonzero(step > GAP * usual)),
+        gaps=tuple((gap.after, gap.before) for gap in gaps(source.names, source.time_s)),
         doubles=tuple(doubles),
         exposures=tuple(exposures),
         brightness_drift=float(np.max(np.abs(np.array(means) / max(means[0], 1e-9) - 1)))
@@ -83,11 +81,16 @@ def _exposure(name: str, grey: NDArray[Any], full_scale: float) -> Exposure:
 
 
 def _clock_in_words(section: Frames) -> str:
-    if section.rate is not None:
-        return f"a fixed rate of {section.rate:g} Hz"
     if section.times is not None:
         return f"the file {section.times}"
-    return "the frames themselves"
+    if section.clock is None:
+        return f"a fixed rate of {section.rate:g} Hz"
+    said = {
+        "tags": "each file's own time stamp",
+        "names": f"the file names, as {section.name_time}",
+        "modified": "the files' dates of modification",
+    }
+    return said.get(section.clock, section.clock)
 
 
 #: Arrays of the load record: quantity, attribute, unit of its values.
@@ -96,6 +99,7 @@ _ARRAYS = (
     ("force", "force_N", "N"),
     ("displacement", "displacement_mm", "mm"),
     ("extensometer", "extensometer", "1"),
+    ("trigger", "trigger", "1"),
 )
 
 
