@@ -85,7 +85,7 @@ class Header:
 
     def fits(self, quantity: str) -> bool:
         """Tell whether the unit, where there is one, is one of the quantity."""
-        if self.unit is None or not _reads_as_unit(self.unit):
+        if self.unit is None or not reads_as_unit(self.unit):
             return True
         if quantity == "trigger":
             return not any(_is_of(self.unit, kind) for kind in ("time", "force", "length"))
@@ -97,6 +97,8 @@ def headers_of(table: Table) -> list[Header]:
     found = []
     for position, text in enumerate(table.headers):
         name, unit = split_header(text)
+        if unit and text.endswith(unit) and not (reads_as_unit(unit) or _is_clock_unit(unit)):
+            name, unit = text, None  # "Date/Time"
         below = table.units[position] if position < len(table.units) else None
         found.append(Header(position, text, name, below or unit))
     return found
@@ -120,15 +122,13 @@ def find_columns(
     for quantity in ("time", "force"):
         if quantity not in taken:
             used = {header.position for header in taken.values()}
-            taken[quantity] = _recognised(table, quantity, headers, used, path)
+            taken[quantity] = _the_one(table, quantity, headers, used, path)
     return {quantity: taken[quantity] for quantity in KINDS if quantity in taken}
 
 
-def _recognised(table: Table, quantity: str, headers: list[Header], used: set[int], path: Path) -> Header:
+def _the_one(table: Table, quantity: str, headers: list[Header], used: set[int], path: Path) -> Header:
     """Return the one column whose header says that it is this quantity."""
-    there = [header for header in headers if header.guess() == quantity and header.position not in used]
-    called = [header for header in there if header.words & _KNOWN[quantity]]
-    found = called or there
+    found = recognised(quantity, [header for header in headers if header.position not in used])
     where = f"{path}, load_record.{quantity}"
     if len(found) == 1:
         return found[0]
@@ -145,6 +145,12 @@ def _recognised(table: Table, quantity: str, headers: list[Header], used: set[in
         where=where,
         remedy=f"name it, or give its number, as load_record.{quantity}",
     )
+
+
+def recognised(quantity: str, headers: list[Header]) -> list[Header]:
+    """Return the columns that could hold a quantity; those that are called so, before others by unit."""
+    there = [header for header in headers if header.guess() == quantity]
+    return [header for header in there if header.words & _KNOWN[quantity]] or there
 
 
 def listed(headers: list[Header]) -> str:
@@ -277,7 +283,7 @@ def _is_of(unit: str, kind: str) -> bool:
     return True
 
 
-def _reads_as_unit(unit: str) -> bool:
+def reads_as_unit(unit: str) -> bool:
     """Tell a unit from a remark such as "(filtered)"."""
     if len(unit) > 20:
         return False

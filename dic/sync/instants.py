@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import re
 from dataclasses import dataclass
-from datetime import datetime
+from datetime import datetime, timedelta
 from pathlib import Path
 
 import numpy as np
@@ -69,13 +69,16 @@ def from_clock(cells: list[str], path: Path) -> Instants:
         style = "hh:mm:ss" if np.isfinite(number["h"]).any() else "mm:ss"
         return Instants(_past_midnight(np.where(dated, np.nan, clock)), None, style)
     days, doubt, style = _days(number, parts, path)
-    total = days * _DAY + np.where(np.isfinite(number["m"]), clock, 0.0)
-    first = np.flatnonzero(np.isfinite(total))
-    if not first.size:
-        return Instants(total, None, style, doubt)
-    start = float(total[first[0]])
-    epoch = pd.Timestamp(0) + pd.Timedelta(seconds=round(start, 6))
-    return Instants(total - start, epoch.to_pydatetime(warn=False), style, doubt)
+    # A date alone is its midnight; what stands after it and is no clock time is none.
+    clock = np.where(np.isfinite(number["m"]), clock, 0.0)
+    there = np.flatnonzero(np.isfinite(days + clock))
+    if not there.size:
+        return Instants(days + clock, None, style, doubt)
+    first = there[0]
+    # Days apart first: seconds since 1970 would leave no room for microseconds.
+    time_s = (days - days[first]) * _DAY + (clock - clock[first])
+    epoch = datetime(1970, 1, 1) + timedelta(days=float(days[first]), seconds=float(clock[first]))
+    return Instants(time_s, epoch, style, doubt)
 
 
 def _clock(number: dict[str, Floats], half: pd.Series[str]) -> Floats:

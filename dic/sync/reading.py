@@ -209,7 +209,7 @@ def _one_clock(
             where=f"{table.path}, row {lines[segments[1].first]}",
             remedy='say which with load_record.segment = 1, or "all" to put them end to end',
         )
-    elif breaks and not isinstance(wanted, int):
+    elif breaks and len(segments) == 1:
         notices = (_joined(table, breaks),)
     for part in segments:
         refuse_backwards(time[part.first : part.last], lines[part.first : part.last], table.path)

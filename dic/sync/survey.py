@@ -11,7 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dic.errors import LoadRecordError, Notice
-from dic.sync.columns import Header, headers_of, unit_of
+from dic.sync.columns import Header, headers_of, reads_as_unit, recognised, unit_of
 from dic.sync.instants import find_segments
 from dic.sync.reading import decimals_assumed, open_record, read_instants
 from dic.tables import Table
@@ -77,11 +77,11 @@ class RecordSurvey:
     segments
         Stretches within which time runs on; none where no column could be told to be the time.
     interval_s
-        Median, least and largest time between rows, s; NaN where time is unknown.
+        Median, least and largest time between stamps that differ, s; NaN where time is unknown.
     start_s, end_s
         First and last time, s; NaN where time is unknown.
     epoch
-        Date and wall-clock time at ``start_s``, where the record holds dates.
+        Date and wall-clock time at the time zero, where the record holds dates.
     notices
         Doubts, with remedies.
     """
@@ -125,10 +125,10 @@ def look_at_record(path: Path, sheet: str | None = None, decimal: str | None = N
     """
     table = open_record(Path(path), decimal, sheet)
     headers = headers_of(table)
-    columns = tuple(_column(table, header) for header in headers)
+    called = recognised("time", headers) or [h for h in headers if table.is_instant(h.position)]
+    columns = tuple(_column(table, header, header in called) for header in headers)
     numbers = [header for header in headers if columns[header.position].missing < len(table.cells)]
     notices = [*table.notices, *decimals_assumed(table, [h for h in numbers if not _mixed(table, h)])]
-    called = [header for header in headers if columns[header.position].quantity == "time"]
     time_s, epoch = np.full(len(table.cells), np.nan), None
     if len(called) == 1:
         try:
@@ -155,7 +155,7 @@ def look_at_record(path: Path, sheet: str | None = None, decimal: str | None = N
     )
 
 
-def _column(table: Table, header: Header) -> ColumnSurvey:
+def _column(table: Table, header: Header, is_time: bool) -> ColumnSurvey:
     position = header.position
     clock = table.is_instant(position)
     if _mixed(table, header):
@@ -163,11 +163,12 @@ def _column(table: Table, header: Header) -> ColumnSurvey:
     else:
         values = read_instants(table, header, None).time_s if clock else table.values(position)
     there = values[np.isfinite(values)]
+    guess = header.guess()
     return ColumnSurvey(
         number=position + 1,
         header=header.text,
-        unit=header.unit,
-        quantity=header.guess() or ("time" if clock else None),
+        unit=header.unit if header.unit and reads_as_unit(header.unit) else None,
+        quantity="time" if is_time else guess if guess != "time" else None,
         low=float(there.min()) if there.size else float("nan"),
         high=float(there.max()) if there.size else float("nan"),
         missing=len(values) - there.size,
@@ -191,8 +192,9 @@ def _timing(table: Table, time_s: Floats) -> dict[str, Any]:
         nan = float("nan")
         return {"segments": (), "interval_s": (nan, nan, nan), "start_s": nan, "end_s": nan}
     time, lines = time_s[seen], table.cells.index.to_numpy()[seen]
-    segments = find_segments(time, ())
+    segments = find_segments(time, table.breaks if seen.size == len(time_s) else ())
     steps = np.concatenate([np.diff(time[s.first : s.last]) for s in segments])
+    steps = steps[steps != 0]  # stamps that repeat
     spread = (
         (float(np.median(steps)), float(steps.min()), float(steps.max()))
         if steps.size

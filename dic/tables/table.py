@@ -13,6 +13,7 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from dic.errors import InputError, Notice
+from dic.quantities import split_header
 from dic.tables import layout, text, workbook
 from dic.tables.layout import Row
 from dic.tables.numbers import Decimal, decimal_marks, has_marks, looks_like_value, to_numbers
@@ -379,6 +380,11 @@ def _data(
     return [body[i] for i in np.flatnonzero(keep)], tuple(breaks), notices
 
 
+def _same(words: list[str], names: list[str]) -> bool:
+    """Tell whether headers are the same, with their units or without."""
+    return [split_header(word)[0] for word in words] == [split_header(name)[0] for name in names]
+
+
 def _rows_of_data(body: list[Row], usual: list[int], headers: list[str]) -> NDArray[np.bool_]:
     """Tell rows of data, some of whose values may be missing, from text between them."""
     there = np.array([_values_in(body, column) for column in usual])
@@ -421,7 +427,7 @@ def _refuse_other_headers(rows: list[Row], headers: list[str], path: Path, fault
     names = [name for name in headers if name]
     for number, cells in rows:
         words = [cell for cell in cells if cell]
-        if len(words) == len(names) > 1 and words != names and not layout.is_units_row(cells):
+        if len(words) == len(names) > 1 and not _same(words, names) and not layout.is_units_row(cells):
             if any(map(layout.is_value, words)):
                 continue
             raise fault(
