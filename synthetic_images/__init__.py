@@ -13,6 +13,7 @@ __getattr__, __dir__, __all__ = lazy_loader.attach(
         "comparison": ["Compared", "compare"],
         "coupon": ["Coupon"],
         "files": ["render"],
+        "hole": ["HoledPlate"],
         "materials": ["Elastic", "NeoHookean", "RambergOsgood", "proof_stress"],
         "motions": ["Affine", "Bending", "Displacement", "Sinusoid", "homogeneous", "rigid", "rotation"],
         "scenario": ["Scenario", "load_scenario", "scenarios"],

@@ -7,7 +7,7 @@ from hypothesis import strategies as st
 
 from dic.pattern import axes
 from dic.strain import MapFlag, StrainMapper, Window, gauge_size
-from synthetic_images import Camera, Dots, picture
+from synthetic_images import Camera, Dots, HoledPlate, picture
 
 STEP, SUBSET = 10, 31
 WEIGHTINGS = ("even", "gaussian")
@@ -164,3 +164,19 @@ def test_stated_uncertainty_of_a_map_is_its_true_scatter(prepared, matched):
             here = maps[0].flag == flag
             ratio = np.sqrt(stated[here].mean() / scatter[here].mean())
             assert ratio == pytest.approx(1.0, abs=0.1), flag
+
+
+def test_degree_two_reaches_nearer_to_a_hole():
+    """Kirsch's displacements, no pictures: strain at the hole's edge, three times that far away."""
+    plate = HoledPlate((201.0, 153.0), radius=100.0, strain=0.001)
+    x, y = np.meshgrid(np.arange(0.0, 401, STEP), np.arange(0.0, 301, STEP))
+    u, v = (np.where(np.isfinite(plate.axial(x, y)), part, np.nan) for part in plate.displacement(x, y))
+    sigma = np.full_like(x, 0.01)
+    errors = {}
+    for degree in (1, 2):
+        found = StrainMapper(window(degree=degree), axes(0.0)).strain(u, v, sigma, sigma)
+        assert found.flag[15, 31] == MapFlag.ONE_SIDED  # 9 px from the edge
+        errors[degree] = abs(found.axial[15, 31] / plate.axial(x, y)[15, 31] - 1)
+    # The plane takes the mean of half a window, 30 px, over which strain falls by a quarter.
+    assert errors[1] > 0.08
+    assert errors[2] < 0.03
