@@ -66,12 +66,13 @@ def _show(title: str, rows: Iterable[tuple[str, str]]) -> None:
 def _frame_rows(seen: FramesSeen) -> Iterable[tuple[str, str]]:
     yield "frames", f"{seen.count}, from {seen.first} to {seen.last}"
     yield "size", f"{seen.columns} × {seen.rows} px"
-    yield "depth", f"{seen.stored_bits} bits stored, full scale {seen.full_scale:g}"
+    yield "depth", f"{seen.depth_bits} bits in use, full scale {seen.full_scale:g}"
     yield "clock", seen.clock
     yield "times", f"{seen.first_s:.4g} s to {seen.last_s:.4g} s"
     yield "interval", _intervals(seen)
     yield "gaps", _some([f"{one} to {other}" for one, other in seen.gaps])
     yield "doubles", _some(seen.doubles)
+    yield "unreadable", _some(seen.unreadable)
     yield "brightness drift", f"{seen.brightness_drift:.1%} at the most"
 
 

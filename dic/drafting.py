@@ -168,7 +168,7 @@ def _frames(seen: FramesSurvey, source: str) -> Iterator[str]:
         pace = f"{clock.rate_hz:.4g} frames per second over {clock.duration_s:.4g} s"
         yield from _comment(f"The clock is {_CLOCKS[taken]}: {pace}.")
         yield from _notes(clock.notices)
-        for key, value in clock.keys.items():
+        for key, value in clock.keys.items():  # a video's times need none
             yield f"{key} = {_quoted(value)}"
     yield from _other_clocks(seen, taken)
 
@@ -177,7 +177,9 @@ def _other_clocks(seen: FramesSurvey, taken: str | None) -> Iterator[str]:
     yield "# or in its place one of these:"
     for name, clock in seen.clocks.items():
         if name != taken:
-            keys = ", ".join(f"{key} = {_quoted(value)}" for key, value in clock.keys.items())
+            keys = (
+                ", ".join(f"{key} = {_quoted(value)}" for key, value in clock.keys.items()) or "none of them"
+            )
             yield from _comment(f"{keys}: would be {clock.rate_hz:.4g} frames per second", "  ")
     if taken is not None:
         yield '#   rate = "5 Hz"'

@@ -177,3 +177,15 @@ def test_it_is_json_without_what_is_not_a_number(laid_out):
     assert found["frames"]["exposures"][0]["detail_px"] is None
     assert found["record"]["rows"] == 101
     assert {"code", "text"} == set(found["warnings"][0])
+
+
+def test_a_damaged_frame_is_a_doubt_and_most_of_them_an_error(laid_out, tmp_path):
+    path = laid_out()
+    for k in (3, 4, 5, 6, 7):
+        file = tmp_path / "frames" / f"cam_{k}.tif"
+        file.write_bytes(file.read_bytes()[:600])
+        found = inspect(path)
+        assert bool(found.errors) == (k == 7)
+        if k < 7:
+            assert f"cam_{k}.tif" in found.frames.unreadable
+            assert "frames_unreadable" in codes(found)

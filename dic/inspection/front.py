@@ -9,7 +9,7 @@ from typing import Any
 import numpy as np
 
 from dic.errors import InputError, Notice
-from dic.frames import FrameSource, open_frames
+from dic.frames import FrameSource, check_damage, open_frames, unreadable_frames
 from dic.inspection.doubts import dimension_doubts, frame_doubts, missing_uncertainties, record_doubts
 from dic.inspection.looking import Progress, look_at_frames, look_at_record
 from dic.inspection.seen import FramesSeen, Inspection
@@ -49,8 +49,11 @@ def inspect(test: TestFile | str | Path, progress: Progress | None = None) -> In
     seen = None
     if source is not None:
         warnings += source.notices
-        seen = look_at_frames(source, sections["frames"], errors, progress)
+        seen = look_at_frames(source, sections["frames"], progress)
         warnings += frame_doubts(seen)
+        damage = {source.names.index(name): why for name, why in seen.unreadable.items()}
+        warnings += unreadable_frames(source.names, damage)
+        _attempt(lambda: check_damage(damage, len(source), sections["frames"].source), errors)
     if record is not None:
         warnings += record_doubts(record)
     warnings += _specimen_doubts(sections, record, seen)

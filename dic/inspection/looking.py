@@ -19,19 +19,18 @@ from dic.testfile import Frames
 Progress = Callable[[int, int], None]
 
 
-def look_at_frames(
-    source: FrameSource, section: Frames, errors: list[str], progress: Progress | None
-) -> FramesSeen:
+def look_at_frames(source: FrameSource, section: Frames, progress: Progress | None) -> FramesSeen:
     """Read every frame once, one in memory beside the one before."""
     full_scale = source.full_scale()
     wanted = {0, len(source) // 2, len(source) - 1}
     exposures, doubles, means = [], [], []
+    unreadable: dict[str, str] = {}
     before: NDArray[Any] | None = None
     for index, name in enumerate(source.names):
         try:
             grey = source[index]
         except InputError as error:
-            errors.append(str(error))
+            unreadable[name] = error.what
         else:
             means.append(float(grey.mean()))
             if before is not None and same_picture(grey, before):
@@ -47,7 +46,7 @@ def look_at_frames(
         count=len(source),
         rows=source.shape[0],
         columns=source.shape[1],
-        stored_bits=8 * source.pages[0].dtype.itemsize,
+        depth_bits=source.depth.bits,
         full_scale=full_scale,
         first=source.names[0],
         last=source.names[-1],
@@ -59,11 +58,17 @@ def look_at_frames(
         clock=_clock_in_words(section),
         gaps=tuple((gap.after, gap.before) for gap in gaps(source.names, source.time_s)),
         doubles=tuple(doubles),
+        unreadable=unreadable,
         exposures=tuple(exposures),
-        brightness_drift=float(np.max(np.abs(np.array(means) / max(means[0], 1e-9) - 1)))
-        if means
-        else np.nan,
+        brightness_drift=_drift(means),
     )
+
+
+def _drift(means: list[float]) -> float:
+    """Return the largest change from the first mean grey value, as a share of it."""
+    if not means or means[0] == 0:
+        return float("nan")
+    return float(np.max(np.abs(np.array(means) / means[0] - 1)))
 
 
 def _exposure(name: str, grey: NDArray[Any], full_scale: float) -> Exposure:
@@ -83,6 +88,8 @@ def _exposure(name: str, grey: NDArray[Any], full_scale: float) -> Exposure:
 def _clock_in_words(section: Frames) -> str:
     if section.times is not None:
         return f"the file {section.times}"
+    if section.rate is None and section.clock is None:
+        return "the video's own times"
     if section.clock is None:
         return f"a fixed rate of {section.rate:g} Hz"
     said = {

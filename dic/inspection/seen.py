@@ -40,8 +40,8 @@ class FramesSeen:
     ----------
     count, rows, columns
         How many, and the size of each, px.
-    stored_bits, full_scale
-        Depth as stored, and the largest grey value that the depth in use can hold.
+    depth_bits, full_scale
+        Depth in use, and the grey value of a saturated pixel.
     first, last
         Names of the first and the last frame.
     first_s, last_s, interval_s, shortest_s, longest_s
@@ -52,6 +52,8 @@ class FramesSeen:
         Pairs of frames with more time between them than usual.
     doubles
         Frames whose pixels are those of the frame before.
+    unreadable
+        Why frames cannot be read, by name.
     exposures
         Exposure of the first, middle and last frame that can be read.
     brightness_drift
@@ -61,7 +63,7 @@ class FramesSeen:
     count: int
     rows: int
     columns: int
-    stored_bits: int
+    depth_bits: int
     full_scale: float
     first: str
     last: str
@@ -73,6 +75,7 @@ class FramesSeen:
     clock: str
     gaps: tuple[tuple[str, str], ...]
     doubles: tuple[str, ...]
+    unreadable: dict[str, str]
     exposures: tuple[Exposure, ...]
     brightness_drift: float
 

@@ -78,6 +78,7 @@ class FieldsWriter:
         self._next = 0
         self._waiting: list[dict[str, NDArray[Any]]] = []
         try:
+            self._partial.unlink(missing_ok=True)  # a link would be followed
             self._file = h5netcdf.File(self._partial, "w")
         except OSError as error:
             raise StoreError(

@@ -45,6 +45,12 @@ def claim_folder(folder: Path, inputs: Iterable[Path]) -> None:
         If a result would take the place of an input or of somebody else's file, or if the folder
         cannot be made or cleared.
     """
+    if (folder / "figures").is_symlink():
+        raise StoreError(
+            "holds a link in place of its folder 'figures'",
+            where=str(folder),
+            remedy=f"remove the link, or {_ELSEWHERE}",
+        )
     taken = [path for path in _results(folder) if path.exists() or path.is_symlink()]
     for path in [*taken, folder / "figures"]:
         for given in inputs:
@@ -122,6 +128,8 @@ def _holds_results(folder: Path) -> bool:
 
 def _is_ours(path: Path) -> bool:
     """Tell whether a file at the path of a result carries this program's mark."""
+    if not path.is_file():  # a pipe would be waited for
+        return False
     if path.name == fields.NAME:
         return "tracking_key" in fields.stored_attributes(path.parent)
     try:
