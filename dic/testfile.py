@@ -357,10 +357,13 @@ def _content(path: Path) -> dict[str, Any]:
         raise TestFileError(
             f"cannot be read ({error.strerror})", where=str(path), remedy="check the path"
         ) from error
-    # the parser lets through what int() and the calendar refuse
-    except (ValueError, RecursionError) as error:
+    except (tomllib.TOMLDecodeError, UnicodeDecodeError) as error:
         raise TestFileError(
             f"is not valid TOML ({error})", where=str(path), remedy="correct it there"
+        ) from error
+    except (ValueError, RecursionError) as error:  # the parser lets these pass
+        raise TestFileError(
+            "is not valid TOML (a number, a date or the nesting is out of range)", where=str(path)
         ) from error
 
 

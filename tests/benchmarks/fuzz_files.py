@@ -29,13 +29,15 @@ class Kind:
     """One kind of file.
 
     `whole` writes a sound file's content for a generator of random numbers, `load` reads a folder that
-    holds it as the public functions do, and `ending` is the file's.
+    holds it as the public functions do, and `ending` is the file's.  Where `damage` is false, `whole` has
+    already done the harm.
     """
 
     whole: Callable[[np.random.Generator], bytes]
     load: Callable[[Path], None]
     ending: str
     cases: int
+    damage: bool = True
 
 
 def load_frames(folder: Path) -> None:
@@ -164,6 +166,62 @@ proof = [0.002]
 """
 
 
+#: Values that a test file may hold under any key, from sensible to hostile.
+ODD_VALUES = [
+    "0", "-1", "1", "3", "2.5", "nan", "-inf", "1e308", "9" * 30, "9" * 5000, "true", "1979-05-27",
+    "1979-05-27T07:32:00", "[]", "[[]]", "[0, 1]", "[1, 0]", "[-5, 1e9]", "{}", "{ strain = [0, 1] }",
+    "{ stress = ['1 MPa', '2 MPa'] }", "{ a = { b = 1 } }", "[" * 200 + "]" * 200, '""', '" "', '"auto"',
+    '"12 mm"', '"-12 mm"', '"12,5 mm"', '"5 Hz"', '"2 ms"', '"1e400 mm"', '"1 mm^9"', '"9**9**9 mm"',
+    '"0 K"', '"1 " ', '"' + "9" * 300 + ' mm"', '"\\u0000"', '"\\u001b[2J"', '"\\uFFFF"', '"a\\nb"',
+    '"' + "x" * 5000 + '"', '"' + "a/" * 3000 + '"', '"frames"', '"frames/*.tif"', '"**"', '"*"', '"["',
+    '"."', '"/"', '".."', '"/dev/zero"', '"/dev/null"', '"machine.csv"', '"test.toml"', '"Time"', '"Force"',
+    '"tags"', '"names"', '"modified"', '"f_{frame}"', '"f{number}"', '"{text}{text}{text}{text}"', '"%Y%m%d"',
+    '"%"', '"{"', '"all"', '"round"', '"flat"', '"__import__(\'os\').system(\'true\')"',
+]  # fmt: skip
+
+
+def odd_test_file(rng: np.random.Generator) -> bytes:
+    """Return a sound test file in which some keys have other values, and some strange keys are added."""
+    import tomllib
+
+    from dic.testfile import TestFile
+
+    known = [(name, key) for name, section in TestFile.model_fields.items() if not section.exclude
+             for key in getattr(section.annotation, "model_fields", {})]  # fmt: skip
+    content = {name: {key: json.dumps(value) for key, value in section.items() if not isinstance(value, dict)}
+               for name, section in tomllib.loads(test_file(rng).decode()).items()}  # fmt: skip
+    content["gauge"].pop("region")
+    inputs = [(name, key) for name, key in known if name in ("frames", "load_record", "sync")]
+    for _ in range(rng.integers(1, 4)):
+        among = inputs if rng.random() < 0.6 else known
+        name, key = among[rng.integers(len(among))]
+        if rng.random() < 0.1:
+            key = str(rng.choice(["", "\n", "widht", "\x1b[2J", "k" * 3000]))
+        content.setdefault(name, {})[key] = ODD_VALUES[rng.integers(len(ODD_VALUES))]
+    lines = []
+    for name, section in content.items():
+        lines += [f"[{name}]", *(f"{json.dumps(key)} = {value}" for key, value in section.items())]
+    return "\n".join(lines).encode()
+
+
+def inspect_test(folder: Path) -> None:
+    """Read all that a test file names, beside frames and a record that are sound."""
+    import tifffile
+
+    from dic.inspection import inspect
+    from dic_cli.inspected import as_json
+
+    rng = np.random.default_rng(0)
+    (folder / "frames").mkdir()
+    for k in range(4):
+        tifffile.imwrite(folder / "frames" / f"f_{k}.tif", grey(rng))
+    (folder / "machine.csv").write_bytes(record(rng))
+    found = inspect(folder / "f0.toml")
+    json.loads(as_json(found))
+    if found.errors:
+        raise InputError(found.errors[0].removesuffix("."))
+
+
 KINDS = {
     "TIFF": Kind(tiff, load_frames, ".tif", 800),
     "PNG": Kind(by_pillow("PNG"), load_frames, ".png", 300),
@@ -173,6 +231,7 @@ KINDS = {
     "video": Kind(video, load_frames, "", 150),
     "CSV": Kind(record, load_record, ".csv", 300),
     "TOML": Kind(test_file, load_test, ".toml", 300),
+    "TOML values": Kind(odd_test_file, inspect_test, ".toml", 500, damage=False),
 }
 
 
@@ -213,7 +272,7 @@ def one_case(name: str, number: int, folder: Path) -> tuple[str, str]:
     kind = KINDS[name]
     rng = np.random.default_rng([SEED, sorted(KINDS).index(name), number])
     sound = kind.whole(rng)
-    content = damaged(rng, sound)
+    content = damaged(rng, sound) if kind.damage else sound
     ending = kind.ending or _video_ending(sound)
     frames = kind.load is load_frames and name != "video"
     for k in range(3 if frames else 1):
