@@ -22,26 +22,38 @@ def _decisive(mark: str, other: str) -> re.Pattern[str]:
     m, o = re.escape(mark), re.escape(other)
     return re.compile(
         # No group of three follows it, no group begins with a nought or holds four digits, digits are
-        # grouped by another mark, an exponent follows, or the other mark stands twice.
+        # grouped by another mark, or an exponent follows.
         rf"^[+-]?(?:[0-9{_GROUPING}{o}]*{m}(?:[0-9]{{0,2}}|[0-9]{{4,}}){_EXPONENT}"
         rf"|0[0-9]*{m}[0-9]+{_EXPONENT}"
         rf"|[0-9]{{4,}}{m}[0-9]+{_EXPONENT}"
         rf"|[0-9]{{1,3}}(?:[{_GROUPING}{o}][0-9]{{3}})+{m}[0-9]*{_EXPONENT}"
-        rf"|[0-9]+{m}[0-9]+[eE][+-]?[0-9]+"
-        rf"|[0-9]{{1,3}}(?:{o}[0-9]{{3}}){{2,}})$",
+        rf"|[0-9]+{m}[0-9]+[eE][+-]?[0-9]+)$",
         re.MULTILINE,
     )
 
 
 _SHOWS = {".": _decisive(".", ","), ",": _decisive(",", ".")}
+#: Numbers in which a mark stands twice, so that it groups digits.
+_TWICE = {
+    mark: re.compile(rf"^[+-]?[0-9]{{1,3}}(?:{re.escape(mark)}[0-9]{{3}}){{2,}}", re.MULTILINE)
+    for mark in ".,"
+}
 
 
 def decimal_marks(cells: Sequence[str]) -> set[str]:
     """Return the marks that must be decimal marks in a column: none where it does not show."""
     together = "\n".join(cells)
-    if "." not in together and "," not in together:
-        return set()
-    return {mark for mark, pattern in _SHOWS.items() if pattern.search(together)}
+    commas, points = "," in together, "." in together
+    shown = set()
+    # Only a mark that is there can show; a single kind of mark, standing twice in a cell, groups digits.
+    if points and (_SHOWS["."].search(together) or (commas and _TWICE[","].search(together))):
+        shown.add(".")
+    if commas and (_SHOWS[","].search(together) or (points and _TWICE["."].search(together))):
+        shown.add(",")
+    if not shown and commas != points:
+        mark, other = (",", ".") if commas else (".", ",")
+        shown = {other} if _TWICE[mark].search(together) else set()
+    return shown
 
 
 def has_marks(cells: Sequence[str]) -> bool:
@@ -110,9 +122,16 @@ def _number(cell: str) -> float:
 _NO_MARKS = str.maketrans("", "", ".,:'’ \u00a0\u202f−")
 
 
+#: What columns of nothing but numbers consist of.
+_NO_NUMBER = str.maketrans("", "", "0123456789.,+-\n")
+
+
 def looks_like_value(cells: Sequence[str]) -> NDArray[np.bool_]:
     """Tell quickly which cells are numbers, whatever their marks mean; see `to_numbers` for the rest."""
-    text = np.array("\n".join(cells).translate(_NO_MARKS).split("\n"), dtype=object)
+    together = "\n".join(cells)
+    if cells and all(cells) and not together.translate(_NO_NUMBER):
+        return np.ones(len(cells), dtype=bool)
+    text = np.array(together.translate(_NO_MARKS).split("\n"), dtype=object)
     try:
         values = pd.to_numeric(pd.Series(text), errors="coerce").to_numpy(dtype=np.float64)
     except (OverflowError, ValueError, TypeError):
