@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import re
 import tomllib
+from collections.abc import Mapping
 from contextlib import suppress
 from math import pi
 from pathlib import Path
@@ -397,17 +399,13 @@ def _explain(error: ValidationError, model: type[BaseModel], path: Path) -> Test
     """Turn pydantic's most telling complaint into one sentence in the user's terms."""
     said = error.errors(include_url=False)
     first = min(said, key=lambda one: _TELLING.get(one["type"], 3))
-    *sections, key = [shorten(str(part), 60, placeholder=" …") for part in first["loc"]] or [""]
+    *sections, key = [shorten(part, 60, placeholder=" …") for part in _keys(first)] or [""]
     where = f"{path}, [{'.'.join(sections) or key}]"
     if first["type"] == "extra_forbidden":
         known = _keys_at(model, sections)
         return TestFileError(f"'{key}' is not a key of this file", where=where, remedy=nearest(key, known))
     if first["type"] == "to_fill_in":
-        places = [one["loc"] for one in said if one["type"] == "to_fill_in"]
-        # where a value may be of several kinds, the last part names one of them
-        blank = list(
-            dict.fromkeys(".".join(str(part) for part in at if "(" not in str(part)) for at in places)
-        )
+        blank = list(dict.fromkeys(".".join(_keys(one)) for one in said if one["type"] == "to_fill_in"))
         listed = " and ".join(filter(None, [", ".join(blank[:-1]), blank[-1]]))
         example = f'for example {key} = "{first["ctx"]["example"]}"'
         return TestFileError(f"fill in {listed}", where=str(path), remedy=example)
@@ -417,6 +415,16 @@ def _explain(error: ValidationError, model: type[BaseModel], path: Path) -> Test
     what = first["msg"].removeprefix("Value error, ")
     what = what[:1].lower() + what[1:] if not what.startswith("'") else what
     return TestFileError(f"{key}: {what}" if sections else what, where=where)
+
+
+#: What pydantic calls the kinds of value that a key may have.
+_KIND = re.compile(r"(int|str|bool|float|ModulusWindow|.*[(\[].*[)\]]|constrained-.*)$", re.DOTALL)
+
+
+def _keys(complaint: Mapping[str, Any]) -> list[str]:
+    """Return the keys that lead to what is complained of, without kinds of value and places in a list."""
+    parts = [part for part in complaint["loc"] if isinstance(part, str)]
+    return parts[:2] + [part for part in parts[2:] if not _KIND.match(part)]
 
 
 def _keys_at(model: type[BaseModel], sections: list[str]) -> list[str]:

@@ -72,6 +72,8 @@ def test_area_uncertainty_adds_in_squares(tmp_path):
         ('force = 3', 'force = ""\nunits = { Force = "" }',
          "fill in load_record.force and load_record.units.Force"),
         ("[frames]", '[sync]\noffset = ""\n[frames]', "fill in sync.offset;"),
+        ("[frames]", '[gauge]\nregion = "all"\n[frames]', r"\[gauge\]: region: input should be"),
+        ('rate = "300 1/min"', 'rate = 1\nreference = "first"', r"\[frames\]: reference: input should be"),
         ("m.csv", "m\\u0000.csv", "control character"),
         ("m.csv", "m" * 300, "more than 255 bytes"),
         ("m.csv", "m/" * 600, "longer than 1000"),

@@ -129,7 +129,7 @@ def dimension_doubts(
             "The coupon is thicker than wide; width is the side that the camera sees: check which is which.",
         )
     if most_force is not None:
-        stress = most_force / specimen.area
+        stress = most_force / max(specimen.area, 1e-300)  # two tiny sides may multiply to zero
         if not LEAST_STRESS_MPA <= stress <= MOST_STRESS_MPA:
             yield Notice(
                 "stress_odd",

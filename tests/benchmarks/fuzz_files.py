@@ -180,6 +180,19 @@ ODD_VALUES = [
 ]  # fmt: skip
 
 
+#: What belongs under a key, for half of the changes, so that they get as far as the files.
+FITTING = {
+    "source": ['"frames"', '"frames/*.tif"', '"machine.csv"', '"frames/f_0.tif"', '"/dev/zero"'],
+    "start": ['"1 s"', "-1e9"], "rate": ['"1e-9 Hz"', '"1e300 Hz"'], "exposure": ['"2 ms"', '"1 h"'],
+    "reference": ["0", "[0, 1]", "[1, 0]", "-1", "99"], "time": ["1", "2", "0", '"Force"'], "force": ["2"],
+    "displacement": ["2", "1"], "extensometer": ["2"], "trigger": ["1", "3"], "decimal": ['","', '"."'],
+    "segment": ['"all"', "1", "2", "0"], "tare": ["true", '"1 s"', '"1 h"'], "sheet": ['"a"'],
+    "units": ['{ Force = "N" }', '{ force = "kN" }', '{ time = "N" }', '{ x = "N" }'],
+    "offset": ['"1 s"', '"100 s"', "1e308", "nan"], "drift": ["0.01", "-0.09"], "scale": ["1e-300", "1e300"],
+    "width": ["1e-300", "1e300", '"1 km"'], "thickness": ["1e-300", "1e300"], "label": ['"[red]x[/red]"'],
+}  # fmt: skip
+
+
 def odd_test_file(rng: np.random.Generator) -> bytes:
     """Return a sound test file in which some keys have other values, and some strange keys are added."""
     import tomllib
@@ -195,9 +208,12 @@ def odd_test_file(rng: np.random.Generator) -> bytes:
     for _ in range(rng.integers(1, 4)):
         among = inputs if rng.random() < 0.6 else known
         name, key = among[rng.integers(len(among))]
-        if rng.random() < 0.1:
+        values = ODD_VALUES
+        if rng.random() < 0.6:
+            values = FITTING.get(key, ODD_VALUES)
+        elif rng.random() < 0.1:
             key = str(rng.choice(["", "\n", "widht", "\x1b[2J", "k" * 3000]))
-        content.setdefault(name, {})[key] = ODD_VALUES[rng.integers(len(ODD_VALUES))]
+        content.setdefault(name, {})[key] = values[rng.integers(len(values))]
     lines = []
     for name, section in content.items():
         lines += [f"[{name}]", *(f"{json.dumps(key)} = {value}" for key, value in section.items())]
