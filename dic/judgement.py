@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
+from dic.correlation.flags import MEANING, Flag
 from dic.errors import Notice
 from dic.properties import Curve, Evaluation
 from dic.strain import GaugeHistory
@@ -29,8 +30,15 @@ def alignment(history: GaugeHistory, found: Evaluation) -> dict[str, float]:
 def reading_doubts(history: GaugeHistory, curve: Curve, *, extensometer_asked: bool) -> list[Notice]:
     """Return a warning for frames without strain, without force, or without an extensometer asked for."""
     strain, ends = np.isnan(history.axial), np.isnan(history.extensometer)
+    repeated = np.array([status == MEANING[Flag.REPEATED_PICTURE] for status in history.status])
     cases = (
-        ("frames_lost", strain, "could not be measured", "see the column status of history.csv"),
+        (
+            "frames_repeated",
+            repeated,
+            "show the picture of the frame before, so the camera froze, and have no reading",
+            "check the camera's connection and the speed of its disk",
+        ),
+        ("frames_lost", strain & ~repeated, "could not be measured", "see the column status of history.csv"),
         (
             "extensometer_lost",
             ends & ~strain & extensometer_asked,

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 from dic.correlation import Grid, Reference, Settings, Tracker, lay_grid, prepare_reference
 from dic.errors import FrameError, Notice, PatternError, TestFileError
-from dic.frames import FrameSource
+from dic.frames import FrameSource, RepeatWatch
 from dic.pattern import Coupon, axes, axis_doubts, doubts, find_coupon, picture_quality
 from dic.strain import GaugeReader, Region
 from dic.testfile import Correlation, TestFile
@@ -190,12 +190,16 @@ def _mean(source: FrameSource, first: int, last: int) -> NDArray[np.float64]:
 
 def _frames_at_rest(source: FrameSource, reference: Reference, grid: Grid, reader: GaugeReader) -> int:
     """Count the frames at the beginning in which the coupon neither moves nor stretches."""
-    tracker = Tracker(reference, grid.neighbours())
+    tracker, watch = Tracker(reference, grid.neighbours()), RepeatWatch()
+    watch.frozen(source[0])
     for index in range(1, min(MOST_AVERAGED, len(source))):
         try:
-            reading = reader.read(tracker.follow(source[index]))
+            frame = source[index]
         except FrameError:
             return index
+        if watch.frozen(frame):
+            return index
+        reading = reader.read(tracker.follow(frame))
         moved = float(np.hypot(*reading.shift_px))
         strained = abs(reading.axial) > REST_SIGMAS * reading.u_axial
         if not moved < REST_PX or strained:

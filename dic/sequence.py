@@ -12,8 +12,9 @@ from threadpoolctl import threadpool_limits
 
 from dic import provenance
 from dic.correlation import Match, track
+from dic.correlation.flags import Flag
 from dic.errors import FrameError, TrackingError
-from dic.frames import FrameSource, check_damage
+from dic.frames import FrameSource, RepeatWatch, check_damage
 from dic.frames.readers import Grey
 from dic.preparation import Setup
 from dic.store import fields
@@ -101,19 +102,26 @@ def unreadable(folder: Path) -> dict[int, str]:
     return {int(index): str(why) for index, why in said.items()}
 
 
-def _read_ahead(source: FrameSource, damage: dict[int, str]) -> Iterator[Grey | None]:
+def _read_ahead(source: FrameSource, damage: dict[int, str]) -> Iterator[Grey | Flag]:
     """Yield the frames, the next one being read while the last one is worked on.
 
-    A frame that cannot be read is None, and the reason goes into `damage`.
+    In place of a frame that cannot be read or that repeats the one before stands a flag; what was wrong
+    with the former goes into `damage`.
     """
+    watch = RepeatWatch()
+
+    def read(index: int) -> Grey | Flag:
+        try:
+            frame = source[index]
+        except FrameError as error:
+            damage[index] = error.what
+            return Flag.NO_PICTURE
+        return Flag.REPEATED_PICTURE if watch.frozen(frame) else frame
+
     with ThreadPoolExecutor(1) as reading:
-        coming = reading.submit(source.__getitem__, 0)
+        coming = reading.submit(read, 0)
         for index in range(len(source)):
-            frame: Grey | None = None
-            try:
-                frame = coming.result()
-            except FrameError as error:
-                damage[index] = error.what
+            frame = coming.result()
             if index + 1 < len(source):
-                coming = reading.submit(source.__getitem__, index + 1)
+                coming = reading.submit(read, index + 1)
             yield frame

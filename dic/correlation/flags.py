@@ -16,6 +16,7 @@ class Flag(IntEnum):
     DECORRELATED = 5
     SATURATED = 6
     NO_PICTURE = 7
+    REPEATED_PICTURE = 8
 
 
 #: What each flag means, for people.
@@ -28,4 +29,5 @@ MEANING = {
     Flag.DECORRELATED: "the pattern no longer resembles its reference",
     Flag.SATURATED: "too many clipped pixels",
     Flag.NO_PICTURE: "the frame could not be read",
+    Flag.REPEATED_PICTURE: "repeated picture",
 }

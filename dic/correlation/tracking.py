@@ -37,13 +37,14 @@ LEAST_FOR_PLANE = 6
 SEEDS = 9
 
 
-def track(frames: Iterable[Frame | None], reference: Reference, neighbours: Ints) -> Iterator[Match]:
+def track(frames: Iterable[Frame | Flag], reference: Reference, neighbours: Ints) -> Iterator[Match]:
     """Match frame after frame, each predicted from the two before it.
 
     Parameters
     ----------
     frames
-        Grey values, shape (rows, columns) each, of the reference's size; None for one that is missing.
+        Grey values, shape (rows, columns) each, of the reference's size; for a frame that
+        is missing the flag that says why.
     reference
         The prepared reference, n subsets.
     neighbours
@@ -57,7 +58,7 @@ def track(frames: Iterable[Frame | None], reference: Reference, neighbours: Ints
     """
     tracker = Tracker(reference, neighbours)
     for frame in frames:
-        yield tracker.follow(frame) if frame is not None else tracker.pass_over()
+        yield tracker.pass_over(frame) if isinstance(frame, Flag) else tracker.follow(frame)
 
 
 class Tracker:
@@ -93,11 +94,11 @@ class Tracker:
         self._renew(frame, match, whole)
         return whole
 
-    def pass_over(self) -> Match:
+    def pass_over(self, why: Flag) -> Match:
         """Go on over a frame that is missing; the next one is predicted from what the motion was."""
         if self._last is not None and self._pace is not None:
             self._last = self._last + self._pace
-        return lost_match(self._first, Flag.NO_PICTURE, self._links)
+        return lost_match(self._first, why, self._links)
 
     def _match(self, frame: Frame) -> tuple[Match, SplineImage]:
         reference = self._reference

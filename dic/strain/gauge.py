@@ -318,8 +318,9 @@ def _end(along: Floats, across: Floats, depth: int) -> Floats | None:
 
 
 def _why_lost(match: Match, valid: NDArray[np.bool_]) -> str:
-    if (match.flag == Flag.NO_PICTURE).all():
-        return MEANING[Flag.NO_PICTURE]
+    for flag in (Flag.NO_PICTURE, Flag.REPEATED_PICTURE):
+        if (match.flag == flag).all():
+            return MEANING[flag]
     return "every subset lost" if not valid.any() else "too few subsets left"
 
 
