@@ -297,6 +297,26 @@ def test_damaged_frames_are_missing_and_the_rest_is_measured(copy, monkeypatch):
     assert again.history.status == history.status
 
 
+def test_a_film_without_loss_gives_what_its_frames_give(copy):
+    """The very same grey values on the same clock, so the very same readings; the film brings its times."""
+    import av
+    import tifffile
+
+    pictures = [tifffile.imread(path) for path in sorted((copy.parent / "frames").iterdir())]
+    with av.open(str(copy.parent / "film.mkv"), "w") as container:
+        stream = container.add_stream("ffv1", rate=2)
+        stream.height, stream.width = pictures[0].shape
+        stream.pix_fmt = "gray"
+        for picture in pictures:
+            container.mux(stream.encode(av.VideoFrame.from_ndarray(picture, format="gray")))
+        container.mux(stream.encode(None))
+    frames = dic.measure(copy, copy.parent / "a").history
+    edited(copy, 'source = "frames"\nrate = "2 Hz"', 'source = "film.mkv"')
+    film = dic.measure(copy, copy.parent / "b").history
+    np.testing.assert_allclose(film.time_s, frames.time_s, atol=1e-9)
+    np.testing.assert_array_equal(film.axial, frames.axial)
+
+
 def overwrite_frame(path, change):
     import tifffile
 

@@ -129,16 +129,16 @@ def pgm_read(page: Page) -> NDArray[Any]:
             raise ValueError("it ends before its last row")
         values = np.frombuffer(content, kind, count, first).astype(page.stored)
     else:
-        values = _plain_values(content[first:], count, page.stored)
+        values = _plain_values(content, first, count, page.stored)
     if values.max() > page.top:
         raise ValueError("a value is larger than its header says")
     return values.reshape(page.shape)
 
 
-def _plain_values(text: bytes, count: int, kind: np.dtype[Any]) -> NDArray[Any]:
+def _plain_values(text: bytes, at: int, count: int, kind: np.dtype[Any]) -> NDArray[Any]:
     """Read numbers written as text, a piece at a time, because as Python numbers they are bulky."""
     values = np.empty(count, kind)
-    done, at = 0, 0
+    done = 0
     while done < count and at < len(text):
         end = at + 1_000_000
         while end < len(text) and not text[end : end + 1].isspace():

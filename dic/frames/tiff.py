@@ -125,8 +125,12 @@ def _check_storage(path: Path, page: tifffile.TiffPage) -> None:
         raise ValueError("a strip or tile is empty")
     if max(ends) > size:
         raise ValueError(f"it ends after {size} bytes where {max(ends)} are needed")
-    if prod(page.chunks) * 2 > 2 * MOST_BYTES:
+    chunk = prod(page.chunks) * (1 if page.bitspersample == 8 else 2)
+    if chunk > MOST_BYTES:
         raise ValueError(f"it claims strips or tiles of {page.chunks} values")
+    # No compression makes noise twice as long.
+    if max(page.databytecounts) > 2 * chunk + 65536:
+        raise ValueError("a strip or tile is far longer than its values")
 
 
 def _planes_first(page: tifffile.TiffPage) -> bool:
