@@ -78,7 +78,9 @@ def _frame_rows(seen: FramesSeen) -> Iterable[tuple[str, str]]:
 
 def _record_rows(seen: RecordSeen) -> Iterable[tuple[str, str]]:
     yield "file", seen.file
-    yield "rows", str(seen.rows)
+    yield "written as", seen.written
+    yield "columns", _some(seen.headers, 12)
+    yield "rows used", str(seen.rows)
     yield "times", f"{seen.first_s:.6g} s to {seen.last_s:.6g} s"
     yield "interval", _intervals(seen)
 
@@ -106,7 +108,7 @@ def _show_exposures(seen: FramesSeen) -> None:
 
 
 def _show_columns(seen: RecordSeen) -> None:
-    table = Table(title="columns", title_justify="left")
+    table = Table(title="columns used", title_justify="left")
     for heading in ("quantity", "column", "lowest", "highest"):
         table.add_column(heading, justify="left" if heading in ("quantity", "column") else "right")
     for one in seen.columns:

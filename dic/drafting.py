@@ -189,7 +189,7 @@ def _other_clocks(seen: FramesSurvey, taken: str | None) -> Iterator[str]:
 def _record(read: RecordSurvey, source: str) -> Iterator[str]:
     yield ""
     yield "[load_record]"
-    yield from _comment(_written(read))
+    yield from _comment(f"{read.rows} rows, {read.in_words()}.")
     yield from _notes(read.notices)
     yield "# Its columns, by number, header and range:"
     for column in read.columns[:_MOST_COLUMNS]:
@@ -210,12 +210,6 @@ def _record(read: RecordSurvey, source: str) -> Iterator[str]:
     yield "# tare = true"
     yield "# Relative standard uncertainty of the force, from the load cell's calibration:"
     yield '# force_uncertainty = "0.25 %"'
-
-
-def _written(read: RecordSurvey) -> str:
-    mark = "decimal comma" if read.decimal == "," else "decimal point"
-    above = f", {read.heading} lines above the headers" if read.heading else ""
-    return f"{read.rows} rows, {read.encoding}, columns separated by {read.separator}, {mark}{above}."
 
 
 def _column_in_words(column: ColumnSurvey) -> str:

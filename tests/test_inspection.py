@@ -73,7 +73,10 @@ def test_a_sound_test_has_no_errors_and_no_doubts(laid_out):
         "time": (0, 10),
         "force": (0, pytest.approx(8000)),
     }
+    assert found.record.headers == ("Time (s)", "Force (kN)")
+    assert "decimal point" in found.record.written
     assert "start of loading" in found.overlap
+    assert "dates" not in found.overlap
 
 
 def test_exposure_is_that_of_the_pixels(laid_out):
@@ -189,3 +192,13 @@ def test_a_damaged_frame_is_a_doubt_and_most_of_them_an_error(laid_out, tmp_path
         if k < 7:
             assert f"cam_{k}.tif" in found.frames.unreadable
             assert "frames_unreadable" in codes(found)
+
+
+def test_dates_on_both_sides_give_an_offset_to_look_at(laid_out, tmp_path):
+    """The frames' clock counts from its first stamp, the record's from its own: 1.5 s later."""
+    stamps = "\n".join(f"cam_{k + 1}.tif,2026-05-04 10:00:0{k}.000" for k in range(8))
+    (tmp_path / "t.csv").write_text(f"frame,time\n{stamps}\n")
+    path = laid_out(('rate = "2 Hz"', 'times = "t.csv"'))
+    rows = "\n".join(f"2026-05-04 10:00:{k + 1.5:06.3f},{max(0, k - 3)}" for k in range(12))
+    (tmp_path / "machine.csv").write_text(f"Time,Force (kN)\n{rows}\n")
+    assert 'it would be "-1.5 s"' in inspect(path).overlap

@@ -60,7 +60,7 @@ def inspect(test: TestFile | str | Path, progress: Progress | None = None) -> In
     return Inspection(
         test_file=str(path),
         frames=seen,
-        record=None if record is None else look_at_record(record),
+        record=None if record is None else look_at_record(record, sections["load_record"]),
         overlap=_overlap(source, record, sections, errors, warnings),
         assumed=tuple(assumptions(sections)),
         errors=tuple(errors),
@@ -144,7 +144,7 @@ def _overlap(
             )
         return (
             f"the offset will be found from the start of loading; the frames last {filmed:.4g} s, the record "
-            f"{recorded:.4g} s"
+            f"{recorded:.4g} s{_by_dates(source, record)}"
         )
     at = clock.machine_time(source.time_s)
     inside = (at >= record.time_s[0]) & (at <= record.time_s[-1])
@@ -160,6 +160,14 @@ def _overlap(
         f"{int(inside.sum())} of {len(at)} frames lie within the record; they run from {at[0]:.4g} s to "
         f"{at[-1]:.4g} s of its clock"
     )
+
+
+def _by_dates(source: FrameSource, record: LoadRecord) -> str:
+    """Say what the dates in frames and record would make of the offset, where both hold some."""
+    if source.epoch is None or record.epoch is None:
+        return ""
+    apart = (source.epoch - record.epoch).total_seconds()
+    return f'; by the dates in the files it would be "{apart:.6g} s", if both clocks were set alike'
 
 
 def assumptions(sections: dict[str, Any]) -> Iterator[str]:

@@ -13,7 +13,9 @@ from dic.frames import FrameSource
 from dic.frames.doubts import gaps, same_picture
 from dic.inspection.seen import ColumnSeen, Exposure, FramesSeen, RecordSeen
 from dic.sync import LoadRecord
+from dic.sync import look_at_record as survey_record
 from dic.testfile import Frames
+from dic.testfile import LoadRecord as RecordSection
 
 #: Called with the frames done and the frames there are.
 Progress = Callable[[int, int], None]
@@ -110,17 +112,17 @@ _ARRAYS = (
 )
 
 
-def look_at_record(record: LoadRecord) -> RecordSeen:
-    """Return rates, ranges and columns of a load record."""
+def look_at_record(record: LoadRecord, section: RecordSection) -> RecordSeen:
+    """Return rates, ranges and columns of a load record, and how its file is written."""
     step = np.diff(record.time_s)
     columns = []
     for quantity, attribute, unit in _ARRAYS:
         values = getattr(record, attribute)
         if values is not None:
-            header = record.columns.get(quantity, quantity)
-            columns.append(
-                ColumnSeen(quantity, header, float(np.nanmin(values)), float(np.nanmax(values)), unit)
-            )
+            there = values[np.isfinite(values)]
+            low, high = (float(there.min()), float(there.max())) if there.size else (np.nan, np.nan)
+            columns.append(ColumnSeen(quantity, record.columns.get(quantity, quantity), low, high, unit))
+    survey = survey_record(record.path, section.sheet, section.decimal)
     return RecordSeen(
         file=str(record.path),
         rows=len(record.time_s),
@@ -130,4 +132,6 @@ def look_at_record(record: LoadRecord) -> RecordSeen:
         shortest_s=float(step.min()),
         longest_s=float(step.max()),
         columns=tuple(columns),
+        written=survey.in_words(),
+        headers=tuple(column.header for column in survey.columns),
     )

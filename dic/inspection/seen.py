@@ -104,7 +104,11 @@ class RecordSeen:
     first_s, last_s, interval_s, shortest_s, longest_s
         Machine time of the first and last row, and the usual, shortest and longest interval, s.
     columns
-        The columns that were understood.
+        The columns that are used.
+    written
+        How the file is written, in words.
+    headers
+        The headers of all columns.
     """
 
     file: str
@@ -115,6 +119,8 @@ class RecordSeen:
     shortest_s: float
     longest_s: float
     columns: tuple[ColumnSeen, ...]
+    written: str
+    headers: tuple[str, ...]
 
 
 @dataclass(frozen=True)

@@ -101,6 +101,12 @@ class RecordSurvey:
     epoch: datetime | None
     notices: tuple[Notice, ...]
 
+    def in_words(self) -> str:
+        """Return how the file is written, as part of a sentence."""
+        mark = "decimal comma" if self.decimal == "," else "decimal point"
+        above = f", {self.heading} lines above the headers" if self.heading else ""
+        return f"{self.encoding}, columns separated by {self.separator}, {mark}{above}"
+
     def candidates(self, quantity: str) -> tuple[ColumnSurvey, ...]:
         """Return the columns that could hold a quantity."""
         return tuple(column for column in self.columns if column.quantity == quantity)
