@@ -93,7 +93,8 @@ def frame_clock(
         return _ordered(names, _from_names(section, names), section.start)
     if section.clock == "modified":
         return _ordered(names, _from_dates(pages), section.start, keep=True)
-    return _from_tags(section, names, read_tags(pages) if tags is None else tags)
+    damaged = [bool(getattr(page, "damage", "")) for page in pages]
+    return _from_tags(section, names, read_tags(pages) if tags is None else tags, damaged)
 
 
 def _ordered(
@@ -174,15 +175,14 @@ def _from_dates(pages: Sequence[Place]) -> _Stamps:
         "shutter opened, and which copying or unpacking may change; give a rate, a times file or another "
         "clock if there is one.",
     )
-    where, remedy = (
-        'frames.clock = "modified"',
-        "the files were copied or changed; give a rate or a times file",
-    )
-    return _Stamps(ns, where, remedy, notices=(notice,))
+    remedy = "the files were copied or changed; give a rate or a times file"
+    return _Stamps(ns, 'frames.clock = "modified"', remedy, notices=(notice,))
 
 
-def _from_tags(section: Frames, names: list[str], tags: Sequence[Tags]) -> FrameClock:
-    stamps = best_stamps(tags)
+def _from_tags(
+    section: Frames, names: list[str], tags: Sequence[Tags], damaged: Sequence[bool]
+) -> FrameClock:
+    stamps = best_stamps(tags, damaged)
     if stamps is None:
         without = [name for name, one in zip(names, tags, strict=True) if not any(one.taken)]
         whose = listed(without) if without else "some of the frames"
@@ -192,25 +192,50 @@ def _from_tags(section: Frames, names: list[str], tags: Sequence[Tags]) -> Frame
             remedy="give a rate or a times file, or take out the files without a stamp",
         )
     remedy = "give a rate or a times file"
-    if any(one % instants.SECOND for one in stamps):
-        return _ordered(names, _Stamps(stamps, 'frames.clock = "tags"', remedy), section.start)
+    if any(one is not None and one % instants.SECOND for one in stamps):
+        return _ordered(names, _Stamps(_filled(stamps), 'frames.clock = "tags"', remedy), section.start)
     return _from_whole_seconds(names, stamps, section.start)
 
 
-def best_stamps(tags: Sequence[Tags]) -> list[int] | None:
-    """Return the instants from the tag nearest to the shutter that all frames have, ns; None without."""
+def best_stamps(tags: Sequence[Tags], damaged: Sequence[bool]) -> list[int | None] | None:
+    """Return the instants from the tag nearest to the shutter that all sound frames have, ns.
+
+    Parameters
+    ----------
+    tags
+        What each frame says.
+    damaged
+        Whether it is known to be damaged: then it has no reading, and need not say a time.
+
+    Returns
+    -------
+    list or None
+        None where no tag is common to the sound frames.
+    """
     for column in zip(*(one.taken for one in tags), strict=True):
-        known = [instant for instant in column if instant is not None]
-        if len(known) == len(tags):
-            return known
+        if all(bad or instant is not None for instant, bad in zip(column, damaged, strict=True)):
+            return list(column)
     return None
 
 
-def _from_whole_seconds(names: list[str], stamps: list[int], start: float) -> FrameClock:
+def _filled(stamps: Sequence[int | None]) -> list[int]:
+    """Fill in the instants that are missing, evenly between those that are known and on beyond them."""
+    filled, known = list(stamps), [k for k, instant in enumerate(stamps) if instant is not None]
+    for k in range(len(filled)):
+        if filled[k] is None:
+            after = next((place for place in known if place > k), known[-1])
+            before = next((place for place in reversed(known) if place < after), known[0])
+            first, last = stamps[before] or 0, stamps[after] or 0
+            filled[k] = first + (last - first) * (k - before) // max(after - before, 1)
+    return [instant or 0 for instant in filled]
+
+
+def _from_whole_seconds(names: list[str], stamps: list[int | None], start: float) -> FrameClock:
     """Take the even rate that explains stamps without sub-seconds, or the stamps if they all differ."""
     where, remedy = 'frames.clock = "tags"', "the stamps are whole seconds: give a rate or a times file"
-    seconds = np.array([one // instants.SECOND for one in stamps], dtype=np.int64)
-    even = even_rate(seconds) if (np.diff(seconds) >= 0).all() else None
+    frames = np.array([k for k, one in enumerate(stamps) if one is not None])
+    seconds = np.array([one // instants.SECOND for one in stamps if one is not None], dtype=np.int64)
+    even = even_rate(seconds, frames) if (np.diff(seconds) >= 0).all() else None
     if even is not None:
         notice = Notice(
             "stamps_whole_seconds",
@@ -227,7 +252,7 @@ def _from_whole_seconds(names: list[str], stamps: list[int], start: float) -> Fr
         "The files' time stamps are whole seconds, and no even rate explains them; each time may be wrong by "
         "up to 1 s. Give a times file if there is one.",
     )
-    return _ordered(names, _Stamps(stamps, where, remedy, notices=(coarse,)), start)
+    return _ordered(names, _Stamps(_filled(stamps), where, remedy, notices=(coarse,)), start)
 
 
 def _two_digits(value: float) -> str:

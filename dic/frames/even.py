@@ -26,7 +26,7 @@ class EvenRate:
     u_interval_s: float
 
 
-def even_rate(seconds: NDArray[np.int64]) -> EvenRate | None:
+def even_rate(seconds: NDArray[np.int64], frames: NDArray[np.int64] | None = None) -> EvenRate | None:
     """Find the even distance of frames whose stamps are whole seconds, rounded down.
 
     Each stamp s of frame k bounds the first time t and the interval d by s ≤ t + k·d < s + 1.  All
@@ -38,6 +38,8 @@ def even_rate(seconds: NDArray[np.int64]) -> EvenRate | None:
     ----------
     seconds
         Stamps in the frames' order, s, shape (n,), n ≥ 2.
+    frames
+        Numbers of the frames that they belong to, rising, the first 0; by default all, one by one.
 
     Returns
     -------
@@ -46,7 +48,8 @@ def even_rate(seconds: NDArray[np.int64]) -> EvenRate | None:
     """
     from scipy.optimize import linprog
 
-    k, stamps = np.arange(len(seconds)), (seconds - seconds[0]).astype(float)
+    k = np.arange(len(seconds)) if frames is None else frames
+    stamps = (seconds - seconds[0]).astype(float)
     above = np.column_stack([-np.ones(len(k)), -k])
     bounds = np.concatenate([above, -above]), np.concatenate([-stamps, stamps + 1])
     ends = []

@@ -180,11 +180,12 @@ def clocks_found(source: FrameSource) -> dict[str, ClockFound]:
         The frames in natural order of their names.
     """
     tags = read_tags(source.pages)
+    damaged = [bool(page.damage) for page in source.pages]
     pattern = suggested_pattern([page.path.name for page in source.pages])
     video = source.pages[0].film is not None
     wanted: dict[str, dict[str, str] | None] = {
         "video": {} if video else None,
-        "tags": {"clock": "tags"} if best_stamps(tags) is not None else None,
+        "tags": {"clock": "tags"} if best_stamps(tags, damaged) is not None else None,
         "names": {"clock": "names", "name_time": pattern} if pattern is not None else None,
         "modified": {"clock": "modified"},
     }

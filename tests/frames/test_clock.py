@@ -63,7 +63,9 @@ def folder(tmp_path):
     return tmp_path
 
 
-@pytest.mark.parametrize(("ending", "write"), [("tif", write_tiff), ("png", write_still)])
+@pytest.mark.parametrize(
+    ("ending", "write"), [("tif", write_tiff), ("png", write_still), ("jpg", write_still)]
+)
 def test_exif_stamps_with_sub_seconds_run_over_midnight(folder, ending, write):
     for k, moment in enumerate(moments(0, 0.125, 2.0, 2.130)):
         write(folder / "frames" / f"f{k}.{ending}", moment)
@@ -112,6 +114,16 @@ def test_frames_are_put_in_order_of_their_stamps(folder):
     assert "f2.tif" in notice.text
 
 
+@pytest.mark.parametrize("empty", [2, 4])
+def test_a_damaged_frame_without_a_stamp_leaves_the_others_their_times(folder, empty):
+    for k, moment in enumerate(moments(0, 0.2, 0.4, 0.6, 0.8)):
+        write_tiff(folder / "frames" / f"f{k}.tif", moment)
+    (folder / "frames" / f"f{empty}.tif").write_bytes(b"")
+    source = opened(folder, clock="tags")
+    np.testing.assert_allclose(source.time_s, [0, 0.2, 0.4, 0.6, 0.8], atol=1e-6)
+    assert list(source.damage) == [empty]
+
+
 def test_equal_stamps_are_named(folder):
     for k, moment in enumerate(moments(0, 0.2, 0.2, 0.4)):
         write_tiff(folder / "frames" / f"f{k}.tif", moment)
@@ -133,6 +145,15 @@ def test_whole_second_stamps_give_the_even_rate(folder, interval):
     assert even.u_interval_s < 1 / count
     # All stamps were rounded down, so that the first one is within a second of the truth.
     assert abs((source.epoch - BEGIN).total_seconds()) < 1
+
+
+def test_a_damaged_frame_takes_no_part_in_the_even_rate(folder):
+    for k, moment in enumerate(moments(*(0.2 * np.arange(30)))):
+        write_tiff(folder / "frames" / f"f{k:02d}.tif", moment, digits="")
+    whole = opened(folder, clock="tags").time_s
+    (folder / "frames" / "f13.tif").write_bytes(b"")
+    # One stamp less bounds the rate as well: at 5 Hz, four of five stamps do not.
+    np.testing.assert_allclose(opened(folder, clock="tags").time_s, whole, atol=0.02)
 
 
 def test_whole_second_stamps_that_no_even_rate_explains(folder):
