@@ -18,6 +18,10 @@ NAMES = {"\t": "tab", ";": "semicolon", "|": "bar", ",": "comma", " ": "blanks",
 _SAMPLE = 400
 #: Share of a sample's rows in which a column has to hold numbers.
 _USUALLY = 0.6
+#: Characters by which the separator is judged, at the most.
+_LOOKED_AT = 400_000
+#: Lines of numbers above the headers that are looked past.
+_NUMBERED = 5
 
 _PLAIN = r"[+\-−]?(?:\d+(?:[.,]\d*)?|\d{1,3}(?:[,.'’]\d{3})+(?:[.,]\d*)?|[.,]\d+)(?:[eE][+\-−]?\d+)?"
 _BLANKS = r"[+\-−]?\d{1,3}(?:[ \u00a0\u202f]\d{3})+"
@@ -80,6 +84,12 @@ def sample(rows: Sequence[Line]) -> Iterator[Line]:
 def find_separator(lines: Sequence[tuple[int, str]]) -> str:
     """Return what separates the columns: with it, most of the text is numbers in equally long rows."""
     looked_at = [line for _, line in sample(lines)]
+    total = 0
+    for count, line in enumerate(looked_at):
+        total += len(line)
+        if total > _LOOKED_AT:
+            looked_at = looked_at[: max(count, 1)]
+            break
     best, most = ",", 0.0
     for separator in SEPARATORS:
         rows = [split(line, separator) for line in looked_at if not is_comment(line, separator)]
@@ -121,19 +131,30 @@ def is_sound(cells: list[str], columns: list[int]) -> bool:
 
 def first_data_row(rows: Sequence[Row], columns: list[int]) -> int:
     """Return where the data begin; `len(rows)` where nowhere."""
-    start = next((i for i, (_, cells) in enumerate(rows) if is_sound(cells, columns)), len(rows))
-    # Rows in which a value is missing may come first.
-    while 0 < start < len(rows) and _has_gaps(rows[start - 1][1], columns):
-        start -= 1
+    start = _sound_from(rows, columns, 0)
     # A line of numbers above the headers, such as the columns' numbers, is no data.
-    later = range(start + 1, min(start + 3, len(rows)))
-    for i in later:
-        cells = rows[i][1]
-        if not any(map(is_value, cells)) and sum(map(bool, cells)) > len(cells) / 2:
-            following = first_data_row(rows[i:], columns) + i
-            if len(rows) - following >= 3:
-                return following
+    for _ in range(_NUMBERED):
+        near = range(start + 1, min(start + 3, len(rows)))
+        header = next((i for i in near if _is_text(rows[i][1], len(columns))), None)
+        following = len(rows) if header is None else _sound_from(rows, columns, header)
+        if len(rows) - following < 3:
+            break
+        start = following
     return start
+
+
+def _sound_from(rows: Sequence[Row], columns: list[int], first: int) -> int:
+    """Return the first row of data from `first` on, with those before it in which values are missing."""
+    after = range(first, len(rows))
+    start = next((i for i in after if is_sound(rows[i][1], columns)), len(rows))
+    while first < start < len(rows) and _has_gaps(rows[start - 1][1], columns):
+        start -= 1
+    return start
+
+
+def _is_text(cells: list[str], columns: int) -> bool:
+    """Tell whether a row could hold the headers of so many columns."""
+    return sum(map(bool, cells)) >= max(columns, 2) and not any(map(is_value, cells))
 
 
 def _has_gaps(cells: list[str], columns: list[int]) -> bool:

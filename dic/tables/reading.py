@@ -83,7 +83,7 @@ def read_table(
     lines = text.joined_quotes(found.lines, str(path), fault)
     separator = layout.find_separator(lines)
     _refuse_too_many(lines, separator, path, fault)
-    rows, titles = _rows(lines, separator)
+    rows, titles = _rows(lines, separator, str(path), fault)
     return _laid_out(
         path, rows, separator, fault, titles=titles, encoding=found.encoding, decimal=decimal, notices=[]
     )
@@ -125,7 +125,9 @@ def _refuse_too_many(
         )
 
 
-def _rows(lines: list[tuple[int, str]], separator: str) -> tuple[list[Row], dict[int, str]]:
+def _rows(
+    lines: list[tuple[int, str]], separator: str, where: str, fault: type[InputError]
+) -> tuple[list[Row], dict[int, str]]:
     """Take lines apart into cells; also return remarks, which may hold the headers, by line."""
     rows: list[Row] = []
     remarks: dict[int, str] = {}
@@ -134,6 +136,13 @@ def _rows(lines: list[tuple[int, str]], separator: str) -> tuple[list[Row], dict
             remarks[number] = line.strip().lstrip("#/%;").strip()
         else:
             rows.append((number, layout.split(line, separator)))
+    widest = max((len(cells) for _, cells in rows), default=0)
+    if widest > text.MOST_COLUMNS:
+        raise fault(
+            f"has {widest} columns, and no record has more than {text.MOST_COLUMNS}",
+            where=where,
+            remedy="export fewer columns",
+        )
     return [row for row in rows if any(row[1])], remarks
 
 

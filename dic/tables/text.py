@@ -8,8 +8,12 @@ from dataclasses import dataclass
 
 from dic.errors import InputError
 
-#: Longest line that a table has.
-MOST_CHARACTERS = 100_000
+#: Most columns that a record has, by far.
+MOST_COLUMNS = 1000
+#: Longest line of such a table.
+MOST_CHARACTERS = 20 * MOST_COLUMNS
+#: Lines cost memory even where they are blank.
+MOST_LINES = 2_000_000
 #: A million rows of five columns: eighty minutes at 200 Hz.  Each cell costs some 60 bytes while it is text.
 MOST_CELLS = 5_000_000
 #: Lines that a quoted cell may run over, as a header with a line break does.
@@ -69,7 +73,10 @@ def lines_of(data: bytes, where: str, fault: type[InputError]) -> Text:
     text = _decoded(data, encoding).removeprefix("\ufeff").rstrip("\x1a")
     if _CONTROL.search(text):
         raise fault("is no text table", where=where, remedy="export it as CSV")
-    lines = text.replace("\r\n", "\n").replace("\r", "\n").split("\n")
+    text = text.replace("\r\n", "\n").replace("\r", "\n")
+    if text.count("\n") > MOST_LINES:
+        raise fault(f"holds more than {MOST_LINES} lines", where=where, remedy="export only this test")
+    lines = text.split("\n")
     if max(map(len, lines)) > MOST_CHARACTERS:
         raise fault(
             f"has a line of more than {MOST_CHARACTERS} characters, so it is no table",

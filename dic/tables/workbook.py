@@ -10,14 +10,12 @@ from typing import Any
 from xml.etree.ElementTree import ParseError
 
 from dic.errors import InputError
-from dic.tables.text import MOST_CELLS
+from dic.tables.text import MOST_CELLS, MOST_COLUMNS
 
 #: What a workbook of `MOST_CELLS` numbers unpacks to, about.
 MOST_UNPACKED = 250_000_000
 #: Texts that cells share are kept in memory all at once.
 MOST_SHARED = 20_000_000
-#: Columns of a workbook; some programs reserve all that there could be.
-MOST_COLUMNS = 1000
 _CHUNK = 1 << 20
 
 Rows = list[tuple[int, list[str]]]
