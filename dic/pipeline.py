@@ -150,6 +150,7 @@ def judged(
             *unreadable_frames(setup.source.names, unreadable(folder)),
             *record.notices,
             *setup.notices,
+            *found.notices,
             *reading_doubts(history, curve, extensometer_asked=test.gauge.length is not None),
             *property_doubts(found.properties, test.specimen, test.load_record.force_uncertainty),
             *clip_on_doubts(clip_on),

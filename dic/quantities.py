@@ -180,7 +180,8 @@ def split_header(header: str) -> tuple[str, str | None]:
 
 
 #: How people like to read each internal unit.
-_DISPLAY = {"youngs_modulus": ("GPa", 1e-3), "shear_modulus": ("GPa", 1e-3)}
+_MODULI = ("youngs_modulus", "shear_modulus", "bulk_modulus", "lame_constant")
+_DISPLAY = dict.fromkeys(_MODULI, ("GPa", 1e-3))
 
 
 def for_people(value: float, unit: str, name: str = "") -> tuple[float, str]:

@@ -1,8 +1,9 @@
 """Stress, modulus, Poisson's ratio, proof stress, strength, and Hooke's law."""
 
-from dic.properties.curve import make_curve, peak_force
+from dic.properties.curve import make_curve
 from dic.properties.doubts import doubts
 from dic.properties.evaluation import evaluate
+from dic.properties.peak import peak_force
 from dic.properties.result import Curve, Evaluation, ModulusLine, Property
 
 __all__ = ["Curve", "Evaluation", "ModulusLine", "Property", "doubts", "evaluate", "make_curve", "peak_force"]

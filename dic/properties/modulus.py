@@ -4,10 +4,11 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
+from dic.properties.fits import Kind, Window, end_line, fit
 from dic.properties.loading import MIN_FRAMES, Loading, Undetermined, passage
 from dic.properties.proof import crossing
 from dic.testfile import ModulusWindow
-from dic.uncertainty import Line, straight_line
+from dic.uncertainty import Line
 
 #: Window of ISO 6892-1's annex on the modulus, as shares of the yield point [from memory].
 SHARES = (0.1, 0.4)
@@ -30,7 +31,7 @@ class Elastic:
     Attributes
     ----------
     window
-        Frames of the `Loading` that were used.
+        Frames of the `Loading` that were used, and how.
     line
         Strain on stress: slope 1/E in 1/MPa.
     rule
@@ -39,7 +40,7 @@ class Elastic:
         What was assumed, a sentence each.
     """
 
-    window: slice
+    window: Window
     line: Line
     rule: str
     notes: tuple[str, ...] = ()
@@ -49,14 +50,18 @@ class Elastic:
         """Young's modulus, MPa."""
         return 1 / self.line.slope
 
+    @property
+    def end(self) -> int:
+        """First frame after the window."""
+        return self.window.frames.stop
 
-def fit_elastic(loading: Loading, wanted: ModulusWindow | str) -> Elastic:
+
+def fit_elastic(loading: Loading, wanted: ModulusWindow | str, source: str = "as given") -> Elastic:
     """Fit the elastic part.
 
-    Strain is regressed on stress, not stress on strain: the force, averaged from a dense record, is
-    the quieter of the two relative to its range, and noise in the abscissa would pull the slope low by
-    var(noise)/var(signal).  Poisson's ratio uses the same abscissa (ASTM E132), so E, ν and G fit
-    together.
+    Strain is laid over stress, not stress over strain: the force, averaged from a dense record, is the
+    quieter of the two relative to its range.  Poisson's ratio uses the same abscissa (ASTM E132), so E, ν
+    and G fit together.
 
     Parameters
     ----------
@@ -67,6 +72,8 @@ def fit_elastic(loading: Loading, wanted: ModulusWindow | str) -> Elastic:
         annex on the modulus has it, the yield point being the 0.2 % proof stress that the line itself
         gives, repeated until the window stays.  Where that cannot be had: the strains of ISO 527-1, with
         the reason in the notes.
+    source
+        Who asked for the window, in words.
 
     Returns
     -------
@@ -86,14 +93,16 @@ def fit_elastic(loading: Loading, wanted: ModulusWindow | str) -> Elastic:
                 loading,
                 passage(loading.strain, *PLASTICS),
                 "strain 0.0005 to 0.0025 (ISO 527-1)",
-                (f"the window is that for plastics: {reason}",),
+                notes=(f"the window is that for plastics: {reason}",),
             )
+    bounds = wanted.strain if wanted.strain is not None else wanted.stress
+    assert bounds is not None  # noqa: S101  (the model holds one of the two)
+    low, high = _along(loading, bounds)
     if wanted.strain is not None:
-        low, high = _along(loading, wanted.strain)
-        return _fit(loading, passage(loading.strain, low, high), f"strain {low:g} to {high:g}, as given")
-    assert wanted.stress is not None  # noqa: S101  (the model holds one of the two)
-    low, high = _along(loading, wanted.stress)
-    return _fit(loading, passage(loading.stress, low, high), f"stress {low:g} MPa to {high:g} MPa, as given")
+        frames, rule = passage(loading.strain, low, high), f"strain {low:g} to {high:g}, {source}"
+        return _fit(loading, frames, rule, wanted.kind, strains=(low, high))
+    frames, rule = passage(loading.stress, low, high), f"stress {low:g} MPa to {high:g} MPa, {source}"
+    return _fit(loading, frames, rule, wanted.kind, stresses=(low, high))
 
 
 def _along(loading: Loading, window: tuple[float, float]) -> tuple[float, float]:
@@ -107,13 +116,13 @@ def _between_shares_of_yield(loading: Loading) -> Elastic:
     yield_point = _first_guess(loading)
     found: Elastic | None = None
     for _ in range(ROUNDS):
-        window = passage(loading.stress, *(share * yield_point for share in SHARES))
-        if found is not None and window == found.window:
+        frames = passage(loading.stress, *(share * yield_point for share in SHARES))
+        if found is not None and frames == found.window.frames:
             break
         found = _fit(
-            loading, window, "10 % to 40 % of the 0.2 % proof stress (ISO 6892-1, annex on the modulus)"
+            loading, frames, "10 % to 40 % of the 0.2 % proof stress (ISO 6892-1, annex on the modulus)"
         )
-        yield_point = crossing(loading, found.line, window.stop, YIELD_OFFSET).stress
+        yield_point = crossing(loading, found.line, found.end, YIELD_OFFSET).stress
     assert found is not None  # noqa: S101  (there is a first round)
     if yield_point / found.modulus >= LARGEST_YIELD_STRAIN:
         raise Undetermined("the curve bends all along and shows no yield point like a metal's")
@@ -133,14 +142,44 @@ def _first_guess(loading: Loading) -> float:
     return guess
 
 
-def _fit(loading: Loading, window: slice, rule: str, notes: tuple[str, ...] = ()) -> Elastic:
-    count = window.stop - window.start
+def _fit(
+    loading: Loading,
+    frames: slice,
+    rule: str,
+    kind: Kind = "regression",
+    *,
+    strains: tuple[float, float] | None = None,
+    stresses: tuple[float, float] | None = None,
+    notes: tuple[str, ...] = (),
+) -> Elastic:
+    count = frames.stop - frames.start
     if count < MIN_FRAMES:
         raise Undetermined(
             f"{count} frames lie in the window ({rule}), {MIN_FRAMES} are needed: "
             "take frames more often, or give properties.modulus a wider window"
         )
-    line = straight_line(loading.stress[window], loading.strain[window])
+    window = Window(frames, _ends(loading, frames, strains, stresses, kind), kind)
+    line = fit(loading, loading.strain, loading.u_strain, window)
     if not line.slope > 0:
         raise Undetermined(f"strain does not grow with stress in the window ({rule})")
     return Elastic(window, line, rule, notes)
+
+
+def _ends(
+    loading: Loading,
+    frames: slice,
+    strains: tuple[float, float] | None,
+    stresses: tuple[float, float] | None,
+    kind: Kind,
+) -> tuple[float, float]:
+    """Return the stresses at the window's ends; a strain is turned into stress by the curve around it."""
+    if stresses is not None:
+        return stresses
+    if strains is None or kind == "regression":
+        return float(loading.stress[frames.start]), float(loading.stress[frames.stop - 1])
+    high = end_line(loading, loading.strain, frames, 1)
+    top = (strains[1] - high.intercept) / high.slope
+    if kind == "secant":
+        return 0.0, top
+    low = end_line(loading, loading.strain, frames, 0)
+    return (strains[0] - low.intercept) / low.slope, top

@@ -7,6 +7,8 @@ from dataclasses import dataclass, field
 import numpy as np
 from numpy.typing import NDArray
 
+from dic.errors import Notice
+
 Floats = NDArray[np.float64]
 
 
@@ -49,6 +51,23 @@ class Property:
 
 
 @dataclass(frozen=True)
+class Dense:
+    """The load record itself, denser than the frames.
+
+    Attributes
+    ----------
+    time_s
+        The machine's clock, s, shape (n,).
+    force_N, noise_N
+        Force without spikes, and the standard deviation of its noise.
+    """
+
+    time_s: Floats
+    force_N: Floats
+    noise_N: Floats
+
+
+@dataclass(frozen=True)
 class Curve:
     """Stress and strain at the same instants: what all properties are read from.
 
@@ -76,6 +95,14 @@ class Curve:
         Standard uncertainty of the largest force from a fracture between two samples.
     spikes_s
         Times of the record's samples that were left out as spikes, on the machine's clock.
+    u_peak_time_s
+        Standard uncertainty of the time of the largest force.
+    u_stress_MPa
+        Standard uncertainty of the stresses from the force's noise, shape (n,); None where unknown.
+    displacement_mm
+        The crosshead's travel, shape (n,); None where it was not recorded.
+    dense
+        The load record between the frames; None where there is none.
     """
 
     time_s: Floats
@@ -92,6 +119,10 @@ class Curve:
     peak_at_end: bool = False
     u_peak_between_N: float = 0.0
     spikes_s: tuple[float, ...] = ()
+    u_peak_time_s: float = 0.0
+    u_stress_MPa: Floats | None = None
+    displacement_mm: Floats | None = None
+    dense: Dense | None = None
 
 
 @dataclass(frozen=True)
@@ -132,7 +163,10 @@ class Evaluation:
         By name, in the order of the sheet; a property that could not be had stands there as NaN.
     line
         The line behind Young's modulus.
+    notices
+        Where strain counts from, if that is not plainly the rest, and other things people should know.
     """
 
     properties: dict[str, Property]
     line: ModulusLine
+    notices: tuple[Notice, ...] = ()

@@ -21,6 +21,8 @@ TITLES = {
     "youngs_modulus": "Young's modulus",
     "poissons_ratio": "Poisson's ratio",
     "shear_modulus": "Shear modulus",
+    "bulk_modulus": "Bulk modulus",
+    "lame_constant": "Lamé's first constant",
     "tensile_strength": "Tensile strength",
 }
 

@@ -111,6 +111,8 @@ def pull():
                 "youngs_modulus": E,
                 "poissons_ratio": NU,
                 "shear_modulus": E / (2 * (1 + NU)),
+                "bulk_modulus": E / (3 * (1 - 2 * NU)),
+                "lame_constant": E * NU / ((1 + NU) * (1 - 2 * NU)),
                 "proof_stress_0_2": sign * RP02,
                 "proof_stress_0_1": sign * RP02 * 0.5 ** (1 / EXPONENT),
                 "tensile_strength": sign * peak,

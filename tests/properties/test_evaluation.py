@@ -78,6 +78,8 @@ def test_the_entries_stand_in_the_order_of_the_sheet(pull):
         ("youngs_modulus", "E", "MPa"),
         ("poissons_ratio", "ν", ""),
         ("shear_modulus", "G", "MPa"),
+        ("bulk_modulus", "K", "MPa"),
+        ("lame_constant", "λ", "MPa"),
         ("proof_stress_0_2", "Rp0.2", "MPa"),
         ("proof_stress_0_1", "Rp0.1", "MPa"),
         ("tensile_strength", "Rm", "MPa"),
@@ -294,7 +296,9 @@ def test_an_impossible_ratio_gives_no_shear_modulus(pull):
     drawn = pull()
     odd = replace(drawn, history=replace(drawn.history, transverse=1.5 * drawn.history.axial))
     found = sheet(odd)
-    assert found.properties["poissons_ratio"].value == pytest.approx(-1.5)
+    assert found.properties["poissons_ratio"].value == pytest.approx(
+        -1.5, abs=1e-4
+    )  # each slope's noise is weighed by itself
     assert "no isotropic solid" in reason(found, "shear_modulus")
 
 

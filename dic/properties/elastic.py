@@ -1,0 +1,160 @@
+"""The elastic constants of the sheet."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+
+import numpy as np
+from numpy.typing import NDArray
+
+from dic.properties.doubts import GOOD_SLOPE
+from dic.properties.fits import WORDS, fit
+from dic.properties.hooke import bulk_modulus, lame_constant, shear_modulus
+from dic.properties.loading import Loading, Undetermined
+from dic.properties.sheet import Entry, Reading, Sheet
+from dic.uncertainty import combine, few_readings, line_with_errors_in_both
+
+Floats = NDArray[np.float64]
+#: A constant from E and ν.
+Law = Callable[[float, float], float]
+
+
+def elastic_entries(sheet: Sheet) -> list[Entry]:
+    """List the elastic constants."""
+    return [
+        Entry("youngs_modulus", "E", "MPa", lambda: _youngs_modulus(sheet)),
+        Entry("poissons_ratio", "ν", "", lambda: _poissons_ratio(sheet)),
+        Entry("shear_modulus", "G", "MPa", lambda: _shear_modulus(sheet)),
+        Entry("bulk_modulus", "K", "MPa", lambda: _volumetric(sheet, bulk_modulus, "E / 3(1 - 2ν)")),
+        Entry("lame_constant", "λ", "MPa", lambda: _volumetric(sheet, lame_constant, "Eν / (1 + ν)(1 - 2ν)")),
+    ]
+
+
+def _youngs_modulus(sheet: Sheet) -> Reading:
+    elastic, line = sheet.elastic, sheet.elastic.line
+    relative = line.u_slope / line.slope
+    frames = elastic.window.frames
+    rows = sheet.loading.rows[[frames.start, frames.stop - 1]]
+    quality = [
+        f"relative standard error of the slope {100 * relative:.2g} %, "
+        f"r² = {line.r_squared:.6f}, {elastic.window.count} frames ({rows[0]} to {rows[1]})"
+    ]
+    if relative > GOOD_SLOPE:
+        quality.append(f"the slope scatters by more than the {100 * GOOD_SLOPE:g} % of ISO 6892-1")
+    value = elastic.modulus
+    statistics = {
+        "scatter": value * relative * few_readings(line.n - 2),
+        "clock": sheet.with_clock(lambda loading: 1 / sheet.line(loading).slope),
+    }
+    return Reading(
+        value,
+        f"{WORDS[elastic.window.kind]}, {elastic.rule}",
+        statistics | sheet.of_stress(value),
+        sheet.window(),
+        (*quality, *elastic.notes, *sheet.left_out(), *sheet.left_out_of_strain()),
+    )
+
+
+def _poissons_ratio(sheet: Sheet) -> Reading:
+    """Read ν from both slopes; its scatter is that of εt + ν·εa, in which the force's noise cancels."""
+    elastic, loading = sheet.elastic, sheet.loading
+
+    def ratio(loading: Loading) -> float:
+        return -sheet.line(loading, "transverse").slope / sheet.line(loading).slope
+
+    value = ratio(loading)
+    rest = fit(
+        loading,
+        loading.transverse + value * loading.strain,
+        np.hypot(loading.u_transverse, value * loading.u_strain),
+        elastic.window,
+    )
+    scatter = rest.u_slope * elastic.modulus * few_readings(rest.n - 2)
+    return Reading(
+        value,
+        f"slopes of transverse and axial strain against the same force (ASTM E132), {elastic.rule}",
+        {"scatter": scatter, "clock": sheet.with_clock(ratio)},
+        sheet.window(),
+        (*_against_axial(sheet, value, scatter), *elastic.notes, *sheet.left_out_of_strain()),
+    )
+
+
+def _against_axial(sheet: Sheet, value: float, scatter: float) -> tuple[str, ...]:
+    """Cross-check ν by the slope of transverse against axial strain, which needs neither force nor clock."""
+    if sheet.elastic.window.kind != "regression":
+        return ()
+    loading, here = sheet.loading, sheet.elastic.window.frames
+    there = np.isfinite(loading.transverse[here])
+    parts = (loading.strain, loading.transverse, loading.u_strain, loading.u_transverse)
+    x, y, u_x, u_y = (part[here][there] for part in parts)
+    noise = (u_x, u_y) if np.all(u_x + u_y > 0) else (0.0, 1.0)
+    line = line_with_errors_in_both(x, y, *noise)
+    told = f"against the axial strain the slope gives {-line.slope:.4g}"
+    if abs(-line.slope - value) > 2 * np.hypot(scatter, line.u_slope):
+        return (f"{told}, farther off than the scatter of both explains: look at the clocks and residuals",)
+    return (f"{told} (cross-check)",)
+
+
+def _shear_modulus(sheet: Sheet) -> Reading:
+    ratio = _poissons_ratio(sheet).value
+    if ratio <= -1:
+        raise Undetermined(f"no isotropic solid has a Poisson's ratio of {ratio:.3g}")
+    return _isotropic(sheet, shear_modulus, "E / 2(1 + ν)")
+
+
+def _volumetric(sheet: Sheet, law: Law, formula: str) -> Reading:
+    """Read a constant that has no bound where the material keeps its volume."""
+    ratio = _poissons_ratio(sheet)
+    if not -1 < ratio.value < 0.5:
+        raise Undetermined(
+            f"no isotropic solid with a bulk modulus has a Poisson's ratio of {ratio.value:.3g}"
+        )
+    if ratio.value + 2 * combine(ratio.contributions) >= 0.5:
+        raise Undetermined(
+            f"Poisson's ratio, {ratio.value:.3g}, cannot be told from 0.5, where this constant has no bound"
+        )
+    return _isotropic(sheet, law, formula)
+
+
+def _isotropic(sheet: Sheet, law: Law, formula: str) -> Reading:
+    """Read a constant from E and ν.
+
+    Both come from the slopes of two strains on one stress.  Weighed by the constant's derivatives by
+    these slopes, the strains make one whose slope scatters as the constant does: so the correlation of
+    E and ν is in it.
+    """
+    loading, window = sheet.loading, sheet.elastic.window
+
+    def of_slopes(axial: float, across: float) -> float:
+        return law(1 / axial, -across / axial)
+
+    def value_of(loading: Loading) -> float:
+        return of_slopes(sheet.line(loading).slope, sheet.line(loading, "transverse").slope)
+
+    axial, across = sheet.line(loading).slope, sheet.line(loading, "transverse").slope
+    step = 1e-6 * axial
+    by_axial = (of_slopes(axial + step, across) - of_slopes(axial - step, across)) / (2 * step)
+    by_across = (of_slopes(axial, across + step) - of_slopes(axial, across - step)) / (2 * step)
+    weighed = fit(
+        loading,
+        by_axial * loading.strain + by_across * loading.transverse,
+        np.hypot(by_axial * loading.u_strain, by_across * loading.u_transverse),
+        window,
+    )
+    value = of_slopes(axial, across)
+    statistics = {
+        "scatter": weighed.u_slope * few_readings(weighed.n - 2),
+        "clock": sheet.with_clock(value_of),
+    }
+    return Reading(
+        value,
+        f"{formula}, for an isotropic material",
+        statistics | sheet.of_stress(value),
+        sheet.window(),
+        (
+            "the correlation of E and ν is included",
+            *sheet.elastic.notes,
+            *sheet.left_out(),
+            *sheet.left_out_of_strain(),
+        ),
+    )

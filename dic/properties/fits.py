@@ -1,0 +1,196 @@
+"""How a modulus is read from a window: as a regression, a chord, a tangent or a secant."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from math import hypot, sqrt
+from typing import Literal
+
+import numpy as np
+from numpy.typing import NDArray
+
+from dic.properties.loading import MIN_FRAMES, Loading, Undetermined
+from dic.uncertainty import Line, line_with_errors_in_both, straight_line
+
+Floats = NDArray[np.float64]
+Kind = Literal["regression", "chord", "tangent", "secant"]
+
+#: What each kind does, in words.
+WORDS = {
+    "regression": "line of strain on stress, noise of both weighed (York 2004)",
+    "chord": "chord between the window's ends",
+    "tangent": "tangent in the window's middle, by a parabola",
+    "secant": "secant from zero to the window's end",
+}
+#: A chord's end is read from the frames within this share of the window to either side of it.
+END_SHARE = 0.1
+
+
+@dataclass(frozen=True)
+class Window:
+    """Which frames are used, and how.
+
+    Attributes
+    ----------
+    frames
+        Frames of the `Loading`, one run in time.
+    ends
+        Stresses at the window's ends, MPa.
+    kind
+        How the line is laid.
+    """
+
+    frames: slice
+    ends: tuple[float, float]
+    kind: Kind = "regression"
+
+    @property
+    def count(self) -> int:
+        """Number of frames."""
+        return self.frames.stop - self.frames.start
+
+
+def fit(loading: Loading, strain: Floats, u_strain: Floats, window: Window) -> Line:
+    """Lay the line of a strain over stress.
+
+    Parameters
+    ----------
+    loading
+        The frames, for their stress.
+    strain, u_strain
+        Axial or transverse strain, or a sum of both, with its standard uncertainty, shape (n,); frames
+        without it are left out.
+    window
+        Frames and kind.
+
+    Returns
+    -------
+    Line
+        Strain on stress.
+
+    Raises
+    ------
+    Undetermined
+        If the strain was measured in too few frames.
+    """
+    if window.kind == "regression":
+        here = _measured(strain, window.frames)
+        return _regression(loading.stress[here], strain[here], loading.u_stress[here], u_strain[here])
+    if window.kind == "tangent":
+        here = _measured(strain, window.frames)
+        return _tangent(loading.stress[here], strain[here], sum(window.ends) / 2)
+    return _chord(loading, strain, window)
+
+
+def _measured(strain: Floats, frames: slice) -> NDArray[np.intp]:
+    """Return the frames of a run in which a strain was measured."""
+    here = frames.start + np.flatnonzero(np.isfinite(strain[frames]))
+    if len(here) < MIN_FRAMES:
+        raise Undetermined(
+            f"the transverse strain was measured in {len(here)} frames of the window, {MIN_FRAMES} are needed"
+        )
+    return here
+
+
+def _regression(stress: Floats, strain: Floats, u_stress: Floats, u_strain: Floats) -> Line:
+    try:
+        if np.all(u_stress**2 + u_strain**2 > 0):
+            return line_with_errors_in_both(stress, strain, u_stress, u_strain)
+        return straight_line(stress, strain)
+    except ValueError as error:
+        raise Undetermined("the stress is the same in all frames of the window") from error
+
+
+@dataclass(frozen=True)
+class _Bend:
+    """A parabola of strain over stress: value and slope at a stress, and how it scatters."""
+
+    value: float
+    slope: float
+    covariance: Floats
+    residual_s: float
+    r_squared: float
+    n: int
+
+
+def _bend(stress: Floats, strain: Floats, at: float) -> _Bend:
+    width = float(np.ptp(stress))
+    if width == 0:
+        raise Undetermined("the stress is the same in all frames of the window")
+    design = np.vander((stress - at) / width, 3)
+    found = np.linalg.lstsq(design, strain, rcond=None)[0]
+    residuals = strain - design @ found
+    square = float(residuals @ residuals)
+    variance = square / max(len(strain) - 3, 1)
+    spread = float(np.sum((strain - strain.mean()) ** 2))
+    return _Bend(
+        value=float(found[2]),
+        slope=float(found[1]) / width,
+        covariance=np.asarray(np.linalg.inv(design.T @ design) * variance, dtype=np.float64),
+        residual_s=sqrt(variance),
+        r_squared=1 - square / spread if spread else 1.0,
+        # One coefficient more than a line's two.
+        n=len(strain) - 1,
+    )
+
+
+def _tangent(stress: Floats, strain: Floats, at: float) -> Line:
+    """Lay the tangent of a parabola at a stress."""
+    bend, width = _bend(stress, strain, at), float(np.ptp(stress))
+    return _line(
+        bend, slope=bend.slope, u_slope=sqrt(bend.covariance[1, 1]) / width,
+        at=(at, bend.value, sqrt(bend.covariance[2, 2])),
+    )  # fmt: skip
+
+
+def _chord(loading: Loading, strain: Floats, window: Window) -> Line:
+    """Lay a line through the curve's points at the window's ends; a secant's first one is the zero."""
+    here = _measured(strain, window.frames)
+    # The window's own scatter about a parabola: it rests on more frames than an end has.
+    bend = _bend(loading.stress[here], strain[here], window.ends[1])
+    low, u_low = (0.0, 0.0) if window.kind == "secant" else _end(loading, strain, window, 0)
+    high, u_high = _end(loading, strain, window, 1)
+    length = window.ends[1] - window.ends[0]
+    slope = (high - low) / length
+    variances = (u_low**2 + u_high**2) * bend.residual_s**2
+    # The point at which slope and value are uncorrelated lies nearer to the better known end.
+    share = u_low**2 / (u_low**2 + u_high**2)
+    u_there = u_low * u_high / hypot(u_low, u_high) * bend.residual_s
+    return _line(
+        bend, slope=slope, u_slope=sqrt(variances) / length,
+        at=(window.ends[0] + share * length, low + slope * share * length, u_there),
+    )  # fmt: skip
+
+
+def _end(loading: Loading, strain: Floats, window: Window, which: Literal[0, 1]) -> tuple[float, float]:
+    """Read the strain at one of the window's ends, and its standard uncertainty per unit of scatter."""
+    line, stress = end_line(loading, strain, window.frames, which), window.ends[which]
+    spread = line.u_slope / line.residual_s if line.residual_s else 0.0
+    return line.at(stress), hypot(line.n**-0.5, spread * (stress - line.mean_x))
+
+
+def end_line(loading: Loading, strain: Floats, frames: slice, which: Literal[0, 1]) -> Line:
+    """Lay a line through the frames around the first (0) or the last (1) of a window."""
+    place = frames.start if which == 0 else frames.stop - 1
+    half = max(MIN_FRAMES // 2, round(END_SHARE * (frames.stop - frames.start)))
+    here = _measured(strain, slice(max(place - half, 0), min(place + half + 1, len(strain))))
+    nothing = np.zeros(len(here))
+    return _regression(loading.stress[here], strain[here], nothing, nothing)
+
+
+def _line(bend: _Bend, *, slope: float, u_slope: float, at: tuple[float, float, float]) -> Line:
+    """Return a line by its slope and a point at which its value is independent of the slope."""
+    x, value, u_value = at
+    u_intercept = hypot(u_value, x * u_slope)
+    return Line(
+        slope=slope,
+        intercept=value - slope * x,
+        u_slope=u_slope,
+        u_intercept=u_intercept,
+        correlation=-x * u_slope / u_intercept if u_intercept else 0.0,
+        residual_s=bend.residual_s,
+        r_squared=bend.r_squared,
+        mean_x=x,
+        u_mean=u_value,
+        n=bend.n,
+    )

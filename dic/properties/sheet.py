@@ -1,0 +1,213 @@
+"""What every property of the sheet is read with: the curve, its zero, its elastic part, its clock."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from math import nan
+
+import numpy as np
+from numpy.typing import NDArray
+
+from dic.errors import Notice
+from dic.properties.doubts import missing_uncertainties
+from dic.properties.fits import fit
+from dic.properties.loading import Loading, Undetermined, loading_of
+from dic.properties.modulus import Elastic, fit_elastic
+from dic.properties.result import Curve, ModulusLine, Property
+from dic.properties.zero import Zero, seating_slack, take_off_toe, zero_of
+from dic.sync.record import Clock
+from dic.testfile import Properties, Specimen
+from dic.uncertainty import Line, combine
+
+Floats = NDArray[np.float64]
+
+_OPTICS = (
+    "not included: false strain from motion towards the camera and from lens distortion, what is left of the "
+    "interpolation's bias, and the error of the axis"
+)
+_CLOCK = "not included: the clocks, whose offset was given without an uncertainty (sync.offset)"
+
+
+@dataclass(frozen=True)
+class Reading:
+    """What a property's own function knows; its name and symbol are added outside."""
+
+    value: float
+    method: str
+    contributions: dict[str, float]
+    window: dict[str, tuple[float, float]]
+    notes: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True)
+class Entry:
+    """One line of the sheet: name, the standard's symbol, unit, and how it is read."""
+
+    name: str
+    symbol: str
+    unit: str
+    read: Callable[[], Reading]
+
+    def property(self) -> Property:
+        """Read it, or say why it is missing."""
+        try:
+            reading = self.read()
+        except Undetermined as reason:
+            return Property(
+                self.name, self.symbol, nan, self.unit, nan, "not determined", notes=(str(reason),)
+            )
+        return Property(
+            name=self.name,
+            symbol=self.symbol,
+            value=reading.value,
+            unit=self.unit,
+            standard_uncertainty=combine(reading.contributions),
+            method=reading.method,
+            window=reading.window,
+            notes=reading.notes,
+            contributions=reading.contributions,
+        )
+
+
+class Sheet:
+    """The readings of one curve.
+
+    Parameters
+    ----------
+    curve, specimen, force_uncertainty, clock, section
+        As for `dic.properties.evaluate`.
+    """
+
+    def __init__(
+        self,
+        curve: Curve,
+        specimen: Specimen,
+        force_uncertainty: float | None,
+        clock: Clock,
+        section: Properties,
+    ) -> None:
+        self.curve, self.clock, self.section = curve, clock, section
+        #: Relative uncertainties that all stresses share.
+        self.common = {"force calibration": force_uncertainty, "section": specimen.area_uncertainty}
+        #: The keys that each of them lacks.
+        self.gaps = {
+            "force calibration": ["load_record.force_uncertainty"] if force_uncertainty is None else [],
+            "section": missing_uncertainties(specimen),
+        }
+        self._zero: Zero | None = None
+        self._reason: Undetermined | None = None
+        self._elastic: Elastic | None = None
+        try:
+            self.require_load()
+            self._zero = zero_of(loading_of(curve), section.preload_stress(curve.area_mm2))
+            self._zero, self._elastic = take_off_toe(
+                self._zero, self._lay, section.toe, clock.offset_standard_uncertainty_s
+            )
+        except Undetermined as reason:
+            self._reason = reason
+
+    def _lay(self, loading: Loading) -> Elastic:
+        return fit_elastic(loading, self.section.modulus, self.section.modulus_source)
+
+    def require_load(self) -> None:
+        """Raise unless the record shows a load."""
+        if not np.isfinite(self.curve.peak_force_N):
+            raise Undetermined("the force of the load record never rises above its noise")
+
+    @property
+    def zero(self) -> Zero:
+        """Where strain counts from; it may be known without an elastic part."""
+        if self._zero is None:
+            raise self._reason or Undetermined("the zero of strain is not known")
+        return self._zero
+
+    @property
+    def loading(self) -> Loading:
+        """Frames up to the largest force, strains counted from the zero."""
+        return self.zero.loading
+
+    @property
+    def elastic(self) -> Elastic:
+        """The elastic part, or the reason why there is none."""
+        if self._elastic is None:
+            raise self._reason or Undetermined("no elastic part was found")
+        return self._elastic
+
+    def notices(self) -> tuple[Notice, ...]:
+        """Return what people should know about the zero."""
+        if self._zero is None:
+            return ()
+        if self._elastic is None:
+            return self._zero.notices
+        travel = self.curve.displacement_mm
+        at_frames = None if travel is None else travel[self.loading.rows]
+        return self._zero.notices + seating_slack(self.loading, self._elastic, at_frames)
+
+    def modulus_line(self) -> ModulusLine:
+        """Return the line in strains as they were measured."""
+        if self._elastic is None:
+            return ModulusLine(nan, nan, nan, nan)
+        elastic, sign, zero = self._elastic, self.loading.sign, self.zero.strain
+        low, high = bounds(sign * (self.loading.strain[elastic.window.frames] + zero))
+        intercept = -sign * (elastic.line.intercept + zero) * elastic.modulus
+        return ModulusLine(elastic.modulus, intercept, low, high)
+
+    def line(self, loading: Loading, name: str = "strain") -> Line:
+        """Lay the line of ``strain`` or ``transverse`` over stress as the elastic part does."""
+        return fit(loading, getattr(loading, name), getattr(loading, f"u_{name}"), self.elastic.window)
+
+    def of_stress(self, value: float) -> dict[str, float]:
+        """Return the contributions of the factors that all stresses share."""
+        return {source: abs(value) * u for source, u in self.common.items() if u is not None}
+
+    def left_out(self) -> tuple[str, ...]:
+        """Say what a stress' uncertainty lacks."""
+        return tuple(
+            f"not included: {source}, whose uncertainty is not wholly given ({', '.join(keys)} missing)"
+            for source, keys in self.gaps.items()
+            if keys
+        )
+
+    def left_out_of_strain(self) -> tuple[str, ...]:
+        """Say what the uncertainty of a reading against strain lacks."""
+        return (_OPTICS,) if self.clock.offset_standard_uncertainty_s > 0 else (_CLOCK, _OPTICS)
+
+    def with_clock(self, read: Callable[[Loading], float]) -> float:
+        """Return how far the clock's standard uncertainty moves a reading.
+
+        A reading that is not to be had with the clock moved says nothing; the other side then stands
+        for both.
+        """
+        u = self.clock.offset_standard_uncertainty_s
+        if u == 0:
+            return 0.0
+        moved = []
+        for seconds in (u, -u):
+            try:
+                moved.append(read(self.loading.later(seconds)))
+            except Undetermined:
+                moved.append(nan)
+        here = read(self.loading)
+        sides = [abs(value - here) for value in moved if np.isfinite(value)]
+        if len(sides) == 2:
+            return abs(moved[0] - moved[1]) / 2
+        return sides[0] if sides else nan
+
+    def window(self) -> dict[str, tuple[float, float]]:
+        """Return the elastic window in strain, stress and time."""
+        return self.window_of(self.elastic.window.frames)
+
+    def window_of(self, frames: slice) -> dict[str, tuple[float, float]]:
+        """Return the bounds of some frames in strain, stress and time."""
+        loading = self.loading
+        return {
+            "strain": bounds(loading.sign * loading.strain[frames]),
+            "stress_MPa": bounds(loading.sign * loading.stress[frames]),
+            "time_s": bounds(loading.time_s[frames]),
+        }
+
+
+def bounds(values: Floats) -> tuple[float, float]:
+    """Return the smallest and the largest value."""
+    return float(np.min(values)), float(np.max(values))
