@@ -320,11 +320,6 @@ class Properties(Section):
         return force / area_mm2
 
     @property
-    def standard(self) -> str | None:
-        """The standard that the preset follows."""
-        return PRESETS[self.preset][0] if self.preset else None
-
-    @property
     def modulus_source(self) -> str:
         """Who asked for the modulus' window."""
         if self.preset is None or self.modulus == "auto":
