@@ -168,13 +168,7 @@ def _laid_out(
     body = rows[start:]
     columns = _columns(body, len(headers))
     keep, breaks, said = _data(body, columns, usual, headers, path, fault)
-    for i in (i for i, (_, cells) in enumerate(body) if len(cells) > len(headers)):
-        if keep[i] and any(body[i][1][len(headers) :]):
-            raise fault(
-                f"holds more than the {len(headers)} cells that the headers name",
-                where=f"{path}, row {body[i][0]}",
-                remedy=_SEPARATE,
-            )
+    _refuse_longer(body, keep, len(headers), path, fault)
     frame = pd.DataFrame(
         {k: np.array(cells, dtype=object)[keep] for k, cells in enumerate(columns)},
         index=np.array([number for number, _ in body], dtype=np.int64)[keep],
@@ -183,6 +177,19 @@ def _laid_out(
     return Table(
         path, headers, separator, frame, fault, units, encoding, heading, breaks, (*notices, *said), decimal
     )
+
+
+def _refuse_longer(
+    body: list[Row], keep: NDArray[np.bool_], width: int, path: Path, fault: type[InputError]
+) -> None:
+    """Raise where a row of data holds more than the headers name."""
+    for i, (number, cells) in enumerate(body):
+        if len(cells) > width and keep[i] and any(cells[width:]):
+            raise fault(
+                f"holds more than the {width} cells that the headers name",
+                where=f"{path}, row {number}",
+                remedy=_SEPARATE,
+            )
 
 
 def _columns(body: list[Row], width: int) -> list[Sequence[str]]:
@@ -236,7 +243,11 @@ def _data(
     """Tell the rows of data; say what stands between them and after them."""
     if not body:
         return np.zeros(0, dtype=bool), (), []
-    keep = _rows_of_data(body, columns, [column for column in usual if column < len(headers)], headers)
+    within = [column for column in usual if column < len(headers)]
+    if not within:
+        _refuse_longer(body, np.ones(len(body), dtype=bool), len(headers), path, fault)
+        return np.zeros(len(body), dtype=bool), (), []
+    keep = _rows_of_data(body, columns, within, headers)
     last = int(np.flatnonzero(keep)[-1]) if keep.any() else -1
     # A row that was cut off in the middle would be data with values missing.
     if last == len(body) - 1 > 0 and len(body[last][1]) < len(body[last - 1][1]):
