@@ -11,6 +11,7 @@ import json
 import sys
 import tempfile
 import traceback
+import zipfile
 from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
@@ -70,11 +71,14 @@ def load_test(folder: Path) -> None:
 
 
 def load_record(folder: Path) -> None:
-    from dic.sync import read_load_record
+    from dic.sync import look_at_record, read_load_record
     from dic.testfile import LoadRecord
 
     path = next(folder.iterdir())
-    read_load_record(LoadRecord(source=path.name, time="Time", force="Force"), path)
+    look_at_record(path)
+    read = read_load_record(LoadRecord(source=path.name), path)
+    assert np.isfinite(read.force_N).all()
+    assert (np.diff(read.time_s) > 0).all()
 
 
 def grey(rng: np.random.Generator, deep: bool = False, colour: bool = False) -> np.ndarray:
@@ -141,6 +145,50 @@ def record(rng: np.random.Generator) -> bytes:
     time = np.arange(60) / 20
     rows = [f"{t:.3f}{separator}{force:.2f}" for t, force in zip(time, 900 * time, strict=True)]
     return "\n".join([f"Time (s){separator}Force (N)", *rows, ""]).encode()
+
+
+def machine_record(rng: np.random.Generator) -> bytes:
+    """Write a record in one of the ways in which machines do."""
+    separator, decimal = [(",", "."), (";", ","), (";", "."), ("\t", ","), ("|", "."), (" ", ",")][
+        rng.integers(6)
+    ]
+    time = np.arange(60) / 20
+    spell_time = [lambda t: f"{t:.3f}", lambda t: f"00:00:{t:06.3f}", lambda t: f"2026-12-01T10:00:{t:06.3f}"]
+    spell = spell_time[rng.integers(3)]
+    rows = [[spell(t), f"{900 * t:.2f}", f"{t / 9:.4f}"] for t in time]
+    if rng.random() < 0.3:
+        rows[int(rng.integers(60))][1] = str(rng.choice(["OVL", "---", "NaN", "1e999", ""]))
+    units = rng.random() < 0.5
+    heads = [["Time", "Force", "Weg"], ["s", "N", "mm"]] if units else [["Zeit_s", "Force[N]", "Weg/mm"]]
+    lines = [separator.join(cell.replace(".", decimal) for cell in row) for row in rows]
+    if rng.random() < 0.3:
+        lines[30:30] = [str(rng.choice(["", "# pause", "Segment 2", "-----"])), separator.join(heads[0])]
+    above = ["Test report 7", "", "Prüfer: N. N."][: rng.integers(4)]
+    text = str(rng.choice(["\n", "\r\n"])).join([*above, *map(separator.join, heads), *lines, ""])
+    return text.encode(str(rng.choice(["utf-8", "utf-8-sig", "utf-16", "cp1252"])))
+
+
+def workbook(rng: np.random.Generator) -> bytes:
+    import openpyxl
+
+    book = openpyxl.Workbook()
+    page = book.active
+    for row in [["Test 7"], ["Time (s)", "Force (N)"], *((t / 20, 45.0 * t) for t in range(60))]:
+        page.append(row)
+    out = io.BytesIO()
+    book.save(out)
+    return out.getvalue()
+
+
+def workbook_of_damaged_parts(rng: np.random.Generator) -> bytes:
+    """Damage what an archive holds and leave the archive sound, so that the harm gets to its reader."""
+    out = io.BytesIO()
+    with zipfile.ZipFile(io.BytesIO(workbook(rng))) as whole, zipfile.ZipFile(out, "w") as archive:
+        hit = rng.choice(whole.namelist())
+        for name in whole.namelist():
+            part = whole.read(name)
+            archive.writestr(name, damaged(rng, part) if name == hit else part)
+    return out.getvalue()
 
 
 def test_file(rng: np.random.Generator) -> bytes:
@@ -245,7 +293,9 @@ KINDS = {
     "PGM": Kind(pgm, load_frames, ".pgm", 150),
     "JPEG": Kind(by_pillow("JPEG"), load_frames, ".jpg", 200),
     "video": Kind(video, load_frames, "", 150),
-    "CSV": Kind(record, load_record, ".csv", 300),
+    "CSV": Kind(machine_record, load_record, ".csv", 600),
+    "XLSX": Kind(workbook, load_record, ".xlsx", 200),
+    "XLSX parts": Kind(workbook_of_damaged_parts, load_record, ".xlsx", 200, damage=False),
     "TOML": Kind(test_file, load_test, ".toml", 300),
     "TOML values": Kind(odd_test_file, inspect_test, ".toml", 500, damage=False),
 }
