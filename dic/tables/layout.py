@@ -64,7 +64,8 @@ def split(line: str, separator: str) -> list[str]:
         return line.split()
     if separator == "|":
         line = line.strip().strip("|")
-    return [*map(str.strip, line.split(separator))]
+    cells = line.split(separator)
+    return cells if len(line.split(None, 1)) == 1 else [*map(str.strip, cells)]
 
 
 def is_value(cell: str, separator: str = ";") -> bool:

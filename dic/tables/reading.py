@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+import gc
+from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
 from itertools import groupby
 from pathlib import Path
 from textwrap import shorten
@@ -58,6 +60,25 @@ def read_table(
     InputError
         `fault`, if the file cannot be read or is no such table.
     """
+    with _no_collection():
+        return _read(path, fault, key=key, most_bytes=most_bytes, decimal=decimal, sheet=sheet)
+
+
+@contextmanager
+def _no_collection() -> Iterator[None]:
+    """Keep the garbage collector from looking through a million cells, again and again as they are made."""
+    running = gc.isenabled()
+    gc.disable()
+    try:
+        yield
+    finally:
+        if running:
+            gc.enable()
+
+
+def _read(
+    path: Path, fault: type[InputError], *, key: str, most_bytes: int, decimal: str | None, sheet: str | None
+) -> Table:
     head, data = _bytes(path, fault, key, most_bytes)
     if workbook.is_old_workbook(head):
         raise fault(
