@@ -59,11 +59,10 @@ def workbook_rows(path: Path, sheet: str | None, fault: type[InputError]) -> tup
         ) from error
     _refuse_bombs(path, fault)
     try:
-        book = load_workbook(path, read_only=True, data_only=True, keep_links=False)
-        try:
+        # Opened here, because the library leaves a file open where it fails over its content.
+        with path.open("rb") as file:
+            book = load_workbook(file, read_only=True, data_only=True, keep_links=False)
             return _sheet(book, sheet, path, fault)
-        finally:
-            book.close()
     except (
         InvalidFileException, zipfile.BadZipFile, ParseError, KeyError, ValueError, TypeError, AttributeError,
         IndexError, OverflowError, EOFError, zlib.error, OSError, NotImplementedError, RuntimeError,
