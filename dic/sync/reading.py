@@ -20,7 +20,7 @@ from dic.testfile import LoadRecord as Section
 
 Floats = NDArray[np.float64]
 
-#: Five million numbers, which is what a table may hold, of some twenty characters each.
+#: Four million numbers, which is what a table may hold, of some twenty characters each.
 MAX_BYTES = 100_000_000
 #: Fewer rows are no test.
 MIN_ROWS = 5

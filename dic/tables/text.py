@@ -14,8 +14,8 @@ MOST_COLUMNS = 1000
 MOST_CHARACTERS = 20 * MOST_COLUMNS
 #: Lines cost memory even where they are blank.
 MOST_LINES = 2_000_000
-#: A million rows of five columns: eighty minutes at 200 Hz.  Each cell costs some 60 bytes while it is text.
-MOST_CELLS = 5_000_000
+#: An hour of five columns at 200 Hz, and more.  Each cell costs some 200 bytes on the way from text to number.
+MOST_CELLS = 4_000_000
 #: Lines that a quoted cell may run over, as a header with a line break does.
 _QUOTED_LINES = 5
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import warnings
 import zipfile
 import zlib
 from datetime import date, datetime, time, timedelta
@@ -60,7 +61,8 @@ def workbook_rows(path: Path, sheet: str | None, fault: type[InputError]) -> tup
     _refuse_bombs(path, fault)
     try:
         # Opened here, because the library leaves a file open where it fails over its content.
-        with path.open("rb") as file:
+        with path.open("rb") as file, warnings.catch_warnings():
+            warnings.simplefilter("ignore")  # about styles and links, which no record needs
             book = load_workbook(file, read_only=True, data_only=True, keep_links=False)
             return _sheet(book, sheet, path, fault)
     except (
