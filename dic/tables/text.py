@@ -14,7 +14,7 @@ MOST_COLUMNS = 1000
 MOST_CHARACTERS = 20 * MOST_COLUMNS
 #: Lines cost memory even where they are blank.
 MOST_LINES = 2_000_000
-#: An hour of five columns at 200 Hz, and more.  Each cell costs some 200 bytes on the way from text to number.
+#: An hour of five columns at 200 Hz, and more.  A cell costs some 200 bytes on its way to a number.
 MOST_CELLS = 4_000_000
 #: Lines that a quoted cell may run over, as a header with a line break does.
 _QUOTED_LINES = 5
