@@ -9,7 +9,7 @@ from contextlib import suppress
 from math import pi
 from pathlib import Path
 from textwrap import shorten
-from typing import Annotated, Any, Literal, TypeVar
+from typing import Annotated, Any, Literal, TypeVar, get_args, get_origin
 
 from pydantic import (
     AfterValidator,
@@ -42,6 +42,31 @@ def _filled_in(written: Any, example: str) -> Any:
     """Return what was written unless it is blank, as `tauten new` leaves what only the user knows."""
     if isinstance(written, str) and not written.strip():
         raise PydanticCustomError("to_fill_in", "fill it in", {"example": example})
+    return written
+
+
+def in_px(written: str) -> float | None:
+    """Return a length that is written in px, None where its unit is another."""
+    text = written.strip()
+    return float(text.removesuffix("px")) if text.endswith("px") else None
+
+
+def _is_length(written: str) -> str:
+    """Return a length in the picture as written, once it is known to be one."""
+    try:
+        size = in_px(written)
+    except ValueError:
+        raise ValueError(f"'{written}' is not a length; write for example \"120 px\" or \"5 mm\"") from None
+    size = parse(written, "length") if size is None else size
+    if not abs(size) <= MAX_BYTES:
+        raise ValueError(f"'{written}' is far too long")
+    return written
+
+
+def _is_positive_length(written: str) -> str:
+    size = in_px(_is_length(written))
+    if not (parse(written, "length") if size is None else size) > 0:
+        raise ValueError(f"'{written}' is not longer than zero")
     return written
 
 
@@ -225,6 +250,63 @@ class Gauge(Section):
         return parse(self.axis, "angle")
 
 
+Pixels = Annotated[float, Field(ge=-1e5, le=1e5, allow_inf_nan=False)]
+Share = Annotated[float, Field(ge=0, le=1)]
+#: A length in the picture: px where it is a number or says so, else mm by the scale.
+Size = Annotated[float, Field(gt=0, le=1e5)] | Annotated[str, AfterValidator(_is_positive_length)]
+Stretch = Annotated[str, AfterValidator(_is_length)]
+#: A place: x and y in the reference picture, px; or, as lengths in quotes, across and along the coupon from
+#: the middle of the gauge region.
+Place = tuple[Pixels, Pixels] | tuple[Stretch, Stretch]
+
+#: Keys of the named gauges by kind: those needed, and further ones.
+GAUGE_KEYS: dict[str, tuple[set[str], set[str]]] = {
+    "extensometer": (set(), {"length", "centre", "angle", "width", "from", "to"}),
+    "area": (set(), {"region", "points", "component"}),
+    "transverse": (set(), {"stations", "length", "width"}),
+    "points": ({"from", "to"}, set()),
+    "line": ({"from", "to"}, {"length", "width"}),
+    "edge_width": (set(), {"centre", "length"}),
+}
+
+
+class NamedGauge(Section):
+    """One of the named gauges; each kind has its own keys."""
+
+    kind: Literal["extensometer", "area", "transverse", "points", "line", "edge_width"]
+    length: Size | None = None
+    width: Size | None = None
+    centre: Place | None = None
+    angle: Annotated[float, quantity("angle"), Field(ge=-360, le=360)] | None = None
+    start: Place | None = Field(None, alias="from")
+    end: Place | None = Field(None, alias="to")
+    region: tuple[Pixels, Pixels, Pixels, Pixels] | None = None
+    points: Annotated[tuple[tuple[Pixels, Pixels], ...], Field(min_length=3, max_length=1000)] | None = None
+    component: Literal["axial", "transverse", "shear"] | None = None
+    stations: Annotated[tuple[Share | Stretch, ...], Field(min_length=1, max_length=100)] | None = None
+
+    @model_validator(mode="after")
+    def _keys_of_its_kind(self) -> NamedGauge:
+        alias = {"start": "from", "end": "to"}
+        given = {alias.get(key, key) for key in self.model_fields_set - {"kind"}}
+        needed, further = GAUGE_KEYS[self.kind]
+        if missing := sorted(needed - given):
+            raise ValueError(f'a gauge of kind "{self.kind}" needs {" and ".join(missing)}; add it')
+        if foreign := sorted(given - needed - further):
+            raise ValueError(
+                f'{foreign[0]} means nothing for kind "{self.kind}"; {nearest(foreign[0], needed | further)}'
+            )
+        if ("from" in given) != ("to" in given) or ("from" in given and {"centre", "angle", "length"} & given
+                                                    and self.kind == "extensometer"):  # fmt: skip
+            raise ValueError("give from and to together, without length, centre and angle")
+        if self.region is not None and self.points is not None:
+            raise ValueError("give region or points, not both")
+        return self
+
+
+GaugeName = Annotated[str, Field(pattern=r"^[A-Za-z][A-Za-z0-9_]{0,39}$")]
+
+
 class Correlation(Section):
     """How subsets are matched."""
 
@@ -339,6 +421,7 @@ class TestFile(Section):
     load_record: LoadRecord
     camera: Camera = Camera()
     gauge: Gauge = Gauge()
+    gauges: dict[GaugeName, NamedGauge] = Field(default_factory=dict, max_length=100)
     correlation: Correlation = Correlation()
     maps: Maps = Maps()
     sync: Sync = Sync()
@@ -476,9 +559,13 @@ def _keys(complaint: Mapping[str, Any]) -> list[str]:
 
 def _keys_at(model: type[BaseModel], sections: list[str]) -> list[str]:
     """List the keys that a section knows, walking down the models by name."""
-    for section in sections:
+    steps = iter(sections)
+    for section in steps:
         field = model.model_fields.get(section)
         inner = field.annotation if field else None
+        if get_origin(inner) is dict:
+            inner = get_args(inner)[1]
+            next(steps, None)  # the name that the user chose
         if not (isinstance(inner, type) and issubclass(inner, BaseModel)):
             break
         model = inner

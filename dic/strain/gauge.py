@@ -208,7 +208,7 @@ class GaugeReader:
         y = self.reference.y[valid] - self.region.centre[1]
         along, across, depth = self._along[valid], self._across[valid], self.reference.subset
         information = self.reference.estimator.information()[valid]
-        motion = _pooled(x, y, information * even_weights(self.grid, valid)[:, None, None])
+        motion = pooled(x, y, information * even_weights(self.grid, valid)[:, None, None])
         twist = np.linalg.pinv(np.column_stack([np.ones(len(x)), along, across, along * across]))[3]
         half = self._half_length()
         first, last = _end(along + half, across, depth), _end(along - half, across, depth)
@@ -224,7 +224,7 @@ class GaugeReader:
             on["extensometer"] = np.zeros((len(x), 6))
             on["extensometer"][:, [0, 3]] = np.outer((ends[1] - ends[0]) / (2 * half), a)
         gains = {"extensometer": float("nan")}
-        gains |= {name: self._noise_gain(valid, weights) for name, weights in on.items()}
+        gains |= {name: noise_gain(self.reference, valid, weights) for name, weights in on.items()}
         return _Weights(motion, twist, ends, on, SmoothField(x, y), gains)
 
     def _half_length(self) -> float:
@@ -232,18 +232,34 @@ class GaugeReader:
         span = float(np.ptp(self._along[self._member]))
         return max(self.length if self.length is not None else span - self.reference.subset, 1.0) / 2
 
-    def _noise_gain(self, valid: NDArray[np.bool_], on: Floats) -> float:
-        """Return a reading's standard deviation for pixel noise of one grey level in one frame."""
-        reference, kit = self.reference, self.reference.estimator
-        pixels = np.zeros(reference.shape)
-        spread_weights(
-            reference.f, reference.fx, reference.fy, reference.mask, reference.shape[1],
-            kit.mean[valid], kit.norm[valid], kit.average[valid], kit.along[valid], kit.inverse[valid],
-            reference.x[valid], reference.y[valid], reference.half,
-            np.ascontiguousarray(on), pixels,
-        )  # fmt: skip
-        # Raw noise is smoothed before it meets these weights, so the weights are smoothed instead.
-        return float(np.linalg.norm(blur(pixels.astype(np.float32), reference.settings.smoothing)))
+
+def noise_gain(reference: Reference, which: NDArray[np.bool_ | np.integer], on: Floats) -> float:
+    """Return a reading's standard deviation for pixel noise of one grey level in one frame.
+
+    Parameters
+    ----------
+    reference
+        The prepared reference.
+    which
+        The m subsets that the reading uses, as numbers or as a mask.
+    on
+        Their weights on u, uₓ, u_y, v, vₓ, v_y, shape (m, 6).
+    """
+    kit = reference.estimator
+    x, y, half = reference.x[which], reference.y[which], reference.half
+    pixels = np.zeros(reference.shape)
+    spread_weights(
+        reference.f, reference.fx, reference.fy, reference.mask, reference.shape[1],
+        kit.mean[which], kit.norm[which], kit.average[which], kit.along[which], kit.inverse[which],
+        x, y, half, np.ascontiguousarray(on), pixels,
+    )  # fmt: skip
+    # Only what the subsets cover, and as much around it as smoothing reaches.
+    reach = half + 1 + round(5 * reference.settings.smoothing)
+    rows = slice(max(int(y.min()) - reach, 0), int(y.max()) + reach + 1)
+    columns = slice(max(int(x.min()) - reach, 0), int(x.max()) + reach + 1)
+    part = np.ascontiguousarray(pixels[rows, columns], np.float32)
+    # Raw noise is smoothed before it meets these weights, so the weights are smoothed instead.
+    return float(np.linalg.norm(blur(part, reference.settings.smoothing)))
 
 
 def even_weights(grid: Grid, valid: NDArray[np.bool_]) -> Floats:
@@ -273,7 +289,7 @@ def even_weights(grid: Grid, valid: NDArray[np.bool_]) -> Floats:
     return np.asarray(inner[grid.inside][valid])
 
 
-def _pooled(x: Floats, y: Floats, information: Floats) -> Floats:
+def pooled(x: Floats, y: Floats, information: Floats) -> Floats:
     """Return the weights with which subsets' motions join to the affine motion of the whole gauge.
 
     Least squares over displacements and gradients of all subsets, each with the weight that its
