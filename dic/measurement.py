@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 
 from dic.comparison import ClipOn
 from dic.errors import Notice
+from dic.gauges import NamedHistory
 from dic.properties.result import Curve, ModulusLine, Property
 from dic.strain.history import GaugeHistory
 from dic.sync.record import Clock, LoadRecord
@@ -88,6 +89,8 @@ class Measurement:
         Where the results lie; the fields are in ``fields.nc``.
     clip_on
         Comparison with a clip-on extensometer; None where the load record has none.
+    gauges
+        What the gauges that the test file names read.
     """
 
     test: TestFile
@@ -104,12 +107,13 @@ class Measurement:
     provenance: dict[str, Any]
     folder: Path = field(default=Path())
     clip_on: ClipOn | None = None
+    gauges: tuple[NamedHistory, ...] = ()
 
     def to_pandas(self) -> pd.DataFrame:
         """Return the history as a table, the columns those of ``history.csv``."""
         from dic.store.tables import history_table
 
-        return history_table(self.history, self.curve)
+        return history_table(self.history, self.curve, self)
 
     def to_xarray(self) -> xr.Dataset:
         """Open the displacement and strain fields, on (frame, y, x)."""

@@ -17,6 +17,8 @@ from dic.comparison import compare
 from dic.comparison import doubts as clip_on_doubts
 from dic.errors import ClockError, InputError
 from dic.frames import open_frames, unreadable_frames
+from dic.gauges import NamedHistory, NamedReadings
+from dic.gauges.probes import Subsets
 from dic.judgement import alignment, reading_doubts
 from dic.measurement import Measurement, Scene
 from dic.preparation import Setup, set_up
@@ -64,9 +66,9 @@ def measure(
     record = read_load_record(test.load_record, test.beside(test.load_record.source))
     given_clock(source.time_s, record, test.sync)  # before tracking, which takes longest
     setup = set_up(test, source)
-    history = read_gauges(test, setup, folder, progress)
+    history, named = read_gauges(test, setup, folder, progress)
     clock = _clock(test, setup, history, record)
-    measurement = judged(test, setup, history, record, clock, folder)
+    measurement = judged(test, setup, history, named, record, clock, folder)
     write_results(measurement, folder)
     with measurement.to_xarray() as stored:
         write_report(measurement, stored, folder)
@@ -94,16 +96,23 @@ def default_folder(test_path: Path) -> Path:
     return test_path.with_name(f"{test_path.stem}-results")
 
 
-def read_gauges(test: TestFile, setup: Setup, folder: Path, progress: Progress | None) -> GaugeHistory:
+def read_gauges(
+    test: TestFile, setup: Setup, folder: Path, progress: Progress | None
+) -> tuple[GaugeHistory, list[NamedHistory]]:
     """Track the frames, or take up what was tracked before, and read the gauges in each."""
     reader, readings = setup.reader(), []
-    for done, match in enumerate(tracked_or_stored(test, setup, folder), start=1):
+    named = NamedReadings(Subsets(setup.reference, setup.grid), setup.gauges, setup.silhouette)
+    for done, (match, widths) in enumerate(tracked_or_stored(test, setup, folder), start=1):
         readings.append(reader.read(match))
+        named.read(match, widths)
         if progress is not None:
             progress(done, len(setup.source))
-    return gather(
+    history = gather(
         readings, setup.source.names, setup.source.time_s, correct=test.correlation.periodic != "off"
     )
+    if test.specimen.shape == "round":
+        history = named.of_round_bar(history)
+    return history, named.histories(history.periodic, setup.scale_mm)
 
 
 def _clock(test: TestFile, setup: Setup, history: GaugeHistory, record: LoadRecord) -> Clock:
@@ -119,7 +128,13 @@ def _clock(test: TestFile, setup: Setup, history: GaugeHistory, record: LoadReco
 
 
 def judged(
-    test: TestFile, setup: Setup, history: GaugeHistory, record: LoadRecord, clock: Clock, folder: Path
+    test: TestFile,
+    setup: Setup,
+    history: GaugeHistory,
+    named: list[NamedHistory],
+    record: LoadRecord,
+    clock: Clock,
+    folder: Path,
 ) -> Measurement:
     """Go from gauge histories to properties."""
     curve = make_curve(history, record, clock, test.specimen.area)
@@ -158,6 +173,7 @@ def judged(
         provenance=provenance.collect(test, record, str(fields.stored_attributes(folder)["frames_sha256"])),
         folder=folder,
         clip_on=clip_on,
+        gauges=tuple(named),
     )
 
 

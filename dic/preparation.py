@@ -12,6 +12,8 @@ from numpy.typing import NDArray
 from dic.correlation import Grid, Reference, Settings, Tracker, lay_grid, prepare_reference
 from dic.errors import FrameError, Notice, PatternError, TestFileError
 from dic.frames import FrameSource, RepeatWatch
+from dic.gauges import Placed, Silhouette, facing, place_gauges
+from dic.gauges.probes import Subsets
 from dic.pattern import Coupon, axes, axis_doubts, doubts, find_coupon, picture_quality
 from dic.strain import GaugeReader, Region
 from dic.testfile import Correlation, TestFile
@@ -51,6 +53,10 @@ class Setup:
         Figures of the pattern.
     notices
         Doubts about it.
+    silhouette
+        The coupon's edges, where they are to be followed and both in view.
+    gauges
+        Those that the test file names, on the coupon.
     """
 
     source: FrameSource
@@ -63,6 +69,8 @@ class Setup:
     extensometer_px: float | None
     quality: dict[str, float]
     notices: tuple[Notice, ...]
+    silhouette: Silhouette | None = None
+    gauges: tuple[Placed, ...] = ()
 
     def reader(self) -> GaugeReader:
         """Return a fresh reader of the gauges."""
@@ -83,7 +91,7 @@ def set_up(test: TestFile, source: FrameSource) -> Setup:
     image = _mean(source, first, last)
     full_scale = source.full_scale()
     coupon = find_coupon(image, test.gauge.axis_angle, _given_region(image.shape, test.gauge.region))
-    mask = coupon.mask
+    mask, facing_notices = facing(coupon, test.specimen.shape, test.gauge.region == "auto")
     region = Region.around(mask, *axes(coupon.axis_angle_deg))
     scale_mm = test.camera.scale or test.specimen.visible_width / coupon.width_px
     length = _gauge_length(test, scale_mm)
@@ -94,6 +102,10 @@ def set_up(test: TestFile, source: FrameSource) -> Setup:
         if still > 1:
             image = _mean(source, 0, still - 1)
             reference = _prepared(test.correlation, image, grid, mask, still, full_scale)
+    silhouette = None
+    if test.follows_edges and None not in coupon.edges:
+        silhouette = Silhouette(image, coupon, region)
+    gauges = place_gauges(test.gauges, Subsets(reference, grid), region, scale_mm, silhouette)
     quality = picture_quality(image, coupon, full_scale)
     return Setup(
         source=source,
@@ -107,9 +119,12 @@ def set_up(test: TestFile, source: FrameSource) -> Setup:
         quality={**quality, "reference_frames": float(reference.frames)},
         notices=(
             *_subset_taken(test.correlation.subset, grid),
+            *facing_notices,
             *axis_doubts(coupon),
             *doubts(quality, grid.subset),
         ),
+        silhouette=silhouette,
+        gauges=tuple(gauges),
     )
 
 

@@ -4,10 +4,12 @@ from __future__ import annotations
 
 import hashlib
 import json
+from collections import deque
 from collections.abc import Iterator
 from concurrent.futures import ThreadPoolExecutor
 from pathlib import Path
 
+import numpy as np
 from threadpoolctl import threadpool_limits
 
 from dic import provenance
@@ -16,17 +18,26 @@ from dic.correlation.flags import Flag
 from dic.errors import FrameError, TrackingError
 from dic.frames import FrameSource, RepeatWatch, check_damage
 from dic.frames.readers import Grey
+from dic.gauges.silhouette import Silhouette, Widths, clear, mean_motion
 from dic.preparation import Setup
 from dic.store import fields
 from dic.strain import StrainMapper, Window
 from dic.testfile import TestFile
 
 
-def tracked_or_stored(test: TestFile, setup: Setup, folder: Path) -> Iterator[Match]:
-    """Yield one match per frame, from the store if it holds this very tracking, else by tracking."""
+def tracked_or_stored(test: TestFile, setup: Setup, folder: Path) -> Iterator[tuple[Match, Widths | None]]:
+    """Yield one match per frame, and the width between the coupon's edges if they are followed.
+
+    From the store if it holds this very tracking, else by tracking.
+    """
     key = tracking_key(test, setup.source)
     if fields.stored_attributes(folder).get("tracking_key") == key:
-        yield from fields.stored_matches(folder, setup.grid)
+        matches = fields.stored_matches(folder, setup.grid)
+        if setup.silhouette is None:
+            yield from ((match, None) for match in matches)
+        else:
+            edges = (Widths(*one) for one in fields.stored_edges(folder))
+            yield from zip(matches, edges, strict=True)
     else:
         yield from _tracked(test, setup, folder, key)
 
@@ -44,12 +55,14 @@ def tracking_key(test: TestFile, source: FrameSource) -> str:
         "maps": test.maps.model_dump(exclude={"measure"}),
         "axis": test.gauge.axis,
         "region": test.gauge.region,
+        "edges": test.follows_edges,
+        "shape": test.specimen.shape,
         "subsets": (test.gauge.subsets, test.gauge.length if test.gauge.subsets == "ends" else None),
     }
     return hashlib.sha256(json.dumps(said, sort_keys=True).encode()).hexdigest()
 
 
-def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[Match]:
+def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[tuple[Match, Widths | None]]:
     grid, source = setup.grid, setup.source
     window = Window(
         test.maps.window,
@@ -70,20 +83,30 @@ def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[M
         "axis_angle_deg": setup.coupon.axis_angle_deg,
     }
     mapper = StrainMapper(window, (setup.region.axial, setup.region.transverse))
-    measured = 0
+    measured, edges = 0, setup.silhouette
+    seen: deque[Grey | Flag] = deque(maxlen=1)
     damage: dict[int, str] = {}
     with (
         # BLAS threads spin for a while after each small product, on the cores that the kernels need.
         threadpool_limits(1, user_api="blas"),
         ThreadPoolExecutor(1) as hashing,
-        fields.FieldsWriter(folder, grid, source.time_s, attributes) as writer,
+        fields.FieldsWriter(
+            folder, grid, source.time_s, attributes, edges.along if edges is not None else None
+        ) as writer,
     ):
         hashed = hashing.submit(source.sha256)
-        for match in track(_read_ahead(source, damage), setup.reference, grid.neighbours()):
+        for match in track(
+            _remembered(_read_ahead(source, damage), seen), setup.reference, grid.neighbours()
+        ):
+            widths = _widths(edges, setup, seen[0], match) if edges is not None else None
             parts = (match.u, match.v, match.sigma_u, match.sigma_v)
-            writer.put(match, mapper.strain(*(fields.spread(part, grid.inside) for part in parts)))
+            writer.put(
+                match,
+                mapper.strain(*(fields.spread(part, grid.inside) for part in parts)),
+                (widths.px, widths.u_per_grey) if widths is not None else None,
+            )
             measured += bool(match.converged.any())
-            yield match
+            yield match, widths
         check_damage(damage, len(source), test.frames.source)
         # The frames of the reference always match; alone they say nothing.
         if measured <= setup.reference.frames:
@@ -100,6 +123,25 @@ def unreadable(folder: Path) -> dict[int, str]:
     """Return why frames could not be used when the stored fields were tracked, by frame number."""
     said = json.loads(str(fields.stored_attributes(folder).get("unreadable_frames", "{}")))
     return {int(index): str(why) for index, why in said.items()}
+
+
+def _remembered(frames: Iterator[Grey | Flag], seen: deque[Grey | Flag]) -> Iterator[Grey | Flag]:
+    """Pass the frames on, and keep the one that is being matched."""
+    for frame in frames:
+        seen.append(frame)
+        yield frame
+
+
+def _widths(edges: Silhouette, setup: Setup, frame: Grey | Flag, match: Match) -> Widths:
+    """Measure the width between the edges where the subsets' mean motion has carried them."""
+    found, reference = match.converged, setup.reference
+    places = np.stack([reference.x, reference.y], axis=1)[found]
+    moved = np.stack([match.u, match.v], axis=1)[found]
+    motion = mean_motion(places, moved, setup.region.centre)
+    if isinstance(frame, Flag) or not np.isfinite(motion).all():
+        nowhere = np.full(len(edges.along), np.nan)
+        return Widths(nowhere, nowhere)
+    return clear(edges.measure(frame, motion), match.noise_grey)
 
 
 def _read_ahead(source: FrameSource, damage: dict[int, str]) -> Iterator[Grey | Flag]:

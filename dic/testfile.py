@@ -56,7 +56,7 @@ def _is_length(written: str) -> str:
     try:
         size = in_px(written)
     except ValueError:
-        raise ValueError(f"'{written}' is not a length; write for example \"120 px\" or \"5 mm\"") from None
+        raise ValueError(f'\'{written}\' is not a length; write for example "120 px" or "5 mm"') from None
     size = parse(written, "length") if size is None else size
     if not abs(size) <= MAX_BYTES:
         raise ValueError(f"'{written}' is far too long")
@@ -296,8 +296,8 @@ class NamedGauge(Section):
             raise ValueError(
                 f'{foreign[0]} means nothing for kind "{self.kind}"; {nearest(foreign[0], needed | further)}'
             )
-        if ("from" in given) != ("to" in given) or ("from" in given and {"centre", "angle", "length"} & given
-                                                    and self.kind == "extensometer"):  # fmt: skip
+        placed_twice = self.kind == "extensometer" and {"centre", "angle", "length"} & given
+        if ("from" in given) != ("to" in given) or ("from" in given and placed_twice):
             raise ValueError("give from and to together, without length, centre and angle")
         if self.region is not None and self.points is not None:
             raise ValueError("give region or points, not both")
@@ -427,6 +427,12 @@ class TestFile(Section):
     sync: Sync = Sync()
     properties: Properties = Properties()
     path: Path = Field(default=Path("test.toml"), exclude=True)
+
+    @property
+    def follows_edges(self) -> bool:
+        """Whether the width between the coupon's edges is wanted in every frame."""
+        named = any(gauge.kind == "edge_width" for gauge in self.gauges.values())
+        return named or self.specimen.shape == "round"
 
     def beside(self, name: str) -> Path:
         """Return the path of a file that the test file names relative to itself."""
@@ -569,4 +575,4 @@ def _keys_at(model: type[BaseModel], sections: list[str]) -> list[str]:
         if not (isinstance(inner, type) and issubclass(inner, BaseModel)):
             break
         model = inner
-    return [name for name, field in model.model_fields.items() if not field.exclude]
+    return [field.alias or name for name, field in model.model_fields.items() if not field.exclude]

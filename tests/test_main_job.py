@@ -340,3 +340,49 @@ def test_a_clip_on_in_the_record_is_compared(tmp_path, small_scenario):
     assert whole.u_slope < 0.01
     said = json.loads((tmp_path / "out" / "results.json").read_text())["clip_on"]
     assert said["slope"] == whole.slope
+
+
+GAUGES = """
+[gauges.ext]
+kind = "extensometer"
+length = 150
+[gauges.edges]
+kind = "edge_width"
+[gauges.middle]
+kind = "line"
+from = [90, 40]
+to = [90, 220]
+"""
+
+
+def test_named_gauges_read_the_truth_and_come_back_from_the_store(copy, monkeypatch):
+    """Five stated standard uncertainties of 22 frames; the width between the edges within 0.02 px of 130 px,
+    as 200 px of speckled edge allow."""
+    append(copy, GAUGES)
+    first = dic.measure(copy)
+    truth = json.loads(copy.with_name("truth.json").read_text())["frames"]
+    found = {one.gauge.name: one for one in first.gauges}
+    for name in ("ext", "middle"):
+        miss = (found[name].strain - truth["strain_axial"]) / found[name].u_strain
+        assert np.abs(miss).max() < 5, name
+    assert set(found["ext"].status) == {"ok"}
+    width = (found["edges"].strain - truth["strain_transverse"]) * found["edges"].gauge.length_px
+    assert np.abs(np.mean(width)) < 0.02
+    assert found["edges"].gauge.length_px == pytest.approx(130, rel=0.004)  # as the scale is good to
+
+    monkeypatch.setattr("dic.sequence.track", tracked_again)
+    second = dic.measure(copy)
+    for one, other in zip(first.gauges, second.gauges, strict=True):
+        np.testing.assert_array_equal(one.strain, other.strain)
+
+
+def test_a_round_bar_takes_its_middle_and_its_edges(copy):
+    """Patches within half the radius, transverse strain from the width; a flat coupon looks the same."""
+    text = copy.read_text().replace('shape = "flat"', 'shape = "round"')
+    text = text.replace('width = "10 mm"', 'diameter = "10 mm"').replace('thickness = "2 mm"\n', "")
+    copy.write_text(text)
+    found = dic.measure(copy)
+    assert np.ptp(found.scene.region[:, 0]) == pytest.approx(130 / 2, abs=3)
+    truth = json.loads(copy.with_name("truth.json").read_text())["frames"]["strain_transverse"]
+    assert abs(np.mean(found.history.transverse - truth)) < 0.02 / 130
+    assert np.median(found.history.u_transverse) < 0.015 / 130

@@ -21,7 +21,9 @@ Floats = NDArray[np.float64]
 
 #: Why a gauge has no reading in a frame.
 LOST = "the gauge's subsets were lost"
-UNCLEAR = "an edge is out of view or not clear"
+UNCLEAR = "the edges are out of view or not clear"
+#: Share of an edge's stations that has to be seen.
+LEAST_SEEN = 0.5
 
 
 @dataclass(frozen=True)
@@ -123,8 +125,11 @@ class NamedReadings:
         return histories
 
     def _between_edges(self, gauge: Placed, along_px: tuple[float, float], length_mm: float) -> NamedHistory:
-        strain, u = self._edge_strain(along_px)
-        status = tuple("ok" if np.isfinite(one) else UNCLEAR for one in strain)
+        strain, u, lost = self._edge_strain(along_px)
+        status = tuple(
+            _said(count, len(self._stations(along_px))) if np.isfinite(one) else UNCLEAR
+            for one, count in zip(strain, lost, strict=True)
+        )
         nothing = np.empty((len(strain), 0))
         return NamedHistory(gauge, strain, u, status, nothing, nothing, length_mm)
 
@@ -136,23 +141,37 @@ class NamedReadings:
         """
         if self._silhouette is None:
             return history
-        strain, u = self._edge_strain(self._silhouette.range_px)
+        strain, u, _ = self._edge_strain(self._silhouette.range_px)
         return replace(history, transverse=strain, u_transverse=u)
 
-    def _edge_strain(self, along_px: tuple[float, float]) -> tuple[Floats, Floats]:
-        """Return the change of the mean width between two places along the axis per width, and its u."""
+    def _stations(self, along_px: tuple[float, float]) -> NDArray[np.intp]:
+        """Return the stations between two places at which the reference shows both edges clearly."""
         assert self._silhouette is not None  # noqa: S101  (gauges between edges are placed on it)
-        here = self._silhouette.stations(*along_px)
+        seen = np.isfinite(self._silhouette.reference.px)
+        return np.flatnonzero(seen & self._silhouette.stations(*along_px))
+
+    def _edge_strain(self, along_px: tuple[float, float]) -> tuple[Floats, Floats, list[int]]:
+        """Return the mean change of width per width between two places, its u, and stations lost."""
+        assert self._silhouette is not None  # noqa: S101  (gauges between edges are placed on it)
+        here = self._stations(along_px)
         first = self._silhouette.reference.px[here]
         measured = np.array([one.px[here] for one in self._widths])
         own = np.array([one.u_per_grey[here] for one in self._widths])
-        mean = first.mean()
-        strain = (measured - first).mean(axis=1) / mean
-        u = np.sqrt((own**2).sum(axis=1)) / here.sum() * np.array(self._noise) / mean
-        return strain, np.where(np.isfinite(strain), u, np.nan)
+        seen = np.isfinite(measured)
+        count = seen.sum(axis=1)
+        enough = count >= max(LEAST_SEEN * len(here), 1)
+        # Each station against itself: what the pattern does to the edge's place stays out of it.
+        change = np.where(seen, (measured - first) / first, 0.0).sum(axis=1)
+        spread = np.sqrt(np.where(seen, (own / first) ** 2, 0.0).sum(axis=1)) * np.array(self._noise)
+        few = np.maximum(count, 1)
+        return (
+            np.where(enough, change / few, np.nan),
+            np.where(enough, spread / few, np.nan),
+            (len(here) - count).tolist(),
+        )
 
 
 def _said(lost: int, probes: int) -> str:
     if lost == 0:
         return "ok"
-    return LOST if probes == 1 else f"{lost} of {probes} stations were lost"
+    return LOST if probes == 1 else f"{lost} of {probes} stations were lost or out of view"

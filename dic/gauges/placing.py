@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from skimage.measure import points_in_poly
 
 from dic.errors import TestFileError
-from dic.gauges.probes import Probe, Spanning, Stretching, Subsets
+from dic.gauges.probes import Ints, Probe, Spanning, Stretching, Subsets
 from dic.gauges.silhouette import Silhouette
 from dic.pattern import axes
 from dic.quantities import parse
@@ -21,10 +21,32 @@ Floats = NDArray[np.float64]
 
 #: Columns of history.csv, which no gauge may be named after.
 RESERVED = frozenset(
-    "frame time_s force_N stress_MPa strain_axial strain_transverse strain_shear u_strain_axial "
-    "u_strain_transverse valid_fraction status machine_time_s strain_extensometer strain_bending u_strain_shear "
-    "u_strain_extensometer shift_axial_px shift_transverse_px name strain_clip_on hencky_axial "
-    "hencky_transverse stretch_axial stretch_transverse".split()
+    [
+        "frame",
+        "time_s",
+        "force_N",
+        "stress_MPa",
+        "strain_axial",
+        "strain_transverse",
+        "strain_shear",
+        "u_strain_axial",
+        "u_strain_transverse",
+        "valid_fraction",
+        "status",
+        "machine_time_s",
+        "strain_extensometer",
+        "strain_bending",
+        "u_strain_shear",
+        "u_strain_extensometer",
+        "shift_axial_px",
+        "shift_transverse_px",
+        "name",
+        "strain_clip_on",
+        "hencky_axial",
+        "hencky_transverse",
+        "stretch_axial",
+        "stretch_transverse",
+    ]
 )
 #: Where along the gauge region a transverse extensometer sits, if the test file does not say it.
 STATIONS = (0.25, 0.5, 0.75)
@@ -167,11 +189,12 @@ class _Placer:
 
     def _spanning(self, first: Floats, last: Floats, width: float) -> tuple[Spanning, tuple[Floats, ...]]:
         direction = (last - first) / max(float(np.linalg.norm(last - first)), 1e-9)
+        self.inside_picture(np.stack([first, last]))
         self.long_enough(first, last)
         across, depth = np.array([-direction[1], direction[0]]), self.subsets.size
-        bands, outlines = [], [np.stack([first, last])]
+        bands: list[Ints] = []
+        outlines = [np.stack([first, last])]
         for end in (first, last):
-            self.inside_picture(end[None])
             band = self.subsets.in_rectangle(end, direction, depth, width)
             if not len(band):
                 raise self.off_coupon(end)
@@ -204,7 +227,9 @@ class _Placer:
     def across(self, name: str, gauge: NamedGauge) -> Placed:
         region = self.region
         width = 2.0 * self.subsets.size if gauge.width is None else self.px(gauge.width)
-        probes, outlines, lengths = [], [], []
+        probes: list[Probe] = []
+        outlines: list[Floats] = []
+        lengths: list[float] = []
         for station in STATIONS if gauge.stations is None else gauge.stations:
             along = self.px(station) if isinstance(station, str) else (station - 0.5) * region.length
             centre = region.centre + along * region.axial
@@ -217,7 +242,9 @@ class _Placer:
             outlines += drawn
             lengths.append(length)
         labels = tuple(f"{name}_{k + 1}" for k in range(len(probes))) if len(probes) > 1 else ()
-        note = "" if gauge.length is not None else "the length was chosen so that both bands lie on the coupon"
+        note = (
+            "" if gauge.length is not None else "the length was chosen so that both bands lie on the coupon"
+        )
         mean = float(np.mean(lengths))
         return Placed(name, gauge.kind, tuple(probes), labels, tuple(outlines), mean, note=note)
 
@@ -251,7 +278,8 @@ class _Placer:
         width = float(grid.subset) if gauge.width is None else self.px(gauge.width)
         count = int(min((total - window) // max(grid.step, 1) + 1, MOST_ON_LINE))
         places = np.linspace(window / 2, total - window / 2, count) if count > 1 else np.array([total / 2])
-        probes, kept = [], []
+        probes: list[Probe] = []
+        kept: list[float] = []
         for place in places:
             centre = first + place * direction
             # Subsets whose own pixels lie in the window, as far as the pitch allows.
@@ -284,9 +312,9 @@ class _Placer:
             first, last = max(first, low), min(last, high)
         if first < low - 1 or last > high + 1:
             raise TestFileError(
-                f"{first:.0f} px to {last:.0f} px along the axis is more than what is seen of both edges",
+                f"{first:.0f} px to {last:.0f} px along the axis is more than is seen of both edges",
                 where=self.where,
-                remedy=f"they are seen from {low:.0f} px to {high:.0f} px, counted from the middle of the region",
+                remedy=f"from the middle of the region, they are seen from {low:.0f} px to {high:.0f} px",
             )
         outlines = self.silhouette.outlines(first, last)
         return Placed(
@@ -321,7 +349,7 @@ class _Placer:
         (left, top), (right, bottom) = points.min(axis=0), points.max(axis=0)
         if left < -0.5 or top < -0.5 or right > columns - 0.5 or bottom > rows - 0.5:
             raise TestFileError(
-                f"reaches from x {left:.0f} to {right:.0f} and y {top:.0f} to {bottom:.0f} px, out of the picture",
+                f"reaches out of the picture: x {left:.0f} to {right:.0f}, y {top:.0f} to {bottom:.0f} px",
                 where=self.where,
                 remedy=f"the picture is {columns} px wide and {rows} px high",
             )

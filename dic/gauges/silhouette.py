@@ -10,6 +10,7 @@ of the edge uncertain, but moves with it, so that it hardly enters the change of
 from __future__ import annotations
 
 from dataclasses import dataclass
+from math import hypot, sqrt
 
 import numpy as np
 from numpy.typing import NDArray
@@ -24,12 +25,19 @@ Floats = NDArray[np.float64]
 BLOCK = 16
 #: The edge is first looked for this far to either side of where the motion puts it, px ...
 SEARCH_PX = 10.0
-#: ... then weighed over this much to either side: a lens' blur fits in, and little noise.
-ZONE_PX = 4.0
-#: Beyond the zone so much gives the grey of background and of coupon, px.
-LEVEL_PX = 4.0
+#: ... then weighed over this much to either side: what a lens blurs, and little noise.
+ZONE_PX = 2.5
+#: ... which follows the edge only where it leaves the material by more than this, px.
+KEPT_PX = 0.5
+#: The zone's ends fade over this much, so that a speckle on them does not come and go with a pixel's place.
+FADE_PX = 2.0
+#: Beyond the zone so much gives the grey of background and of coupon, px: the more, the less noise.
+LEVEL_PX = 8.0
 #: Samples along a ray, px.
 PITCH_PX = 0.5
+#: Pixels whose noise enters one ray's place: those of the zone, and those of the two levels; rays one px
+#: apart share none.
+NOISE_PX = 2 * ZONE_PX - FADE_PX / 3 + 2 * ZONE_PX**2 / LEVEL_PX
 #: Sides are told apart only where their grey differs by this many times the noise.
 LEAST_STEP = 10.0
 
@@ -63,7 +71,7 @@ class Silhouette:
         The gauge region; stations lie along it.
     """
 
-    def __init__(self, image: NDArray[np.floating], coupon: Coupon, region: Region) -> None:
+    def __init__(self, image: NDArray[np.integer | np.floating], coupon: Coupon, region: Region) -> None:
         left, right = coupon.edges
         if left is None or right is None:
             raise ValueError("both edges are needed")
@@ -71,7 +79,7 @@ class Silhouette:
         middle = np.array([image.shape[1] - 1, image.shape[0] - 1]) / 2.0
         start = float((region.centre - middle) @ axial)
         blocks = max(int(region.length // BLOCK), 1)
-        self.along = (np.arange(blocks) - (blocks - 1) / 2) * BLOCK
+        self.along: Floats = np.asarray((np.arange(blocks) - (blocks - 1) / 2) * BLOCK, float)
         rays = start + (self.along[:, None] + np.arange(BLOCK) - (BLOCK - 1) / 2).ravel()
         self._axial, self._transverse = axial, transverse
         self._edges = [
@@ -79,11 +87,18 @@ class Silhouette:
             for edge in (left, right)
         ]
         self._centre = region.centre
-        self.reference = self.measure(image, np.zeros((2, 3)))
+        still = np.zeros((2, 3))
+        self._rest: list[_Laid] | None = None
+        self._rest = self._laid(np.asarray(image, np.float32), still)
+        self._first = [one.fine for one in self._rest]
+        seen = np.isfinite(self._first[0].zone) & np.isfinite(self._first[1].zone)
+        left_at, right_at = (side.placed(seen) for side in self._first)
+        u = _of_both(self._first, seen)
+        self.reference = Widths(right_at - left_at, np.full(blocks, u))
 
     @property
     def range_px(self) -> tuple[float, float]:
-        """From and to where both edges are clear in the reference, along the axis from the region's middle."""
+        """Where both edges are clear in the reference: from, to, along the axis from the region's middle."""
         seen = self.along[np.isfinite(self.reference.px)]
         if not seen.size:
             return 0.0, 0.0
@@ -105,7 +120,7 @@ class Silhouette:
         left, right = (edge[here] for edge in self._edges)
         return left, right
 
-    def measure(self, frame: NDArray[np.floating], motion: Floats) -> Widths:
+    def measure(self, frame: NDArray[np.integer | np.floating], motion: Floats) -> Widths:
         """Measure the width in one frame.
 
         Parameters
@@ -116,46 +131,100 @@ class Silhouette:
             Displacement and gradient of the coupon about the region's centre, u and then v: value, slope
             along x, slope along y, shape (2, 3).
         """
+        sides = [one.fine for one in self._laid(np.asarray(frame, np.float32), motion)]
+        seen = np.isfinite(sides[0].zone) & np.isfinite(sides[1].zone) & np.isfinite(self.reference.px)
+        # What has left the view leaves the reference too, so that both have their grey from one pattern.
+        now, first = ([side.placed(seen) for side in both] for both in (sides, self._first))
+        change = (now[1] - first[1]) - (now[0] - first[0])
+        u = _of_both(sides, seen)
+        return Widths(np.where(seen, self.reference.px + change, np.nan), np.where(seen, u, np.nan))
+
+    def _laid(self, grey: NDArray[np.float32], motion: Floats) -> list[_Laid]:
+        """Lay rays across both edges, where the material's motion and a rough search put them."""
         deformation = np.eye(2) + motion[:, 1:]
         direction = deformation @ self._axial
         direction /= np.linalg.norm(direction)
         # Across the coupon as it stands now, so that its turning is no widening.
         across = np.array([-direction[1], direction[0]])
-        grey = np.asarray(frame, np.float32)
-        places, spreads = [], []
-        for edge, side in zip(self._edges, (-1.0, 1.0), strict=True):
+        laid = []
+        for number, (edge, sign) in enumerate(zip(self._edges, (-1.0, 1.0), strict=True)):
             there = self._centre + motion[:, 0] + (edge - self._centre) @ deformation.T
-            shift = self._shift(grey, there, side * across, SEARCH_PX)[0]
-            blocks = np.repeat(_line_through(self.along, shift), BLOCK)
-            fine, spread = self._shift(
-                grey, there + (side * blocks)[:, None] * across, side * across, ZONE_PX
-            )
-            whole = (there @ across).reshape(-1, BLOCK).mean(axis=1)
-            places.append(whole + side * (blocks[::BLOCK] + fine))
-            spreads.append(spread)
-        return Widths(places[1] - places[0], np.hypot(*spreads))
+            rough = _Side.along(grey, there, sign, across, SEARCH_PX)
+            if self._rest is None:
+                shift = _line_through(self.along, rough.shift(np.isfinite(rough.zone)))
+            else:
+                rest = self._rest[number]
+                seen = np.isfinite(rough.zone) & np.isfinite(rest.rough.zone)
+                off = _line_through(self.along, rough.shift(seen) - rest.rough.shift(seen))
+                # Within half a pixel the zone keeps to the material, so that its pattern stays the same.
+                shift = rest.shift + np.sign(off) * np.maximum(np.abs(off) - KEPT_PX, 0.0)
+            line = there + sign * np.repeat(shift, BLOCK)[:, None] * across
+            laid.append(_Laid(rough, shift, _Side.along(grey, line, sign, across, ZONE_PX)))
+        return laid
 
-    @staticmethod
-    def _shift(grey: NDArray[np.float32], at: Floats, outward: Floats, zone: float) -> tuple[Floats, Floats]:
-        """Return how far outside the expected places the edge stands, block by block, and u per grey level."""
-        reach = zone + LEVEL_PX
-        depth = np.arange(-reach + PITCH_PX / 2, reach, PITCH_PX)
-        x = at[:, :1] + depth * outward[0]
-        y = at[:, 1:] + depth * outward[1]
+
+@dataclass(frozen=True)
+class _Side:
+    """What rays across one edge saw, block by block, shape (k,); NaN where out of view.
+
+    `base` is where the edge is expected, across the coupon; `zone`, `inner` and `outer` are mean greys
+    around it, on the coupon and on the background; `sign` is +1 where outside is the right.
+    """
+
+    base: Floats
+    zone: Floats
+    inner: Floats
+    outer: Floats
+    reach: float
+    sign: float
+
+    @classmethod
+    def along(cls, grey: NDArray[np.float32], at: Floats, sign: float, across: Floats, reach: float) -> _Side:
+        end = reach + FADE_PX / 2
+        depth = np.arange(-end - LEVEL_PX + PITCH_PX / 2, end + LEVEL_PX, PITCH_PX)
+        x = at[:, :1] + sign * depth * across[0]
+        y = at[:, 1:] + sign * depth * across[1]
         rays = ndimage.map_coordinates(grey, [y, x], order=1, mode="constant", cval=np.nan)
-        profile = rays.reshape(-1, BLOCK, len(depth)).mean(axis=1)
-        whole = profile[np.isfinite(profile).all(axis=1)]
-        if not len(whole):
-            nowhere = np.full(len(profile), np.nan)
-            return nowhere, nowhere
-        inner, outer = depth < -zone, depth > zone
-        inside, outside = float(whole[:, inner].mean()), float(whole[:, outer].mean())
-        step = inside - outside
-        share = (profile[:, np.abs(depth) < zone] - outside) / (step if step else np.nan)
-        shift = share.sum(axis=1) * PITCH_PX - zone
-        # Grey noise of the zone, and of the two levels; rays one px apart share no pixel.
-        variance = (2 * zone + zone**2 / LEVEL_PX * 2) / BLOCK
-        return shift, np.full(len(shift), np.sqrt(variance) / abs(step) if step else np.nan)
+        profile = rays.reshape(-1, BLOCK, len(depth)).mean(axis=1).astype(float)
+        profile[~np.isfinite(profile).all(axis=1)] = np.nan
+        weight = np.clip((end - np.abs(depth)) / FADE_PX, 0.0, 1.0)
+        zone = profile @ weight / weight.sum()
+        inner, outer = (profile[:, where].mean(axis=1) for where in (depth < -end, depth > end))
+        base = (at @ across).reshape(-1, BLOCK).mean(axis=1)
+        return cls(base, zone, inner, outer, reach, sign)
+
+    def step(self, seen: NDArray[np.bool_]) -> tuple[float, float]:
+        """Return the grey of the background, and by how much the coupon's differs."""
+        if not seen.any():
+            return float("nan"), float("nan")
+        outside = float(self.outer[seen].mean())
+        return outside, float(self.inner[seen].mean()) - outside or float("nan")
+
+    def shift(self, seen: NDArray[np.bool_]) -> Floats:
+        """Return how far outside its expected place each block of the edge stands, px."""
+        outside, step = self.step(seen)
+        return 2 * self.reach * ((self.zone - outside) / step) - self.reach
+
+    def placed(self, seen: NDArray[np.bool_]) -> Floats:
+        """Return where each block of the edge stands across the coupon, px."""
+        return self.base + self.sign * self.shift(seen)
+
+    def u_per_grey(self, seen: NDArray[np.bool_]) -> float:
+        """Return the standard uncertainty of one block's place per grey level of noise, px."""
+        return sqrt(NOISE_PX / BLOCK) / abs(self.step(seen)[1])
+
+
+@dataclass(frozen=True)
+class _Laid:
+    """One edge: what a rough search saw, how far outside the material the zone was laid, what that saw."""
+
+    rough: _Side
+    shift: Floats
+    fine: _Side
+
+
+def _of_both(sides: list[_Side], seen: NDArray[np.bool_]) -> float:
+    return hypot(*(side.u_per_grey(seen) for side in sides))
 
 
 def _line_through(along: Floats, shift: Floats) -> Floats:
@@ -168,13 +237,12 @@ def _line_through(along: Floats, shift: Floats) -> Floats:
 
 def clear(widths: Widths, noise_grey: float) -> Widths:
     """Return the widths, NaN where the coupon does not stand out from its background."""
-    # The step's share of the uncertainty is known from its size: variance / u² gives it back.
-    least = np.sqrt((2 * ZONE_PX + ZONE_PX**2 / LEVEL_PX * 2) / BLOCK * 2) / (LEAST_STEP * noise_grey)
-    faint = ~(widths.u_per_grey < least)
+    # Of two edges with a step of this size.
+    faint = ~(widths.u_per_grey < sqrt(2 * NOISE_PX / BLOCK) / (LEAST_STEP * noise_grey))
     return Widths(np.where(faint, np.nan, widths.px), np.where(faint, np.nan, widths.u_per_grey))
 
 
-def mean_motion(places: Floats, moved: Floats, centre: Floats) -> Floats:
+def mean_motion(places: NDArray[np.integer | np.floating], moved: Floats, centre: Floats) -> Floats:
     """Return the affine motion of the measured subsets about a centre, shape (2, 3).
 
     Parameters

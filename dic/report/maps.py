@@ -89,7 +89,7 @@ def draw_scene(measurement: Measurement) -> Drawing:
     scene = measurement.scene
     rows, columns = scene.photograph.shape
     figure, (axes,) = sheet(height=float(np.clip(WIDTH * rows / columns, 2.2, 5.4)) + 0.5)
-    _photograph(axes, scene, (0, columns, 0, rows), fade=0.25)
+    photograph_on(axes, scene, (0, columns, 0, rows), fade=0.25)
     axes.add_patch(_outline(scene, lw=1.6, label="gauge region"))
     _arrow(axes, scene)
     _squares(axes, scene)
@@ -121,7 +121,7 @@ def _map(measurement: Measurement, field: xr.Dataset, moment: Moment, rest: dict
     figure, panels = sheet(*shape, height=float(height))
     spreads = []
     for axes, component in zip(panels, ("axial", "transverse", "shear"), strict=True):
-        _photograph(axes, scene, view, fade=0.55)
+        photograph_on(axes, scene, view, fade=0.55)
         spreads.append(_panel(axes, field, component, tall, rest.get(component, 0.0)))
         axes.add_patch(_outline(scene, lw=0.9))
     _scale_bar(panels[0], scene)
@@ -247,7 +247,7 @@ def _view(field: xr.Dataset, scene: Scene) -> tuple[float, float, float, float]:
     )
 
 
-def _photograph(axes: Axes, scene: Scene, view: tuple[float, float, float, float], fade: float) -> None:
+def photograph_on(axes: Axes, scene: Scene, view: tuple[float, float, float, float], fade: float) -> None:
     """Show the photograph, lightened by `fade` so that what lies on it stands out."""
     left, right, top, bottom = view
     stride = max(1, round(max(right - left, bottom - top) / _MOST_PIXELS))

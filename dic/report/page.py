@@ -20,6 +20,7 @@ from dic.report.clip_on import agreement_rows, class_rows, draw_clip_on
 from dic.report.clocks import draw_clocks
 from dic.report.curves import draw_curves
 from dic.report.figures import Drawing, house_style, render
+from dic.report.gauges import draw_gauges, gauge_rows
 from dic.report.maps import draw_maps, draw_scene
 from dic.report.moments import choose_moments
 from dic.rounding import COVERAGE_FACTOR, uncertainty_alone, with_uncertainty
@@ -74,6 +75,7 @@ def write_report(measurement: Measurement, fields: xr.Dataset, folder: Path) -> 
             "scene": [draw_scene(measurement)],
             "clocks": draw_clocks(measurement),
             "clip_on": draw_clip_on(measurement),
+            "gauges": draw_gauges(measurement),
         }
         pictures = {
             name: [_published(drawing, label, folder) for drawing in drawings]
@@ -100,6 +102,9 @@ def _remove_stale(folder: Path, names: set[str]) -> None:
         "modulus-residuals",
         "clip-on-curves",
         "clip-on-difference",
+        "named-gauges",
+        "named-gauges-in-time",
+        *(f"line-{number}" for number in range(1, 101)),
         "clocks",
         *(f"map-{letter}" for letter in "abcdefghijklmnop"),
     }
@@ -133,6 +138,7 @@ def _page(measurement: Measurement, pictures: dict[str, list[Picture]]) -> str:
         ),
         columns=measurement.record.columns,
         clip_on=_clip_on(measurement.clip_on),
+        gauges=gauge_rows(measurement),
         alignment=words.labelled(
             {"axis_angle_deg": measurement.scene.axis_angle_deg, **measurement.alignment}
         ),

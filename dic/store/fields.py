@@ -53,6 +53,12 @@ VARIABLES: dict[str, tuple[str, str, str]] = {
     "map_flag": ("u1", "1", "how the point of the strain maps came about"),
 }
 
+#: Variables on (frame, station), where the coupon's edges are followed.
+EDGES = {
+    "edge_width": "distance between the coupon's edges",
+    "u_edge_width": "standard uncertainty of edge_width per grey level of noise",
+}
+
 
 class FieldsWriter:
     """Writes one frame after the other; use as a context manager.
@@ -67,10 +73,17 @@ class FieldsWriter:
         Camera time of every frame, s.
     attributes
         Settings that readers of the file need, and the ``tracking_key`` of `dic.sequence`.
+    stations
+        Where the width between the coupon's edges is measured, along the axis, px; None for nowhere.
     """
 
     def __init__(
-        self, folder: Path, grid: Grid, time_s: NDArray[np.float64], attributes: dict[str, Any]
+        self,
+        folder: Path,
+        grid: Grid,
+        time_s: NDArray[np.float64],
+        attributes: dict[str, Any],
+        stations: NDArray[np.float64] | None = None,
     ) -> None:
         self._final = folder / NAME
         self._partial = folder / (NAME + ".part")
@@ -106,13 +119,22 @@ class FieldsWriter:
         noise.attrs["long_name"] = "grey noise of one frame, median over the subsets, in grey levels"
         links = file.create_variable("links", ("frame",), "i4")
         links.attrs["long_name"] = "references between the first one and the frame"
+        if stations is not None:
+            file.dimensions["station"] = len(stations)
+            place = file.create_variable("station", ("station",), data=stations)
+            place.attrs.update({"units": "px", "long_name": "along the axis from the gauge region's middle"})
+            for name, meaning in EDGES.items():
+                variable = file.create_variable(name, ("frame", "station"), "f8", fillvalue=np.nan)
+                variable.attrs.update({"units": "px", "long_name": meaning})
         file.attrs.update(attributes)
 
     def __enter__(self) -> FieldsWriter:
         return self
 
-    def put(self, match: Match, strains: StrainMap) -> None:
-        """Append the next frame."""
+    def put(
+        self, match: Match, strains: StrainMap, edges: tuple[NDArray[Any], NDArray[Any]] | None = None
+    ) -> None:
+        """Append the next frame; `edges` as `EDGES`, where stations were given."""
         inside = self._grid.inside
         values: dict[str, NDArray[Any]] = {
             **{name: spread(part, inside) for name, part in zip(AFFINE, match.affine.T, strict=True)},
@@ -129,6 +151,8 @@ class FieldsWriter:
         flag = np.full(inside.shape, Flag.MASKED, np.uint8)
         flag[inside] = match.flag
         single = {"noise_grey": np.array(match.noise_grey), "links": np.array(match.links)}
+        if edges is not None:
+            single |= dict(zip(EDGES, edges, strict=True))
         self._waiting.append({**values, "flag": flag, **single})
         if len(self._waiting) == AT_ONCE:
             self._flush()
@@ -178,6 +202,12 @@ def median_noise(folder: Path) -> float:
     """Return the grey noise of one frame, median over the frames, grey levels."""
     with h5netcdf.File(folder / NAME, "r") as file:
         return float(np.nanmedian(file["noise_grey"][:]))
+
+
+def stored_edges(folder: Path) -> Iterator[tuple[NDArray[np.float64], NDArray[np.float64]]]:
+    """Yield the variables of `EDGES` frame by frame."""
+    with h5netcdf.File(folder / NAME, "r") as file:
+        yield from zip(*(file[name][:] for name in EDGES), strict=True)
 
 
 def stored_matches(folder: Path, grid: Grid) -> Iterator[Match]:

@@ -12,6 +12,7 @@ from dic.store import fields
 _MARKS = {
     "results.json": b'"tauten":',
     "history.csv": b"frame,time_s,force_N,stress_MPa,",
+    "lines.csv": b"gauge,frame,time_s,place_px,",
     "report.html": b"tauten",
 }
 #: Beyond this a file is no result.
@@ -25,6 +26,11 @@ _FIGURES = (
     "clocks",
     "gauge-on-coupon",
     *(f"map-{letter}" for letter in "abcdefghijklmnop"),
+    "clip-on-curves",
+    "clip-on-difference",
+    "named-gauges",
+    "named-gauges-in-time",
+    *(f"line-{number}" for number in range(1, 101)),
 )
 _ELSEWHERE = "choose another folder with --out"
 

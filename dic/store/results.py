@@ -19,6 +19,8 @@ from dic.rounding import COVERAGE_FACTOR
 from dic.store.tables import history_table
 
 if TYPE_CHECKING:
+    from numpy.typing import NDArray
+
     from dic.comparison import ClipOn
     from dic.measurement import Measurement
     from dic.properties.result import Property
@@ -39,11 +41,13 @@ def write_results(measurement: Measurement, folder: Path) -> None:
     StoreError
         If the folder cannot be written.
     """
-    table = history_table(measurement.history, measurement.curve)
+    table = history_table(measurement.history, measurement.curve, measurement)
     table["name"] = [as_text(name) for name in table["name"]]
     rows = table.to_csv(index=False, na_rep="NaN", lineterminator="\n")
     text = json.dumps(results_of(measurement), indent=2, ensure_ascii=False, allow_nan=False)
     write_whole(folder, "history.csv", encoded(rows))
+    if lines := _lines(measurement):
+        write_whole(folder, "lines.csv", encoded(lines))
     write_whole(folder, "results.json", encoded(text + "\n"))
 
 
@@ -80,6 +84,7 @@ def results_of(measurement: Measurement) -> dict[str, Any]:
             **measurement.alignment,
         },
         "quality": measurement.quality,
+        **({"gauges": _gauges(measurement)} if measurement.gauges else {}),
         **({"clip_on": _clip_on(measurement.clip_on)} if measurement.clip_on is not None else {}),
         "warnings": [{"code": notice.code, "text": notice.text} for notice in measurement.notices],
         "provenance": measurement.provenance,
@@ -106,6 +111,50 @@ def _clip_on(found: ClipOn) -> dict[str, Any]:
         "classes": [asdict(one) for one in found.classes],
         "notes": found.notes,
     }
+
+
+def _gauges(measurement: Measurement) -> dict[str, Any]:
+    """Say where the named gauges sit; their readings stand in ``history.csv``."""
+    return {
+        one.gauge.name: {
+            "kind": one.gauge.kind,
+            "length_px": one.gauge.length_px,
+            "length_mm": one.length_mm,
+            "columns": [name for name in one.columns() if not name.startswith("status_")],
+            "largest_strain": largest(one.strain),
+            "frames_lost": sum(said != "ok" for said in one.status),
+            "outlines_px": one.gauge.outlines,
+            "notes": [one.gauge.note] if one.gauge.note else [],
+        }
+        for one in measurement.gauges
+    }
+
+
+def largest(strain: NDArray[np.float64]) -> float:
+    """Return the strain of the largest size, with its sign; NaN where none was measured."""
+    return float(max(strain[np.isfinite(strain)], key=abs, default=np.nan))
+
+
+def _lines(measurement: Measurement) -> str:
+    """Write the strain along the named lines: one row for each place and frame."""
+    import pandas as pd
+
+    tables = [
+        pd.DataFrame(
+            {
+                "gauge": one.gauge.name,
+                "frame": np.repeat(measurement.history.frame, len(one.gauge.places_px)),
+                "time_s": np.repeat(measurement.history.time_s, len(one.gauge.places_px)),
+                "place_px": np.tile(one.gauge.places_px, len(one.strain)),
+                "place_mm": np.tile(one.gauge.places_px, len(one.strain)) * measurement.scene.scale_mm,
+                "strain": one.parts.ravel(),
+                "u_strain": one.u_parts.ravel(),
+            }
+        )
+        for one in measurement.gauges
+        if one.gauge.places_px
+    ]
+    return pd.concat(tables).to_csv(index=False, na_rep="NaN", lineterminator="\n") if tables else ""
 
 
 def _property(item: Property) -> dict[str, Any]:

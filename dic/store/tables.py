@@ -6,6 +6,8 @@ from math import isfinite
 from textwrap import wrap
 from typing import TYPE_CHECKING
 
+import numpy as np
+
 from dic.quantities import for_people
 from dic.rounding import COVERAGE_FACTOR, uncertainty_alone, with_uncertainty
 
@@ -27,7 +29,9 @@ TITLES = {
 }
 
 
-def history_table(history: GaugeHistory, curve: Curve) -> pd.DataFrame:
+def history_table(
+    history: GaugeHistory, curve: Curve, measurement: Measurement | None = None
+) -> pd.DataFrame:
     """Put the gauge readings and the stress at the same instants side by side, one row per frame.
 
     Parameters
@@ -36,6 +40,8 @@ def history_table(history: GaugeHistory, curve: Curve) -> pd.DataFrame:
         Gauge readings, n frames.
     curve
         Stress at the same frames, n instants.
+    measurement
+        For the gauges that the test file names, and the clip-on extensometer; None for neither.
 
     Returns
     -------
@@ -45,6 +51,7 @@ def history_table(history: GaugeHistory, curve: Curve) -> pd.DataFrame:
     """
     import pandas as pd
 
+    further = {} if measurement is None else _further(measurement)
     return pd.DataFrame(
         {
             "frame": history.frame,
@@ -67,8 +74,23 @@ def history_table(history: GaugeHistory, curve: Curve) -> pd.DataFrame:
             "shift_axial_px": history.shift_px[:, 0],
             "shift_transverse_px": history.shift_px[:, 1],
             "name": list(history.name),
+            "hencky_axial": np.log1p(history.axial),
+            "hencky_transverse": np.log1p(history.transverse),
+            "stretch_axial": 1 + history.axial,
+            "stretch_transverse": 1 + history.transverse,
+            **further,
         }
     )
+
+
+def _further(measurement: Measurement) -> dict[str, object]:
+    """Return the columns of a clip-on extensometer and of the named gauges."""
+    columns: dict[str, object] = {}
+    if measurement.clip_on is not None:
+        columns["strain_clip_on"] = measurement.clip_on.strain
+    for gauge in measurement.gauges:
+        columns |= gauge.columns()
+    return columns
 
 
 def title_of(name: str) -> str:

@@ -5,6 +5,7 @@ import dataclasses
 import numpy as np
 import pytest
 
+from dic.gauges.placing import RESERVED
 from dic.properties.result import Property
 from dic.store.tables import history_table, properties_text, shown_in, stated, title_of
 
@@ -82,3 +83,15 @@ def test_text_shows_every_property_and_every_warning(measurement):
 def test_text_without_properties_still_names_the_coupon(measurement):
     bare = dataclasses.replace(measurement, properties={}, notices=())
     assert properties_text(bare).startswith("Blatt 7/3 <b> (invented alloy)")
+
+
+def test_no_gauge_may_be_named_after_a_column(measurement):
+    assert set(history_table(measurement.history, measurement.curve)) <= RESERVED
+
+
+def test_large_strain_measures_stand_beside_engineering_strain(measurement):
+    """λ = 1 + ε and Hencky strain ln λ, by definition."""
+    table = history_table(measurement.history, measurement.curve)
+    there = table["strain_axial"].notna()
+    np.testing.assert_allclose(table["stretch_axial"][there], 1 + measurement.history.axial[there])
+    np.testing.assert_allclose(np.exp(table["hencky_transverse"]), table["stretch_transverse"])
