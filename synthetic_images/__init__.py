@@ -11,7 +11,7 @@ __getattr__, __dir__, __all__ = lazy_loader.attach(
     submod_attrs={
         "camera": ["Camera", "picture"],
         "comparison": ["Compared", "compare"],
-        "coupon": ["Coupon"],
+        "coupon": ["Coupon", "Waist"],
         "files": ["render"],
         "hole": ["HoledPlate"],
         "materials": ["Elastic", "NeoHookean", "RambergOsgood", "proof_stress"],

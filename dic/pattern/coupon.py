@@ -1,4 +1,4 @@
-"""Where the coupon is in the reference picture: textured area, axis, width."""
+"""Where the coupon is in the reference picture: textured area, edges, axis, width, parallel section."""
 
 from __future__ import annotations
 
@@ -9,18 +9,16 @@ from numpy.typing import NDArray
 from scipy import ndimage
 
 from dic.errors import PatternError
-from dic.pattern.edges import Edges, Mask, between, long_edges, outline_direction
+from dic.pattern.edges import Edges, Found, Profile, between, long_edges
+from dic.pattern.outline import Mask, outline_direction
+from dic.pattern.texture import speckle_size, textured_area
 
-#: Texture is judged over this many px: wider than a gap between speckles, narrower than a coupon.
-TEXTURE_WINDOW_PX = 15
-#: The textured area's grey scatter must exceed the background's this many times to count as found.
-LEAST_CONTRAST = 3.0
-#: ... and the background's is not taken for less than the texture's over this: dust is no texture.
-MOST_CONTRAST = 16.0
 #: Pixels that straddle the edge show background too; so much is kept clear of it.
 EDGE_MARGIN_PX = 2.0
 #: Clarity of the outline's direction below which it is not taken for the pull's: sides 1.5 times the ends.
 LEAST_CLARITY = 0.2
+#: Edges whose stations scatter by more than this about their line are not straight, px.
+MOST_SCATTER_PX = 1.0
 
 _GIVE_AXIS = 'give gauge.axis, for example "vertical"'
 
@@ -32,19 +30,28 @@ class Coupon:
     Attributes
     ----------
     mask
-        True on the textured area, shape (rows, columns).
+        True where it can be tracked: textured, off edges and holes, shape (rows, columns).
     axis_angle_deg
         Angle of the pull from the picture's vertical, deg, clockwise as seen.
     axis_method
         How the axis was found.
     width_px
-        Distance between the two long edges, px; NaN where they are not both in view.
+        Distance between the two long edges in the parallel section, px; NaN where they are not both in view.
     speckle_px
         Mean size of the speckles, px.
     edges
         Left and right long edge; None where it is not in view.
     clarity
-        How clearly the outline has one direction, see `dic.pattern.edges.outline_direction`.
+        How clearly the outline has one direction, see `dic.pattern.outline.outline_direction`.
+    u_width_px, u_axis_deg
+        Standard uncertainties of width and axis; NaN where they are not found from the edges.
+    profile
+        Both edges along the length.
+    parallel
+        From where to where the coupon is parallel, px along the axis from the picture's middle; infinite
+        where it runs on to the picture's rim.
+    holes
+        True in holes and gaps between the edges, shape (rows, columns).
     """
 
     mask: Mask
@@ -54,6 +61,11 @@ class Coupon:
     speckle_px: float
     edges: Edges
     clarity: float
+    u_width_px: float
+    u_axis_deg: float
+    profile: Profile
+    parallel: tuple[float, float]
+    holes: Mask
 
 
 def find_coupon(
@@ -73,7 +85,7 @@ def find_coupon(
     Returns
     -------
     Coupon
-        Textured area inside the region, axis and width.
+        Textured area inside the region, or inside the parallel section where none is given, axis and width.
 
     Raises
     ------
@@ -87,32 +99,41 @@ def find_coupon(
     whole = ndimage.binary_fill_holes(area)
     direction, clarity = outline_direction(whole)
     if axis_angle_deg is None:
-        angle, edges = _found_axis(grey, whole, direction, clarity)
-        method = f"from {sum(edge is not None for edge in edges)} edges"
+        found = _found_axis(grey, whole, direction, clarity)
+        method = f"from {sum(edge is not None for edge in found.edges)} edges"
     else:
-        angle, edges = long_edges(grey, whole, float(axis_angle_deg), turn=False)
+        found = long_edges(grey, whole, float(axis_angle_deg), turn=False)
         method = "given"
-    area &= between(area.shape, angle, edges, EDGE_MARGIN_PX)
+    parallel = found.parallel or (-np.inf, np.inf)
+    section = between(
+        area.shape, found.angle_deg, found.edges, EDGE_MARGIN_PX, parallel if region is None else None
+    )
+    holes = section & whole & ~area
+    area &= section
     if region is not None:
         area &= region
     if not area.any():
         raise PatternError(
             "holds nothing of the coupon's textured area", where="gauge.region", remedy="move or enlarge it"
         )
+    width, u_width = _width(found)
     return Coupon(
         mask=area,
-        axis_angle_deg=(angle + 90.0) % 180.0 - 90.0,
+        axis_angle_deg=(found.angle_deg + 90.0) % 180.0 - 90.0,
         axis_method=method,
-        width_px=_width(edges),
+        width_px=width,
         speckle_px=speckle_size(grey, area),
-        edges=edges,
+        edges=found.edges,
         clarity=clarity,
+        u_width_px=u_width,
+        u_axis_deg=float("nan") if axis_angle_deg is not None else found.u_angle_deg(),
+        profile=found.profile,
+        parallel=parallel,
+        holes=holes,
     )
 
 
-def _found_axis(
-    grey: NDArray[np.float32], whole: Mask, direction: float, clarity: float
-) -> tuple[float, Edges]:
+def _found_axis(grey: NDArray[np.float32], whole: Mask, direction: float, clarity: float) -> Found:
     """Turn the outline's direction into that of the coupon's straight edges, or refuse to guess."""
     if clarity < LEAST_CLARITY:
         raise PatternError(
@@ -121,93 +142,25 @@ def _found_axis(
             where="gauge.axis",
             remedy=_GIVE_AXIS,
         )
-    angle, edges = long_edges(grey, whole, direction, turn=True)
-    if edges == (None, None) or not np.isfinite(angle):
+    found = long_edges(grey, whole, direction, turn=True)
+    if found.edges == (None, None) or not np.isfinite(found.angle_deg):
         raise PatternError(
             "the direction of the pull cannot be told, because the coupon's long edges are not straight "
             "and clear before their background",
             where="gauge.axis",
             remedy=_GIVE_AXIS,
         )
-    return angle, edges
+    return found
 
 
-def _width(edges: Edges) -> float:
-    """Return the distance between the edges at the middle of what is seen of them, px."""
-    left, right = edges
+def _width(found: Found) -> tuple[float, float]:
+    """Return the distance between the edges at the middle of their straight part, and its uncertainty, px."""
+    left, right = found.edges
     if left is None or right is None:
-        return float("nan")
+        return float("nan"), float("nan")
     middle = (left.along + right.along) / 2
-    wide = (right.offset + right.slope * middle) - (left.offset + left.slope * middle)
-    return wide * float(np.cos(np.arctan((left.slope + right.slope) / 2)))
-
-
-def textured_area(grey: NDArray[np.float32], region: Mask | None = None) -> Mask:
-    """Return the largest connected area whose grey scatters much more than the background.
-
-    Where a region is given, the area that fills most of it, or all of it if none stands out.
-
-    Raises
-    ------
-    PatternError
-        If the picture is uniform, or if nothing stands out from the rest and no region is given.
-    """
-    scatter = ndimage.uniform_filter(grey * grey, TEXTURE_WINDOW_PX)
-    scatter -= ndimage.uniform_filter(grey, TEXTURE_WINDOW_PX) ** 2
-    np.sqrt(np.maximum(scatter, 0.0, out=scatter), out=scatter)
-    if not scatter.max() > 0:
-        raise PatternError("the reference picture has one grey value everywhere", remedy="check the camera")
-    low, high = np.percentile(scatter, [0.5, 99.5])
-    low = max(low, high / MOST_CONTRAST)
-    if high < LEAST_CONTRAST * low:
-        # Either texture everywhere or nowhere.
-        if region is None and not _is_speckle(grey):
-            raise PatternError(
-                "no textured area stands out in the reference picture",
-                remedy="spray a finer, stronger pattern, light it better, or give gauge.region",
-            )
-        return np.ones(grey.shape, bool)
-    labels, _ = ndimage.label(_without_gaps(scatter > np.sqrt(low * high)))
-    sizes = np.bincount(labels[region] if region is not None else labels.ravel(), minlength=2)[1:]
-    if not sizes.any():
-        if region is not None:
-            return region.copy()
-        raise PatternError("no textured area found in the reference picture", remedy="give gauge.region")
-    return np.asarray(labels == np.argmax(sizes) + 1)
-
-
-def _without_gaps(textured: Mask) -> Mask:
-    """Close gaps between speckles, and take back what a window half on the coupon adds."""
-    half = TEXTURE_WINDOW_PX // 2
-    # Outside the picture counts as plain, so that a narrow strip of background at the rim is no gap.
-    rim = 2 * half
-    plain = ndimage.binary_opening(~np.pad(textured, rim), iterations=half)
-    plain = ndimage.binary_dilation(plain[rim:-rim, rim:-rim], iterations=half)
-    return np.asarray(~plain)
-
-
-def _is_speckle(grey: NDArray[np.float32]) -> bool:
-    """Tell texture from plain noise: neighbouring pixels of a pattern resemble each other."""
-    centred = grey - grey.mean()
-    alike = (centred[:, 1:] * centred[:, :-1]).mean() / (centred**2).mean()
-    return bool(alike > 0.5)
-
-
-def speckle_size(grey: NDArray[np.float32], mask: Mask) -> float:
-    """Return the mean speckle size, px: width at half height of the autocorrelation's peak.
-
-    Common practice, no published source.
-    """
-    top, left = (int(np.searchsorted(np.cumsum(n := mask.sum(axis)), n.sum() / 2)) for axis in (1, 0))
-    half = 64
-    patch = grey[max(top - half, 0) : top + half, max(left - half, 0) : left + half]
-    spectrum = np.abs(np.fft.rfft2(patch - patch.mean(), s=(4 * half, 4 * half))) ** 2
-    peak = np.fft.irfft2(spectrum)
-    widths = []
-    for line in (peak[0, : 2 * half], peak[: 2 * half, 0]):
-        below = int(np.argmax(line < line[0] / 2))
-        if below == 0:
-            continue
-        share = (line[below - 1] - line[0] / 2) / (line[below - 1] - line[below])
-        widths.append(2 * (below - 1 + share))
-    return float(np.mean(widths)) if widths else float("nan")
+    wide = float(right.at(middle) - left.at(middle))
+    turned = float(np.cos(np.arctan((left.slope + right.slope) / 2)))
+    # One blur moves both edges inwards alike.
+    blur = 2 * found.blur_shift * (found.u_blur if np.isfinite(found.u_blur) else 0.0)
+    return wide * turned, float(np.sqrt(left.u_offset**2 + right.u_offset**2 + blur**2))

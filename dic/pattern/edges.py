@@ -1,50 +1,46 @@
-"""The coupon's long edges as straight lines, and the direction that they give."""
+"""The coupon's two long edges along their length, its parallel section, and the direction they give."""
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy import ndimage
-from scipy.stats import theilslopes
 
-Floats = NDArray[np.float64]
-Mask = NDArray[np.bool_]
+from dic.pattern.boundary import best_blur
+from dic.pattern.outline import Floats, Mask, axes, centre, rough_sides
+from dic.pattern.trace import STATION_PX, Trace
 
-#: The mask's outline is smoothed by this sigma before its directions are summed up, px.
-OUTLINE_SIGMA_PX = 4.0
-#: Rays across an edge reach so far beyond and behind its rough place, px.
-OUTWARD_PX, INWARD_PX = 12.0, 16.0
-#: More rays than this add time but no accuracy that a strain could feel.
-MOST_RAYS = 600
-#: Samples along a ray, px.
-PITCH_PX = 0.5
-#: Rays that share one estimate of the background beside them.
-BLOCK = 32
-#: Plain background that a ray must cross before it meets the coupon, px.
-LEAST_BACKGROUND_PX = 2.0
-#: Over this depth behind its first sign the pattern's full contrast is reached, px: a sharp lens' blur.
-RISE_PX = 5.0
-#: What exceeds the background's scatter this many times is not background.
-CLEAR_SIGMAS = 6.0
-#: Rays further than this off the line met a speckle as dark as the background, or dust.
-STRAIGHT_PX = 0.5
+#: An edge counts if so many stations, and this share of all that were seen, lie on one line.
+LEAST_STATIONS, LEAST_SHARE = 4, 0.3
+#: Stations further than this off a line are not on its straight part, px: over a gauge that ends there,
+#: the mean width is then wrong by less than 0.1 % of 200 px.
+STRAIGHT_PX = 0.6
+#: ... or further than this many times their scatter.
+STRAIGHT_SIGMAS = 4.0
 #: An edge is looked for up to this slope against the axis known so far.
 STEEPEST = 0.1
-#: An edge counts if so many rays, and this share of all that met the coupon, lie on one line.
-LEAST_RAYS, LEAST_SHARE = 30, 0.3
-#: The angle counts as settled below this step times the number of rounds, deg: on a short edge it swings by
-#: a few hundredths, which no strain feels.
-SETTLED_DEG = 0.01
+#: What the model of the edge leaves unsaid (clutter that is not alike all along, patterns that are not) moves
+#: an edge by so much, px, and by something else after so many px along it: measured on varied scenes.
+MODEL_PX, MODEL_LENGTH_PX = 0.1, 100.0
+#: The parallel section is the narrow one: stations wider than the narrowest by this share are not of it.
+WIDER = 0.04
+#: The axis counts as settled below this step, deg: no strain feels it.
+SETTLED_DEG = 0.006
+#: ... or below this share of its own standard uncertainty, which is large on short edges.
+SETTLED_SHARE = 0.3
 MOST_ROUNDS = 8
 #: Smaller steps are halved: which rays lie on the line changes with it, and the angle could swing.
-GENTLE_DEG = 0.2
+GENTLE_DEG = 0.05
+#: The edge is looked for so far about the mask's outline, then about what was found of it, px.
+WIDE_PX, NARROW_PX = 9.0, 4.0
+#: Blur of a sharp lens, px, from which the search starts: pixel, interpolation and half a px of rim.
+SHARP_PX = 0.85
 
 
 @dataclass(frozen=True)
 class Edge:
-    """A long edge in coupon axes, counted from the picture's middle.
+    """The straight part of a long edge in coupon axes, counted from the picture's middle.
 
     Attributes
     ----------
@@ -53,51 +49,97 @@ class Edge:
     slope
         Change of the offset per px along the axis.
     along
-        Middle of what is seen of the edge, counted along the axis, px.
-    weight
-        Reciprocal square of the slope's uncertainty, up to a factor common to both edges.
+        Middle of the straight part, counted along the axis, px.
+    u_offset
+        Standard uncertainty of the edge's place at that middle, px.
+    u_slope
+        Standard uncertainty of the slope.
     """
 
     offset: float
     slope: float
     along: float
-    weight: float
+    u_offset: float = 0.0
+    u_slope: float = 0.0
+
+    def at(self, along: Floats | float) -> Floats | float:
+        """Return the offset at a place along the axis, px."""
+        return self.offset + self.slope * along
+
+    @property
+    def weight(self) -> float:
+        """What the slope's word counts: the reciprocal square of its uncertainty."""
+        return 1 / max(self.u_slope, 1e-6) ** 2
 
 
 #: The edge to the left and the one to the right of the coupon, as seen with its axis upright.
 Edges = tuple[Edge | None, Edge | None]
 
 
-def axes(angle_deg: float) -> tuple[Floats, Floats]:
-    """Return unit vectors (x, y) along the pull and across it for an axis angle.
+@dataclass(frozen=True)
+class Profile:
+    """Both edges along the coupon, in its axes, counted from the picture's middle.
 
-    At 0° the axial vector points up the picture (0, −1) and the transverse one to the right (1, 0).
+    Attributes
+    ----------
+    along
+        Stations along the axis, px, shape (n,).
+    left, right
+        Offsets of the edges across, px, shape (n,); NaN where an edge was not found.
     """
-    a = np.radians(angle_deg)
-    return np.array([np.sin(a), -np.cos(a)]), np.array([np.cos(a), np.sin(a)])
+
+    along: Floats
+    left: Floats
+    right: Floats
+
+    @property
+    def width(self) -> Floats:
+        """Width at the stations, px; NaN where an edge was not found."""
+        return np.asarray(self.right - self.left)
 
 
-def outline_direction(mask: Mask) -> tuple[float, float]:
-    """Return the direction that most of a mask's outline inside the picture has, and how clearly.
+@dataclass(frozen=True)
+class Found:
+    """What the long edges tell.
 
-    Returns
-    -------
+    Attributes
+    ----------
     angle_deg
-        Deg from the picture's vertical, clockwise as seen.
-    clarity
-        (sides − ends)/(sides + ends) by length: 1 for two sides that run out of the picture at both
-        ends, 0.5 for an outline three times longer than wide; 0 where there is no outline.
+        The axis; NaN if it did not settle.
+    edges
+        Left and right one; None where there is no straight edge in view.
+    profile
+        Both edges along the length.
+    parallel
+        From where to where the edges are straight, px along the axis; None where there is no edge.
+    blur, u_blur
+        Sigma of the blur at the edges and its standard uncertainty, px: lens, pixel and interpolation.
+    blur_shift
+        By how much an edge moves inwards per px of blur.
     """
-    soft = ndimage.gaussian_filter(mask.astype(np.float32), OUTLINE_SIGMA_PX, mode="nearest")
-    down, right = ndimage.sobel(soft, 0, mode="nearest"), ndimage.sobel(soft, 1, mode="nearest")
-    squares = [float(np.vdot(one, other)) for one, other in ((right, right), (down, down), (right, down))]
-    total, difference, product = squares[0] + squares[1], squares[0] - squares[1], 2 * squares[2]
-    clarity = np.hypot(difference, product) / total if total > 0 else 0.0
-    return float(np.degrees(np.arctan2(product, difference)) / 2), float(clarity)
+
+    angle_deg: float
+    edges: Edges
+    profile: Profile
+    parallel: tuple[float, float] | None = None
+    blur: float = float("nan")
+    u_blur: float = float("nan")
+    blur_shift: float = 0.0
+
+    def turn_deg(self) -> float:
+        """Return by how much the edges that are known stand off the axis, clockwise, deg."""
+        sound = [edge for edge in self.edges if edge is not None]
+        weights = [edge.weight for edge in sound]
+        return float(np.degrees(np.arctan(np.average([edge.slope for edge in sound], weights=weights))))
+
+    def u_angle_deg(self) -> float:
+        """Return the standard uncertainty of the axis that the edges give, deg."""
+        weights = [edge.weight for edge in self.edges if edge is not None]
+        return float(np.degrees(1 / np.sqrt(sum(weights)))) if weights else float("nan")
 
 
-def long_edges(grey: NDArray[np.float32], mask: Mask, angle_deg: float, *, turn: bool) -> tuple[float, Edges]:
-    """Locate the edges to the left and to the right of a mask as straight lines.
+def long_edges(grey: NDArray[np.float32], mask: Mask, angle_deg: float, *, turn: bool) -> Found:
+    """Locate the edges to the left and to the right of a mask.
 
     Parameters
     ----------
@@ -109,30 +151,39 @@ def long_edges(grey: NDArray[np.float32], mask: Mask, angle_deg: float, *, turn:
         Axis angle to start from.
     turn
         Whether the axis may turn until it agrees with the edges.
-
-    Returns
-    -------
-    angle_deg
-        The axis; NaN if it did not settle.
-    edges
-        Left and right one; None where there is no straight edge in view.
     """
-    outline = np.nonzero(mask ^ ndimage.binary_erosion(mask, border_value=1))
-    for done in range(1, MOST_ROUNDS + 1):
-        edges = _edge(grey, outline, angle_deg, -1), _edge(grey, outline, angle_deg, 1)
-        sound = [edge for edge in edges if edge is not None]
-        if not turn or not sound:
-            return angle_deg, edges
-        slope = np.average([edge.slope for edge in sound], weights=[edge.weight for edge in sound])
-        step = float(np.degrees(np.arctan(slope)))
-        if abs(step) < SETTLED_DEG * done:
-            return angle_deg, edges
-        angle_deg += step if abs(step) > GENTLE_DEG else step / 2
-    return float("nan"), edges
+    sides: tuple[Floats, Floats] = rough_sides(mask, angle_deg)
+    blur, u_blur, shift = SHARP_PX, float("nan"), 0.0
+    for done in range(MOST_ROUNDS):
+        traces = [
+            Trace.along(grey, points, angle_deg, side, WIDE_PX if done == 0 else NARROW_PX)
+            for points, side in zip(sides, (-1, 1), strict=True)
+        ]
+        found = _straight([None if trace is None else trace.stations(blur) for trace in traces], angle_deg)
+        if found.edges == (None, None):
+            return found
+        if done == 2:
+            blur, u_blur, shift = _blur(traces, found.edges, blur)
+        stations = [None if trace is None else trace.stations(blur) for trace in traces]
+        found = replace(_straight(stations, angle_deg), blur=blur, u_blur=u_blur, blur_shift=shift)
+        if found.edges == (None, None):
+            return found
+        step = found.turn_deg()
+        if done >= 2 and (not turn or abs(step) < max(SETTLED_DEG, SETTLED_SHARE * found.u_angle_deg())):
+            return found
+        sides = tuple(  # type: ignore[assignment]
+            points if place is None else _in_picture(grey.shape, angle_deg, *place)
+            for points, place in zip(sides, stations, strict=True)
+        )
+        if turn:
+            angle_deg += step if abs(step) > GENTLE_DEG else step / 2
+    return replace(found, angle_deg=float("nan"))
 
 
-def between(shape: tuple[int, ...], angle_deg: float, edges: Edges, margin: float) -> Mask:
-    """Mark the pixels that lie at least `margin` px inside the edges that are known."""
+def between(
+    shape: tuple[int, ...], angle_deg: float, edges: Edges, margin: float, along: tuple[float, float] | None
+) -> Mask:
+    """Mark the pixels at least `margin` px inside the edges that are known, and between two places along."""
     axial, transverse = axes(angle_deg)
     y = np.arange(shape[0], dtype=np.float32)[:, None] - np.float32((shape[0] - 1) / 2)
     x = np.arange(shape[1], dtype=np.float32) - np.float32((shape[1] - 1) / 2)
@@ -142,100 +193,156 @@ def between(shape: tuple[int, ...], angle_deg: float, edges: Edges, margin: floa
             # across − slope·along ≤ offset − margin, taken apart into its parts in x and y
             right, down = (side * (transverse - edge.slope * axial)).astype(np.float32)
             inside &= x * right + y * down <= side * edge.offset - margin
+    if along is not None:
+        place = x * np.float32(axial[0]) + y * np.float32(axial[1])
+        inside &= (place >= along[0]) & (place <= along[1])
     return inside
 
 
-def _edge(
-    grey: NDArray[np.float32], outline: tuple[NDArray[np.intp], ...], angle_deg: float, side: int
-) -> Edge | None:
-    """Locate one edge: where rays from outside meet the pattern, joined by a straight line."""
-    axial, transverse = axes(angle_deg)
-    middle = np.array([grey.shape[1] - 1, grey.shape[0] - 1]) / 2.0
-    rough = _rough_edge(outline, middle, axial, transverse, side)
-    if rough is None:
-        return None
-    along, near = rough
-    depth = np.arange(-OUTWARD_PX, INWARD_PX, PITCH_PX)
-    across = near[:, None] - side * depth
-    x = middle[0] + along[:, None] * axial[0] + across * transverse[0]
-    y = middle[1] + along[:, None] * axial[1] + across * transverse[1]
-    rays = ndimage.map_coordinates(grey, [y, x], order=1, mode="constant", cval=np.nan)
-    met = _first_contact(rays, depth)
-    found = np.isfinite(met)
-    if found.sum() < LEAST_RAYS:
-        return None
-    return _straight(along[found], near[found] - side * met[found])
-
-
-def _rough_edge(
-    outline: tuple[NDArray[np.intp], ...], middle: Floats, axial: Floats, transverse: Floats, side: int
-) -> tuple[Floats, Floats] | None:
-    """Return where rays should start: positions along, and the outline's outermost offset near them."""
-    y, x = outline[0] - middle[1], outline[1] - middle[0]
-    along, across = x * axial[0] + y * axial[1], x * transverse[0] + y * transverse[1]
-    # Outline on the other half belongs to the other edge, or to an end.
-    if len(along) < LEAST_RAYS:
-        return None
-    half = (np.min(across) + np.max(across)) / 2
-    place = np.floor((along - along.min()) / 8).astype(int)
-    outer = np.full(place.max() + 1, -np.inf)
-    np.maximum.at(outer, place, side * across)
-    bins = np.flatnonzero(outer > side * half)
-    if len(bins) < 4:
-        return None
-    at, offset = along.min() + 8 * bins + 4, side * outer[bins]
-    slope, start, _, _ = theilslopes(offset, at)
-    pitch = max(1.0, np.ptp(along) / MOST_RAYS)
-    rays = np.arange(along.min(), along.max() + pitch / 2, pitch)
-    return rays, start + slope * rays
-
-
-def _first_contact(rays: Floats, depth: Floats) -> Floats:
-    """Return at which depth each ray first meets the pattern, shape (n,); NaN where that cannot be told.
-
-    A pixel half on the coupon shows half the contrast of the pattern behind it, so the edge is where a
-    ray passes half of what it soon reaches.
-    """
-    background = np.where(depth < -2.0, rays, np.nan)
-    met = np.full(len(rays), np.nan)
-    rise, before = round(RISE_PX / PITCH_PX), round(LEAST_BACKGROUND_PX / PITCH_PX)
-    for first in range(0, len(rays), BLOCK):
-        some = slice(first, first + BLOCK)
-        beside = background[some][np.isfinite(background[some])]
-        if len(beside) < BLOCK:
+def _blur(traces: list[Trace | None], edges: Edges, start: float) -> tuple[float, float, float]:
+    """Return the blur that fits both edges best, its uncertainty, and how far a px of it moves an edge."""
+    said, shifts = [], []
+    for trace, edge in zip(traces, edges, strict=True):
+        if trace is None or edge is None:
             continue
-        level = np.median(beside)
-        scatter = 1.4826 * np.median(abs(beside - level))
-        contrast = abs(rays[some] - level)
-        full = np.nanpercentile(contrast[:, depth > RISE_PX], 75)
-        clear = max(CLEAR_SIGMAS * scatter, 0.15 * full)
-        for index, ray in enumerate(contrast, start=first):
-            start = int(np.argmax(ray > clear))
-            reached = ray[start : start + rise]
-            if start < before or not np.isfinite(ray[start - before : start + rise]).all():
-                continue
-            half = reached.max() / 2
-            if half < clear or 4 * half < full:
-                continue
-            here = start + int(np.argmax(reached >= half))
-            met[index] = depth[here] - PITCH_PX * (ray[here] - half) / (ray[here] - ray[here - 1])
-    return met
+        # Where clutter has led the rays astray nothing can be learnt of the lens.
+        said.append(trace.boundary.blurs(abs(trace.near - edge.at(trace.place)) < STRAIGHT_PX))
+        low, high = (trace.stations(start * factor)[1] for factor in (0.95, 1.05))
+        shifts.append(np.nanmedian(-trace.side * (high - low)) / (0.1 * start))
+    blurs = np.concatenate(said)
+    if not len(blurs):
+        return start, float("nan"), 0.0
+    blur, u_blur = best_blur(blurs)
+    return blur, u_blur, float(np.nanmean(shifts))
 
 
-def _straight(along: Floats, across: Floats) -> Edge | None:
-    """Return the line on which most of the points lie, or None if they follow none.
+def _in_picture(shape: tuple[int, ...], angle_deg: float, place: Floats, offset: Floats) -> Floats:
+    """Return stations as points in the picture, those that cannot be told bridged."""
+    axial, transverse = axes(angle_deg)
+    known = np.isfinite(offset)
+    if known.sum() < 2:
+        return np.empty((0, 2))
+    # Stations stand in the middle of their rays; without half a station more the trace would shrink.
+    place = np.concatenate([[place[0] - STATION_PX / 2], place, [place[-1] + STATION_PX / 2]])
+    offset = np.concatenate([offset[:1], offset, offset[-1:]])
+    known = np.isfinite(offset)
+    bridged = np.interp(place, place[known], offset[known])
+    return np.asarray(centre(shape) + place[:, None] * axial + bridged[:, None] * transverse)
 
-    A ray that meets a speckle as dark as the background passes on to the next one: many points lie
-    inside the edge, all over, but only the edge lines them up.
-    """
-    slope, start = _most_crowded(along, across)
-    for _ in range(3):
-        on_line = abs(across - start - slope * along) < STRAIGHT_PX
-        if on_line.sum() < max(LEAST_RAYS, LEAST_SHARE * len(along)):
+
+def _nowhere() -> Profile:
+    return Profile(np.empty(0), np.empty(0), np.empty(0))
+
+
+def _straight(stations: list[tuple[Floats, Floats] | None], angle_deg: float) -> Found:
+    """Put both edges onto common stations, find the parallel section, and lay lines through it."""
+    profile = _profile(stations)
+    if not len(profile.along):
+        return Found(angle_deg, (None, None), profile)
+    wanted = _narrow(profile)
+    lines = [_line(profile.along, offset, wanted) for offset in (profile.left, profile.right)]
+    on = [
+        np.zeros(len(profile.along), bool) if line is None else _on_line(line, profile.along, offset)
+        for line, offset in zip(lines, (profile.left, profile.right), strict=True)
+    ]
+    if all(line is None for line in lines):
+        return Found(angle_deg, (None, None), profile)
+    both = [mark for mark, line in zip(on, lines, strict=True) if line is not None]
+    seen = [
+        np.isfinite(offset)
+        for offset, line in zip((profile.left, profile.right), lines, strict=True)
+        if line is not None
+    ]
+    # Fillets are alike on both sides; where one edge alone is off its line, it is clutter or a notch.
+    agree, known = np.logical_or.reduce(both), np.logical_and.reduce(seen)
+    if not (agree & known).any():
+        agree, known = (np.logical_or.reduce(marks) for marks in (both, seen))
+    first, last = _longest(np.where(agree, 1.0, np.where(known, -1.5, -0.1)))
+    half = STATION_PX / 2
+    lo, hi = profile.along[first] - half, profile.along[last] + half
+    # Where the edges stay straight as far as they are seen, the section goes on to the picture's rim.
+    parallel = (
+        -np.inf if first <= np.flatnonzero(known)[0] else float(lo),
+        np.inf if last >= np.flatnonzero(known)[-1] else float(hi),
+    )
+    section = np.zeros(len(profile.along), bool)
+    section[first : last + 1] = True
+    edges = tuple(
+        None if line is None else _fit(profile.along, offset, mark & section)
+        for line, offset, mark in zip(lines, (profile.left, profile.right), on, strict=True)
+    )
+    return Found(angle_deg, edges, profile, parallel)  # type: ignore[arg-type]
+
+
+def _profile(stations: list[tuple[Floats, Floats] | None]) -> Profile:
+    """Bring both edges' stations to common places along the axis."""
+    known = [place for place in stations if place is not None]
+    if not known:
+        return _nowhere()
+    start = min(place[0] for place, _ in known)
+    stop = max(place[-1] for place, _ in known)
+    along = start + STATION_PX * np.arange(int((stop - start) / STATION_PX + 0.5) + 1)
+    left, right = (
+        np.full(len(along), np.nan) if one is None else np.interp(along, *one, left=np.nan, right=np.nan)
+        for one in stations
+    )
+    return Profile(along, left, right)
+
+
+def _narrow(profile: Profile) -> NDArray[np.bool_]:
+    """Mark the stations of the narrow section, all of them where only one edge is in view."""
+    width = profile.width
+    if np.isfinite(width).sum() < LEAST_STATIONS:
+        return np.ones(len(width), bool)
+    narrow = width < (1 + WIDER) * np.nanpercentile(width, 20)
+    return narrow if narrow.sum() >= LEAST_STATIONS else np.ones(len(width), bool)
+
+
+def _line(along: Floats, offset: Floats, wanted: NDArray[np.bool_]) -> tuple[float, float, float] | None:
+    """Return offset, slope and tolerance of the line on which most stations lie, or None."""
+    use = wanted & np.isfinite(offset)
+    if use.sum() < LEAST_STATIONS:
+        return None
+    slope, start = _most_crowded(along[use], offset[use])
+    tolerance = STRAIGHT_PX
+    for _ in range(4):
+        on = use & (abs(offset - start - slope * along) < tolerance)
+        if on.sum() < max(LEAST_STATIONS, LEAST_SHARE * use.sum()):
             return None
-        slope, start, _, _ = theilslopes(across[on_line], along[on_line])
-    along = along[on_line]
-    return Edge(float(start), float(slope), float(np.mean(along)), float(len(along) * np.var(along)))
+        slope, start = np.polyfit(along[on], offset[on], 1)
+        scatter = 1.4826 * np.median(abs(offset[on] - start - slope * along[on]))
+        tolerance = max(STRAIGHT_PX, min(STRAIGHT_SIGMAS * scatter, 3 * STRAIGHT_PX))
+    return float(start), float(slope), float(tolerance)
+
+
+def _on_line(line: tuple[float, float, float], along: Floats, offset: Floats) -> NDArray[np.bool_]:
+    start, slope, tolerance = line
+    return np.asarray(abs(offset - start - slope * along) < tolerance)
+
+
+def _longest(score: Floats) -> tuple[int, int]:
+    """Return first and last index of the run with the largest sum."""
+    total = np.concatenate([[0.0], np.cumsum(score)])
+    lowest = np.minimum.accumulate(total)
+    last = int(np.argmax(total[1:] - lowest[:-1]))
+    first = int(np.argmin(total[: last + 1]))
+    return first, last
+
+
+def _fit(along: Floats, offset: Floats, on: NDArray[np.bool_]) -> Edge | None:
+    """Lay a least-squares line through the straight part; the stations' scatter tells how sure it is."""
+    n = int(on.sum())
+    if n < LEAST_STATIONS:
+        return None
+    there, here = along[on], offset[on]
+    middle = float(there.mean())
+    slope, level = np.polyfit(there - middle, here, 1)
+    scatter = np.sqrt(np.sum((here - level - slope * (there - middle)) ** 2) / (n - 2))
+    spread = np.sqrt(np.mean((there - middle) ** 2))
+    u_model = MODEL_PX / np.sqrt(1 + np.ptp(there) / MODEL_LENGTH_PX)
+    u_slope = np.hypot(scatter / np.sqrt(n), u_model) / spread
+    u_offset = np.hypot(scatter / np.sqrt(n), MODEL_PX)
+    return Edge(level - slope * middle, float(slope), middle, float(u_offset), float(u_slope))
 
 
 def _most_crowded(along: Floats, across: Floats) -> tuple[float, float]:
