@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 from dic.comparison import ClipOn
 from dic.errors import Notice
 from dic.gauges import NamedHistory
+from dic.pattern import Sketch
 from dic.properties.result import Curve, ModulusLine, Property
 from dic.strain.history import GaugeHistory
 from dic.sync.record import Clock, LoadRecord
@@ -44,6 +45,8 @@ class Scene:
         Size of the maps' virtual strain gauge, px.
     noise_grey
         Grey noise of one frame, in grey levels.
+    sketch
+        Edges, parallel section and holes as lines in the picture; None where nothing was found.
     """
 
     photograph: NDArray[np.uint8]
@@ -55,6 +58,7 @@ class Scene:
     step_px: int
     map_gauge_px: float
     noise_grey: float
+    sketch: Sketch | None = None
 
 
 @dataclass(frozen=True)

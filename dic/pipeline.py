@@ -21,6 +21,7 @@ from dic.gauges import NamedHistory, NamedReadings
 from dic.gauges.probes import Subsets
 from dic.judgement import alignment, reading_doubts
 from dic.measurement import Measurement, Scene
+from dic.pattern import sketch
 from dic.preparation import Setup, set_up
 from dic.properties import doubts as property_doubts
 from dic.properties import evaluate, make_curve
@@ -189,6 +190,7 @@ def _scene(test: TestFile, setup: Setup, folder: Path) -> Scene:
         step_px=grid.step,
         map_gauge_px=gauge_size(test.maps.window, grid.step, grid.subset),
         noise_grey=fields.median_noise(folder),
+        sketch=sketch(setup.coupon),
     )
 
 
@@ -200,6 +202,9 @@ def _quality(setup: Setup, history: GaugeHistory) -> dict[str, float]:
         "gauge_region_width_px": setup.region.width,
         "extensometer_length_px": setup.reader().extensometer_px,
         "pixel_mm": setup.scale_mm,
+        "coupon_width_px": setup.coupon.width_px,
+        "u_coupon_width_px": setup.coupon.u_width_px,
+        "u_axis_deg": setup.coupon.u_axis_deg,
         "subsets": float(setup.grid.inside.sum()),
         "valid_fraction": float(np.nanmedian(history.valid_fraction)),
         "periodic_error_px": periodic.amplitudes_px[0],

@@ -12,9 +12,10 @@ from numpy.typing import NDArray
 from dic.correlation import Grid, Reference, Settings, Tracker, lay_grid, prepare_reference
 from dic.errors import FrameError, Notice, PatternError, TestFileError
 from dic.frames import FrameSource, RepeatWatch
+from dic.frames.readers import list_pages, read_page
 from dic.gauges import Placed, Silhouette, facing, place_gauges
 from dic.gauges.probes import Subsets
-from dic.pattern import Coupon, axes, axis_doubts, doubts, find_coupon, picture_quality
+from dic.pattern import Coupon, Given, axes, axis_doubts, doubts, find_coupon, picture_quality
 from dic.strain import GaugeReader, Region
 from dic.testfile import Correlation, TestFile
 
@@ -90,7 +91,8 @@ def set_up(test: TestFile, source: FrameSource) -> Setup:
     first, last = _reference_frames(source, test.frames.reference)
     image = _mean(source, first, last)
     full_scale = source.full_scale()
-    coupon = find_coupon(image, test.gauge.axis_angle, _given_region(image.shape, test.gauge.region))
+    known = _given_region(image.shape, test.gauge.region)
+    coupon = find_coupon(image, test.gauge.axis_angle, known, _given(test))
     mask, facing_notices = facing(coupon, test.specimen.shape, test.gauge.region == "auto")
     region = Region.around(mask, *axes(coupon.axis_angle_deg))
     scale_mm = test.camera.scale or test.specimen.visible_width / coupon.width_px
@@ -220,6 +222,18 @@ def _frames_at_rest(source: FrameSource, reference: Reference, grid: Grid, reade
         if not moved < REST_PX or strained:
             return index
     return min(MOST_AVERAGED, len(source))
+
+
+def _given(test: TestFile) -> Given:
+    """Return what the test file says of the coupon."""
+    said = test.coupon
+    mask = None
+    if said.mask is not None:
+        page = list_pages(test.beside(said.mask))[0]
+        grey = read_page(page)
+        # The stored range is 8 or 16 bits; white is its upper half.
+        mask = grey > (127 if grey.max() < 256 else 32767)
+    return Given(said.edges, mask, said.holes, said.parallel)
 
 
 def _given_region(shape: tuple[int, ...], region: Any) -> NDArray[np.bool_] | None:

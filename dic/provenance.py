@@ -32,14 +32,16 @@ def collect(test: TestFile, record: LoadRecord, frames_sha256: str) -> dict[str,
             **{name: version(name) for name in libraries},
         },
         "sha256": {
-            "test_file": _sha256(test.path),
+            "test_file": sha256(test.path),
             "frames": frames_sha256,
-            "load_record": _sha256(record.path),
+            "load_record": sha256(record.path),
+            **({"coupon_mask": sha256(test.beside(test.coupon.mask))} if test.coupon.mask else {}),
         },
         "test_file": test.model_dump(mode="json"),
     }
 
 
-def _sha256(path: Path) -> str:
+def sha256(path: Path) -> str:
+    """Return a file's SHA-256."""
     with path.open("rb") as file:
         return hashlib.file_digest(file, "sha256").hexdigest()

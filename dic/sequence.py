@@ -53,6 +53,8 @@ def tracking_key(test: TestFile, source: FrameSource) -> str:
         "mosaic": test.frames.mosaic,
         "correlation": test.correlation.model_dump(exclude={"periodic"}),
         "maps": test.maps.model_dump(exclude={"measure"}),
+        "coupon": test.coupon.model_dump(),
+        "coupon_mask": provenance.sha256(test.beside(test.coupon.mask)) if test.coupon.mask else None,
         "axis": test.gauge.axis,
         "region": test.gauge.region,
         "edges": test.follows_edges,

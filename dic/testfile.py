@@ -228,6 +228,20 @@ class Camera(Section):
     scale: Scale | None = None
 
 
+Picture = Annotated[float, Field(ge=-1e6, le=1e6)]
+
+
+class CouponSection(Section):
+    """Where the coupon is in the reference picture, as far as it is said instead of found, px."""
+
+    edges: (
+        tuple[tuple[Picture, Picture, Picture, Picture], tuple[Picture, Picture, Picture, Picture]] | None
+    ) = None
+    mask: str | None = None
+    holes: Annotated[tuple[tuple[Picture, Picture, Picture], ...], Field(max_length=100)] = ()
+    parallel: tuple[Picture, Picture, Picture, Picture] | None = None
+
+
 class Gauge(Section):
     """Where strain is averaged."""
 
@@ -420,6 +434,7 @@ class TestFile(Section):
     frames: Frames
     load_record: LoadRecord
     camera: Camera = Camera()
+    coupon: CouponSection = CouponSection()
     gauge: Gauge = Gauge()
     gauges: dict[GaugeName, NamedGauge] = Field(default_factory=dict, max_length=100)
     correlation: Correlation = Correlation()
@@ -442,7 +457,8 @@ class TestFile(Section):
         """List the files and folders that the test is read from, whether they exist or not."""
         frames = self.beside(self.frames.source)
         named = [self.path, self.beside(self.load_record.source), frames, frames.parent]
-        return named + ([self.beside(self.frames.times)] if self.frames.times else [])
+        others = (self.frames.times, self.coupon.mask)
+        return named + [self.beside(name) for name in others if name]
 
 
 Model = TypeVar("Model", bound=BaseModel)

@@ -1,7 +1,19 @@
 """The pattern: where the coupon is, and how well its speckle can be tracked."""
 
 from dic.pattern.coupon import Coupon, find_coupon
+from dic.pattern.given import Given
 from dic.pattern.outline import axes
 from dic.pattern.quality import axis_doubts, doubts, picture_quality
+from dic.pattern.sketch import Sketch, sketch
 
-__all__ = ["Coupon", "axes", "axis_doubts", "doubts", "find_coupon", "picture_quality"]
+__all__ = [
+    "Coupon",
+    "Given",
+    "Sketch",
+    "axes",
+    "axis_doubts",
+    "doubts",
+    "find_coupon",
+    "picture_quality",
+    "sketch",
+]

@@ -21,16 +21,16 @@ from scipy.special import ndtr
 
 Floats = NDArray[np.float64]
 
-#: Rays reach so far out of the coupon, the first that the picture has room for, and so far in, px.
-OUTWARD_PX, INWARD_PX = (16, 12, 9, 7), 18
+#: Rays reach so far into the coupon, px.
+INWARD_PX = 18
 #: Places of the edge that are tried are so far apart, px.
 PITCH_PX = 0.25
 #: Points on which textures are thought to live are so far apart, px: finer than any blur.
 FINE_PX = 0.5
 #: Samples further in than this are coupon for certain, px.
 SURE_IN = 6.0
-#: Sigmas of the blur that are tried, px: pixel, lens and interpolation together.
-BLURS = np.array([0.6, 0.75, 0.95, 1.2, 1.5, 1.9, 2.4, 3.0])
+#: Sigmas of the blur that are tried, px: pixel (0.29), interpolation (0.58) and a lens of 0.4 or more.
+BLURS = np.array([0.75, 0.95, 1.2, 1.5, 1.9, 2.4, 3.0])
 #: Sizes of the textures' features (sigma of a Gaussian covariance), px.
 SIZES = np.array([0.5, 1.0, 1.5, 2.0, 3.0, 4.5, 7.0, 12.0])
 #: Lags over which a texture's covariance is fitted, px.

@@ -8,10 +8,11 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy import ndimage
 
-from dic.errors import PatternError
+from dic.errors import PatternError, TestFileError
 from dic.pattern.edges import Edges, Found, Profile, between, long_edges
+from dic.pattern.given import Given
 from dic.pattern.outline import Mask, outline_direction
-from dic.pattern.texture import speckle_size, textured_area
+from dic.pattern.texture import missed, speckle_size, textured_area
 
 #: Pixels that straddle the edge show background too; so much is kept clear of it.
 EDGE_MARGIN_PX = 2.0
@@ -69,7 +70,10 @@ class Coupon:
 
 
 def find_coupon(
-    image: NDArray[np.generic], axis_angle_deg: float | None = None, region: Mask | None = None
+    image: NDArray[np.generic],
+    axis_angle_deg: float | None = None,
+    region: Mask | None = None,
+    given: Given = Given(),  # noqa: B008  (frozen)
 ) -> Coupon:
     """Find the speckled coupon in the reference picture.
 
@@ -81,6 +85,8 @@ def find_coupon(
         The axis where it is given; None to find it from the coupon's long edges.
     region
         True where the coupon is known to be, shape (rows, columns); None if that is not known.
+    given
+        What else is said of it in place of being looked for.
 
     Returns
     -------
@@ -93,43 +99,87 @@ def find_coupon(
         If no textured area stands out and no region is given, if the region lies beside the coupon, or
         if the axis is not given and the coupon's edges do not tell it.
     """
+    given.check(image.shape)
     grey = image.astype(np.float32)
-    area = textured_area(grey, region)
+    area = _area(grey, region, given)
     # A hole's rim has every direction, and is no edge of the coupon.
     whole = ndimage.binary_fill_holes(area)
     direction, clarity = outline_direction(whole)
-    if axis_angle_deg is None:
-        found = _found_axis(grey, whole, direction, clarity)
-        method = f"from {sum(edge is not None for edge in found.edges)} edges"
-    else:
-        found = long_edges(grey, whole, float(axis_angle_deg), turn=False)
-        method = "given"
-    parallel = found.parallel or (-np.inf, np.inf)
+    found, method = _edges(grey, whole, axis_angle_deg, given, direction, clarity)
+    parallel = given.section(grey.shape, found.angle_deg) or found.parallel or (-np.inf, np.inf)
     section = between(
         area.shape, found.angle_deg, found.edges, EDGE_MARGIN_PX, parallel if region is None else None
     )
+    area &= ~given.pierced(area.shape, EDGE_MARGIN_PX)
     holes = section & whole & ~area
+    textured = area.copy()
     area &= section
     if region is not None:
         area &= region
     if not area.any():
-        raise PatternError(
-            "holds nothing of the coupon's textured area", where="gauge.region", remedy="move or enlarge it"
-        )
+        raise _nothing_left(textured, region)
     width, u_width = _width(found)
     return Coupon(
         mask=area,
-        axis_angle_deg=(found.angle_deg + 90.0) % 180.0 - 90.0,
+        axis_angle_deg=found.angle_deg,
         axis_method=method,
         width_px=width,
         speckle_px=speckle_size(grey, area),
         edges=found.edges,
-        clarity=clarity,
+        clarity=1.0 if given.edges is not None else clarity,
         u_width_px=u_width,
         u_axis_deg=float("nan") if axis_angle_deg is not None else found.u_angle_deg(),
         profile=found.profile,
         parallel=parallel,
         holes=holes,
+    )
+
+
+def _area(grey: NDArray[np.float32], region: Mask | None, given: Given) -> Mask:
+    """Return where the coupon is: as given, or where the picture is textured."""
+    if given.mask is not None:
+        return given.mask.copy()
+    angle = given.axis_deg()
+    if angle is None:
+        return textured_area(grey, region)
+    strip = between(grey.shape, angle, given.lines(grey.shape, angle), 0.0, None)
+    if not strip.any():
+        raise TestFileError(
+            "nothing lies between the two edges",
+            where="coupon.edges",
+            remedy="give one edge on each side of the coupon",
+        )
+    return textured_area(grey, strip if region is None else strip & region) & strip
+
+
+def _edges(
+    grey: NDArray[np.float32],
+    whole: Mask,
+    axis_angle_deg: float | None,
+    given: Given,
+    direction: float,
+    clarity: float,
+) -> tuple[Found, str]:
+    """Return the edges and how the axis was had."""
+    said = given.axis_deg()
+    if said is not None:
+        angle = said if axis_angle_deg is None else axis_angle_deg
+        lines = Found(angle, given.lines(grey.shape, angle), Profile.nowhere())
+        return lines.upright(), "from the edges given" if axis_angle_deg is None else "given"
+    if axis_angle_deg is not None:
+        return long_edges(grey, whole, float(axis_angle_deg), turn=False).upright(), "given"
+    found = _found_axis(grey, whole, direction, clarity)
+    return found.upright(), f"from {sum(edge is not None for edge in found.edges)} edges"
+
+
+def _nothing_left(textured: Mask, region: Mask | None) -> PatternError:
+    """Say where the coupon is, when nothing of it is left."""
+    if textured.any():
+        return missed(textured, "coupon" if region is None else "gauge.region")
+    return PatternError(
+        "mask and holes leave nothing of the coupon",
+        where="coupon.mask and coupon.holes",
+        remedy="make the mask larger or the holes smaller",
     )
 
 

@@ -30,6 +30,8 @@ SETTLED_DEG = 0.006
 #: ... or below this share of its own standard uncertainty, which is large on short edges.
 SETTLED_SHARE = 0.3
 MOST_ROUNDS = 8
+#: An axis that still swings by more than this many standard uncertainties after all rounds is none.
+SWING_SIGMAS = 2.0
 #: Smaller steps are halved: which rays lie on the line changes with it, and the angle could swing.
 GENTLE_DEG = 0.05
 #: The edge is looked for so far about the mask's outline, then about what was found of it, px.
@@ -97,6 +99,11 @@ class Profile:
         """Width at the stations, px; NaN where an edge was not found."""
         return np.asarray(self.right - self.left)
 
+    @classmethod
+    def nowhere(cls) -> Profile:
+        """Return a profile without stations."""
+        return cls(np.empty(0), np.empty(0), np.empty(0))
+
 
 @dataclass(frozen=True)
 class Found:
@@ -137,6 +144,23 @@ class Found:
         weights = [edge.weight for edge in self.edges if edge is not None]
         return float(np.degrees(1 / np.sqrt(sum(weights)))) if weights else float("nan")
 
+    def upright(self) -> Found:
+        """Return the same with the axis between −90° and 90°; half a turn exchanges left and right."""
+        if -90 <= self.angle_deg < 90 or not np.isfinite(self.angle_deg):
+            return self
+        left, right = (
+            None if edge is None else replace(edge, offset=-edge.offset, along=-edge.along)
+            for edge in reversed(self.edges)
+        )
+        shown, section = self.profile, self.parallel
+        return replace(
+            self,
+            angle_deg=(self.angle_deg + 90) % 180 - 90,
+            edges=(left, right),
+            profile=Profile(-shown.along[::-1], -shown.right[::-1], -shown.left[::-1]),
+            parallel=None if section is None else (-section[1], -section[0]),
+        )
+
 
 def long_edges(grey: NDArray[np.float32], mask: Mask, angle_deg: float, *, turn: bool) -> Found:
     """Locate the edges to the left and to the right of a mask.
@@ -170,14 +194,15 @@ def long_edges(grey: NDArray[np.float32], mask: Mask, angle_deg: float, *, turn:
             return found
         step = found.turn_deg()
         if done >= 2 and (not turn or abs(step) < max(SETTLED_DEG, SETTLED_SHARE * found.u_angle_deg())):
-            return found
+            return _centred(grey, found, turn)
         sides = tuple(  # type: ignore[assignment]
             points if place is None else _in_picture(grey.shape, angle_deg, *place)
             for points, place in zip(sides, stations, strict=True)
         )
         if turn:
             angle_deg += step if abs(step) > GENTLE_DEG else step / 2
-    return replace(found, angle_deg=float("nan"))
+    swings = abs(step) > SWING_SIGMAS * found.u_angle_deg()
+    return replace(found, angle_deg=float("nan")) if swings else _centred(grey, found, turn)
 
 
 def between(
@@ -197,6 +222,43 @@ def between(
         place = x * np.float32(axial[0]) + y * np.float32(axial[1])
         inside &= (place >= along[0]) & (place <= along[1])
     return inside
+
+
+def _centred(grey: NDArray[np.float32], found: Found, turn: bool) -> Found:
+    """Move each line to where all its rays together find the edge likeliest.
+
+    A station sees a few speckles only, and the likeliest place of so few is a little one-sided.
+    """
+    axial, transverse = axes(found.angle_deg)
+    edges: list[Edge | None] = []
+    for edge, side, offset in zip(
+        found.edges, (-1, 1), (found.profile.left, found.profile.right), strict=True
+    ):
+        trace = None
+        if edge is not None and found.parallel is not None:
+            there = found.profile.along[np.isfinite(offset)]
+            there = there[(there >= found.parallel[0]) & (there <= found.parallel[1])]
+            if len(there) > 1:
+                there = np.linspace(there[0] - STATION_PX / 2, there[-1] + STATION_PX / 2, 3 * len(there))
+                points = centre(grey.shape) + there[:, None] * axial + edge.at(there)[:, None] * transverse  # type: ignore[index]
+                trace = Trace.along(grey, points, found.angle_deg, side, NARROW_PX)
+        if trace is None or edge is None:
+            edges.append(edge)
+            continue
+        inward, lean = trace.likeliest_line(found.blur)
+        slope = edge.slope - side * lean
+        middle = float(edge.at(float(trace.place.mean()))) - side * inward
+        edges.append(replace(edge, offset=middle - slope * float(trace.place.mean()), slope=slope))
+    found = replace(found, edges=(edges[0], edges[1]))
+    if not turn:
+        return found
+    step = found.turn_deg()
+    # So small a turn about the picture's middle changes slopes only.
+    level = tuple(
+        None if edge is None else replace(edge, slope=edge.slope - float(np.tan(np.radians(step))))
+        for edge in found.edges
+    )
+    return replace(found, angle_deg=found.angle_deg + step, edges=level)  # type: ignore[arg-type]
 
 
 def _blur(traces: list[Trace | None], edges: Edges, start: float) -> tuple[float, float, float]:
@@ -228,10 +290,6 @@ def _in_picture(shape: tuple[int, ...], angle_deg: float, place: Floats, offset:
     known = np.isfinite(offset)
     bridged = np.interp(place, place[known], offset[known])
     return np.asarray(centre(shape) + place[:, None] * axial + bridged[:, None] * transverse)
-
-
-def _nowhere() -> Profile:
-    return Profile(np.empty(0), np.empty(0), np.empty(0))
 
 
 def _straight(stations: list[tuple[Floats, Floats] | None], angle_deg: float) -> Found:
@@ -278,7 +336,7 @@ def _profile(stations: list[tuple[Floats, Floats] | None]) -> Profile:
     """Bring both edges' stations to common places along the axis."""
     known = [place for place in stations if place is not None]
     if not known:
-        return _nowhere()
+        return Profile.nowhere()
     start = min(place[0] for place, _ in known)
     stop = max(place[-1] for place, _ in known)
     along = start + STATION_PX * np.arange(int((stop - start) / STATION_PX + 0.5) + 1)

@@ -32,6 +32,9 @@ def picture_quality(
 CLEAR_OUTLINE = 0.5
 #: Long edges that differ by more than this are no two sides of a straight strip, deg.
 MOST_TAPER_DEG = 0.5
+#: From these standard uncertainties on, width and axis are said to be unsure: 0.5 % of a length; 0.5° turns
+#: strain by (1+ν)·sin² = 1e-4 of itself.
+MOST_U_WIDTH, MOST_U_AXIS_DEG = 0.005, 0.5
 
 
 def axis_doubts(coupon: Coupon) -> list[Notice]:
@@ -54,6 +57,24 @@ def axis_doubts(coupon: Coupon) -> list[Notice]:
                 "edges_not_parallel",
                 f"The coupon's long edges differ in direction by {taper:.1f}°; if it is no straight "
                 "strip, give gauge.axis, and camera.scale where lengths matter.",
+            )
+        )
+    if (share := coupon.u_width_px / coupon.width_px) > MOST_U_WIDTH:
+        found.append(
+            Notice(
+                "width_unsure",
+                f"The coupon's width in the picture is known to {100 * share:.1f} % only "
+                "(standard uncertainty), so lengths and the scale in mm per px are no better; focus on "
+                "the coupon's edges, or give camera.scale.",
+            )
+        )
+    if not given and coupon.u_axis_deg > MOST_U_AXIS_DEG:
+        found.append(
+            Notice(
+                "axis_unsure",
+                f"The direction of the pull is known to {coupon.u_axis_deg:.1f}° only (standard "
+                "uncertainty), because the edges in view are short or unclear; give gauge.axis if it is "
+                "known better.",
             )
         )
     if not given and coupon.clarity < CLEAR_OUTLINE:

@@ -44,10 +44,25 @@ def textured_area(grey: NDArray[np.float32], region: Mask | None = None) -> Mask
         # Either texture everywhere or nowhere.
         if region is None and not _is_speckle(grey):
             raise PatternError(_NOTHING, remedy=_REMEDY)
-        return np.ones(grey.shape, bool) if region is None else region.copy()
+        if region is None:
+            return np.ones(grey.shape, bool)
+        elsewhere = _largest(scatter > _threshold(scatter, low, high), None)
+        if area is None and elsewhere is not None and _stands_out(scatter, elsewhere):
+            raise missed(elsewhere, "gauge.region")
+        return region.copy()
     if region is None and not _is_speckle(grey, area):
         raise PatternError(_NOTHING, remedy=_REMEDY)
     return area
+
+
+def missed(textured: Mask, where: str) -> PatternError:
+    """Return the error that a region misses the textured area, and where that is."""
+    y, x = np.nonzero(textured)
+    return PatternError(
+        "holds nothing of the coupon's textured area",
+        where=where,
+        remedy=f"move or enlarge it; the coupon lies in x {x.min()} to {x.max()}, y {y.min()} to {y.max()}",
+    )
 
 
 def _largest(textured: Mask, region: Mask | None) -> Mask | None:

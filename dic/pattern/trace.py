@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy import ndimage
 
-from dic.pattern.boundary import OUTWARD_PX, Boundary, Reach, rays
+from dic.pattern.boundary import Boundary, Reach, rays
 from dic.pattern.outline import Floats, axes, centre
 
 #: More rays than this add time but no accuracy that a strain could feel.
@@ -18,6 +18,10 @@ MOST_RAYS = 500
 STATION_PX = 16.0
 #: A station must be likelier than the ends of the search by so much; a flat likelihood says nothing.
 LEAST_SAID = 12.0
+#: Rays reach so far out of the coupon, the first for which the picture has room along most of the edge, px.
+OUTWARD_PX = (16, 12, 9, 7)
+#: Share of the rays for which there has to be room.
+MOST_ROOM = 0.75
 #: A shorter stretch of edge tells no direction, px; and a rough outline of fewer points no place.
 LEAST_PX, LEAST_POINTS = 32.0, 8
 
@@ -71,11 +75,33 @@ class Trace:
             y = middle[1] + place[:, None] * axial[1] + offset * transverse[1]
             samples = rays(grey, x, y)
             whole = np.isfinite(samples).all(axis=1)
-            if whole.sum() > (0.7 if outward > OUTWARD_PX[-1] else 0.1) * _possible(samples):
+            if whole.sum() > MOST_ROOM * _possible(samples):
                 break
         if whole.sum() < 2 * LEAST_PX / pitch:
             return None
         return cls(place, near, side, Boundary(samples, reach, pitch), pitch)
+
+    def likeliest_line(self, blur: float) -> tuple[float, float]:
+        """Return how far inside its rough place all rays together find the edge, px, and at what slope."""
+        table, tried = self.boundary.places(blur), self.boundary.reach.places
+        from_middle = self.place - self.place.mean()
+        half = float(from_middle[-1])
+        row, step = np.arange(len(table)), tried[1] - tried[0]
+        best: list[tuple[float, float]] = []
+        leans = np.linspace(-1, 1, 9) / half
+        for lean in leans:
+            # A table moved by whole places would step; between two places it is read off a straight line.
+            column = (tried + lean * from_middle[:, None] - tried[0]) / step
+            low = np.clip(np.floor(column).astype(int), 0, len(tried) - 2)
+            share = np.clip(column - low, 0, 1)
+            said = table[row[:, None], low] * (1 - share) + table[row[:, None], low + 1] * share
+            total = said.sum(axis=0)
+            top = min(max(int(np.argmax(total)), 1), len(total) - 2)
+            best.append((float(total[top]), _top(total[top - 1 : top + 2], tried[top - 1 : top + 2])))
+        height = np.array([total for total, _ in best])
+        top = min(max(int(np.argmax(height)), 1), len(leans) - 2)
+        lean = _top(height[top - 1 : top + 2], leans[top - 1 : top + 2])
+        return float(np.interp(lean, leans, [inward for _, inward in best])), float(lean)
 
     def stations(self, blur: float) -> tuple[Floats, Floats]:
         """Return places along the axis and the edge's offsets there; NaN where it cannot be told."""
@@ -98,14 +124,16 @@ class Trace:
                 or whole[row] < count[row] / 2
             ):
                 continue
-            column = column - 1 + int(np.argmax(here[column - 1 : column + 2]))
-            column = min(max(column, 1), len(tried) - 2)
-            before, at, after = here[column - 1 : column + 2]
-            bend = before - 2 * at + after
-            top = 0.5 * (before - after) / bend if bend < 0 else 0.0
-            inward = tried[column] + np.clip(top, -1, 1) * (tried[1] - tried[0])
+            inward = _top(here[column - 1 : column + 2], tried[column - 1 : column + 2])
             offset[row] = near[row] - self.side * inward
         return place, offset
+
+
+def _top(said: Floats, places: Floats) -> float:
+    """Return the place of the top of a parabola through three neighbouring places."""
+    bend = said[0] - 2 * said[1] + said[2]
+    top = 0.5 * (said[0] - said[2]) / bend if bend < 0 else 0.0
+    return float(places[1] + np.clip(top, -1, 1) * (places[1] - places[0]))
 
 
 def _possible(samples: Floats) -> int:

@@ -28,6 +28,12 @@ _MOST_PIXELS = 900
 NOISE_SPAN = 12.0
 
 _HIGHLIGHT = "#b8560f"
+#: Lines of the coupon as it was found.
+_FOUND = "#1f78b4"
+_SKETCHED = (
+    "Thin lines show what was found of the coupon: its edges, the ends of the parallel section where they "
+    "are in view, and holes; where they miss it, [coupon] in the test file can say better. "
+)
 
 _MEASURES = {
     "engineering": "The maps show engineering strain.",
@@ -90,6 +96,7 @@ def draw_scene(measurement: Measurement) -> Drawing:
     rows, columns = scene.photograph.shape
     figure, (axes,) = sheet(height=float(np.clip(WIDTH * rows / columns, 2.2, 5.4)) + 0.5)
     photograph_on(axes, scene, (0, columns, 0, rows), fade=0.25)
+    _coupon_lines(axes, scene)
     axes.add_patch(_outline(scene, lw=1.6, label="gauge region"))
     _arrow(axes, scene)
     _squares(axes, scene)
@@ -99,6 +106,7 @@ def draw_scene(measurement: Measurement) -> Drawing:
     reading = (
         "The reference picture with the region whose strain is averaged (outline) and the direction of "
         f"loading (arrow, {scene.axis_angle_deg:.2f}° clockwise from the vertical; {scene.axis_method}). "
+        f"{_SKETCHED if scene.sketch is not None else ''}"
         f"The filled squares show one subset ({scene.subset_px} px, the patch that is recognised again) "
         f"and the window over which a point of the strain maps is formed ({_gauge_size(scene)}). The "
         "outline should lie on the speckled coupon and leave out the grips."
@@ -267,6 +275,19 @@ def photograph_on(axes: Axes, scene: Scene, view: tuple[float, float, float, flo
 
 def _outline(scene: Scene, lw: float, label: str = "") -> Polygon:
     return Polygon(scene.region, closed=True, fill=False, ec=_HIGHLIGHT, lw=lw, label=label)
+
+
+def _coupon_lines(axes: Axes, scene: Scene) -> None:
+    """Draw the long edges, the ends of the parallel section and the holes as they were found."""
+    if scene.sketch is None:
+        return
+    for lines, style, label in (
+        (scene.sketch.edges, "-", "edges of the coupon"),
+        (scene.sketch.ends, "--", "ends of the parallel section"),
+        (scene.sketch.holes, ":", "holes and gaps, left out"),
+    ):
+        for number, line in enumerate(lines):
+            axes.plot(*line.T, style, color=_FOUND, lw=1.4, label=label if number == 0 else None)
 
 
 def _arrow(axes: Axes, scene: Scene) -> None:
