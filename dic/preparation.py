@@ -92,7 +92,7 @@ def set_up(test: TestFile, source: FrameSource) -> Setup:
     image = _mean(source, first, last)
     full_scale = source.full_scale()
     known = _given_region(image.shape, test.gauge.region)
-    coupon = find_coupon(image, test.gauge.axis_angle, known, _given(test))
+    coupon = find_coupon(image, test.gauge.axis_angle, known, given_coupon(test))
     mask, facing_notices = facing(coupon, test.specimen.shape, test.gauge.region == "auto")
     region = Region.around(mask, *axes(coupon.axis_angle_deg))
     scale_mm = test.camera.scale or test.specimen.visible_width / coupon.width_px
@@ -224,14 +224,26 @@ def _frames_at_rest(source: FrameSource, reference: Reference, grid: Grid, reade
     return min(MOST_AVERAGED, len(source))
 
 
-def _given(test: TestFile) -> Given:
-    """Return what the test file says of the coupon."""
+def given_coupon(test: TestFile) -> Given:
+    """Return what the test file says of the coupon, its mask read.
+
+    Raises
+    ------
+    TestFileError
+        If the mask is no grey picture that can be read.
+    """
     said = test.coupon
     mask = None
     if said.mask is not None:
-        page = list_pages(test.beside(said.mask))[0]
-        grey = read_page(page)
-        # The stored range is 8 or 16 bits; white is its upper half.
+        try:
+            grey = read_page(list_pages(test.beside(said.mask))[0])
+        except FrameError as error:
+            raise TestFileError(
+                f"the mask {error.where} {error.what}",
+                where="coupon.mask",
+                remedy="give a grey picture of 8 bits, white where the coupon may be tracked",
+            ) from error
+        # White is the upper half of what 8 or 16 bits hold.
         mask = grey > (127 if grey.max() < 256 else 32767)
     return Given(said.edges, mask, said.holes, said.parallel)
 

@@ -2,9 +2,12 @@
 
 import numpy as np
 import pytest
+from PIL import Image
 
 from dic.errors import PatternError, TestFileError
 from dic.pattern import Given, find_coupon
+from dic.preparation import given_coupon
+from dic.testfile import TestFile
 from synthetic_images import Camera, Coupon, Dots, rigid
 
 SHAPE = (300, 240)
@@ -100,3 +103,29 @@ def test_a_region_beside_the_coupon_is_told_where_it_lies(image):
     region[50:90, 2:30] = True
     with pytest.raises(PatternError, match=r"gauge\.region: .*coupon lies in x 5\d to 18\d, y 0 to 299"):
         find_coupon(image, 0.0, region)
+
+
+def said(folder, mask):
+    """Return a test file that names a mask."""
+    sections = {
+        "specimen": {"width": "10 mm", "thickness": "1 mm"},
+        "frames": {"source": "frames", "rate": "5 Hz"},
+        "load_record": {"source": "machine.csv"},
+        "coupon": {"mask": mask},
+    }
+    return TestFile.model_validate(sections).model_copy(update={"path": folder / "test.toml"})
+
+
+def test_a_mask_is_read_from_beside_the_test_file(tmp_path):
+    white = np.zeros((50, 40), np.uint8)
+    white[5:45, 10:30] = 255
+    Image.fromarray(white).save(tmp_path / "mask.png")
+    assert np.array_equal(given_coupon(said(tmp_path, "mask.png")).mask, white > 0)
+
+
+@pytest.mark.parametrize("name", ["missing.png", "one_bit.png", "text.txt"])
+def test_a_mask_that_cannot_be_read_is_named(tmp_path, name):
+    Image.fromarray(np.ones((50, 40), bool)).save(tmp_path / "one_bit.png")
+    (tmp_path / "text.txt").write_text("no picture", encoding="utf-8")
+    with pytest.raises(TestFileError, match=rf"coupon\.mask: the mask .*{name} .*grey picture of 8 bits"):
+        given_coupon(said(tmp_path, name))
