@@ -136,6 +136,70 @@ class RambergOsgood:
 
 
 @dataclass(frozen=True)
+class YieldPoint:
+    """Mild steel: elastic up to an upper yield point, a drop, a level at the lower one, then hardening.
+
+    From the level's end on, σ = ReL + (Rs − ReL)·(1 − exp(−Δε/h)).  Across, the elastic part contracts by
+    ν and the plastic part keeps its volume, as in `RambergOsgood`.
+
+    Attributes
+    ----------
+    youngs_modulus, upper_yield, lower_yield, saturation
+        E, ReH, ReL and Rs, to which hardening tends, MPa; ReL < ReH < Rs.
+    poissons_ratio
+        Elastic ν.
+    drop, level, hardening
+        Strains over which the stress drops and stays level, and h.
+
+    Notes
+    -----
+    One coupon-wide strain; the bands that travel along a real coupon are left out.
+    """
+
+    youngs_modulus: float
+    poissons_ratio: float
+    upper_yield: float
+    lower_yield: float
+    saturation: float
+    drop: float = 0.001
+    level: float = 0.015
+    hardening: float = 0.04
+
+    def _corners(self) -> tuple[float, float, float]:
+        upper = self.upper_yield / self.youngs_modulus
+        return upper, upper + self.drop, upper + self.drop + self.level
+
+    def stress(self, strain: ArrayLike) -> Floats:
+        """Return the nominal stress, MPa."""
+        strain = np.asarray(strain, dtype=float)
+        upper, lower, end = self._corners()
+        up_to_level = np.interp(
+            strain, [-upper, upper, lower], [-self.upper_yield, self.upper_yield, self.lower_yield]
+        )
+        beyond = np.clip(strain - end, 0, None)
+        return up_to_level - (self.saturation - self.lower_yield) * np.expm1(-beyond / self.hardening)
+
+    def strain(self, stress: ArrayLike) -> Floats:
+        """Return the strain at which a stress is first reached."""
+        stress = np.asarray(stress, dtype=float)
+        with np.errstate(invalid="ignore", divide="ignore"):
+            share = (stress - self.lower_yield) / (self.saturation - self.lower_yield)
+            beyond = self._corners()[2] - self.hardening * np.log1p(-share)
+        return np.where(stress <= self.upper_yield, stress / self.youngs_modulus, beyond)
+
+    def transverse(self, strain: ArrayLike) -> Floats:
+        """Return the transverse strain."""
+        strain = np.asarray(strain, dtype=float)
+        elastic = self.stress(strain) / self.youngs_modulus
+        return (1 - self.poissons_ratio * elastic) / np.sqrt(1 + strain - elastic) - 1
+
+    def unloaded(self, strain: float) -> tuple[float, float]:
+        """Return the plastic strains: the elastic part springs back along E."""
+        plastic = strain - float(self.stress(strain)) / self.youngs_modulus
+        return plastic, float(1 / np.sqrt(1 + plastic) - 1)
+
+
+@dataclass(frozen=True)
 class NeoHookean:
     """Incompressible neo-Hookean rubber: σ = μ·(λ − λ⁻²), λ_t = λ^(−1/2); E = 3μ and ν = 1/2 at zero.
 

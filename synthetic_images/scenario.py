@@ -10,7 +10,7 @@ from pydantic import Field, model_validator
 from dic.errors import TestFileError, nearest
 from dic.testfile import Gauge, Properties, Section, quantity, read_toml
 from synthetic_images.camera import Camera
-from synthetic_images.materials import Elastic, Material, NeoHookean, RambergOsgood
+from synthetic_images.materials import Elastic, Material, NeoHookean, RambergOsgood, YieldPoint
 from synthetic_images.textures import Cosines, Dots, Photograph, Texture
 
 _POSITIVE = Field(gt=0, allow_inf_nan=False)
@@ -70,21 +70,34 @@ class Specimen(Section):
 class MaterialLaw(Section):
     """The material's law and its constants; each law has its own keys."""
 
-    law: Literal["elastic", "ramberg_osgood", "neo_hookean"]
+    law: Literal["elastic", "ramberg_osgood", "yield_point", "neo_hookean"]
     youngs_modulus: Stress | None = None
     poissons_ratio: float | None = Field(None, gt=-1, le=0.5)
     proof_stress: Stress | None = None
     exponent: float | None = Field(None, ge=1, le=200)
     shear_modulus: Stress | None = None
+    upper_yield: Stress | None = None
+    lower_yield: Stress | None = None
+    saturation: Stress | None = None
+    drop: Strain | None = None
+    level: Strain | None = None
+    hardening: Strain | None = None
 
     @model_validator(mode="after")
     def _constants_of_its_law(self) -> MaterialLaw:
         keys = {
             "elastic": {"youngs_modulus", "poissons_ratio"},
             "ramberg_osgood": {"youngs_modulus", "poissons_ratio", "proof_stress", "exponent"},
+            "yield_point": {
+                "youngs_modulus", "poissons_ratio", "upper_yield", "lower_yield", "saturation",
+            },
             "neo_hookean": {"shear_modulus"},
-        }
-        _exactly(self, "law", self.law, keys[self.law])
+        }  # fmt: skip
+        optional = {"drop", "level", "hardening"} if self.law == "yield_point" else set()
+        _exactly(self, "law", self.law, keys[self.law], keys[self.law] | optional)
+        yields = (self.lower_yield, self.upper_yield, self.saturation)
+        if self.upper_yield is not None and not sorted(set(yields), key=lambda one: one or 0) == [*yields]:
+            raise ValueError("lower_yield, upper_yield and saturation have to grow in this order")
         return self
 
     def make(self) -> Material:
@@ -94,6 +107,8 @@ class MaterialLaw(Section):
             return Elastic(**constants)
         if self.law == "ramberg_osgood":
             return RambergOsgood(**constants)
+        if self.law == "yield_point":
+            return YieldPoint(**constants)
         return NeoHookean(**constants)
 
 
@@ -223,6 +238,15 @@ class Scenario(Section):
     def _fits_together(self) -> Scenario:
         if self.view.rows * self.view.columns * self.camera.frames > MAX_PIXELS_IN_ALL:
             raise ValueError("the frames would fill more than 20 GB; lower rows, columns or frames")
+        material = self.material.make()
+        if isinstance(material, YieldPoint):
+            falls = (material.upper_yield - material.lower_yield) * self.specimen.width
+            falls *= self.specimen.thickness / self.machine.stiffness
+            if falls >= material.drop * self.machine.free_length:
+                raise ValueError(
+                    "the machine's spring gives back more than the coupon takes up in the yield point's "
+                    "drop; raise machine.stiffness or material.drop"
+                )
         if self.record_end <= 0:
             raise ValueError("the camera stops before the machine's clock starts; raise camera.offset")
         if self.record_end * self.load_record.rate > MAX_ROWS_OF_RECORD:

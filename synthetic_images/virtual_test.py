@@ -247,5 +247,5 @@ class VirtualTest:
             "poissons_ratio": (ratio, ""),
             "shear_modulus": (modulus / (2 * (1 + ratio)), "MPa"),
             "proof_stress_0_2": (proof_stress(self.material, strain), "MPa"),
-            "tensile_strength": (float(self.material.stress(strain)), "MPa"),
+            "tensile_strength": (float(np.max(self.material.stress(np.linspace(0, strain, 2001)))), "MPa"),
         }

@@ -5,10 +5,11 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from synthetic_images.materials import Elastic, NeoHookean, RambergOsgood, proof_stress
+from synthetic_images.materials import Elastic, NeoHookean, RambergOsgood, YieldPoint, proof_stress
 
 METAL = RambergOsgood(71_300.0, 0.327, 432.0, 24.0)
 RUBBER = NeoHookean(0.62)
+MILD = YieldPoint(210_000.0, 0.3, 300.0, 270.0, 420.0)
 
 
 @given(st.floats(1e3, 4e5), st.floats(50, 2000), st.floats(2, 60))
@@ -36,7 +37,7 @@ def test_ramberg_osgood_volume():
 
 
 def test_slope_at_zero_is_youngs_modulus():
-    for material in (METAL, RUBBER, Elastic(3000.0, 0.4)):
+    for material in (METAL, RUBBER, MILD, Elastic(3000.0, 0.4)):
         # A one-sided difference over 1e-6 of strain is off by the curvature, of that order.
         assert material.stress(1e-6) / 1e-6 == pytest.approx(material.youngs_modulus, rel=1e-5)
         assert material.transverse(1e-6) / 1e-6 == pytest.approx(-material.poissons_ratio, rel=1e-5)
@@ -69,3 +70,19 @@ def test_proof_stress_that_is_not_reached_is_nan():
     assert np.isnan(proof_stress(Elastic(3000.0, 0.4), 0.5))
     assert np.isnan(proof_stress(METAL, 0.005))
     assert np.isnan(proof_stress(METAL, 0.001))
+
+
+def test_mild_steel_has_its_yield_points():
+    """By construction: ReH, a level at ReL from 0.001 beyond it, and Rs at last; Rp0.2 lies on the level."""
+    upper = 300 / 210_000
+    assert MILD.stress(upper) == pytest.approx(300, rel=1e-12)
+    level = MILD.stress(np.linspace(upper + 0.001, upper + 0.016, 20))
+    assert level == pytest.approx(np.full(20, 270.0), rel=1e-12)
+    assert MILD.stress(upper + 0.016 + 0.04) == pytest.approx(270 + 150 * (1 - np.exp(-1)), rel=1e-12)
+    assert MILD.strain(np.array([150.0, 300.0, 380.0])) == pytest.approx(
+        [150 / 210_000, upper, upper + 0.016 - 0.04 * np.log(40 / 150)], rel=1e-12
+    )
+    assert proof_stress(MILD, 0.03) == pytest.approx(270, rel=1e-9)
+    # The plastic part keeps its volume.
+    plastic, across = MILD.unloaded(0.05)
+    assert (1 + plastic) * (1 + across) ** 2 == pytest.approx(1.0, rel=1e-12)

@@ -3,6 +3,7 @@
 import subprocess
 import sys
 
+import numpy as np
 import pytest
 
 from dic.errors import TestFileError
@@ -117,3 +118,26 @@ def test_package_loads_late():
     )
     heavy = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True)
     assert heavy.stdout.strip() == "[]"
+
+
+MILD = GOOD.replace('law = "elastic"', 'law = "yield_point"').replace(
+    'youngs_modulus = "3 GPa"',
+    'youngs_modulus = "210 GPa"\nupper_yield = "300 MPa"\nlower_yield = "270 MPa"\nsaturation = "420 MPa"',
+)
+
+
+def test_mild_steel_is_pulled_through_its_yield_point(tmp_path):
+    test = VirtualTest(load_scenario(written(tmp_path, MILD + "[camera]\nframes = 400\n")))
+    stress = test.at(np.linspace(0, 40, 4001)).force_N / test.area_mm2
+    # The instants are dense enough to meet the peak within 0.1 %, and the level.
+    assert stress.max() == pytest.approx(300, rel=1e-3)
+    assert np.isclose(stress, 270, rtol=1e-9).sum() > 100
+
+
+@pytest.mark.parametrize(
+    ("change", "said"),
+    [(("270 MPa", "310 MPa"), "grow in this order"), (("speed", 'stiffness = "1 kN/mm"\nspeed'), "spring")],
+)
+def test_a_yield_point_that_cannot_be(tmp_path, change, said):
+    with pytest.raises(TestFileError, match=said):
+        load_scenario(written(tmp_path, MILD.replace(*change)))
