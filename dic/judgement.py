@@ -1,4 +1,4 @@
-"""What the gauge readings say beside the properties: alignment, and doubts with their remedies."""
+"""Doubts about the gauge readings and about the loading, with their remedies."""
 
 from __future__ import annotations
 
@@ -6,25 +6,9 @@ import numpy as np
 
 from dic.correlation.flags import MEANING, Flag
 from dic.errors import Notice
-from dic.properties import Curve, Evaluation
+from dic.properties import Curve
 from dic.strain import GaugeHistory
-
-
-def alignment(history: GaugeHistory, found: Evaluation) -> dict[str, float]:
-    """Return how straight the coupon was pulled, from the frames in the modulus' window.
-
-    Bending is the extra strain at the gauge's edge per mean strain (ASTM E1012's percent bending,
-    in the picture's plane only).
-    """
-    line = found.line
-    inside = (history.axial >= line.low) & (history.axial <= line.high)
-    strain, bending, shear = history.axial[inside], history.bending[inside], history.shear[inside]
-    if inside.sum() < 3:
-        return {"bending_percent": float("nan"), "shear_percent": float("nan")}
-    return {
-        "bending_percent": float(100 * abs(np.polyfit(strain, bending, 1)[0])),
-        "shear_percent": float(100 * abs(np.polyfit(strain, shear, 1)[0])),
-    }
+from dic.strain.alignment import BEYOND, Alignment
 
 
 def reading_doubts(history: GaugeHistory, curve: Curve, *, extensometer_asked: bool) -> list[Notice]:
@@ -70,3 +54,18 @@ def reading_doubts(history: GaugeHistory, curve: Curve, *, extensometer_asked: b
             )
         )
     return found
+
+
+def loading_doubts(alignment: Alignment) -> list[Notice]:
+    """Return a warning where bending exceeds its limit."""
+    if alignment.verdict != BEYOND:
+        return []
+    largest, limit = alignment.largest, alignment.limit or 0.0
+    return [
+        Notice(
+            "bending",
+            f"Bending in the picture's plane reaches {100 * largest.value:.1f} % ± {200 * largest.u:.1f} % "
+            f"of the mean strain, beyond the {100 * limit:g} % of {alignment.limit_source}; the report's "
+            "section on alignment says what to look at.",
+        )
+    ]

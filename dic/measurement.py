@@ -14,6 +14,7 @@ from dic.errors import Notice
 from dic.gauges import NamedHistory
 from dic.pattern import Sketch
 from dic.properties.result import Curve, ModulusLine, Property
+from dic.strain.alignment import Alignment
 from dic.strain.history import GaugeHistory
 from dic.sync.record import Clock, LoadRecord
 from dic.testfile import TestFile
@@ -83,8 +84,10 @@ class Measurement:
         The straight line behind Young's modulus, for drawing.
     properties
         By name, in the order of the sheet.
-    alignment, quality
-        Figures on how straight the coupon was pulled, and on how well it could be tracked.
+    alignment
+        How straight the coupon was pulled.
+    quality
+        Figures on how well it could be tracked.
     notices
         Warnings for people.
     provenance
@@ -105,7 +108,7 @@ class Measurement:
     curve: Curve
     line: ModulusLine
     properties: dict[str, Property]
-    alignment: dict[str, float]
+    alignment: Alignment
     quality: dict[str, float]
     notices: tuple[Notice, ...]
     provenance: dict[str, Any]

@@ -19,18 +19,20 @@ from dic.errors import ClockError, InputError
 from dic.frames import open_frames, unreadable_frames
 from dic.gauges import NamedHistory, NamedReadings
 from dic.gauges.probes import Subsets
-from dic.judgement import alignment, reading_doubts
+from dic.judgement import loading_doubts, reading_doubts
 from dic.measurement import Measurement, Scene
 from dic.pattern import sketch
 from dic.preparation import Setup, set_up
+from dic.properties import Curve, Evaluation, evaluate, make_curve
 from dic.properties import doubts as property_doubts
-from dic.properties import evaluate, make_curve
 from dic.report import write_report
-from dic.sequence import tracked_or_stored, unreadable
+from dic.sequence import map_window, tracked_or_stored, unreadable
 from dic.store import fields
 from dic.store.folder import claim_folder, remove_results
 from dic.store.results import write_results
 from dic.strain import GaugeHistory, gather, gauge_size
+from dic.strain.alignment import LEAST_FRAMES, Alignment, elastic_part, find_alignment, limit_of
+from dic.strain.rates import gather_rates
 from dic.sync import Clock, LoadRecord, fit_clock, given_clock, read_load_record
 from dic.testfile import TestFile, load
 
@@ -150,6 +152,7 @@ def judged(
         reference=slice(first, first + setup.reference.frames),
         length_mm=test.load_record.extensometer_length,
     )
+    straight = _alignment(test, setup, history, curve, found, folder)
     return Measurement(
         test=test,
         scene=_scene(test, setup, folder),
@@ -159,7 +162,7 @@ def judged(
         curve=curve,
         line=found.line,
         properties=found.properties,
-        alignment=alignment(history, found),
+        alignment=straight,
         quality=_quality(setup, history),
         notices=(
             *setup.source.notices,
@@ -167,6 +170,7 @@ def judged(
             *record.notices,
             *setup.notices,
             *found.notices,
+            *loading_doubts(straight),
             *reading_doubts(history, curve, extensometer_asked=test.gauge.length is not None),
             *property_doubts(found.properties, test.specimen, test.load_record.force_uncertainty),
             *clip_on_doubts(clip_on),
@@ -176,6 +180,21 @@ def judged(
         clip_on=clip_on,
         gauges=tuple(named),
     )
+
+
+def _alignment(
+    test: TestFile, setup: Setup, history: GaugeHistory, curve: Curve, found: Evaluation, folder: Path
+) -> Alignment:
+    """Judge how straight the coupon was pulled, from the stored fields of the elastic part."""
+    inside = elastic_part(history, found.line.low, found.line.high)
+    window, grid = map_window(test, setup.grid), setup.grid
+    rates = None
+    if inside.sum() >= LEAST_FRAMES:
+        frames = np.flatnonzero(inside)
+        moved = fields.stored_motion(folder, frames)
+        rates = gather_rates(moved, history.axial[frames], grid, setup.region, window)
+    limit = limit_of(test.alignment.limit, test.alignment.standard)
+    return find_alignment(history, curve.force_N, inside, rates, limit)
 
 
 def _scene(test: TestFile, setup: Setup, folder: Path) -> Scene:

@@ -13,7 +13,7 @@ import numpy as np
 from threadpoolctl import threadpool_limits
 
 from dic import provenance
-from dic.correlation import Match, track
+from dic.correlation import Grid, Match, track
 from dic.correlation.flags import Flag
 from dic.errors import FrameError, TrackingError
 from dic.frames import FrameSource, RepeatWatch, check_damage
@@ -64,16 +64,15 @@ def tracking_key(test: TestFile, source: FrameSource) -> str:
     return hashlib.sha256(json.dumps(said, sort_keys=True).encode()).hexdigest()
 
 
+def map_window(test: TestFile, grid: Grid) -> Window:
+    """Return the maps' local fit."""
+    maps = test.maps
+    return Window(maps.window, grid.step, grid.subset, maps.degree, maps.weighting, test.correlation.shape)
+
+
 def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[tuple[Match, Widths | None]]:
     grid, source = setup.grid, setup.source
-    window = Window(
-        test.maps.window,
-        grid.step,
-        grid.subset,
-        test.maps.degree,
-        test.maps.weighting,
-        test.correlation.shape,
-    )
+    window = map_window(test, grid)
     attributes = {
         "tracking_key": key,
         "subset_px": grid.subset,

@@ -350,6 +350,13 @@ class Maps(Section):
         return self
 
 
+class Alignment(Section):
+    """How much bending is allowed, by itself or as a standard's usual limit."""
+
+    limit: Fraction | None = None
+    standard: Literal["ASTM D3039", "ASTM E606", "ASTM E1012", "ISO 23788"] | None = None
+
+
 class Sync(Section):
     """How the camera's clock is put on the machine's."""
 
@@ -439,6 +446,7 @@ class TestFile(Section):
     gauges: dict[GaugeName, NamedGauge] = Field(default_factory=dict, max_length=100)
     correlation: Correlation = Correlation()
     maps: Maps = Maps()
+    alignment: Alignment = Alignment()
     sync: Sync = Sync()
     properties: Properties = Properties()
     path: Path = Field(default=Path("test.toml"), exclude=True)

@@ -59,7 +59,7 @@ def test_alignment_and_scale_are_true(rendered):
     the width are what the edges' place is good to, and 0.1° the axis (`tests/pattern`)."""
     _, test, result = rendered
     truth = json.loads(test.with_name("truth.json").read_text())
-    assert result.alignment["bending_percent"] == pytest.approx(
+    assert result.alignment.figures()["bending_percent"] == pytest.approx(
         truth["alignment"]["bending_percent"], abs=0.1
     )
     assert result.scene.axis_angle_deg == pytest.approx(truth["alignment"]["axis_angle_deg"], abs=0.1)

@@ -11,6 +11,7 @@ from matplotlib.axes import Axes
 from matplotlib.colors import Colormap, ListedColormap
 from matplotlib.patches import Polygon, Rectangle
 from matplotlib.ticker import MaxNLocator
+from numpy.typing import NDArray
 
 from dic.measurement import Measurement, Scene
 from dic.report.figures import WIDTH, Drawing, legend_above, sheet, strain_unit
@@ -187,7 +188,7 @@ def _panel(axes: Axes, field: xr.Dataset, component: str, tall: bool, noise: flo
     picture = axes.imshow(
         strain * scale,
         extent=_extent(field),
-        cmap=_about_zero() if component == "shear" else "cividis",
+        cmap=zero_colours() if component == "shear" else "cividis",
         vmin=(low - margin) * scale,
         vmax=(high + margin) * scale,
         interpolation="nearest",
@@ -217,7 +218,7 @@ def _sized(strain: float) -> str:
 
 
 @cache
-def _about_zero() -> Colormap:
+def zero_colours() -> Colormap:
     """Return a colour map from blue over near-white to brown, even on both sides of the middle.
 
     Straight lines in CIELAB make equal steps of value equal steps to the eye, and the two ends differ
@@ -236,9 +237,14 @@ def _about_zero() -> Colormap:
 
 
 def _extent(field: xr.Dataset) -> tuple[float, float, float, float]:
-    """Return left, right, bottom and top of the map, px: half a step beyond the outer subset centres."""
-    x, y = field["x"].values, field["y"].values
-    half = 0.5 * float(field.attrs["step_px"])
+    return extent_of(field["x"].values, field["y"].values, float(field.attrs["step_px"]))
+
+
+def extent_of(
+    x: NDArray[np.float64], y: NDArray[np.float64], step_px: float
+) -> tuple[float, float, float, float]:
+    """Return left, right, bottom and top of a map, px: half a step beyond the outer subset centres."""
+    half = 0.5 * step_px
     return float(x.min()) - half, float(x.max()) + half, float(y.max()) + half, float(y.min()) - half
 
 

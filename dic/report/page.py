@@ -16,6 +16,7 @@ from dic.comparison import ClipOn
 from dic.measurement import Measurement, Scene
 from dic.properties.result import Property
 from dic.report import words
+from dic.report.alignment import draw_alignment, sentences, verdict
 from dic.report.clip_on import agreement_rows, class_rows, draw_clip_on
 from dic.report.clocks import draw_clocks
 from dic.report.curves import draw_curves
@@ -73,6 +74,7 @@ def write_report(measurement: Measurement, fields: xr.Dataset, folder: Path) -> 
             "curves": draw_curves(measurement, moments),
             "maps": draw_maps(measurement, fields, moments),
             "scene": [draw_scene(measurement)],
+            "alignment": draw_alignment(measurement),
             "clocks": draw_clocks(measurement),
             "clip_on": draw_clip_on(measurement),
             "gauges": draw_gauges(measurement),
@@ -100,6 +102,8 @@ def _remove_stale(folder: Path, names: set[str]) -> None:
     sometimes = {
         "elastic-part",
         "modulus-residuals",
+        "alignment-stations",
+        "alignment-contrast",
         "clip-on-curves",
         "clip-on-difference",
         "named-gauges",
@@ -139,9 +143,9 @@ def _page(measurement: Measurement, pictures: dict[str, list[Picture]]) -> str:
         columns=measurement.record.columns,
         clip_on=_clip_on(measurement.clip_on),
         gauges=gauge_rows(measurement),
-        alignment=words.labelled(
-            {"axis_angle_deg": measurement.scene.axis_angle_deg, **measurement.alignment}
-        ),
+        alignment=words.labelled(_aligned(measurement)),
+        straight=verdict(measurement),
+        looked_at=sentences(measurement),
         quality=words.labelled({"noise_grey": measurement.scene.noise_grey, **measurement.quality}),
         settings=words.flat(test.model_dump(mode="json", exclude_none=True)) + _worked_out(measurement.scene),
         provenance=words.grouped(
@@ -166,6 +170,14 @@ def _clip_on(found: ClipOn | None) -> dict[str, Any] | None:
         "until": until,
         "notes": found.notes,
     }
+
+
+def _aligned(measurement: Measurement) -> dict[str, Any]:
+    """Return the figures on alignment that are shown as a table; the stations have their figure."""
+    found = measurement.alignment.figures()
+    shown = {name: value for name, value in found.items() if isinstance(value, float) and name[:2] != "u_"}
+    shown.pop("bending_strain_per_N")
+    return {"axis_angle_deg": measurement.scene.axis_angle_deg, **shown}
 
 
 def _worked_out(scene: Scene) -> list[tuple[str, str]]:

@@ -35,15 +35,45 @@ MEANINGS = {
         "Angle from the picture's vertical, clockwise; strains are turned into this direction first.",
     ),
     "bending_percent": (
-        "Bending in the picture's plane",
-        "How much more the gauge's edge stretches than its middle, in the modulus window; much of it "
-        "means that the grips load it crookedly. Bending through the thickness cannot be seen by one camera.",
+        "Bending at the gauge's middle",
+        "How much more the gauge's edge is strained than its mean, in the picture's plane. Bending through "
+        "the thickness cannot be seen by one camera.",
+    ),
+    "bending_largest_percent": (
+        "Largest bending in the gauge",
+        "At one of its ends; the limit is for it.",
+    ),
+    "bending_change_percent": (
+        "Bending, end less middle",
+        "Near zero for bending of one sign all along; as large as the largest where it changes sign.",
+    ),
+    "bending_lower_half_percent": ("Bending in the lower half of the elastic part", "Positive to one side."),
+    "bending_upper_half_percent": (
+        "Bending in the upper half of it",
+        "As large as in the lower half where bending grows in proportion to the force.",
+    ),
+    "uniformity_percent": (
+        "Axial strain, end less middle",
+        "How uneven the strain is along its length; a taper or a nearby shoulder shows here.",
     ),
     "shear_percent": (
         "Shear per axial strain",
-        "In the modulus window; it should be small where the axis was found well and the material has no "
-        "preferred direction.",
+        "Should be small where the axis was found well and the material has no preferred direction.",
     ),
+    "motion_angle_deg": (
+        "Motion against the axis",
+        "Direction in which the gauge moves, clockwise from its axis; near zero for a coupon clamped square.",
+    ),
+    "turning_deg_per_percent": (
+        "Rotation of the middle, ° per 1 % of strain",
+        "Clockwise positive; a coupon that is loaded straight does not turn.",
+    ),
+    "turning_near_end_deg_per_percent": (
+        "Rotation of the lower (or left) end, ° per 1 % of strain",
+        "Opposite to the other end for a C, the same as the other for an S.",
+    ),
+    "turning_far_end_deg_per_percent": ("Rotation of the upper (or right) end, ° per 1 % of strain", ""),
+    "limit_percent": ("Limit", "Largest bending that the test file or its standard allows."),
     "valid_fraction": (
         "Subsets measured",
         "Share of the gauge's subsets that were recognised again, median over the frames; it should stay "

@@ -7,7 +7,7 @@ looks like a result.
 from __future__ import annotations
 
 import os
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from pathlib import Path
 from types import TracebackType
 from typing import Any
@@ -23,6 +23,7 @@ from dic.errors import StoreError
 from dic.strain.maps import MEANING as MAP_MEANING
 from dic.strain.maps import MapFlag, StrainMap
 from dic.strain.measures import GRADIENT
+from dic.strain.rates import Moved
 
 NAME = "fields.nc"
 #: Frames that are written together.
@@ -227,3 +228,11 @@ def stored_matches(folder: Path, grid: Grid) -> Iterator[Match]:
                 noise_grey=float(noise),
                 links=int(links),
             )
+
+
+def stored_motion(folder: Path, frames: Iterable[int]) -> Iterator[Moved]:
+    """Yield displacements, their uncertainties and the axial strain map of some frames, one at a time."""
+    names = ("u", "v", "sigma_u", "sigma_v", "strain_axial")
+    with h5netcdf.File(folder / NAME, "r") as file:
+        for frame in frames:
+            yield Moved(*(file[name][frame].astype(float) for name in names))

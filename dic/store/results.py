@@ -81,7 +81,7 @@ def results_of(measurement: Measurement) -> dict[str, Any]:
         "alignment": {
             "axis_angle_deg": scene.axis_angle_deg,
             "axis_method": scene.axis_method,
-            **measurement.alignment,
+            **measurement.alignment.figures(),
         },
         "quality": measurement.quality,
         **({"gauges": _gauges(measurement)} if measurement.gauges else {}),

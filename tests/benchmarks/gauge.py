@@ -10,7 +10,7 @@ from scenes import SIGMA, Settings, clean, grid_on, noisy, reference_of, start_a
 from scipy.stats import linregress
 from table import Bench
 
-from dic.correlation import Grid, Prefilter, Reference
+from dic.correlation import Grid, Match, Prefilter, Reference
 from dic.correlation.matching import match_frame, residual_gain
 from dic.correlation.moments import gram
 from dic.correlation.noise import probe_noise
@@ -48,11 +48,14 @@ class Instrument:
         self.prefilter = Prefilter(SHAPE, BEST.kind, BEST.smoothing)
         self.probe, self.gain = probe_noise(self.reference), residual_gain(self.reference)
 
-    def read(self, picture: NDArray[Any], motion: Any) -> Reading:
+    def match(self, picture: NDArray[Any], motion: Any) -> Match:
         spline = self.prefilter(picture)
         match = match_frame(self.reference, spline, start_at(self.reference, motion))
         felt = self.probe.felt(self.reference, spline, match.parameters, self.gain)
-        return self.reader.read(match.with_noise(felt))
+        return match.with_noise(felt)
+
+    def read(self, picture: NDArray[Any], motion: Any) -> Reading:
+        return self.reader.read(self.match(picture, motion))
 
 
 def motion_at(strain: float, phase: float = 0.0) -> Any:

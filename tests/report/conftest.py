@@ -11,8 +11,11 @@ from scipy.optimize import brentq
 from dic.errors import Notice
 from dic.measurement import Measurement, Scene
 from dic.properties.result import Curve, ModulusLine, Property
+from dic.strain.alignment import Alignment, Estimate
+from dic.strain.causes import Causes
 from dic.strain.history import GaugeHistory
 from dic.strain.periodic import Periodic
+from dic.strain.rates import Stations
 from dic.sync.record import Clock, LoadRecord
 from dic.testfile import TestFile
 
@@ -118,6 +121,33 @@ def make_scene():
     )
 
 
+def make_alignment():
+    """An S of 4 % at the gauge's ends, moving at 1° to the axis."""
+    places, across = np.linspace(-300.0, 300.0, 5), np.linspace(-80.0, 80.0, 7)
+    bending, u = 0.04 * places / 300, np.full(5, 0.004)
+    sides = np.outer(np.linspace(0.04, -0.04, 50), np.linspace(-1, 1, 11))
+    return Alignment(
+        frames=7,
+        bending=Estimate(0.002, 0.003),
+        bending_change=Estimate(0.04, 0.003),
+        largest=Estimate(0.042, 0.004),
+        bending_low=Estimate(0.002, 0.004),
+        bending_high=Estimate(0.003, 0.004),
+        motion_deg=Estimate(1.0, 0.1),
+        causes=Causes(("tilt",), (), False, 0.8),
+        limit=0.05,
+        limit_source="ASTM E606",
+        stations=Stations(
+            places, np.ones(5), u, bending, u, across,
+            1 + np.outer(bending, across / 90), np.full((5, 7), 0.01),
+        ),
+        sides=sides,
+        ends=sides[:, ::-1],
+        columns=np.arange(80.0, 241.0, STEP),
+        rows=np.arange(160.0, 941.0, STEP),
+    )  # fmt: skip
+
+
 def make_test(label):
     return TestFile.model_validate(
         {
@@ -142,7 +172,7 @@ def measurement():
         curve=curve,
         line=ModulusLine(slope=E, intercept=0.0, low=0.0004, high=0.0016),
         properties=make_properties(curve),
-        alignment={"bending_percent": 3.2, "shear_percent": np.nan},
+        alignment=make_alignment(),
         quality={"speckle_px": 4.6, "saturated_fraction": 0.0, "subsets": 541.0, "valid_fraction": 0.998},
         notices=(
             Notice("frames_lost", "1 of 70 frames was not measured; look at it in history.csv."),

@@ -69,7 +69,7 @@ def test_long_histories_are_thinned_for_drawing_only():
 
 def test_colours_about_zero_are_even_to_the_eye():
     # CIE 1976 L*a*b* distance between neighbours (CIE 015): even on each side, darkest at both ends alike.
-    lab = rgb2lab(maps._about_zero().colors[np.newaxis])[0]
+    lab = rgb2lab(maps.zero_colours().colors[np.newaxis])[0]
     steps = np.linalg.norm(np.diff(lab, axis=0), axis=1)
     for side in (steps[:127], steps[128:]):
         # The way back from colour to CIELAB rounds in the fourth digit; a clipped colour would show at once.
@@ -124,7 +124,7 @@ def test_figures_in_words():
     shown = ["3.21 %", "0.5 px", "99.8 %", "4 µm/m", "0.00°", "not determined", "left"]
     assert [row[1] for row in rows] == shown
     assert rows[1][0] == "Edge shift"
-    assert "crooked" in rows[0][2]
+    assert "one camera" in rows[0][2]
 
 
 def test_settings_become_rows():
