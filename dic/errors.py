@@ -82,6 +82,10 @@ class Notice:
     code: str
     text: str
 
+    def __post_init__(self) -> None:
+        # it may quote a stranger's headers
+        object.__setattr__(self, "text", printable(self.text))
+
 
 def nearest(word: str, known: Iterable[str]) -> str:
     """Say which known word comes nearest, or list them all.

@@ -1,10 +1,12 @@
 """Truth images shared by the tests: a texture given by a formula, moved, and photographed."""
 
+import shutil
+
 import numpy as np
 import pytest
 
 from dic.correlation import Settings, lay_grid, match_frame, prepare_reference, spline_image
-from synthetic_images import Camera, Cosines, Dots, rigid
+from synthetic_images import Camera, Cosines, Dots, load_scenario, render, rigid
 
 SHAPE = (190, 260)  # lopsided on purpose
 
@@ -61,6 +63,27 @@ def matched():
 def small_scenario():
     """Return a scenario, as text, of a small elastic test that runs in a second or two."""
     return SMALL
+
+
+@pytest.fixture(scope="session")
+def small_test(tmp_path_factory):
+    """Render that test once, and return its test file; not to be changed, see `copy`."""
+    folder = tmp_path_factory.mktemp("small")
+    (folder / "small.toml").write_text(SMALL)
+    return render(load_scenario(folder / "small.toml"), folder / "test")
+
+
+@pytest.fixture
+def copy(small_test, tmp_path):
+    """Return the test file of a copy that a test may change."""
+    shutil.copytree(small_test.parent, tmp_path / "test")
+    return tmp_path / "test" / "test.toml"
+
+
+@pytest.fixture
+def without_report(monkeypatch):
+    """Leave the report out, half of a small run's time, where a test looks at the numbers only."""
+    monkeypatch.setattr("dic.pipeline.write_report", lambda *_: None)
 
 
 SMALL = """

@@ -14,7 +14,6 @@ from dic.store.folder import claim_folder
 from dic.store.results import write_whole
 from dic.sync import read_load_record
 from dic.testfile import load
-from synthetic_images import load_scenario, render
 
 TEST = """
 [specimen]
@@ -80,16 +79,15 @@ def outside(tmp_path_factory):
     return folder
 
 
-def test_a_run_writes_only_into_its_folder(tmp_path, small_scenario):
-    (tmp_path / "small.toml").write_text(small_scenario)
-    path = render(load_scenario(tmp_path / "small.toml"), tmp_path / "made" / "test")
+def test_a_run_writes_only_into_its_folder(copy, tmp_path):
+    path = copy
     path.write_text(path.read_text().replace('label = "small"', 'label = "../../../escaped"'))
     before = {found: found.stat().st_mtime_ns for found in tmp_path.rglob("*") if found.is_file()}
-    measure(path, tmp_path / "made" / "out")
+    measure(path, tmp_path / "out")
     after = {
         found: found.stat().st_mtime_ns
         for found in tmp_path.rglob("*")
-        if found.is_file() and tmp_path / "made" / "out" not in found.parents
+        if found.is_file() and tmp_path / "out" not in found.parents
     }
     assert after == before
 

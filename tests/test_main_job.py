@@ -1,7 +1,6 @@
 """The main job end to end on virtual tests, and each kind of wrong input."""
 
 import json
-import shutil
 
 import numpy as np
 import pytest
@@ -89,20 +88,6 @@ def test_everything_promised_lies_in_the_folder(rendered):
     assert "Young's modulus" in str(result)
 
 
-@pytest.fixture(scope="module")
-def small(tmp_path_factory, small_scenario):
-    folder = tmp_path_factory.mktemp("small")
-    scenario = folder / "small.toml"
-    scenario.write_text(small_scenario)
-    return render(load_scenario(scenario), folder / "test")
-
-
-@pytest.fixture
-def copy(small, tmp_path):
-    shutil.copytree(small.parent, tmp_path / "test")
-    return tmp_path / "test" / "test.toml"
-
-
 def edited(path, old, new):
     text = path.read_text()
     assert old in text
@@ -123,6 +108,7 @@ def tracked_again(*_):
     raise TrackedAgainError
 
 
+@pytest.mark.usefixtures("without_report")
 def test_a_second_run_with_other_dimensions_does_not_track_again(copy, monkeypatch):
     first = dic.measure(copy)
     edited(copy, 'thickness = "2 mm"', 'thickness = "4 mm"')
@@ -138,6 +124,7 @@ def brighter(k, image):
     return image + (k == 5)  # one frame only; no grey value is near the top
 
 
+@pytest.mark.usefixtures("without_report")
 @pytest.mark.parametrize(
     "change",
     [
@@ -154,6 +141,7 @@ def test_changed_frames_or_settings_are_tracked_again(copy, monkeypatch, change)
         dic.measure(copy)
 
 
+@pytest.mark.usefixtures("without_report")
 def test_an_even_subset_is_said(copy):
     append(copy, "[correlation]\nsubset = 24")
     found = dic.measure(copy)
@@ -162,11 +150,13 @@ def test_an_even_subset_is_said(copy):
     assert "24 was taken as 25" in said
 
 
+@pytest.mark.usefixtures("without_report")
 def test_the_same_input_gives_the_same_results(copy, tmp_path):
     one, other = dic.measure(copy, tmp_path / "a"), dic.measure(copy, tmp_path / "b")
     assert (one.folder / "history.csv").read_bytes() == (other.folder / "history.csv").read_bytes()
 
 
+@pytest.mark.usefixtures("without_report")
 def test_a_given_offset_is_used_as_it_is(copy):
     with copy.open("a") as file:
         file.write('\n[sync]\noffset = "1.5 s"\n')
@@ -270,6 +260,7 @@ def test_a_load_record_with_a_results_name_survives(copy):
     assert record.read_bytes() == before
 
 
+@pytest.mark.usefixtures("without_report")
 def test_damaged_frames_are_missing_and_the_rest_is_measured(copy, monkeypatch):
     """One cut short, which only reading shows, one empty and one of another size: against the undamaged
     test, the readings of all other frames stay within the noise of a reference of fewer frames."""
@@ -297,6 +288,7 @@ def test_damaged_frames_are_missing_and_the_rest_is_measured(copy, monkeypatch):
     assert again.history.status == history.status
 
 
+@pytest.mark.usefixtures("without_report")
 def test_a_film_without_loss_gives_what_its_frames_give(copy):
     """The very same grey values on the same clock, so the very same readings; the film brings its times."""
     import av

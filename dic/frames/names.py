@@ -178,15 +178,31 @@ _DATE_TIME = re.compile(
 )
 
 
+_COUNTED = re.compile(r"(?<![\d.,])\d{1,12}(?:[.,]\d{1,9})?(?=(?P<unit>ms|us|µs|ns|s)(?![A-Za-z]))")
+_WRITTEN_UNITS = {"s": "seconds", "ms": "milliseconds", "us": "microseconds", "µs": "microseconds",
+                  "ns": "nanoseconds"}  # fmt: skip
+
+
 def suggested_pattern(names: Sequence[str]) -> str | None:
-    """Return a pattern for date and time that all names fit, each later than the one before, or None."""
+    """Return a pattern for date and time, or for a counted time with its unit, or None.
+
+    All names fit it, each later than the one before.
+    """
     stem = Path(names[0]).stem
+    counted = _COUNTED.search(stem)
+    if counted is not None:
+        before, after = stem[: counted.start()], stem[counted.end() :]
+        return _first_that_fits(names, before, f"{{{_WRITTEN_UNITS[counted['unit']]}}}", after)
     found = _DATE_TIME.search(stem)
     if found is None:
         return None
     day, between, hour, minute, below, digits = (part or "" for part in found.groups())
     middle = f"%Y{day}%m{day}%d{between}%H{hour}%M{minute}%S{below}{'%f' if digits else ''}"
-    before, after = stem[: found.start()], stem[found.end() :]
+    return _first_that_fits(names, stem[: found.start()], middle, stem[found.end() :])
+
+
+def _first_that_fits(names: Sequence[str], before: str, middle: str, after: str) -> str | None:
+    """Return a pattern around the time that all names fit, or None."""
     for counter in (before, after):
         if "%" in counter or "{" in counter:
             return None

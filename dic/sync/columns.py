@@ -27,9 +27,9 @@ KINDS: dict[str, tuple[str, ...]] = {
 _WORDS = {
     "time": "time zeit temps tiempo tempo tijd tid t elapsed prufzeit testzeit laufzeit messzeit "
     "uhrzeit timestamp zeitstempel hora heure ora czas",
-    "force": "force load kraft last prufkraft standardkraft messkraft zugkraft axialkraft fuerza "
+    "force": "force load kraft last prufkraft messkraft zugkraft axialkraft fuerza "
     "carga carico forza effort charge kracht f sila loadcell",
-    "displacement": "displacement crosshead traverse traversenweg weg prufweg standardweg stroke hub "
+    "displacement": "displacement crosshead traverse traversenweg weg prufweg stroke hub "
     "position extension deplacement course desplazamiento spostamento corsa traversa "
     "actuator elongation",
     "extensometer": "extensometer strain dehnung extensometre extensometro extenso clip deformation "

@@ -93,7 +93,10 @@ def find_separator(lines: Sequence[tuple[int, str]]) -> str:
             break
     best, most = ",", 0.0
     for separator in SEPARATORS:
-        rows = [split(line, separator) for line in looked_at if not is_comment(line, separator)]
+        told = [line for line in looked_at if not is_comment(line, separator)]
+        if separator == " ":  # between date and time of day it separates no columns
+            told = [line for line in told if not is_value(line.strip())]
+        rows = [split(line, separator) for line in told]
         rows = [row for row in rows if len(row) > 1]
         if not rows:
             continue

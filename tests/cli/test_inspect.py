@@ -6,8 +6,6 @@ import sys
 
 import pytest
 
-from synthetic_images import load_scenario, render
-
 
 def inspected(*arguments, cwd):
     return subprocess.run(
@@ -19,12 +17,9 @@ def inspected(*arguments, cwd):
     )
 
 
-@pytest.fixture(scope="module")
-def virtual_test(tmp_path_factory, small_scenario):
-    folder = tmp_path_factory.mktemp("inspected")
-    (folder / "small.toml").write_text(small_scenario)
-    render(load_scenario(folder / "small.toml"), folder / "made")
-    return folder / "made"
+@pytest.fixture
+def virtual_test(copy):
+    return copy.parent
 
 
 def test_a_sound_test(virtual_test):

@@ -15,7 +15,6 @@ from dic.errors import InputError, StoreError, TestFileError
 from dic.inspection import inspect
 from dic.pipeline import measure
 from dic.testfile import load
-from synthetic_images import load_scenario, render
 
 
 def lay_out(folder, record, *, encoding="utf-8", stamped=False):
@@ -36,21 +35,20 @@ def rows(line="{t},{f}", count=40):
 
 PLAIN = f"Time (s),Force (N)\n{rows()}\n"
 HEADING = "Prüfprotokoll;Nr. 7\nPrüfer;A. B.\n\n"
-GERMAN = f"{HEADING}Prüfzeit;Standardkraft\ns;N\n" + rows("{t};{f}").replace(".", ",")
+GERMAN = f"{HEADING}Prüfzeit;Kraft\ns;N\n" + rows("{t};{f}").replace(".", ",")
 
 
-def test_from_two_folders_to_a_report(tmp_path, small_scenario):
+def test_from_two_folders_to_a_report(small_test, tmp_path):
     """A German export: heading lines, a units row, semicolons and decimal commas, Latin-1."""
-    (tmp_path / "small.toml").write_text(small_scenario)
-    render(load_scenario(tmp_path / "small.toml"), tmp_path / "made")
-    table = np.loadtxt(tmp_path / "made" / "machine.csv", delimiter=",", skiprows=1)
+    made = small_test.parent
+    table = np.loadtxt(made / "machine.csv", delimiter=",", skiprows=1)
     lines = [f"{t:.4f};{travel:.5f};{1000 * kilo:.2f}".replace(".", ",") for t, travel, kilo in table]
     (tmp_path / "lab").mkdir()
     (tmp_path / "lab" / "Prüfung.csv").write_text(
-        f"{HEADING}Prüfzeit;Traversenweg;Standardkraft\ns;mm;N\n" + "\n".join(lines), "latin-1"
+        f"{HEADING}Prüfzeit;Weg;Kraft\ns;mm;N\n" + "\n".join(lines), "latin-1"
     )
     path = tmp_path / "test.toml"
-    blanks = write_draft(tmp_path / "made" / "frames", tmp_path / "lab" / "Prüfung.csv", path)
+    blanks = write_draft(made / "frames", tmp_path / "lab" / "Prüfung.csv", path)
     assert blanks == ["specimen.width", "specimen.thickness", "frames.rate"]
     with pytest.raises(TestFileError, match=r"fill in specimen.width, specimen.thickness and frames.rate"):
         measure(path)
@@ -80,7 +78,7 @@ def test_what_was_found_is_written(tmp_path):
     content = tomllib.loads(text)
     assert content["frames"] == {"source": "frames", "rate": ""}
     assert content["load_record"] == {
-        "source": "machine.csv", "time": "Prüfzeit", "force": "Standardkraft"
+        "source": "machine.csv", "time": "Prüfzeit", "force": "Kraft"
     }  # fmt: skip
     assert "semicolon" in text
     assert "decimal comma" in text

@@ -297,6 +297,16 @@ def test_a_times_file_with_dates_gives_the_epoch_and_the_order(folder):
     assert "frames_reordered" in codes(source)
 
 
+def test_a_times_file_may_hold_nothing_but_dates(folder):
+    """The blank between date and time of day separates no columns."""
+    for k in range(3):
+        tifffile.imwrite(folder / "frames" / f"f{k}.tif", grey())
+    (folder / "t.csv").write_text("time\n" + "".join(f"2026-05-04 10:00:0{k}.125\n" for k in range(3)))
+    source = opened(folder, times="t.csv")
+    np.testing.assert_allclose(source.time_s, [0, 1, 2])
+    assert source.epoch == datetime(2026, 5, 4, 10, 0, 0, 125_000)
+
+
 @pytest.mark.parametrize(
     ("keys", "said"),
     [
@@ -329,6 +339,9 @@ def test_exposure_as_given_goes_before_the_files(folder):
         (["1 20260504101112.5 x", "2 20260504101112.7 x"], "{number} %Y%m%d%H%M%S.%f x"),
         (["20260504_101112_7", "20260504_101113_8"], "%Y%m%d_%H%M%S_%f"),
         (["cam_1", "cam_2"], None),
+        (["img_200ms", "img_1000ms"], "img_{milliseconds}ms"),
+        (["3 at 0.5s", "4 at 1,25s"], "{number} at {seconds}s"),
+        (["img_200ms", "img_100ms"], None),
         (["a_20260504_101113", "a_20260504_101112"], None),
     ],
 )

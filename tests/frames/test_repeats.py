@@ -39,10 +39,10 @@ def test_one_pixel_makes_another_picture():
     assert not any(watch.frozen(frame) for frame in (first, second, almost, second))
 
 
-def test_frozen_frames_have_no_reading_and_the_rest_is_measured(tmp_path, small_scenario):
+@pytest.mark.usefixtures("without_report")
+def test_frozen_frames_have_no_reading_and_the_rest_is_measured(copy, tmp_path):
     """Four standard uncertainties: the reference is that of the whole test, so only noise differs."""
-    (tmp_path / "small.toml").write_text(small_scenario)
-    test = render(load_scenario(tmp_path / "small.toml"), tmp_path / "test")
+    test = copy
     whole = dic.measure(test, tmp_path / "whole").history
     frames = sorted((test.parent / "frames").iterdir())
     for k in (13, 14, 18):
@@ -62,19 +62,18 @@ def test_frozen_frames_have_no_reading_and_the_rest_is_measured(tmp_path, small_
     assert again.notices == first.notices
 
 
-def test_a_frozen_frame_at_rest_ends_the_reference(tmp_path, small_scenario):
-    (tmp_path / "small.toml").write_text(small_scenario)
-    test = render(load_scenario(tmp_path / "small.toml"), tmp_path / "test")
-    frames = sorted((test.parent / "frames").iterdir())
+@pytest.mark.usefixtures("without_report")
+def test_a_frozen_frame_at_rest_ends_the_reference(copy, tmp_path):
+    frames = sorted((copy.parent / "frames").iterdir())
     assert not np.array_equal(tifffile.imread(frames[0]), tifffile.imread(frames[1]))
     frames[3].write_bytes(frames[2].read_bytes())
-    result = dic.measure(test, tmp_path / "results")
+    result = dic.measure(copy, tmp_path / "results")
     assert result.quality["reference_frames"] == 3
     assert result.history.status[3] == "repeated picture"
 
 
-@pytest.mark.parametrize("noise", ["0 %"])
-def test_a_drawn_test_without_noise_is_measured_everywhere(tmp_path, small_scenario, noise):
-    (tmp_path / "small.toml").write_text(small_scenario.replace('noise = "1 %"', f'noise = "{noise}"'))
+@pytest.mark.usefixtures("without_report")
+def test_a_drawn_test_without_noise_is_measured_everywhere(tmp_path, small_scenario):
+    (tmp_path / "small.toml").write_text(small_scenario.replace('noise = "1 %"', 'noise = "0 %"'))
     test = render(load_scenario(tmp_path / "small.toml"), tmp_path / "test")
     assert set(dic.measure(test, tmp_path / "results").history.status) == {"ok"}
