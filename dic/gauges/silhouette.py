@@ -38,8 +38,10 @@ PITCH_PX = 0.5
 #: Pixels whose noise enters one ray's place: those of the zone, and those of the two levels; rays one px
 #: apart share none.
 NOISE_PX = 2 * ZONE_PX - FADE_PX / 3 + 2 * ZONE_PX**2 / LEVEL_PX
+#: A zone shrinks to this share at the least: the lens' blur must fit in.
+LEAST_SCALE = 0.5
 #: Sides are told apart only where their grey differs by this many times the noise.
-LEAST_STEP = 10.0
+LEAST_STEP = 3.0
 
 
 @dataclass(frozen=True)
@@ -146,10 +148,12 @@ class Silhouette:
         direction /= np.linalg.norm(direction)
         # Across the coupon as it stands now, so that its turning is no widening.
         across = np.array([-direction[1], direction[0]])
+        # Zones shrink with the coupon, so that they keep the same pattern.
+        scale = max(float(across @ deformation @ self._transverse), LEAST_SCALE)
         laid = []
         for number, (edge, sign) in enumerate(zip(self._edges, (-1.0, 1.0), strict=True)):
             there = self._centre + motion[:, 0] + (edge - self._centre) @ deformation.T
-            rough = _Side.along(grey, there, sign, across, SEARCH_PX)
+            rough = _Side.along(grey, there, (sign, scale), across, SEARCH_PX)
             if self._rest is None:
                 shift = _line_through(self.along, rough.shift(np.isfinite(rough.zone)))
             else:
@@ -158,8 +162,8 @@ class Silhouette:
                 off = _line_through(self.along, rough.shift(seen) - rest.rough.shift(seen))
                 # Within half a pixel the zone keeps to the material, so that its pattern stays the same.
                 shift = rest.shift + np.sign(off) * np.maximum(np.abs(off) - KEPT_PX, 0.0)
-            line = there + sign * np.repeat(shift, BLOCK)[:, None] * across
-            laid.append(_Laid(rough, shift, _Side.along(grey, line, sign, across, ZONE_PX)))
+            line = there + sign * scale * np.repeat(shift, BLOCK)[:, None] * across
+            laid.append(_Laid(rough, shift, _Side.along(grey, line, (sign, scale), across, ZONE_PX)))
         return laid
 
 
@@ -168,7 +172,8 @@ class _Side:
     """What rays across one edge saw, block by block, shape (k,); NaN where out of view.
 
     `base` is where the edge is expected, across the coupon; `zone`, `inner` and `outer` are mean greys
-    around it, on the coupon and on the background; `sign` is +1 where outside is the right.
+    around it, on the coupon and on the background; `sign` is +1 where outside is the right, and `scale` how
+    long a px of the reference across the coupon is now.
     """
 
     base: Floats
@@ -177,13 +182,22 @@ class _Side:
     outer: Floats
     reach: float
     sign: float
+    scale: float
 
     @classmethod
-    def along(cls, grey: NDArray[np.float32], at: Floats, sign: float, across: Floats, reach: float) -> _Side:
+    def along(
+        cls,
+        grey: NDArray[np.float32],
+        at: Floats,
+        outwards: tuple[float, float],
+        across: Floats,
+        reach: float,
+    ) -> _Side:
+        sign, scale = outwards
         end = reach + FADE_PX / 2
         depth = np.arange(-end - LEVEL_PX + PITCH_PX / 2, end + LEVEL_PX, PITCH_PX)
-        x = at[:, :1] + sign * depth * across[0]
-        y = at[:, 1:] + sign * depth * across[1]
+        x = at[:, :1] + sign * scale * depth * across[0]
+        y = at[:, 1:] + sign * scale * depth * across[1]
         rays = ndimage.map_coordinates(grey, [y, x], order=1, mode="constant", cval=np.nan)
         profile = rays.reshape(-1, BLOCK, len(depth)).mean(axis=1).astype(float)
         profile[~np.isfinite(profile).all(axis=1)] = np.nan
@@ -191,7 +205,7 @@ class _Side:
         zone = profile @ weight / weight.sum()
         inner, outer = (profile[:, where].mean(axis=1) for where in (depth < -end, depth > end))
         base = (at @ across).reshape(-1, BLOCK).mean(axis=1)
-        return cls(base, zone, inner, outer, reach, sign)
+        return cls(base, zone, inner, outer, reach, sign, scale)
 
     def step(self, seen: NDArray[np.bool_]) -> tuple[float, float]:
         """Return the grey of the background, and by how much the coupon's differs."""
@@ -201,17 +215,17 @@ class _Side:
         return outside, float(self.inner[seen].mean()) - outside or float("nan")
 
     def shift(self, seen: NDArray[np.bool_]) -> Floats:
-        """Return how far outside its expected place each block of the edge stands, px."""
+        """Return how far outside its expected place each block stands, in px of the reference."""
         outside, step = self.step(seen)
         return 2 * self.reach * ((self.zone - outside) / step) - self.reach
 
     def placed(self, seen: NDArray[np.bool_]) -> Floats:
         """Return where each block of the edge stands across the coupon, px."""
-        return self.base + self.sign * self.shift(seen)
+        return self.base + self.sign * self.scale * self.shift(seen)
 
     def u_per_grey(self, seen: NDArray[np.bool_]) -> float:
         """Return the standard uncertainty of one block's place per grey level of noise, px."""
-        return sqrt(NOISE_PX / BLOCK) / abs(self.step(seen)[1])
+        return sqrt(NOISE_PX * self.scale / BLOCK) / abs(self.step(seen)[1])
 
 
 @dataclass(frozen=True)

@@ -11,7 +11,7 @@ from typing import Annotated
 import typer
 from table import Bench, show, write_json
 
-NAMES = ("accuracy", "alignment", "fuzz", "gauge", "hole", "memory", "pose", "resolution", "speed")
+NAMES = ("accuracy", "alignment", "fuzz", "gauge", "gauges", "hole", "memory", "pose", "resolution", "speed")
 
 
 def main(

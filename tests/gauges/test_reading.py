@@ -108,6 +108,15 @@ def test_part_of_a_band_is_enough_and_does_not_shift_the_reading(placed, subsets
     assert found.strain[0] == pytest.approx(stretch([0, 1], sheared), abs=1e-9)
 
 
+def test_an_area_that_loses_its_edge_keeps_its_reading(placed, subsets, moved_by):
+    """As where a coupon narrows and its outermost patches leave the material."""
+    places = subsets.places
+    edge = np.flatnonzero(places[:, 0] < 90)
+    assert np.isin(placed[3].probes[0].members, edge).sum() > 10
+    found = histories(placed, subsets, [moved_by(DEFORMATION, lost=edge)])["patch"]
+    assert found.strain[0] == pytest.approx(true_of("patch"), abs=1e-9)
+
+
 def test_columns_of_the_history(read):
     assert list(read["ext"].columns()) == ["ext", "u_ext", "status_ext"]
     assert list(read["wide"].columns()) == ["wide", "u_wide", "wide_1", "wide_2", "wide_3", "status_wide"]
