@@ -26,8 +26,11 @@ BLOCK = 16
 #: The edge is first looked for this far to either side of where the motion puts it, px ...
 SEARCH_PX = 10.0
 #: ... then weighed over this much to either side: what a lens blurs, and little noise.
-ZONE_PX = 2.5
-#: ... which follows the edge only where it leaves the material by more than this, px.
+ZONE_PX = 2.25
+#: The zone stays where the coupon's edge was found in the reference, unless the search says that it is off
+#: by more than this, px: a pattern draws a rough search aside ...
+FOUND_PX = 3.0
+#: ... and later stays with the material, so with its pattern, unless the edge leaves it by more than this.
 KEPT_PX = 0.5
 #: The zone's ends fade over this much, so that a speckle on them does not come and go with a pixel's place.
 FADE_PX = 2.0
@@ -154,14 +157,14 @@ class Silhouette:
         for number, (edge, sign) in enumerate(zip(self._edges, (-1.0, 1.0), strict=True)):
             there = self._centre + motion[:, 0] + (edge - self._centre) @ deformation.T
             rough = _Side.along(grey, there, (sign, scale), across, SEARCH_PX)
-            if self._rest is None:
-                shift = _line_through(self.along, rough.shift(np.isfinite(rough.zone)))
-            else:
+            seen, still, kept = np.isfinite(rough.zone), np.zeros(len(self.along)), FOUND_PX
+            expected = still
+            if self._rest is not None:
                 rest = self._rest[number]
-                seen = np.isfinite(rough.zone) & np.isfinite(rest.rough.zone)
-                off = _line_through(self.along, rough.shift(seen) - rest.rough.shift(seen))
-                # Within half a pixel the zone keeps to the material, so that its pattern stays the same.
-                shift = rest.shift + np.sign(off) * np.maximum(np.abs(off) - KEPT_PX, 0.0)
+                seen &= np.isfinite(rest.rough.zone)
+                expected, still, kept = rest.rough.shift(seen), rest.shift, KEPT_PX
+            off = _line_through(self.along, rough.shift(seen) - expected)
+            shift = still + np.sign(off) * np.maximum(np.abs(off) - kept, 0.0)
             line = there + sign * scale * np.repeat(shift, BLOCK)[:, None] * across
             laid.append(_Laid(rough, shift, _Side.along(grey, line, (sign, scale), across, ZONE_PX)))
         return laid
