@@ -41,7 +41,7 @@ POSES = [
     (tilt, margin, *((150, 260), (230, 180), (140, 420), (90, 300), (400, 300))[k % 5],
      (0.1, 0.95, 0.5)[k % 3], (0, 0.35)[k % 2], bool(k % 7 // 4))
     for k, (tilt, margin) in enumerate(
-        (tilt, margin) for margin in (10, 15, 25, 60) for tilt in (0.0, 3.0, -8.0, 6.0) for _ in range(2)
+        (tilt, margin) for margin in (10, 15, 25, 60) for tilt in (0.0, 3.0, -8.0, 6.0)
     )
 ]  # fmt: skip
 
