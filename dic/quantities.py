@@ -179,14 +179,14 @@ def split_header(header: str) -> tuple[str, str | None]:
     return found["name"], unit.strip() if unit else None
 
 
-#: How people like to read each internal unit.
-_MODULI = ("youngs_modulus", "shear_modulus", "bulk_modulus", "lame_constant")
-_DISPLAY = dict.fromkeys(_MODULI, ("GPa", 1e-3))
+#: Strains of the sheet, which people read in percent; all moduli they read in GPa.
+_PERCENT = ("yield_point_extension", "strain_at_maximum", "plastic_strain_at_maximum", "strain_at_break")
 
 
 def for_people(value: float, unit: str, name: str = "") -> tuple[float, str]:
-    """Return value and unit as a report shows them (moduli in GPa from 1 GPa up)."""
-    shown, by = _DISPLAY.get(name, (unit, 1.0))
-    if unit == "MPa" and shown == "GPa" and abs(value) >= 1.0 / by:
-        return value * by, shown
+    """Return value and unit as a report shows them (moduli in GPa from 1 GPa up, strains in percent)."""
+    if name in _PERCENT:
+        return 100 * value, "%"
+    if unit == "MPa" and ("_modulus" in name or name == "lame_constant") and abs(value) >= 1000:
+        return value / 1000, "GPa"
     return value, unit

@@ -400,6 +400,8 @@ class Properties(Section):
     proof: tuple[Strain, ...] = (0.002,)
     toe: Literal["auto"] | bool = "auto"
     preload: str | None = None
+    hardening: Literal["auto"] | tuple[Strain, Strain] = "auto"
+    true_stress: Literal["constant volume", "transverse strain"] = "constant volume"
 
     @model_validator(mode="before")
     @classmethod
@@ -408,8 +410,10 @@ class Properties(Section):
         return PRESETS[chosen][1] | given if isinstance(chosen, str) and chosen in PRESETS else given
 
     @model_validator(mode="after")
-    def _preload_is_force_or_stress(self) -> Properties:
+    def _windows_and_preload_can_be_meant(self) -> Properties:
         self.preload_stress(1.0)
+        if self.hardening != "auto" and not 0 < self.hardening[0] < self.hardening[1]:
+            raise ValueError("hardening needs two strains above zero, low before high")
         return self
 
     def preload_stress(self, area_mm2: float) -> float | None:

@@ -5,5 +5,16 @@ from dic.properties.doubts import doubts
 from dic.properties.evaluation import evaluate
 from dic.properties.peak import peak_force
 from dic.properties.result import Curve, Evaluation, ModulusLine, Property
+from dic.properties.stress_map import elastic_stress
 
-__all__ = ["Curve", "Evaluation", "ModulusLine", "Property", "doubts", "evaluate", "make_curve", "peak_force"]
+__all__ = [
+    "Curve",
+    "Evaluation",
+    "ModulusLine",
+    "Property",
+    "doubts",
+    "elastic_stress",
+    "evaluate",
+    "make_curve",
+    "peak_force",
+]

@@ -2,10 +2,14 @@
 
 from __future__ import annotations
 
+from dic.properties.course import energy_entries, rate_entries
+from dic.properties.cycles import cycle_entries
 from dic.properties.elastic import elastic_entries
+from dic.properties.hardening import hardening_entries
 from dic.properties.result import Curve, Evaluation
 from dic.properties.sheet import Sheet
 from dic.properties.strength import proof_entries, strength_entries
+from dic.properties.yielding import yielding_entries
 from dic.sync.record import Clock
 from dic.testfile import Properties, Specimen
 
@@ -41,7 +45,16 @@ def evaluate(
     half the change that a shift by plus and minus one standard uncertainty makes.
     """
     sheet = Sheet(curve, specimen, force_uncertainty, clock, section)
-    entries = [*elastic_entries(sheet), *proof_entries(sheet), *strength_entries(sheet)]
+    entries = [
+        *elastic_entries(sheet),
+        *proof_entries(sheet),
+        *yielding_entries(sheet),
+        *strength_entries(sheet),
+        *hardening_entries(sheet),
+        *energy_entries(sheet),
+        *rate_entries(sheet),
+        *cycle_entries(sheet),
+    ]
     return Evaluation(
         {entry.name: entry.property() for entry in entries}, sheet.modulus_line(), sheet.notices()
     )

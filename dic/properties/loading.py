@@ -74,10 +74,7 @@ def loading_of(curve: Curve, *, whole: bool = False) -> Loading:
     use = np.isfinite(curve.stress_MPa) & np.isfinite(curve.axial)
     if not whole:
         use &= curve.time_s <= curve.peak_time_s
-    if not curve.area_mm2 > 0:
-        raise Undetermined(
-            f"the section of {curve.area_mm2:g} mm² is none; correct the specimen's dimensions"
-        )
+    require_section(curve)
     back = np.flatnonzero(~(np.diff(curve.time_s) > 0))
     if back.size:
         raise Undetermined(
@@ -95,6 +92,14 @@ def loading_of(curve: Curve, *, whole: bool = False) -> Loading:
         u_strain=np.nan_to_num(curve.u_axial[use]),
         u_transverse=np.nan_to_num(curve.u_transverse[use]),
     )
+
+
+def require_section(curve: Curve) -> None:
+    """Raise unless the coupon has a section."""
+    if not curve.area_mm2 > 0:
+        raise Undetermined(
+            f"the section of {curve.area_mm2:g} mm² is none; correct the specimen's dimensions"
+        )
 
 
 def passage(values: Floats, low: float, high: float) -> slice:

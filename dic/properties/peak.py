@@ -88,7 +88,9 @@ def peak_force(record: LoadRecord) -> Peak:
     return Peak(sign * value, u, between, when, last == len(force) - 1, u_time)
 
 
-def highest_around(time: Floats, force: Floats, noise: Floats, top: int, level: float) -> tuple[Top, int]:
+def highest_around(
+    time: Floats, force: Floats, noise: Floats, top: int, level: float, *, falls: bool = False
+) -> tuple[Top, int]:
     """Find the highest point of a maximum, and the last sample that belongs to it.
 
     Parameters
@@ -99,11 +101,13 @@ def highest_around(time: Floats, force: Floats, noise: Floats, top: int, level: 
         A sample near the maximum.
     level
         About the maximum's height.
+    falls
+        Whether the force falls from this sample on, so that those after it say nothing about its height.
     """
     floor = level - max(TOP * level, 6 * float(noise[top]))
     below = np.flatnonzero(force < floor)
     first = int(below[below < top].max(initial=-1)) + 1
-    last = int(below[below > top].min(initial=len(force))) - 1
+    last = top if falls else int(below[below > top].min(initial=len(force))) - 1
     return _highest(time, force, float(noise[top]), (first, top, last)), last
 
 

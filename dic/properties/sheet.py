@@ -12,8 +12,9 @@ from numpy.typing import NDArray
 from dic.errors import Notice
 from dic.properties.doubts import missing_uncertainties
 from dic.properties.fits import fit
-from dic.properties.loading import Loading, Undetermined, loading_of
+from dic.properties.loading import Loading, Undetermined, loading_of, require_section
 from dic.properties.modulus import Elastic, fit_elastic
+from dic.properties.moments import fracture_of
 from dic.properties.result import Curve, ModulusLine, Property
 from dic.properties.zero import Zero, seating_slack, take_off_toe, zero_of
 from dic.sync.record import Clock
@@ -53,7 +54,7 @@ class Entry:
         """Read it, or say why it is missing."""
         try:
             reading = self.read()
-        except Undetermined as reason:
+        except (Undetermined, np.linalg.LinAlgError) as reason:
             return Property(
                 self.name, self.symbol, nan, self.unit, nan, "not determined", notes=(str(reason),)
             )
@@ -111,7 +112,8 @@ class Sheet:
         return fit_elastic(loading, self.section.modulus, self.section.modulus_source)
 
     def require_load(self) -> None:
-        """Raise unless the record shows a load."""
+        """Raise unless the record shows a load, and the coupon has a section that bears it."""
+        require_section(self.curve)
         if not np.isfinite(self.curve.peak_force_N):
             raise Undetermined("the force of the load record never rises above its noise")
 
@@ -126,6 +128,20 @@ class Sheet:
     def loading(self) -> Loading:
         """Frames up to the largest force, strains counted from the zero."""
         return self.zero.loading
+
+    @property
+    def whole(self) -> Loading:
+        """All frames of the test that were measured up to the fracture, strains counted from the zero."""
+        zero, whole = self.zero, loading_of(self.curve, whole=True)
+        end = int(np.searchsorted(whole.time_s, self.last_time_s(), side="right"))
+        return whole.part(slice(0, end)).counted_from(zero.strain, zero.transverse)
+
+    def last_time_s(self) -> float:
+        """Return when the coupon breaks, or the test ends."""
+        try:
+            return fracture_of(self.curve).time_s
+        except Undetermined:
+            return float(self.curve.time_s[-1])
 
     @property
     def elastic(self) -> Elastic:

@@ -8,6 +8,7 @@ import numpy as np
 
 from dic.properties.loading import Loading, Undetermined
 from dic.properties.modulus import LARGEST_YIELD_STRAIN
+from dic.properties.moments import fracture_of, strain_at
 from dic.properties.proof import crossing
 from dic.properties.sheet import Entry, Reading, Sheet, bounds
 from dic.uncertainty import few_readings
@@ -20,8 +21,13 @@ def proof_entries(sheet: Sheet) -> list[Entry]:
 
 
 def strength_entries(sheet: Sheet) -> list[Entry]:
-    """List the strength."""
-    return [Entry("tensile_strength", "Rm", "MPa", lambda: _strength(sheet))]
+    """List the strength, and the strains at the largest force and at break."""
+    return [
+        Entry("tensile_strength", "Rm", "MPa", lambda: _strength(sheet)),
+        Entry("strain_at_maximum", "Agt", "", lambda: _at_maximum(sheet)),
+        Entry("plastic_strain_at_maximum", "Ag", "", lambda: _plastic_at_maximum(sheet)),
+        Entry("strain_at_break", "At", "", lambda: _at_break(sheet)),
+    ]
 
 
 def _proof(sheet: Sheet, offset: float) -> Callable[[], Reading]:
@@ -63,9 +69,7 @@ def _strength(sheet: Sheet) -> Reading:
     sheet.require_load()
     curve = sheet.curve
     value = curve.peak_force_N / curve.area_mm2
-    notes = []
-    if curve.peak_at_end:
-        notes.append("the record ends before the force drops: the coupon may bear more")
+    notes = [*_unbroken(sheet)]
     if curve.spikes_s:
         notes.append(_spikes(curve.spikes_s))
     statistics = {
@@ -80,6 +84,53 @@ def _strength(sheet: Sheet) -> Reading:
         {"time_s": (curve.peak_time_s, curve.peak_time_s)},
         (*notes, *sheet.left_out()),
     )
+
+
+def _at_maximum(sheet: Sheet) -> Reading:
+    sheet.require_load()
+    curve, sign = sheet.curve, sheet.loading.sign
+    found = strain_at(sheet.whole, curve.peak_time_s, "the largest force")
+    return Reading(
+        sign * found.strain,
+        "strain at the largest force of the record (ISO 6892-1)",
+        found.contributions(curve.u_peak_time_s, sheet.clock.offset_standard_uncertainty_s),
+        {"time_s": (curve.peak_time_s, curve.peak_time_s)},
+        (*_unbroken(sheet), *sheet.left_out_of_strain()),
+    )
+
+
+def _plastic_at_maximum(sheet: Sheet) -> Reading:
+    total, strength, elastic = _at_maximum(sheet), _strength(sheet), sheet.elastic
+    share = abs(strength.value) / elastic.modulus
+    slope = elastic.line.u_slope / elastic.line.slope * few_readings(elastic.line.n - 2)
+    return Reading(
+        total.value - strength.value / elastic.modulus,
+        "strain at the largest force less its elastic part, Rm/E (ISO 6892-1)",
+        total.contributions | {"modulus": share * slope},
+        total.window,
+        total.notes,
+    )
+
+
+def _at_break(sheet: Sheet) -> Reading:
+    sheet.require_load()
+    broken, sign = fracture_of(sheet.curve), sheet.loading.sign
+    found = strain_at(sheet.whole, broken.time_s, "the fracture")
+    return Reading(
+        sign * found.strain,
+        "mean strain of the gauge when the force falls away (ISO 6892-1)",
+        found.contributions(broken.u_time_s, sheet.clock.offset_standard_uncertainty_s),
+        {"time_s": (broken.time_s, broken.time_s)},
+        (
+            "beyond the largest force strain gathers in a neck, and its mean depends on the gauge's length",
+            *sheet.left_out_of_strain(),
+        ),
+    )
+
+
+def _unbroken(sheet: Sheet) -> tuple[str, ...]:
+    told = "the record ends before the force drops: the coupon may bear more"
+    return (told,) if sheet.curve.peak_at_end else ()
 
 
 def _spikes(times_s: tuple[float, ...]) -> str:

@@ -25,7 +25,21 @@ TITLES = {
     "shear_modulus": "Shear modulus",
     "bulk_modulus": "Bulk modulus",
     "lame_constant": "Lamé's first constant",
+    "upper_yield": "Upper yield strength",
+    "lower_yield": "Lower yield strength",
+    "yield_point_extension": "Yield point extension",
     "tensile_strength": "Tensile strength",
+    "strain_at_maximum": "Strain at maximum force",
+    "plastic_strain_at_maximum": "Plastic strain at maximum force",
+    "strain_at_break": "Strain at break",
+    "strain_hardening_exponent": "Strain hardening exponent",
+    "strength_coefficient": "Strength coefficient",
+    "plastic_strain_ratio": "Plastic strain ratio",
+    "ramberg_osgood_exponent": "Ramberg-Osgood exponent",
+    "strain_energy_to_yield": "Strain energy to yield",
+    "strain_energy_to_break": "Strain energy to break",
+    "strain_rate_elastic": "Strain rate, elastic part",
+    "strain_rate_to_proof": "Strain rate up to proof stress",
 }
 
 

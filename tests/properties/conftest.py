@@ -17,6 +17,12 @@ STRESS = np.linspace(0, 1.3 * RP02, 40_001)
 STRAIN = STRESS / E + 0.002 * (STRESS / RP02) ** EXPONENT
 
 
+def energy(stress):
+    """Return the area under the curve up to a stress, by the law's own integral."""
+    plastic = 0.002 * (stress / RP02) ** EXPONENT
+    return stress**2 / (2 * E) + plastic * stress * EXPONENT / (EXPONENT + 1)
+
+
 @dataclass(frozen=True)
 class Pull:
     """One draw, and what is true of it."""
@@ -116,6 +122,14 @@ def pull():
                 "proof_stress_0_2": sign * RP02,
                 "proof_stress_0_1": sign * RP02 * 0.5 ** (1 / EXPONENT),
                 "tensile_strength": sign * peak,
+                "strain_at_maximum": sign * fracture,
+                "plastic_strain_at_maximum": sign * (fracture - peak / E),
+                "strain_at_break": sign * fracture,
+                "ramberg_osgood_exponent": EXPONENT,
+                "strain_energy_to_yield": energy(RP02),
+                "strain_energy_to_break": energy(peak),
+                "strain_rate_elastic": sign * rate,
+                "strain_rate_to_proof": sign * rate,
             },
         )
 
