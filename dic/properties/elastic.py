@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from functools import cache
 
 import numpy as np
 from numpy.typing import NDArray
@@ -21,12 +22,20 @@ Law = Callable[[float, float], float]
 
 def elastic_entries(sheet: Sheet) -> list[Entry]:
     """List the elastic constants."""
+
+    @cache
+    def ratio() -> Reading:
+        return _poissons_ratio(sheet)
+
+    def volumetric(law: Law, formula: str) -> Callable[[], Reading]:
+        return lambda: _volumetric(sheet, ratio(), law, formula)
+
     return [
         Entry("youngs_modulus", "E", "MPa", lambda: _youngs_modulus(sheet)),
-        Entry("poissons_ratio", "ν", "", lambda: _poissons_ratio(sheet)),
-        Entry("shear_modulus", "G", "MPa", lambda: _shear_modulus(sheet)),
-        Entry("bulk_modulus", "K", "MPa", lambda: _volumetric(sheet, bulk_modulus, "E / 3(1 - 2ν)")),
-        Entry("lame_constant", "λ", "MPa", lambda: _volumetric(sheet, lame_constant, "Eν / (1 + ν)(1 - 2ν)")),
+        Entry("poissons_ratio", "ν", "", ratio),
+        Entry("shear_modulus", "G", "MPa", lambda: _shear_modulus(sheet, ratio().value)),
+        Entry("bulk_modulus", "K", "MPa", volumetric(bulk_modulus, "E / 3(1 - 2ν)")),
+        Entry("lame_constant", "λ", "MPa", volumetric(lame_constant, "Eν / (1 + ν)(1 - 2ν)")),
     ]
 
 
@@ -95,16 +104,14 @@ def _against_axial(sheet: Sheet, value: float, scatter: float) -> tuple[str, ...
     return (f"{told} (cross-check)",)
 
 
-def _shear_modulus(sheet: Sheet) -> Reading:
-    ratio = _poissons_ratio(sheet).value
+def _shear_modulus(sheet: Sheet, ratio: float) -> Reading:
     if ratio <= -1:
         raise Undetermined(f"no isotropic solid has a Poisson's ratio of {ratio:.3g}")
     return _isotropic(sheet, shear_modulus, "E / 2(1 + ν)")
 
 
-def _volumetric(sheet: Sheet, law: Law, formula: str) -> Reading:
+def _volumetric(sheet: Sheet, ratio: Reading, law: Law, formula: str) -> Reading:
     """Read a constant that has no bound where the material keeps its volume."""
-    ratio = _poissons_ratio(sheet)
     if not -1 < ratio.value < 0.5:
         raise Undetermined(
             f"no isotropic solid with a bulk modulus has a Poisson's ratio of {ratio.value:.3g}"

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from functools import cached_property
 from math import nan
 
 import numpy as np
@@ -129,13 +130,14 @@ class Sheet:
         """Frames up to the largest force, strains counted from the zero."""
         return self.zero.loading
 
-    @property
+    @cached_property
     def whole(self) -> Loading:
         """All frames of the test that were measured up to the fracture, strains counted from the zero."""
         zero, whole = self.zero, loading_of(self.curve, whole=True)
-        end = int(np.searchsorted(whole.time_s, self.last_time_s(), side="right"))
+        end = int(np.searchsorted(whole.time_s, self.last_time_s, side="right"))
         return whole.part(slice(0, end)).counted_from(zero.strain, zero.transverse)
 
+    @cached_property
     def last_time_s(self) -> float:
         """Return when the coupon breaks, or the test ends."""
         try:

@@ -84,7 +84,7 @@ def find_yielding(sheet: Sheet) -> Yielding:
     elastic, loading, dense = sheet.elastic, sheet.loading, sheet.curve.dense
     if dense is None:
         raise Undetermined("there is no load record in which a yield point could show")
-    inside = (dense.time_s >= loading.time_s[0]) & (dense.time_s <= sheet.last_time_s())
+    inside = (dense.time_s >= loading.time_s[0]) & (dense.time_s <= sheet.last_time_s)
     dense = Dense(dense.time_s[inside], loading.sign * dense.force_N[inside], dense.noise_N[inside])
     whole = sheet.whole
     strain = np.interp(dense.time_s, whole.time_s, whole.strain)
@@ -138,7 +138,8 @@ def _lowest(dense: Dense, strain: Floats, top: int) -> tuple[int, Floats, int]:
     # Yielding is over where the force exceeds the upper yield point for good.
     below = np.flatnonzero(force[top:] <= force[top])
     end = top + int(below[-1]) + 1
-    rise = max(NOISE * noise / sqrt(size), DROP * float(force[top]))
+    still = NOISE * noise / sqrt(size) / 2
+    rise = max(2 * still, DROP * float(force[top]))
     start = top + size
     if start >= end - size:
         raise Undetermined("yielding is too short to tell a lower yield point")
@@ -148,7 +149,7 @@ def _lowest(dense: Dense, strain: Floats, top: int) -> tuple[int, Floats, int]:
     # Only a fall that is over long before yielding is, is a transient.
     if recovered.size and strain[start + int(recovered[0])] - strain[top] < 5 * QUIET_STRAIN:
         start = start + int(recovered[0])
-        while start + size < end and smooth[start + size] > smooth[start] + rise / 2:
+        while start + size < end and smooth[start + size] > smooth[start] + still:
             start += 1
         if start >= end - size:
             return first, smooth, size

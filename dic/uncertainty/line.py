@@ -123,7 +123,6 @@ def line_with_errors_in_both(x: Floats, y: Floats, u_x: ArrayLike, u_y: ArrayLik
     --------
     dic.uncertainty.line_of_both : The fit itself.
     """
-    first = straight_line(x, y)
     u_x, u_y = (np.broadcast_to(np.asarray(u, dtype=np.float64), x.shape) for u in (u_x, u_y))
     if not np.all(u_x**2 + u_y**2 > 0):
         raise ValueError("a point without any uncertainty fixes the line by itself")
@@ -137,7 +136,7 @@ def line_with_errors_in_both(x: Floats, y: Floats, u_x: ArrayLike, u_y: ArrayLik
         u_intercept=u_intercept,
         correlation=fit.correlation,
         residual_s=sqrt(float(residuals @ residuals) / (len(x) - 2)),
-        r_squared=first.r_squared,
+        r_squared=float(np.corrcoef(x, y)[0, 1]) ** 2 if np.ptp(y) else 0.0,
         mean_x=-fit.correlation * fit.u_intercept / fit.u_slope,
         u_mean=fit.misfit / sqrt(float(np.sum(1 / (u_y**2 + (fit.slope * u_x) ** 2)))),
         n=len(x),
