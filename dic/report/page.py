@@ -25,6 +25,7 @@ from dic.report.gauges import draw_gauges, gauge_rows
 from dic.report.maps import draw_maps, draw_scene
 from dic.report.moments import choose_moments
 from dic.rounding import COVERAGE_FACTOR, uncertainty_alone, with_uncertainty
+from dic.store.folder import FIGURES
 from dic.store.results import encoded, write_whole
 from dic.store.tables import shown_in, stated
 
@@ -98,21 +99,8 @@ def _published(drawing: Drawing, label: str, folder: Path) -> Picture:
 
 
 def _remove_stale(folder: Path, names: set[str]) -> None:
-    """Remove maps and fits of an earlier evaluation that this one does not have."""
-    sometimes = {
-        "elastic-part",
-        "modulus-residuals",
-        "alignment-stations",
-        "alignment-contrast",
-        "clip-on-curves",
-        "clip-on-difference",
-        "named-gauges",
-        "named-gauges-in-time",
-        *(f"line-{number}" for number in range(1, 101)),
-        "clocks",
-        *(f"map-{letter}" for letter in "abcdefghijklmnop"),
-    }
-    for name in sometimes - names:
+    """Remove figures of an earlier evaluation that this one does not have."""
+    for name in set(FIGURES) - names:
         for ending in _MEDIA:
             (folder / "figures" / f"{name}.{ending}").unlink(missing_ok=True)
 

@@ -17,7 +17,8 @@ _MARKS = {
 }
 #: Beyond this a file is no result.
 _MOST_BYTES = 100_000_000
-_FIGURES = (
+#: Every figure that a report may have.
+FIGURES = (
     "stress-strain",
     "elastic-part",
     "strains-in-time",
@@ -26,6 +27,8 @@ _FIGURES = (
     "clocks",
     "gauge-on-coupon",
     *(f"map-{letter}" for letter in "abcdefghijklmnop"),
+    "alignment-stations",
+    "alignment-contrast",
     "clip-on-curves",
     "clip-on-difference",
     "named-gauges",
@@ -125,7 +128,7 @@ def _results(folder: Path) -> list[Path]:
 
 
 def _figures(folder: Path) -> list[Path]:
-    return [folder / "figures" / f"{name}.{ending}" for name in _FIGURES for ending in ("png", "svg")]
+    return [folder / "figures" / f"{name}.{ending}" for name in FIGURES for ending in ("png", "svg")]
 
 
 def _holds_results(folder: Path) -> bool:

@@ -13,6 +13,7 @@ from PIL import Image
 
 from dic.properties.result import ModulusLine
 from dic.report import write_report
+from dic.store.folder import FIGURES
 from dic.store.tables import stated, title_of
 
 # Elements that HTML leaves without an end tag (WHATWG HTML, "Void elements").
@@ -235,3 +236,8 @@ def test_compression_is_called_so(pressed, fields, page, tmp_path):
     assert "Tensile strength" in page.text
     [alt] = [attrs["alt"] for attrs in other.all("img") if attrs["alt"].startswith("Curve of stress")]
     assert re.search(r"reaches -\d{3}", alt)
+
+
+def test_every_figure_is_known_to_the_result_folder(page, folder):
+    """Else a later run could not take it away."""
+    assert {path.stem for path in (folder / "figures").iterdir()} <= set(FIGURES)
