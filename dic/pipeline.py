@@ -31,7 +31,7 @@ from dic.store import fields
 from dic.store.folder import claim_folder, remove_results
 from dic.store.results import write_results
 from dic.strain import GaugeHistory, gather, gauge_size
-from dic.strain.alignment import LEAST_FRAMES, Alignment, elastic_part, find_alignment, limit_of
+from dic.strain.alignment import LEAST_FRAMES, MOST_FRAMES, Alignment, elastic_part, find_alignment, limit_of
 from dic.strain.rates import gather_rates
 from dic.sync import Clock, LoadRecord, fit_clock, given_clock, read_load_record
 from dic.testfile import TestFile, load
@@ -191,6 +191,7 @@ def _alignment(
     rates = None
     if inside.sum() >= LEAST_FRAMES:
         frames = np.flatnonzero(inside)
+        frames = frames[:: -(-len(frames) // MOST_FRAMES)]
         moved = fields.stored_motion(folder, frames)
         rates = gather_rates(moved, history.axial[frames], grid, setup.region, window)
     limit = limit_of(test.alignment.limit, test.alignment.standard)

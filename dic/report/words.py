@@ -64,15 +64,15 @@ MEANINGS = {
         "Motion against the axis",
         "Direction in which the gauge moves, clockwise from its axis; near zero for a coupon clamped square.",
     ),
-    "turning_deg_per_percent": (
-        "Rotation of the middle, ° per 1 % of strain",
+    "turning_per_percent_deg": (
+        "Rotation of the middle per 1 % of strain",
         "Clockwise positive; a coupon that is loaded straight does not turn.",
     ),
-    "turning_near_end_deg_per_percent": (
-        "Rotation of the lower (or left) end, ° per 1 % of strain",
+    "turning_near_end_per_percent_deg": (
+        "Rotation of the lower (or left) end",
         "Opposite to the other end for a C, the same as the other for an S.",
     ),
-    "turning_far_end_deg_per_percent": ("Rotation of the upper (or right) end, ° per 1 % of strain", ""),
+    "turning_far_end_per_percent_deg": ("Rotation of the upper (or right) end", "Per 1 % of strain, too."),
     "limit_percent": ("Limit", "Largest bending that the test file or its standard allows."),
     "valid_fraction": (
         "Subsets measured",

@@ -22,6 +22,8 @@ Floats = NDArray[np.float64]
 
 #: Frames in the elastic part below which no straight line through them says how sure it is.
 LEAST_FRAMES = 4
+#: Frames that are read at the most, evenly spread; more would take seconds and add little.
+MOST_FRAMES = 300
 #: Motion along the axis, px, from which its direction means something.
 LEAST_MOTION_PX = 0.5
 #: Standard uncertainty of the coupon's axis, deg: what finding it is good to (`tests/pattern`).
@@ -129,9 +131,9 @@ class Alignment:
             "uniformity_percent": (self.along, 100.0),
             "shear_percent": (self.shear, 100.0),
             "motion_angle_deg": (self.motion_deg, 1.0),
-            "turning_deg_per_percent": (self.turning, turn),
-            "turning_near_end_deg_per_percent": (self.turning_ends[0], turn),
-            "turning_far_end_deg_per_percent": (self.turning_ends[1], turn),
+            "turning_per_percent_deg": (self.turning, turn),
+            "turning_near_end_per_percent_deg": (self.turning_ends[0], turn),
+            "turning_far_end_per_percent_deg": (self.turning_ends[1], turn),
         }
         content: dict[str, Any] = {}
         for name, (estimate, factor) in named.items():
