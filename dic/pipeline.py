@@ -33,7 +33,7 @@ from dic.store.results import write_results
 from dic.strain import GaugeHistory, gather, gauge_size
 from dic.strain.alignment import LEAST_FRAMES, MOST_FRAMES, Alignment, elastic_part, find_alignment, limit_of
 from dic.strain.rates import gather_rates
-from dic.sync import Clock, LoadRecord, fit_clock, given_clock, read_load_record
+from dic.sync import Clock, LoadRecord, fit_clock, known_clock, read_load_record
 from dic.testfile import TestFile, load
 
 #: Called with the frames done and the frames there are.
@@ -67,7 +67,7 @@ def measure(
     test, folder = _opened(test, out)
     source = open_frames(test.frames, test.path.parent)
     record = read_load_record(test.load_record, test.beside(test.load_record.source))
-    given_clock(source.time_s, record, test.sync)  # before tracking, which takes longest
+    known_clock(source.time_s, record, test.sync, source.epoch)  # before tracking, which takes longest
     setup = set_up(test, source)
     history, named = read_gauges(test, setup, folder, progress)
     clock = _clock(test, setup, history, record)
@@ -121,7 +121,15 @@ def read_gauges(
 def _clock(test: TestFile, setup: Setup, history: GaugeHistory, record: LoadRecord) -> Clock:
     """Fit the clock; if that fails, doubts about the frames that were met before may be the reason."""
     try:
-        return fit_clock(history.time_s, history.axial, history.u_axial, record, test.sync)
+        return fit_clock(
+            history.time_s,
+            history.axial,
+            history.u_axial,
+            record,
+            test.sync,
+            shift_px=history.shift_px[:, 0],
+            epoch=setup.source.epoch,
+        )
     except ClockError as error:
         doubts = [notice.text.rstrip(".") for notice in setup.source.notices]
         if not doubts:
@@ -168,6 +176,7 @@ def judged(
             *setup.source.notices,
             *unreadable_frames(setup.source.names, unreadable(folder)),
             *record.notices,
+            *clock.notices,
             *setup.notices,
             *found.notices,
             *loading_doubts(straight),

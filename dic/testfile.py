@@ -360,8 +360,23 @@ class Alignment(Section):
 class Sync(Section):
     """How the camera's clock is put on the machine's."""
 
+    source: Literal["auto", "trigger", "absolute", "loading"] = "auto"
     offset: Literal["auto"] | Time = "auto"
-    drift: float = Field(0.0, gt=-0.1, lt=0.1)
+    offset_uncertainty: Duration | None = None
+    drift: Literal["auto"] | Annotated[float, Field(gt=-0.1, lt=0.1)] = "auto"
+
+    @model_validator(mode="after")
+    def _one_source(self) -> Sync:
+        if self.offset != "auto" and self.source != "auto":
+            raise ValueError("give offset or source, not both")
+        if self.offset_uncertainty is not None and self.offset == "auto" and self.source != "absolute":
+            raise ValueError('offset_uncertainty belongs to a given offset or to source = "absolute"')
+        return self
+
+    @property
+    def assumed_drift(self) -> float:
+        """The drift as given, or 0 as long as it is not found."""
+        return 0.0 if self.drift == "auto" else self.drift
 
 
 class ModulusWindow(Section):

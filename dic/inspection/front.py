@@ -13,7 +13,7 @@ from dic.frames import FrameSource, check_damage, open_frames, unreadable_frames
 from dic.inspection.doubts import dimension_doubts, frame_doubts, missing_uncertainties, record_doubts
 from dic.inspection.looking import Progress, look_at_frames, look_at_record
 from dic.inspection.seen import FramesSeen, Inspection
-from dic.sync import LoadRecord, given_clock, read_load_record
+from dic.sync import LoadRecord, known_clock, read_load_record
 from dic.testfile import Frames, Specimen, Sync, TestFile, load, sound_sections
 from dic.testfile import LoadRecord as RecordSection
 
@@ -126,10 +126,10 @@ def _overlap(
     if source is None or record is None:
         return "unknown, because one of the two cannot be read"
     section: Sync = sections.get("sync") or Sync()
-    filmed = float(source.time_s[-1] - source.time_s[0]) * (1 + section.drift)
+    filmed = float(source.time_s[-1] - source.time_s[0]) * (1 + section.assumed_drift)
     recorded = float(record.time_s[-1] - record.time_s[0])
     try:
-        clock = given_clock(source.time_s, record, section)
+        clock = known_clock(source.time_s, record, section, source.epoch)
     except InputError as error:
         errors.append(str(error))
         return "none"
@@ -194,8 +194,8 @@ def assumptions(sections: dict[str, Any]) -> Iterator[str]:
         yield f"Patches of {correlation.subset} px are followed (correlation.subset)."
     if sync is None or sync.offset == "auto":
         yield "The clocks are joined where loading starts; some rest must be filmed first (sync.offset)."
-    if sync is None or sync.drift == 0:
-        yield "Camera and machine clock run equally fast (sync.drift)."
+    if sync is None or sync.drift == "auto":
+        yield "Camera and machine clock run equally fast unless the test's end says otherwise (sync.drift)."
     if properties is None or properties.modulus == "auto":
         yield "The modulus window is found from the curve (properties.modulus)."
     if properties is not None:

@@ -75,6 +75,7 @@ def results_of(measurement: Measurement) -> dict[str, Any]:
             "offset_s": clock.offset_s,
             "offset_standard_uncertainty_s": clock.offset_standard_uncertainty_s,
             "drift": clock.drift,
+            "drift_standard_uncertainty": clock.drift_standard_uncertainty,
             "method": clock.method,
             "notes": clock.notes,
         },

@@ -58,13 +58,20 @@ class Clock:
     Attributes
     ----------
     offset_s, offset_standard_uncertainty_s
-        Offset and its standard uncertainty, s.
+        Offset and its standard uncertainty, s: that of the machine's time where loading starts.
     drift
         Relative difference of the clocks' rates.
     method
         How it was found, in words.
     notes
         What was assumed, a sentence each.
+    drift_standard_uncertainty
+        Standard uncertainty of the drift; 0 where it is given or assumed.
+    notices
+        Doubts, with remedies.
+    tried_s, misfit
+        Offsets, and how much larger than the least the difference of frames and record is with them; empty
+        where the offset was not estimated, or where the data give a range only.
     """
 
     offset_s: float
@@ -72,6 +79,10 @@ class Clock:
     drift: float
     method: str
     notes: tuple[str, ...] = ()
+    drift_standard_uncertainty: float = 0.0
+    notices: tuple[Notice, ...] = ()
+    tried_s: Floats = field(default_factory=lambda: np.empty(0), compare=False)
+    misfit: Floats = field(default_factory=lambda: np.empty(0), compare=False)
 
     def machine_time(self, camera_time_s: Floats) -> Floats:
         """Return the machine's time of each camera time, s."""

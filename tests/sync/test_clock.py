@@ -1,4 +1,4 @@
-"""The clock from the start of loading: right to within what it claims, and silent where it cannot know."""
+"""The clock from the start of loading: right to within what it claims, and wide where it cannot know."""
 
 from dataclasses import replace
 from pathlib import Path
@@ -10,7 +10,8 @@ from hypothesis import strategies as st
 from scipy import stats
 
 from dic.errors import ClockError, LoadRecordError
-from dic.sync import LoadRecord, clock, fit_clock
+from dic.sync import LoadRecord, fit_clock
+from dic.sync.misfit import Course, Misfit
 from dic.testfile import Sync
 
 OFFSET = 3.37
@@ -61,6 +62,7 @@ CASES = {
     "usual": {},
     "little force noise": {"force_noise": 2e-4},
     "little strain noise": {"strain_noise": 1e-6},
+    "noisy force": {"force_noise": 0.005},
     "sparse record": {"sampling": 0.1},
     "slow": {"rate": 1e-4, "length": 30.0},
     "yields": {"stress": hardening, "rate": 8e-4},
@@ -128,6 +130,8 @@ def test_a_given_offset_is_used_as_it_is():
     found = fit_clock(time, axial, u, record, Sync(offset="3.5 s", drift=0.001))
     assert (found.offset_s, found.drift, found.offset_standard_uncertainty_s) == (3.5, 0.001, 0.0)
     assert "not included" in found.notes[0]
+    sure = fit_clock(time, axial, u, record, Sync(offset="3.5 s", offset_uncertainty="50 ms"))
+    assert (sure.offset_standard_uncertainty_s, sure.notes) == (0.05, ())
     assert found.machine_time(np.array([10.0]))[0] == pytest.approx(13.51)
 
 
@@ -150,18 +154,24 @@ def test_a_coupon_at_rest():
         fit_clock(*pull(rate=0.0), AUTO)
 
 
-@pytest.mark.parametrize(
-    ("samples", "said"), [(40, "never rises above its noise"), (170, "do not both begin")]
-)
-def test_a_record_that_ends_too_early(samples, said):
+def test_a_record_that_ends_before_loading():
     # Loading starts at sample 150 to 160.
     time, axial, u, record = pull()
-    early = LoadRecord(record.path, record.time_s[:samples], record.force_N[:samples])
-    with pytest.raises(ClockError, match=said):
+    early = LoadRecord(record.path, record.time_s[:40], record.force_N[:40])
+    with pytest.raises(ClockError, match="never rises above its noise"):
         fit_clock(time, axial, u, early, AUTO)
 
 
 RAMPS = [{}, {"rate": 1e-4, "length": 30.0}, {"rate": 8e-4, "stress": hardening}]
+
+
+def assert_wide(found):
+    """Hold a clock that cannot be told against the truth; it has to say so, and what would help."""
+    assert abs(found.offset_s - OFFSET) < 2 * found.offset_standard_uncertainty_s
+    # More than a frame: nothing in the data tells it better.
+    assert found.offset_standard_uncertainty_s > 0.2
+    assert [notice.code for notice in found.notices] == ["clock_wide"]
+    assert "two seconds of rest" in found.notices[0].text
 
 
 @pytest.mark.parametrize("case", RAMPS)
@@ -169,8 +179,7 @@ RAMPS = [{}, {"rate": 1e-4, "length": 30.0}, {"rate": 8e-4, "stress": hardening}
 def test_a_camera_that_starts_during_loading(seed, case):
     time, axial, u, record = pull(seed, **case)
     late = time > 4
-    with pytest.raises(ClockError, match="do not both begin"):
-        fit_clock(time[late], axial[late] - axial[late][0], u[late], record, AUTO)
+    assert_wide(fit_clock(time[late], axial[late] - axial[late][0], u[late], record, AUTO))
 
 
 @pytest.mark.parametrize("case", RAMPS)
@@ -180,8 +189,7 @@ def test_a_record_that_starts_during_loading(seed, case, after):
     time, axial, u, record = pull(seed, **case)
     loaded = record.time_s > OFFSET + 2.2 + after
     late = LoadRecord(record.path, record.time_s[loaded], record.force_N[loaded])
-    with pytest.raises(ClockError, match=r"do not both begin|explain the strain alike"):
-        fit_clock(time, axial, u, late, AUTO)
+    assert_wide(fit_clock(time, axial, u, late, AUTO))
 
 
 @pytest.mark.parametrize("case", RAMPS)
@@ -190,8 +198,7 @@ def test_a_bare_slope_is_not_given_a_false_certainty(seed, case):
     time, axial, u, record = pull(seed, **case)
     ramp, loaded = time > 4, record.time_s > OFFSET + 3
     bare = LoadRecord(record.path, record.time_s[loaded], record.force_N[loaded])
-    with pytest.raises(ClockError, match=r"do not both begin|explain the strain alike"):
-        fit_clock(time[ramp], axial[ramp], u[ramp], bare, AUTO)
+    assert_wide(fit_clock(time[ramp], axial[ramp], u[ramp], bare, AUTO))
 
 
 def test_the_record_of_another_test():
@@ -242,25 +249,13 @@ def test_a_spike_in_the_force_does_no_harm():
 
 @pytest.mark.parametrize("seed", range(5))
 def test_a_force_too_noisy_for_the_beginning(seed):
-    with pytest.raises(ClockError, match="explain the strain alike"):
-        fit_clock(*pull(seed, force_noise=0.02), AUTO)
-
-
-@pytest.mark.parametrize("seed", range(5))
-def test_a_coupon_that_yields_within_two_frames(seed):
-    with pytest.raises(ClockError, match=r"only to ±|does not follow|explain the strain alike"):
-        fit_clock(*pull(seed, rate=5e-3, stress=hardening, length=6.0), AUTO)
-
-
-def test_an_uncertainty_of_more_than_a_frame_is_refused(monkeypatch):
-    # Reached by chance only, so the uncertainty is put in by hand.
-    monkeypatch.setattr(clock._Misfit, "uncertainty", lambda self, offset: 0.3)
-    with pytest.raises(ClockError, match=r"only to ± 0\.3 s"):
-        fit_clock(*pull(), AUTO)
+    found = fit_clock(*pull(seed, force_noise=0.03), AUTO)
+    assert abs(found.offset_s - OFFSET) < 2 * found.offset_standard_uncertainty_s
 
 
 def test_noise_is_no_information():
-    # Rest alone: what slope the force shows is its noise, so nothing is known.
+    # Rest alone: what slope the force shows is its noise, so no offset is better than another.
     time, axial, _, record = pull(rate=0.0)
-    misfit = clock._Misfit(time, axial, record, 3e-6)
-    assert misfit.uncertainty(OFFSET) == np.inf
+    idle = np.random.default_rng(0).normal(0, 10.0, len(record.time_s))
+    misfit = Misfit(Course(time, axial, 3e-6, replace(record, force_N=idle)))
+    assert misfit.uncertainty(OFFSET) > misfit.interval / 2
