@@ -58,7 +58,7 @@ def render(scenario: Scenario, out: Path, progress: Callable[[int, int], None] |
         _write_frames(test, out / "frames", progress)
         _write_record(test, out / "machine.csv")
         path = out / "test.toml"
-        path.write_bytes(tomli_w.dumps(_test_file(test)).encode())
+        path.write_bytes(tomli_w.dumps(test_file(test)).encode())
     except OSError as error:
         raise StoreError(
             f"cannot be written ({error.strerror})", where=str(out), remedy="choose another folder"
@@ -127,7 +127,7 @@ def _write_record(test: VirtualTest, path: Path) -> None:
     )
 
 
-def _test_file(test: VirtualTest) -> dict[str, Any]:
+def test_file(test: VirtualTest) -> dict[str, Any]:
     """Return the test file's content, as someone in the laboratory would have filled it in."""
     scenario, readings = test.scenario, test.readings()
     specimen, record = scenario.specimen, scenario.load_record
