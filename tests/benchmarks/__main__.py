@@ -11,13 +11,21 @@ from typing import Annotated
 import typer
 from table import Bench, show, write_json
 
-NAMES = ("accuracy", "alignment", "fuzz", "gauge", "gauges", "hole", "memory", "pose", "resolution", "speed")
+NAMES = (
+    "accuracy", "alignment", "coverage", "fuzz", "gauge", "gauges", "hole", "memory", "pose", "resolution",
+    "speed",
+)  # fmt: skip
+#: A module called `coverage` would stand in the way of the package that numba looks for.
+MODULES = {"coverage": "interval_coverage"}
 
 
 def main(
     name: Annotated[str, typer.Argument(help="One of " + ", ".join(NAMES) + ", or all.")],
     json: Annotated[Path | None, typer.Option(help="Write figures and targets as JSON.")] = None,
     plot: Annotated[Path | None, typer.Option(help="Draw the curves behind the figures (PNG).")] = None,
+    quick: Annotated[bool, typer.Option(help="With coverage: 20 tests in place of 200.")] = False,
+    drawn: Annotated[bool, typer.Option(help="With coverage: drawn readings, no pictures.")] = False,
+    rows: Annotated[Path | None, typer.Option(help="With coverage: what each test gave, as JSON.")] = None,
 ) -> None:
     """Run benchmarks and print a table with the target beside each figure."""
     from importlib import import_module
@@ -27,7 +35,8 @@ def main(
     wanted = NAMES if name == "all" else (name,)
     results: dict[str, Bench] = {}
     for one in wanted:
-        results[one] = import_module(one).run()
+        further = {"quick": quick, "drawn": drawn, "rows": rows} if one == "coverage" else {}
+        results[one] = import_module(MODULES.get(one, one)).run(**further)
         show(one, results[one])
     if json is not None:
         write_json(json, results)

@@ -8,11 +8,10 @@ from typing import Any
 
 import numpy as np
 
+from dic.frames import open_frames
 from dic.pipeline import _clock, read_gauges
 from dic.preparation import set_up
-from dic.properties import Curve, evaluate, make_curve
-from dic.properties.loading import passage
-from dic.frames import open_frames
+from dic.properties import evaluate, make_curve
 from dic.strain.history import GaugeHistory
 from dic.strain.periodic import Periodic
 from dic.sync import fit_clock, read_load_record
@@ -52,7 +51,9 @@ def with_pictures(seed: int) -> list[dict[str, Any]]:
         source = open_frames(test.frames, test.path.parent)
         record = read_load_record(test.load_record, test.beside(test.load_record.source))
         setup = set_up(test, source)
-        history, _ = read_gauges(test, setup, Path(folder) / "results", None)
+        results = Path(folder) / "results"
+        results.mkdir()
+        history, _ = read_gauges(test, setup, results, None)
         clock = _clock(test, setup, history, record)
         curve = make_curve(history, record, clock, test.specimen.area)
         found = evaluate(curve, test.specimen, test.load_record.force_uncertainty, clock, test.properties)

@@ -46,7 +46,7 @@ def _tried(measure: Any, seed: int) -> list[dict[str, Any]]:
     """Return what a test gave; one that fails is counted as such and not left out in silence."""
     try:
         rows: list[dict[str, Any]] = measure(seed)
-    except Exception as error:  # noqa: BLE001
+    except Exception as error:
         return [{"seed": seed, "failed": f"{type(error).__name__}: {error}"}]
     return rows
 
