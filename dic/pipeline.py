@@ -31,7 +31,15 @@ from dic.store import fields
 from dic.store.folder import claim_folder, remove_results
 from dic.store.results import write_results
 from dic.strain import GaugeHistory, gather, gauge_size
-from dic.strain.alignment import LEAST_FRAMES, MOST_FRAMES, Alignment, elastic_part, find_alignment, limit_of
+from dic.strain.alignment import (
+    LEAST_FRAMES,
+    MOST_FRAMES,
+    U_AXIS_DEG,
+    Alignment,
+    elastic_part,
+    find_alignment,
+    limit_of,
+)
 from dic.strain.rates import gather_rates
 from dic.sync import Clock, LoadRecord, fit_clock, known_clock, read_load_record
 from dic.testfile import TestFile, load
@@ -204,7 +212,9 @@ def _alignment(
         moved = fields.stored_motion(folder, frames)
         rates = gather_rates(moved, history.axial[frames], grid, setup.region, window)
     limit = limit_of(test.alignment.limit, test.alignment.standard)
-    return find_alignment(history, curve.force_N, inside, rates, limit)
+    stated = setup.coupon.u_axis_deg
+    u_axis = stated if np.isfinite(stated) else U_AXIS_DEG
+    return find_alignment(history, curve.force_N, inside, rates, limit, u_axis)
 
 
 def _scene(test: TestFile, setup: Setup, folder: Path) -> Scene:

@@ -26,7 +26,8 @@ LEAST_FRAMES = 4
 MOST_FRAMES = 300
 #: Motion along the axis, px, from which its direction means something.
 LEAST_MOTION_PX = 0.5
-#: Standard uncertainty of the coupon's axis, deg: what finding it is good to (`tests/pattern`).
+#: Standard uncertainty of the coupon's axis, deg, where nothing states it: what finding it is good to
+#: (`tests/pattern`).
 U_AXIS_DEG = 0.1
 #: Usual limits of percent bending, by standard: ASTM D3039 and ASTM E606 [both from memory].  Standards
 #: that say how to measure alignment and leave the limit to others have none.
@@ -193,6 +194,7 @@ def find_alignment(
     inside: NDArray[np.bool_],
     rates: Rates | None,
     limit: tuple[float | None, str] = (None, ""),
+    u_axis_deg: float = U_AXIS_DEG,
 ) -> Alignment:
     """Work out how straight the coupon was pulled.
 
@@ -208,6 +210,8 @@ def find_alignment(
         From `dic.strain.rates.gather_rates` over these frames; None where they are fewer than `LEAST_FRAMES`.
     limit
         From `limit_of`.
+    u_axis_deg
+        Standard uncertainty of the coupon's axis, deg.
 
     Returns
     -------
@@ -220,7 +224,7 @@ def find_alignment(
     if not rates.enough:
         return replace(nothing, reason="the measured patches do not span the gauge's length and width")
     shape = _Shape(rates)
-    motion = _motion(history, inside, shape.sagitta_px)
+    motion = _motion(history, inside, shape.sagitta_px, u_axis_deg)
     observed, covariance = shape.observed(motion)
     ratio = -linregress(history.axial[inside], history.transverse[inside]).slope
     low, high = _halves(history, inside)
@@ -318,7 +322,9 @@ class _Shape:
         return values, covariance
 
 
-def _motion(history: GaugeHistory, inside: NDArray[np.bool_], sagitta_px: float) -> Estimate:
+def _motion(
+    history: GaugeHistory, inside: NDArray[np.bool_], sagitta_px: float, u_axis_deg: float
+) -> Estimate:
     """Return the direction in which the gauge moves, deg from its axis; NaN where it hardly moves.
 
     Where the axis bends to a C its points do not move alike; half the sagitta stays open.
@@ -329,7 +335,7 @@ def _motion(history: GaugeHistory, inside: NDArray[np.bool_], sagitta_px: float)
     line = linregress(along, across)
     open_slope = sagitta_px / 2 * np.ptp(history.axial[inside]) / np.ptp(along)
     u_slope = np.rad2deg(np.hypot(line.stderr, open_slope) / (1 + line.slope**2))
-    return Estimate(float(np.rad2deg(np.arctan(line.slope))), float(np.hypot(u_slope, U_AXIS_DEG)))
+    return Estimate(float(np.rad2deg(np.arctan(line.slope))), float(np.hypot(u_slope, u_axis_deg)))
 
 
 def _halves(history: GaugeHistory, inside: NDArray[np.bool_]) -> tuple[Estimate, Estimate]:
