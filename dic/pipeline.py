@@ -156,7 +156,7 @@ def judged(
     folder: Path,
 ) -> Measurement:
     """Go from gauge histories to properties."""
-    curve = make_curve(history, record, clock, test.specimen.area)
+    curve = make_curve(history, record, clock, test.specimen.area, setup.source.exposure_s)
     found = evaluate(curve, test.specimen, test.load_record.force_uncertainty, clock, test.properties)
     first = test.frames.first_reference
     clip_on = compare(

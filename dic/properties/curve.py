@@ -19,7 +19,13 @@ Floats = NDArray[np.float64]
 WRONG_SIGN = -0.5
 
 
-def make_curve(history: GaugeHistory, record: LoadRecord, clock: Clock, area_mm2: float) -> Curve:
+def make_curve(
+    history: GaugeHistory,
+    record: LoadRecord,
+    clock: Clock,
+    area_mm2: float,
+    exposure_s: float | None = None,
+) -> Curve:
     """Join the gauge readings with the force.
 
     Strain stays relative to the reference frame as it is: a strain at zero force shifts the modulus
@@ -33,6 +39,8 @@ def make_curve(history: GaugeHistory, record: LoadRecord, clock: Clock, area_mm2
         The force and the frames' place in it.
     area_mm2
         Original cross-section S0, mm².
+    exposure_s
+        Exposure time of a frame, s, where it is known.
 
     Returns
     -------
@@ -47,7 +55,7 @@ def make_curve(history: GaugeHistory, record: LoadRecord, clock: Clock, area_mm2
     LoadRecordError
         If the force has the wrong sign.
     """
-    force, noise = force_and_noise_at(record, clock, history.time_s)
+    force, noise = force_and_noise_at(record, clock, history.time_s, exposure_s)
     if not np.isfinite(force).any():
         raise ClockError(
             "no frame lies within the load record", where=str(record.path), remedy="correct sync.offset"

@@ -19,6 +19,7 @@ from dic.sync.locate import (
     locate,
     within,
 )
+from dic.sync.misfit import Course
 from dic.sync.record import Clock, LoadRecord
 from dic.testfile import Sync
 
@@ -30,6 +31,8 @@ TELLING_DRIFT = 2e-4
 CONTRADICTION = 4
 #: Share of the largest force that is left when a coupon is said to be broken.
 BROKEN = 0.3
+#: Share of the largest force below which the record's last rows show an unloaded coupon, and those rows.
+UNLOADED, END_ROWS = 0.5, 5
 #: Rows within which the force has fallen at fracture.
 FALL_ROWS = 4
 #: Median of the absolute value of a standard normal variable.
@@ -118,16 +121,20 @@ def start_of_loading(seen: Seen, record: LoadRecord) -> Located:
 
 def _by_force(seen: Seen, record: LoadRecord, words: str) -> Located:
     course = beginning(seen.time_s, seen.axial, seen.u_axial, record, limit=BEGINNING, same_sign=True)
-    try:
-        found = locate(course, seen.film, words)
-    except ClockError:
-        if follows_turned(course, seen.film):
-            raise wrong_sign(record, longer=bool(course.signal.sum() > 0)) from None
-        raise
-    if found.why_wide and follows_turned(course, seen.film):
-        raise wrong_sign(record, longer=bool(course.signal.sum() > 0))
     reach = f"{words}, {len(course.time_s)} frames up to a strain of {np.abs(course.signal).max():.2g}"
-    return replace(found, words=reach)
+    try:
+        found = locate(course, seen.film, reach)
+    except ClockError:
+        _refuse_turned(course, seen, record)
+        raise
+    if found.why_wide:
+        _refuse_turned(course, seen, record)
+    return found
+
+
+def _refuse_turned(course: Course, seen: Seen, record: LoadRecord) -> None:
+    if follows_turned(course, seen.film):
+        raise wrong_sign(record, longer=bool(course.signal.sum() > 0))
 
 
 def _by_travel(seen: Seen, record: LoadRecord, words: str) -> Located | None:
@@ -160,7 +167,9 @@ def end_of_unloading(seen: Seen, record: LoadRecord) -> Located | None:
         force_N=record.force_N[::-1],
         displacement_mm=None if record.displacement_mm is None else record.displacement_mm[::-1],
     )
-    for find in (_by_force, _by_travel):
+    size = np.abs(back.force_N)
+    unloaded = float(np.median(size[:END_ROWS])) < UNLOADED * float(size.max())
+    for find in (_by_force, _by_travel) if unloaded else (_by_travel,):
         words = "the end of unloading" if find is _by_force else "the end of the crosshead's motion"
         try:
             found = find(seen.backwards(), back, words)
@@ -243,51 +252,44 @@ def _wide(start: Located, seen: Seen, record: LoadRecord, drift: float) -> Clock
 
 
 def _with_end(start: Located, seen: Seen, record: LoadRecord, section: Sync) -> Clock:
-    """Return the clock from the start of loading, its drift from an event at the end where that tells it."""
+    """Return the clock from the start of loading, its drift from the end of unloading where that tells it."""
     given = section.assumed_drift
     notes = ["strain is taken as a smooth function of force where loading starts"]
     method, drift, u_drift = f"from {start.words}", 0.0, 0.0
-    notices: list[Notice] = []
-    if section.drift == "auto":
-        drift, u_drift, said = _drift(start, seen, record)
-        if drift == 0:
-            notes.append(f"both clocks are taken to run equally fast{said}")
-        else:
-            method += said
-    offset = start.offset_s - drift * start.at_s
+    end = end_of_unloading(seen, record) if section.drift == "auto" else None
+    if end is not None and end.at_s > start.at_s:
+        span = end.at_s - start.at_s
+        found, u = (end.offset_s - start.offset_s) / span, hypot(end.u_s, start.u_s) / span
+        if u <= TELLING_DRIFT or abs(found) > CONTRADICTION * u:
+            drift, u_drift, method = found, u, f"{method}, and from {end.words.split(',')[0]}"
+    if section.drift == "auto" and drift == 0:
+        notes.append("both clocks are taken to run equally fast")
     return Clock(
-        offset,
+        start.offset_s - drift * start.at_s,
         start.u_s,
         (1 + given) * (1 + drift) - 1,
         method,
         tuple(notes),
         u_drift,
-        tuple(notices),
+        _contradicted(start, drift, seen, record),
         start.tried_s - drift * start.at_s,
         start.misfit,
     )
 
 
-def _drift(start: Located, seen: Seen, record: LoadRecord) -> tuple[float, float, str]:
-    """Return the drift with its standard uncertainty where the end tells it, and what to say."""
-    end = end_of_unloading(seen, record)
-    if end is not None and end.at_s > start.at_s:
-        span = end.at_s - start.at_s
-        drift, u = (end.offset_s - start.offset_s) / span, hypot(end.u_s, start.u_s) / span
-        if u <= TELLING_DRIFT or abs(drift) > CONTRADICTION * u:
-            return drift, u, f", and from {end.words.split(',')[0]}"
-        return 0.0, 0.0, f" (the end of the test tells {1e6 * drift:.0f} ± {2e6 * u:.0f} parts in a million)"
-    broke = fracture(seen, record)
-    if broke is None:
-        return 0.0, 0.0, ""
-    span = (_frames_lost(seen) or (np.inf,))[0] - start.at_s
-    if span <= 0:
-        return 0.0, 0.0, ""
-    low, high = ((bound - start.offset_s) / span for bound in broke)
-    slack = 2 * start.u_s / span
-    if low - slack > 0 or high + slack < 0:
-        u = hypot((high - low) / sqrt(12), start.u_s / span)
-        if abs((low + high) / 2) > 0.02:
-            return 0.0, 0.0, ""
-        return (low + high) / 2, u, ", and from the fracture"
-    return 0.0, 0.0, f" (the fracture allows {1e6 * low:.0f} to {1e6 * high:.0f} parts in a million)"
+def _contradicted(start: Located, drift: float, seen: Seen, record: LoadRecord) -> tuple[Notice, ...]:
+    """Say so where the clock puts the fracture that the camera saw apart from the machine's."""
+    broke, lost = fracture(seen, record), _frames_lost(seen)
+    if broke is None or lost is None:
+        return ()
+    here, slack = start.offset_s + drift * (lost[0] - start.at_s), CONTRADICTION * start.u_s
+    apart = max(broke[0] - here, here - broke[1]) - slack
+    if apart <= 0:
+        return ()
+    order = "before" if here < broke[0] else "after"
+    text = (
+        f"With the clocks joined from the start of loading, the last frames are lost at least {apart:.2g} s "
+        f"{order} the force falls: the pattern failed at another time than the coupon, or a clock runs "
+        "wrong; check frames.rate and for missing frames, or give sync.drift."
+    )
+    return (Notice("clock_fracture", text),)

@@ -5,6 +5,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.lib.stride_tricks import sliding_window_view
 from numpy.typing import NDArray
+from scipy.interpolate import make_interp_spline
 from scipy.ndimage import median_filter, uniform_filter1d
 from scipy.signal import oaconvolve
 
@@ -23,6 +24,8 @@ SPIKE_SAMPLES = 3
 SPIKE_NOISE = 10
 #: Noise from this many standard deviations down is no load: one sample in 10⁹ lies beyond.
 NO_LOAD = 6
+#: Rows of the record within an exposure from which the force is averaged over it.
+EXPOSURE_ROWS = 2
 #: Median of the absolute value of a standard normal variable.
 _NORMAL_MEDIAN = 0.6745
 
@@ -187,7 +190,9 @@ def _about_line(force: Floats, half: int) -> tuple[Floats, Floats]:
     return mean, np.maximum(total - explained, 0) * size / (size - 2)
 
 
-def force_at(record: LoadRecord, clock: Clock, camera_time_s: Floats) -> Floats:
+def force_at(
+    record: LoadRecord, clock: Clock, camera_time_s: Floats, exposure_s: float | None = None
+) -> Floats:
     """Return the force at the instants of the frames.
 
     The record is smoothed over at most one frame interval (see `smoothed_force`), then interpolated
@@ -201,24 +206,41 @@ def force_at(record: LoadRecord, clock: Clock, camera_time_s: Floats) -> Floats:
     clock
         The machine's time of the frames.
     camera_time_s
-        Times of the frames on the camera's clock, s, shape (n,).
+        Times of the frames on the camera's clock, s, shape (n,): the middle of their exposures.
+    exposure_s
+        Exposure time of a frame, s, over which the force is averaged where the record has at least
+        `EXPOSURE_ROWS` rows in it: there a frame shows the mean of what happened.
 
     Returns
     -------
     Floats
         Force, N, shape (n,); NaN outside the record.
     """
-    return force_and_noise_at(record, clock, camera_time_s)[0]
+    return force_and_noise_at(record, clock, camera_time_s, exposure_s)[0]
 
 
-def force_and_noise_at(record: LoadRecord, clock: Clock, camera_time_s: Floats) -> tuple[Floats, Floats]:
+def force_and_noise_at(
+    record: LoadRecord, clock: Clock, camera_time_s: Floats, exposure_s: float | None = None
+) -> tuple[Floats, Floats]:
     """Return what `force_at` does, and the standard deviation of the noise that is left in it, N."""
     at = clock.machine_time(camera_time_s)
+    smooth, spread = _smoothed(record, frame_interval(at))
     force, noise = (
-        np.interp(at, record.time_s, values, left=np.nan, right=np.nan)
-        for values in _smoothed(record, frame_interval(at))
+        np.interp(at, record.time_s, values, left=np.nan, right=np.nan) for values in (smooth, spread)
     )
+    if exposure_s is not None and exposure_s >= EXPOSURE_ROWS * float(np.median(np.diff(record.time_s))):
+        force = _mean_over(record.time_s, smooth, at, exposure_s, force)
     return force, noise
+
+
+def _mean_over(time: Floats, force: Floats, at: Floats, width_s: float, elsewhere: Floats) -> Floats:
+    """Return the mean about each instant; `elsewhere` where the width is not wholly within the record."""
+    integral = make_interp_spline(time, force, k=1).antiderivative()
+    half = width_s / 2
+    whole = (at - half >= time[0]) & (at + half <= time[-1])
+    mean = elsewhere.copy()
+    mean[whole] = (integral(at[whole] + half) - integral(at[whole] - half)) / width_s
+    return mean
 
 
 def frame_interval(times_s: Floats) -> float:

@@ -133,11 +133,11 @@ class Misfit:
         (parametric bootstrap).  Nothing is made linear, so noise that draws the fit to a wrong hollow
         counts.
         """
-        wide = Misfit(self.course, widening=2 * self.widening)
+        near = _around(self.course, offset)
+        wide = Misfit(near, widening=2 * self.widening)
         rounded = wide.refined(offset) - offset
-        return hypot(wide._repeated(self, offset), rounded / sqrt(3)) * few_readings(
-            len(self.course.time_s) - DEGREE - 2
-        )
+        spread = hypot(wide._repeated(Misfit(near, widening=self.widening), offset), rounded / sqrt(3))
+        return spread * few_readings(len(near.time_s) - DEGREE - 2)
 
     def _repeated(self, own: Misfit, offset: float) -> float:
         """Return the root mean square of the misses of repeated fits."""
@@ -149,7 +149,7 @@ class Misfit:
             return inf
         fit = np.polyfit(truth[inside], course.signal[inside], DEGREE)
         signal = np.where(inside, np.polyval(fit, np.where(inside, truth, 0.0)), 0.0)
-        noise = self._smooth_noise(own, offset, tried, r)
+        noise = self._smooth_noise(own, tried, r)
         here = noise[:, len(tried) // 2]
         slope = np.polyval(np.polyder(fit), np.where(inside, truth, 0.0))
         by_force = float(np.mean((slope * here)[:, inside] ** 2))
@@ -165,15 +165,10 @@ class Misfit:
             misses.append(_lowest(tried, square) - offset)
         return float(np.sqrt(np.mean(np.square(misses)))) * few_readings(REPETITIONS - 1)
 
-    def _smooth_noise(self, own: Misfit, offset: float, tried: Floats, r: np.random.Generator) -> Floats:
+    def _smooth_noise(self, own: Misfit, tried: Floats, r: np.random.Generator) -> Floats:
         """Return draws of the noise that smoothing leaves in the force, shape (draws, offsets, frames)."""
         record, course = self.course.record, self.course
-        pad = (REACH + 2) * self.interval
-        first, last = np.searchsorted(
-            record.time_s, [offset + course.time_s[0] - pad, offset + course.time_s[-1] + pad]
-        )
-        part = slice(max(first - 1, 0), last + 1)
-        time, sigma = record.time_s[part], force_noise(record)[part] / self.unit
+        time, sigma = record.time_s, force_noise(record) / self.unit
         spacing = float(np.median(np.diff(record.time_s)))
         half = max(int((SMOOTHING * self.interval / spacing - 1) / 2), 0)
         at = tried[:, None] + course.time_s
@@ -191,6 +186,15 @@ class Misfit:
                 (np.interp(at + reach, time, integral) - np.interp(at - reach, time, integral)) / own.spacing
             )
         return np.array(draws)
+
+
+def _around(course: Course, offset: float) -> Course:
+    """Return a course with no more of the record than the frames reach when the offset varies a little."""
+    time, pad = course.record.time_s, (REACH + 4) * course.interval_s
+    first, last = np.searchsorted(time, [offset + course.time_s[0] - pad, offset + course.time_s[-1] + pad])
+    part = slice(max(int(first) - 1, 0), int(last) + 1)
+    cut = replace(course.record, time_s=time[part], force_N=course.record.force_N[part])
+    return replace(course, record=cut)
 
 
 def turned(course: Course) -> Course:

@@ -259,3 +259,67 @@ def test_noise_is_no_information():
     idle = np.random.default_rng(0).normal(0, 10.0, len(record.time_s))
     misfit = Misfit(Course(time, axial, 3e-6, replace(record, force_N=idle)))
     assert misfit.uncertainty(OFFSET) > misfit.interval / 2
+
+
+def test_the_end_of_unloading_gives_the_drift():
+    # Ten minutes between the two corners, each known to about 0.01 s, so to some 20 in a million.
+    drift = 3e-4
+    r = np.random.default_rng(5)
+    camera, dense = np.arange(0, 608, 0.2), np.arange(-1, 609, 0.02)
+
+    def strain_at(time):
+        return 4e-4 * (np.clip(time - 2.07, 0, 5) - np.clip(time - 600.0, 0, 5))
+
+    axial = strain_at(camera) + r.normal(0, 3e-6, len(camera))
+    force = 25 * 70e3 * strain_at(dense) + r.normal(0, 5.0, len(dense))
+    record = LoadRecord(Path("machine.csv"), OFFSET + (1 + drift) * dense, force)
+    found = fit_clock(camera, axial, np.full(len(camera), 3e-6), record, AUTO)
+    assert found.drift == pytest.approx(drift, abs=50e-6)
+    assert abs(found.drift - drift) < 3 * found.drift_standard_uncertainty < 2e-4
+    assert "the end of unloading" in found.method
+
+
+def broken(seed=0, *, drift=0.0):
+    """Return a pull whose coupon breaks at 10.05 s, with the frames lost from then on."""
+    time, axial, u, record = pull(seed, drift=drift)
+    camera = (record.time_s - OFFSET) / (1 + drift)
+    return (
+        time,
+        np.where(time < 10.05, axial, np.nan),
+        u,
+        replace(record, force_N=np.where(camera < 10.05, record.force_N, 0.0)),
+    )
+
+
+@pytest.mark.parametrize("seed", range(5))
+def test_fracture_bounds_what_a_bare_ramp_leaves_open(seed):
+    time, axial, u, record = broken(seed)
+    late = time > 4
+    found = fit_clock(time[late], axial[late], u[late], record, AUTO)
+    # The frames around the fracture are 0.2 s apart, and five rows of 0.02 s make 0.3 s, but for rounding.
+    assert abs(found.offset_s - OFFSET) < 2 * found.offset_standard_uncertainty_s < 2 * 0.301 / np.sqrt(12)
+    assert "from the fracture" in found.method
+
+
+def test_a_fracture_that_contradicts_the_start_is_said():
+    assert fit_clock(*broken(), AUTO).notices == ()
+    said = fit_clock(*broken(drift=0.09), AUTO).notices
+    assert [one.code for one in said] == ["clock_fracture"]
+    assert "before the force falls" in said[0].text
+
+
+@pytest.mark.parametrize("turned", [1, -1])
+def test_crosshead_travel_tells_what_a_record_zeroed_under_load_hides(turned):
+    # The camera films the crosshead's start; slack keeps force and strain at rest until the film has ended.
+    r = np.random.default_rng(2)
+    time, axial, u, record = pull(2)
+    seen, camera = time > 4, record.time_s - OFFSET
+    film = time[seen]
+    travel = np.clip(camera - 6.11, 0, None) * 0.05
+    shift = turned * 40 * np.clip(film - 6.11, 0, None) * 0.05 + r.normal(0, 0.01, len(film))
+    both = replace(record, displacement_mm=np.round(travel, 4))
+    alone = fit_clock(film, axial[seen], u[seen], both, AUTO)
+    found = fit_clock(film, axial[seen], u[seen], both, AUTO, shift_px=shift)
+    assert alone.offset_standard_uncertainty_s > 1
+    assert abs(found.offset_s - OFFSET) < 3 * found.offset_standard_uncertainty_s < 0.06
+    assert "crosshead" in found.method

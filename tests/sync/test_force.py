@@ -91,6 +91,21 @@ def test_frame_interval():
     assert frame_interval(np.array([3.0])) == 0.0
 
 
+def test_force_is_the_mean_over_the_exposure():
+    # Under a peak of slope ±1000 N/s, the mean over 0.04 s lies a quarter of 0.04 s · 1000 N/s below it.
+    dense = np.arange(0, 60, 0.001)
+    force = 5e4 - 1000 * np.abs(dense - 30)
+    camera = np.arange(20.0, 40.0, 0.5)
+    instant, mean = (
+        force_at(record(force, dense), Clock(0.0, 0.0, 0.0, "known"), camera, exposure)
+        for exposure in (None, 0.04)
+    )
+    # Half of what the force changes by from row to row.
+    np.testing.assert_allclose(instant - mean, np.where(camera == 30.0, 10.0, 0.0), atol=0.5)
+    slow = record(force[::50], dense[::50])
+    assert np.array_equal(force_at(slow, CLOCK, camera, 0.04), force_at(slow, CLOCK, camera))
+
+
 def broken_ramp(seed, size=5.0):
     """Return a ramp with a round start that breaks at 45 s."""
     return np.where(TIME < 45, 100 * np.clip(TIME - 3, 0, None) ** 1.1, 0) + noise(seed, size)
