@@ -74,6 +74,8 @@ def draft(frames: Path, record: Path, folder: Path) -> tuple[str, list[str]]:
         If an input cannot be read.
     """
     seen, read = _look(frames), look_at_record(record)
+    if "video" in seen.clocks:  # its own times are taken where it is named itself
+        frames = seen.source.pages[0].path
     lines = [
         *_heading(),
         *_specimen(record),

@@ -189,6 +189,8 @@ def suggested_pattern(names: Sequence[str]) -> str | None:
     All names fit it, each later than the one before.
     """
     stem = Path(names[0]).stem
+    if not stem.isprintable():  # no text that could stand in a test file
+        return None
     counted = _COUNTED.search(stem)
     if counted is not None:
         before, after = stem[: counted.start()], stem[counted.end() :]

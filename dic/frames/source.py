@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import hashlib
+import os
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, replace
 from datetime import datetime
@@ -99,7 +100,9 @@ class FrameSource:
         digest = hashlib.sha256()
         for path in dict.fromkeys(page.path for page in self.pages):
             state = path.stat()
-            digest.update(f"{path.resolve()}|{state.st_size}|{state.st_mtime_ns}\n".encode())
+            # A name need not be text.
+            digest.update(os.fsencode(path.resolve()))
+            digest.update(f"|{state.st_size}|{state.st_mtime_ns}\n".encode())
         return digest.hexdigest()
 
     def sha256(self) -> str:

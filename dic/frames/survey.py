@@ -194,7 +194,8 @@ def clocks_found(source: FrameSource) -> dict[str, ClockFound]:
         if keys is None:
             continue
         try:
-            section = Frames.model_validate({"source": source.pages[0].path.name, **keys})
+            # The files' own names need not be ones that a test file may hold.
+            section = Frames.model_validate({"source": f"frames{source.pages[0].path.suffix}", **keys})
             clock = frame_clock(section, Path(), source.pages, tags)
         except FrameError:
             continue

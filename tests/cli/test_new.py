@@ -6,12 +6,14 @@ import sys
 import tomllib
 from datetime import datetime, timedelta
 
+import av
 import numpy as np
 import pytest
 import tifffile
 
 from dic.drafting import draft, write_draft
 from dic.errors import InputError, StoreError, TestFileError
+from dic.frames import look_at_frames
 from dic.inspection import inspect
 from dic.pipeline import measure
 from dic.testfile import load
@@ -139,6 +141,38 @@ def test_a_folder_without_a_name_of_its_own(tmp_path, monkeypatch):
     frames, machine, folder = lay_out(tmp_path, PLAIN)
     monkeypatch.chdir(frames)
     assert tomllib.loads(draft(frames.__class__("."), machine, folder)[0])["frames"]["source"] == "frames"
+
+
+def test_a_video_in_a_folder_is_named_itself(tmp_path):
+    """Only then are its own times taken; the file's times come from PyAV, which wrote it."""
+    _, machine, folder = lay_out(tmp_path, PLAIN)
+    film = tmp_path / "film"
+    film.mkdir()
+    with av.open(str(film / "test.mkv"), "w") as out:
+        stream = out.add_stream("ffv1", rate=10)
+        stream.width, stream.height, stream.pix_fmt = 64, 48, "gray"
+        for k in range(4):
+            picture = np.random.default_rng(k).integers(0, 255, (48, 64)).astype(np.uint8)
+            out.mux(stream.encode(av.VideoFrame.from_ndarray(picture, format="gray")))
+        out.mux(stream.encode())
+    text, _ = draft(film, machine, folder)
+    filled = text.replace('width = ""', "width = 10").replace('thickness = ""', "thickness = 1")
+    (tmp_path / "test.toml").write_text(filled)
+    assert tomllib.loads(text)["frames"] == {"source": "film/test.mkv"}
+    found = inspect(tmp_path / "test.toml")
+    assert found.errors == ()
+    assert found.frames.interval_s == pytest.approx(0.1)
+
+
+@pytest.mark.skipif(sys.platform == "win32", reason="names are always text there")
+def test_names_of_frames_need_not_be_text(tmp_path):
+    """Names in another encoding, as old archives unpack to, cannot stand in a test file and need not."""
+    frames, machine, folder = lay_out(tmp_path, PLAIN, stamped=True)
+    for path in list(frames.iterdir()):
+        path.rename(path.with_name(os.fsdecode(b"Pr\xfcfung_") + path.name))
+    content = tomllib.loads(draft(frames, machine, folder)[0])
+    assert content["frames"] == {"source": "frames", "rate": ""}
+    assert len(look_at_frames(frames).source.listing()) == 64
 
 
 @pytest.mark.parametrize("lay", [lambda p: p.write_text("mine"), lambda p: p.mkdir(),
