@@ -10,8 +10,8 @@ from numpy.typing import NDArray
 
 from dic.frames.page import Page
 
-#: Depths that cameras have.
-DEPTHS = (10, 12, 14, 16)
+#: Depths that cameras have; 8 bits are sometimes stored in 16 as they are.
+DEPTHS = (8, 10, 12, 14, 16)
 #: Low bits that may be empty because a camera's 14, 12, 10 or 8 bits were put at the upper end of 16.
 EMPTY = (2, 4, 6, 8)
 

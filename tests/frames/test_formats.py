@@ -251,7 +251,10 @@ def test_a_mosaic_names_itself(folder):
 
 @pytest.mark.parametrize(
     ("bits", "shift", "full_scale"),
-    [(10, 0, 1023), (12, 0, 4095), (14, 0, 16383), (10, 6, 65472), (12, 4, 65520), (14, 2, 65532)],
+    [
+        *((8, 0, 255), (10, 0, 1023), (12, 0, 4095), (14, 0, 16383)),
+        *((8, 8, 65280), (10, 6, 65472), (12, 4, 65520), (14, 2, 65532)),
+    ],
 )
 def test_full_scale_is_that_of_the_depth_in_use(folder, bits, shift, full_scale):
     images = [picture(16) >> (16 - bits) << shift for _ in range(3)]
