@@ -54,13 +54,16 @@ class Header:
     name
         Without the unit.
     unit
-        The unit in it or below it; None where there is none.
+        The unit below it or in it; None where there is none.
+    other
+        The unit in it, where one stands below it too.
     """
 
     position: int
     text: str
     name: str
     unit: str | None
+    other: str | None = None
 
     @property
     def words(self) -> frozenset[str]:
@@ -100,7 +103,7 @@ def headers_of(table: Table) -> list[Header]:
         if unit and text.endswith(unit) and not (reads_as_unit(unit) or _is_clock_unit(unit)):
             name, unit = text, None  # "Date/Time"
         below = table.units[position] if position < len(table.units) else None
-        found.append(Header(position, text, name, below or unit))
+        found.append(Header(position, text, name, below or unit, unit if below else None))
     return found
 
 
@@ -253,7 +256,14 @@ def unit_of(quantity: str, header: Header, units: Mapping[str, str], path: Path)
             where=where,
             remedy=f"correct it, or give the right one as load_record.units.{quantity}",
         ) from error
-    if given is not None and _contradicts(header.unit, worth, kind):
+    if given is None and _contradicts(header.other, worth, kind):
+        raise LoadRecordError(
+            f"the header says {header.other} but the row below it says {header.unit}",
+            where=where,
+            remedy=f"give the right one as load_record.units.{quantity}",
+        )
+    in_file = [unit for unit in (header.unit, header.other) if unit is not None]
+    if given is not None and in_file and all(_contradicts(unit, worth, kind) for unit in in_file):
         raise LoadRecordError(
             f"the header says {header.unit} but load_record.units says {given}",
             where=where,

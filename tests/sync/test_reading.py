@@ -216,6 +216,17 @@ def test_header_and_test_file_contradict(write):
     assert "the header says kN but load_record.units says N" in refused(write(), units={"force": "N"})
 
 
+def test_header_and_row_of_units_contradict(write):
+    """Which of the two is right, only the user knows."""
+    path = write("Time (s),Force (kN),Crosshead (mm)\ns,N,mm")
+    assert "the header says kN but the row below it says N" in refused(path)
+    assert read_load_record(section(units={"force": "N"}), path).force_N[-1] == 1.0
+    assert read_load_record(section(units={"force": "kN"}), path).force_N[-1] == 1000.0
+    assert "load_record.units says MN" in refused(path, units={"force": "MN"})
+    same = write("Time (s),Force (kN),Crosshead (mm)\n[s],[kN],[mm]")
+    assert read_load_record(section(), same).force_N[-1] == 1000.0
+
+
 def test_a_unit_for_nothing(write):
     assert "did you mean 'Force'?" in refused(write(), units={"Forse": "N"})
 
