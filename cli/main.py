@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import sys
+from io import TextIOWrapper
 
 import typer
 
@@ -26,6 +27,8 @@ app.command()(render.render)
 
 def main() -> None:
     """Run the command line: 0 done, 2 the input is at fault, 1 anything else."""
+    if isinstance(sys.stdout, TextIOWrapper):  # not every terminal or file has a ν or a ×
+        sys.stdout.reconfigure(errors="replace")
     try:
         app()
     except InputError as error:

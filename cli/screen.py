@@ -12,6 +12,7 @@ from rich.markup import escape
 from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn, TimeRemainingColumn
 from rich.table import Table
 
+from dic.errors import printable
 from dic.quantities import for_people
 from dic.store.tables import stated, title_of
 
@@ -46,9 +47,14 @@ def frames_progress(what: str) -> Iterator[Report]:
         yield report
 
 
+def _plain(text: str) -> str:
+    """Return a stranger's text so that it neither steers the terminal nor counts as markup."""
+    return escape(printable(text))
+
+
 def show_measurement(measurement: Measurement) -> None:
     """Print the properties, the warnings and where the report lies."""
-    table = Table(title=escape(measurement.test.specimen.label), title_justify="left")
+    table = Table(title=_plain(measurement.test.specimen.label), title_justify="left")
     for heading in ("property", "symbol", "value (k = 2)"):
         table.add_column(heading)
     for item in measurement.properties.values():
@@ -56,10 +62,10 @@ def show_measurement(measurement: Measurement) -> None:
     console.print(table)
     for item in measurement.properties.values():
         if not isfinite(item.value):
-            console.print(f"no {escape(title_of(item.name))}: {escape('; '.join(item.notes))}")
+            console.print(f"no {title_of(item.name)}: {_plain('; '.join(item.notes))}")
     for notice in measurement.notices:
-        console.print(f"warning: {escape(notice.text)}")
-    console.print(f"report: {escape(str(measurement.folder / 'report.html'))}", soft_wrap=True)
+        console.print(f"warning: {_plain(notice.text)}")
+    console.print(f"report: {_plain(str(measurement.folder / 'report.html'))}", soft_wrap=True)
 
 
 def show_comparison(rows: Iterable[Compared]) -> None:

@@ -2,8 +2,16 @@
 
 import subprocess
 import sys
+from io import BytesIO, TextIOWrapper
+from pathlib import Path
+from types import SimpleNamespace
 
+import numpy as np
 import pytest
+import tifffile
+
+from dic_cli.main import main
+from dic_cli.screen import show_measurement
 
 COMMAND = [sys.executable, "-m", "dic_cli.main"]
 
@@ -69,6 +77,34 @@ def test_a_folder_that_cannot_be_made_is_status_2(tmp_path):
 
 def test_an_unknown_command_is_status_2():
     assert tauten("mesure").returncode == 2
+
+
+def test_a_screen_that_lacks_letters(tmp_path, monkeypatch):
+    """A file of an old code page has neither ν nor ×."""
+    (tmp_path / "frames").mkdir()
+    for k in range(3):
+        noise = np.random.default_rng(k).integers(0, 255, (20, 30)).astype(np.uint8)
+        tifffile.imwrite(tmp_path / "frames" / f"{k}.tif", noise)
+    rows = "".join(f"{k},{max(0, k - 20)}\n" for k in range(60))
+    (tmp_path / "machine.csv").write_text(f"Time (s),Force (N)\n{rows}")
+    (tmp_path / "test.toml").write_text(TEST)
+    screen = TextIOWrapper(BytesIO(), encoding="ascii", write_through=True)
+    monkeypatch.setattr(sys, "stdout", screen)
+    monkeypatch.setattr(sys, "argv", ["tauten", "inspect", str(tmp_path / "test.toml")])
+    with pytest.raises(SystemExit) as left:
+        main()
+    assert left.value.code == 0
+    assert b"30 ? 20 px" in screen.buffer.getvalue()
+
+
+def test_a_strangers_text_does_not_steer_the_screen(capsys):
+    """Labels come from the test file, whose strings may hold any character; the folder from anywhere."""
+    steering = "\x1b]0;other title\x07 [bold]mine[/bold]"
+    test = SimpleNamespace(specimen=SimpleNamespace(label=steering))
+    show_measurement(SimpleNamespace(test=test, properties={}, notices=(), folder=Path("\x1b[31m")))
+    shown = capsys.readouterr().out
+    assert "\x1b" not in shown
+    assert "[bold]mine" in shown
 
 
 def test_a_broken_program_is_status_1(tmp_path):
