@@ -36,7 +36,12 @@ def find_frames(source: Path, beside: Path | None = None) -> tuple[list[Path], l
     FrameError
         If there is no picture, or more than one video.
     """
-    found = _behind(source)
+    try:
+        found = _behind(source)
+    except OSError as error:
+        raise FrameError(
+            f"cannot be read ({error.strerror})", where=str(source), remedy="check frames.source"
+        ) from error
     known = [path for path in found if path.suffix.lower() in READERS]
     stills = [path for path in known if not reader_of(path).video]
     videos = [path for path in known if reader_of(path).video]

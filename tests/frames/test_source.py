@@ -1,5 +1,7 @@
 """Frames written by independent libraries (tifffile, Pillow, OpenCV) read to identical pixels."""
 
+from pathlib import Path
+
 import numpy as np
 import pytest
 import tifffile
@@ -114,6 +116,17 @@ def test_no_frames(folder):
         open_frames(section(), folder)
     with pytest.raises(FrameError, match="no frames found"):
         open_frames(section(source="elsewhere"), folder)
+
+
+def test_a_folder_that_may_not_be_read(folder, monkeypatch):
+    """Root may read everything, so the system's refusal is played here."""
+
+    def refused(path):
+        raise PermissionError(13, "Permission denied")
+
+    monkeypatch.setattr(Path, "iterdir", refused)
+    with pytest.raises(FrameError, match=r"frames: cannot be read .Permission denied.; check frames.source"):
+        open_frames(section(), folder)
 
 
 def test_fewer_than_three(folder):
