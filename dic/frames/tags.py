@@ -82,9 +82,8 @@ def _of_file(path: Path, indices: list[int]) -> Iterator[Tags]:
     try:
         with warnings.catch_warnings():
             warnings.simplefilter("ignore")
-            said = (
-                _from_tiff(path, indices) if path.suffix.lower() in (".tif", ".tiff") else _from_still(path)
-            )
+            tiff = path.suffix.lower() in (".tif", ".tiff", ".dng")
+            said = _from_tiff(path, indices) if tiff else _from_still(path)
     except Exception:  # the decoders raise whatever their authors chose
         said = []
     for place in range(len(indices)):
@@ -98,7 +97,8 @@ def _from_tiff(path: Path, indices: list[int]) -> list[dict[int, Any]]:
     pages = []
     with tifffile.TiffFile(path) as tiff:
         for index in indices:
-            tags = tiff.pages[index].aspage().tags
+            # A picture in a branch, as in DNG, has its tags at the first page.
+            tags = tiff.pages[max(index, 0)].aspage().tags
             said = {code: tags.valueof(code) for pair in _STAMPS for code in pair}
             exif = tags.valueof(_EXIF)
             inner = exif if isinstance(exif, dict) else {}

@@ -38,6 +38,15 @@ def write_tiff(path, moment, **how):
     Image.fromarray(grey()).save(path, tiffinfo=directory)
 
 
+def write_branch(path, moment, **how):
+    """As DNG has it: a small view in front, with the tags, and the picture in a branch."""
+    seconds = moment.strftime("%Y:%m:%d %H:%M:%S") + f".{moment.microsecond:06d}"
+    tags = [(36867, 2, 0, seconds, True), (33434, 5, 1, (1, 250), True)]
+    with tifffile.TiffWriter(path) as file:
+        file.write(grey()[::4, ::4], subifds=1, subfiletype=1, extratags=tags, metadata=None)
+        file.write(grey(), metadata=None)
+
+
 def write_still(path, moment, **how):
     data = Image.Exif()
     data[306] = "2001:01:01 00:00:00"
@@ -64,7 +73,8 @@ def folder(tmp_path):
 
 
 @pytest.mark.parametrize(
-    ("ending", "write"), [("tif", write_tiff), ("png", write_still), ("jpg", write_still)]
+    ("ending", "write"),
+    [("tif", write_tiff), ("dng", write_branch), ("png", write_still), ("jpg", write_still)],
 )
 def test_exif_stamps_with_sub_seconds_run_over_midnight(folder, ending, write):
     for k, moment in enumerate(moments(0, 0.125, 2.0, 2.130)):
