@@ -88,7 +88,7 @@ def set_up(test: TestFile, source: FrameSource) -> Setup:
     TestFileError
         If region, gauge length or reference frames do not fit the pictures.
     """
-    first, last = _reference_frames(source, test.frames.reference)
+    first, last = source.reference(test.frames.reference)
     image = _mean(source, first, last)
     full_scale = source.full_scale()
     known = _given_region(image.shape, test.gauge.region)
@@ -185,17 +185,6 @@ def _subset_taken(wanted: int, grid: Grid) -> Iterator[Notice]:
             "subset_even",
             f"A subset has a middle pixel, so correlation.subset = {wanted} was taken as {grid.subset}.",
         )
-
-
-def _reference_frames(source: FrameSource, said: int | tuple[int, int] | None) -> tuple[int, int]:
-    first, last = said if isinstance(said, tuple) else (said or 0, said or 0)
-    if not 0 <= first <= last < len(source):
-        raise TestFileError(
-            f"there are no frames {first} to {last}",
-            where="frames.reference",
-            remedy=f"frames are counted from 0 to {len(source) - 1}",
-        )
-    return first, last
 
 
 def _mean(source: FrameSource, first: int, last: int) -> NDArray[np.float64]:

@@ -2,6 +2,7 @@
 
 import json
 
+import imageio.v3 as imageio
 import numpy as np
 import pytest
 import tifffile
@@ -192,6 +193,25 @@ def test_a_damaged_frame_is_a_doubt_and_most_of_them_an_error(laid_out, tmp_path
         if k < 7:
             assert f"cam_{k}.tif" in found.frames.unreadable
             assert "frames_unreadable" in codes(found)
+
+
+def test_the_frame_that_strain_counts_from_must_be_readable(laid_out, tmp_path):
+    """A PNG that is cut off is known by its data only; of 16 bits even the depth in use needs them."""
+    path = laid_out()
+    for depth in (np.uint8, np.uint16):
+        for k, grey in enumerate(pictures()):
+            (tmp_path / "frames" / f"cam_{k + 1}.tif").unlink(missing_ok=True)
+            imageio.imwrite(tmp_path / "frames" / f"cam_{k + 1}.png", grey.astype(depth))
+        first = tmp_path / "frames" / "cam_1.png"
+        first.write_bytes(first.read_bytes()[:400])
+        found = inspect(path)
+        assert "cam_1.png" in found.errors[0]
+        assert found.record.rows == 101
+    first.write_bytes((tmp_path / "frames" / "cam_2.png").read_bytes())
+    for said, fault in (("[0, 7]", None), ("9", "no frames 9 to 9")):
+        path = laid_out(('rate = "2 Hz"', f'rate = "2 Hz"\nreference = {said}'), frames=[])
+        errors = inspect(path).errors
+        assert fault in errors[0] if fault else not errors
 
 
 def test_dates_on_both_sides_give_an_offset_to_look_at(laid_out, tmp_path):

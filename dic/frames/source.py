@@ -13,7 +13,7 @@ from pathlib import Path
 import numpy as np
 from numpy.typing import NDArray
 
-from dic.errors import FrameError, Notice
+from dic.errors import FrameError, Notice, TestFileError
 from dic.frames.clock import exposure_of, frame_clock
 from dic.frames.depth import Depth, depth_in_use
 from dic.frames.folder import find_frames
@@ -94,6 +94,23 @@ class FrameSource:
             except FrameError:
                 if index == 0:
                     raise
+
+    def reference(self, said: int | tuple[int, int] | None) -> tuple[int, int]:
+        """Return the first and last frame that strain counts from, as the test file says it.
+
+        Raises
+        ------
+        TestFileError
+            If there are no such frames.
+        """
+        first, last = said if isinstance(said, tuple) else (said or 0, said or 0)
+        if not 0 <= first <= last < len(self):
+            raise TestFileError(
+                f"there are no frames {first} to {last}",
+                where="frames.reference",
+                remedy=f"frames are counted from 0 to {len(self) - 1}",
+            )
+        return first, last
 
     def listing(self) -> str:
         """Return a digest of names, sizes and dates: whether these are still the same files."""

@@ -8,7 +8,7 @@ from typing import Any
 
 import numpy as np
 
-from dic.errors import InputError, Notice
+from dic.errors import FrameError, InputError, Notice
 from dic.frames import FrameSource, check_damage, open_frames, unreadable_frames
 from dic.inspection.doubts import dimension_doubts, frame_doubts, missing_uncertainties, record_doubts
 from dic.inspection.looking import Progress, look_at_frames, look_at_record
@@ -49,11 +49,12 @@ def inspect(test: TestFile | str | Path, progress: Progress | None = None) -> In
     seen = None
     if source is not None:
         warnings += source.notices
-        seen = look_at_frames(source, sections["frames"], progress)
+        seen = _attempt(lambda: look_at_frames(source, sections["frames"], progress), errors)
+    if seen is not None:
         warnings += frame_doubts(seen)
         damage = {source.names.index(name): why for name, why in seen.unreadable.items()}
         warnings += unreadable_frames(source.names, damage)
-        _attempt(lambda: check_damage(damage, len(source), sections["frames"].source), errors)
+        _attempt(lambda: _check_damage(damage, source, sections["frames"]), errors)
     if record is not None:
         warnings += record_doubts(record)
     warnings += _specimen_doubts(sections, record, seen)
@@ -91,6 +92,19 @@ def _attempt(read: Callable[[], Any], errors: list[str]) -> Any:
 def _opened_frames(sections: dict[str, Any], path: Path) -> FrameSource | None:
     section: Frames | None = sections.get("frames")
     return None if section is None else open_frames(section, path.parent)
+
+
+def _check_damage(damage: dict[int, str], source: FrameSource, section: Frames) -> None:
+    """Refuse frames of which most, or those that strain counts from, cannot be used."""
+    check_damage(damage, len(source), section.source)
+    first, last = source.reference(section.reference)
+    for index in range(first, last + 1):
+        if index in damage:
+            raise FrameError(
+                damage[index],
+                where=source.names[index],
+                remedy="strain counts from it, so say another one with frames.reference",
+            )
 
 
 def _opened_record(sections: dict[str, Any], path: Path) -> LoadRecord | None:
