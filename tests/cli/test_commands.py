@@ -13,17 +13,9 @@ import tifffile
 from dic_cli.main import main
 from dic_cli.screen import show_measurement
 
-COMMAND = [sys.executable, "-m", "dic_cli.main"]
-
-
-def tauten(*arguments, cwd=None):
-    return subprocess.run(
-        [*COMMAND, *map(str, arguments)], capture_output=True, text=True, cwd=cwd, check=False
-    )
-
 
 @pytest.mark.parametrize("command", [[], ["run"], ["demo"], ["render"]])
-def test_help(command):
+def test_help(tauten, command):
     found = tauten(*command, "--help")
     assert found.returncode == 0
     assert "Usage" in found.stdout
@@ -39,11 +31,11 @@ def test_help_imports_nothing_heavy():
 
 def test_a_wrong_input_is_status_2_and_one_sentence(tmp_path):
     (tmp_path / "test.toml").write_text("[specimen]\nwidth = 3\n")
-    found = tauten("run", tmp_path / "test.toml")
+    command = [sys.executable, "-m", "dic_cli.main", "run", str(tmp_path / "test.toml")]
+    found = subprocess.run(command, capture_output=True, text=True, check=False)
     assert found.returncode == 2
     assert found.stderr.startswith("tauten: ")
     assert found.stderr.count("\n") == 1
-    assert "Traceback" not in found.stderr
 
 
 TEST = """
@@ -60,22 +52,21 @@ force = "Force"
 """
 
 
-def test_a_missing_file_is_status_2(tmp_path):
+def test_a_missing_file_is_status_2(tauten, tmp_path):
     found = tauten("run", tmp_path / "none.toml")
     assert found.returncode == 2
     assert "none.toml" in found.stderr
 
 
-def test_a_folder_that_cannot_be_made_is_status_2(tmp_path):
+def test_a_folder_that_cannot_be_made_is_status_2(tauten, tmp_path):
     """Nobody can make a folder below a file, not even root."""
     (tmp_path / "test.toml").write_text(TEST)
     found = tauten("run", tmp_path / "test.toml", "--out", tmp_path / "test.toml" / "out")
     assert found.returncode == 2
     assert "cannot be made" in found.stderr
-    assert "Traceback" not in found.stderr
 
 
-def test_an_unknown_command_is_status_2():
+def test_an_unknown_command_is_status_2(tauten):
     assert tauten("mesure").returncode == 2
 
 
@@ -118,11 +109,15 @@ def test_a_broken_program_is_status_1(tmp_path):
     assert found.returncode == 1
 
 
-def test_render_then_run(tmp_path, small_scenario):
-    (tmp_path / "small.toml").write_text(small_scenario)
+def test_render(tauten, tmp_path, small_scenario):
+    (tmp_path / "small.toml").write_text(small_scenario.replace("frames = 22", "frames = 3"))
     made = tauten("render", "small.toml", "made", cwd=tmp_path)
     assert made.returncode == 0, made.stderr
-    found = tauten("run", "made/test.toml", "--out", "results", cwd=tmp_path)
+    assert (tmp_path / "made" / "truth.json").exists()
+
+
+def test_run(tauten, copy):
+    found = tauten("run", "test.toml", "--out", "results", cwd=copy.parent)
     assert found.returncode == 0, found.stderr
     assert "Young's modulus" in found.stdout
-    assert (tmp_path / "results" / "report.html").exists()
+    assert (copy.parent / "results" / "report.html").exists()

@@ -1,20 +1,8 @@
 """``tauten inspect`` as a person, or a program, meets it."""
 
 import json
-import subprocess
-import sys
 
 import pytest
-
-
-def inspected(*arguments, cwd):
-    return subprocess.run(
-        [sys.executable, "-m", "dic_cli.main", "inspect", *arguments],
-        capture_output=True,
-        text=True,
-        cwd=cwd,
-        check=False,
-    )
 
 
 @pytest.fixture
@@ -22,9 +10,9 @@ def virtual_test(copy):
     return copy.parent
 
 
-def test_a_sound_test(virtual_test):
+def test_a_sound_test(tauten, virtual_test):
     before = set(virtual_test.rglob("*"))
-    found = inspected("test.toml", cwd=virtual_test)
+    found = tauten("inspect", "test.toml", cwd=virtual_test)
     assert found.returncode == 0, found.stderr
     assert "22, from cam_00001.tif to cam_00022.tif" in found.stdout
     assert "Crosshead (mm)" in found.stdout
@@ -32,10 +20,10 @@ def test_a_sound_test(virtual_test):
     assert set(virtual_test.rglob("*")) == before
 
 
-def test_json_is_all_there_is_on_stdout_even_if_an_input_is_at_fault(virtual_test):
+def test_json_is_all_there_is_on_stdout_even_if_an_input_is_at_fault(tauten, virtual_test):
     text = (virtual_test / "test.toml").read_text()
     (virtual_test / "other.toml").write_text(text.replace("machine.csv", "none.csv"))
-    found = inspected("other.toml", "--json", cwd=virtual_test)
+    found = tauten("inspect", "other.toml", "--json", cwd=virtual_test)
     assert found.returncode == 2
     said = json.loads(found.stdout)
     assert said["record"] is None

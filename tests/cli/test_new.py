@@ -1,7 +1,6 @@
 """``tauten new``: from files as a laboratory has them to a test file that runs once its blanks are filled."""
 
 import os
-import subprocess
 import sys
 import tomllib
 from datetime import datetime, timedelta
@@ -66,11 +65,10 @@ def test_from_two_folders_to_a_report(small_test, tmp_path):
     assert (tmp_path / "test-results" / "report.html").exists()
 
 
-def test_the_command_says_what_is_left_to_fill_in(tmp_path):
+def test_the_command_says_what_is_left_to_fill_in(tauten, tmp_path):
     lay_out(tmp_path, PLAIN)
-    command = [sys.executable, "-m", "dic_cli.main", "new", "frames", "machine.csv"]
     for status, said in ((0, "Fill in specimen.width"), (2, "exists already")):
-        found = subprocess.run(command, capture_output=True, text=True, cwd=tmp_path, check=False)
+        found = tauten("new", "frames", "machine.csv", cwd=tmp_path)
         assert found.returncode == status
         assert said in found.stdout + found.stderr
 

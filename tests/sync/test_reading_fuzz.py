@@ -72,7 +72,7 @@ def tables(draw):
     return end.join(lines) + end, np.array([float(f"{f:.{digits}f}") for f in forces])
 
 
-@settings(max_examples=40, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture])
+@settings(max_examples=25, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture])
 @given(tables(), st.sampled_from(["utf-8", "utf-8-sig", "utf-16", "cp1252"]))
 def test_whatever_the_layout_the_numbers_are_found(tmp_path, table, encoding):
     text, forces = table
@@ -90,7 +90,7 @@ CELLS = [
 ]
 
 
-@settings(max_examples=40, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture])
+@settings(max_examples=25, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture])
 @given(st.lists(st.lists(st.sampled_from(CELLS), max_size=5), max_size=14), st.sampled_from(",;\t| "))
 def test_random_tables(tmp_path, rows, separator):
     path = tmp_path / "m.csv"
