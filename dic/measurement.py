@@ -98,6 +98,8 @@ class Measurement:
         Comparison with a clip-on extensometer; None where the load record has none.
     gauges
         What the gauges that the test file names read.
+    optics
+        Scale, lens, and what was taken off the strains, as ``results.json`` says them.
     """
 
     test: TestFile
@@ -115,6 +117,7 @@ class Measurement:
     folder: Path = field(default=Path())
     clip_on: ClipOn | None = None
     gauges: tuple[NamedHistory, ...] = ()
+    optics: dict[str, Any] = field(default_factory=dict)
 
     def to_pandas(self) -> pd.DataFrame:
         """Return the history as a table, the columns those of ``history.csv``."""

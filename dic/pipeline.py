@@ -7,7 +7,9 @@ the others take seconds and can be repeated with other windows or dimensions.
 from __future__ import annotations
 
 from collections.abc import Callable
+from dataclasses import replace
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -18,9 +20,9 @@ from dic.comparison import doubts as clip_on_doubts
 from dic.errors import ClockError, InputError
 from dic.frames import open_frames, unreadable_frames
 from dic.gauges import NamedHistory, NamedReadings
-from dic.gauges.probes import Subsets
 from dic.judgement import loading_doubts, reading_doubts
 from dic.measurement import Measurement, Scene
+from dic.optics import bound, corrected, corrected_gauges, receding
 from dic.pattern import sketch
 from dic.preparation import Setup, set_up
 from dic.properties import Curve, Evaluation, evaluate, make_curve
@@ -40,7 +42,7 @@ from dic.strain.alignment import (
     find_alignment,
     limit_of,
 )
-from dic.strain.rates import gather_rates
+from dic.strain.rates import Moved, gather_rates
 from dic.sync import Clock, LoadRecord, fit_clock, known_clock, read_load_record
 from dic.testfile import TestFile, load
 
@@ -111,11 +113,13 @@ def read_gauges(
     test: TestFile, setup: Setup, folder: Path, progress: Progress | None
 ) -> tuple[GaugeHistory, list[NamedHistory]]:
     """Track the frames, or take up what was tracked before, and read the gauges in each."""
-    reader, readings = setup.reader(), []
-    named = NamedReadings(Subsets(setup.reference, setup.grid), setup.gauges, setup.silhouette)
-    for done, (match, widths) in enumerate(tracked_or_stored(test, setup, folder), start=1):
+    reader, readings, still = setup.reader(), [], []
+    named = NamedReadings(setup.subsets(), setup.gauges, setup.silhouette)
+    for done, followed in enumerate(tracked_or_stored(test, setup, folder), start=1):
+        match = setup.optics.straight(followed.match, setup.reference.x, setup.reference.y)
         readings.append(reader.read(match))
-        named.read(match, widths)
+        named.read(match, followed.widths)
+        still.append(followed.patch)
         if progress is not None:
             progress(done, len(setup.source))
     history = gather(
@@ -123,7 +127,10 @@ def read_gauges(
     )
     if test.specimen.shape == "round":
         history = named.of_round_bar(history)
-    return history, named.histories(history.periodic, setup.scale_mm)
+    seen = [one for one in still if one is not None]
+    history, apparent, u = corrected(history, seen or None, receding(test.camera, test.specimen))
+    gauges = named.histories(history.periodic, setup.scale_mm)
+    return history, corrected_gauges(gauges, apparent, u)
 
 
 def _clock(test: TestFile, setup: Setup, history: GaugeHistory, record: LoadRecord) -> Clock:
@@ -156,7 +163,11 @@ def judged(
     folder: Path,
 ) -> Measurement:
     """Go from gauge histories to properties."""
-    curve = make_curve(history, record, clock, test.specimen.area, setup.source.exposure_s)
+    curve = replace(
+        make_curve(history, record, clock, test.specimen.area, setup.source.exposure_s),
+        u_towards=bound(test.camera),
+        straightened=setup.optics.lens is not None,
+    )
     found = evaluate(curve, test.specimen, test.load_record.force_uncertainty, clock, test.properties)
     first = test.frames.first_reference
     clip_on = compare(
@@ -196,7 +207,19 @@ def judged(
         folder=folder,
         clip_on=clip_on,
         gauges=tuple(named),
+        optics=_optics(test, setup),
     )
+
+
+def _optics(test: TestFile, setup: Setup) -> dict[str, Any]:
+    """Say what is known of the camera, and what was taken off the strains."""
+    false = bound(test.camera)
+    return {
+        **setup.optics.figures(),
+        "still_patch_px": test.camera.still_patch,
+        "u_strain_towards_camera": false,
+        "thinning_corrected": receding(test.camera, test.specimen) > 0,
+    }
 
 
 def _alignment(
@@ -209,12 +232,22 @@ def _alignment(
     if inside.sum() >= LEAST_FRAMES:
         frames = np.flatnonzero(inside)
         frames = frames[:: -(-len(frames) // MOST_FRAMES)]
-        moved = fields.stored_motion(folder, frames)
+        moved = (_straight(one, setup) for one in fields.stored_motion(folder, frames))
         rates = gather_rates(moved, history.axial[frames], grid, setup.region, window)
     limit = limit_of(test.alignment.limit, test.alignment.standard)
     stated = setup.coupon.u_axis_deg
     u_axis = stated if np.isfinite(stated) else U_AXIS_DEG
     return find_alignment(history, curve.force_N, inside, rates, limit, u_axis)
+
+
+def _straight(moved: Moved, setup: Setup) -> Moved:
+    """Return one frame's displacements freed from the lens' distortion."""
+    lens = setup.optics.lens
+    if lens is None:
+        return moved
+    x, y = np.meshgrid(setup.grid.columns, setup.grid.rows)
+    u, v = lens.displaced(x, y, moved.u, moved.v)
+    return moved._replace(u=u, v=v)
 
 
 def _scene(test: TestFile, setup: Setup, folder: Path) -> Scene:

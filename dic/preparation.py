@@ -15,6 +15,7 @@ from dic.frames import FrameSource, RepeatWatch
 from dic.frames.readers import list_pages, read_page
 from dic.gauges import Placed, Silhouette, facing, place_gauges
 from dic.gauges.probes import Subsets
+from dic.optics import Lens, Optics, StillPatch, lay_patch, lens_of, settle_scale
 from dic.pattern import Coupon, Given, axes, axis_doubts, doubts, find_coupon, picture_quality
 from dic.strain import GaugeReader, Region
 from dic.testfile import Correlation, TestFile
@@ -46,8 +47,6 @@ class Setup:
         Where strain is averaged.
     grid, reference
         The subsets, and all that matching needs of them.
-    scale_mm
-        mm per px, NaN where unknown.
     extensometer_px
         Gauge length as asked for, px; None for the whole region.
     quality
@@ -58,6 +57,8 @@ class Setup:
         The coupon's edges, where they are to be followed and both in view.
     gauges
         Those that the test file names, on the coupon.
+    optics
+        Scale, lens and reference patch.
     """
 
     source: FrameSource
@@ -66,7 +67,7 @@ class Setup:
     region: Region
     grid: Grid
     reference: Reference
-    scale_mm: float
+    optics: Optics
     extensometer_px: float | None
     quality: dict[str, float]
     notices: tuple[Notice, ...]
@@ -75,7 +76,17 @@ class Setup:
 
     def reader(self) -> GaugeReader:
         """Return a fresh reader of the gauges."""
-        return GaugeReader(self.reference, self.grid, self.region, self.extensometer_px)
+        places = self.optics.places(self.reference.x, self.reference.y)
+        return GaugeReader(self.reference, self.grid, self.region, self.extensometer_px, places)
+
+    def subsets(self) -> Subsets:
+        """Return the subsets as the named gauges see them."""
+        return Subsets(self.reference, self.grid, self.optics.places(self.reference.x, self.reference.y))
+
+    @property
+    def scale_mm(self) -> float:
+        """Size of a pixel, mm, NaN where unknown."""
+        return self.optics.scale.mm
 
 
 def set_up(test: TestFile, source: FrameSource) -> Setup:
@@ -95,8 +106,9 @@ def set_up(test: TestFile, source: FrameSource) -> Setup:
     coupon = find_coupon(image, test.gauge.axis_angle, known, given_coupon(test))
     mask, facing_notices = facing(coupon, test.specimen.shape, test.gauge.region == "auto")
     region = Region.around(mask, *axes(coupon.axis_angle_deg))
-    scale_mm = test.camera.scale or test.specimen.visible_width / coupon.width_px
-    length = _gauge_length(test, scale_mm)
+    lens, calibration, board_mm = lens_of(test, source.shape, region.centre, region.axial)
+    scale, scale_doubts = settle_scale(test.camera, test.specimen, coupon, image.shape, lens, board_mm)
+    length = _gauge_length(test, scale.mm)
     grid = _grid(test, mask, region, length)
     reference = _prepared(test.correlation, image, grid, mask, last - first + 1, full_scale)
     if test.frames.reference is None:
@@ -107,7 +119,10 @@ def set_up(test: TestFile, source: FrameSource) -> Setup:
     silhouette = None
     if test.follows_edges and None not in coupon.edges:
         silhouette = Silhouette(image, coupon, region)
-    gauges = place_gauges(test.gauges, Subsets(reference, grid), region, scale_mm, silhouette)
+    patch = _patch(test, image, coupon, grid, reference, lens)
+    optics = Optics(scale, lens, calibration, patch)
+    subsets = Subsets(reference, grid, optics.places(reference.x, reference.y))
+    gauges = place_gauges(test.gauges, subsets, region, scale.mm, silhouette)
     quality = picture_quality(image, coupon, full_scale)
     return Setup(
         source=source,
@@ -116,7 +131,7 @@ def set_up(test: TestFile, source: FrameSource) -> Setup:
         region=region,
         grid=grid,
         reference=reference,
-        scale_mm=scale_mm,
+        optics=optics,
         extensometer_px=length,
         quality={**quality, "reference_frames": float(reference.frames)},
         notices=(
@@ -124,9 +139,33 @@ def set_up(test: TestFile, source: FrameSource) -> Setup:
             *facing_notices,
             *axis_doubts(coupon),
             *doubts(quality, grid.subset),
+            *scale_doubts,
+            *(calibration.notices if calibration is not None else ()),
         ),
         silhouette=silhouette,
         gauges=tuple(gauges),
+    )
+
+
+def _patch(
+    test: TestFile,
+    image: NDArray[np.float64],
+    coupon: Coupon,
+    grid: Grid,
+    reference: Reference,
+    lens: Lens | None,
+) -> StillPatch | None:
+    if test.camera.still_patch is None:
+        return None
+    return lay_patch(
+        image,
+        test.camera.still_patch,
+        coupon.mask,
+        subset=grid.subset,
+        step=grid.step,
+        settings=reference.settings,
+        frames=reference.frames,
+        lens=lens,
     )
 
 

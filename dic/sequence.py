@@ -7,9 +7,12 @@ import json
 from collections import deque
 from collections.abc import Iterator
 from concurrent.futures import ThreadPoolExecutor
+from itertools import repeat
 from pathlib import Path
+from typing import NamedTuple
 
 import numpy as np
+from numpy.typing import NDArray
 from threadpoolctl import threadpool_limits
 
 from dic import provenance
@@ -19,30 +22,41 @@ from dic.errors import FrameError, TrackingError
 from dic.frames import FrameSource, RepeatWatch, check_damage
 from dic.frames.readers import Grey
 from dic.gauges.silhouette import Silhouette, Widths, clear, mean_motion
+from dic.optics import Apparent, Lens
 from dic.preparation import Setup
 from dic.store import fields
 from dic.strain import StrainMapper, Window
 from dic.testfile import TestFile
 
 
-def tracked_or_stored(test: TestFile, setup: Setup, folder: Path) -> Iterator[tuple[Match, Widths | None]]:
-    """Yield one match per frame, and the width between the coupon's edges if they are followed.
+class Followed(NamedTuple):
+    """What one frame gives: the match, and edges and still patch where they are followed."""
+
+    match: Match
+    widths: Widths | None
+    patch: Apparent | None
+
+
+def tracked_or_stored(test: TestFile, setup: Setup, folder: Path) -> Iterator[Followed]:
+    """Yield what each frame gives, displacements in the picture as it is.
 
     From the store if it holds this very tracking, else by tracking.
     """
-    key = tracking_key(test, setup.source)
+    key = tracking_key(test, setup.source, setup.optics.lens)
     if fields.stored_attributes(folder).get("tracking_key") == key:
-        matches = fields.stored_matches(folder, setup.grid)
-        if setup.silhouette is None:
-            yield from ((match, None) for match in matches)
-        else:
-            edges = (Widths(*one) for one in fields.stored_edges(folder))
-            yield from zip(matches, edges, strict=True)
+        nothing = repeat(None, len(setup.source))
+        edges, patch = setup.silhouette is not None, setup.optics.patch is not None
+        yield from map(
+            Followed,
+            fields.stored_matches(folder, setup.grid),
+            (Widths(*one) for one in fields.stored_edges(folder)) if edges else nothing,
+            (Apparent(*one) for one in fields.stored_patch(folder)) if patch else nothing,
+        )
     else:
         yield from _tracked(test, setup, folder, key)
 
 
-def tracking_key(test: TestFile, source: FrameSource) -> str:
+def tracking_key(test: TestFile, source: FrameSource, lens: Lens | None = None) -> str:
     """Return a digest of all that tracking depends on."""
     said = {
         "version": provenance.VERSION,
@@ -59,6 +73,9 @@ def tracking_key(test: TestFile, source: FrameSource) -> str:
         "region": test.gauge.region,
         "edges": test.follows_edges,
         "shape": test.specimen.shape,
+        "still_patch": test.camera.still_patch,
+        # The stored maps, and what the patch seems to do, are in straight coordinates.
+        "lens": None if lens is None else [lens.focal, lens.centre, lens.coefficients, lens.plane.tolist()],
         "subsets": (test.gauge.subsets, test.gauge.length if test.gauge.subsets == "ends" else None),
     }
     return hashlib.sha256(json.dumps(said, sort_keys=True).encode()).hexdigest()
@@ -70,7 +87,7 @@ def map_window(test: TestFile, grid: Grid) -> Window:
     return Window(maps.window, grid.step, grid.subset, maps.degree, maps.weighting, test.correlation.shape)
 
 
-def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[tuple[Match, Widths | None]]:
+def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[Followed]:
     grid, source = setup.grid, setup.source
     window = map_window(test, grid)
     attributes = {
@@ -83,8 +100,9 @@ def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[t
         "strain_measure": "engineering, in coupon axes",
         "axis_angle_deg": setup.coupon.axis_angle_deg,
     }
-    mapper = StrainMapper(window, (setup.region.axial, setup.region.transverse))
-    measured, edges = 0, setup.silhouette
+    mapper = StrainMapper(window, (setup.region.axial, setup.region.transverse), _unbending(setup))
+    measured, edges, patch = 0, setup.silhouette, setup.optics.patch
+    still = patch.tracker() if patch is not None else None
     seen: deque[Grey | Flag] = deque(maxlen=1)
     damage: dict[int, str] = {}
     with (
@@ -92,7 +110,12 @@ def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[t
         threadpool_limits(1, user_api="blas"),
         ThreadPoolExecutor(1) as hashing,
         fields.FieldsWriter(
-            folder, grid, source.time_s, attributes, edges.along if edges is not None else None
+            folder,
+            grid,
+            source.time_s,
+            attributes,
+            edges.along if edges is not None else None,
+            patch is not None,
         ) as writer,
     ):
         hashed = hashing.submit(source.sha256)
@@ -100,14 +123,23 @@ def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[t
             _remembered(_read_ahead(source, damage), seen), setup.reference, grid.neighbours()
         ):
             widths = _widths(edges, setup, seen[0], match) if edges is not None else None
-            parts = (match.u, match.v, match.sigma_u, match.sigma_v)
+            apparent = None
+            if patch is not None and still is not None:
+                frame = seen[0]
+                if isinstance(frame, Flag):
+                    apparent = Apparent(np.nan, np.nan)
+                else:
+                    apparent = patch.apparent(still.follow(frame))
+            flat = setup.optics.straight(match, setup.reference.x, setup.reference.y)
+            parts = (flat.u, flat.v, match.sigma_u, match.sigma_v)
             writer.put(
                 match,
                 mapper.strain(*(fields.spread(part, grid.inside) for part in parts)),
                 (widths.px, widths.u_per_grey) if widths is not None else None,
+                apparent,
             )
             measured += bool(match.converged.any())
-            yield match, widths
+            yield Followed(match, widths, apparent)
         check_damage(damage, len(source), test.frames.source)
         # The frames of the reference always match; alone they say nothing.
         if measured <= setup.reference.frames:
@@ -118,6 +150,15 @@ def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[t
             )
         writer.note("frames_sha256", hashed.result())
         writer.note("unreadable_frames", json.dumps(damage))
+
+
+def _unbending(setup: Setup) -> NDArray[np.float64] | None:
+    """Return slopes of picture coordinates in straight ones on the grid; None where no lens is known."""
+    if setup.optics.lens is None:
+        return None
+    x, y = np.meshgrid(setup.grid.columns, setup.grid.rows)
+    slopes = setup.optics.lens.straight(x, y)[1]
+    return np.asarray(np.linalg.inv(slopes), float)
 
 
 def unreadable(folder: Path) -> dict[int, str]:

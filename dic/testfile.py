@@ -222,13 +222,101 @@ class LoadRecord(Section):
     force_uncertainty: Fraction | None = None
 
 
+Picture = Annotated[float, Field(ge=-1e6, le=1e6)]
+
+
+class Marks(Section):
+    """Two marks on the coupon's face whose distance is known."""
+
+    start: tuple[Picture, Picture] = Field(alias="from")
+    end: tuple[Picture, Picture] = Field(alias="to")
+    distance: Length
+    uncertainty: Length | None = None
+
+
+class Board(Section):
+    """Pictures of a chessboard or ChArUco board, lengths in mm, columns and rows in squares."""
+
+    source: FileName
+    kind: Literal["chessboard", "charuco"] = "chessboard"
+    columns: int = Field(ge=3, le=100)
+    rows: int = Field(ge=3, le=100)
+    square: Length
+    marker: Length | None = None
+    dictionary: Annotated[str, Field(pattern=r"^[4-7]X[4-7]_(50|100|250|1000)$")] | None = None
+    plane: FileName | None = None
+
+    @model_validator(mode="after")
+    def _markers_where_there_are_some(self) -> Board:
+        if self.kind == "charuco" and (self.marker is None or self.dictionary is None):
+            raise ValueError('a ChArUco board needs marker = "3.5 mm" and dictionary = "4X4_50"; add them')
+        if self.kind == "chessboard" and (self.marker or self.dictionary):
+            raise ValueError('marker and dictionary belong to kind = "charuco"; remove them or say so')
+        if self.marker is not None and not self.marker < self.square:
+            raise ValueError("marker must be smaller than square")
+        if self.dictionary is not None and self.dictionary[0] != self.dictionary[2]:
+            raise ValueError('a dictionary\'s markers are square; write for example "4X4_50"')
+        return self
+
+
+Coefficient = Annotated[float, Field(ge=-1e3, le=1e3)]
+
+
+class Distortion(Section):
+    """Brown and Conrady's coefficients, and what they refer to, px."""
+
+    focal: Annotated[float, Field(gt=0, le=1e6)]
+    centre: tuple[Picture, Picture] | None = None
+    k1: Coefficient = 0.0
+    k2: Coefficient = 0.0
+    p1: Coefficient = 0.0
+    p2: Coefficient = 0.0
+    k3: Coefficient = 0.0
+
+
+#: False strain per mm of motion, as a telecentric lens was measured to have: 25 µm/m per mm (Sutton et al.
+#: 2008, doi 10.1016/j.optlaseng.2008.05.005 [from memory]).
+TELECENTRIC = 25e-6
+
+
+def _per_mm(written: Any) -> Any:
+    """Return a false strain per mm of motion from ``"25 µm/m per mm"``; `true` and `false` as they are."""
+    if not isinstance(written, str):
+        return written
+    strain, per, length = written.rpartition(" per ")
+    if not per or length.strip() != "mm":
+        raise ValueError(f"'{written}' is not a strain per mm; write for example \"25 µm/m per mm\"")
+    return parse(strain, "strain")
+
+
 class Camera(Section):
-    """Scale."""
+    """Scale, lens, and what moves towards the camera."""
 
     scale: Scale | None = None
+    scale_uncertainty: Fraction | None = None
+    marks: Marks | None = None
+    board: Board | None = None
+    distortion: Distortion | None = None
+    stand_off: Length | None = None
+    telecentric: Annotated[bool | Annotated[float, Field(ge=0, le=1)], BeforeValidator(_per_mm)] = False
+    out_of_plane: Length | None = None
+    still_patch: tuple[Picture, Picture, Picture, Picture] | None = None
+    thinning: Literal["auto", "off"] = "auto"
 
+    @model_validator(mode="after")
+    def _one_lens(self) -> Camera:
+        if self.board is not None and self.distortion is not None:
+            raise ValueError("give board or distortion, not both")
+        if self.out_of_plane is not None and self.stand_off is None and self.telecentric is False:
+            raise ValueError("out_of_plane needs stand_off (the coupon's distance) or telecentric beside it")
+        return self
 
-Picture = Annotated[float, Field(ge=-1e6, le=1e6)]
+    @property
+    def false_strain_per_mm(self) -> float | None:
+        """False strain per mm of motion towards the camera; None where it is unknown."""
+        if self.telecentric is not False:
+            return TELECENTRIC if self.telecentric is True else self.telecentric
+        return None if self.stand_off is None else 1.0 / self.stand_off
 
 
 class CouponSection(Section):
@@ -484,7 +572,9 @@ class TestFile(Section):
         """List the files and folders that the test is read from, whether they exist or not."""
         frames = self.beside(self.frames.source)
         named = [self.path, self.beside(self.load_record.source), frames, frames.parent]
-        others = (self.frames.times, self.coupon.mask)
+        board = self.camera.board
+        pictures = () if board is None else (board.source, board.plane)
+        others = (self.frames.times, self.coupon.mask, *pictures)
         return named + [self.beside(name) for name in others if name]
 
 

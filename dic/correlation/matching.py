@@ -47,6 +47,8 @@ class Match:
         Grey noise of one raw frame, median over the subsets, grey levels.
     links
         How many references lie between the first one and this frame; each adds its own matching error.
+    in_picture
+        `affine` as matched, where `parameters` have been freed from the lens' distortion; None elsewhere.
     """
 
     parameters: Floats
@@ -57,6 +59,7 @@ class Match:
     iterations: NDArray[np.uint8]
     noise_grey: float
     links: int = 0
+    in_picture: Floats | None = None
 
     @property
     def u(self) -> Floats:
@@ -73,6 +76,11 @@ class Match:
         """u, uₓ, u_y, v, vₓ, v_y at the subset centres, px, shape (n, 6)."""
         half = self.parameters.shape[1] // 2
         return self.parameters[:, [0, 1, 2, half, half + 1, half + 2]]
+
+    @property
+    def as_matched(self) -> Floats:
+        """The same in the picture itself, whatever the lens does, shape (n, 6)."""
+        return self.affine if self.in_picture is None else self.in_picture
 
     @property
     def converged(self) -> NDArray[np.bool_]:

@@ -59,14 +59,17 @@ class Probe(Protocol):
 
 @dataclass(frozen=True)
 class Subsets:
-    """The subsets of a test, as the probes see them."""
+    """The subsets of a test, as the probes see them; `straight` as the places of `GaugeReader`."""
 
     reference: Reference
     grid: Grid
+    straight: Floats | None = None
 
     @cached_property
     def places(self) -> Floats:
         """Centres x and y, px, shape (n, 2)."""
+        if self.straight is not None:
+            return self.straight
         return np.stack([self.reference.x, self.reference.y], axis=1).astype(float)
 
     @cached_property

@@ -70,7 +70,7 @@ class NamedReader:
                 continue
             own = affine[weights.numbers]
             strain[place], u[place] = weights.strain(own), gain * noise
-            false = periodic_error(own, reference.subset)
+            false = periodic_error(match.as_matched[weights.numbers], reference.subset)
             response[place] = (false * weights.on).sum(axis=(1, 2))
         return FrameReadings(strain, u, response, noise * self._mean_gains(found))
 

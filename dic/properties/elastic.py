@@ -53,7 +53,7 @@ def _youngs_modulus(sheet: Sheet) -> Reading:
     value = elastic.modulus
     statistics = {
         "scatter": value * relative * few_readings(line.n - 2),
-        "clock": sheet.with_clock(lambda loading: 1 / sheet.line(loading).slope),
+        **sheet.shifted(lambda loading: 1 / sheet.line(loading).slope),
     }
     return Reading(
         value,
@@ -82,7 +82,7 @@ def _poissons_ratio(sheet: Sheet) -> Reading:
     return Reading(
         value,
         f"slopes of transverse and axial strain against the same force (ASTM E132), {elastic.rule}",
-        {"scatter": scatter, "clock": sheet.with_clock(ratio)},
+        {"scatter": scatter, **sheet.shifted(ratio)},
         sheet.window(),
         (*_against_axial(sheet, value, scatter), *elastic.notes, *sheet.left_out_of_strain()),
     )
@@ -151,7 +151,7 @@ def _isotropic(sheet: Sheet, law: Law, formula: str) -> Reading:
     value = of_slopes(axial, across)
     statistics = {
         "scatter": weighed.u_slope * few_readings(weighed.n - 2),
-        "clock": sheet.with_clock(value_of),
+        **sheet.shifted(value_of),
     }
     return Reading(
         value,

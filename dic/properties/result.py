@@ -103,6 +103,11 @@ class Curve:
         The crosshead's travel, shape (n,); None where it was not recorded.
     dense
         The load record between the frames; None where there is none.
+    u_towards
+        Standard uncertainty of the false strain from motion towards the camera, between the reference and
+        the end; 0 where it was taken off, None where nothing is known about it.
+    straightened
+        Whether the lens' distortion was taken off.
     """
 
     time_s: Floats
@@ -123,6 +128,8 @@ class Curve:
     u_stress_MPa: Floats | None = None
     displacement_mm: Floats | None = None
     dense: Dense | None = None
+    u_towards: float | None = None
+    straightened: bool = False
 
 
 @dataclass(frozen=True)

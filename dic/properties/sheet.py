@@ -24,10 +24,9 @@ from dic.uncertainty import Line, combine
 
 Floats = NDArray[np.float64]
 
-_OPTICS = (
-    "not included: false strain from motion towards the camera and from lens distortion, what is left of the "
-    "interpolation's bias, and the error of the axis"
-)
+_TOWARDS = "motion towards the camera (give camera.stand_off and camera.out_of_plane, or camera.still_patch)"
+_LENS = "lens distortion (give camera.board)"
+_REST = "what is left of the interpolation's bias, and the error of the axis"
 _CLOCK = "not included: the clocks, whose offset was given without an uncertainty (sync.offset)"
 
 
@@ -189,7 +188,41 @@ class Sheet:
 
     def left_out_of_strain(self) -> tuple[str, ...]:
         """Say what the uncertainty of a reading against strain lacks."""
-        return (_OPTICS,) if self.clock.offset_standard_uncertainty_s > 0 else (_CLOCK, _OPTICS)
+        known = (self.curve.u_towards is not None, self.curve.straightened)
+        lacking = [text for text, there in zip((_TOWARDS, _LENS), known, strict=True) if not there]
+        false = f"false strain from {' and from '.join(lacking)}, " if lacking else ""
+        optics = f"not included: {false}{_REST}"
+        return (optics,) if self.clock.offset_standard_uncertainty_s > 0 else (_CLOCK, optics)
+
+    def shifted(self, read: Callable[[Loading], float]) -> dict[str, float]:
+        """Return the contributions of what shifts strain and stress together in all frames."""
+        towards = self.with_motion(read)
+        return {"clock": self.with_clock(read)} | (
+            {} if towards is None else {"motion towards the camera": towards}
+        )
+
+    def with_motion(self, read: Callable[[Loading], float]) -> float | None:
+        """Return how far false strain from motion towards the camera moves a reading; None where unknown.
+
+        When the coupon moved is not known, so all of it is laid where it does most harm: it grows over the
+        elastic part and then stays.
+        """
+        u = self.curve.u_towards
+        if not u:
+            return None
+        frames = self.elastic.window.frames
+        grown = np.interp(
+            np.arange(len(self.loading.strain)),
+            [frames.start, max(frames.stop - 1, frames.start + 1)],
+            [0, 1],
+        )
+        here, moved = read(self.loading), []
+        for false in (u, -u):
+            try:
+                moved.append(abs(read(self.loading.stretched(false * grown)) - here))
+            except Undetermined:
+                moved.append(nan)
+        return float(np.nanmax(moved)) if np.isfinite(moved).any() else nan
 
     def with_clock(self, read: Callable[[Loading], float]) -> float:
         """Return how far the clock's standard uncertainty moves a reading.

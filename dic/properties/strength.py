@@ -45,7 +45,7 @@ def _proof(sheet: Sheet, offset: float) -> Callable[[], Reading]:
         statistics = {
             "scatter of the curve": found.u_curve,
             "modulus line": found.u_line * few_readings(elastic.line.n - 2),
-            "clock": sheet.with_clock(shifted),
+            **sheet.shifted(shifted),
         }
         bends = "the curve bends all along, as no metal's does: an offset point, not a yield point"
         gradual = found.stress / elastic.modulus > LARGEST_YIELD_STRAIN

@@ -33,8 +33,8 @@ AFFINE = ("u", "u_x", "u_y", "v", "v_x", "v_y")
 
 #: Variables with their type and what they are.
 VARIABLES: dict[str, tuple[str, str, str]] = {
-    "u": ("f8", "px", "displacement along x, to the right"),
-    "v": ("f8", "px", "displacement along y, down"),
+    "u": ("f8", "px", "displacement along x, to the right, in the picture as it is"),
+    "v": ("f8", "px", "displacement along y, down, in the picture as it is"),
     "u_x": ("f8", "1", "slope of u along x, as matched"),
     "u_y": ("f8", "1", "slope of u along y, as matched"),
     "v_x": ("f8", "1", "slope of v along x, as matched"),
@@ -54,6 +54,11 @@ VARIABLES: dict[str, tuple[str, str, str]] = {
     "map_flag": ("u1", "1", "how the point of the strain maps came about"),
 }
 
+#: Variables on (frame), where a still patch is followed.
+PATCH = {
+    "patch_strain": "apparent strain of the still patch, in both directions alike",
+    "u_patch_strain": "standard uncertainty of patch_strain",
+}
 #: Variables on (frame, station), where the coupon's edges are followed.
 EDGES = {
     "edge_width": "distance between the coupon's edges",
@@ -76,6 +81,8 @@ class FieldsWriter:
         Settings that readers of the file need, and the ``tracking_key`` of `dic.sequence`.
     stations
         Where the width between the coupon's edges is measured, along the axis, px; None for nowhere.
+    patch
+        Whether a still patch is followed.
     """
 
     def __init__(
@@ -85,6 +92,7 @@ class FieldsWriter:
         time_s: NDArray[np.float64],
         attributes: dict[str, Any],
         stations: NDArray[np.float64] | None = None,
+        patch: bool = False,
     ) -> None:
         self._final = folder / NAME
         self._partial = folder / (NAME + ".part")
@@ -120,6 +128,8 @@ class FieldsWriter:
         noise.attrs["long_name"] = "grey noise of one frame, median over the subsets, in grey levels"
         links = file.create_variable("links", ("frame",), "i4")
         links.attrs["long_name"] = "references between the first one and the frame"
+        for name, meaning in PATCH.items() if patch else ():
+            file.create_variable(name, ("frame",), "f8", fillvalue=np.nan).attrs["long_name"] = meaning
         if stations is not None:
             file.dimensions["station"] = len(stations)
             place = file.create_variable("station", ("station",), data=stations)
@@ -133,9 +143,13 @@ class FieldsWriter:
         return self
 
     def put(
-        self, match: Match, strains: StrainMap, edges: tuple[NDArray[Any], NDArray[Any]] | None = None
+        self,
+        match: Match,
+        strains: StrainMap,
+        edges: tuple[NDArray[Any], NDArray[Any]] | None = None,
+        patch: tuple[float, float] | None = None,
     ) -> None:
-        """Append the next frame; `edges` as `EDGES`, where stations were given."""
+        """Append the next frame; `edges` as `EDGES` and `patch` as `PATCH`, where they are followed."""
         inside = self._grid.inside
         values: dict[str, NDArray[Any]] = {
             **{name: spread(part, inside) for name, part in zip(AFFINE, match.affine.T, strict=True)},
@@ -154,6 +168,8 @@ class FieldsWriter:
         single = {"noise_grey": np.array(match.noise_grey), "links": np.array(match.links)}
         if edges is not None:
             single |= dict(zip(EDGES, edges, strict=True))
+        if patch is not None:
+            single |= dict(zip(PATCH, map(np.array, patch), strict=True))
         self._waiting.append({**values, "flag": flag, **single})
         if len(self._waiting) == AT_ONCE:
             self._flush()
@@ -209,6 +225,12 @@ def stored_edges(folder: Path) -> Iterator[tuple[NDArray[np.float64], NDArray[np
     """Yield the variables of `EDGES` frame by frame."""
     with h5netcdf.File(folder / NAME, "r") as file:
         yield from zip(*(file[name][:] for name in EDGES), strict=True)
+
+
+def stored_patch(folder: Path) -> Iterator[tuple[float, float]]:
+    """Yield the variables of `PATCH` frame by frame."""
+    with h5netcdf.File(folder / NAME, "r") as file:
+        yield from zip(*(file[name][:].tolist() for name in PATCH), strict=True)
 
 
 def stored_matches(folder: Path, grid: Grid) -> Iterator[Match]:

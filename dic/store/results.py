@@ -84,6 +84,7 @@ def results_of(measurement: Measurement) -> dict[str, Any]:
             "axis_method": scene.axis_method,
             **measurement.alignment.figures(),
         },
+        "optics": measurement.optics,
         "quality": measurement.quality,
         **({"gauges": _gauges(measurement)} if measurement.gauges else {}),
         **({"clip_on": _clip_on(measurement.clip_on)} if measurement.clip_on is not None else {}),

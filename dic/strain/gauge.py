@@ -125,19 +125,23 @@ class GaugeReader:
         Where strain is averaged.
     length
         Distance between the extensometer's bands, px; None for the whole region.
+    places
+        Straight coordinates of the subsets, px, shape (n, 2), where the lens' distortion is known.
     """
 
     reference: Reference
     grid: Grid
     region: Region
     length: float | None = None
+    places: Floats | None = None
     _kept: tuple[bytes, _Weights] | None = field(default=None, repr=False)
 
     def __post_init__(self) -> None:
-        self._along, self._across = self.region.coordinates(self.reference.x, self.reference.y)
-        self._member = (abs(self._along) <= self.region.length / 2) & (
-            abs(self._across) <= self.region.width / 2
-        )
+        along, across = self.region.coordinates(self.reference.x, self.reference.y)
+        self._member = (abs(along) <= self.region.length / 2) & (abs(across) <= self.region.width / 2)
+        if self.places is None:
+            self.places = np.stack([self.reference.x, self.reference.y], axis=1).astype(float)
+        self._along, self._across = self.region.coordinates(*self.places.T)
         if self._member.sum() < LEAST_SUBSETS:
             raise PatternError(
                 f"the gauge region holds only {self._member.sum()} subsets",
@@ -171,7 +175,8 @@ class GaugeReader:
         axial, transverse, shear = engineering(gradient, self.region.axial, self.region.transverse)
         # Each further link is matched between two single frames.
         noise = match.noise_grey * np.sqrt(1.0 + 1.0 / self.reference.frames + 2.0 * match.links)
-        false = periodic_error(affine, self.reference.subset)
+        matched = match.as_matched[valid]
+        false = periodic_error(matched, self.reference.subset)
         return Reading(
             axial=float(axial),
             transverse=float(transverse),
@@ -186,7 +191,7 @@ class GaugeReader:
             valid_fraction=share,
             status="ok" if weights.ends is not None else "no subsets left at an end of the extensometer",
             response={name: (false * on).sum(axis=(1, 2)) for name, on in weights.on.items()},
-            sums=periodic_sums(weights.smooth, affine, false, match.sigma_u[valid], match.sigma_v[valid]),
+            sums=periodic_sums(weights.smooth, matched, false, match.sigma_u[valid], match.sigma_v[valid]),
         )
 
     def _extensometer(self, moved: Floats, weights: _Weights) -> float:
@@ -204,8 +209,8 @@ class GaugeReader:
         return self._kept[1]
 
     def _make_weights(self, valid: NDArray[np.bool_]) -> _Weights:
-        x = self.reference.x[valid] - self.region.centre[0]
-        y = self.reference.y[valid] - self.region.centre[1]
+        assert self.places is not None  # noqa: S101  (filled in above)
+        x, y = (self.places[valid] - self.region.centre).T
         along, across, depth = self._along[valid], self._across[valid], self.reference.subset
         information = self.reference.estimator.information()[valid]
         motion = pooled(x, y, information * even_weights(self.grid, valid)[:, None, None])

@@ -146,10 +146,13 @@ class StrainMapper:
         The local fit.
     axes
         Unit vectors (x, y) along and across the coupon.
+    unbending
+        Slopes of picture coordinates in straight ones at the subsets, shape (ny, nx, 2, 2), where
+        displacements are given in straight coordinates; None where the picture's are straight.
     """
 
-    def __init__(self, window: Window, axes: tuple[Floats, Floats]) -> None:
-        self.window, self.axes = window, axes
+    def __init__(self, window: Window, axes: tuple[Floats, Floats], unbending: Floats | None = None) -> None:
+        self.window, self.axes, self._unbending = window, axes, unbending
         self._half = window.window // 2
         offset = np.arange(-self._half, self._half + 1) / max(self._half, 1)
         self._taper = np.ones(window.window)
@@ -202,7 +205,7 @@ class StrainMapper:
         if len(self._part[0]):
             padded = np.pad(field, ((0, 0), (self._half,) * 2, (self._half,) * 2))
             gradient[self._part] = slopes(padded, *self._windows, self._solving)
-        return gradient
+        return gradient if self._unbending is None else gradient @ self._unbending
 
     def covariance(self, sigma_u: Floats, sigma_v: Floats) -> tuple[Floats, Floats]:
         """Return the covariances of (uₓ, u_y) and of (vₓ, v_y), shapes (ny, nx, 2, 2).
