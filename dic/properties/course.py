@@ -61,7 +61,7 @@ def _to_yield(sheet: Sheet) -> Reading:
     grow = few_readings(line.n - 2)
     contributions = {
         "modulus line": abs(energy(loading, turned) - energy(loading, line)) * grow,
-        "clock": sheet.with_clock(lambda moved: energy(moved, sheet.line(moved))),
+        **sheet.shifted(lambda moved: energy(moved, sheet.line(moved))),
     }
     u_end = found.u_curve / elastic.modulus
     words = "area under the curve up to the 0.2 % proof stress"

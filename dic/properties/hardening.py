@@ -105,14 +105,14 @@ def _hollomon(sheet: Sheet, *, exponent: bool) -> Reading:
         return Reading(
             line.slope,
             f"slope of ln true stress on ln true strain (ISO 10275), {assumed}",
-            {"scatter": line.u_slope * grow, "clock": sheet.with_clock(lambda one: law(one).slope)},
+            {"scatter": line.u_slope * grow, **sheet.shifted(lambda one: law(one).slope)},
             window,
             notes,
         )
     value = exp(line.intercept)
     statistics = {
         "scatter": value * line.u_intercept * grow,
-        "clock": sheet.with_clock(lambda one: exp(law(one).intercept)),
+        **sheet.shifted(lambda one: exp(law(one).intercept)),
     }
     return Reading(
         value,
@@ -185,7 +185,7 @@ def _ramberg_osgood(sheet: Sheet) -> Reading:
         {
             "scatter": line.u_slope * few_readings(line.n - 2),
             "modulus line": abs(turned.slope - line.slope),
-            "clock": sheet.with_clock(shifted),
+            **sheet.shifted(shifted),
         },
         sheet.window_of(frames),
         (f"r² = {line.r_squared:.6f}, {line.n} frames", *elastic.notes, *sheet.left_out_of_strain()),
