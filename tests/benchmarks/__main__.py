@@ -12,8 +12,8 @@ import typer
 from table import Bench, show, write_json
 
 NAMES = (
-    "accuracy", "alignment", "clock", "coverage", "fuzz", "gauge", "gauges", "hole", "memory", "pose",
-    "properties", "resolution", "speed",
+    "accuracy", "alignment", "clock", "coverage", "fuzz", "gauge", "gauges", "hole", "memory", "optics",
+    "pose", "properties", "resolution", "speed",
 )  # fmt: skip
 #: A module called `coverage` would stand in the way of the package that numba looks for.
 MODULES = {"coverage": "interval_coverage"}
