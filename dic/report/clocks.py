@@ -8,16 +8,50 @@ import numpy as np
 
 from dic.measurement import Measurement
 from dic.report.figures import AID, AXIAL, Drawing, legend_above, sheet, strain_unit, thinned
+from dic.rounding import COVERAGE_FACTOR
+from dic.sync.record import Clock
 
 
 def draw_clocks(measurement: Measurement) -> list[Drawing]:
-    """Draw the strain seen by the camera over the strain that the force calls for, at the start of loading.
+    """Draw how well frames and forces belong together, and how sharply the data tell the offset.
 
     Returns
     -------
     list of Drawing
-        One figure, or none where there is no modulus line to turn force into strain.
+        Strain by camera and by force over time, unless there is no modulus line to turn force into strain;
+        the misfit over the offset, where it was estimated.
     """
+    return [*_on_one_clock(measurement), *_misfit(measurement.clock)]
+
+
+def _misfit(clock: Clock) -> list[Drawing]:
+    shown = np.isfinite(clock.misfit)
+    if not shown.any():
+        return []
+    figure, (axes,) = sheet(height=2.4)
+    u = COVERAGE_FACTOR * clock.offset_standard_uncertainty_s
+    axes.axvspan(
+        clock.offset_s - u,
+        clock.offset_s + u,
+        color=AID,
+        alpha=0.15,
+        lw=0,
+        label=f"± (k = {COVERAGE_FACTOR:g})",
+    )
+    axes.plot(clock.tried_s[shown], clock.misfit[shown], "-", color=AXIAL, lw=1.2, label="left unexplained")
+    axes.axvline(clock.offset_s, color=AID, lw=1.0, label="offset taken")
+    axes.set(xlabel="offset tried, s", ylabel="misfit, least = 1", ylim=(0, None))
+    legend_above(axes)
+    reading = (
+        "How much of what the camera saw the machine's record leaves unexplained, if the clocks are shifted "
+        "against each other. A deep, narrow valley means that the data tell the offset; the band is its "
+        "expanded uncertainty."
+    )
+    alt = "Misfit of frames and record over the offset of the clocks, with the offset taken and its band."
+    return [Drawing("clock-offset", "How sharply the data tell the offset", reading, alt, figure)]
+
+
+def _on_one_clock(measurement: Measurement) -> list[Drawing]:
     line, curve, record = measurement.line, measurement.curve, measurement.record
     if not isfinite(line.slope):
         return []

@@ -25,6 +25,7 @@ FIGURES = (
     "transverse-axial",
     "modulus-residuals",
     "clocks",
+    "clock-offset",
     "gauge-on-coupon",
     *(f"map-{letter}" for letter in "abcdefghijklmnop"),
     "alignment-stations",

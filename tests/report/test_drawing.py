@@ -158,3 +158,17 @@ def test_figures_of_compression_mirror_those_of_tension(measurement, pressed):
     [up], [down] = draw_clocks(measurement), draw_clocks(pressed)
     for line, mirrored in zip(lines_of(up), lines_of(down), strict=True):
         np.testing.assert_allclose(mirrored * (1, -1), line, rtol=1e-9, atol=1e-9)
+
+
+def test_the_valley_of_the_misfit_lies_where_the_offset_was_taken(measurement):
+    clock = measurement.clock
+    tried = clock.offset_s + np.linspace(-0.4, 0.4, 81)
+    misfit = np.hypot(1.0, (tried - clock.offset_s) / 0.01)
+    fitted = dataclasses.replace(clock, tried_s=tried, misfit=misfit)
+    *_, drawn = draw_clocks(dataclasses.replace(measurement, clock=fitted))
+    assert drawn.name == "clock-offset"
+    valley = lines_of(drawn)[0]
+    # The lowest of the tried offsets is the one taken, but for rounding.
+    assert valley[np.argmin(valley[:, 1]), 0] == pytest.approx(clock.offset_s, abs=1e-9)
+    [without] = draw_clocks(measurement)
+    assert without.name == "clocks"
