@@ -187,7 +187,7 @@ def fracture(seen: Seen, record: LoadRecord) -> tuple[float, float] | None:
     the end, or the picture jumps; the machine by the rows between which the force falls.
     """
     broke = _frames_lost(seen)
-    fell = _force_fell(record)
+    fell = None if broke is None else _force_fell(record)
     if broke is None or fell is None:
         return None
     return fell[0] - broke[1], fell[1] - broke[0]
