@@ -159,12 +159,15 @@ def _target(kind: str) -> str:
 
 
 _HEADER = re.compile(
-    r"\s*(?P<name>.*?)\s*(?:\((?P<round>[^()]*)\)|\[(?P<square>[^\[\]]*)\]|\s*/\s*(?P<slash>[^\s/()\[\]]+)|_(?P<tail>s|N|kN|mm))?\s*$"
+    r"\s*(?P<name>.*?)\s*(?:\((?P<round>[^()]*)\)|\[(?P<square>[^\[\]]*)\]|\s*/\s*(?P<slash>[^\s/()\[\]]+)"
+    r"|\sin\s+(?P<within>[^\s()\[\]]+)|,\s*(?P<comma>[^\s,()\[\]]+)|_(?P<tail>s|N|kN|mm))?\s*$"
 )
 
 
 def split_header(header: str) -> tuple[str, str | None]:
-    """Split a column's header into name and unit: "Force (kN)", "Load [lbf]", "Kraft / N", "time_s".
+    """Split a column's header into name and unit.
+
+    Understood are "Force (kN)", "Load [lbf]", "Kraft / N", "Kraft in N", "Force, N" and "time_s".
 
     Returns
     -------
@@ -175,7 +178,7 @@ def split_header(header: str) -> tuple[str, str | None]:
     found = _HEADER.match(header) if len(header) <= 200 else None
     if found is None:
         return header.strip(), None
-    unit = found["round"] or found["square"] or found["slash"] or found["tail"]
+    unit = next(filter(None, found.groups()[1:]), None)
     return found["name"], unit.strip() if unit else None
 
 

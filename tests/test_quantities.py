@@ -75,7 +75,10 @@ def test_a_decimal_comma_is_told_so():
         ("Force/MN", "Force", "MN"),
         ("time_s", "time", "s"),
         ("Time", "Time", None),
-        ("Standard force (corr.) (N)", "Standard force (corr.)", "N"),
+        ("Force (corr.) (N)", "Force (corr.)", "N"),
+        ("Kraft in kN", "Kraft", "kN"),
+        ("Force, N", "Force", "N"),
+        ("Plug-in", "Plug-in", None),
     ],
 )
 def test_headers(header, name, unit):

@@ -126,9 +126,9 @@ def test_a_record_cut_off_within_a_character(path):
 
 @pytest.mark.parametrize(
     "headers",
-    ["Zeit (s);Kraft (N)", "Prüfzeit [s];Standardkraft [N]", "Temps (s);Effort (N)", "Tiempo (s);Fuerza (N)",
+    ["Zeit (s);Kraft (N)", "Prüfzeit [s];Zugkraft [N]", "Temps (s);Effort (N)", "Tiempo (s);Fuerza (N)",
      "Tempo (s);Forza (N)", "t / s;F / N", "Time_s;Load_N", "elapsed time (s);Load cell (N)",
-     "Zeit (s);Last (N)",
+     "Zeit (s);Last (N)", "Zeit in s;Kraft in N", "Time, s;Force, N", "Time (s);Force, filtered (N)",
      "Clock (s);Channel 2 (N)", "Time (s);Force (filtered) [N]"],
 )  # fmt: skip
 def test_time_and_force_by_their_headers(read, headers):

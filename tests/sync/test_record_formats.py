@@ -162,13 +162,13 @@ def test_wrongly_grouped_digits_are_no_numbers(read):
 @pytest.mark.parametrize("units", ["s;kN;mm", "(s);(kN);(mm)", "[s];[kN];[mm]", '"s";"kN";"mm"'])
 def test_heading_lines_and_a_row_of_units(read, units):
     heading = "Prüfprotokoll;Nr. 7\nGeschwindigkeit;2;mm/min\n\nBreite b0;12,5\n"
-    head = f"{heading}Prüfzeit;Standardkraft;Weg\n{units}\n"
+    head = f"{heading}Prüfzeit;Zugkraft;Weg\n{units}\n"
     text = table(
         head, lambda i: (comma(TIME[i]), comma(FORCE[i]), comma(TIME[i])), tail="Ende der Prüfung;;\n"
     )
     record = read(text, "cp1252", displacement="Weg")
     np.testing.assert_allclose(record.force_N, 1000 * FORCE, atol=5.1e-2)
-    assert record.columns["force"] == "Standardkraft (kN)"
+    assert record.columns["force"] == "Zugkraft (kN)"
     assert codes(record) == ["record_trailer"]
 
 
