@@ -44,7 +44,6 @@ _LONGEST = 200
 #: More of them could take very long to fit to a name.
 _MOST_PLACEHOLDERS = 4
 _PARTS = re.compile(r"%(?P<directive>.)|\{(?P<placeholder>\w*)\}|(?P<literal>[^%{]+|.)", re.DOTALL)
-_DAY = 24 * 3600 * instants.SECOND
 _WRITE = 'write for example name_time = "cam_%Y%m%d_%H%M%S_%f" or "cam_{milliseconds}"'
 
 
@@ -165,10 +164,7 @@ def times_in_names(pattern: NamePattern, names: Sequence[str], rate: float | Non
                 remedy=f"correct frames.name_time, or take the file out; {_WRITE}",
             )
         found.append(instant)
-    # Half a day backwards is no disorder, but midnight.
-    if "H" in pattern.parts and not pattern.dated and max(found) - min(found) > _DAY // 2:
-        return [instant + _DAY if instant < _DAY // 2 else instant for instant in found]
-    return found
+    return instants.past_midnight(found) if "H" in pattern.parts and not pattern.dated else found
 
 
 _DATE_TIME = re.compile(

@@ -41,7 +41,7 @@ def times_from_file(path: Path, names: list[str]) -> ListedTimes:
     ----------
     path
         A table with a column of file names (or none: then one row per frame, in order) and a column of
-        times, whose header holds the unit or whose cells are dates with times of day.
+        times, whose header holds the unit or whose cells are times of day, with dates or without.
     names
         The frames' file names in order.
 
@@ -52,11 +52,15 @@ def times_from_file(path: Path, names: list[str]) -> ListedTimes:
     """
     table = read_table(path, FrameError, key="frames.times", most_bytes=MOST_BYTES)
     column = _time_column(table)
-    stamps = [instants.from_text(cell) for cell in table.cells[column]]
-    dates = [one for one in stamps if one is not None]
-    dated = bool(stamps) and len(dates) == len(stamps)
+    dates, clock = (
+        [one for cell in table.cells[column] if (one := read(cell)) is not None]
+        for read in (instants.from_text, instants.of_day)
+    )
+    dated = 0 < len(dates) == len(table.cells)
     if dated:
         ns = dates
+    elif 0 < len(clock) == len(table.cells):
+        ns = instants.past_midnight(clock)
     else:
         seconds = table.numbers(column) * _seconds(table, column)
         far = abs(seconds) > MOST_SECONDS
@@ -103,6 +107,10 @@ def _rows_by_name(table: Table, names: list[str]) -> list[int] | None:
         return None
     for position, header in enumerate(table.headers):
         cells = table.cells[position].str.strip()
+        # Numbers alone count frames.
+        stems = {Path(name).stem: name for name in names if not Path(name).stem.isdigit()}
+        if len(stems) == len(names):
+            cells = cells.map(lambda cell, stems=stems: stems.get(cell, cell))
         if not (cells.isin(names) | cells.str.lower().str.endswith(tuple(READERS))).any():
             continue
         rows = {name: row for row, name in enumerate(cells)}

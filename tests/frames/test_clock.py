@@ -298,13 +298,25 @@ def test_file_dates_only_with_a_warning(folder):
 def test_a_times_file_with_dates_gives_the_epoch_and_the_order(folder):
     for k in range(3):
         tifffile.imwrite(folder / "frames" / f"f{k}.tif", grey())
-    rows = [f"f{k}.tif,2026-05-04T10:00:0{second}" for k, second in enumerate(("0.5", "1.25", "0.75"))]
+    rows = [
+        f"f{k}.tif,2026-05-04T10:00:0{second}"
+        for k, second in enumerate(("0.5+02:00", "1.25+02:00", "0.75+02:00"))
+    ]
     (folder / "t.csv").write_text("\n".join(["frame,time", *rows]))
     source = opened(folder, times="t.csv")
     assert source.names == ("f0.tif", "f2.tif", "f1.tif")
     np.testing.assert_allclose(source.time_s, [0, 0.25, 0.75])
     assert source.epoch == datetime(2026, 5, 4, 10, 0, 0, 500_000)
     assert "frames_reordered" in codes(source)
+
+
+def test_a_times_file_with_times_of_day_counts_from_midnight_on(folder):
+    for k in range(3):
+        tifffile.imwrite(folder / "frames" / f"f{k}.tif", grey())
+    (folder / "t.csv").write_text("time\n23:59:59.25\n23:59:59.875\n0:00:00.5\n")
+    source = opened(folder, times="t.csv")
+    np.testing.assert_allclose(source.time_s, [86399.25, 86399.875, 86400.5])
+    assert source.epoch is None
 
 
 def test_a_times_file_may_hold_nothing_but_dates(folder):

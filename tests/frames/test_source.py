@@ -62,6 +62,15 @@ def test_times_from_a_file_by_name_whatever_the_order(folder):
     np.testing.assert_allclose(source.time_s, [0.1, 0.45, 0.7])
 
 
+def test_names_without_their_endings_are_names_too(folder):
+    """Taken for rows in the frames' order, they would give the frames one another's times."""
+    write(folder, [grey() for _ in range(3)])
+    (folder / "t.csv").write_text("frame,time (s)\nf2,0\nf0,1\nf1,2\n")
+    source = open_frames(Frames(source="frames", times="t.csv"), folder)
+    assert source.names == ("f2.tif", "f0.tif", "f1.tif")
+    np.testing.assert_allclose(source.time_s, [0, 1, 2])
+
+
 def test_times_from_a_file_by_row(folder):
     write(folder, [grey() for _ in range(3)])
     (folder / "t.csv").write_text("time (s)\n0\n1.5\n2\n")
