@@ -83,7 +83,7 @@ def corrected(
         apparent, u = np.array(seen, float).T
     transverse = (1.0 + history.transverse) / (1.0 + apparent) - 1.0
     # A frame without transverse strain is not corrected for a part in 10⁵ of it.
-    apparent = apparent + per_transverse * np.nan_to_num(transverse)
+    apparent = (1.0 + apparent) / (1.0 - per_transverse * np.nan_to_num(transverse)) - 1.0
     changed: dict[str, Any] = {}
     for name in _STRAINS:
         changed[name] = without(getattr(history, name), apparent)

@@ -24,6 +24,7 @@ from dic.report.figures import Drawing, house_style, render
 from dic.report.gauges import draw_gauges, gauge_rows
 from dic.report.maps import draw_maps, draw_scene
 from dic.report.moments import choose_moments
+from dic.report.optics import camera_rows
 from dic.rounding import COVERAGE_FACTOR, uncertainty_alone, with_uncertainty
 from dic.store.folder import FIGURES
 from dic.store.results import encoded, write_whole
@@ -135,6 +136,7 @@ def _page(measurement: Measurement, pictures: dict[str, list[Picture]]) -> str:
         straight=verdict(measurement),
         looked_at=sentences(measurement),
         quality=words.labelled({"noise_grey": measurement.scene.noise_grey, **measurement.quality}),
+        camera=camera_rows(measurement.optics),
         settings=words.flat(test.model_dump(mode="json", exclude_none=True)) + _worked_out(measurement.scene),
         provenance=words.grouped(
             # The test file has its own table already.
