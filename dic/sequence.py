@@ -44,7 +44,7 @@ def tracked_or_stored(test: TestFile, setup: Setup, folder: Path) -> Iterator[Fo
     """
     key = tracking_key(test, setup.source, setup.optics.lens)
     if fields.stored_attributes(folder).get("tracking_key") == key:
-        nothing = repeat(None, len(setup.source))
+        nothing = repeat(None)  # without end, because both may draw on it
         edges, patch = setup.silhouette is not None, setup.optics.patch is not None
         yield from map(
             Followed,
