@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 from dic.correlation import Grid, Reference, Settings, Tracker, lay_grid, prepare_reference
 from dic.errors import FrameError, Notice, PatternError, TestFileError
 from dic.frames import FrameSource, RepeatWatch
+from dic.frames.doubts import same_picture
 from dic.frames.readers import list_pages, read_page
 from dic.gauges import Placed, Silhouette, facing, place_gauges
 from dic.gauges.probes import Subsets
@@ -135,6 +136,7 @@ def set_up(test: TestFile, source: FrameSource) -> Setup:
         extensometer_px=length,
         quality={**quality, "reference_frames": float(reference.frames)},
         notices=(
+            *_frozen_start(source),
             *_subset_taken(test.correlation.subset, grid),
             *facing_notices,
             *axis_doubts(coupon),
@@ -223,6 +225,21 @@ def _subset_taken(wanted: int, grid: Grid) -> Iterator[Notice]:
         yield Notice(
             "subset_even",
             f"A subset has a middle pixel, so correlation.subset = {wanted} was taken as {grid.subset}.",
+        )
+
+
+def _frozen_start(source: FrameSource) -> Iterator[Notice]:
+    """Warn where repeated pictures cannot be told from new ones, see `RepeatWatch`."""
+    try:
+        same = same_picture(source[0], source[1])
+    except FrameError:
+        return
+    if same:
+        yield Notice(
+            "frames_doubled",
+            f"{source.names[0]} and {source.names[1]} show exactly the same picture, as pictures drawn "
+            "without noise do, so repeated pictures are measured like others; if a camera took them, it froze: "
+            "take the first one out, or film anew.",
         )
 
 

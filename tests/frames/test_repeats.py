@@ -76,4 +76,6 @@ def test_a_frozen_frame_at_rest_ends_the_reference(copy, tmp_path):
 def test_a_drawn_test_without_noise_is_measured_everywhere(tmp_path, small_scenario):
     (tmp_path / "small.toml").write_text(small_scenario.replace('noise = "1 %"', 'noise = "0 %"'))
     test = render(load_scenario(tmp_path / "small.toml"), tmp_path / "test")
-    assert set(dic.measure(test, tmp_path / "results").history.status) == {"ok"}
+    result = dic.measure(test, tmp_path / "results")
+    assert set(result.history.status) == {"ok"}
+    assert "frames_doubled" in {notice.code for notice in result.notices}
