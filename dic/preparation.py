@@ -238,8 +238,8 @@ def _frozen_start(source: FrameSource) -> Iterator[Notice]:
         yield Notice(
             "frames_doubled",
             f"{source.names[0]} and {source.names[1]} show exactly the same picture, as pictures drawn "
-            "without noise do, so repeated pictures are measured like others; if a camera took them, it froze: "
-            "take the first one out, or film anew.",
+            "without noise do, so repeated pictures are measured like others; if a camera took them, it "
+            "froze: take the first one out, or film anew.",
         )
 
 
