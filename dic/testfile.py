@@ -9,6 +9,7 @@ from contextlib import suppress
 from math import pi
 from pathlib import Path
 from textwrap import shorten
+from types import NoneType
 from typing import Annotated, Any, Literal, TypeVar, get_args, get_origin
 
 from pydantic import (
@@ -243,7 +244,7 @@ class Board(Section):
     rows: int = Field(ge=3, le=100)
     square: Length
     marker: Length | None = None
-    dictionary: Annotated[str, Field(pattern=r"^[4-7]X[4-7]_(50|100|250|1000)$")] | None = None
+    dictionary: str | None = None
     plane: FileName | None = None
 
     @model_validator(mode="after")
@@ -254,8 +255,10 @@ class Board(Section):
             raise ValueError('marker and dictionary belong to kind = "charuco"; remove them or say so')
         if self.marker is not None and not self.marker < self.square:
             raise ValueError("marker must be smaller than square")
-        if self.dictionary is not None and self.dictionary[0] != self.dictionary[2]:
-            raise ValueError('a dictionary\'s markers are square; write for example "4X4_50"')
+        known = [f"{n}X{n}_{count}" for n in (4, 5, 6, 7) for count in (50, 100, 250, 1000)]
+        if self.dictionary is not None and self.dictionary not in known:
+            said = shorten(self.dictionary, 30, placeholder=" …")
+            raise ValueError(f"'{said}' is no dictionary of markers; {nearest(said, known)}")
         return self
 
 
@@ -286,7 +289,10 @@ def _per_mm(written: Any) -> Any:
     strain, per, length = written.rpartition(" per ")
     if not per or length.strip() != "mm":
         raise ValueError(f"'{written}' is not a strain per mm; write for example \"25 µm/m per mm\"")
-    return parse(strain, "strain")
+    false = parse(strain, "strain")
+    if not 0 <= false <= 1:
+        raise ValueError(f"'{written}' is no false strain of a lens; write for example \"25 µm/m per mm\"")
+    return false
 
 
 class Camera(Section):
@@ -678,6 +684,8 @@ def _explain(error: ValidationError, model: type[BaseModel], path: Path) -> Test
         listed = " and ".join(filter(None, [", ".join(blank[:-1]), blank[-1]]))
         example = f'for example {key} = "{first["ctx"]["example"]}"'
         return TestFileError(f"fill in {listed}", where=str(path), remedy=example)
+    if first["type"] == "missing" and isinstance(first["loc"][-1], int):
+        return TestFileError(f"{key}: a number is missing in the list", where=where, remedy="add it")
     if first["type"] == "missing":
         kind = "key" if sections else "section"
         return TestFileError(f"the {kind} '{key}' is missing", where=where, remedy="add it")
@@ -705,6 +713,8 @@ def _keys_at(model: type[BaseModel], sections: list[str]) -> list[str]:
         if get_origin(inner) is dict:
             inner = get_args(inner)[1]
             next(steps, None)  # the name that the user chose
+        # Of a section that may be left out, the section.
+        inner = next((one for one in get_args(inner) if isinstance(one, type) and one is not NoneType), inner)
         if not (isinstance(inner, type) and issubclass(inner, BaseModel)):
             break
         model = inner

@@ -1,5 +1,7 @@
 """Whatever a test file holds, it is understood or refused in one sentence."""
 
+from typing import get_args
+
 import tomli_w
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
@@ -8,7 +10,7 @@ from dic.errors import TestFileError
 from dic.testfile import TestFile, load
 
 SECTIONS = {
-    name: list(section.annotation.model_fields)
+    name: list((get_args(section.annotation) or (section.annotation,))[-1].model_fields)
     for name, section in TestFile.model_fields.items()
     if not section.exclude
 }

@@ -8,7 +8,7 @@ import pytest
 from dic.correlation import Settings
 from dic.errors import TestFileError
 from dic.optics import lay_patch, settle_scale
-from dic.testfile import Camera, Specimen
+from dic.testfile import Camera, Specimen, load
 from synthetic_images import Dots
 from synthetic_images.camera import picture
 
@@ -77,3 +77,25 @@ def test_a_patch_that_is_none_is_named(photograph, rectangle, what):
         lay_patch(
             photograph, rectangle, coupon, subset=31, step=10, settings=Settings(), frames=1, lens=None
         )  # fmt: skip
+
+
+@pytest.mark.parametrize(
+    ("said", "what"),
+    [
+        ('still_patch = [1, 2, 3]', "still_patch: a number is missing in the list"),
+        ('telecentric = "3 per mm"', "is no false strain of a lens"),
+        ('board = { sorce = "b", columns = 9, rows = 7, square = "5 mm" }', "did you mean 'source'"),
+        (
+            'board = { source = "b", kind = "charuco", columns = 9, rows = 7, square = "5 mm", marker = "3 mm", '
+            'dictionary = "4X4_51" }',
+            "did you mean '4X4_50'",
+        ),
+        ('board = { source = "b", kind = "charuco", columns = 9, rows = 7, square = "5 mm" }', "needs marker"),
+    ],
+)  # fmt: skip
+def test_a_camera_that_is_not_understood_is_named(tmp_path, said, what):
+    sections = '[specimen]\nwidth = "10 mm"\nthickness = "2 mm"\n[frames]\nsource = "f"\nrate = "5 Hz"\n'
+    path = tmp_path / "test.toml"
+    path.write_text(f'{sections}[load_record]\nsource = "m.csv"\n[camera]\n{said}\n')
+    with pytest.raises(TestFileError, match=what):
+        load(path)
