@@ -32,7 +32,7 @@ def drawn(board):
 
 
 def seen(board, turn, distance=130.0):
-    """Look at the board along each pixel's own ray, three samples each way."""
+    """Look at the board along each pixel's own ray, three samples each way, blurred by 0.7 px."""
     art, size = drawn(board)
     n = 3
     x, y = np.meshgrid((np.arange(SHAPE[1] * n) + 0.5) / n - 0.5, (np.arange(SHAPE[0] * n) + 0.5) / n - 0.5)
@@ -46,7 +46,8 @@ def seen(board, turn, distance=130.0):
     inside = (column >= 0) & (row >= 0) & (column < art.shape[1]) & (row < art.shape[0])
     grey = np.full(len(rays), 255.0)
     grey[inside] = art[row[inside], column[inside]]
-    picture = grey.reshape(SHAPE[0], n, SHAPE[1], n).mean(axis=(1, 3))
+    fine = cv2.GaussianBlur(grey.reshape(SHAPE[0] * n, SHAPE[1] * n), None, 0.7 * n)
+    picture = fine.reshape(SHAPE[0], n, SHAPE[1], n).mean(axis=(1, 3))
     return np.rint(20 + picture * 0.8).astype(np.uint8)
 
 

@@ -79,20 +79,19 @@ def test_a_patch_that_is_none_is_named(photograph, rectangle, what):
         )  # fmt: skip
 
 
+BOARD = 'source = "b", columns = 9, rows = 7, square = "5 mm"'
+
+
 @pytest.mark.parametrize(
     ("said", "what"),
     [
-        ('still_patch = [1, 2, 3]', "still_patch: a number is missing in the list"),
+        ("still_patch = [1, 2, 3]", "still_patch: a number is missing in the list"),
         ('telecentric = "3 per mm"', "is no false strain of a lens"),
-        ('board = { sorce = "b", columns = 9, rows = 7, square = "5 mm" }', "did you mean 'source'"),
-        (
-            'board = { source = "b", kind = "charuco", columns = 9, rows = 7, square = "5 mm", marker = "3 mm", '
-            'dictionary = "4X4_51" }',
-            "did you mean '4X4_50'",
-        ),
-        ('board = { source = "b", kind = "charuco", columns = 9, rows = 7, square = "5 mm" }', "needs marker"),
+        (f"board = {{ sorce = 'b', {BOARD} }}", "did you mean 'source'"),
+        (f"board = {{ {BOARD}, kind = 'charuco', marker = '3 mm', dictionary = '4X4_51' }}", "mean '4X4_50'"),
+        (f"board = {{ {BOARD}, kind = 'charuco' }}", "needs marker"),
     ],
-)  # fmt: skip
+)
 def test_a_camera_that_is_not_understood_is_named(tmp_path, said, what):
     sections = '[specimen]\nwidth = "10 mm"\nthickness = "2 mm"\n[frames]\nsource = "f"\nrate = "5 Hz"\n'
     path = tmp_path / "test.toml"
