@@ -28,6 +28,8 @@ MIN_ROWS = 5
 MOST_MISSING = 0.05
 #: Rows in succession in which they may be.
 LONGEST_GAP = 10
+#: Rows that the last one is compared with, itself among them.
+_COMPARED = 11
 
 
 def read_load_record(section: Section, path: Path) -> LoadRecord:
@@ -98,8 +100,8 @@ def read_load_record(section: Section, path: Path) -> LoadRecord:
 
 
 def open_record(path: Path, decimal: str | None = None, sheet: str | None = None) -> Table:
-    """Read the table that a record is."""
-    return read_table(
+    """Read the table that a record is, without a last row that may be cut off."""
+    table = read_table(
         path,
         LoadRecordError,
         key="load_record.source",
@@ -107,6 +109,30 @@ def open_record(path: Path, decimal: str | None = None, sheet: str | None = None
         decimal=decimal,
         sheet=sheet,
     )
+    return _without_cut_row(table) if table.unended else table
+
+
+def _without_cut_row(table: Table) -> Table:
+    """Leave out a last row without a line end that may be cut off in the middle of a number.
+
+    What is left of such a number has fewer digits behind the decimal mark than the rows before, or no
+    decimal mark at all.
+    """
+    *before, last = table.texts(len(table.headers) - 1)[-_COMPARED:]
+    if last and _decimals(last) >= max(map(_decimals, before), default=0) > 0:
+        return table
+    text = (
+        f"{table.path.name}: the last row ({table.cells.index[-1]}) has no line end and may be cut off, so it "
+        "was left out; if the test went on, export it again."
+    )
+    return replace(
+        table, cells=table.cells.iloc[:-1], notices=(*table.notices, Notice("record_cut_off", text))
+    )
+
+
+def _decimals(cell: str) -> int:
+    """Return how many characters follow a decimal mark, 0 where there is none."""
+    return len(cell) - 1 - mark if (mark := max(map(cell.rfind, ".,"))) >= 0 else 0
 
 
 def read_instants(table: Table, header: Header, unit: Unit | None) -> Instants:

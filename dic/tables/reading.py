@@ -5,6 +5,7 @@ from __future__ import annotations
 import gc
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
+from dataclasses import replace
 from itertools import groupby
 from pathlib import Path
 from textwrap import shorten
@@ -105,9 +106,11 @@ def _read(
     separator = layout.find_separator(lines)
     _refuse_too_many(lines, separator, path, fault)
     rows, titles = _rows(lines, separator, str(path), fault)
-    return _laid_out(
+    table = _laid_out(
         path, rows, separator, fault, titles=titles, encoding=found.encoding, decimal=decimal, notices=[]
     )
+    at_the_end = len(table.cells) > 0 and table.cells.index[-1] == len(found.lines)
+    return replace(table, unended=at_the_end)
 
 
 def _bytes(path: Path, fault: type[InputError], key: str, most_bytes: int) -> tuple[bytes, bytes]:

@@ -63,6 +63,8 @@ class Table:
         What was left out or assumed.
     decimal
         The decimal mark, where it is given.
+    unended
+        Whether the last row is the file's last line and has no line end, so that it may be cut off.
     """
 
     path: Path
@@ -76,6 +78,7 @@ class Table:
     breaks: tuple[Break, ...] = ()
     notices: tuple[Notice, ...] = ()
     decimal: str | None = None
+    unended: bool = False
 
     def texts(self, position: int) -> list[str]:
         """Return a column's cells."""

@@ -218,3 +218,22 @@ def test_looking_at_a_record_whose_time_cannot_be_told(path):
     survey = look_at_record(path)
     assert survey.segments == ()
     assert np.isnan(survey.start_s)
+
+
+@pytest.mark.parametrize(
+    ("last", "kept"),
+    [("4.0000;40.000\n", True), ("4.0000;40.000", True), ("4.0000;4", False), ("4.0000;40.00", False),
+     ("4.0000;40.", False), ("4.0000;4\n", True)],
+)  # fmt: skip
+def test_a_last_number_that_may_be_cut_off(read, path, last, kept):
+    """Cut off behind the first digit, 40 N would become 4 N, which looks like fracture."""
+    record = read(HEAD + rows(40, force="{:.3f}".format) + last)
+    assert len(record.time_s) == 40 + kept
+    assert codes(record) == ([] if kept else ["record_cut_off"])
+    assert [one.code for one in look_at_record(path).notices] == codes(record)
+
+
+def test_a_whole_number_without_a_line_end_cannot_be_told_from_a_cut_one(read):
+    record = read(HEAD + rows(40, force=int).rstrip("\n"))
+    assert record.force_N.tolist() == list(range(39))
+    assert "row (41) has no line end and may be cut off" in record.notices[0].text
