@@ -9,7 +9,7 @@ from dic.errors import ClockError
 from dic.properties.peak import peak_force
 from dic.properties.result import Curve, Dense
 from dic.strain.history import GaugeHistory
-from dic.sync.force import force_and_noise_at, force_noise, force_spikes, without_spikes, wrong_sign
+from dic.sync.force import force_and_noise_at, wrong_sign
 from dic.sync.record import Clock, LoadRecord
 
 Floats = NDArray[np.float64]
@@ -77,10 +77,10 @@ def make_curve(
         peak_at_end=peak.at_end,
         u_peak_between_N=peak.u_between,
         u_peak_time_s=peak.u_time_s,
-        spikes_s=tuple(record.time_s[force_spikes(record)].tolist()),
+        spikes_s=tuple(record.time_s[record.spikes].tolist()),
         u_stress_MPa=noise / area_mm2,
         displacement_mm=_travel(record, clock, history.time_s),
-        dense=Dense(record.time_s, without_spikes(record), force_noise(record)),
+        dense=Dense(record.time_s, record.sound_N, record.noise_N),
     )
 
 

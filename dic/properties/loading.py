@@ -19,9 +19,11 @@ class Undetermined(Exception):  # noqa: N818  (no error: a test that does not gi
     """A property cannot be had from this test; the message is the reason, as the sheet gives it."""
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class Loading:
     """Frames up to the largest force, with the direction of loading counted positive.
+
+    It is itself and no other one, so that what was laid through it can be kept by it.
 
     Attributes
     ----------

@@ -9,7 +9,7 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from dic.sync.force import force_noise, has_load, smoothed_force, without_spikes
+from dic.sync.force import has_load, smoothed_force
 from dic.sync.record import LoadRecord
 
 Floats = NDArray[np.float64]
@@ -64,7 +64,7 @@ def peak_force(record: LoadRecord) -> Peak:
     cubic term; its highest point within the window is the peak.  Where the force still rises when the
     coupon breaks, it went on for up to one more sample; the parabola is followed for half of that, and
     the other half to either side is a rectangular distribution.  Spikes are bridged before
-    (`dic.sync.force.force_spikes`).
+    (`LoadRecord.spikes`).
 
     Parameters
     ----------
@@ -76,13 +76,13 @@ def peak_force(record: LoadRecord) -> Peak:
     Peak
         Force, standard uncertainty and time.
     """
-    time, noise = record.time_s, force_noise(record)
+    time, noise = record.time_s, record.noise_N
     if not has_load(record):
         return Peak(nan, nan, nan, float(time[-1]), at_end=True)
     smooth = smoothed_force(record, float(time[-1] - time[0]) / 100)
     # Squares rather than the larger extreme: a broken coupon's grips can swing far beyond zero.
     sign = 1.0 if np.sum(smooth * np.abs(smooth)) >= 0 else -1.0
-    force = sign * without_spikes(record)
+    force = sign * record.sound_N
     top = int(np.argmax(sign * smooth))
     (value, u, between, when, u_time), last = highest_around(time, force, noise, top, sign * smooth[top])
     return Peak(sign * value, u, between, when, last == len(force) - 1, u_time)

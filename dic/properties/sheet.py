@@ -99,6 +99,7 @@ class Sheet:
         self._zero: Zero | None = None
         self._reason: Undetermined | None = None
         self._elastic: Elastic | None = None
+        self._lines: dict[tuple[Loading, str], Line] = {}
         try:
             self.require_load()
             self._zero = zero_of(loading_of(curve), section.preload_stress(curve.area_mm2))
@@ -172,7 +173,11 @@ class Sheet:
 
     def line(self, loading: Loading, name: str = "strain") -> Line:
         """Lay the line of ``strain`` or ``transverse`` over stress as the elastic part does."""
-        return fit(loading, getattr(loading, name), getattr(loading, f"u_{name}"), self.elastic.window)
+        # Most properties ask for the same few lines.
+        if (loading, name) not in self._lines:
+            strain, u = getattr(loading, name), getattr(loading, f"u_{name}")
+            self._lines[loading, name] = fit(loading, strain, u, self.elastic.window)
+        return self._lines[loading, name]
 
     def of_stress(self, value: float) -> dict[str, float]:
         """Return the contributions of the factors that all stresses share."""
@@ -207,22 +212,29 @@ class Sheet:
         When the coupon moved is not known, so all of it is laid where it does most harm: it grows over the
         elastic part and then stays.
         """
+        if not self._stretched:
+            return None
+        here, moved = read(self.loading), []
+        for stretched in self._stretched:
+            try:
+                moved.append(abs(read(stretched) - here))
+            except Undetermined:
+                moved.append(nan)
+        return float(np.nanmax(moved)) if np.isfinite(moved).any() else nan
+
+    @cached_property
+    def _stretched(self) -> tuple[Loading, ...]:
+        """The loading with the false strain of either sign, none where it is not known."""
         u = self.curve.u_towards
         if not u:
-            return None
+            return ()
         frames = self.elastic.window.frames
         grown = np.interp(
             np.arange(len(self.loading.strain)),
             [frames.start, max(frames.stop - 1, frames.start + 1)],
             [0, 1],
         )
-        here, moved = read(self.loading), []
-        for false in (u, -u):
-            try:
-                moved.append(abs(read(self.loading.stretched(false * grown)) - here))
-            except Undetermined:
-                moved.append(nan)
-        return float(np.nanmax(moved)) if np.isfinite(moved).any() else nan
+        return self.loading.stretched(u * grown), self.loading.stretched(-u * grown)
 
     def with_clock(self, read: Callable[[Loading], float]) -> float:
         """Return how far the clock's standard uncertainty moves a reading.
@@ -230,13 +242,12 @@ class Sheet:
         A reading that is not to be had with the clock moved says nothing; the other side then stands
         for both.
         """
-        u = self.clock.offset_standard_uncertainty_s
-        if u == 0:
+        if not self._later:
             return 0.0
         moved = []
-        for seconds in (u, -u):
+        for later in self._later:
             try:
-                moved.append(read(self.loading.later(seconds)))
+                moved.append(read(later))
             except Undetermined:
                 moved.append(nan)
         here = read(self.loading)
@@ -244,6 +255,12 @@ class Sheet:
         if len(sides) == 2:
             return abs(moved[0] - moved[1]) / 2
         return sides[0] if sides else nan
+
+    @cached_property
+    def _later(self) -> tuple[Loading, ...]:
+        """The loading with the clock moved either way, none where it is exact."""
+        u = self.clock.offset_standard_uncertainty_s
+        return tuple(self.loading.later(seconds) for seconds in (u, -u)) if u else ()
 
     def window(self) -> dict[str, tuple[float, float]]:
         """Return the elastic window in strain, stress and time."""

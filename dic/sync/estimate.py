@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dic.errors import ClockError, LoadRecordError, Notice
-from dic.sync.force import has_load, without_spikes, wrong_sign
+from dic.sync.force import has_load, wrong_sign
 from dic.sync.locate import (
     BEGINNING,
     Located,
@@ -208,7 +208,7 @@ def _frames_lost(seen: Seen) -> tuple[float, float] | None:
 
 
 def _force_fell(record: LoadRecord) -> tuple[float, float] | None:
-    size = np.abs(without_spikes(record))
+    size = np.abs(record.sound_N)
     borne = np.flatnonzero(size > BROKEN * size.max())
     last = int(borne[-1])
     if last + 1 >= len(size):

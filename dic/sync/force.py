@@ -3,10 +3,9 @@
 from __future__ import annotations
 
 import numpy as np
-from numpy.lib.stride_tricks import sliding_window_view
 from numpy.typing import NDArray
 from scipy.interpolate import make_interp_spline
-from scipy.ndimage import median_filter, uniform_filter1d
+from scipy.ndimage import uniform_filter1d
 from scipy.signal import oaconvolve
 
 from dic.errors import LoadRecordError
@@ -14,56 +13,18 @@ from dic.sync.record import Clock, LoadRecord
 
 Floats = NDArray[np.float64]
 
-#: Samples around each one that its noise is estimated from: enough to know it to some 10 %, few enough to
-#: follow a noise that grows with the force.
-NOISE_WINDOW = 301
-#: A spike lasts this many samples at most; what lasts longer may have been borne.
-SPIKE_SAMPLES = 3
-#: Standard deviations of noise by which a spike stands out from either side: prolonging a side by its last
-#: two samples makes √6 of them, and four of those come up once in 30 000.
-SPIKE_NOISE = 10
 #: Noise from this many standard deviations down is no load: one sample in 10⁹ lies beyond.
 NO_LOAD = 6
 #: Rows of the record within an exposure from which the force is averaged over it.
 EXPOSURE_ROWS = 2
-#: Median of the absolute value of a standard normal variable.
-_NORMAL_MEDIAN = 0.6745
-
-
-def force_noise(record: LoadRecord) -> Floats:
-    """Estimate the standard deviation of the force's noise around every sample.
-
-    Each sample is compared with the straight line between its neighbours, and the root mean square of
-    these misses over `NOISE_WINDOW` samples is taken, each held to four times their median: so neither
-    the loading nor a fracture looks like noise.
-
-    Parameters
-    ----------
-    record
-        The load record, at least three samples.
-
-    Returns
-    -------
-    Floats
-        Standard deviation, N, shape (n,).
-    """
-    t, force = record.time_s, record.force_N
-    share = (t[1:-1] - t[:-2]) / (t[2:] - t[:-2])
-    miss = force[1:-1] - ((1 - share) * force[:-2] + share * force[2:])
-    own = np.abs(miss) / np.sqrt(1 + share**2 + (1 - share) ** 2)
-    size = min(NOISE_WINDOW, len(own))
-    typical = median_filter(own, size=size) / _NORMAL_MEDIAN
-    # The filter's running sum can end a rounding error below zero.
-    spread = np.sqrt(np.maximum(uniform_filter1d(np.minimum(own, 4 * typical) ** 2, size), 0))
-    return np.pad(spread, 1, mode="edge")
 
 
 def smoothed_force(record: LoadRecord, width_s: float) -> Floats:
     """Average the force's noise where that cannot distort the force.
 
-    Spikes are bridged (see `force_spikes`).  Every sample is replaced by the mean of the widest symmetric
-    window, at most `width_s` long, in which the record is a straight line within its own noise; the mean
-    is then the line's value at the sample.  At the start of loading, at a sharp yield point and at
+    Spikes are bridged (see `LoadRecord.spikes`).  Every sample is replaced by the mean of the widest
+    symmetric window, at most `width_s` long, in which the record is a straight line within its own noise;
+    the mean is then the line's value at the sample.  At the start of loading, at a sharp yield point and at
     fracture the windows shrink by themselves, down to the sample alone.
 
     Parameters
@@ -83,7 +44,7 @@ def smoothed_force(record: LoadRecord, width_s: float) -> Floats:
 
 def _smoothed(record: LoadRecord, width_s: float) -> tuple[Floats, Floats]:
     """Return the smoothed force and the standard deviation of the noise that is left in it."""
-    t, force, noise = record.time_s, without_spikes(record), force_noise(record)
+    t, force, noise = record.time_s, record.sound_N, record.noise_N
     noise_variance = noise**2
     best, samples = force.copy(), np.ones(len(t))
     for half in _half_windows(t, width_s):
@@ -98,65 +59,9 @@ def _smoothed(record: LoadRecord, width_s: float) -> tuple[Floats, Floats]:
     return best, noise / np.sqrt(samples)
 
 
-def force_spikes(record: LoadRecord) -> NDArray[np.bool_]:
-    """Find samples that stand alone: disturbances of the transducer, not force that the coupon bore.
-
-    A spike is a run of at most `SPIKE_SAMPLES` samples that lies beyond both its neighbours, and beyond
-    where the force was heading on either side, by more than noise and the usual change from sample to
-    sample can do.  A last sample before fracture, a yield point or a step is joined to one of its sides.
-    At the ends of the record, where there is one side only, a jump towards zero may be the fracture.
-
-    Parameters
-    ----------
-    record
-        The load record.
-
-    Returns
-    -------
-    NDArray
-        True where a sample is part of a spike, shape (n,).
-    """
-    steps = np.abs(np.diff(record.force_N))
-    usual = float(np.median(steps[steps > 0])) if steps.any() else 0.0
-    allowed = SPIKE_NOISE * force_noise(record) + 2 * usual
-    found = np.zeros(len(record.force_N), dtype=bool)
-    for width in range(1, SPIKE_SAMPLES + 1):
-        for force in (record.force_N, -record.force_N):
-            found |= _standing_out(force, width, allowed)
-    return found
-
-
-def _standing_out(force: Floats, width: int, allowed: Floats) -> NDArray[np.bool_]:
-    """Return the samples of those runs of a width that lie above both sides."""
-    n = len(force)
-    before, after = _heading(force), _heading(force[::-1])[::-1]
-    lowest = sliding_window_view(force, width).min(axis=1)
-    first = np.arange(n - width + 1)
-    last = first + width - 1
-    side = np.fmax(before[first], after[last])
-    one_sided = np.isnan(before[first]) | np.isnan(after[last])
-    alone = (lowest - side > allowed[first]) & (~one_sided | (lowest > np.abs(side)))
-    found = np.zeros(n, dtype=bool)
-    for shift in range(width):
-        found[first[alone] + shift] = True
-    return found
-
-
-def _heading(force: Floats) -> Floats:
-    """Return what the samples before each one reach, or are rising to; NaN for the first."""
-    previous = np.concatenate([[np.nan], force[:-1]])
-    return previous + np.concatenate([[0.0, 0.0], np.maximum(np.diff(force)[:-1], 0)])
-
-
-def without_spikes(record: LoadRecord) -> Floats:
-    """Return the force with straight lines across its spikes, N, shape (n,)."""
-    sound = ~force_spikes(record)
-    return np.interp(record.time_s, record.time_s[sound], record.force_N[sound])
-
-
 def has_load(record: LoadRecord) -> bool:
     """Tell whether the force ever changes by more than its noise."""
-    return bool(np.ptp(without_spikes(record)) > 2 * NO_LOAD * float(np.median(force_noise(record))))
+    return bool(np.ptp(record.sound_N) > 2 * NO_LOAD * float(np.median(record.noise_N)))
 
 
 def wrong_sign(record: LoadRecord, *, longer: bool) -> LoadRecordError:

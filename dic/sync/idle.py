@@ -7,7 +7,6 @@ from dataclasses import replace
 import numpy as np
 
 from dic.errors import LoadRecordError, Notice
-from dic.sync.force import force_noise
 from dic.sync.record import LoadRecord
 
 #: Fewer samples say too little of a zero.
@@ -29,7 +28,7 @@ def idle_samples(record: LoadRecord) -> int:
     of its noise, or 2 % of its span, for good; a fifth of the time until then is left out for its toe.
     """
     force = record.force_N
-    noise = float(np.median(force_noise(record)))
+    noise = float(np.median(record.noise_N))
     span = float(np.ptp(force))
     limit = max(_STANDS_OUT * noise, 1e-9 * span)
     loaded = np.flatnonzero(np.abs(force - np.median(force[:FEWEST])) > max(_LOADED * span, limit))

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from scipy.interpolate import make_interp_spline
 from scipy.optimize import minimize_scalar
 
-from dic.sync.force import force_noise, frame_interval, smoothed_force
+from dic.sync.force import frame_interval, smoothed_force
 from dic.sync.record import LoadRecord
 from dic.uncertainty import few_readings
 
@@ -168,7 +168,7 @@ class Misfit:
     def _smooth_noise(self, own: Misfit, tried: Floats, r: np.random.Generator) -> Floats:
         """Return draws of the noise that smoothing leaves in the force, shape (draws, offsets, frames)."""
         record, course = self.course.record, self.course
-        time, sigma = record.time_s, force_noise(record) / self.unit
+        time, sigma = record.time_s, record.noise_N / self.unit
         spacing = float(np.median(np.diff(record.time_s)))
         half = max(int((SMOOTHING * self.interval / spacing - 1) / 2), 0)
         at = tried[:, None] + course.time_s

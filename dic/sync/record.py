@@ -4,12 +4,14 @@ from __future__ import annotations
 
 from dataclasses import dataclass, field
 from datetime import datetime
+from functools import cached_property
 from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
 
 from dic.errors import Notice
+from dic.sync.noise import noise_of, spikes_of
 
 Floats = NDArray[np.float64]
 
@@ -49,6 +51,22 @@ class LoadRecord:
     epoch: datetime | None = None
     columns: dict[str, str] = field(default_factory=dict)
     notices: tuple[Notice, ...] = ()
+
+    @cached_property
+    def noise_N(self) -> Floats:  # noqa: N802  (the unit's symbol)
+        """Standard deviation of the force's noise around every sample, N (see `noise_of`)."""
+        return noise_of(self.time_s, self.force_N)
+
+    @cached_property
+    def spikes(self) -> NDArray[np.bool_]:
+        """True where a sample is part of a spike (see `spikes_of`)."""
+        return spikes_of(self.force_N, self.noise_N)
+
+    @cached_property
+    def sound_N(self) -> Floats:  # noqa: N802  (the unit's symbol)
+        """The force with straight lines across its spikes, N."""
+        sound = ~self.spikes
+        return np.interp(self.time_s, self.time_s[sound], self.force_N[sound])
 
 
 @dataclass(frozen=True)

@@ -7,6 +7,9 @@ import numpy as np
 import pytest
 
 from dic.properties import make_curve
+from dic.properties.elastic import elastic_entries
+from dic.properties.sheet import Sheet
+from dic.properties.strength import proof_entries
 from dic.strain.history import GaugeHistory
 from dic.strain.periodic import Periodic
 from dic.sync import Clock, LoadRecord
@@ -36,6 +39,11 @@ class Pull:
     @property
     def curve(self):
         return make_curve(self.history, self.record, self.clock, self.specimen.area)
+
+    def first_entries(self, section):
+        """Read the elastic constants and proof stresses only, which tests with many draws look at."""
+        sheet = Sheet(self.curve, self.specimen, None, self.clock, section)
+        return {entry.name: entry for entry in (*elastic_entries(sheet), *proof_entries(sheet))}
 
 
 @pytest.fixture(scope="session")

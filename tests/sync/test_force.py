@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 
 from dic.sync import Clock, LoadRecord, force_at
-from dic.sync.force import force_noise, force_spikes, frame_interval, has_load, smoothed_force
+from dic.sync.force import frame_interval, has_load, smoothed_force
 
 TIME = np.arange(0, 60, 0.02)
 N = len(TIME)
@@ -41,14 +41,14 @@ def test_a_single_frame_is_interpolated():
 def test_noise_is_estimated_on_a_ramp_with_a_fracture(size):
     force = np.where(TIME < 45, 100 * TIME, 0) + noise(1, size)
     # 301 samples tell a standard deviation to about 5 %; five times that covers 3000 overlapping windows.
-    np.testing.assert_allclose(force_noise(record(force)), size, rtol=0.25)
+    np.testing.assert_allclose(record(force).noise_N, size, rtol=0.25)
 
 
 def test_noise_is_estimated_for_uneven_sampling():
     time = np.sort(np.random.default_rng(2).uniform(0, 60, 3000))
     force = 1000 * time + noise(3, 5.0)
     # On a straight line the comparison with both neighbours is exact for any spacing.
-    np.testing.assert_allclose(force_noise(record(force, time)), 5.0, rtol=0.25)
+    np.testing.assert_allclose(record(force, time).noise_N, 5.0, rtol=0.25)
 
 
 def test_smoothing_takes_the_noise_out_of_a_ramp():
@@ -118,24 +118,24 @@ def test_a_spike_is_found_and_nothing_else(width, at, up):
     # The places: at rest, on the ramp, just before fracture, afterwards; 300 N is 60 times the noise.
     force = broken_ramp(11)
     force[at : at + width] += 300.0 if up else -300.0
-    assert np.flatnonzero(force_spikes(record(force))).tolist() == list(range(at, at + width))
+    assert np.flatnonzero(record(force).spikes).tolist() == list(range(at, at + width))
 
 
 def test_a_spike_at_either_end_of_the_record_is_found():
     force = broken_ramp(12)
     force[[0, -1]] += 300.0
-    assert np.flatnonzero(force_spikes(record(force))).tolist() == [0, N - 1]
+    assert np.flatnonzero(record(force).spikes).tolist() == [0, N - 1]
 
 
 def test_the_record_may_stop_with_the_sample_after_fracture():
     kept = TIME < 45.02
-    assert not force_spikes(record(broken_ramp(13)[kept], TIME[kept])).any()
+    assert not record(broken_ramp(13)[kept], TIME[kept]).spikes.any()
 
 
 def test_the_rebound_of_a_fracture_is_a_spike():
     force = broken_ramp(14)
     force[2250] = -1.2 * force[2240]
-    assert np.flatnonzero(force_spikes(record(force))).tolist() == [2250]
+    assert np.flatnonzero(record(force).spikes).tolist() == [2250]
 
 
 @pytest.mark.parametrize(
@@ -155,9 +155,9 @@ def test_the_rebound_of_a_fracture_is_a_spike():
 def test_no_course_of_a_test_is_a_spike(force, size, step):
     time = TIME[::step]
     course = force(time) + noise(15, size, len(time))
-    assert not force_spikes(record(course, time)).any()
+    assert not record(course, time).spikes.any()
     # A converter's last digit going to and fro is none either.
-    assert not force_spikes(record(np.round(course, -1), time)).any()
+    assert not record(np.round(course, -1), time).spikes.any()
 
 
 def test_smoothing_runs_straight_across_a_spike():
