@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Iterator
 from contextlib import contextmanager
-from math import isfinite
 from typing import TYPE_CHECKING
 
 from rich.console import Console
@@ -14,7 +13,7 @@ from rich.table import Table
 
 from dic.errors import printable
 from dic.quantities import for_people
-from dic.store.tables import stated, title_of
+from dic.store.tables import absent_in, called, found_in, short_list, stated
 
 if TYPE_CHECKING:
     from dic.measurement import Measurement
@@ -57,12 +56,11 @@ def show_measurement(measurement: Measurement) -> None:
     table = Table(title=_plain(measurement.test.specimen.label), title_justify="left")
     for heading in ("property", "symbol", "value (k = 2)"):
         table.add_column(heading)
-    for item in measurement.properties.values():
-        table.add_row(title_of(item.name), item.symbol, stated(item)[0])
+    for item in found_in(measurement.properties):
+        table.add_row(called(item), item.symbol, stated(item)[0])
     console.print(table)
-    for item in measurement.properties.values():
-        if not isfinite(item.value):
-            console.print(f"no {title_of(item.name)}: {_plain('; '.join(item.notes))}")
+    for reason, items in absent_in(measurement.properties):
+        console.print(f"not determined: {short_list(items)}: {_plain(reason)}")
     for notice in measurement.notices:
         console.print(f"warning: {_plain(notice.text)}")
     console.print(f"report: {_plain(str(measurement.folder / 'report.html'))}", soft_wrap=True)
@@ -76,7 +74,7 @@ def show_comparison(rows: Iterable[Compared]) -> None:
     for row in rows:
         value, unit = for_people(row.true, row.item.unit, row.item.name)
         table.add_row(
-            title_of(row.item.name),
+            called(row.item),
             stated(row.item)[0],
             f"{value:.6g} {unit}".rstrip(),
             f"{row.off_percent:+.3f} %",

@@ -28,7 +28,7 @@ from dic.report.optics import camera_rows
 from dic.rounding import COVERAGE_FACTOR, uncertainty_alone, with_uncertainty
 from dic.store.folder import FIGURES
 from dic.store.results import encoded, write_whole
-from dic.store.tables import shown_in, stated
+from dic.store.tables import absent_in, called, found_in, shown_in, stated
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -122,7 +122,11 @@ def _page(measurement: Measurement, pictures: dict[str, list[Picture]]) -> str:
         frames=len(measurement.history),
         area=f"{measurement.curve.area_mm2:.4g} mm²",
         k=f"{COVERAGE_FACTOR:g}",
-        properties=[_entry(item) for item in measurement.properties.values()],
+        properties=[_entry(item) for item in found_in(measurement.properties)],
+        absent=[
+            (reason, [(called(item), words.symbol(item.symbol)) for item in items])
+            for reason, items in absent_in(measurement.properties)
+        ],
         notices=measurement.notices,
         pictures=pictures,
         clock=measurement.clock,
@@ -185,11 +189,11 @@ def _entry(item: Property) -> dict[str, Any]:
     value, standard = stated(item)
     return {
         "anchor": words.identifier(item.name),
-        "title": words.title(item),
+        "title": called(item),
         "symbol": words.symbol(item.symbol),
         "value": value,
         "standard": standard,
-        "method": item.method if isfinite(item.value) else "",
+        "method": item.method,
         "window": words.window(item.window),
         # One range names the window; the others say the same in other quantities.
         "short_window": words.window(dict(list(item.window.items())[:1])),

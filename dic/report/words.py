@@ -11,10 +11,8 @@ from typing import Any
 import numpy as np
 from markupsafe import Markup
 
-from dic.properties.result import Property
 from dic.report.figures import strain_unit
 from dic.rounding import three_digits
-from dic.store.tables import title_of
 
 #: Units that the end of a name stands for.
 _UNITS = {
@@ -126,13 +124,6 @@ CAUTIONS = (
     "directions.",
     "Uncertainties contain what their tables list and nothing else; notes name what was left out.",
 )
-
-
-def title(item: Property) -> str:
-    """Return what people call a property; the strength by the direction of loading."""
-    if item.name == "tensile_strength" and item.value < 0:
-        return "Compressive strength"
-    return title_of(item.name)
 
 
 def symbol(text: str) -> Markup:

@@ -12,12 +12,16 @@ from dic.quantities import for_people
 from dic.rounding import COVERAGE_FACTOR, uncertainty_alone, with_uncertainty
 
 if TYPE_CHECKING:
+    from collections.abc import Mapping, Sequence
+
     import pandas as pd
 
     from dic.measurement import Measurement
     from dic.properties.result import Curve, Property
     from dic.strain.history import GaugeHistory
 
+#: From more properties on, symbols are easier to read than names.
+_MANY = 3
 #: Names that people use for the properties.
 TITLES = {
     "youngs_modulus": "Young's modulus",
@@ -114,6 +118,34 @@ def title_of(name: str) -> str:
     return TITLES.get(name, name.replace("_", " ").capitalize())
 
 
+def called(item: Property) -> str:
+    """Return what people call a property; the strength by the direction of loading."""
+    if item.name == "tensile_strength" and item.value < 0:
+        return "Compressive strength"
+    return title_of(item.name)
+
+
+def found_in(properties: Mapping[str, Property]) -> list[Property]:
+    """Return the properties that have a value, in the order of the sheet."""
+    return [item for item in properties.values() if isfinite(item.value)]
+
+
+def absent_in(properties: Mapping[str, Property]) -> list[tuple[str, list[Property]]]:
+    """Return each reason for which properties are absent, and those that are absent for it."""
+    reasons: dict[str, list[Property]] = {}
+    for item in properties.values():
+        if not isfinite(item.value):
+            reasons.setdefault("; ".join(item.notes), []).append(item)
+    return list(reasons.items())
+
+
+def short_list(items: Sequence[Property]) -> str:
+    """Name a few properties in plain words, many by their symbols."""
+    if len(items) > _MANY:
+        return ", ".join(item.symbol for item in items)
+    return ", ".join(called(item) for item in items)
+
+
 def shown_in(item: Property) -> tuple[float, str]:
     """Return the factor from a property's internal unit to the one that people read, and that unit."""
     value, unit = for_people(item.value, item.unit, item.name)
@@ -141,14 +173,16 @@ def properties_text(measurement: Measurement) -> str:
     Returns
     -------
     str
-        A table with one property a line, its coverage factor, and each warning below.
+        A table with one property a line, why others are absent, the coverage factor, and each warning.
     """
     specimen = measurement.test.specimen
     heading = f"{specimen.label} ({specimen.material})" if specimen.material else specimen.label
-    rows = [(title_of(item.name), item.symbol, stated(item)[0]) for item in measurement.properties.values()]
+    rows = [(called(item), item.symbol, stated(item)[0]) for item in found_in(measurement.properties)]
     widths = [max((len(row[column]) for row in rows), default=0) for column in (0, 1)]
     lines = [heading, ""]
     lines += [f"  {title:<{widths[0]}}  {symbol:<{widths[1]}}  {text}" for title, symbol, text in rows]
+    for reason, items in absent_in(measurement.properties):
+        lines += wrap(f"not determined: {short_list(items)}: {reason}", 96, subsequent_indent="    ")
     lines += ["", f"± is the expanded uncertainty, k = {COVERAGE_FACTOR:g} (about 95 %)."]
     for notice in measurement.notices:
         lines += wrap(f"Warning: {notice.text}", 96, subsequent_indent="         ")

@@ -10,6 +10,7 @@ import numpy as np
 import pytest
 import tifffile
 
+from dic.properties import Property
 from dic_cli.main import main
 from dic_cli.screen import show_measurement
 
@@ -88,6 +89,9 @@ def test_a_screen_that_lacks_letters(tmp_path, monkeypatch):
     assert b"30 ? 20 px" in screen.buffer.getvalue()
 
 
+YIELDS = ("upper_yield", "lower_yield")
+
+
 def test_a_strangers_text_does_not_steer_the_screen(capsys):
     """Labels come from the test file, whose strings may hold any character; the folder from anywhere."""
     steering = "\x1b]0;other title\x07 [bold]mine[/bold]"
@@ -96,6 +100,21 @@ def test_a_strangers_text_does_not_steer_the_screen(capsys):
     shown = capsys.readouterr().out
     assert "\x1b" not in shown
     assert "[bold]mine" in shown
+
+
+def test_the_screen_folds_what_is_absent_and_names_the_strength(capsys):
+    nan, none = float("nan"), "the force does not fall"
+    rows = [
+        Property("tensile_strength", "Rm", -120.0, "MPa", 1.0, "largest force"),
+        *(Property(name, "", nan, "MPa", nan, "not determined", notes=(none,)) for name in YIELDS),
+    ]
+    test = SimpleNamespace(specimen=SimpleNamespace(label="1"))
+    found = {row.name: row for row in rows}
+    show_measurement(SimpleNamespace(test=test, properties=found, notices=(), folder=Path()))
+    shown = capsys.readouterr().out
+    assert "Compressive strength" in shown
+    assert "Tensile" not in shown
+    assert f"not determined: Upper yield strength, Lower yield strength: {none}" in " ".join(shown.split())
 
 
 def test_a_broken_program_is_status_1(tmp_path):

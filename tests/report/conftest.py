@@ -208,6 +208,24 @@ def pressed(measurement):
 
 
 @pytest.fixture(scope="session")
+def lost(measurement):
+    """Return the same test without an elastic part."""
+    gone = {
+        name: dataclasses.replace(
+            item, value=np.nan, standard_uncertainty=np.nan, method="not determined", window={},
+            notes=("no elastic part was found",), contributions={},
+        )
+        for name, item in measurement.properties.items()
+        if name in ("youngs_modulus", "poissons_ratio", "shear_modulus")
+    }  # fmt: skip
+    return dataclasses.replace(
+        measurement,
+        properties=measurement.properties | gone,
+        line=ModulusLine(np.nan, np.nan, np.nan, np.nan),
+    )
+
+
+@pytest.fixture(scope="session")
 def fields():
     """Homogeneous strain plus slight bending, strains in coupon axes, one map for each frame."""
     history, *_ = make_histories()

@@ -14,7 +14,7 @@ from PIL import Image
 from dic.properties.result import ModulusLine
 from dic.report import write_report
 from dic.store.folder import FIGURES
-from dic.store.tables import stated, title_of
+from dic.store.tables import called, found_in, stated
 
 # Elements that HTML leaves without an end tag (WHATWG HTML, "Void elements").
 VOID = {"meta", "img", "br", "hr", "link", "input", "area", "base", "col", "embed", "source", "track", "wbr"}
@@ -106,13 +106,22 @@ def test_page_can_be_read_aloud(page):
 
 
 def test_every_property_with_its_uncertainties(page, measurement):
-    for item in measurement.properties.values():
+    for item in found_in(measurement.properties):
         expanded, standard = stated(item)
-        for words in (title_of(item.name), item.symbol, expanded, standard, item.method, *item.notes):
+        for words in (called(item), item.symbol, expanded, standard, item.method, *item.notes):
             assert words in page.text, words
         for source in item.contributions:
             assert source in page.text
     assert "k = 2" in page.text
+
+
+def test_what_is_absent_for_one_reason_stands_on_one_line(page, lost, fields, tmp_path):
+    only = page.text[page.text.index("Not determined in this test") :]
+    assert re.match(r"Not determined in this test 5 % proof stress \S+.*: the strain never reached", only)
+    other = Page(write_report(lost, fields, tmp_path).read_text(encoding="utf-8"))
+    [line] = re.findall(r"Young's modulus[^.:]*: no elastic part was found\.", other.text)
+    assert re.search("Poisson's ratio .*Shear modulus", line)
+    assert other.text.count("no elastic part was found") == 1
 
 
 def test_shares_of_the_uncertainty_are_shares_of_the_variance(page):
@@ -204,7 +213,7 @@ def test_without_a_modulus_the_rest_still_stands(measurement, fields, tmp_path):
     for name in ("map-b.svg", "elastic-part.png", "own.png"):
         (tmp_path / "figures" / name).touch()
     page = Page(write_report(bare, fields, tmp_path).read_text(encoding="utf-8"))
-    assert "not determined" in page.text
+    assert "Not determined in this test" in page.text
     assert "Nothing unusual was met" in page.text
     assert "date not recorded" in page.text
     stems = {path.stem for path in (tmp_path / "figures").iterdir()}

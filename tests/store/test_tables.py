@@ -7,7 +7,7 @@ import pytest
 
 from dic.gauges.placing import RESERVED
 from dic.properties.result import Property
-from dic.store.tables import history_table, properties_text, shown_in, stated, title_of
+from dic.store.tables import found_in, history_table, properties_text, short_list, shown_in, stated, title_of
 
 CONTRACT = [
     "frame",
@@ -72,12 +72,28 @@ def test_soft_modulus_stays_in_mpa():
 def test_text_shows_every_property_and_every_warning(measurement):
     text = properties_text(measurement)
     assert str(measurement) == text
-    for item in measurement.properties.values():
+    for item in found_in(measurement.properties):
         assert title_of(item.name) in text
         assert stated(item)[0] in text
+    assert "not determined: 5 % proof stress: the strain never reached this offset" in text
     for notice in measurement.notices:
         assert notice.text in " ".join(text.split())
     assert "k = 2" in text
+
+
+def test_many_that_are_absent_for_one_reason_fill_one_line(lost):
+    text = properties_text(lost)
+    [line] = [line for line in text.splitlines() if "no elastic part was found" in line]
+    assert (
+        line == "not determined: Young's modulus, Poisson's ratio, Shear modulus: no elastic part was found"
+    )
+    assert [item.symbol for item in found_in(lost.properties)] == ["Rp0.2", "Rm"]
+    assert short_list(list(lost.properties.values())) == "E, ν, G, Rp0.2, Rp5, Rm"
+
+
+def test_compression_gives_a_compressive_strength(pressed):
+    assert "Compressive strength" in str(pressed)
+    assert "Tensile" not in str(pressed)
 
 
 def test_text_without_properties_still_names_the_coupon(measurement):
