@@ -17,6 +17,8 @@ from dic.tables import Break
 Floats = NDArray[np.float64]
 
 _DAY = 86_400.0
+#: Fewer rows are no test.
+MIN_ROWS = 5
 
 _CLOCK = r"(?:(?P<h>\d{1,3}):)?(?P<m>\d{1,2}):(?P<s>\d{1,2}(?:[.,]\d+)?)(?:\s?(?P<half>[AaPp])[Mm])?"
 _DATE = r"(?P<a>\d{1,4})(?P<mark>[-./])(?P<b>\d{1,2})[-./](?P<c>\d{1,4})"
@@ -146,7 +148,8 @@ def find_segments(time_s: Floats, breaks: tuple[Break, ...]) -> list[Segment]:
     """Split a record where its time starts anew.
 
     Time starts anew where it falls back to, or before, where the segment began, or where it falls behind
-    any rows of text between the data.
+    any rows of text between the data.  Where that would leave mostly segments of too few rows, the clock is
+    broken, and the record is one segment whose time runs back.
 
     Parameters
     ----------
@@ -163,7 +166,10 @@ def find_segments(time_s: Floats, breaks: tuple[Break, ...]) -> list[Segment]:
         anew = time_s[back] <= time_s[cuts[-1]] + usual / 2
         if (anew or back in after_text) and back - cuts[-1] > 1:
             cuts.append(int(back))
-    return [Segment(first, last) for first, last in zip(cuts, [*cuts[1:], len(time_s)], strict=True)]
+    ends = [*cuts[1:], len(time_s)]
+    if np.median(np.subtract(ends, cuts)) < MIN_ROWS:
+        return [Segment(0, len(time_s))]
+    return [Segment(first, last) for first, last in zip(cuts, ends, strict=True)]
 
 
 def refuse_backwards(time_s: Floats, lines: NDArray[np.int64], path: Path) -> None:
@@ -174,6 +180,12 @@ def refuse_backwards(time_s: Floats, lines: NDArray[np.int64], path: Path) -> No
     rows = ", ".join(str(lines[i]) for i in back[:5]) + (
         f" and {back.size - 5} more" if back.size > 5 else ""
     )
+    if 2 * back.size > len(time_s):
+        raise LoadRecordError(
+            f"time runs backwards, from {time_s[0]:g} s to {time_s[-1]:g} s",
+            where=f"{path}, rows {lines[0]} to {lines[-1]}",
+            remedy="export the rows in the order in which they were measured",
+        )
     here = back[0]
     raise LoadRecordError(
         f"time does not increase (from {time_s[here - 1]:g} s to {time_s[here]:g} s)",

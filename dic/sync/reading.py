@@ -13,7 +13,15 @@ from numpy.typing import NDArray
 from dic.errors import LoadRecordError, Notice
 from dic.sync.columns import Header, Unit, find_columns, headers_of, refuse_stray_units, unit_of
 from dic.sync.idle import tared
-from dic.sync.instants import Instants, Segment, find_segments, from_clock, refuse_backwards, spread_stamps
+from dic.sync.instants import (
+    MIN_ROWS,
+    Instants,
+    Segment,
+    find_segments,
+    from_clock,
+    refuse_backwards,
+    spread_stamps,
+)
 from dic.sync.record import LoadRecord
 from dic.tables import Break, Table, read_table
 from dic.testfile import LoadRecord as Section
@@ -22,8 +30,6 @@ Floats = NDArray[np.float64]
 
 #: Four million numbers, which is what a table may hold, of some twenty characters each.
 MAX_BYTES = 100_000_000
-#: Fewer rows are no test.
-MIN_ROWS = 5
 #: Share of the rows in which time or force may be missing; more is no accident.
 MOST_MISSING = 0.05
 #: Rows in succession in which they may be.
@@ -122,8 +128,8 @@ def _without_cut_row(table: Table) -> Table:
     if last and _decimals(last) >= max(map(_decimals, before), default=0) > 0:
         return table
     text = (
-        f"{table.path.name}: the last row ({table.cells.index[-1]}) has no line end and may be cut off, so it "
-        "was left out; if the test went on, export it again."
+        f"{table.path.name}: the last row ({table.cells.index[-1]}) has no line end and may be cut off, so "
+        "it was left out; if the test went on, export it again."
     )
     return replace(
         table, cells=table.cells.iloc[:-1], notices=(*table.notices, Notice("record_cut_off", text))

@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from dic.errors import LoadRecordError, Notice
 from dic.sync.columns import Header, headers_of, reads_as_unit, recognised, unit_of
-from dic.sync.instants import find_segments
+from dic.sync.instants import Segment, find_segments, refuse_backwards
 from dic.sync.reading import decimals_assumed, open_record, read_instants
 from dic.tables import Table
 from dic.tables.layout import NAMES
@@ -145,6 +145,12 @@ def look_at_record(path: Path, sheet: str | None = None, decimal: str | None = N
             notices += read.notices
         except LoadRecordError as error:
             notices.append(Notice("record_time", str(error)))
+    lines, time, segments = _running(table, time_s)
+    for part in segments:
+        try:
+            refuse_backwards(time[part.first : part.last], lines[part.first : part.last], table.path)
+        except LoadRecordError as error:
+            notices.append(Notice("record_time", str(error)))
     marks = [table.decimal_of(h.position).mark for h in numbers if not _mixed(table, h)]
     return RecordSurvey(
         path=table.path,
@@ -155,7 +161,7 @@ def look_at_record(path: Path, sheet: str | None = None, decimal: str | None = N
         heading=table.heading,
         columns=columns,
         rows=len(table.cells),
-        **_timing(table, time_s),
+        **_timing(lines, time, segments),
         epoch=epoch,
         notices=tuple(notices),
     )
@@ -192,13 +198,19 @@ def _mixed(table: Table, header: Header) -> bool:
     return False
 
 
-def _timing(table: Table, time_s: Floats) -> dict[str, Any]:
+def _running(table: Table, time_s: Floats) -> tuple[NDArray[np.int64], Floats, list[Segment]]:
+    """Return rows and times where there is a time, and the segments; none where there are no two."""
     seen = np.flatnonzero(np.isfinite(time_s))
+    time, lines = time_s[seen], table.cells.index.to_numpy()[seen]
     if seen.size < 2:
+        return lines, time, []
+    return lines, time, find_segments(time, table.breaks if seen.size == len(time_s) else ())
+
+
+def _timing(lines: NDArray[np.int64], time: Floats, segments: list[Segment]) -> dict[str, Any]:
+    if not segments:
         nan = float("nan")
         return {"segments": (), "interval_s": (nan, nan, nan), "start_s": nan, "end_s": nan}
-    time, lines = time_s[seen], table.cells.index.to_numpy()[seen]
-    segments = find_segments(time, table.breaks if seen.size == len(time_s) else ())
     steps = np.concatenate([np.diff(time[s.first : s.last]) for s in segments])
     steps = steps[steps != 0]  # stamps that repeat
     spread = (

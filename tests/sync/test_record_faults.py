@@ -237,3 +237,12 @@ def test_a_whole_number_without_a_line_end_cannot_be_told_from_a_cut_one(read):
     record = read(HEAD + rows(40, force=int).rstrip("\n"))
     assert record.force_N.tolist() == list(range(39))
     assert "row (41) has no line end and may be cut off" in record.notices[0].text
+
+
+def test_a_clock_that_runs_backwards_is_no_row_of_segments(read, path):
+    turned = "".join(reversed(rows(40).splitlines(keepends=True)))
+    with pytest.raises(LoadRecordError, match=r"rows 2 to 41: time runs backwards, from 3.9 s to 0 s"):
+        read(HEAD + turned)
+    seen = look_at_record(path)
+    assert len(seen.segments) == 1
+    assert "runs backwards" in seen.notices[0].text
