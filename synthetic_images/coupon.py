@@ -68,6 +68,9 @@ class Coupon:
         How the ends widen; None for a straight strip.
     holes
         Round holes, (X, Y, radius) in material coordinates, px.
+    cylinder
+        Whether this is a round bar of the width as its diameter, seen from far away: the material at an arc
+        R·φ from its middle line stands R·sin φ beside it, and contracts around the bar as it does across.
     """
 
     texture: Texture
@@ -79,6 +82,7 @@ class Coupon:
     edge: float = 0.5
     waist: Waist | None = None
     holes: tuple[tuple[float, float, float], ...] = ()
+    cylinder: bool = False
 
     def __call__(self, x: Floats, y: Floats) -> Floats:
         """Return the reflectance at picture coordinates x, y, px."""
@@ -89,9 +93,19 @@ class Coupon:
         value = self._behind(x, y, depth.shape)
         rim = on & (depth < 6)
         behind = value[rim]
-        value[on] = self.texture(X[on], Y[on])
+        value[on] = self.texture(*self._on_surface(X[on], Y[on]))
         value[rim] = behind + (value[rim] - behind) * ndtr(depth[rim])
         return value
+
+    def _on_surface(self, X: Floats, Y: Floats) -> tuple[Floats, Floats]:
+        """Return where on the texture material points lie that are seen at X, Y."""
+        if not self.cylinder:
+            return X, Y
+        c, s = _cos_sin(self.axis_angle_deg)
+        across = c * (X - self.centre[0]) + s * (Y - self.centre[1])
+        radius = self.width / 2
+        beyond = radius * np.arcsin(np.clip(across / radius, -1.0, 1.0)) - across
+        return X + c * beyond, Y + s * beyond
 
     def _depth(self, X: Floats, Y: Floats) -> Floats:
         """Return how far material points lie inside the outline, px."""

@@ -135,9 +135,8 @@ def test_file(test: VirtualTest) -> dict[str, Any]:
         "specimen": {
             "label": specimen.label,
             "material": specimen.material,
-            "shape": "flat",
-            "width": f"{readings.width_mm:.5g} mm",
-            "thickness": f"{readings.thickness_mm:.5g} mm",
+            "shape": specimen.shape,
+            **{name: f"{size:.5g} mm" for name, size in readings.section_mm.items()},
         },
         "frames": {"source": "frames", "rate": f"{scenario.camera.rate:.15g} Hz"},
         "load_record": {
@@ -147,7 +146,7 @@ def test_file(test: VirtualTest) -> dict[str, Any]:
             "displacement": "Crosshead",
         },
     }
-    for side in ("width", "thickness"):
+    for side in specimen.dimensions:
         if uncertainty := getattr(specimen, f"{side}_uncertainty"):
             content["specimen"][f"{side}_uncertainty"] = f"{uncertainty:.6g} mm"
     if record.force_uncertainty:
@@ -187,16 +186,17 @@ def truth(test: VirtualTest) -> dict[str, Any]:
             "bending_percent": 100 * scenario.machine.bending,
         },
         "specimen": {
-            "width_mm": scenario.specimen.width,
-            "thickness_mm": scenario.specimen.thickness,
+            **{f"{name}_mm": getattr(scenario.specimen, name) for name in readings.section_mm},
             "area_mm2": test.area_mm2,
             "scale_mm_per_px": scenario.scale,
             "centre_px": list(test.centre),
         },
         "errors": {
             "force_factor": readings.force_factor,
-            "width_mm": readings.width_mm - scenario.specimen.width,
-            "thickness_mm": readings.thickness_mm - scenario.specimen.thickness,
+            **{
+                f"{name}_mm": size - getattr(scenario.specimen, name)
+                for name, size in readings.section_mm.items()
+            },
             "extensometer_gain": scenario.load_record.extensometer_gain,
             "extensometer_offset": scenario.load_record.extensometer_offset,
         },

@@ -7,6 +7,7 @@ from typing import Annotated, Literal
 
 from pydantic import Field, model_validator
 
+from dic import testfile
 from dic.errors import TestFileError, nearest
 from dic.testfile import Gauge, Properties, Section, quantity, read_toml
 from synthetic_images.camera import Camera
@@ -56,15 +57,16 @@ def _exactly(
         )
 
 
-class Specimen(Section):
-    """The flat coupon as it truly is, and how well its section was measured."""
+class Specimen(testfile.Specimen):
+    """The coupon as it truly is, and how well its section was measured."""
 
     label: str = "virtual coupon"
     material: str = "invented"
-    width: Length
-    thickness: Length
-    width_uncertainty: Travel = 0.0
-    thickness_uncertainty: Travel = 0.0
+
+    @property
+    def dimensions(self) -> tuple[str, ...]:
+        """Names of what was measured with the calliper."""
+        return ("diameter",) if self.shape == "round" else ("width", "thickness")
 
 
 class MaterialLaw(Section):
@@ -240,8 +242,8 @@ class Scenario(Section):
             raise ValueError("the frames would fill more than 20 GB; lower rows, columns or frames")
         material = self.material.make()
         if isinstance(material, YieldPoint):
-            falls = (material.upper_yield - material.lower_yield) * self.specimen.width
-            falls *= self.specimen.thickness / self.machine.stiffness
+            falls = (material.upper_yield - material.lower_yield) * self.specimen.area
+            falls /= self.machine.stiffness
             if falls >= material.drop * self.machine.free_length:
                 raise ValueError(
                     "the machine's spring gives back more than the coupon takes up in the yield point's "
@@ -263,7 +265,7 @@ class Scenario(Section):
     @property
     def scale(self) -> float:
         """True scale, mm/px."""
-        return self.specimen.width / self.view.coupon_width
+        return self.specimen.visible_width / self.view.coupon_width
 
 
 def load_scenario(path: str | Path) -> Scenario:

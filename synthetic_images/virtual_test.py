@@ -66,13 +66,12 @@ class Readings:
     ----------
     force_factor
         Indicated over true force.
-    width_mm, thickness_mm
-        The section as the calliper gave it.
+    section_mm
+        The section as the calliper gave it: width and thickness, or diameter.
     """
 
     force_factor: float
-    width_mm: float
-    thickness_mm: float
+    section_mm: dict[str, float]
 
 
 class VirtualTest:
@@ -88,7 +87,7 @@ class VirtualTest:
         self.scenario = scenario
         self.material = scenario.material.make()
         self.camera = scenario.camera.make()
-        self.area_mm2 = scenario.specimen.width * scenario.specimen.thickness
+        self.area_mm2 = scenario.specimen.area
         view = scenario.view
         self.centre = ((view.columns - 1) / 2, (view.rows - 1) / 2)
         self.texture = scenario.texture.make(
@@ -188,7 +187,15 @@ class VirtualTest:
     def scene(self, motion: Motion) -> Coupon:
         """Return what the camera sees when the coupon has moved so."""
         view = self.scenario.view
-        return Coupon(self.texture, motion, self.centre, view.coupon_width, view.axis_angle, view.background)
+        return Coupon(
+            self.texture,
+            motion,
+            self.centre,
+            view.coupon_width,
+            view.axis_angle,
+            view.background,
+            cylinder=self.scenario.specimen.shape == "round",
+        )
 
     def frame(self, k: int, motion: Motion) -> NDArray:
         """Return frame k, grey levels, shape (rows, columns)."""
@@ -201,8 +208,10 @@ class VirtualTest:
         draw = np.random.default_rng(self.seed("errors")).standard_normal(3)
         return Readings(
             force_factor=1 + self.scenario.load_record.force_uncertainty * float(draw[0]),
-            width_mm=specimen.width + specimen.width_uncertainty * float(draw[1]),
-            thickness_mm=specimen.thickness + specimen.thickness_uncertainty * float(draw[2]),
+            section_mm={
+                name: getattr(specimen, name) + (getattr(specimen, f"{name}_uncertainty") or 0.0) * float(one)
+                for name, one in zip(specimen.dimensions, draw[1:], strict=False)
+            },
         )
 
     def record(self) -> tuple[Floats, Floats, Floats]:

@@ -202,8 +202,8 @@ def test_drawn_errors_have_their_stated_spread():
         readings = VirtualTest(scenario().model_copy(update={"seed": seed})).readings()
         drawn += [
             (readings.force_factor - 1) / 0.005,
-            (readings.width_mm - 10) / 0.01,
-            (readings.thickness_mm - 1.5) / 0.004,
+            (readings.section_mm["width"] - 10) / 0.01,
+            (readings.section_mm["thickness"] - 1.5) / 0.004,
         ]
     assert np.mean(np.square(drawn)) == pytest.approx(1.0, abs=4 * np.sqrt(2 / 180))  # four of its sigmas
 
