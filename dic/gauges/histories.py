@@ -59,6 +59,7 @@ class NamedHistory:
         found: dict[str, Floats | list[str]] = {name: self.strain, f"u_{name}": self.u_strain}
         for number, label in enumerate(self.gauge.labels):
             found[label] = self.parts[:, number]
+            found[f"u_{label}"] = self.u_parts[:, number]
         found[f"status_{name}"] = list(self.status)
         return found
 

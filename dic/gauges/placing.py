@@ -128,7 +128,7 @@ def place_gauges(
     placed = [placer.place(name, gauge) for name, gauge in wanted.items()]
     taken = set(RESERVED)
     for gauge in placed:
-        for column in [gauge.name, f"u_{gauge.name}", f"status_{gauge.name}", *gauge.labels]:
+        for column in [gauge.name, f"u_{gauge.name}", f"status_{gauge.name}", *_columns(gauge.labels)]:
             if column in taken:
                 raise TestFileError(
                     f"the name '{column}' is taken by another column of history.csv",
@@ -137,6 +137,10 @@ def place_gauges(
                 )
             taken.add(column)
     return placed
+
+
+def _columns(labels: tuple[str, ...]) -> list[str]:
+    return [column for label in labels for column in (label, f"u_{label}")]
 
 
 class _Placer:

@@ -119,7 +119,9 @@ def test_an_area_that_loses_its_edge_keeps_its_reading(placed, subsets, moved_by
 
 def test_columns_of_the_history(read):
     assert list(read["ext"].columns()) == ["ext", "u_ext", "status_ext"]
-    assert list(read["wide"].columns()) == ["wide", "u_wide", "wide_1", "wide_2", "wide_3", "status_wide"]
+    stations = [column for number in (1, 2, 3) for column in (f"wide_{number}", f"u_wide_{number}")]
+    assert list(read["wide"].columns()) == ["wide", "u_wide", *stations, "status_wide"]
+    np.testing.assert_array_equal(read["wide"].columns()["u_wide_2"], read["wide"].u_parts[:, 1])
 
 
 def test_scatter_is_as_stated(placed, subsets, photograph, matched):
