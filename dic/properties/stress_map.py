@@ -51,7 +51,10 @@ def elastic_stress(dataset: xr.Dataset, frame: int, properties: Mapping[str, Pro
     limit = elastic_limit(properties)
     fields = dataset.isel(frame=frame)
     names = ("strain_axial", "strain_transverse", "strain_shear")
-    axial, across, shear = plane_stress(modulus, ratio, *(fields[name].to_numpy() for name in names))
+    try:
+        axial, across, shear = plane_stress(modulus, ratio, *(fields[name].to_numpy() for name in names))
+    except ValueError as error:
+        raise InputError(str(error), where="properties.poissons_ratio") from error
     equivalent = np.sqrt(axial**2 - axial * across + across**2 + 3 * shear**2)
     measured = np.isfinite(equivalent)
     beyond = measured & (equivalent > limit)
@@ -98,5 +101,6 @@ def _value(properties: Mapping[str, Property], name: str) -> float:
     item = properties.get(name)
     if item is None or not isfinite(item.value):
         reason = "; ".join(item.notes) if item is not None else "it was not evaluated"
-        raise InputError(f"there is no {name} for a stress map ({reason})", where="properties")
+        plain = name.replace("_", " ").replace("youngs", "Young's").replace("poissons", "Poisson's")
+        raise InputError(f"there is no {plain} for a stress map ({reason})", where="properties")
     return item.value

@@ -98,10 +98,10 @@ def draw_scene(measurement: Measurement) -> Drawing:
     figure, (axes,) = sheet(height=float(np.clip(WIDTH * rows / columns, 2.2, 5.4)) + 0.5)
     photograph_on(axes, scene, (0, columns, 0, rows), fade=0.25)
     _coupon_lines(axes, scene)
-    axes.add_patch(_outline(scene, lw=1.6, label="gauge region"))
+    axes.add_patch(outline(scene, lw=1.6, label="gauge region"))
     _arrow(axes, scene)
     _squares(axes, scene)
-    _scale_bar(axes, scene)
+    scale_bar(axes, scene)
     # The picture's frame is narrower than the sheet for a tall coupon; the legend then needs one column.
     legend_above(axes, 1 if rows > columns else 2)
     reading = (
@@ -120,7 +120,7 @@ def draw_scene(measurement: Measurement) -> Drawing:
 
 def _map(measurement: Measurement, field: xr.Dataset, moment: Moment, rest: dict[str, float]) -> Drawing:
     scene, curve, history = measurement.scene, measurement.curve, measurement.history
-    left, right, top, bottom = view = _view(field, scene)
+    left, right, top, bottom = view = view_of(field, scene)
     tall = bottom - top > right - left
     shape = (1, 3) if tall else (3, 1)
     ratio = (bottom - top) / (right - left)
@@ -132,8 +132,8 @@ def _map(measurement: Measurement, field: xr.Dataset, moment: Moment, rest: dict
     for axes, component in zip(panels, ("axial", "transverse", "shear"), strict=True):
         photograph_on(axes, scene, view, fade=0.55)
         spreads.append(_panel(axes, field, component, tall, rest.get(component, 0.0)))
-        axes.add_patch(_outline(scene, lw=0.9))
-    _scale_bar(panels[0], scene)
+        axes.add_patch(outline(scene, lw=0.9))
+    scale_bar(panels[0], scene)
     panels[-1].add_patch(_square(scene.map_gauge_px, left, top, view, fill=False, ec="black", lw=1.0))
     frame, row = int(history.frame[moment.row]), moment.row
     reading = (
@@ -187,7 +187,7 @@ def _panel(axes: Axes, field: xr.Dataset, component: str, tall: bool, noise: flo
     margin = 0.0 if high > low else max(abs(high) * 1e-3, 1e-6)
     picture = axes.imshow(
         strain * scale,
-        extent=_extent(field),
+        extent=map_extent(field),
         cmap=zero_colours() if component == "shear" else "cividis",
         vmin=(low - margin) * scale,
         vmax=(high + margin) * scale,
@@ -236,7 +236,8 @@ def zero_colours() -> Colormap:
     return ListedColormap(np.clip(lab2rgb(np.concatenate(halves)), 0.0, 1.0), name="about_zero")
 
 
-def _extent(field: xr.Dataset) -> tuple[float, float, float, float]:
+def map_extent(field: xr.Dataset) -> tuple[float, float, float, float]:
+    """Return left, right, bottom and top of one frame's map, px."""
     return extent_of(field["x"].values, field["y"].values, float(field.attrs["step_px"]))
 
 
@@ -248,9 +249,9 @@ def extent_of(
     return float(x.min()) - half, float(x.max()) + half, float(y.max()) + half, float(y.min()) - half
 
 
-def _view(field: xr.Dataset, scene: Scene) -> tuple[float, float, float, float]:
+def view_of(field: xr.Dataset, scene: Scene) -> tuple[float, float, float, float]:
     """Return left, right, top and bottom of the part of the photograph that is shown, px."""
-    left, right, bottom, top = _extent(field)
+    left, right, bottom, top = map_extent(field)
     border = 0.12 * min(right - left, bottom - top)
     rows, columns = scene.photograph.shape
     return (
@@ -279,7 +280,8 @@ def photograph_on(axes: Axes, scene: Scene, view: tuple[float, float, float, flo
     axes.spines[:].set_visible(False)
 
 
-def _outline(scene: Scene, lw: float, label: str = "") -> Polygon:
+def outline(scene: Scene, lw: float, label: str = "") -> Polygon:
+    """Return the outline of the gauge region."""
     return Polygon(scene.region, closed=True, fill=False, ec=_HIGHLIGHT, lw=lw, label=label)
 
 
@@ -328,7 +330,7 @@ def _square(
     return Rectangle((left + inset, top + inset), size, size, **style)  # type: ignore[arg-type]
 
 
-def _scale_bar(axes: Axes, scene: Scene) -> None:
+def scale_bar(axes: Axes, scene: Scene) -> None:
     """Draw a bar of a round number of millimetres, where the scale is known."""
     if not (isfinite(scene.scale_mm) and scene.scale_mm > 0):
         return

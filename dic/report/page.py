@@ -25,6 +25,7 @@ from dic.report.gauges import draw_gauges, gauge_rows
 from dic.report.maps import draw_maps, draw_scene
 from dic.report.moments import choose_moments
 from dic.report.optics import camera_rows
+from dic.report.stress import draw_stress
 from dic.rounding import COVERAGE_FACTOR, uncertainty_alone, with_uncertainty
 from dic.store.folder import FIGURES
 from dic.store.results import encoded, write_whole
@@ -72,9 +73,11 @@ def write_report(measurement: Measurement, fields: xr.Dataset, folder: Path) -> 
     label = measurement.test.specimen.label
     with house_style():
         moments = choose_moments(measurement)
+        stress, no_stress = draw_stress(measurement, fields)
         groups = {
             "curves": draw_curves(measurement, moments),
             "maps": draw_maps(measurement, fields, moments),
+            "stress": stress,
             "scene": [draw_scene(measurement)],
             "alignment": draw_alignment(measurement),
             "clocks": draw_clocks(measurement),
@@ -86,7 +89,7 @@ def write_report(measurement: Measurement, fields: xr.Dataset, folder: Path) -> 
             for name, drawings in groups.items()
         }
     _remove_stale(folder, {picture.name for group in pictures.values() for picture in group})
-    return write_whole(folder, "report.html", encoded(_page(measurement, pictures)))
+    return write_whole(folder, "report.html", encoded(_page(measurement, pictures, no_stress)))
 
 
 def _published(drawing: Drawing, label: str, folder: Path) -> Picture:
@@ -106,7 +109,7 @@ def _remove_stale(folder: Path, names: set[str]) -> None:
             (folder / "figures" / f"{name}.{ending}").unlink(missing_ok=True)
 
 
-def _page(measurement: Measurement, pictures: dict[str, list[Picture]]) -> str:
+def _page(measurement: Measurement, pictures: dict[str, list[Picture]], no_stress: str) -> str:
     room = files("dic.report")
     environment = Environment(
         autoescape=True, undefined=StrictUndefined, trim_blocks=True, lstrip_blocks=True
@@ -129,6 +132,7 @@ def _page(measurement: Measurement, pictures: dict[str, list[Picture]]) -> str:
         ],
         notices=measurement.notices,
         pictures=pictures,
+        no_stress=no_stress,
         clock=measurement.clock,
         offset=with_uncertainty(
             measurement.clock.offset_s, COVERAGE_FACTOR * measurement.clock.offset_standard_uncertainty_s, "s"

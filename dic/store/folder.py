@@ -28,6 +28,7 @@ FIGURES = (
     "clock-offset",
     "gauge-on-coupon",
     *(f"map-{letter}" for letter in "abcdefghijklmnop"),
+    "elastic-stress",
     "alignment-stations",
     "alignment-contrast",
     "clip-on-curves",

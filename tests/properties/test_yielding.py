@@ -238,5 +238,7 @@ def test_elastic_stress_map(pull):
     assert some.beyond.sum() == np.isnan(some.stress_axial).sum() > 0
     with pytest.raises(InputError, match="beyond the elastic range"):
         elastic_stress(data * 3, 0, sheet)
-    with pytest.raises(InputError, match="there is no poissons_ratio"):
+    with pytest.raises(InputError, match="there is no Poisson's ratio"):
         elastic_stress(data, 0, {**sheet, "poissons_ratio": replace(sheet["poissons_ratio"], value=np.nan)})
+    with pytest.raises(InputError, match="no isotropic solid"):
+        elastic_stress(data, 0, {**sheet, "poissons_ratio": replace(sheet["poissons_ratio"], value=0.52)})

@@ -1,0 +1,95 @@
+"""The stress over the coupon's face while it is elastic."""
+
+from __future__ import annotations
+
+from math import isfinite
+from typing import TYPE_CHECKING
+
+import numpy as np
+from matplotlib.ticker import MaxNLocator
+
+from dic.errors import InputError
+from dic.measurement import Measurement
+from dic.properties import elastic_stress
+from dic.report.figures import WIDTH, Drawing, sheet
+from dic.report.maps import map_extent, outline, photograph_on, scale_bar, view_of
+from dic.rounding import three_digits
+
+if TYPE_CHECKING:
+    import xarray as xr
+
+
+def draw_stress(measurement: Measurement, fields: xr.Dataset) -> tuple[list[Drawing], str]:
+    """Draw the axial stress in the last frame of the modulus' window over the reference photograph.
+
+    Parameters
+    ----------
+    measurement
+        What the test gave.
+    fields
+        Fields on (frame, y, x), in the reference picture's coordinates.
+
+    Returns
+    -------
+    tuple
+        The figure, or none and the reason why.
+    """
+    if measurement.test.properties.preset == "fibre composites":
+        return [], "a fibre composite has preferred directions, and the map assumes an isotropic material"
+    if not isfinite(measurement.line.slope):
+        return [], "without an elastic part there is no modulus to turn strain into stress"
+    history, curve = measurement.history, measurement.curve
+    rows = np.flatnonzero(np.isin(history.frame, fields["frame"].values) & np.isfinite(curve.axial))
+    if not rows.size:
+        return [], "no frame of the elastic part was measured"
+    # Where the window ends the stress is largest beside the camera's noise.
+    row = int(rows[np.argmin(np.abs(curve.axial[rows] - measurement.line.far))])
+    place = int(np.flatnonzero(fields["frame"].values == history.frame[row])[0])
+    try:
+        found = elastic_stress(fields, place, measurement.properties)
+    except InputError as reason:
+        return [], reason.what
+    return [_drawing(measurement, fields.isel(frame=place), found, row)], ""
+
+
+def _drawing(measurement: Measurement, field: xr.Dataset, found: xr.Dataset, row: int) -> Drawing:
+    scene, curve, history = measurement.scene, measurement.curve, measurement.history
+    left, right, top, bottom = view = view_of(field, scene)
+    tall = bottom - top > right - left
+    ratio = (bottom - top) / (right - left)
+    height = float(np.clip(WIDTH / 2 * ratio if tall else WIDTH * ratio + 0.7, 2.4, 5.4))
+    figure, (axes,) = sheet(height=height)
+    photograph_on(axes, scene, view, fade=0.55)
+    stress = found["stress_axial"].values
+    low, high = np.nanpercentile(stress, [1, 99])
+    margin = 0.0 if high > low else max(abs(high) * 1e-3, 1e-6)
+    picture = axes.imshow(
+        stress,
+        extent=map_extent(field),
+        cmap="cividis",
+        vmin=low - margin,
+        vmax=high + margin,
+        interpolation="nearest",
+        alpha=0.9,
+    )
+    axes.set_title("axial stress, MPa", fontsize=8)
+    bar = figure.colorbar(picture, ax=axes, location="right" if tall else "bottom", extend="both", aspect=24)
+    bar.locator = MaxNLocator(nbins=5)
+    bar.ax.tick_params(labelsize=7)
+    bar.update_ticks()
+    axes.add_patch(outline(scene, lw=0.9))
+    scale_bar(axes, scene)
+    frame, beyond = int(history.frame[row]), int(found["beyond"].values.sum())
+    limit = float(found.attrs["elastic_limit_MPa"])
+    reading = (
+        f"Frame {frame} ({history.name[row]}) at {curve.time_s[row]:.2f} s, near the end of the modulus' "
+        "window. Hooke's law with the measured E and ν turns the strains of each point into plane stress. "
+        f"That holds in the elastic range only (here up to {limit:.4g} MPa) and assumes an isotropic "
+        f"material. Mean over the map {float(np.nanmean(stress)):.4g} MPa, scatter (standard deviation) "
+        f"{three_digits(float(np.nanstd(stress)))} MPa; force over section gives "
+        f"{curve.stress_MPa[row]:.4g} MPa. Fine mottling is the camera's noise. "
+        + (f"{beyond} points beyond the elastic range are left out. " if beyond else "")
+        + "Colours span the middle 98 % of the values."
+    )
+    alt = f"Map of axial stress over the photograph of the coupon, frame {frame}."
+    return Drawing("elastic-stress", "Elastic stress", reading, alt, figure, vector=False)
