@@ -164,11 +164,13 @@ def judged(
 ) -> Measurement:
     """Go from gauge histories to properties."""
     curve = replace(
-        make_curve(history, record, clock, test.specimen.area, setup.source.exposure_s),
+        make_curve(
+            history, record, clock, test.specimen.area, setup.source.exposure_s, setup.coupon.u_axis_deg
+        ),
         u_towards=bound(test.camera),
         straightened=setup.optics.lens is not None,
     )
-    found = evaluate(curve, test.specimen, test.load_record.force_uncertainty, clock, test.properties)
+    found = evaluate(curve, test.specimen, test.load_record.relative_uncertainty, clock, test.properties)
     first = test.frames.first_reference
     clip_on = compare(
         record,
@@ -200,7 +202,7 @@ def judged(
             *found.notices,
             *loading_doubts(straight),
             *reading_doubts(history, curve, extensometer_asked=test.gauge.length is not None),
-            *property_doubts(found.properties, test.specimen, test.load_record.force_uncertainty),
+            *property_doubts(found.properties, test.specimen, test.load_record.relative_uncertainty),
             *clip_on_doubts(clip_on),
         ),
         provenance=provenance.collect(test, record, str(fields.stored_attributes(folder)["frames_sha256"])),

@@ -6,7 +6,7 @@ import re
 import tomllib
 from collections.abc import Mapping
 from contextlib import suppress
-from math import pi
+from math import pi, sqrt
 from pathlib import Path
 from textwrap import shorten
 from types import NoneType
@@ -98,7 +98,15 @@ Segment = Annotated[
     Literal["all"] | Annotated[int, Field(ge=1)],
     BeforeValidator(lambda written: _filled_in(written, "all")),
 ]
+#: Classes of force measurement (ISO 7500-1 [from memory]).
+FORCE_CLASSES = (0.5, 1, 2, 3)
 Unit = Annotated[str, BeforeValidator(lambda written: _filled_in(written, "kN"))]
+
+
+def _is_force_class(written: float) -> float:
+    if written not in FORCE_CLASSES:
+        raise ValueError(f"ISO 7500-1 has no class {written:g}; its classes are 0.5, 1, 2 and 3")
+    return written
 
 
 class Section(BaseModel):
@@ -119,6 +127,7 @@ class Specimen(Section):
     width_uncertainty: Length | None = None
     thickness_uncertainty: Length | None = None
     diameter_uncertainty: Length | None = None
+    calliper_resolution: Length | None = None
 
     @model_validator(mode="after")
     def _dimensions_of_its_shape(self) -> Specimen:
@@ -150,13 +159,23 @@ class Specimen(Section):
         assert seen is not None  # noqa: S101  (validated above)
         return seen
 
+    def side_uncertainty(self, side: str) -> float | None:
+        """Return a dimension's standard uncertainty, mm; for want of another the calliper's.
+
+        A reading lies anywhere within half a digit (JCGM 100:2008, F.2.2.1).
+        """
+        given: float | None = getattr(self, f"{side}_uncertainty")
+        if given is None and self.calliper_resolution is not None:
+            return self.calliper_resolution / sqrt(12)
+        return given
+
     @property
     def area_uncertainty(self) -> float | None:
         """Relative standard uncertainty of S0, or None where no dimension's uncertainty is given."""
         parts = [
-            (self.width, self.width_uncertainty, 1),
-            (self.thickness, self.thickness_uncertainty, 1),
-            (self.diameter, self.diameter_uncertainty, 2),
+            (self.width, self.side_uncertainty("width"), 1),
+            (self.thickness, self.side_uncertainty("thickness"), 1),
+            (self.diameter, self.side_uncertainty("diameter"), 2),
         ]
         shares = [power * u / value for value, u, power in parts if value and u]
         return sum(share**2 for share in shares) ** 0.5 if shares else None
@@ -221,6 +240,24 @@ class LoadRecord(Section):
     units: dict[str, Unit] = Field(default_factory=dict)
     tare: bool | Annotated[Time, Field(gt=0)] = False
     force_uncertainty: Fraction | None = None
+    force_class: Annotated[float, AfterValidator(_is_force_class)] | None = None
+
+    @model_validator(mode="after")
+    def _one_calibration(self) -> LoadRecord:
+        if self.force_class is not None and self.force_uncertainty is not None:
+            raise ValueError("give force_class or force_uncertainty, not both")
+        return self
+
+    @property
+    def relative_uncertainty(self) -> float | None:
+        """Relative standard uncertainty of the force, None where nothing is given.
+
+        A machine of class c (ISO 7500-1) is false by at most c % [from memory]; within that any error is
+        as likely as any other.
+        """
+        if self.force_class is not None:
+            return self.force_class / 100 / sqrt(3)
+        return self.force_uncertainty
 
 
 Picture = Annotated[float, Field(ge=-1e6, le=1e6)]

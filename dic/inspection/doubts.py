@@ -87,7 +87,7 @@ def missing_uncertainties(specimen: Specimen, force_uncertainty: float | None) -
     """Warn of uncertainties that are not given and will not be in the budget."""
     blank = [] if force_uncertainty is not None else ["load_record.force_uncertainty"]
     for side in ("width", "thickness", "diameter"):
-        if getattr(specimen, side) is not None and getattr(specimen, f"{side}_uncertainty") is None:
+        if getattr(specimen, side) is not None and specimen.side_uncertainty(side) is None:
             blank.append(f"specimen.{side}_uncertainty")
     if blank:
         yield Notice(

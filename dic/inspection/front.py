@@ -126,7 +126,7 @@ def _specimen_doubts(
         picture=None if seen is None else max(seen.rows, seen.columns),
     )
     section = sections.get("load_record")
-    yield from missing_uncertainties(specimen, None if section is None else section.force_uncertainty)
+    yield from missing_uncertainties(specimen, None if section is None else section.relative_uncertainty)
 
 
 def _overlap(

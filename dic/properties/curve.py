@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from math import nan
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -25,6 +27,7 @@ def make_curve(
     clock: Clock,
     area_mm2: float,
     exposure_s: float | None = None,
+    u_axis_deg: float = nan,
 ) -> Curve:
     """Join the gauge readings with the force.
 
@@ -41,6 +44,8 @@ def make_curve(
         Original cross-section S0, mm².
     exposure_s
         Exposure time of a frame, s, where it is known.
+    u_axis_deg
+        Standard uncertainty of the axis' direction, deg; NaN where unknown.
 
     Returns
     -------
@@ -81,6 +86,9 @@ def make_curve(
         u_stress_MPa=noise / area_mm2,
         displacement_mm=_travel(record, clock, history.time_s),
         dense=Dense(record.time_s, record.sound_N, record.noise_N),
+        left_axial=history.left_axial,
+        left_transverse=history.left_transverse,
+        u_axis_deg=u_axis_deg,
     )
 
 

@@ -9,11 +9,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dic.properties.doubts import GOOD_SLOPE
-from dic.properties.fits import WORDS, fit
+from dic.properties.fits import WORDS, scatter
 from dic.properties.hooke import bulk_modulus, lame_constant, shear_modulus
 from dic.properties.loading import Loading, Undetermined
 from dic.properties.sheet import Entry, Reading, Sheet
-from dic.uncertainty import combine, few_readings, line_with_errors_in_both
+from dic.uncertainty import combine, line_with_errors_in_both
 
 Floats = NDArray[np.float64]
 #: A constant from E and ν.
@@ -51,9 +51,15 @@ def _youngs_modulus(sheet: Sheet) -> Reading:
     if relative > GOOD_SLOPE:
         quality.append(f"the slope scatters by more than the {100 * GOOD_SLOPE:g} % of ISO 6892-1")
     value = elastic.modulus
+    noise = scatter(sheet.loading, sheet.loading.strain, sheet.loading.u_strain, elastic.window)
+
+    def modulus(loading: Loading) -> float:
+        return 1 / sheet.line(loading).slope
+
     statistics = {
-        "scatter": value * relative * few_readings(line.n - 2),
-        **sheet.shifted(lambda loading: 1 / sheet.line(loading).slope),
+        "scatter": value * noise / line.slope,
+        **sheet.shifted(modulus),
+        **sheet.of_window(value),
     }
     return Reading(
         value,
@@ -72,23 +78,23 @@ def _poissons_ratio(sheet: Sheet) -> Reading:
         return -sheet.line(loading, "transverse").slope / sheet.line(loading).slope
 
     value = ratio(loading)
-    rest = fit(
+    rest = scatter(
         loading,
         loading.transverse + value * loading.strain,
         np.hypot(loading.u_transverse, value * loading.u_strain),
         elastic.window,
     )
-    scatter = rest.u_slope * elastic.modulus * few_readings(rest.n - 2)
+    noise = rest * elastic.modulus
     return Reading(
         value,
         f"slopes of transverse and axial strain against the same force (ASTM E132), {elastic.rule}",
-        {"scatter": scatter, **sheet.shifted(ratio)},
+        {"scatter": noise, **sheet.shifted(ratio)},
         sheet.window(),
-        (*_against_axial(sheet, value, scatter), *elastic.notes, *sheet.left_out_of_strain()),
+        (*_against_axial(sheet, value, noise), *elastic.notes, *sheet.left_out_of_strain()),
     )
 
 
-def _against_axial(sheet: Sheet, value: float, scatter: float) -> tuple[str, ...]:
+def _against_axial(sheet: Sheet, value: float, noise: float) -> tuple[str, ...]:
     """Cross-check ν by the slope of transverse against axial strain, which needs neither force nor clock."""
     if sheet.elastic.window.kind != "regression":
         return ()
@@ -96,10 +102,10 @@ def _against_axial(sheet: Sheet, value: float, scatter: float) -> tuple[str, ...
     there = np.isfinite(loading.transverse[here])
     parts = (loading.strain, loading.transverse, loading.u_strain, loading.u_transverse)
     x, y, u_x, u_y = (part[here][there] for part in parts)
-    noise = (u_x, u_y) if np.all(u_x + u_y > 0) else (0.0, 1.0)
-    line = line_with_errors_in_both(x, y, *noise)
+    known = (u_x, u_y) if np.all(u_x + u_y > 0) else (0.0, 1.0)
+    line = line_with_errors_in_both(x, y, *known)
     told = f"against the axial strain the slope gives {-line.slope:.4g}"
-    if abs(-line.slope - value) > 2 * np.hypot(scatter, line.u_slope):
+    if abs(-line.slope - value) > 2 * np.hypot(noise, line.u_slope):
         return (f"{told}, farther off than the scatter of both explains: look at the clocks and residuals",)
     return (f"{told} (cross-check)",)
 
@@ -142,7 +148,7 @@ def _isotropic(sheet: Sheet, law: Law, formula: str) -> Reading:
     step = 1e-6 * axial
     by_axial = (of_slopes(axial + step, across) - of_slopes(axial - step, across)) / (2 * step)
     by_across = (of_slopes(axial, across + step) - of_slopes(axial, across - step)) / (2 * step)
-    weighed = fit(
+    weighed = scatter(
         loading,
         by_axial * loading.strain + by_across * loading.transverse,
         np.hypot(by_axial * loading.u_strain, by_across * loading.u_transverse),
@@ -150,7 +156,7 @@ def _isotropic(sheet: Sheet, law: Law, formula: str) -> Reading:
     )
     value = of_slopes(axial, across)
     statistics = {
-        "scatter": weighed.u_slope * few_readings(weighed.n - 2),
+        "scatter": weighed,
         **sheet.shifted(value_of),
     }
     return Reading(

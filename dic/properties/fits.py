@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dic.properties.loading import MIN_FRAMES, Loading, Undetermined
-from dic.uncertainty import Line, line_with_errors_in_both, straight_line
+from dic.uncertainty import Line, few_readings, line_with_errors_in_both, straight_line
 
 Floats = NDArray[np.float64]
 Kind = Literal["regression", "chord", "tangent", "secant"]
@@ -22,6 +22,8 @@ WORDS = {
     "tangent": "tangent in the window's middle, by a parabola",
     "secant": "secant from zero to the window's end",
 }
+#: Frames from which a parabola leaves enough of them to tell the scatter.
+BEND_FRAMES = 8
 #: A chord's end is read from the frames within this share of the window to either side of it.
 END_SHARE = 0.1
 
@@ -80,6 +82,22 @@ def fit(loading: Loading, strain: Floats, u_strain: Floats, window: Window) -> L
         here = _measured(strain, window.frames)
         return _tangent(loading.stress[here], strain[here], sum(window.ends) / 2)
     return _chord(loading, strain, window)
+
+
+def scatter(loading: Loading, strain: Floats, u_strain: Floats, window: Window) -> float:
+    """Return the standard uncertainty of a line's slope from the scatter of its points.
+
+    An even bend of the curve is no scatter: it belongs to what the window's line is, and comes again in the
+    next test.  So where there are frames enough, the residuals of a parabola measure the scatter of a
+    regression.
+    """
+    line = fit(loading, strain, u_strain, window)
+    if window.kind != "regression" or line.n < BEND_FRAMES:
+        return line.u_slope * few_readings(line.n - 2)
+    here = _measured(strain, window.frames)
+    stress = loading.stress[here]
+    bend = _bend(stress, strain[here], float(stress.mean()))
+    return line.u_slope * bend.residual_s / line.residual_s * few_readings(line.n - 3)
 
 
 def _measured(strain: Floats, frames: slice) -> NDArray[np.intp]:

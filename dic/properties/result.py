@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, field
+from math import nan
 
 import numpy as np
 from numpy.typing import NDArray
@@ -108,6 +109,11 @@ class Curve:
         the end; 0 where it was taken off, None where nothing is known about it.
     straightened
         Whether the lens' distortion was taken off.
+    left_axial, left_transverse
+        What may be left of the interpolation's error in the strains, see `dic.strain.history`; None where
+        unknown.
+    u_axis_deg
+        Standard uncertainty of the axis' direction, deg; NaN where unknown.
     """
 
     time_s: Floats
@@ -130,6 +136,9 @@ class Curve:
     dense: Dense | None = None
     u_towards: float | None = None
     straightened: bool = False
+    left_axial: Floats | None = None
+    left_transverse: Floats | None = None
+    u_axis_deg: float = nan
 
 
 @dataclass(frozen=True)

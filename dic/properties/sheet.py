@@ -17,6 +17,7 @@ from dic.properties.loading import Loading, Undetermined, loading_of, require_se
 from dic.properties.modulus import Elastic, fit_elastic
 from dic.properties.moments import fracture_of
 from dic.properties.result import Curve, ModulusLine, Property
+from dic.properties.systematic import FalseStrain, change, changes, of_axis, window_choice
 from dic.properties.zero import Zero, seating_slack, take_off_toe, zero_of
 from dic.sync.record import Clock
 from dic.testfile import Properties, Specimen
@@ -26,8 +27,9 @@ Floats = NDArray[np.float64]
 
 _TOWARDS = "motion towards the camera (give camera.stand_off and camera.out_of_plane, or camera.still_patch)"
 _LENS = "lens distortion (give camera.board)"
-_REST = "what is left of the interpolation's bias, and the error of the axis"
-_CLOCK = "not included: the clocks, whose offset was given without an uncertainty (sync.offset)"
+_INTERPOLATION = "what is left of the interpolation's error, which too little motion shows here"
+_AXIS = "the error of the axis, which was given (gauge.axis)"
+_CLOCK = "the clocks, whose offset was given without an uncertainty (sync.offset)"
 
 
 @dataclass(frozen=True)
@@ -195,16 +197,20 @@ class Sheet:
         """Say what the uncertainty of a reading against strain lacks."""
         known = (self.curve.u_towards is not None, self.curve.straightened)
         lacking = [text for text, there in zip((_TOWARDS, _LENS), known, strict=True) if not there]
-        false = f"false strain from {' and from '.join(lacking)}, " if lacking else ""
-        optics = f"not included: {false}{_REST}"
-        return (optics,) if self.clock.offset_standard_uncertainty_s > 0 else (_CLOCK, optics)
+        told = [f"false strain from {one}" for one in lacking]
+        told += [] if self._left else [_INTERPOLATION]
+        told += [] if np.isfinite(self.curve.u_axis_deg) else [_AXIS]
+        told += [] if self.clock.offset_standard_uncertainty_s > 0 else [_CLOCK]
+        return tuple(f"not included: {one}" for one in told)
 
     def shifted(self, read: Callable[[Loading], float]) -> dict[str, float]:
         """Return the contributions of what shifts strain and stress together in all frames."""
         towards = self.with_motion(read)
-        return {"clock": self.with_clock(read)} | (
-            {} if towards is None else {"motion towards the camera": towards}
-        )
+        return {
+            "clock": self.with_clock(read),
+            **({} if towards is None else {"motion towards the camera": towards}),
+            **self._of_camera(read),
+        }
 
     def with_motion(self, read: Callable[[Loading], float]) -> float | None:
         """Return how far false strain from motion towards the camera moves a reading; None where unknown.
@@ -235,6 +241,31 @@ class Sheet:
             [0, 1],
         )
         return self.loading.stretched(u * grown), self.loading.stretched(-u * grown)
+
+    def _of_camera(self, read: Callable[[Loading], float]) -> dict[str, float]:
+        """Return the contributions of the camera's errors that all frames share."""
+        found = {}
+        if np.isfinite(self.curve.u_axis_deg):
+            found["axis angle"] = change(read, self.loading, of_axis(self.loading, self.curve.u_axis_deg))
+        if self._left:
+            found["interpolation"] = changes(read, self.loading, self._left)
+        return found
+
+    def of_window(self, value: float) -> dict[str, float]:
+        """Return the contribution of a window that was chosen rather than asked for."""
+        if self.section.modulus != "auto":
+            return {}
+        return {"window choice": abs(value) * window_choice(self.loading, self.elastic.window)}
+
+    @cached_property
+    def _left(self) -> list[FalseStrain]:
+        """What may be left of the interpolation's periodic error, its waves one by one."""
+        axial, transverse = self.curve.left_axial, self.curve.left_transverse
+        if axial is None or transverse is None:
+            return []
+        rows = self.loading.rows
+        waves = zip(axial[rows].T, transverse[rows].T, strict=True)
+        return [FalseStrain(*wave) for wave in waves if np.isfinite(wave).all()]
 
     def with_clock(self, read: Callable[[Loading], float]) -> float:
         """Return how far the clock's standard uncertainty moves a reading.

@@ -40,6 +40,9 @@ class GaugeHistory:
         Share of the region's subsets that were measured.
     periodic
         The interpolation's periodic error, and whether the strains were corrected for it.
+    left_axial, left_transverse
+        What may be left of that error's parts in the strains, one standard uncertainty, the same error in
+        all frames, shape (n, h); None where unknown.
     status
         ``"ok"``, or the reason why the frame was not (or only partly) measured.
     """
@@ -60,6 +63,8 @@ class GaugeHistory:
     status: tuple[str, ...]
     bending: Floats
     periodic: Periodic
+    left_axial: Floats | None = None
+    left_transverse: Floats | None = None
 
     def __len__(self) -> int:
         return len(self.frame)
@@ -97,6 +102,8 @@ def gather(
         size, spread = periodic.correction(response)
         columns[key] = columns[key] - size
         columns[f"u_{key}"] = np.hypot(columns[f"u_{key}"], spread)
+        if key in ("axial", "transverse"):
+            columns[f"left_{key}"] = periodic.left(response)
     return GaugeHistory(
         frame=np.arange(len(readings)),
         name=names,

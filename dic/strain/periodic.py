@@ -74,6 +74,25 @@ class Periodic:
         spread = np.where(use, self.u_amplitudes_px, 0.0) * response
         return size.sum(axis=-1), np.sqrt((spread**2).sum(axis=-1))
 
+    def left(self, response: Floats) -> Floats:
+        """Return what may be left of each part of the error in a reading, one standard uncertainty.
+
+        Where a part was not taken off, its amplitude is part of what is left.
+
+        Parameters
+        ----------
+        response
+            The reading's error per px of each amplitude, shape (..., h).
+
+        Returns
+        -------
+        ndarray
+            Shape (..., h), with the sign of the response: readings have the same error together.  NaN where
+            the test does not show the amplitude.
+        """
+        alone = np.where(self.applied, 0.0, self.amplitudes_px)
+        return np.hypot(alone, self.u_amplitudes_px) * response
+
 
 class SmoothField:
     """Least-squares fits of cubic polynomials over fixed points; what they leave is looked at.

@@ -39,7 +39,7 @@ def pictureless(seed: int) -> list[dict[str, Any]]:
     record = LoadRecord(Path("machine.csv"), time, force, displacement_mm=travel)
     clock = fit_clock(history.time_s, history.axial, history.u_axial, record, test.sync)
     curve = make_curve(history, record, clock, test.specimen.area)
-    found = evaluate(curve, test.specimen, test.load_record.force_uncertainty, clock, test.properties)
+    found = evaluate(curve, test.specimen, test.load_record.relative_uncertainty, clock, test.properties)
     return _rows(virtual, seed, found.properties, clock, len(history))
 
 
@@ -55,8 +55,8 @@ def with_pictures(seed: int) -> list[dict[str, Any]]:
         results.mkdir()
         history, _ = read_gauges(test, setup, results, None)
         clock = _clock(test, setup, history, record)
-        curve = make_curve(history, record, clock, test.specimen.area)
-        found = evaluate(curve, test.specimen, test.load_record.force_uncertainty, clock, test.properties)
+        curve = make_curve(history, record, clock, test.specimen.area, setup.coupon.u_axis_deg)
+        found = evaluate(curve, test.specimen, test.load_record.relative_uncertainty, clock, test.properties)
     return _rows(virtual, seed, found.properties, clock, len(history))
 
 
