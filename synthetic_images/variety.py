@@ -64,7 +64,7 @@ def varied(seed: int, kind: str | None = None) -> Scenario:
             "offset": offset,
             "bits": 12,
             "noise": float(draw.uniform(0.0015, 0.006)),
-            "samples": 1,
+            "samples": 2,
         },
         "machine": {
             "free_length": 60,

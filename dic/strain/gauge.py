@@ -298,8 +298,10 @@ def pooled(x: Floats, y: Floats, information: Floats) -> Floats:
     """Return the weights with which subsets' motions join to the affine motion of the whole gauge.
 
     Least squares over displacements and gradients of all subsets, each with the weight that its
-    texture gives it: with subsets side by side that is the fit of one affine motion to all the
-    gauge's pixels, and no other use of them scatters less.
+    texture gives it: with subsets side by side that is the fit of one motion to all the gauge's
+    pixels, and no other use of them scatters less.  The motion has quadratic terms, which are left
+    out of the result: a bent coupon's would else leak into the slopes wherever the weights are
+    lopsided.
 
     Parameters
     ----------
@@ -313,15 +315,26 @@ def pooled(x: Floats, y: Floats, information: Floats) -> Floats:
     ndarray
         Shape (6, m, 6): for u and then v the value at the centre, slope along x and along y.
     """
-    model = np.tile(np.eye(6), (len(x), 1, 1))
-    for first in (0, 3):
-        model[:, first, first + 1], model[:, first, first + 2] = x, y
+    one, none = np.ones_like(x), np.zeros_like(x)
+    half = np.array(
+        [
+            [one, x, y, x**2, x * y, y**2],
+            [none, one, none, 2 * x, y, none],
+            [none, none, one, none, x, 2 * y],
+        ]
+    ).transpose(2, 0, 1)
+    # u takes the first six columns, v the others.
+    model = np.concatenate(
+        [np.concatenate([half, 0 * half], axis=2), np.concatenate([0 * half, half], axis=2)], axis=1
+    )
     weighted = np.einsum("mki,mkl->mil", model, information)
     normal = np.einsum("mil,mlj->ij", weighted, model)
     # Centred and scaled by their diagonal, the equations are well conditioned.
-    scale = 1 / np.sqrt(np.diag(normal))
-    inverse = np.linalg.inv(normal * np.outer(scale, scale)) * np.outer(scale, scale)
-    return np.einsum("ij,mjl->iml", inverse, weighted)
+    scale = np.diag(normal).copy()
+    scale = 1 / np.sqrt(np.where(scale > 0, scale, 1.0))
+    # Subsets in a single line leave a curvature open, which then counts as none.
+    inverse = np.linalg.pinv(normal * np.outer(scale, scale), hermitian=True) * np.outer(scale, scale)
+    return np.einsum("ij,mjl->iml", inverse[[0, 1, 2, 6, 7, 8]], weighted)
 
 
 def _end(along: Floats, across: Floats, depth: int) -> Floats | None:

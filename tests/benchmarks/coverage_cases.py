@@ -55,7 +55,7 @@ def with_pictures(seed: int) -> list[dict[str, Any]]:
         results.mkdir()
         history, _ = read_gauges(test, setup, results, None)
         clock = _clock(test, setup, history, record)
-        curve = make_curve(history, record, clock, test.specimen.area, setup.coupon.u_axis_deg)
+        curve = make_curve(history, record, clock, test.specimen.area, u_axis_deg=setup.coupon.u_axis_deg)
         found = evaluate(curve, test.specimen, test.load_record.relative_uncertainty, clock, test.properties)
     return _rows(virtual, seed, found.properties, clock, len(history))
 
