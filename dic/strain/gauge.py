@@ -28,6 +28,8 @@ Floats = NDArray[np.float64]
 LEAST_SUBSETS = 6
 #: Rounds in which the weights are evened; more change a gauge's scatter by less than 0.1 %.
 EVENING_STEPS = 40
+#: Bounds of these weights, whose usual value is one.
+WEIGHTS = (0.01, 100.0)
 
 
 @dataclass(frozen=True)
@@ -289,7 +291,8 @@ def even_weights(grid: Grid, valid: NDArray[np.bool_]) -> Floats:
     for _ in range(EVENING_STEPS):
         coverage = summed(weights)
         wanting = np.divide(1.0, coverage, out=np.zeros_like(coverage), where=coverage > 1e-12)
-        weights = weights * summed(wanting) / share
+        # A subset that lies alone would grow without end, and one among many vanish.
+        weights = np.where(weights > 0, np.clip(weights * summed(wanting) / share, *WEIGHTS), 0.0)
     inner = weights[across // 2 : across // 2 + grid.shape[0], across // 2 : across // 2 + grid.shape[1]]
     return np.asarray(inner[grid.inside][valid])
 
@@ -333,7 +336,7 @@ def pooled(x: Floats, y: Floats, information: Floats) -> Floats:
     scale = np.diag(normal).copy()
     scale = 1 / np.sqrt(np.where(scale > 0, scale, 1.0))
     # Subsets in a single line leave a curvature open, which then counts as none.
-    inverse = np.linalg.pinv(normal * np.outer(scale, scale), hermitian=True) * np.outer(scale, scale)
+    inverse = np.linalg.pinv(normal * np.outer(scale, scale), rcond=1e-12) * np.outer(scale, scale)
     return np.einsum("ij,mjl->iml", inverse[[0, 1, 2, 6, 7, 8]], weighted)
 
 
