@@ -74,7 +74,7 @@ def _to_break(sheet: Sheet) -> Reading:
     end = strain_at(whole, broken.time_s, "the fracture")
     before = whole.time_s < broken.time_s
     contributions = end.contributions(broken.u_time_s, sheet.clock.offset_standard_uncertainty_s)
-    return _energy(
+    found = _energy(
         sheet,
         np.append(whole.strain[before], end.strain),
         np.append(whole.stress[before], whole.stress[before][-1]),
@@ -82,6 +82,7 @@ def _to_break(sheet: Sheet) -> Reading:
         "area under the curve up to the fracture",
         {},
     )
+    return replace(found, notes=(*end.notes, *found.notes))
 
 
 def _energy(

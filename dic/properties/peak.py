@@ -85,7 +85,8 @@ def peak_force(record: LoadRecord) -> Peak:
     force = sign * record.sound_N
     top = int(np.argmax(sign * smooth))
     (value, u, between, when, u_time), last = highest_around(time, force, noise, top, sign * smooth[top])
-    return Peak(sign * value, u, between, when, last == len(force) - 1, u_time)
+    # One lower sample at the end may be a number that was cut off.
+    return Peak(sign * value, u, between, when, last >= len(force) - 2, u_time)
 
 
 def highest_around(

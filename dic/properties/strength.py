@@ -95,7 +95,7 @@ def _at_maximum(sheet: Sheet) -> Reading:
         "strain at the largest force of the record (ISO 6892-1)",
         found.contributions(curve.u_peak_time_s, sheet.clock.offset_standard_uncertainty_s),
         {"time_s": (curve.peak_time_s, curve.peak_time_s)},
-        (*_unbroken(sheet), *sheet.left_out_of_strain()),
+        (*_unbroken(sheet), *found.notes, *sheet.left_out_of_strain()),
     )
 
 
@@ -123,6 +123,7 @@ def _at_break(sheet: Sheet) -> Reading:
         {"time_s": (broken.time_s, broken.time_s)},
         (
             "beyond the largest force strain gathers in a neck, and its mean depends on the gauge's length",
+            *found.notes,
             *sheet.left_out_of_strain(),
         ),
     )
