@@ -1,0 +1,52 @@
+"""One test's description (TOML) as a validated model; the only place that knows its keys."""
+
+from dic.testfile.gauges import GaugeName, NamedGauge, Place
+from dic.testfile.properties import PRESETS, ModulusWindow, Properties
+from dic.testfile.reading import MAX_BYTES, load, read_toml, sound_sections
+from dic.testfile.sections import (
+    VIDEO_ENDINGS,
+    Alignment,
+    Correlation,
+    Frames,
+    Gauge,
+    LoadRecord,
+    Maps,
+    Specimen,
+    Sync,
+)
+from dic.testfile.values import Column, Section, in_px, quantity
+from dic.testfile.views import TELECENTRIC, Board, Camera, CouponSection, Distortion, Marks
+from dic.testfile.whole import TestFile
+
+__all__ = [
+    "MAX_BYTES",
+    "PRESETS",
+    "TELECENTRIC",
+    "VIDEO_ENDINGS",
+    "Alignment",
+    "Board",
+    "Camera",
+    "Column",
+    "Correlation",
+    "CouponSection",
+    "Distortion",
+    "Frames",
+    "Gauge",
+    "GaugeName",
+    "LoadRecord",
+    "Maps",
+    "Marks",
+    "ModulusWindow",
+    "NamedGauge",
+    "Place",
+    "Properties",
+    "Section",
+    "Specimen",
+    "Sync",
+    "TestFile",
+    "in_px",
+    "load",
+    "quantity",
+    "read_toml",
+    "sound_sections",
+]
