@@ -112,7 +112,9 @@ def _rate_to_proof(sheet: Sheet) -> Reading:
     elastic, loading = sheet.elastic, sheet.loading
     found = crossing(loading, elastic.line, elastic.end, YIELD_OFFSET)
     end = int(np.argmax(loading.strain >= found.strain)) + 1
-    return _rate(sheet, slice(elastic.end, end), "from there to the 0.2 % proof stress")
+    return _rate(
+        sheet, slice(elastic.end, end), "from the end of the modulus' window to the 0.2 % proof stress"
+    )
 
 
 def _rate(sheet: Sheet, frames: slice, where: str) -> Reading:
@@ -134,5 +136,12 @@ def _range_of(rate: float) -> str:
     """Say in which of the standard's ranges a strain rate lies."""
     for number, middle in enumerate(RANGES, start=1):
         if abs(rate - middle) <= TOLERANCE * middle:
-            return f"within range {number} of ISO 6892-1, method A ({middle:g} 1/s ± 20 %)"
-    return "in none of the ranges of ISO 6892-1, method A (" + ", ".join(f"{r:g}" for r in RANGES) + " 1/s)"
+            return f"within range {number} of ISO 6892-1, method A ({_plainly(middle)} 1/s ± 20 %)"
+    return (
+        "in none of the ranges of ISO 6892-1, method A (" + ", ".join(_plainly(r) for r in RANGES) + " 1/s)"
+    )
+
+
+def _plainly(rate: float) -> str:
+    """Write a rate without a power of ten."""
+    return f"{rate:.5f}".rstrip("0")

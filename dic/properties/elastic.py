@@ -34,8 +34,8 @@ def elastic_entries(sheet: Sheet) -> list[Entry]:
         Entry("youngs_modulus", "E", "MPa", lambda: _youngs_modulus(sheet)),
         Entry("poissons_ratio", "ν", "", ratio),
         Entry("shear_modulus", "G", "MPa", lambda: _shear_modulus(sheet, ratio().value)),
-        Entry("bulk_modulus", "K", "MPa", volumetric(bulk_modulus, "E / 3(1 - 2ν)")),
-        Entry("lame_constant", "λ", "MPa", volumetric(lame_constant, "Eν / (1 + ν)(1 - 2ν)")),
+        Entry("bulk_modulus", "K", "MPa", volumetric(bulk_modulus, "E / (3(1 - 2ν))")),
+        Entry("lame_constant", "λ", "MPa", volumetric(lame_constant, "Eν / ((1 + ν)(1 - 2ν))")),
     ]
 
 
@@ -113,7 +113,7 @@ def _against_axial(sheet: Sheet, value: float, noise: float) -> tuple[str, ...]:
 def _shear_modulus(sheet: Sheet, ratio: float) -> Reading:
     if ratio <= -1:
         raise Undetermined(f"no isotropic solid has a Poisson's ratio of {ratio:.3g}")
-    return _isotropic(sheet, shear_modulus, "E / 2(1 + ν)")
+    return _isotropic(sheet, shear_modulus, "E / (2(1 + ν))")
 
 
 def _volumetric(sheet: Sheet, ratio: Reading, law: Law, formula: str) -> Reading:

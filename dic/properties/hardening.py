@@ -68,8 +68,8 @@ def _range(sheet: Sheet) -> slice:
     frames = passage(strain, low, high)
     if high - low < NARROWEST:
         raise Undetermined(
-            f"the largest force comes at a strain of {top:.3g}; from {low:g} on that is "
-            "too narrow for hardening"
+            f"the largest force comes at a strain of {100 * top:.3g} %; read from {100 * low:g} % on, "
+            "that is too narrow for hardening"
         )
     if frames.stop - frames.start < MIN_FRAMES:
         raise Undetermined(

@@ -92,7 +92,9 @@ def find_yielding(sheet: Sheet) -> Yielding:
     top = _first_fall(dense, strain)
     plastic = strain[top] - elastic.line.at(dense.force_N[top] / area)
     if plastic > EARLY:
-        raise Undetermined("the force does not fall before the coupon hardens; proof stresses stand for it")
+        raise Undetermined(
+            "the force does not fall before the coupon hardens or breaks: there is no yield point"
+        )
     peak, _ = highest_around(
         dense.time_s, dense.force_N, dense.noise_N, top, float(dense.force_N[top]), falls=True
     )
@@ -126,7 +128,7 @@ def _first_fall(dense: Dense, strain: Floats) -> int:
         if not following.size or following.max() <= force[top] + noise:
             return top
         fallen = fallen[fallen > top + int(until[0])]
-    raise Undetermined("the force does not fall before the coupon hardens; proof stresses stand for it")
+    raise Undetermined("the force does not fall before the coupon hardens or breaks: there is no yield point")
 
 
 def _lowest(dense: Dense, strain: Floats, top: int) -> tuple[int, Floats, int]:

@@ -9,6 +9,8 @@ from typing import TYPE_CHECKING
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.colors import Colormap, ListedColormap
+from matplotlib.figure import Figure
+from matplotlib.image import AxesImage
 from matplotlib.patches import Polygon, Rectangle
 from matplotlib.ticker import MaxNLocator
 from numpy.typing import NDArray
@@ -122,12 +124,7 @@ def _map(measurement: Measurement, field: xr.Dataset, moment: Moment, rest: dict
     scene, curve, history = measurement.scene, measurement.curve, measurement.history
     left, right, top, bottom = view = view_of(field, scene)
     tall = bottom - top > right - left
-    shape = (1, 3) if tall else (3, 1)
-    ratio = (bottom - top) / (right - left)
-    height = (
-        np.clip(WIDTH / 3 * ratio + 0.9, 2.4, 6.0) if tall else np.clip(3 * (WIDTH * ratio + 0.45), 3.0, 7.5)
-    )
-    figure, panels = sheet(*shape, height=float(height))
+    figure, panels = maps_sheet(view)
     spreads = []
     for axes, component in zip(panels, ("axial", "transverse", "shear"), strict=True):
         photograph_on(axes, scene, view, fade=0.55)
@@ -152,6 +149,31 @@ def _map(measurement: Measurement, field: xr.Dataset, moment: Moment, rest: dict
     alt = f"Maps of axial, transverse and shear strain over the photograph of the coupon, frame {frame}."
     title = f"{moment.letter}: {moment.title}"
     return Drawing(f"map-{moment.letter.lower()}", title, reading, alt, figure, vector=False)
+
+
+def maps_sheet(view: tuple[float, float, float, float]) -> tuple[Figure, list[Axes]]:
+    """Return a figure with three panels for one part of the photograph, side by side if it is tall."""
+    left, right, top, bottom = view
+    ratio = (bottom - top) / (right - left)
+    if ratio > 1:
+        return sheet(1, 3, height=float(np.clip(WIDTH / 3 * ratio + 0.9, 2.4, 6.0)))
+    return sheet(3, 1, height=float(np.clip(3 * (WIDTH * ratio + 0.45), 3.0, 7.5)))
+
+
+def colour_bar(axes: Axes, picture: AxesImage, tall: bool) -> None:
+    """Put the colours' scale below a tall panel or beside a wide one."""
+    bar = axes.figure.colorbar(
+        picture,
+        ax=axes,
+        location="bottom" if tall else "right",
+        extend="both",
+        fraction=0.05,
+        pad=0.02,
+        aspect=14,
+    )
+    bar.locator = MaxNLocator(nbins=2 if tall else 4)
+    bar.ax.tick_params(labelsize=7)
+    bar.update_ticks()
 
 
 def _certainty(field: xr.Dataset) -> str:
@@ -195,18 +217,7 @@ def _panel(axes: Axes, field: xr.Dataset, component: str, tall: bool, noise: flo
         alpha=0.9,
     )
     axes.set_title(f"{component}, {unit}", fontsize=8)
-    bar = axes.figure.colorbar(
-        picture,
-        ax=axes,
-        location="bottom" if tall else "right",
-        extend="both",
-        fraction=0.05,
-        pad=0.02,
-        aspect=14,
-    )
-    bar.locator = MaxNLocator(nbins=2 if tall else 4)
-    bar.ax.tick_params(labelsize=7)
-    bar.update_ticks()
+    colour_bar(axes, picture, tall)
     spread = float(np.nanstd(strain))
     scale, unit = strain_unit(spread)
     return f"{component} {uncertainty_alone(spread * scale, unit)}"

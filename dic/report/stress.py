@@ -6,21 +6,23 @@ from math import isfinite
 from typing import TYPE_CHECKING
 
 import numpy as np
-from matplotlib.ticker import MaxNLocator
 
 from dic.errors import InputError
 from dic.measurement import Measurement
 from dic.properties import elastic_stress
-from dic.report.figures import WIDTH, Drawing, sheet
-from dic.report.maps import map_extent, outline, photograph_on, scale_bar, view_of
+from dic.report.figures import Drawing
+from dic.report.maps import colour_bar, map_extent, maps_sheet, outline, photograph_on, scale_bar, view_of
 from dic.rounding import three_digits
 
 if TYPE_CHECKING:
     import xarray as xr
 
+#: What is drawn, and its heading.
+PANELS = {"axial": "axial", "transverse": "transverse", "equivalent": "von Mises"}
+
 
 def draw_stress(measurement: Measurement, fields: xr.Dataset) -> tuple[list[Drawing], str]:
-    """Draw the axial stress in the last frame of the modulus' window over the reference photograph.
+    """Draw the stresses in the last frame of the modulus' window over the reference photograph.
 
     Parameters
     ----------
@@ -56,40 +58,38 @@ def _drawing(measurement: Measurement, field: xr.Dataset, found: xr.Dataset, row
     scene, curve, history = measurement.scene, measurement.curve, measurement.history
     left, right, top, bottom = view = view_of(field, scene)
     tall = bottom - top > right - left
-    ratio = (bottom - top) / (right - left)
-    height = float(np.clip(WIDTH / 2 * ratio if tall else WIDTH * ratio + 0.7, 2.4, 5.4))
-    figure, (axes,) = sheet(height=height)
-    photograph_on(axes, scene, view, fade=0.55)
+    figure, panels = maps_sheet(view)
+    for axes, (name, title) in zip(panels, PANELS.items(), strict=True):
+        photograph_on(axes, scene, view, fade=0.55)
+        values = found[f"stress_{name}"].values
+        low, high = np.nanpercentile(values, [1, 99])
+        margin = 0.0 if high > low else max(abs(high) * 1e-3, 1e-6)
+        picture = axes.imshow(
+            values,
+            extent=map_extent(field),
+            cmap="cividis",
+            vmin=low - margin,
+            vmax=high + margin,
+            interpolation="nearest",
+            alpha=0.9,
+        )
+        axes.set_title(f"{title}, MPa", fontsize=8)
+        colour_bar(axes, picture, tall)
+        axes.add_patch(outline(scene, lw=0.9))
+    scale_bar(panels[0], scene)
     stress = found["stress_axial"].values
-    low, high = np.nanpercentile(stress, [1, 99])
-    margin = 0.0 if high > low else max(abs(high) * 1e-3, 1e-6)
-    picture = axes.imshow(
-        stress,
-        extent=map_extent(field),
-        cmap="cividis",
-        vmin=low - margin,
-        vmax=high + margin,
-        interpolation="nearest",
-        alpha=0.9,
-    )
-    axes.set_title("axial stress, MPa", fontsize=8)
-    bar = figure.colorbar(picture, ax=axes, location="right" if tall else "bottom", extend="both", aspect=24)
-    bar.locator = MaxNLocator(nbins=5)
-    bar.ax.tick_params(labelsize=7)
-    bar.update_ticks()
-    axes.add_patch(outline(scene, lw=0.9))
-    scale_bar(axes, scene)
     frame, beyond = int(history.frame[row]), int(found["beyond"].values.sum())
     limit = float(found.attrs["elastic_limit_MPa"])
     reading = (
         f"Frame {frame} ({history.name[row]}) at {curve.time_s[row]:.2f} s, near the end of the modulus' "
         "window. Hooke's law with the measured E and ν turns the strains of each point into plane stress. "
         f"That holds in the elastic range only (here up to {limit:.4g} MPa) and assumes an isotropic "
-        f"material. Mean over the map {float(np.nanmean(stress)):.4g} MPa, scatter (standard deviation) "
-        f"{three_digits(float(np.nanstd(stress)))} MPa; force over section gives "
-        f"{curve.stress_MPa[row]:.4g} MPa. Fine mottling is the camera's noise. "
+        f"material. Mean axial stress over the map {float(np.nanmean(stress)):.4g} MPa, "
+        f"scatter (standard deviation) {three_digits(float(np.nanstd(stress)))} MPa; "
+        f"force over section gives {curve.stress_MPa[row]:.4g} MPa. The transverse stress of a free coupon is "
+        "zero but for noise and the grips; von Mises' equivalent stress is what is held against the limit. "
         + (f"{beyond} points beyond the elastic range are left out. " if beyond else "")
         + "Colours span the middle 98 % of the values."
     )
-    alt = f"Map of axial stress over the photograph of the coupon, frame {frame}."
+    alt = f"Maps of axial, transverse and equivalent stress over the photograph of the coupon, frame {frame}."
     return Drawing("elastic-stress", "Elastic stress", reading, alt, figure, vector=False)

@@ -28,7 +28,7 @@ def test_the_maps_mean_is_force_over_section(measurement, pressed, fields, turne
         [drawing], reason = draw_stress(one, fields.assign({name: sign * fields[name] for name in strains}))
     assert not reason
     mean, nominal = re.search(
-        r"Mean over the map (\S+) MPa.*section gives (\S+) MPa", drawing.reading
+        r"Mean axial stress over the map (\S+) MPa.*section gives (\S+) MPa", drawing.reading
     ).groups()
     # 500 points of 60 µm/m at 70 GPa: 4.7 MPa (with ν) over √500 each, and the missing corner of a bent map,
     # 6 of 539 points at 4 % of 110 MPa.
