@@ -59,6 +59,9 @@ def show_measurement(measurement: Measurement) -> None:
     for item in found_in(measurement.properties):
         table.add_row(called(item), item.symbol, stated(item)[0])
     console.print(table)
+    for item in found_in(measurement.properties):
+        if item.qualifier:
+            console.print(f"{item.qualifier}: {called(item)}: {_plain(item.notes[0])}")
     for reason, items in absent_in(measurement.properties):
         console.print(f"not determined: {short_list(items)}: {_plain(reason)}")
     for notice in measurement.notices:

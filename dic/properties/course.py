@@ -73,7 +73,7 @@ def _to_break(sheet: Sheet) -> Reading:
     whole, broken = sheet.whole, fracture_of(sheet.curve)
     end = strain_at(whole, broken.time_s, "the fracture")
     before = whole.time_s < broken.time_s
-    contributions = end.contributions(broken.u_time_s, sheet.clock.offset_standard_uncertainty_s)
+    contributions = end.contributions(broken.u_time_s, sheet.u_clock_at(broken.time_s))
     found = _energy(
         sheet,
         np.append(whole.strain[before], end.strain),

@@ -47,8 +47,8 @@ class Loading:
     u_strain: Floats
     u_transverse: Floats
 
-    def later(self, seconds: float) -> Loading:
-        """Return the same strains with the stress read that much later."""
+    def later(self, seconds: float | Floats) -> Loading:
+        """Return the same strains with the stress read that much later, by one time or by each frame's."""
         rate = np.gradient(self.stress, self.time_s)
         return replace(self, stress=self.stress + seconds * rate)
 

@@ -38,6 +38,8 @@ class Property:
     contributions
         Standard uncertainty contributions in `unit` by source; their root sum of squares is
         `standard_uncertainty`.
+    qualifier
+        Word that has to stand before the value wherever it is shown, such as ``at least``.
     """
 
     name: str
@@ -49,6 +51,7 @@ class Property:
     window: dict[str, tuple[float, float]] = field(default_factory=dict)
     notes: tuple[str, ...] = ()
     contributions: dict[str, float] = field(default_factory=dict)
+    qualifier: str = ""
 
 
 @dataclass(frozen=True)

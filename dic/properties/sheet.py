@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import dataclass
 from functools import cached_property
-from math import nan
+from math import hypot, nan
 
 import numpy as np
 from numpy.typing import NDArray
@@ -18,7 +18,7 @@ from dic.properties.modulus import Elastic, fit_elastic
 from dic.properties.moments import fracture_of
 from dic.properties.result import Curve, ModulusLine, Property
 from dic.properties.systematic import FalseStrain, change, changes, of_axis, window_choice
-from dic.properties.zero import Zero, seating_slack, take_off_toe, zero_of
+from dic.properties.zero import Zero, frames_at_rest, seating_slack, take_off_toe, zero_of
 from dic.sync.record import Clock
 from dic.testfile import Properties, Specimen
 from dic.uncertainty import Line, combine
@@ -41,6 +41,7 @@ class Reading:
     contributions: dict[str, float]
     window: dict[str, tuple[float, float]]
     notes: tuple[str, ...] = ()
+    qualifier: str = ""
 
 
 @dataclass(frozen=True)
@@ -70,6 +71,7 @@ class Entry:
             window=reading.window,
             notes=reading.notes,
             contributions=reading.contributions,
+            qualifier=reading.qualifier,
         )
 
 
@@ -273,25 +275,27 @@ class Sheet:
         A reading that is not to be had with the clock moved says nothing; the other side then stands
         for both.
         """
-        if not self._later:
-            return 0.0
-        moved = []
-        for later in self._later:
-            try:
-                moved.append(read(later))
-            except Undetermined:
-                moved.append(nan)
-        here = read(self.loading)
-        sides = [abs(value - here) for value in moved if np.isfinite(value)]
-        if len(sides) == 2:
-            return abs(moved[0] - moved[1]) / 2
-        return sides[0] if sides else nan
+        return float(np.hypot.reduce([_moved(read, self.loading, sides) for sides in self._later]))
 
     @cached_property
-    def _later(self) -> tuple[Loading, ...]:
-        """The loading with the clock moved either way, none where it is exact."""
-        u = self.clock.offset_standard_uncertainty_s
-        return tuple(self.loading.later(seconds) for seconds in (u, -u)) if u else ()
+    def _later(self) -> tuple[tuple[Loading, Loading], ...]:
+        """The loading with offset and drift of the clock moved either way, those that are exact left out."""
+        clock, loading = self.clock, self.loading
+        offset = np.full(len(loading.time_s), clock.offset_standard_uncertainty_s)
+        drift = clock.drift_standard_uncertainty * (loading.time_s - self._start_s)
+        return tuple((loading.later(by), loading.later(-by)) for by in (offset, drift) if by.any())
+
+    @property
+    def _start_s(self) -> float:
+        """When loading starts: the instant at which the clock's offset has its uncertainty."""
+        loading = self.loading
+        return float(loading.time_s[min(frames_at_rest(loading), len(loading.time_s) - 1)])
+
+    def u_clock_at(self, time_s: float) -> float:
+        """Return the standard uncertainty of the frames' place in the record at an instant, s."""
+        clock = self.clock
+        drift = clock.drift_standard_uncertainty
+        return hypot(clock.offset_standard_uncertainty_s, drift * (time_s - self._start_s) if drift else 0.0)
 
     def window(self) -> dict[str, tuple[float, float]]:
         """Return the elastic window in strain, stress and time."""
@@ -305,6 +309,19 @@ class Sheet:
             "stress_MPa": bounds(loading.sign * loading.stress[frames]),
             "time_s": bounds(loading.time_s[frames]),
         }
+
+
+def _moved(read: Callable[[Loading], float], here: Loading, sides: tuple[Loading, Loading]) -> float:
+    """Return half the difference of a reading on both sides, or what one side alone shows."""
+    values = []
+    for side in sides:
+        try:
+            values.append(read(side))
+        except Undetermined:
+            values.append(nan)
+    if np.isfinite(values).all():
+        return abs(values[0] - values[1]) / 2
+    return float(np.nanmax(np.abs(np.array(values) - read(here)))) if np.isfinite(values).any() else nan
 
 
 def bounds(values: Floats) -> tuple[float, float]:

@@ -83,6 +83,7 @@ def _strength(sheet: Sheet) -> Reading:
         statistics | sheet.of_stress(value),
         {"time_s": (curve.peak_time_s, curve.peak_time_s)},
         (*notes, *sheet.left_out()),
+        qualifier=_at_least(sheet),
     )
 
 
@@ -93,9 +94,10 @@ def _at_maximum(sheet: Sheet) -> Reading:
     return Reading(
         sign * found.strain,
         "strain at the largest force of the record (ISO 6892-1)",
-        found.contributions(curve.u_peak_time_s, sheet.clock.offset_standard_uncertainty_s),
+        found.contributions(curve.u_peak_time_s, sheet.u_clock_at(curve.peak_time_s)),
         {"time_s": (curve.peak_time_s, curve.peak_time_s)},
         (*_unbroken(sheet), *found.notes, *sheet.left_out_of_strain()),
+        qualifier=_at_least(sheet),
     )
 
 
@@ -109,6 +111,7 @@ def _plastic_at_maximum(sheet: Sheet) -> Reading:
         total.contributions | {"modulus": share * slope},
         total.window,
         total.notes,
+        total.qualifier,
     )
 
 
@@ -119,7 +122,7 @@ def _at_break(sheet: Sheet) -> Reading:
     return Reading(
         sign * found.strain,
         "mean strain of the gauge when the force falls away (ISO 6892-1)",
-        found.contributions(broken.u_time_s, sheet.clock.offset_standard_uncertainty_s),
+        found.contributions(broken.u_time_s, sheet.u_clock_at(broken.time_s)),
         {"time_s": (broken.time_s, broken.time_s)},
         (
             "beyond the largest force strain gathers in a neck, and its mean depends on the gauge's length",
@@ -132,6 +135,10 @@ def _at_break(sheet: Sheet) -> Reading:
 def _unbroken(sheet: Sheet) -> tuple[str, ...]:
     told = "the record ends before the force drops: the coupon may bear more"
     return (told,) if sheet.curve.peak_at_end else ()
+
+
+def _at_least(sheet: Sheet) -> str:
+    return "at least" if sheet.curve.peak_at_end else ""
 
 
 def _spikes(times_s: tuple[float, ...]) -> str:

@@ -165,6 +165,7 @@ def _property(item: Property) -> dict[str, Any]:
         notes = ("The value could not be determined; no reason was recorded.",)
     return {
         "value": item.value,
+        "qualifier": item.qualifier,
         "unit": item.unit,
         "standard_uncertainty": item.standard_uncertainty,
         "method": item.method,

@@ -159,12 +159,13 @@ def stated(item: Property) -> tuple[str, str]:
     Returns
     -------
     tuple of str
-        The value with its expanded uncertainty (k = 2), and the standard uncertainty alone.
+        The value with its qualifier and its expanded uncertainty (k = 2), and the standard uncertainty
+        alone.
     """
     scale, unit = shown_in(item)
     standard = item.standard_uncertainty * scale
     expanded = with_uncertainty(item.value * scale, COVERAGE_FACTOR * standard, unit)
-    return expanded, uncertainty_alone(standard, unit)
+    return f"{item.qualifier} {expanded}".lstrip(), uncertainty_alone(standard, unit)
 
 
 def properties_text(measurement: Measurement) -> str:

@@ -398,7 +398,22 @@ def test_an_unbroken_coupon_is_marked(pull):
     cut = LoadRecord(drawn.record.path, drawn.record.time_s[early], drawn.record.force_N[early])
     found = sheet(replace(drawn, record=cut)).properties["tensile_strength"]
     assert any("may bear more" in note for note in found.notes)
+    assert found.qualifier == "at least"
+    assert not sheet(drawn).properties["tensile_strength"].qualifier
     assert not any("may bear more" in note for note in sheet(drawn).properties["tensile_strength"].notes)
+
+
+def test_an_uncertain_drift_counts_from_the_start_of_loading(pull):
+    """At 4e-4 1/s from 2 s on, 0.025 strain comes 62.5 s later: 1e-3 of that is 0.0625 s, or 2.5e-5."""
+    drawn = pull()
+    drifting = replace(drawn, clock=replace(drawn.clock, drift_standard_uncertainty=1e-3))
+    found, exact = sheet(drifting).properties, sheet(drawn).properties
+    # The start is seen to a frame's 0.2 s, the rate to a per cent.
+    assert found["strain_at_maximum"].contributions["clock"] == pytest.approx(2.5e-5, rel=0.02)
+    # A rate that is off by 0.1 % stretches the slope of the elastic part by as much.
+    e = found["youngs_modulus"]
+    assert e.contributions["clock"] == pytest.approx(1e-3 * e.value, rel=0.1)
+    assert exact["youngs_modulus"].contributions["clock"] == 0
 
 
 def test_a_scattering_slope_is_marked(pull):

@@ -65,6 +65,11 @@ def test_modulus_is_read_in_gpa_with_its_uncertainty():
     assert shown_in(item)[1] == "GPa"
 
 
+def test_a_qualifier_stands_before_the_value():
+    item = Property("tensile_strength", "Rm", 37.77, "MPa", 0.19, "largest force", qualifier="at least")
+    assert stated(item)[0] == "at least 37.77 ± 0.38 MPa"
+
+
 def test_soft_modulus_stays_in_mpa():
     assert stated(Property("youngs_modulus", "E", 1.234, "MPa", 0.006, "line"))[0] == "1.234 ± 0.012 MPa"
 
