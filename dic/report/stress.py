@@ -86,8 +86,9 @@ def _drawing(measurement: Measurement, field: xr.Dataset, found: xr.Dataset, row
         f"That holds in the elastic range only (here up to {limit:.4g} MPa) and assumes an isotropic "
         f"material. Mean axial stress over the map {float(np.nanmean(stress)):.4g} MPa, "
         f"scatter (standard deviation) {three_digits(float(np.nanstd(stress)))} MPa; "
-        f"force over section gives {curve.stress_MPa[row]:.4g} MPa. The transverse stress of a free coupon is "
-        "zero but for noise and the grips; von Mises' equivalent stress is what is held against the limit. "
+        f"force over section gives {curve.stress_MPa[row]:.4g} MPa. "
+        "The transverse stress of a free coupon is zero but for noise and the grips; von Mises' "
+        "equivalent stress is what is held against the limit. "
         + (f"{beyond} points beyond the elastic range are left out. " if beyond else "")
         + "Colours span the middle 98 % of the values."
     )
