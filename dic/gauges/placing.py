@@ -22,38 +22,22 @@ Floats = NDArray[np.float64]
 #: Columns of history.csv, which no gauge may be named after.
 RESERVED = frozenset(
     [
-        "frame",
-        "time_s",
-        "force_N",
-        "stress_MPa",
-        "strain_axial",
-        "strain_transverse",
-        "strain_shear",
-        "u_strain_axial",
-        "u_strain_transverse",
-        "valid_fraction",
-        "status",
-        "machine_time_s",
-        "strain_extensometer",
-        "strain_bending",
-        "u_strain_shear",
-        "u_strain_extensometer",
-        "shift_axial_px",
-        "shift_transverse_px",
-        "name",
-        "strain_clip_on",
-        "hencky_axial",
-        "hencky_transverse",
-        "stretch_axial",
-        "stretch_transverse",
+        "frame", "time_s", "force_N", "stress_MPa", "strain_axial", "strain_transverse", "strain_shear",
+        "u_strain_axial", "u_strain_transverse", "valid_fraction", "status", "machine_time_s",
+        "strain_extensometer", "strain_bending", "u_strain_shear", "u_strain_extensometer",
+        "shift_axial_px", "shift_transverse_px", "name", "strain_clip_on", "hencky_axial",
+        "hencky_transverse", "stretch_axial", "stretch_transverse",
     ]
-)
+)  # fmt: skip
 #: Where along the gauge region a transverse extensometer sits, if the test file does not say it.
 STATIONS = (0.25, 0.5, 0.75)
 #: A line has at most so many stations; more lie closer than their windows can tell apart.
 MOST_ON_LINE = 200
 #: Window of a line's local strain, in subsets.
 LINE_WINDOW = 3
+#: An area of which less carries subsets is said to be partly off the coupon; their centres stay half a
+#: subset inside its rim, so that a small area on the coupon may have three quarters.
+LEAST_SHARE = 0.7
 
 
 @dataclass(frozen=True)
@@ -200,7 +184,9 @@ class _Placer:
         outlines = [np.stack([first, last])]
         for end in (first, last):
             band = self.subsets.in_rectangle(end, direction, depth, width)
-            if not len(band):
+            # A wide band may reach the coupon from far beside it, where the reading would be guesswork.
+            away = np.linalg.norm(self.subsets.places[band] - end, axis=1)
+            if not len(band) or away.min() > depth:
                 raise self.off_coupon(end)
             bands.append(band)
             outlines.append(_rectangle(end, direction * depth / 2, across * width / 2))
@@ -212,7 +198,9 @@ class _Placer:
             corners = np.array([[x, y], [x + wide, y], [x + wide, y + high], [x, y + high]], float)
         else:
             corners = self.region.corners() if gauge.points is None else np.array(gauge.points, float)
-        self.inside_picture(corners)
+        if gauge.region is not None or gauge.points is not None:
+            # The gauge region of a coupon that is askew has corners beyond the picture.
+            self.inside_picture(corners)
         usable = self.subsets.reference.usable
         members = np.flatnonzero(points_in_poly(self.subsets.places, corners) & usable)
         if not len(members):
@@ -226,7 +214,10 @@ class _Placer:
         if min(lengths) < 2 * self.subsets.size or len(members) < 6:
             raise self.too_short(min(lengths))
         probe = Stretching(self.subsets, members, self.region.axial, self.region.transverse, component)
-        return Placed(name, gauge.kind, (probe,), (), (corners,), lengths[0])
+        share = len(members) * self.subsets.grid.step**2 / _polygon_area(corners)
+        named = gauge.region is not None or gauge.points is not None
+        note = f"about {100 * share:.0f} % of it carries subsets" if named and share < LEAST_SHARE else ""
+        return Placed(name, gauge.kind, (probe,), (), (corners,), lengths[0], note=note)
 
     def across(self, name: str, gauge: NamedGauge) -> Placed:
         region = self.region
@@ -380,6 +371,12 @@ class _Placer:
             where=self.where,
             remedy=f"subsets lie from x {left:.0f} to {right:.0f} and y {top:.0f} to {bottom:.0f} px",
         )
+
+
+def _polygon_area(corners: Floats) -> float:
+    """Return the area inside a polygon, px² (Gauss' formula)."""
+    x, y = corners.T
+    return float(abs(x @ np.roll(y, -1) - y @ np.roll(x, -1)) / 2)
 
 
 def _rectangle(centre: Floats, along: Floats, across: Floats) -> Floats:

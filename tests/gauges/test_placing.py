@@ -1,10 +1,13 @@
 """Gauges that do not fit on the coupon are named, with the picture's coordinates and what would fit."""
 
+import numpy as np
 import pytest
 from pydantic import ValidationError
 
 from dic.errors import TestFileError
 from dic.gauges import place_gauges
+from dic.gauges.probes import Subsets
+from dic.strain import Region
 from dic.testfile import NamedGauge
 
 
@@ -35,6 +38,33 @@ def test_what_does_not_fit_is_said(subsets, region, keys, said):
     with pytest.raises(TestFileError, match=said) as caught:
         place(subsets, region, **keys)
     assert "\n" not in str(caught.value)
+
+
+@pytest.fixture(scope="module")
+def strip(subsets):
+    """Subsets from x 125 on only."""
+    return Subsets(subsets.reference, subsets.grid, subsets.places + np.array([111.0, 0.0]))
+
+
+def test_a_gauge_beside_the_coupon_is_refused_though_its_wide_bands_reach_it(strip, region):
+    with pytest.raises(TestFileError, match=r"no subset lies at x 60, y 145 px"):
+        place(strip, region, kind="extensometer", centre=[60, 95], length=100)
+
+
+def test_an_area_that_is_partly_off_the_coupon_says_how_much(strip, region):
+    """Of 60 to 250 px, 120 carry subsets."""
+    (one,) = place(strip, region, kind="area", region=[60, 30, 190, 120])
+    share = int(one.note.split()[1])
+    # Half a step on either side of 190 px.
+    assert abs(share - 100 * 120 / 190) < 6
+
+
+def test_an_area_is_the_gauge_region_even_where_that_leaves_the_picture(subsets, region):
+    """A coupon that stands askew has corners of its region beyond the picture."""
+    askew = Region(region.centre, 280.0, 120.0, np.array([0.0, -1.0]), np.array([1.0, 0.0]))
+    (one,) = place(subsets, askew, kind="area")
+    assert len(one.probes[0].members) > 100
+    assert not one.note
 
 
 def test_a_length_in_mm_needs_the_scale(subsets, region):
