@@ -199,6 +199,8 @@ def _record(read: RecordSurvey, source: str) -> Iterator[str]:
     if len(read.columns) > _MOST_COLUMNS:
         yield f"#   and {len(read.columns) - _MOST_COLUMNS} more"
     yield f"source = {_quoted(source)}"
+    if read.sheet is not None:
+        yield f"# sheet = {_quoted(printable(read.sheet))}"
     if len(read.segments) > 1:
         yield "# Time starts anew within the record. These are its segments; say which one is the test:"
         for number, segment in enumerate(read.segments[:_MOST_COLUMNS], start=1):
@@ -218,7 +220,21 @@ def _column_in_words(column: ColumnSurvey) -> str:
     header = printable(column.header)[:_LONGEST_HEADER]
     unit = f", in {printable(column.unit)[:20]}" if column.unit else ", no unit"
     gone = f", {column.missing} rows without a number" if column.missing else ""
+    if column.low != column.low:
+        return f"{column.number}: {header}{unit}, no numbers"
+    if column.clock == "times of day":
+        times = f"{_time_of_day(column.low)} to {_time_of_day(column.high)}"
+        return f"{column.number}: {header}, times of day, {times}{gone}"
+    if column.clock:
+        return (
+            f"{column.number}: {header}, dates with times of day, over {column.high - column.low:.5g} s{gone}"
+        )
     return f"{column.number}: {header}{unit}, {column.low:.5g} to {column.high:.5g}{gone}"
+
+
+def _time_of_day(seconds: float) -> str:
+    minutes, rest = divmod(seconds, 60)
+    return f"{minutes // 60:02.0f}:{minutes % 60:02.0f}:{rest:06.3f}"
 
 
 def _columns(read: RecordSurvey) -> Iterator[str]:

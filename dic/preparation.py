@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 from dic.correlation import Grid, Reference, Settings, Tracker, lay_grid, prepare_reference
 from dic.errors import FrameError, Notice, PatternError, TestFileError
-from dic.frames import FrameSource, RepeatWatch
+from dic.frames import FrameSource
 from dic.frames.doubts import same_picture
 from dic.frames.readers import list_pages, read_page
 from dic.gauges import Placed, Silhouette, facing, place_gauges
@@ -252,7 +252,7 @@ def _mean(source: FrameSource, first: int, last: int) -> NDArray[np.float64]:
 
 def _frames_at_rest(source: FrameSource, reference: Reference, grid: Grid, reader: GaugeReader) -> int:
     """Count the frames at the beginning in which the coupon neither moves nor stretches."""
-    tracker, watch = Tracker(reference, grid.neighbours()), RepeatWatch()
+    tracker, watch = Tracker(reference, grid.neighbours()), source.watch()
     watch.frozen(source[0])
     for index in range(1, min(MOST_AVERAGED, len(source))):
         try:

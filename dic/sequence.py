@@ -19,7 +19,7 @@ from dic import provenance
 from dic.correlation import Grid, Match, track
 from dic.correlation.flags import Flag
 from dic.errors import FrameError, TrackingError
-from dic.frames import FrameSource, RepeatWatch, check_damage
+from dic.frames import FrameSource, check_damage
 from dic.frames.readers import Grey
 from dic.gauges.silhouette import Silhouette, Widths, clear, mean_motion
 from dic.optics import Apparent, Lens
@@ -192,7 +192,7 @@ def _read_ahead(source: FrameSource, damage: dict[int, str]) -> Iterator[Grey | 
     In place of a frame that cannot be read or that repeats the one before stands a flag; what was wrong
     with the former goes into `damage`.
     """
-    watch = RepeatWatch()
+    watch = source.watch()
 
     def read(index: int) -> Grey | Flag:
         try:

@@ -124,11 +124,17 @@ class RepeatWatch:
 
     Two exposures never give the same picture, because each pixel has its own noise.  Only a source
     whose first two pictures are the same may be without noise (a drawn test), and is left alone.
+
+    Parameters
+    ----------
+    alike_at_rest
+        Whether compression may have taken the noise out, so that frames at rest are the same by right;
+        the source then is left alone.
     """
 
-    def __init__(self) -> None:
+    def __init__(self, *, alike_at_rest: bool = False) -> None:
         self._last: NDArray[Any] | None = None
-        self._noisy: bool | None = None
+        self._noisy: bool | None = False if alike_at_rest else None
         #: Frames whose picture is that of the frame before, frozen camera or not.
         self.repeats = 0
 

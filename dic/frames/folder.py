@@ -120,9 +120,3 @@ def _kinds(paths: list[Path]) -> Iterator[Notice]:
             f"The frames are of several formats ({', '.join(sorted(endings))}) and are in order of "
             "their names; check that all belong to this test.",
         )
-    if any(READERS[ending].lossy for ending in endings):
-        yield Notice(
-            "frames_compressed",
-            "The frames were compressed with loss, which changes their finest structure and harms strains "
-            "below a tenth of a pixel; film the next test to TIFF or PNG.",
-        )

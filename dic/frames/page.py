@@ -41,6 +41,8 @@ class Page:
         The file's own time of the picture, s; None where it has none.
     film
         The opened video, for its pages.
+    lossy
+        Whether compression may have changed the values.
     damage, remedy
         Why the picture cannot be used, and what to do; empty where nothing is known against it.
     """
@@ -53,6 +55,7 @@ class Page:
     alpha: bool = False
     time_s: float | None = None
     film: Any = field(default=None, compare=False, repr=False)
+    lossy: bool = False
     damage: str = ""
     remedy: str = "export the frame anew"
 

@@ -6,7 +6,7 @@ A new format is one more `Reader` in `READERS`.
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
 
@@ -75,7 +75,8 @@ def list_pages(path: Path) -> list[Page]:
         raise
     except Exception as error:  # the decoders raise whatever their authors chose
         raise unreadable(path, error) from error
-    return pages
+    # A video knows by itself what its compression keeps.
+    return pages if reader_of(path).video else [replace(page, lossy=reader_of(path).lossy) for page in pages]
 
 
 def read_stored(page: Page) -> NDArray[np.integer]:

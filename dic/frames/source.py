@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 from dic.errors import FrameError, Notice, TestFileError
 from dic.frames.clock import exposure_of, frame_clock
 from dic.frames.depth import Depth, depth_in_use
+from dic.frames.doubts import RepeatWatch
 from dic.frames.folder import find_frames
 from dic.frames.readers import Grey, Page, list_pages, read_page, read_stored, reader_of
 from dic.testfile import Frames
@@ -80,6 +81,15 @@ class FrameSource:
     def depth(self) -> Depth:
         """Depth in use, from a few frames."""
         return depth_in_use(self.pages[0], self._samples())
+
+    @property
+    def lossy(self) -> bool:
+        """Whether compression may have changed grey values."""
+        return any(page.lossy for page in self.pages)
+
+    def watch(self) -> RepeatWatch:
+        """Return a watch for a camera that froze."""
+        return RepeatWatch(alike_at_rest=self.lossy)
 
     def full_scale(self) -> float:
         """Return the grey value of a saturated pixel."""
@@ -163,6 +173,7 @@ def open_frames(section: Frames, folder: Path) -> FrameSource:
         raise FrameError(
             f"holds {len(listed)} frame{'s' * (len(listed) != 1)}, and a test needs at least {LEAST_FRAMES}",
             where=section.source,
+            remedy="check frames.source",
         )
     clock = frame_clock(section, folder, listed)
     pages = _fitting([listed[k] for k in clock.order], section.mosaic)
@@ -230,9 +241,15 @@ def _fitting(pages: list[Page], mosaic: str | None) -> tuple[Page, ...]:
 
 
 def _kind_doubts(pages: tuple[Page, ...]) -> Iterator[Notice]:
-    """Say what was made of colours, and whether some of them are clipped where grey is not."""
+    """Say what compression lost, what was made of colours, and whether some are clipped where grey is not."""
     if any(page.alpha for page in pages):
         yield Notice("alpha_ignored", "The frames have a transparency channel, which was ignored.")
+    if any(page.lossy for page in pages):
+        yield Notice(
+            "frames_compressed",
+            "The frames were compressed with loss, which changes their finest structure and harms strains "
+            "below a tenth of a pixel; film the next test to TIFF or PNG.",
+        )
     if pages[0].kind != "colour":
         return
     yield Notice(

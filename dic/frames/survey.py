@@ -122,7 +122,7 @@ class FramesSurvey:
     @property
     def depth_bits(self) -> int:
         """Bits in use."""
-        return int(self.full_scale).bit_length()
+        return self.source.depth.bits
 
 
 def look_at_frames(

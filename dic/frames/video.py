@@ -18,6 +18,8 @@ from dic.frames.page import MOST_PAGES, Page, checked, not_grey, too_many, wrong
 CONTAINERS = {".avi": "avi", ".mp4": "mov", ".mov": "mov", ".mkv": "matroska"}
 #: Decoders hold a dozen frames, so that less is read here than of stills.
 MOST_VIDEO_PIXELS = 36_000_000
+#: Codecs that keep every value, by FFmpeg's names; of others that is not known.
+LOSSLESS = frozenset({"ffv1", "ffvhuff", "huffyuv", "magicyuv", "png", "rawvideo", "tiff", "utvideo", "v210"})
 #: Packed formats and the planar ones that hold the same values.
 _UNPACKED = {"yuyv422": "yuv422p", "uyvy422": "yuv422p", "yvyu422": "yuv422p"}
 
@@ -51,6 +53,7 @@ class Film:
             stamps = [packet.pts for packet in _packets(container, stream)]
             if len(stamps) > MOST_PAGES:
                 raise too_many(self._path)
+            lossy = stream.codec_context.codec.canonical_name not in LOSSLESS
             step, rate = stream.time_base, stream.average_rate or stream.base_rate
         if not stamps:
             raise ValueError("it holds no frame")
@@ -60,12 +63,14 @@ class Film:
         else:
             times = [float(k / rate) if rate else None for k in range(len(stamps))]
         self._restart()
-        first = next(self._frames)
+        first = next(self._frames, None)
+        if first is None:
+            raise ValueError("none of its frames can be decoded")
         top, kind = _values(first, self._path)
         shape = first.height, first.width
         self._restart()
         return [
-            checked(Page(self._path, k, shape, top, kind, time_s=time, film=self))
+            checked(Page(self._path, k, shape, top, kind, time_s=time, film=self, lossy=lossy))
             for k, time in enumerate(times)
         ]
 

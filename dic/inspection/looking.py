@@ -35,7 +35,7 @@ def look_at_frames(source: FrameSource, section: Frames, progress: Progress | No
             unreadable[name] = error.what
         else:
             means.append(float(grey.mean()))
-            if before is not None and same_picture(grey, before):
+            if before is not None and not source.lossy and same_picture(grey, before):
                 doubles.append(name)
             if index in wanted:
                 exposures.append(_exposure(name, grey, full_scale))

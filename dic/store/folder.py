@@ -56,6 +56,8 @@ def claim_folder(folder: Path, inputs: Iterable[Path]) -> None:
         If a result would take the place of an input or of somebody else's file, or if the folder
         cannot be made or cleared.
     """
+    if folder.exists() and not folder.is_dir():
+        raise StoreError("is a file, where the result folder should be", where=str(folder), remedy=_ELSEWHERE)
     if (folder / "figures").is_symlink():
         raise StoreError(
             "holds a link in place of its folder 'figures'",

@@ -191,7 +191,8 @@ def does_not_follow() -> ClockError:
     """Return the error for frames whose signal no offset explains."""
     return cannot_tell(
         "the strain of the first frames does not follow the force",
-        f"check frames.rate, and whether frames or rows are missing, or {_REMEDY}",
+        f"check the frames' times (frames.rate, unless they bring their own), and whether frames or rows are "
+        f"missing, or {_REMEDY}",
     )
 
 

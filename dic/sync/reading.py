@@ -105,12 +105,14 @@ def read_load_record(section: Section, path: Path) -> LoadRecord:
     return tared(record, section.tare)
 
 
-def open_record(path: Path, decimal: str | None = None, sheet: str | None = None) -> Table:
+def open_record(
+    path: Path, decimal: str | None = None, sheet: str | None = None, *, key: str = "load_record.source"
+) -> Table:
     """Read the table that a record is, without a last row that may be cut off."""
     table = read_table(
         path,
         LoadRecordError,
-        key="load_record.source",
+        key=key,
         most_bytes=MAX_BYTES,
         decimal=decimal,
         sheet=sheet,

@@ -37,6 +37,8 @@ class ColumnSurvey:
         Least and largest number, in the column's unit (s for clock times); NaN where there is none.
     missing
         Rows without a number.
+    clock
+        ``"times of day"`` or ``"dates"`` (counted from the first one) where it holds those, else empty.
     """
 
     number: int
@@ -46,6 +48,7 @@ class ColumnSurvey:
     low: float
     high: float
     missing: int
+    clock: str
 
 
 @dataclass(frozen=True)
@@ -65,7 +68,7 @@ class RecordSurvey:
     Attributes
     ----------
     path, sheet
-        The file, and the sheet that was asked for.
+        The file, and the workbook's sheet that was read.
     encoding, separator, decimal
         How it is written; the separator in words, the decimal mark of most columns.
     heading
@@ -105,6 +108,8 @@ class RecordSurvey:
         """Return how the file is written, as part of a sentence."""
         mark = "decimal comma" if self.decimal == "," else "decimal point"
         above = f", {self.heading} lines above the headers" if self.heading else ""
+        if self.sheet is not None:
+            return f"sheet '{self.sheet}' of a workbook{above}"
         return f"{self.encoding}, columns separated by {self.separator}, {mark}{above}"
 
     def candidates(self, quantity: str) -> tuple[ColumnSurvey, ...]:
@@ -129,7 +134,7 @@ def look_at_record(path: Path, sheet: str | None = None, decimal: str | None = N
     LoadRecordError
         If the file cannot be read or is no table.
     """
-    table = open_record(Path(path), decimal, sheet)
+    table = open_record(Path(path), decimal, sheet, key="the path")
     headers = headers_of(table)
     called = recognised("time", headers) or [h for h in headers if table.is_instant(h.position)]
     columns = tuple(_column(table, header, header in called) for header in headers)
@@ -154,7 +159,7 @@ def look_at_record(path: Path, sheet: str | None = None, decimal: str | None = N
     marks = [table.decimal_of(h.position).mark for h in numbers if not _mixed(table, h)]
     return RecordSurvey(
         path=table.path,
-        sheet=sheet,
+        sheet=table.sheet,
         encoding=table.encoding,
         separator=NAMES[table.separator],
         decimal=max(marks, key=marks.count) if marks else ".",
@@ -170,10 +175,12 @@ def look_at_record(path: Path, sheet: str | None = None, decimal: str | None = N
 def _column(table: Table, header: Header, is_time: bool) -> ColumnSurvey:
     position = header.position
     clock = table.is_instant(position)
+    read = None
     if _mixed(table, header):
         values = np.full(len(table.cells), np.nan)
     else:
-        values = read_instants(table, header, None).time_s if clock else table.values(position)
+        read = read_instants(table, header, None) if clock else None
+        values = read.time_s if read is not None else table.values(position)
     there = values[np.isfinite(values)]
     guess = header.guess()
     return ColumnSurvey(
@@ -184,6 +191,7 @@ def _column(table: Table, header: Header, is_time: bool) -> ColumnSurvey:
         low=float(there.min()) if there.size else float("nan"),
         high=float(there.max()) if there.size else float("nan"),
         missing=len(values) - there.size,
+        clock="" if read is None else "times of day" if read.epoch is None else "dates",
     )
 
 

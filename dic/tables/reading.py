@@ -54,7 +54,7 @@ def read_table(
     decimal
         The decimal mark, ``"."`` or ``","``; found from the columns by default.
     sheet
-        The workbook's sheet; the first that holds anything by default.
+        The workbook's sheet; the first that holds a table of numbers by default.
 
     Raises
     ------
@@ -86,21 +86,23 @@ def _read(
             "is an Excel workbook of the old kind (.xls)", where=str(path), remedy="save it as .xlsx or CSV"
         )
     if workbook.is_workbook(head):
-        rows, taken, sheets = workbook.workbook_rows(path, sheet, fault)
+        rows, taken, others = workbook.workbook_rows(path, sheet, fault)
         notices = []
-        if sheet is None and len(sheets) > 1:
-            others = shorten(
-                ", ".join(f"'{name}'" for name in sheets if name != taken), 200, placeholder=" …"
+        if others:
+            named = shorten(", ".join(f"'{name}'" for name in others), 200, placeholder=" …")
+            said = (
+                f"{path.name}: sheet '{taken}' was read; {named} could be meant too: say load_record.sheet."
             )
-            notices = [
-                Notice("record_sheet", f"{path.name}: sheet '{taken}' was read; there are also {others}.")
-            ]
+            notices = [Notice("record_sheet", said)]
         # Numbers of a workbook are written with a point; only text in it can have a comma.
         comma = any("," in cell for _, cells in layout.sample(rows) for cell in cells)
         decimal = decimal or (None if comma else ".")
-        return _laid_out(path, rows, "", fault, notices=notices, decimal=decimal, encoding="workbook")
+        table = _laid_out(path, rows, "", fault, notices=notices, decimal=decimal, encoding="workbook")
+        return replace(table, sheet=taken)
     if sheet is not None:
         raise fault("is no workbook, so it has no sheets", where=str(path), remedy="remove load_record.sheet")
+    if not data.strip(b"\xef\xbb\xbf\xff\xfe \t\r\n\x00"):
+        raise fault("is empty", where=str(path), remedy="export it again")
     found = text.lines_of(data, str(path), fault)
     lines = text.joined_quotes(found.lines, str(path), fault)
     separator = layout.find_separator(lines)

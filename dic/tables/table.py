@@ -63,6 +63,8 @@ class Table:
         What was left out or assumed.
     decimal
         The decimal mark, where it is given.
+    sheet
+        The workbook's sheet; None in a text file.
     unended
         Whether the last row is the file's last line and has no line end, so that it may be cut off.
     """
@@ -78,6 +80,7 @@ class Table:
     breaks: tuple[Break, ...] = ()
     notices: tuple[Notice, ...] = ()
     decimal: str | None = None
+    sheet: str | None = None
     unended: bool = False
 
     def texts(self, position: int) -> list[str]:
@@ -105,6 +108,12 @@ class Table:
 
     def no_number(self, position: int, row: int) -> InputError:
         """Return the error for a cell that is no number, its row counted from 0."""
+        if not np.isfinite(self.values(position)).any() and not self.is_instant(position):
+            return self.fault(
+                "the column holds no numbers",
+                where=f"{self.path}, column {self.name(position)}",
+                remedy="name another column, or export it again",
+            )
         cell = shorten(self.cells[position].iloc[row], 60, placeholder=" …")
         return self.fault(
             f"'{cell}' is not a number",

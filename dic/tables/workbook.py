@@ -11,6 +11,7 @@ from typing import Any
 from xml.etree.ElementTree import ParseError
 
 from dic.errors import InputError
+from dic.tables import layout
 from dic.tables.text import MOST_CELLS, MOST_COLUMNS
 
 #: What a workbook of `MOST_CELLS` numbers unpacks to, about.
@@ -18,6 +19,8 @@ MOST_UNPACKED = 250_000_000
 #: Texts that cells share are kept in memory all at once.
 MOST_SHARED = 20_000_000
 _CHUNK = 1 << 20
+#: Rows of numbers that make a table; a sheet of notes and settings has fewer.
+_LEAST_ROWS = 5
 
 Rows = list[tuple[int, list[str]]]
 
@@ -40,14 +43,15 @@ def workbook_rows(path: Path, sheet: str | None, fault: type[InputError]) -> tup
     path
         The workbook.
     sheet
-        The sheet's name; None takes the first that holds anything.
+        The sheet's name; None takes the first that holds a table of numbers, else the first that holds
+        anything.
     fault
         The error to raise where it cannot be used.
 
     Returns
     -------
-    rows, taken, sheets
-        Numbered rows without the blank ones, the sheet's name, and the names of all sheets.
+    rows, taken, others
+        Numbered rows without the blank ones, the sheet's name, and the names of others that could be meant.
     """
     try:
         from openpyxl import load_workbook
@@ -122,12 +126,24 @@ def _sheet(book: Any, sheet: str | None, path: Path, fault: type[InputError]) ->
     if sheet is not None and sheet not in names:
         there = ", ".join(f"'{name[:60]}'" for name in names[:20])
         raise fault(f"there is no sheet '{sheet}'", where=str(path), remedy=f"there are: {there}")
-    rows: Rows = []
+    read: dict[str, Rows] = {}
+    held = 0
     for name in [sheet] if sheet is not None else names:
-        rows = _rows(book[name], path, fault)
-        if rows:
-            return rows, name, names
+        read[name] = _rows(book[name], path, fault)
+        held += sum(len(cells) for _, cells in read[name])
+        if held > MOST_CELLS:  # sheets further back may be anything
+            break
+    filled = [name for name, rows in read.items() if rows]
+    tables = [name for name in filled if _holds_table(read[name])] or filled
+    if tables:
+        return read[tables[0]], tables[0], tables[1:]
     raise fault("holds no rows", where=str(path), remedy="name the sheet with load_record.sheet")
+
+
+def _holds_table(rows: Rows) -> bool:
+    """Tell whether a sheet holds columns of numbers beside one another."""
+    columns = layout.value_columns(rows)
+    return len(columns) > 1 and sum(layout.is_sound(cells, columns) for _, cells in rows) >= _LEAST_ROWS
 
 
 def _rows(page: Any, path: Path, fault: type[InputError]) -> Rows:

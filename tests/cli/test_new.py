@@ -196,3 +196,8 @@ def test_an_input_that_is_missing(tmp_path, name):
     with pytest.raises(InputError, match="none"):
         write_draft(*inputs, folder / "test.toml")
     assert not os.path.lexists(folder / "test.toml")
+
+
+def test_times_of_day_are_written_as_such(tmp_path):
+    record = "Time,Force (N)\n" + "".join(f"10:20:{k:02d}.500,{k}.0\n" for k in range(20))
+    assert "Time, times of day, 10:20:00.500 to 10:20:19.500" in draft(*lay_out(tmp_path, record))[0]

@@ -31,6 +31,12 @@ def test_pictures_without_noise_are_left_alone():
     assert watch.repeats == 3
 
 
+def test_compression_with_loss_makes_frames_at_rest_alike():
+    frames = list(pictures(True, [0, 1]))
+    watch = RepeatWatch(alike_at_rest=True)
+    assert not any(watch.frozen(frames[k]) for k in (0, 1, 1, 1, 0))
+
+
 def test_one_pixel_makes_another_picture():
     first, second = pictures(True, [0, 0])
     almost = second.copy()

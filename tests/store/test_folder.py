@@ -71,3 +71,10 @@ def test_an_earlier_result_that_stays_is_reported(measurement, tmp_path, monkeyp
     monkeypatch.setattr("pathlib.Path.unlink", fail)
     with pytest.raises(StoreError, match=r"earlier result cannot be removed \(Permission denied\)"):
         claim_folder(tmp_path, [])
+
+
+def test_a_file_in_place_of_the_folder_is_left_and_said(tmp_path):
+    (tmp_path / "machine.csv").write_text("mine")
+    with pytest.raises(StoreError, match="is a file, where the result folder should be"):
+        claim_folder(tmp_path / "machine.csv", [])
+    assert (tmp_path / "machine.csv").read_text() == "mine"

@@ -141,11 +141,15 @@ def test_bytes_that_break_further_down(write):
     assert "'ÿþ' is not a number" in refused(path)
 
 
-@pytest.mark.parametrize("content", ["", "\n", ",,\n1,2,3\n"])
-def test_no_headers(tmp_path, content):
+@pytest.mark.parametrize(
+    ("content", "said"),
+    [("", "is empty"), ("\n", "is empty"), (",,\n1,2,3\n", "no line of column headers"),
+     ("Time (s),Force (N)\n" + "".join(f"{k},n/a\n" for k in range(9)), "column 'Force (N)': the column holds no")],
+)  # fmt: skip
+def test_nothing_to_read(tmp_path, content, said):
     path = tmp_path / "machine.csv"
     path.write_text(content)
-    assert "no line of column headers" in refused(path)
+    assert said in refused(path)
 
 
 @pytest.mark.parametrize(

@@ -12,7 +12,7 @@ import pytest
 
 from dic import tables
 from dic.errors import LoadRecordError
-from dic.sync import read_load_record
+from dic.sync import look_at_record, read_load_record
 from dic.testfile import LoadRecord as Section
 
 EVE, NOON, LEAP = (
@@ -321,6 +321,19 @@ def test_sheets(tmp_path):
         LoadRecordError, match=r"there is no sheet 'Third'; there are: 'Empty', 'First', 'Second'"
     ):
         read_load_record(section(sheet="Third"), path)
+
+
+def test_a_sheet_of_text_in_front(tmp_path):
+    """Nor are settings a table, whatever numbers stand in them."""
+    notes = [["Sample", "Operator"], ["c3", "x"], *(["Speed", "mm/min", k] for k in range(9))]
+    rows = [["Time (s)", "Force (N)"], *zip(TIME.tolist(), FORCE.tolist(), strict=True)]
+    path = workbook(tmp_path / "m.xlsx", (notes, rows), ("Info", "Data"))
+    record = read_load_record(section(), path)
+    np.testing.assert_allclose(record.force_N, FORCE, rtol=5e-16)
+    assert record.notices == ()
+    assert look_at_record(path).sheet == "Data"
+    with pytest.raises(LoadRecordError):
+        read_load_record(section(sheet="Info"), path)
 
 
 def test_a_workbook_without_its_reader(tmp_path, monkeypatch):
