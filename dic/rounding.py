@@ -7,6 +7,8 @@ from math import isfinite
 
 #: Coverage factor of every expanded uncertainty that is shown: about 95 % for a normal distribution.
 COVERAGE_FACTOR = 2.0
+#: Probability that an interval of that factor holds the true value, about.
+COVERAGE_PROBABILITY = 0.95
 
 # A double reaches from 1e-324 to 1e308, so 700 digits hold every value beside every uncertainty.
 _EXACT = Context(prec=700, rounding=ROUND_HALF_EVEN)

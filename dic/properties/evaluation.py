@@ -2,16 +2,22 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 from dic.properties.course import energy_entries, rate_entries
 from dic.properties.cycles import cycle_entries
 from dic.properties.elastic import elastic_entries
 from dic.properties.hardening import hardening_entries
-from dic.properties.result import Curve, Evaluation
+from dic.properties.result import Curve, Evaluation, Property
 from dic.properties.sheet import Sheet
 from dic.properties.strength import proof_entries, strength_entries
 from dic.properties.yielding import yielding_entries
 from dic.sync.record import Clock
 from dic.testfile import Properties, Specimen
+from dic.uncertainty import budget_of
+
+#: How a note begins that names what an uncertainty lacks.
+NOT_INCLUDED = "not included: "
 
 
 def evaluate(
@@ -56,5 +62,13 @@ def evaluate(
         *cycle_entries(sheet),
     ]
     return Evaluation(
-        {entry.name: entry.property() for entry in entries}, sheet.modulus_line(), sheet.notices()
+        {entry.name: _with_budget(entry.property(), sheet) for entry in entries},
+        sheet.modulus_line(),
+        sheet.notices(),
     )
+
+
+def _with_budget(item: Property, sheet: Sheet) -> Property:
+    """Add the table of contributions; what the notes say is not included stands in it too."""
+    missing = tuple(note.removeprefix(NOT_INCLUDED) for note in item.notes if note.startswith(NOT_INCLUDED))
+    return replace(item, budget=budget_of(item.contributions, item.unit, sheet.inputs(), missing))

@@ -9,6 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dic.errors import Notice
+from dic.uncertainty.budget import Row
 
 Floats = NDArray[np.float64]
 
@@ -40,6 +41,8 @@ class Property:
         `standard_uncertainty`.
     qualifier
         Word that has to stand before the value wherever it is shown, such as ``at least``.
+    budget
+        The same as a table, with what is not included.
     """
 
     name: str
@@ -52,6 +55,7 @@ class Property:
     notes: tuple[str, ...] = ()
     contributions: dict[str, float] = field(default_factory=dict)
     qualifier: str = ""
+    budget: tuple[Row, ...] = ()
 
 
 @dataclass(frozen=True)

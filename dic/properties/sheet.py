@@ -21,7 +21,7 @@ from dic.properties.systematic import FalseStrain, change, changes, of_axis, win
 from dic.properties.zero import Zero, frames_at_rest, seating_slack, take_off_toe, zero_of
 from dic.sync.record import Clock
 from dic.testfile import Properties, Specimen
-from dic.uncertainty import Line, combine
+from dic.uncertainty import Input, Line, combine
 
 Floats = NDArray[np.float64]
 
@@ -186,6 +186,19 @@ class Sheet:
     def of_stress(self, value: float) -> dict[str, float]:
         """Return the contributions of the factors that all stresses share."""
         return {source: abs(value) * u for source, u in self.common.items() if u is not None}
+
+    def inputs(self) -> dict[str, Input]:
+        """Return what stands behind the sources of uncertainty that all properties share."""
+        factor, section = self.common["force calibration"], self.common["section"]
+        area, towards = self.curve.area_mm2, self.curve.u_towards
+        found = {
+            "force calibration": None if factor is None else Input(1.0, "", factor),
+            "section": None if section is None else Input(area, "mm²", area * section),
+            "clock": Input(self.clock.offset_s, "s", self.clock.offset_standard_uncertainty_s),
+            "axis angle": Input(0.0, "deg", self.curve.u_axis_deg),
+            "motion towards the camera": None if towards is None else Input(0.0, "", towards),
+        }
+        return {source: given for source, given in found.items() if given is not None}
 
     def left_out(self) -> tuple[str, ...]:
         """Say what a stress' uncertainty lacks."""

@@ -30,6 +30,7 @@ from dic.rounding import COVERAGE_FACTOR, uncertainty_alone, with_uncertainty
 from dic.store.folder import FIGURES
 from dic.store.results import encoded, write_whole
 from dic.store.tables import absent_in, called, found_in, shown_in, stated
+from dic.uncertainty import Row
 
 if TYPE_CHECKING:
     import xarray as xr
@@ -203,15 +204,32 @@ def _entry(item: Property) -> dict[str, Any]:
         "short_window": words.window(dict(list(item.window.items())[:1])),
         "notes": item.notes,
         "contributions": _contributions(item),
+        "missing": [row.source for row in item.budget if not row.included],
     }
 
 
-def _contributions(item: Property) -> list[tuple[str, str, float]]:
-    """Return source, standard uncertainty and share of the variance in percent, the largest first."""
+def _contributions(item: Property) -> list[tuple[str, str, str, str, float]]:
+    """Return source, input, sensitivity, contribution and share in percent, the largest first."""
     known = {source: abs(u) for source, u in item.contributions.items() if isfinite(u)}
     total = sum(u**2 for u in known.values())
     scale, unit = shown_in(item)
+    behind = {row.source: _input(row, unit, scale) for row in item.budget if row.included}
     return [
-        (source, uncertainty_alone(u * scale, unit), 100 * u**2 / total if total else 0.0)
+        (
+            source,
+            *behind.get(source, ("", "")),
+            uncertainty_alone(u * scale, unit),
+            100 * u**2 / total if total else 0.0,
+        )
         for source, u in sorted(known.items(), key=lambda pair: -pair[1])
     ]
+
+
+def _input(row: Row, unit: str, scale: float) -> tuple[str, str]:
+    """Return an input with its standard uncertainty, and the property's change per unit of it."""
+    if not isfinite(row.value):
+        return "the readings themselves", "1"
+    said = f"{row.value:.6g} {row.unit}".rstrip()
+    per = f"{unit}/{row.unit}" if row.unit else unit
+    sensitivity = f"{row.sensitivity * scale:.3g} {per}".rstrip() if isfinite(row.sensitivity) else ""
+    return f"{said} ({uncertainty_alone(row.standard_uncertainty, row.unit)})", sensitivity

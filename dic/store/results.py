@@ -15,7 +15,7 @@ import numpy as np
 
 from dic.comparison.clip_on import METHOD
 from dic.errors import StoreError
-from dic.rounding import COVERAGE_FACTOR
+from dic.rounding import COVERAGE_FACTOR, COVERAGE_PROBABILITY
 from dic.store.tables import history_table
 
 if TYPE_CHECKING:
@@ -174,7 +174,9 @@ def _property(item: Property) -> dict[str, Any]:
         "symbol": item.symbol,
         "coverage_factor": COVERAGE_FACTOR,
         "expanded_uncertainty": COVERAGE_FACTOR * item.standard_uncertainty,
+        "coverage_probability": COVERAGE_PROBABILITY,
         "contributions": item.contributions,
+        "budget": [asdict(row) for row in item.budget],
     }
 
 

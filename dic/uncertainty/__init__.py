@@ -1,12 +1,15 @@
 """Contributions to a standard uncertainty, and the straight lines that most of them come from."""
 
 from dic.uncertainty.both import LineOfBoth, line_of_both
-from dic.uncertainty.budget import combine, few_readings
+from dic.uncertainty.budget import Input, Row, budget_of, combine, few_readings
 from dic.uncertainty.line import Line, line_with_errors_in_both, straight_line
 
 __all__ = [
+    "Input",
     "Line",
     "LineOfBoth",
+    "Row",
+    "budget_of",
     "combine",
     "few_readings",
     "line_of_both",
