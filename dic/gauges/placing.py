@@ -11,7 +11,7 @@ from skimage.measure import points_in_poly
 
 from dic.errors import TestFileError
 from dic.gauges.probes import Ints, Probe, Spanning, Stretching, Subsets
-from dic.gauges.silhouette import Silhouette
+from dic.gauges.silhouette import MOST_UNEVEN, Silhouette
 from dic.pattern import axes
 from dic.quantities import parse
 from dic.strain import Region
@@ -296,6 +296,14 @@ class _Placer:
                 "the coupon's long edges are not both in view",
                 where=self.where,
                 remedy="let the camera see the background on both sides, or use a transverse gauge",
+            )
+        if self.silhouette.uneven > MOST_UNEVEN:
+            raise TestFileError(
+                f"the background beside the coupon is not plain: along its edges the grey scatters by "
+                f"{100 * self.silhouette.uneven:.0f} % of the step to the coupon, and "
+                f"{100 * MOST_UNEVEN:.0f} % is the most",
+                where=self.where,
+                remedy="hang a plain sheet behind the coupon, or use a transverse gauge",
             )
         low, high = self.silhouette.range_px
         middle = 0.0

@@ -45,6 +45,10 @@ NOISE_PX = 2 * ZONE_PX - FADE_PX / 3 + 2 * ZONE_PX**2 / LEVEL_PX
 LEAST_SCALE = 0.5
 #: Sides are told apart only where their grey differs by this many times the noise.
 LEAST_STEP = 3.0
+#: A plain background's grey scatters along the edge by less than this share of the step to the coupon; what
+#: moves past the zone of an uneven one looks like a change of width.  Sheets in uneven light stay below
+#: 0.02, photographs of brick, grass and gravel above 0.1.
+MOST_UNEVEN = 0.05
 
 
 @dataclass(frozen=True)
@@ -108,6 +112,11 @@ class Silhouette:
         if not seen.size:
             return 0.0, 0.0
         return float(seen[0]) - BLOCK / 2, float(seen[-1]) + BLOCK / 2
+
+    @property
+    def uneven(self) -> float:
+        """Scatter of the background's grey along the edges, as a share of the step to the coupon."""
+        return max(_scatter_of_background(side, self.along) for side in self._first)
 
     def stations(self, first: float, last: float) -> NDArray[np.bool_]:
         """Return which stations lie between two places along the axis."""
@@ -250,6 +259,16 @@ def _line_through(along: Floats, shift: Floats) -> Floats:
     if there.sum() < 2:
         return np.full(len(along), shift[there].mean() if there.any() else 0.0)
     return np.polynomial.Polynomial.fit(along[there], shift[there], 1)(along)
+
+
+def _scatter_of_background(side: _Side, along: Floats) -> float:
+    """Return by how much the outer grey leaves a straight line along one edge, per step; 0 if hardly seen."""
+    seen = np.isfinite(side.outer)
+    if seen.sum() < 4:
+        return 0.0
+    grey = side.outer[seen]
+    left = grey - np.polynomial.Polynomial.fit(along[seen], grey, 1)(along[seen])
+    return float(left.std(ddof=2)) / abs(side.step(seen)[1])
 
 
 def clear(widths: Widths, noise_grey: float) -> Widths:

@@ -3,10 +3,13 @@
 import numpy as np
 import pytest
 
-from dic.gauges.silhouette import Silhouette, clear, mean_motion
+from dic.errors import TestFileError
+from dic.gauges import place_gauges
+from dic.gauges.silhouette import MOST_UNEVEN, Silhouette, clear, mean_motion
 from dic.pattern import axes, find_coupon
 from dic.strain import Region
-from synthetic_images import Camera, Dots, homogeneous
+from dic.testfile import NamedGauge
+from synthetic_images import Camera, Dots, Photograph, homogeneous
 from synthetic_images.coupon import Coupon as Scene
 
 SHAPE, WIDTH, NOISE = (380, 300), 180.3, 0.01
@@ -103,3 +106,29 @@ def test_a_coupon_as_grey_as_its_background_is_not_clear(silhouette):
     edges = silhouette(plain, 0.0)
     grey = np.full(SHAPE, 90.0) + np.random.default_rng(1).normal(0, 2, SHAPE)
     assert np.isnan(clear(edges.measure(grey, np.zeros((2, 3))), 2.0).px).all()
+
+
+@pytest.mark.parametrize("light", [{}, {"gradient": 0.3}, {"vignette": 0.3}])
+def test_a_plain_background_may_be_lit_unevenly(light):
+    still, camera = motion_of(0.0, 0.0), Camera(bits=8, noise=NOISE, **light)
+    frame = camera.photograph(Scene(SPECKLE, still, CENTRE, WIDTH, 0.0, 0.1), SHAPE, seed=5)
+    assert over(frame).uneven < MOST_UNEVEN / 2
+
+
+@pytest.mark.parametrize("name", ["brick", "grass", "gravel"])
+def test_a_cluttered_background_is_refused(name):
+    """Real photographs; what passes the edge would read as a change of width."""
+    scene = Scene(SPECKLE, motion_of(0.0, 0.0), CENTRE, WIDTH, 0.0, Photograph.named(name, 3.0))
+    edges = over(Camera(bits=8, noise=NOISE).photograph(scene, SHAPE, seed=5))
+    gauge = {"w": NamedGauge(kind="edge_width")}
+    with pytest.raises(TestFileError, match=r"gauges\.w: the background .* not plain.*5 % is the most"):
+        place_gauges(gauge, None, edges_region(), 0.05, edges)
+
+
+def edges_region():
+    return Region(np.array(CENTRE), 300.0, 170.0, *axes(0.0))
+
+
+def over(frame):
+    coupon = find_coupon(picture(SPECKLE, motion_of(0.0, 0.0), 0.0, 1), 0.0)
+    return Silhouette(frame, coupon, edges_region())
