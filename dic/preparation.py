@@ -139,6 +139,7 @@ def set_up(test: TestFile, source: FrameSource) -> Setup:
             *_frozen_start(source),
             *_subset_taken(test.correlation.subset, grid),
             *facing_notices,
+            *_clutter(test, silhouette),
             *axis_doubts(coupon),
             *doubts(quality, grid.subset),
             *scale_doubts,
@@ -225,6 +226,15 @@ def _subset_taken(wanted: int, grid: Grid) -> Iterator[Notice]:
         yield Notice(
             "subset_even",
             f"A subset has a middle pixel, so correlation.subset = {wanted} was taken as {grid.subset}.",
+        )
+
+
+def _clutter(test: TestFile, silhouette: Silhouette | None) -> Iterator[Notice]:
+    if test.specimen.shape == "round" and silhouette is not None and not silhouette.plain:
+        yield Notice(
+            "round_bar_background",
+            "The background beside the bar is not plain, so its diameter cannot be followed, and there is no "
+            "transverse strain; hang a plain sheet behind the bar.",
         )
 
 

@@ -138,10 +138,13 @@ class NamedReadings:
         """Take the transverse strain from the width between the edges, where it is followed.
 
         On a round bar the pattern's own transverse strain is that of a narrow, curved band; the edges show
-        the diameter.
+        the diameter.  Before a cluttered background they do not, and nothing stands in for them.
         """
         if self._silhouette is None:
             return history
+        if not self._silhouette.plain:
+            nowhere = np.full_like(history.transverse, np.nan)
+            return replace(history, transverse=nowhere, u_transverse=nowhere)
         strain, u, _ = self._edge_strain(self._silhouette.range_px)
         return replace(history, transverse=strain, u_transverse=u)
 

@@ -297,7 +297,7 @@ class _Placer:
                 where=self.where,
                 remedy="let the camera see the background on both sides, or use a transverse gauge",
             )
-        if self.silhouette.uneven > MOST_UNEVEN:
+        if not self.silhouette.plain:
             raise TestFileError(
                 f"the background beside the coupon is not plain: along its edges the grey scatters by "
                 f"{100 * self.silhouette.uneven:.0f} % of the step to the coupon, and "

@@ -118,6 +118,11 @@ class Silhouette:
         """Scatter of the background's grey along the edges, as a share of the step to the coupon."""
         return max(_scatter_of_background(side, self.along) for side in self._first)
 
+    @property
+    def plain(self) -> bool:
+        """Whether the background is even enough for the width to be trusted."""
+        return self.uneven <= MOST_UNEVEN
+
     def stations(self, first: float, last: float) -> NDArray[np.bool_]:
         """Return which stations lie between two places along the axis."""
         return (self.along >= first) & (self.along <= last)

@@ -1,10 +1,12 @@
 """The width between the edges, against the coupon's true width: plain and speckled, tilted and moved."""
 
+from dataclasses import dataclass
+
 import numpy as np
 import pytest
 
 from dic.errors import TestFileError
-from dic.gauges import place_gauges
+from dic.gauges import NamedReadings, place_gauges
 from dic.gauges.silhouette import MOST_UNEVEN, Silhouette, clear, mean_motion
 from dic.pattern import axes, find_coupon
 from dic.strain import Region
@@ -123,6 +125,18 @@ def test_a_cluttered_background_is_refused(name):
     gauge = {"w": NamedGauge(kind="edge_width")}
     with pytest.raises(TestFileError, match=r"gauges\.w: the background .* not plain.*5 % is the most"):
         place_gauges(gauge, None, edges_region(), 0.05, edges)
+
+
+def test_a_round_bar_before_clutter_has_no_transverse_strain(subsets):
+    @dataclass(frozen=True)
+    class History:
+        transverse: np.ndarray
+        u_transverse: np.ndarray
+
+    scene = Scene(SPECKLE, motion_of(0.0, 0.0), CENTRE, WIDTH, 0.0, Photograph.named("brick", 3.0))
+    edges = over(Camera(bits=8, noise=NOISE).photograph(scene, SHAPE, seed=5))
+    found = NamedReadings(subsets, (), edges).of_round_bar(History(np.zeros(3), np.ones(3)))
+    assert np.isnan([found.transverse, found.u_transverse]).all()
 
 
 def edges_region():
