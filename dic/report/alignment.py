@@ -247,7 +247,7 @@ def _stations(measurement: Measurement) -> Drawing:
         across.errorbar(
             scale * stations.across_px, 100 * (stations.profile[k] - 1), 200 * stations.u_profile[k],
             fmt="o-", ms=3, lw=1, capsize=2, color=_shade(k, len(stations.along_px)),
-            label=f"at {scale * place:+.3g} {unit}",
+            label=f"at {scale * place:+.1f} {unit}",
         )  # fmt: skip
     across.axhline(0, color=FAINT, lw=0.8)
     across.set(
@@ -292,13 +292,14 @@ def _contrast(measurement: Measurement) -> Drawing:
     height = float(np.clip((WIDTH / 2 if tall else WIDTH) * rows / columns + 0.9, 2.4, 6.0))
     figure, panels = sheet(*((1, 2) if tall else (2, 1)), height=height if tall else min(2 * height, 7.5))
     left, right, near, far = sides(scene)
+    places = ("on the left", "on the right") if tall else ("above", "below")
     titles = (f"{left} against {right}, %", f"{far} against {near}, %")
     for axes, values, title in zip(panels, (found.sides, found.ends), titles, strict=True):
         _panel(axes, measurement, 100 * values, title, tall)
     reading = (
-        "Local axial strain less that of the point opposite, halved, in percent of the mean strain: on the "
-        "left mirrored at the coupon's axis, on the right at the middle of its length. Brown is strained "
-        "more than its mirror image, blue less. A smooth change from edge to edge is bending or taper; a "
+        "Local axial strain less that of the point opposite, halved, in percent of the mean strain: "
+        f"{places[0]} mirrored at the coupon's axis, {places[1]} at the middle of its length. "
+        "Brown is strained more than its mirror image, blue less. A smooth change from edge to edge is bending or taper; a "
         "spot is a local weakness; even mottling is noise."
     )
     alt = "Contrast maps of axial strain over the photograph: side against side, and end against end."

@@ -16,7 +16,7 @@ from dic.comparison import ClipOn
 from dic.measurement import Measurement, Scene
 from dic.properties.result import Property
 from dic.report import words
-from dic.report.alignment import draw_alignment, sentences, verdict
+from dic.report.alignment import draw_alignment, sentences, sides, verdict
 from dic.report.clip_on import agreement_rows, class_rows, draw_clip_on
 from dic.report.clocks import draw_clocks
 from dic.report.curves import draw_curves
@@ -141,7 +141,7 @@ def _page(measurement: Measurement, pictures: dict[str, list[Picture]], no_stres
         columns=measurement.record.columns,
         clip_on=_clip_on(measurement.clip_on),
         gauges=gauge_rows(measurement),
-        alignment=words.labelled(_aligned(measurement)),
+        alignment=words.labelled(_aligned(measurement), _sides(measurement.scene)),
         straight=verdict(measurement),
         looked_at=sentences(measurement),
         quality=words.labelled({"noise_grey": measurement.scene.noise_grey, **measurement.quality}),
@@ -173,10 +173,17 @@ def _clip_on(found: ClipOn | None) -> dict[str, Any] | None:
 
 def _aligned(measurement: Measurement) -> dict[str, Any]:
     """Return the figures on alignment that are shown as a table; the stations have their figure."""
-    found = measurement.alignment.figures()
-    shown = {name: value for name, value in found.items() if isinstance(value, float) and name[:2] != "u_"}
-    shown.pop("bending_strain_per_N")
+    found = measurement.alignment
+    shown = {name: value for name, value in found.figures().items() if isinstance(value, float)}
+    del shown["bending_strain_per_N"], shown["u_bending_strain_per_N"]
+    # With its sign, so that it can be held beside the halves of the elastic part.
+    shown["bending_percent"] = 100 * found.bending.value
     return {"axis_angle_deg": measurement.scene.axis_angle_deg, **shown}
+
+
+def _sides(scene: Scene) -> dict[str, str]:
+    """Return what the coupon's sides and ends are called in the picture."""
+    return dict(zip(("left", "right", "near", "far"), sides(scene), strict=True))
 
 
 def _worked_out(scene: Scene) -> list[tuple[str, str]]:

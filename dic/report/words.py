@@ -12,7 +12,7 @@ import numpy as np
 from markupsafe import Markup
 
 from dic.report.figures import strain_unit
-from dic.rounding import three_digits
+from dic.rounding import COVERAGE_FACTOR, three_digits, with_uncertainty
 
 #: Units that the end of a name stands for.
 _UNITS = {
@@ -34,24 +34,27 @@ MEANINGS = {
     ),
     "bending_percent": (
         "Bending at the gauge's middle",
-        "How much more the gauge's edge is strained than its mean, in the picture's plane. Bending through "
-        "the thickness cannot be seen by one camera.",
+        "How much more the {right} edge is strained than the mean, in the picture's plane; negative where it "
+        "is strained less. Bending through the thickness cannot be seen by one camera.",
     ),
     "bending_largest_percent": (
         "Largest bending in the gauge",
         "At one of its ends; the limit is for it.",
     ),
     "bending_change_percent": (
-        "Bending, end less middle",
+        "Bending at the {far} end less that at the middle",
         "Near zero for bending of one sign all along; as large as the largest where it changes sign.",
     ),
-    "bending_lower_half_percent": ("Bending in the lower half of the elastic part", "Positive to one side."),
+    "bending_lower_half_percent": (
+        "Bending in the lower half of the elastic part",
+        "Of the {right} edge, as above.",
+    ),
     "bending_upper_half_percent": (
         "Bending in the upper half of it",
         "As large as in the lower half where bending grows in proportion to the force.",
     ),
     "uniformity_percent": (
-        "Axial strain, end less middle",
+        "Axial strain at the {far} end less that at the middle",
         "How uneven the strain is along its length; a taper or a nearby shoulder shows here.",
     ),
     "shear_percent": (
@@ -67,16 +70,18 @@ MEANINGS = {
         "Clockwise positive; a coupon that is loaded straight does not turn.",
     ),
     "turning_near_end_per_percent_deg": (
-        "Rotation of the lower (or left) end",
+        "Rotation of the {near} end",
         "Opposite to the other end for a C, the same as the other for an S.",
     ),
-    "turning_far_end_per_percent_deg": ("Rotation of the upper (or right) end", "Per 1 % of strain, too."),
+    "turning_far_end_per_percent_deg": ("Rotation of the {far} end", "Per 1 % of strain, too."),
     "limit_percent": ("Limit", "Largest bending that the test file or its standard allows."),
     "valid_fraction": (
         "Subsets measured",
         "Share of the gauge's subsets that were recognised again, median over the frames; it should stay "
         "near 100 %.",
     ),
+    "coupon_width_px": ("Coupon width", "Between the two long edges; it gives the scale."),
+    "u_axis_deg": ("Standard uncertainty of the axis", "From the scatter along the coupon's edges."),
     "subsets": ("Subsets", "How many patches were followed in every frame."),
     "gauge_region_length_px": ("Gauge region, along", "Strain is averaged over this length."),
     "gauge_region_width_px": ("Gauge region, across", "Strain is averaged over this width."),
@@ -91,13 +96,13 @@ MEANINGS = {
     ),
     "periodic_error_px": (
         "Periodic error of the interpolation",
-        "Amplitude C of C·sin(2πu) in the displacements as this test shows it, u in px.",
+        "Amplitude C of C·sin(2πu) in the displacements as this test shows it, u in px; its uncertainty is "
+        "from leaving out one frame at a time.",
     ),
     "periodic_error_second_px": ("Its second wave", "Amplitude of the part that has two waves per pixel."),
-    "u_periodic_error_px": ("Its standard uncertainty", "From leaving out one frame at a time."),
     "periodic_error_corrected": (
         "Corrected for it",
-        "1 where the strains were corrected: only where the test determines an amplitude well.",
+        "Only where the test determines an amplitude well.",
     ),
     "speckle_px": (
         "Speckle size",
@@ -162,12 +167,25 @@ def _range(name: str, low: float, high: float) -> str:
     return f"{stem if unit and stem else name} {bounds} {unit}".rstrip()
 
 
-def labelled(figures: Mapping[str, Any]) -> list[tuple[str, str, str]]:
-    """Return label, value with unit, and meaning of figures whose names end in their units."""
-    return [_labelled(name, value) for name, value in figures.items()]
+def labelled(
+    figures: Mapping[str, Any], sides: Mapping[str, str] | None = None
+) -> list[tuple[str, str, str]]:
+    """Return label, value with unit, and meaning of figures whose names end in their units.
+
+    A figure and its standard uncertainty, named alike with ``u_`` before it, make one row, k = 2.  `sides`
+    names the coupon's sides and ends where a meaning speaks of them.
+    """
+    rows = [
+        _labelled(name, value, figures.get(f"u_{name}"))
+        for name, value in figures.items()
+        if name.removeprefix("u_") == name or name.removeprefix("u_") not in figures
+    ]
+    if sides is None:
+        return rows
+    return [(label.format(**sides), value, meaning.format(**sides)) for label, value, meaning in rows]
 
 
-def _labelled(name: str, value: Any) -> tuple[str, str, str]:
+def _labelled(name: str, value: Any, u: float | None) -> tuple[str, str, str]:
     stem, _, ending = name.rpartition("_")
     unit = _UNITS.get(ending, "")
     label, meaning = MEANINGS.get(name, (heading(stem if unit else name), ""))
@@ -175,6 +193,10 @@ def _labelled(name: str, value: Any) -> tuple[str, str, str]:
         return label, str(value), meaning
     if not isfinite(value):
         return label, "not determined", meaning
+    if name.endswith("_corrected"):
+        return label, "yes" if value else "no", meaning
+    if u is not None:
+        return label, with_uncertainty(float(value), COVERAGE_FACTOR * u, unit), meaning
     if ending == "fraction":
         return label, f"{100 * value:.3g} %", meaning
     if "strain" in name and not unit:

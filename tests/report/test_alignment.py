@@ -90,3 +90,5 @@ def test_figures_show_stations_and_limit(measurement):
     assert {-5.0, 5.0} <= set(np.round(levels, 9))
     assert NOT_SEEN in stations.reading
     assert len([axes for axes in contrast.figure.axes if axes.images]) >= 2
+    rows, columns = measurement.scene.photograph.shape
+    assert ("on the left mirrored" if rows > columns else "above mirrored") in contrast.reading

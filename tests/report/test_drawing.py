@@ -127,6 +127,14 @@ def test_figures_in_words():
     assert "one camera" in rows[0][2]
 
 
+def test_a_figure_and_its_uncertainty_make_one_row():
+    """Expanded, k = 2, and rounded to two of its digits."""
+    figures = {"bending_percent": -6.0731, "u_bending_percent": 0.12, "u_axis_deg": 0.02, "x_corrected": 0.0}
+    rows = words.labelled(figures, {"left": "upper", "right": "lower", "near": "right", "far": "left"})
+    assert [row[1] for row in rows] == ["-6.07 ± 0.24 %", "0.02°", "no"]
+    assert "the lower edge" in rows[0][2]
+
+
 def test_settings_become_rows():
     rows = words.flat({"a": {"b": 0.5, "c": [1.0, 2]}, "d": "x"})
     assert rows == [("a.b", "0.5"), ("a.c", "1, 2"), ("d", "x")]
