@@ -131,6 +131,20 @@ class _Bend:
     n: int
 
 
+def bend_of(loading: Loading, frames: slice) -> float:
+    """Return the bend of strain over stress in some frames, either way, in standard uncertainties of it."""
+    stress, strain = loading.stress[frames], loading.strain[frames]
+    width = float(np.ptp(stress))
+    if width == 0:
+        return 0.0
+    design = np.vander((stress - stress.mean()) / width, 3)
+    found = np.linalg.lstsq(design, strain, rcond=None)[0]
+    residuals = strain - design @ found
+    variance = float(residuals @ residuals) / max(len(strain) - 3, 1)
+    u = sqrt(float(np.linalg.inv(design.T @ design)[0, 0]) * variance)
+    return abs(float(found[0])) / u if u else 0.0
+
+
 def _bend(stress: Floats, strain: Floats, at: float) -> _Bend:
     width = float(np.ptp(stress))
     if width == 0:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from dic.properties.fits import Kind, Window, end_line, fit
+from dic.properties.fits import Kind, Window, bend_of, end_line, fit
 from dic.properties.loading import MIN_FRAMES, Loading, Undetermined, passage
 from dic.properties.proof import crossing
 from dic.testfile import ModulusWindow
@@ -12,6 +12,13 @@ from dic.uncertainty import Line
 
 #: Window of ISO 6892-1's annex on the modulus, as shares of the yield point [from memory].
 SHARES = (0.1, 0.4)
+#: Tops that a window is tried up to, as shares of the yield point or of the largest stress, where the test
+#: shows a straight course up to there.
+TOPS = (0.5, 0.6, 0.7, 0.8)
+#: Before the curve meets the 0.2 % line the stress of a sharp yield point exceeds that proof stress so much.
+SHARP = 1.03
+#: Standard uncertainties of the bend that a window may show and still count as straight.
+STRAIGHT = 2.0
 #: Window of ISO 527-1, strain.
 PLASTICS = (0.0005, 0.0025)
 #: Offset whose proof stress stands for the yield point.
@@ -70,8 +77,10 @@ def fit_elastic(loading: Loading, wanted: ModulusWindow | str, source: str = "as
     wanted
         A window in strain or stress, or ``"auto"``: 10 % to 40 % of the yield point as ISO 6892-1's
         annex on the modulus has it, the yield point being the 0.2 % proof stress that the line itself
-        gives, repeated until the window stays.  Where that cannot be had: the strains of ISO 527-1, with
-        the reason in the notes.
+        gives, repeated until the window stays.  Where that cannot be had: the strains of ISO 527-1, or the
+        shares of the largest stress where the test does not reach so far, with the reason in the notes.
+        Below a sharp yield point, or below the end of a test that shows none, the window by shares goes on
+        upwards while the curve is straight, see `_widened`.
     source
         Who asked for the window, in words.
 
@@ -89,6 +98,9 @@ def fit_elastic(loading: Loading, wanted: ModulusWindow | str, source: str = "as
         try:
             return _between_shares_of_yield(loading)
         except Undetermined as reason:
+            reached = float(loading.strain.max(initial=0.0))
+            if 0 < reached < PLASTICS[1]:
+                return _between_shares_of_largest(loading, reached)
             return _fit(
                 loading,
                 passage(loading.strain, *PLASTICS),
@@ -126,6 +138,45 @@ def _between_shares_of_yield(loading: Loading) -> Elastic:
     assert found is not None  # noqa: S101  (there is a first round)
     if yield_point / found.modulus >= LARGEST_YIELD_STRAIN:
         raise Undetermined("the curve bends all along and shows no yield point like a metal's")
+    # A gradual yield leaves plastic strain below its bend, too little to see and enough to falsify ν.
+    met = found.line.at(yield_point) + YIELD_OFFSET
+    if _highest_before(loading, met) < SHARP * yield_point:
+        return found
+    return _widened(loading, found, yield_point, "the 0.2 % proof stress (ISO 6892-1, annex on the modulus)")
+
+
+def _highest_before(loading: Loading, strain: float) -> float:
+    return float(loading.stress[passage(loading.strain, -1.0, strain)].max(initial=0.0))
+
+
+def _between_shares_of_largest(loading: Loading, reached: float) -> Elastic:
+    """Fit the elastic part that there is in a test that ends before the window of any standard does."""
+    largest = float(loading.stress.max())
+    whole = "the largest stress"
+    narrow = _fit(
+        loading,
+        passage(loading.stress, *(share * largest for share in SHARES)),
+        f"10 % to 40 % of {whole}",
+        notes=(f"the test reached only {100 * reached:.2g} % strain: the window is taken of {whole}",),
+    )
+    return _widened(loading, narrow, largest, whole)
+
+
+def _widened(loading: Loading, narrow: Elastic, full: float, of: str) -> Elastic:
+    """Widen a window upwards as long as the curve is straight.
+
+    A window counts as straight if a parabola of strain over stress bends by no more than `STRAIGHT` of its
+    own standard uncertainties: the check of the residuals that ISO 6892-1's annex asks for [from memory].
+    The first window that bends ends the search.
+    """
+    found = narrow
+    for top in TOPS:
+        frames = passage(loading.stress, SHARES[0] * full, top * full)
+        rule = f"10 % to {100 * top:.0f} % of {of}, as far as the curve is straight"
+        wider = _fit(loading, frames, rule, notes=narrow.notes)
+        if bend_of(loading, frames) > STRAIGHT:
+            break
+        found = wider
     return found
 
 
