@@ -68,9 +68,10 @@ def _frame_rows(seen: FramesSeen) -> Iterable[tuple[str, str]]:
     yield "size", f"{seen.columns} × {seen.rows} px"
     yield "depth", f"{seen.depth_bits} bits in use, full scale {seen.full_scale:g}"
     yield "clock", seen.clock
-    yield "times", f"{seen.first_s:.4g} s to {seen.last_s:.4g} s"
-    yield "interval", _intervals(seen)
-    yield "gaps", _some([f"{one} to {other}" for one, other in seen.gaps])
+    if isfinite(seen.interval_s):
+        yield "times", f"{seen.first_s:.4g} s to {seen.last_s:.4g} s"
+        yield "interval", _intervals(seen)
+        yield "gaps in time", _some([f"{one} to {other}" for one, other in seen.gaps])
     yield "doubles", _some(seen.doubles)
     yield "unreadable", _some(seen.unreadable)
     yield "brightness drift", f"{seen.brightness_drift:.1%} at the most"
@@ -80,9 +81,10 @@ def _record_rows(seen: RecordSeen) -> Iterable[tuple[str, str]]:
     yield "file", seen.file
     yield "written as", seen.written
     yield "columns", _some(seen.headers, 12)
-    yield "rows used", str(seen.rows)
-    yield "times", f"{seen.first_s:.6g} s to {seen.last_s:.6g} s"
-    yield "interval", _intervals(seen)
+    yield "rows", str(seen.rows)
+    if isfinite(seen.interval_s):
+        yield "times", f"{seen.first_s:.6g} s to {seen.last_s:.6g} s"
+        yield "interval", _intervals(seen)
 
 
 def _intervals(seen: FramesSeen | RecordSeen) -> str:
@@ -108,7 +110,7 @@ def _show_exposures(seen: FramesSeen) -> None:
 
 
 def _show_columns(seen: RecordSeen) -> None:
-    table = Table(title="columns used", title_justify="left")
+    table = Table(title="columns", title_justify="left")
     for heading in ("quantity", "column", "lowest", "highest"):
         table.add_column(heading, justify="left" if heading in ("quantity", "column") else "right")
     for one in seen.columns:

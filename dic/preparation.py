@@ -103,7 +103,7 @@ def set_up(test: TestFile, source: FrameSource) -> Setup:
     first, last = source.reference(test.frames.reference)
     image = _mean(source, first, last)
     full_scale = source.full_scale()
-    known = _given_region(image.shape, test.gauge.region)
+    known = given_region(image.shape, test.gauge.region)
     coupon = find_coupon(image, test.gauge.axis_angle, known, given_coupon(test))
     mask, facing_notices = facing(coupon, test.specimen.shape, test.gauge.region == "auto")
     region = Region.around(mask, *axes(coupon.axis_angle_deg))
@@ -303,7 +303,7 @@ def given_coupon(test: TestFile) -> Given:
     return Given(said.edges, mask, said.holes, said.parallel)
 
 
-def _given_region(shape: tuple[int, ...], region: Any) -> NDArray[np.bool_] | None:
+def given_region(shape: tuple[int, ...], region: Any) -> NDArray[np.bool_] | None:
     """Mark the rectangle that the test file gives; None where it gives none."""
     if region == "auto":
         return None

@@ -222,3 +222,50 @@ def test_dates_on_both_sides_give_an_offset_to_look_at(laid_out, tmp_path):
     rows = "\n".join(f"2026-05-04 10:00:{k + 1.5:06.3f},{max(0, k - 3)}" for k in range(12))
     (tmp_path / "machine.csv").write_text(f"Time,Force (kN)\n{rows}\n")
     assert 'it would be "-1.5 s"' in inspect(path).overlap
+
+
+@pytest.mark.parametrize(
+    ("old", "new", "frames_timed"),
+    [('rate = "2 Hz"', 'rate = ""', False), ('force = "Force"', 'force = ""', True)],
+)
+def test_a_blank_key_hides_neither_input(laid_out, old, new, frames_timed):
+    found = inspect(laid_out((old, new)))
+    assert "fill in" in found.errors[0]
+    assert found.frames.count == 8
+    assert np.isfinite(found.frames.interval_s) == frames_timed
+    assert found.record.rows == 101
+
+
+def test_a_record_with_a_choice_of_forces_is_still_shown(laid_out, tmp_path):
+    path = laid_out(('force = "Force"', 'force = ""'))
+    rows = "".join(f"{k / 10},{k}.5,{2 * k}.5\n" for k in range(40))
+    (tmp_path / "machine.csv").write_text(f"Time (s),Force 1 (kN),Force 2 (kN)\n{rows}")
+    found = inspect(path)
+    assert [(one.quantity, one.high) for one in found.record.columns] == [
+        ("time", pytest.approx(3.9)), ("force", 39.5), ("force", 78.5)
+    ]  # fmt: skip
+    assert found.overlap == "unknown as long as the load record is not known"
+
+
+def test_what_a_run_would_refuse_at_once_is_an_error(laid_out):
+    found = inspect(laid_out(("[load_record]", "[gauge]\nregion = [0, 0, 31, 40]\n[load_record]")))
+    assert "not inside the picture" in found.errors[0]
+
+
+def test_bare_numbers_and_an_even_subset_are_assumed(laid_out):
+    found = inspect(
+        laid_out(
+            ('width = "10 mm"', "width = 10"),
+            ('rate = "2 Hz"', 'rate = "2"'),
+            ("[load_record]", "[correlation]\nsubset = 20\n[load_record]"),
+        )
+    )
+    assert "specimen.width has no unit, and 10 was read as 10 mm." in found.assumed
+    assert "frames.rate has no unit, and 2 was read as 2 Hz." in found.assumed
+    assert sum("has no unit" in one for one in found.assumed) == 2
+    assert any("correlation.subset = 20 is taken as 21" in one for one in found.assumed)
+
+
+def test_a_value_out_of_bounds_is_said_in_plain_words(laid_out):
+    found = inspect(laid_out(('thickness = "1 mm"', 'thickness = "0 mm"')))
+    assert "thickness: '0 mm' is not possible, it must be greater than 0" in found.errors[0]

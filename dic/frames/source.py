@@ -53,6 +53,11 @@ class FrameSource:
     epoch: datetime | None = None
     exposure_s: float | None = None
 
+    @property
+    def timed(self) -> bool:
+        """Whether the frames' times are known."""
+        return bool(np.isfinite(self.time_s).all())
+
     def __len__(self) -> int:
         return len(self.pages)
 

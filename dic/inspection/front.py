@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -11,10 +12,10 @@ import numpy as np
 from dic.errors import FrameError, InputError, Notice
 from dic.frames import FrameSource, check_damage, open_frames, unreadable_frames
 from dic.inspection.doubts import dimension_doubts, frame_doubts, missing_uncertainties, record_doubts
-from dic.inspection.looking import Progress, look_at_frames, look_at_record
-from dic.inspection.seen import FramesSeen, Inspection
+from dic.inspection.looking import Progress, look_at_frames, look_at_record, survey_record
+from dic.inspection.seen import FramesSeen, Inspection, RecordSeen
 from dic.sync import LoadRecord, known_clock, read_load_record
-from dic.testfile import Frames, Specimen, Sync, TestFile, load, sound_sections
+from dic.testfile import Frames, Specimen, Sync, TestFile, bare_quantities, load, sound_sections
 from dic.testfile import LoadRecord as RecordSection
 
 
@@ -55,15 +56,16 @@ def inspect(test: TestFile | str | Path, progress: Progress | None = None) -> In
         damage = {source.names.index(name): why for name, why in seen.unreadable.items()}
         warnings += unreadable_frames(source.names, damage)
         _attempt(lambda: _check_damage(damage, source, sections["frames"]), errors)
+        _attempt(lambda: _check_region(source, sections), errors)
     if record is not None:
         warnings += record_doubts(record)
     warnings += _specimen_doubts(sections, record, seen)
     return Inspection(
         test_file=str(path),
         frames=seen,
-        record=None if record is None else look_at_record(record, sections["load_record"]),
+        record=_seen_record(record, sections, path),
         overlap=_overlap(source, record, sections, errors, warnings),
-        assumed=tuple(assumptions(sections)),
+        assumed=(*bare_quantities(path), *assumptions(sections)),
         errors=tuple(errors),
         warnings=tuple(warnings),
     )
@@ -91,7 +93,13 @@ def _attempt(read: Callable[[], Any], errors: list[str]) -> Any:
 
 def _opened_frames(sections: dict[str, Any], path: Path) -> FrameSource | None:
     section: Frames | None = sections.get("frames")
-    return None if section is None else open_frames(section, path.parent)
+    if section is None:
+        return None
+    if section.rate or section.times or section.clock or section.own_times:
+        return open_frames(section, path.parent)
+    # Whatever else the frames are can be told without a clock.
+    source = open_frames(section.model_copy(update={"rate": 1.0}), path.parent)
+    return replace(source, time_s=np.full(len(source), np.nan), notices=())
 
 
 def _check_damage(damage: dict[int, str], source: FrameSource, section: Frames) -> None:
@@ -105,6 +113,25 @@ def _check_damage(damage: dict[int, str], source: FrameSource, section: Frames) 
                 where=source.names[index],
                 remedy="strain counts from it, so say another one with frames.reference",
             )
+
+
+def _check_region(source: FrameSource, sections: dict[str, Any]) -> None:
+    """Refuse a gauge region outside the picture."""
+    gauge = sections.get("gauge")
+    if gauge is not None and gauge.region != "auto":
+        from dic.preparation import given_region  # the correlation behind it takes a moment to load
+
+        given_region(source.shape, gauge.region)
+
+
+def _seen_record(record: LoadRecord | None, sections: dict[str, Any], path: Path) -> RecordSeen | None:
+    """Return what the record holds; of one that cannot be used yet what can be told without the test file."""
+    section: RecordSection | None = sections.get("load_record")
+    if section is None:
+        return None
+    if record is not None:
+        return look_at_record(record, section)
+    return _attempt(lambda: survey_record(path.parent / section.source, section), [])
 
 
 def _opened_record(sections: dict[str, Any], path: Path) -> LoadRecord | None:
@@ -137,8 +164,9 @@ def _overlap(
     warnings: list[Notice],
 ) -> str:
     """Say how frames and record lie on one clock, as far as that is known before tracking."""
-    if source is None or record is None:
-        return "unknown, because one of the two cannot be read"
+    if source is None or record is None or not source.timed:
+        missing = "the load record" if source is not None and source.timed else "the frames' clock"
+        return f"unknown as long as {missing} is not known"
     section: Sync = sections.get("sync") or Sync()
     filmed = float(source.time_s[-1] - source.time_s[0]) * (1 + section.assumed_drift)
     recorded = float(record.time_s[-1] - record.time_s[0])
@@ -204,7 +232,10 @@ def assumptions(sections: dict[str, Any]) -> Iterator[str]:
         yield "Strain is averaged over the whole textured part of the coupon (gauge.region)."
     if gauge is None or gauge.length is None:
         yield "No extensometer length is asked for: its reading covers the whole region (gauge.length)."
-    if correlation is not None:
+    if correlation is not None and correlation.subset % 2 == 0:
+        taken = correlation.subset + 1
+        yield f"A patch has a middle pixel: correlation.subset = {correlation.subset} is taken as {taken}."
+    elif correlation is not None:
         yield f"Patches of {correlation.subset} px are followed (correlation.subset)."
     if sync is None or sync.offset == "auto":
         yield "The clocks are joined where loading starts; some rest must be filmed first (sync.offset)."

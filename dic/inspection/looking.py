@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -13,7 +14,7 @@ from dic.frames import FrameSource
 from dic.frames.doubts import gaps, same_picture
 from dic.inspection.seen import ColumnSeen, Exposure, FramesSeen, RecordSeen
 from dic.sync import LoadRecord
-from dic.sync import look_at_record as survey_record
+from dic.sync import look_at_record as tell_of_record
 from dic.testfile import Frames
 from dic.testfile import LoadRecord as RecordSection
 
@@ -91,7 +92,7 @@ def _clock_in_words(section: Frames) -> str:
     if section.times is not None:
         return f"the file {section.times}"
     if section.rate is None and section.clock is None:
-        return "the video's own times"
+        return "the video's own times" if section.own_times else "not said yet"
     if section.clock is None:
         return f"a fixed rate of {section.rate:g} Hz"
     said = {
@@ -122,7 +123,7 @@ def look_at_record(record: LoadRecord, section: RecordSection) -> RecordSeen:
             there = values[np.isfinite(values)]
             low, high = (float(there.min()), float(there.max())) if there.size else (np.nan, np.nan)
             columns.append(ColumnSeen(quantity, record.columns.get(quantity, quantity), low, high, unit))
-    survey = survey_record(record.path, section.sheet, section.decimal)
+    survey = tell_of_record(record.path, section.sheet, section.decimal)
     return RecordSeen(
         file=str(record.path),
         rows=len(record.time_s),
@@ -132,6 +133,27 @@ def look_at_record(record: LoadRecord, section: RecordSection) -> RecordSeen:
         shortest_s=float(step.min()),
         longest_s=float(step.max()),
         columns=tuple(columns),
+        written=survey.in_words(),
+        headers=tuple(column.header for column in survey.columns),
+    )
+
+
+def survey_record(path: Path, section: RecordSection) -> RecordSeen:
+    """Return what a load record holds whose columns are not all known yet."""
+    survey = tell_of_record(path, section.sheet, section.decimal)
+    usual, shortest, longest = survey.interval_s
+    return RecordSeen(
+        file=str(path),
+        rows=survey.rows,
+        first_s=survey.start_s,
+        last_s=survey.end_s,
+        interval_s=usual,
+        shortest_s=shortest,
+        longest_s=longest,
+        columns=tuple(
+            ColumnSeen(one.quantity or "not told", one.header, one.low, one.high, one.unit or "")
+            for one in survey.columns
+        ),
         written=survey.in_words(),
         headers=tuple(column.header for column in survey.columns),
     )

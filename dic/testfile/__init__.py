@@ -2,7 +2,7 @@
 
 from dic.testfile.gauges import GaugeName, NamedGauge, Place
 from dic.testfile.properties import PRESETS, ModulusWindow, Properties
-from dic.testfile.reading import MAX_BYTES, load, read_toml, sound_sections
+from dic.testfile.reading import MAX_BYTES, bare_quantities, load, read_toml, sound_sections
 from dic.testfile.sections import (
     VIDEO_ENDINGS,
     Alignment,
@@ -44,6 +44,7 @@ __all__ = [
     "Specimen",
     "Sync",
     "TestFile",
+    "bare_quantities",
     "in_px",
     "load",
     "quantity",

@@ -4,16 +4,19 @@ from __future__ import annotations
 
 import re
 import tomllib
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from contextlib import suppress
+from functools import partial
 from pathlib import Path
 from textwrap import shorten
 from types import NoneType
 from typing import Any, TypeVar, get_args, get_origin
 
-from pydantic import BaseModel, ValidationError
+from pydantic import BaseModel, BeforeValidator, ValidationError
 
 from dic.errors import TestFileError, nearest
+from dic.quantities import UNITS
+from dic.testfile.sections import Frames
 from dic.testfile.values import (
     Section,
 )
@@ -89,7 +92,7 @@ def sound_sections(path: Path) -> dict[str, Section]:
     Returns
     -------
     dict
-        Each section that is right by itself, under its name.
+        Each section that is right by itself, keys that are left blank set aside, under its name.
 
     Raises
     ------
@@ -100,9 +103,58 @@ def sound_sections(path: Path) -> dict[str, Section]:
     sections: dict[str, Section] = {}
     for name, field in TestFile.model_fields.items():
         if isinstance(model := field.annotation, type) and issubclass(model, Section) and name in content:
+            said = _without_blanks(content[name])
             with suppress(ValidationError):
-                sections[name] = model.model_validate(content[name])
+                sections[name] = model.model_validate(said)
+            if model is Frames and name not in sections:
+                with suppress(ValidationError, TypeError):  # only the clock may be missing
+                    sections[name] = model.model_validate(said | {"rate": 1.0}).model_copy(
+                        update={"rate": None}
+                    )
     return sections
+
+
+def _without_blanks(said: Any) -> Any:
+    if not isinstance(said, dict):
+        return said
+    return {key: _without_blanks(value) for key, value in said.items() if value != ""}
+
+
+def bare_quantities(path: Path) -> Iterator[str]:
+    """Say which quantities are written without a unit, and which one they were taken to have.
+
+    Parameters
+    ----------
+    path
+        The test file.
+
+    Raises
+    ------
+    TestFileError
+        If the file is missing or is not TOML.
+    """
+    for name, said in _content(path).items():
+        field = TestFile.model_fields.get(name)
+        model = field.annotation if field else None
+        if not (isinstance(said, dict) and isinstance(model, type) and issubclass(model, Section)):
+            continue
+        for key, written in said.items():
+            unit = UNITS.get(_kind_of(model.model_fields[key]), "") if key in model.model_fields else ""
+            with suppress(ValueError, TypeError):
+                if unit and not isinstance(written, bool):
+                    bare = f"{float(written):g}"
+                    yield f"{name}.{key} has no unit, and {bare} was read as {bare} {unit}."
+
+
+def _kind_of(field: Any) -> str:
+    """Return the kind of quantity that a key holds; empty where it holds none."""
+    parts = [field.annotation, *field.metadata]
+    while parts:
+        part = parts.pop()
+        if isinstance(part, BeforeValidator) and isinstance(part.func, partial):
+            return str(part.func.args[0])
+        parts += get_args(part)
+    return ""
 
 
 #: A mistyped key also makes the right one missing, and a choice complains of every alternative.
@@ -129,6 +181,11 @@ def _explain(error: ValidationError, model: type[BaseModel], path: Path) -> Test
         kind = "key" if sections else "section"
         return TestFileError(f"the {kind} '{key}' is missing", where=where, remedy="add it")
     what = first["msg"].removeprefix("Value error, ")
+    if what.startswith("Input should"):
+        found = shorten(f"{first['input']}", 60, placeholder=" …")
+        what = what.partition(", unable")[0].replace(
+            "Input should be", f"'{found}' is not possible, it must be", 1
+        )
     what = what[:1].lower() + what[1:] if not what.startswith("'") else what
     return TestFileError(f"{key}: {what}" if sections else what, where=where)
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from functools import partial
 from typing import Annotated, Any, Literal
 
 from pydantic import AfterValidator, BaseModel, BeforeValidator, ConfigDict, Field
@@ -17,7 +18,11 @@ LONGEST_NAME, LONGEST_PATH = 255, 1000
 
 def quantity(kind: str) -> BeforeValidator:
     """Return the validator of a quantity that people may write with its unit."""
-    return BeforeValidator(lambda written: parse(_filled_in(written, EXAMPLES[kind]), kind))
+    return BeforeValidator(partial(_read_quantity, kind))
+
+
+def _read_quantity(kind: str, written: Any) -> float:
+    return parse(_filled_in(written, EXAMPLES[kind]), kind)
 
 
 def _filled_in(written: Any, example: str) -> Any:

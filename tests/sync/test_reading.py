@@ -144,7 +144,7 @@ def test_bytes_that_break_further_down(write):
 @pytest.mark.parametrize(
     ("content", "said"),
     [("", "is empty"), ("\n", "is empty"), (",,\n1,2,3\n", "no line of column headers"),
-     ("Time (s),Force (N)\n" + "".join(f"{k},n/a\n" for k in range(9)), "column 'Force (N)': the column holds no")],
+     ("Time (s),Force (N)\n" + "".join(f"{k},n/a\n" for k in range(9)), "holds no numbers")],
 )  # fmt: skip
 def test_nothing_to_read(tmp_path, content, said):
     path = tmp_path / "machine.csv"
