@@ -200,16 +200,24 @@ def _grid(test: TestFile, mask: NDArray[np.bool_], region: Region, length: float
         wanted[rows[here], columns[here]] = True
     grid = lay_grid(wanted, subset, settings.step or max(subset // 3, 1))
     if not grid.inside.any():
-        smaller = _largest_subset(wanted)
+        smaller, area = _largest_subset(wanted), _narrowed_by(test)
         cure = (
             f"set correlation.subset to {smaller} or less" if smaller >= LEAST_SUBSET else "check the pattern"
         )
         raise PatternError(
-            f"no subset of {subset} px fits on the textured area inside the region",
-            where="gauge.region and correlation.subset",
-            remedy=f"enlarge the region, or {cure}",
+            f"no subset of {subset} px fits on what {area} leaves of the textured area",
+            where=f"{area} and correlation.subset",
+            remedy=f"enlarge it, or {cure}",
         )
     return grid
+
+
+def _narrowed_by(test: TestFile) -> str:
+    """Return which key says where subsets may lie."""
+    if test.gauge.region != "auto":
+        return "gauge.region"
+    given = next((key for key in ("mask", "parallel", "edges", "holes") if getattr(test.coupon, key)), None)
+    return f"coupon.{given}" if given else "gauge.region"
 
 
 def _largest_subset(mask: NDArray[np.bool_]) -> int:
@@ -330,4 +338,11 @@ def _gauge_length(test: TestFile, scale_mm: float) -> float | None:
             where="gauge.length",
             remedy='give camera.scale, for example "0.021 mm/px"',
         )
-    return test.gauge.length / scale_mm
+    length, least = test.gauge.length / scale_mm, 2 * test.correlation.subset
+    if length < least:
+        raise TestFileError(
+            f"{test.gauge.length:g} mm is {length:.0f} px, shorter than two subsets",
+            where="gauge.length",
+            remedy=f"make it {least * scale_mm:.3g} mm or longer, or lower correlation.subset",
+        )
+    return length

@@ -149,7 +149,13 @@ def _area(grey: NDArray[np.float32], region: Mask | None, given: Given) -> Mask:
             where="coupon.edges",
             remedy="give one edge on each side of the coupon",
         )
-    return textured_area(grey, strip if region is None else strip & region) & strip
+    try:
+        return textured_area(grey, strip if region is None else strip & region) & strip
+    except PatternError as error:
+        if region is not None or error.where != "gauge.region":
+            raise
+        # The strip stands in for a region that nobody gave.
+        raise PatternError(error.what, where="coupon.edges", remedy=error.remedy) from error
 
 
 def _edges(

@@ -298,9 +298,9 @@ def _contrast(measurement: Measurement) -> Drawing:
         _panel(axes, measurement, 100 * values, title, tall)
     reading = (
         "Local axial strain less that of the point opposite, halved, in percent of the mean strain: "
-        f"{places[0]} mirrored at the coupon's axis, {places[1]} at the middle of its length. "
-        "Brown is strained more than its mirror image, blue less. A smooth change from edge to edge is bending or taper; a "
-        "spot is a local weakness; even mottling is noise."
+        f"{places[0]} mirrored at the coupon's axis, {places[1]} at the middle of its length. Brown is "
+        "strained more than its mirror image, blue less. A smooth change from edge to edge is bending or "
+        "taper; a spot is a local weakness; even mottling is noise."
     )
     alt = "Contrast maps of axial strain over the photograph: side against side, and end against end."
     return Drawing("alignment-contrast", "What is not symmetric", reading, alt, figure, vector=False)

@@ -6,7 +6,8 @@ from PIL import Image
 
 from dic.errors import PatternError, TestFileError
 from dic.pattern import Given, find_coupon
-from dic.preparation import given_coupon
+from dic.preparation import _gauge_length, _grid, given_coupon
+from dic.strain import Region
 from dic.testfile import TestFile
 from synthetic_images import Camera, Coupon, Dots, rigid
 
@@ -129,3 +130,42 @@ def test_a_mask_that_cannot_be_read_is_named(tmp_path, name):
     (tmp_path / "text.txt").write_text("no picture", encoding="utf-8")
     with pytest.raises(TestFileError, match=rf"coupon\.mask: the mask .*{name} .*grey picture of 8 bits"):
         given_coupon(said(tmp_path, name))
+
+
+def test_edges_beside_the_coupon_are_named_and_not_a_region_that_nobody_gave(image):
+    beside = Given(edges=((5.0, 10.0, 5.0, 290.0), (35.0, 10.0, 35.0, 290.0)))
+    with pytest.raises(PatternError, match=r"coupon\.edges: holds nothing .* lies in x 5\d to 18\d"):
+        find_coupon(image, given=beside)
+
+
+def wanted(**sections):
+    return TestFile.model_validate(
+        {
+            "path": "test.toml",
+            "specimen": {"width": "10 mm", "thickness": "1 mm"},
+            "frames": {"source": "frames", "rate": "1 Hz"},
+            "load_record": {"source": "machine.csv"},
+            **sections,
+        }
+    )
+
+
+def test_a_gauge_length_of_less_than_two_subsets_is_refused():
+    """1 mm at 0.05 mm/px is 20 px; two subsets of 31 px are 3.1 mm."""
+    with pytest.raises(TestFileError, match=r"gauge\.length: 1 mm is 20 px.*make it 3\.1 mm or longer"):
+        _gauge_length(wanted(gauge={"length": "1 mm"}), 0.05)
+
+
+@pytest.mark.parametrize(
+    ("sections", "named"),
+    [
+        ({"coupon": {"parallel": (1.0, 2.0, 3.0, 4.0)}}, "coupon.parallel"),
+        ({"gauge": {"region": (1.0, 2.0, 30.0, 40.0)}}, "gauge.region"),
+    ],
+)
+def test_where_no_subset_fits_the_key_that_says_where_is_named(sections, named):
+    mask = np.zeros(SHAPE, bool)
+    mask[100:120, 100:120] = True
+    region = Region(np.array([110.0, 110.0]), 20.0, 20.0, np.array([0.0, -1.0]), np.array([1.0, 0.0]))
+    with pytest.raises(PatternError, match=rf"^{named} and correlation.subset: .*set .* to 19 or less"):
+        _grid(wanted(**sections), mask, region, None)
