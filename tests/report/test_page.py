@@ -173,20 +173,19 @@ def test_moments_are_explained(page):
     assert "Frame 66 (cam_00066.tif)" in page.text
 
 
-HOSTILE = [
-    "<script>alert(1)</script> ]]>&--><!-- $\\frac$ {{ 7 * 7 }} \x07\x0b",
-    "試験片 № 5 \"><img src=x onerror='alert(1)'>" + "very-long-" * 30,
-]
+HOSTILE = (
+    "<script>alert(1)</script> ]]>&--><!-- $\\frac$ {{ 7 * 7 }} \x07\x0b"
+    "試験片 № 5 \"><img src=x onerror='alert(1)'>" + "very-long-" * 30
+)
 
 
-@pytest.mark.parametrize("label", HOSTILE)
-def test_a_hostile_label_stays_text(measurement, fields, tmp_path, label):
-    write_report(relabelled(measurement, label), fields, tmp_path)
+def test_a_hostile_label_stays_text(measurement, fields, tmp_path):
+    write_report(relabelled(measurement, HOSTILE), fields, tmp_path)
     page = Page((tmp_path / "report.html").read_text(encoding="utf-8"))
     assert page.all("script") == []
     assert len(page.all("img")) == len(list((tmp_path / "figures").glob("*.svg")))
     assert not [attrs for _, attrs in page.elements if "onerror" in attrs]
-    assert " ".join(label.split()) in page.text
+    assert " ".join(HOSTILE.split()) in page.text
     for head, data in pictures_in(page):
         if "svg" in head:
             assert b"<script" not in data
