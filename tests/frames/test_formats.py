@@ -371,3 +371,24 @@ def test_numbers_that_are_no_brightness_are_refused(folder, write_one, ending, s
         write_one(folder / "frames" / f"f{k}.{ending}")
     with pytest.raises(FrameError, match=said):
         opened(folder)
+
+
+def test_a_video_of_which_nothing_can_be_decoded_is_said(folder):
+    """Cut off within its first frame."""
+    film(folder / "test.avi", [picture() for _ in range(4)], "ffv1")
+    whole = (folder / "test.avi").read_bytes()
+    at = whole.index(b"movi")
+    (folder / "test.avi").write_bytes(whole[: at + 200])
+    with pytest.raises(FrameError, match="none of its frames can be decoded"):
+        open_frames(Frames(source="test.avi"), folder)
+
+
+def test_frames_at_rest_in_a_video_with_loss_are_measured(folder):
+    """Of a picture that does not change such a codec sends nothing, so that it decodes to the same values."""
+    image = picture()
+    film(folder / "test.mp4", [picture(), image, image, image], "mpeg4", form="yuv420p")
+    source = open_frames(Frames(source="test.mp4"), folder)
+    watch = source.watch()
+    assert source.lossy
+    assert not any(watch.frozen(source[k]) for k in range(4))
+    assert watch.repeats > 0
