@@ -269,3 +269,10 @@ def test_bare_numbers_and_an_even_subset_are_assumed(laid_out):
 def test_a_value_out_of_bounds_is_said_in_plain_words(laid_out):
     found = inspect(laid_out(('thickness = "1 mm"', 'thickness = "0 mm"')))
     assert "thickness: '0 mm' is not possible, it must be greater than 0" in found.errors[0]
+
+
+def test_a_named_gauge_outside_the_picture_is_an_error(laid_out):
+    gauge = '[gauges.neck]\nkind = "line"\nfrom = [5, 5]\nto = [31, 5]\n[load_record]'
+    assert "gauges.neck: [31, 5] px is not inside" in inspect(laid_out(("[load_record]", gauge))).errors[0]
+    ok = gauge.replace("31", "29")
+    assert inspect(laid_out(("[load_record]", ok))).errors == ()

@@ -9,7 +9,7 @@ from typing import Any
 
 import numpy as np
 
-from dic.errors import FrameError, InputError, Notice
+from dic.errors import FrameError, InputError, Notice, TestFileError
 from dic.frames import FrameSource, check_damage, open_frames, unreadable_frames
 from dic.inspection.doubts import dimension_doubts, frame_doubts, missing_uncertainties, record_doubts
 from dic.inspection.looking import Progress, look_at_frames, look_at_record, survey_record
@@ -56,7 +56,7 @@ def inspect(test: TestFile | str | Path, progress: Progress | None = None) -> In
         damage = {source.names.index(name): why for name, why in seen.unreadable.items()}
         warnings += unreadable_frames(source.names, damage)
         _attempt(lambda: _check_damage(damage, source, sections["frames"]), errors)
-        _attempt(lambda: _check_region(source, sections), errors)
+        _attempt(lambda: _check_places(source, sections), errors)
     if record is not None:
         warnings += record_doubts(record)
     warnings += _specimen_doubts(sections, record, seen)
@@ -115,13 +115,23 @@ def _check_damage(damage: dict[int, str], source: FrameSource, section: Frames) 
             )
 
 
-def _check_region(source: FrameSource, sections: dict[str, Any]) -> None:
-    """Refuse a gauge region outside the picture."""
+def _check_places(source: FrameSource, sections: dict[str, Any]) -> None:
+    """Refuse a gauge region, or a named gauge's place, outside the picture."""
     gauge = sections.get("gauge")
     if gauge is not None and gauge.region != "auto":
         from dic.preparation import given_region  # the correlation behind it takes a moment to load
 
         given_region(source.shape, gauge.region)
+    for name, named in (sections.get("gauges") or {}).items():
+        for place in (named.start, named.end, named.centre, *(named.points or ())):
+            if place is None or isinstance(place[0], str):  # lengths count from what is only found by a run
+                continue
+            if not (0 <= place[0] < source.shape[1] and 0 <= place[1] < source.shape[0]):
+                raise TestFileError(
+                    f"[{place[0]:g}, {place[1]:g}] px is not inside the picture",
+                    where=f"gauges.{name}",
+                    remedy=f"the picture is {source.shape[1]} px wide and {source.shape[0]} px high",
+                )
 
 
 def _seen_record(record: LoadRecord | None, sections: dict[str, Any], path: Path) -> RecordSeen | None:

@@ -105,7 +105,7 @@ def test_numbers_of_frames_are_no_names(folder):
         ("time\n0\n1\n2\n", "says no unit"),
         ("clock\n0\n1\n2\n", "no column 'time'"),
         ("time (kg)\n0\n1\n2\n", "'kg' is not a unit"),
-        ("", "no line of column headers"),
+        ("", "is empty"),
         ("frame,time (s)\nf0.tif,0\nf1.tif,1\nf3.tif,2\n", "has no row for frame f2.tif"),
         ("time (s),frame\n0,f0.tif\n1,f1.tif\n", "has no row for frame f2.tif"),
         ("frame,time (s)\na0.tif,0\na1.tif,1\na2.tif,2\n", "has no row for frame f0.tif and 2 more"),
