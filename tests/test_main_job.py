@@ -15,7 +15,11 @@ DEMO = {"youngs_modulus": 0.3, "poissons_ratio": 1.0, "proof_stress_0_2": 0.5, "
 GRAVEL = {"youngs_modulus": 0.5, "poissons_ratio": 1.5}
 
 
-@pytest.fixture(scope="module", params=["demo", "gravel"])
+#: Each on one worker only, where the tests are spread over several.
+RENDERED = [pytest.param(name, marks=pytest.mark.xdist_group(name)) for name in ("demo", "gravel")]
+
+
+@pytest.fixture(scope="module", params=RENDERED)
 def rendered(request, tmp_path_factory):
     folder = tmp_path_factory.mktemp(request.param)
     test = render(load_scenario(scenarios()[request.param]), folder / "test")

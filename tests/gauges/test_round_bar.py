@@ -9,6 +9,9 @@ import dic
 from synthetic_images import homogeneous, load_scenario, render
 from synthetic_images.coupon import Coupon
 
+#: What the tests share is made once, also where workers share the tests.
+pytestmark = pytest.mark.xdist_group("round bar")
+
 RADIUS, CENTRE = 65.0, (89.5, 129.5)
 
 

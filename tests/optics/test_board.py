@@ -9,6 +9,9 @@ from dic.errors import TestFileError
 from dic.optics import calibrate
 from dic.testfile import Board
 
+#: What the tests share is made once, also where workers share the tests.
+pytestmark = pytest.mark.xdist_group("boards")
+
 SHAPE = (480, 640)
 MATRIX = np.array([[1500.0, 0, 330.0], [0, 1500.0, 235.0], [0, 0, 1]])
 LENS = np.array([-0.4, 0.0, 0.0, 0.0, 0.0])

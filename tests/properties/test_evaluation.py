@@ -14,6 +14,9 @@ from dic.properties import doubts, evaluate
 from dic.sync import LoadRecord
 from dic.testfile import ModulusWindow, Properties, Specimen
 
+#: What the tests share is made once, also where workers share the tests.
+pytestmark = pytest.mark.xdist_group("evaluation")
+
 SHEET = Properties(proof=(0.002, 0.001))
 
 

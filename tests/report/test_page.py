@@ -16,6 +16,9 @@ from dic.report import write_report
 from dic.store.folder import FIGURES
 from dic.store.tables import called, found_in, stated
 
+#: What the tests share is made once, also where workers share the tests.
+pytestmark = pytest.mark.xdist_group("page")
+
 # Elements that HTML leaves without an end tag (WHATWG HTML, "Void elements").
 VOID = {"meta", "img", "br", "hr", "link", "input", "area", "base", "col", "embed", "source", "track", "wbr"}
 

@@ -12,6 +12,9 @@ from dic.strain import GaugeReader, Region
 from synthetic_images import Camera, Coupon, Dots
 from synthetic_images.motions import Displacement
 
+#: What the tests share is made once, also where workers share the tests.
+pytestmark = pytest.mark.xdist_group("necking")
+
 SHAPE, WIDTH, SUBSET, LENGTH = (280, 140), 92.0, 21, 130.0
 CENTRE = ((SHAPE[1] - 1) / 2, (SHAPE[0] - 1) / 2)
 #: The neck's half length, and the radius of what is out of sight at either edge, px.
