@@ -13,7 +13,7 @@ from dic.correlation.matching import Match
 from dic.gauges.placing import Placed
 from dic.gauges.probes import Subsets
 from dic.gauges.reading import FrameReadings, NamedReader
-from dic.gauges.silhouette import Silhouette, Widths
+from dic.gauges.silhouette import Silhouette, Widths, pattern_px
 from dic.strain.history import GaugeHistory
 from dic.strain.periodic import Periodic
 
@@ -36,7 +36,8 @@ class NamedHistory:
         Where it sits.
     strain, u_strain
         Engineering strain ΔL/L₀ (an angle for ``component = "shear"``) and its standard uncertainty from
-        grey noise, shape (n,); the mean where the gauge has several stations.  NaN where lost.
+        grey noise, between the edges from the pattern on them too, shape (n,);
+        the mean where the gauge has several stations.  NaN where lost.
     status
         ``"ok"``, or the reason why there is no reading.
     parts, u_parts
@@ -126,7 +127,7 @@ class NamedReadings:
         return histories
 
     def _between_edges(self, gauge: Placed, along_px: tuple[float, float], length_mm: float) -> NamedHistory:
-        strain, u, lost = self._edge_strain(along_px)
+        strain, u, _, lost = self._edge_strain(along_px)
         status = tuple(
             _said(count, len(self._stations(along_px))) if np.isfinite(one) else UNCLEAR
             for one, count in zip(strain, lost, strict=True)
@@ -138,15 +139,25 @@ class NamedReadings:
         """Take the transverse strain from the width between the edges, where it is followed.
 
         On a round bar the pattern's own transverse strain is that of a narrow, curved band; the edges show
-        the diameter.  Before a cluttered background they do not, and nothing stands in for them.
+        the diameter.  Before a cluttered background they do not, and nothing stands in for them.  What the
+        pattern does to the edges stays with it from frame to frame, so that it is an error of all frames as
+        much as a scatter of each.
         """
         if self._silhouette is None:
             return history
         if not self._silhouette.plain:
             nowhere = np.full_like(history.transverse, np.nan)
             return replace(history, transverse=nowhere, u_transverse=nowhere)
-        strain, u, _ = self._edge_strain(self._silhouette.range_px)
-        return replace(history, transverse=strain, u_transverse=u)
+        strain, u, pattern, _ = self._edge_strain(self._silhouette.range_px)
+        # The interpolation between pixels has no part in it.
+        left = None if history.left_transverse is None else np.zeros_like(history.left_transverse)
+        return replace(
+            history,
+            transverse=strain,
+            u_transverse=u,
+            left_transverse=left,
+            left_edges=np.nan_to_num(pattern),
+        )
 
     def _stations(self, along_px: tuple[float, float]) -> NDArray[np.intp]:
         """Return the stations between two places at which the reference shows both edges clearly."""
@@ -154,8 +165,8 @@ class NamedReadings:
         seen = np.isfinite(self._silhouette.reference.px)
         return np.flatnonzero(seen & self._silhouette.stations(*along_px))
 
-    def _edge_strain(self, along_px: tuple[float, float]) -> tuple[Floats, Floats, list[int]]:
-        """Return the mean change of width per width between two places, its u, and stations lost."""
+    def _edge_strain(self, along_px: tuple[float, float]) -> tuple[Floats, Floats, Floats, list[int]]:
+        """Return the mean change of width per width, its u, the pattern's part in that, and stations lost."""
         assert self._silhouette is not None  # noqa: S101  (gauges between edges are placed on it)
         here = self._stations(along_px)
         first = self._silhouette.reference.px[here]
@@ -165,12 +176,17 @@ class NamedReadings:
         count = seen.sum(axis=1)
         enough = count >= max(LEAST_SEEN * len(here), 1)
         # Each station against itself: what the pattern does to the edge's place stays out of it.
-        change = np.where(seen, (measured - first) / first, 0.0).sum(axis=1)
-        spread = np.sqrt(np.where(seen, (own / first) ** 2, 0.0).sum(axis=1)) * np.array(self._noise)
+        change = np.where(seen, measured - first, np.nan)
+        noise = np.where(seen, own, np.nan) * np.array(self._noise)[:, None]
         few = np.maximum(count, 1)
+        strain = np.nansum(change / first, axis=1) / few
+        grey = np.sqrt(np.nansum((noise / first) ** 2, axis=1)) / few
+        along, width = self._silhouette.along[here], float(first.mean()) if here.size else np.nan
+        pattern = np.array([pattern_px(along, *one) for one in zip(change, noise, strict=True)]) / width
         return (
-            np.where(enough, change / few, np.nan),
-            np.where(enough, spread / few, np.nan),
+            np.where(enough, strain, np.nan),
+            np.where(enough, np.hypot(grey, pattern), np.nan),
+            np.where(enough, pattern, np.nan),
             (len(here) - count).tolist(),
         )
 

@@ -4,7 +4,8 @@ Rays cross each edge where its material points lie in the frame.  The area under
 background to coupon, divided by the step, is where the edge stands; an area does not change with the
 edge's place between two pixels, nor with the lens' blur (moment-preserving edges, Tabatabai and
 Mitchell 1984, doi 10.1109/TPAMI.1984.4767502 [from memory]).  A pattern on the coupon makes each place
-of the edge uncertain, but moves with it, so that it hardly enters the change of width.
+of the edge uncertain, but moves with it, so that it hardly enters the change of width; where it does,
+as on a bar whose rim squeezes it together, stations scatter by more than the grey noise.
 """
 
 from __future__ import annotations
@@ -41,6 +42,14 @@ PITCH_PX = 0.5
 #: Pixels whose noise enters one ray's place: those of the zone, and those of the two levels; rays one px
 #: apart share none.
 NOISE_PX = 2 * ZONE_PX - FADE_PX / 3 + 2 * ZONE_PX**2 / LEVEL_PX
+#: The share of them in the zone: the levels are common to all stations, whose scatter does not show theirs.
+ZONE_SHARE = (2 * ZONE_PX - FADE_PX / 3) / NOISE_PX
+#: The pattern's variance in zone and inner level over that in the zone; the background carries none of it.
+PATTERN_LEVEL = (1 + ZONE_SHARE) / (2 * ZONE_SHARE)
+#: With fewer stations their scatter tells nothing, and what a round bar's pattern does to one of them at a
+#: strain of 0.6 % stands for it, px.
+LEAST_STATIONS = 4
+USUAL_PX = 0.1
 #: A zone shrinks to this share at the least: the lens' blur must fit in.
 LEAST_SCALE = 0.5
 #: Sides are told apart only where their grey differs by this many times the noise.
@@ -281,6 +290,29 @@ def clear(widths: Widths, noise_grey: float) -> Widths:
     # Of two edges with a step of this size.
     faint = ~(widths.u_per_grey < sqrt(2 * NOISE_PX / BLOCK) / (LEAST_STEP * noise_grey))
     return Widths(np.where(faint, np.nan, widths.px), np.where(faint, np.nan, widths.u_per_grey))
+
+
+def pattern_px(along: Floats, change: Floats, noise: Floats) -> float:
+    """Return the standard uncertainty of the stations' mean from the pattern on the edges, px.
+
+    The pattern draws each station's edges aside by its own speckles: stations 16 px apart share none.  So
+    their scatter about a straight line (the coupon may taper) beyond the grey noise tells it.
+
+    Parameters
+    ----------
+    along
+        Places of the stations, px, shape (k,).
+    change, noise
+        Change of the width at each since the reference, NaN where lost, and its standard uncertainty from
+        grey noise, px.
+    """
+    there = np.isfinite(change)
+    count = int(there.sum())
+    if count < LEAST_STATIONS:
+        return USUAL_PX / sqrt(max(count, 1))
+    scatter = change[there] - _line_through(along, change)[there]
+    beyond = float(scatter @ scatter) / (count - 2) - ZONE_SHARE * float(np.mean(noise[there] ** 2))
+    return sqrt(max(PATTERN_LEVEL * beyond, 0.0) / count)
 
 
 def mean_motion(places: NDArray[np.integer | np.floating], moved: Floats, centre: Floats) -> Floats:

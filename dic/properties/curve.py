@@ -88,6 +88,7 @@ def make_curve(
         dense=Dense(record.time_s, record.sound_N, record.noise_N),
         left_axial=history.left_axial,
         left_transverse=history.left_transverse,
+        left_edges=history.left_edges,
         u_axis_deg=u_axis_deg,
     )
 

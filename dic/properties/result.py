@@ -88,7 +88,7 @@ class Curve:
     axial, transverse
         Engineering strains.
     u_axial, u_transverse
-        Standard uncertainties of the strains from grey noise.
+        Standard uncertainties of the strains, see `dic.strain.history`.
     area_mm2
         Original cross-section S0.
     peak_force_N, u_peak_force_N
@@ -116,9 +116,9 @@ class Curve:
         the end; 0 where it was taken off, None where nothing is known about it.
     straightened
         Whether the lens' distortion was taken off.
-    left_axial, left_transverse
-        What may be left of the interpolation's error in the strains, see `dic.strain.history`; None where
-        unknown.
+    left_axial, left_transverse, left_edges
+        What may be left of the interpolation's error in the strains, and of the pattern's on the edges, see
+        `dic.strain.history`; None where unknown.
     u_axis_deg
         Standard uncertainty of the axis' direction, deg; NaN where unknown.
     """
@@ -145,6 +145,7 @@ class Curve:
     straightened: bool = False
     left_axial: Floats | None = None
     left_transverse: Floats | None = None
+    left_edges: Floats | None = None
     u_axis_deg: float = nan
 
 

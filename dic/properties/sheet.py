@@ -264,6 +264,11 @@ class Sheet:
             found["axis angle"] = change(read, self.loading, of_axis(self.loading, self.curve.u_axis_deg))
         if self._left:
             found["interpolation"] = changes(read, self.loading, self._left)
+        if self.curve.left_edges is not None:
+            across = self.curve.left_edges[self.loading.rows]
+            found["pattern on the edges"] = change(
+                read, self.loading, FalseStrain(np.zeros_like(across), across)
+            )
         return found
 
     def of_window(self, value: float) -> dict[str, float]:

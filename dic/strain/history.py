@@ -33,7 +33,8 @@ class GaugeHistory:
     bending
         Axial strain at the region's right edge less that at its middle, from in-plane bending.
     u_axial, u_transverse, u_shear, u_extensometer
-        Standard uncertainties from grey noise, overlap of subsets accounted for.
+        Standard uncertainties from grey noise, overlap of subsets accounted for; of a width between edges
+        from the pattern on them too.
     shift_px
         Mean motion of the gauge along the coupon axis and across it, px, shape (n, 2).
     valid_fraction
@@ -43,6 +44,9 @@ class GaugeHistory:
     left_axial, left_transverse
         What may be left of that error's parts in the strains, one standard uncertainty, the same error in
         all frames, shape (n, h); None where unknown.
+    left_edges
+        As much for what the pattern on the edges leaves in the transverse strain, shape (n,); None where
+        that is not read from the edges.
     status
         ``"ok"``, or the reason why the frame was not (or only partly) measured.
     """
@@ -65,6 +69,7 @@ class GaugeHistory:
     periodic: Periodic
     left_axial: Floats | None = None
     left_transverse: Floats | None = None
+    left_edges: Floats | None = None
 
     def __len__(self) -> int:
         return len(self.frame)

@@ -1,4 +1,4 @@
-"""Named gauges: an elastomer to 150 %, a coupon turned in the picture, and the width between edges."""
+"""Named gauges: an elastomer to 150 %, a coupon turned in the picture, the width between edges and its u."""
 
 from __future__ import annotations
 
@@ -12,7 +12,7 @@ from table import Bench
 from dic.correlation import Settings, Tracker, lay_grid, prepare_reference
 from dic.gauges import NamedHistory, NamedReadings, Silhouette, place_gauges
 from dic.gauges.probes import Subsets
-from dic.gauges.silhouette import clear, mean_motion
+from dic.gauges.silhouette import Widths, clear, mean_motion, pattern_px
 from dic.pattern import axes, find_coupon
 from dic.strain import GaugeHistory, GaugeReader, Region, gather
 from dic.testfile import NamedGauge
@@ -22,6 +22,8 @@ from synthetic_images.coupon import Coupon as Scene
 SHAPE, WIDTH, NOISE = (1100, 320), 220.0, 0.01
 CENTRE = ((SHAPE[1] - 1) / 2, (SHAPE[0] - 1) / 2)
 SPECKLE = Dots(5.0, area=(500, 1300), seed=11)
+#: Standard deviation of one grey value, grey levels: the noise, and rounding.
+GREY = float(np.hypot(255 * NOISE, 1 / np.sqrt(12)))
 #: Nominal strains of the elastomer, frame by frame; the first four frames are at rest.
 STRAINS = np.concatenate([np.zeros(4), np.arange(1, 81) * 0.025])
 GAUGES = {
@@ -97,6 +99,7 @@ def run() -> Bench:
     turned(bench)
     for plain in (True, False):
         edges(bench, plain)
+    bars(bench)
     return bench
 
 
@@ -172,7 +175,7 @@ def edges(bench: Bench, plain: bool) -> None:
             [camera.picture(camera.motion(0.0, 0.0), 20_000 + k).astype(float) for k in range(8)], axis=0
         )
         silhouette = Silhouette(still, instrument.coupon, instrument.region)
-        worst, variances = 0.0, []
+        worst, variances, over_u = 0.0, [], []
         for number, strain in enumerate((0.0, 0.001, 0.005, 0.02)):
             misses = []
             for k in range(12):
@@ -182,6 +185,7 @@ def edges(bench: Bench, plain: bool) -> None:
                 affine = mean_motion(places, moved, instrument.region.centre)
                 found = silhouette.measure(camera.picture(motion, 100 * number + k), affine)
                 misses.append(np.mean(found.px - silhouette.reference.px) + 0.33 * strain * WIDTH)
+                over_u.append(misses[-1] / stated(silhouette, found, 8))
             worst = max(worst, abs(float(np.mean(misses))))
             variances.append(np.var(misses, ddof=1))
         length = f"{name} edges at {axis:g}°, {len(silhouette.along) * 16} px long"
@@ -189,3 +193,45 @@ def edges(bench: Bench, plain: bool) -> None:
         bench.add(
             f"{length}: scatter from frame to frame", float(np.sqrt(np.mean(variances))), "px", high=0.01
         )
+        bench.add(f"{length}: errors over stated uncertainty, rms", rms(over_u), high=1.3)
+
+
+def bars(bench: Bench) -> None:
+    """Round bars of eight patterns: their rims squeeze the pattern together and draw the edges aside."""
+    size, diameter, shape = 10, 130.0, (260, 180)
+    centre = ((shape[1] - 1) / 2, (shape[0] - 1) / 2)
+    misses, over_u = [], []
+    for seed in range(1, 9):
+        speckle, camera = Dots(4.5, area=(440, 380), seed=seed), Camera(bits=8, noise=NOISE)
+
+        def picture(motion: Any, frame: int, texture: Any = speckle, camera: Camera = camera) -> NDArray[Any]:
+            scene = Scene(texture, motion, centre, diameter, 0.0, 0.1, cylinder=True)
+            return camera.photograph(scene, shape, frame=frame, seed=3)
+
+        still = np.mean(
+            [picture(homogeneous(0, 0, centre=centre), 1000 + k).astype(float) for k in range(4)], axis=0
+        )
+        region = Region(np.array(centre), 240.0, diameter / 2, *axes(0.0))
+        silhouette = Silhouette(still, find_coupon(still, 0.0), region)
+        for k in range(1, size + 1):
+            axial = 0.006 * k / size
+            motion = homogeneous(axial, -0.33 * axial, centre=centre, shift=(0.0, 0.18 * k))
+            known = np.array([[0.0, -0.33 * axial, 0.0], [0.18 * k, 0.0, axial]])
+            found = silhouette.measure(picture(motion, k), known)
+            misses.append(float(np.nanmean(found.px - silhouette.reference.px)) + 0.33 * axial * diameter)
+            over_u.append(misses[-1] / stated(silhouette, found, 4))
+    name = "round bars, 240 px long"
+    bench.add(f"{name}: errors of the diameter, rms", rms(misses), "px")
+    bench.add(f"{name}: errors over stated uncertainty, rms", rms(over_u), high=1.3)
+
+
+def stated(silhouette: Silhouette, found: Widths, averaged: int) -> float:
+    """Return the stated standard uncertainty of the mean change of width, px."""
+    change = found.px - silhouette.reference.px
+    noise = found.u_per_grey * GREY * np.sqrt(1 + 1 / averaged)
+    grey = np.sqrt(np.nansum(noise**2)) / np.isfinite(change).sum()
+    return float(np.hypot(grey, pattern_px(silhouette.along, change, noise)))
+
+
+def rms(values: list[float]) -> float:
+    return float(np.sqrt(np.mean(np.square(values))))

@@ -35,14 +35,15 @@ def test_a_cylinder_is_seen_by_parallel_light(angle):
         np.testing.assert_allclose(bar(x, y), true, atol=1e-9)
 
 
-@pytest.fixture(scope="module")
-def bar(tmp_path_factory, small_scenario):
-    """Return what was measured on a small round bar, and the truth."""
+@pytest.fixture(scope="module", params=[3, 4])
+def bar(request, tmp_path_factory, small_scenario):
+    """Return what was measured on a small round bar, and the truth; two patterns."""
     folder = tmp_path_factory.mktemp("bar")
     text = small_scenario.replace(
         'width = "10 mm"\nthickness = "2 mm"', 'shape = "round"\ndiameter = "10 mm"'
     )
     text = text.replace('"5 kN/mm"', '"19.6 kN/mm"').replace('"2 mm/min"', '"8 mm/min"')
+    text = text.replace("seed = 3", f"seed = {request.param}")
     (folder / "bar.toml").write_text(text)
     path = render(load_scenario(folder / "bar.toml"), folder / "bar")
     with pytest.MonkeyPatch.context() as patch:
@@ -62,8 +63,19 @@ def test_the_facing_band_gives_the_axial_strain(bar):
 
 def test_the_diameter_gives_the_transverse_strain(bar):
     """The pattern is squeezed towards the rim and draws the edges by up to 0.03 px in a single frame, on
-    average by less; the diameter changes by 0.13 px."""
+    average by less; the diameter changes by 0.13 px.  Frames of one bar share much of it: 21 misses in
+    units of the stated u count as some four draws, with an rms of 1 but for 0.35, twice that."""
     found, truth = bar
-    miss = 130 * (found.history.transverse - truth["frames"]["strain_transverse"])
-    assert abs(np.mean(miss)) < 0.015
-    assert np.max(np.abs(miss)) < 0.04
+    miss = found.history.transverse - truth["frames"]["strain_transverse"]
+    assert abs(np.mean(130 * miss)) < 0.015
+    assert np.max(np.abs(130 * miss)) < 0.04
+    assert np.sqrt(np.mean((miss / found.history.u_transverse)[1:] ** 2)) < 1.7
+
+
+def test_poissons_ratio_carries_what_the_pattern_does_to_the_edges(bar):
+    """Within two standard uncertainties of the truth, and those still say something."""
+    found, _ = bar
+    ratio = found.properties["poissons_ratio"]
+    assert abs(ratio.value - 0.33) < 2 * ratio.standard_uncertainty
+    assert ratio.standard_uncertainty < 0.1
+    assert ratio.contributions["pattern on the edges"] > 0
