@@ -108,13 +108,13 @@ class Table:
 
     def no_number(self, position: int, row: int) -> InputError:
         """Return the error for a cell that is no number, its row counted from 0."""
+        cell = shorten(self.cells[position].iloc[row], 60, placeholder=" …")
         if not np.isfinite(self.values(position)).any() and not self.is_instant(position):
             return self.fault(
-                "the column holds no numbers",
+                f"holds no numbers ('{cell}' is not a number)",
                 where=f"{self.path}, column {self.name(position)}",
                 remedy="name another column, or export it again",
             )
-        cell = shorten(self.cells[position].iloc[row], 60, placeholder=" …")
         return self.fault(
             f"'{cell}' is not a number",
             where=f"{self.path}, row {self.cells.index[row]}, column {self.name(position)}",
