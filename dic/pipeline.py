@@ -170,7 +170,14 @@ def judged(
         u_towards=bound(test.camera),
         straightened=setup.optics.lens is not None,
     )
-    found = evaluate(curve, test.specimen, test.load_record.relative_uncertainty, clock, test.properties)
+    found = evaluate(
+        curve,
+        test.specimen,
+        test.load_record.relative_uncertainty,
+        clock,
+        test.properties,
+        force_bounded=test.load_record.force_class is not None,
+    )
     first = test.frames.first_reference
     clip_on = compare(
         record,

@@ -14,14 +14,20 @@ from dic.properties.strength import proof_entries, strength_entries
 from dic.properties.yielding import yielding_entries
 from dic.sync.record import Clock
 from dic.testfile import Properties, Specimen
-from dic.uncertainty import budget_of
+from dic.uncertainty import agrees, budget_of, monte_carlo
 
 #: How a note begins that names what an uncertainty lacks.
 NOT_INCLUDED = "not included: "
 
 
 def evaluate(
-    curve: Curve, specimen: Specimen, force_uncertainty: float | None, clock: Clock, section: Properties
+    curve: Curve,
+    specimen: Specimen,
+    force_uncertainty: float | None,
+    clock: Clock,
+    section: Properties,
+    *,
+    force_bounded: bool = False,
 ) -> Evaluation:
     """Read the properties from a curve.
 
@@ -37,6 +43,9 @@ def evaluate(
         For the uncertainty of its offset.
     section
         Windows and offsets.
+    force_bounded
+        Whether the force's error lies anywhere within bounds, as a class says, rather than normally
+        distributed.
 
     Returns
     -------
@@ -48,9 +57,10 @@ def evaluate(
     -----
     Contributions are combined as independent (JCGM 100:2008, 5.1.2).  Force calibration and section
     are common factors of every stress; they cancel in Poisson's ratio.  The clock's contribution is
-    half the change that a shift by plus and minus one standard uncertainty makes.
+    half the change that a shift by plus and minus one standard uncertainty makes.  The same budget is
+    propagated by draws (JCGM 101:2008); where the linear interval differs from theirs, a note says so.
     """
-    sheet = Sheet(curve, specimen, force_uncertainty, clock, section)
+    sheet = Sheet(curve, specimen, force_uncertainty, clock, section, force_bounded=force_bounded)
     entries = [
         *elastic_entries(sheet),
         *proof_entries(sheet),
@@ -62,7 +72,7 @@ def evaluate(
         *cycle_entries(sheet),
     ]
     return Evaluation(
-        {entry.name: _with_budget(entry.property(), sheet) for entry in entries},
+        {entry.name: _checked(_with_budget(entry.property(), sheet)) for entry in entries},
         sheet.modulus_line(),
         sheet.notices(),
     )
@@ -72,3 +82,23 @@ def _with_budget(item: Property, sheet: Sheet) -> Property:
     """Add the table of contributions; what the notes say is not included stands in it too."""
     missing = tuple(note.removeprefix(NOT_INCLUDED) for note in item.notes if note.startswith(NOT_INCLUDED))
     return replace(item, budget=budget_of(item.contributions, item.unit, sheet.inputs(), missing))
+
+
+def _checked(item: Property) -> Property:
+    """Hold the interval of the budget against that of draws."""
+    drawn = monte_carlo(item.value, item.contributions)
+    if drawn is None:
+        return item
+    notes = item.notes
+    if not agrees(item.value, item.standard_uncertainty, drawn):
+        between = f"{drawn.low:.5g} to {drawn.high:.5g} {item.unit}".rstrip()
+        notes += (
+            "the interval by k takes all effects as linear and their sum as normal; by Monte Carlo the 95 % "
+            f"interval is {between} (JCGM 101)",
+        )
+    return replace(
+        item,
+        notes=notes,
+        interval_95=(drawn.low, drawn.high),
+        draws_standard_deviation=drawn.standard_deviation,
+    )

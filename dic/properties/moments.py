@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from dic.properties.loading import Loading, Undetermined
 from dic.properties.result import Curve
-from dic.uncertainty import few_readings
+from dic.uncertainty import bounded, few_readings
 
 Floats = NDArray[np.float64]
 
@@ -49,7 +49,7 @@ class StrainAt:
             "instant": abs(self.rate) * u_time_s,
             "clock": abs(self.rate) * u_clock_s,
         }
-        beyond = {"beyond the last frame": abs(self.rate) * self.beyond_s / sqrt(3)}
+        beyond = {"beyond the last frame": bounded(abs(self.rate) * self.beyond_s / sqrt(3))}
         return known | (beyond if self.beyond_s else {})
 
     @property

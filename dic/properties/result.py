@@ -43,6 +43,8 @@ class Property:
         Word that has to stand before the value wherever it is shown, such as ``at least``.
     budget
         The same as a table, with what is not included.
+    interval_95, draws_standard_deviation
+        95 % interval and standard deviation of the budget propagated by draws; NaN where unknown.
     """
 
     name: str
@@ -56,6 +58,8 @@ class Property:
     contributions: dict[str, float] = field(default_factory=dict)
     qualifier: str = ""
     budget: tuple[Row, ...] = ()
+    interval_95: tuple[float, float] = (nan, nan)
+    draws_standard_deviation: float = nan
 
 
 @dataclass(frozen=True)

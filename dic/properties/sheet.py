@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import dataclass
 from functools import cached_property
-from math import hypot, nan
+from math import copysign, hypot, nan, sqrt
 
 import numpy as np
 from numpy.typing import NDArray
@@ -21,7 +21,7 @@ from dic.properties.systematic import FalseStrain, change, changes, of_axis, win
 from dic.properties.zero import Zero, frames_at_rest, seating_slack, take_off_toe, zero_of
 from dic.sync.record import Clock
 from dic.testfile import Properties, Specimen
-from dic.uncertainty import Input, Line, combine
+from dic.uncertainty import Contribution, Effect, Factor, Input, Line, bounded, combine
 
 Floats = NDArray[np.float64]
 
@@ -80,7 +80,7 @@ class Sheet:
 
     Parameters
     ----------
-    curve, specimen, force_uncertainty, clock, section
+    curve, specimen, force_uncertainty, clock, section, force_bounded
         As for `dic.properties.evaluate`.
     """
 
@@ -91,10 +91,17 @@ class Sheet:
         force_uncertainty: float | None,
         clock: Clock,
         section: Properties,
+        *,
+        force_bounded: bool = False,
     ) -> None:
         self.curve, self.clock, self.section = curve, clock, section
         #: Relative uncertainties that all stresses share.
         self.common = {"force calibration": force_uncertainty, "section": specimen.area_uncertainty}
+        #: How they enter a stress, force over section.
+        self.factors = {
+            "force calibration": (Factor(force_uncertainty or 0.0, 1, force_bounded),),
+            "section": tuple(Factor(u, -power, digit) for u, power, digit in specimen.side_errors),
+        }
         #: The keys that each of them lacks.
         self.gaps = {
             "force calibration": ["load_record.force_uncertainty"] if force_uncertainty is None else [],
@@ -185,7 +192,11 @@ class Sheet:
 
     def of_stress(self, value: float) -> dict[str, float]:
         """Return the contributions of the factors that all stresses share."""
-        return {source: abs(value) * u for source, u in self.common.items() if u is not None}
+        return {
+            source: Contribution(abs(value) * u, factors=self.factors[source])
+            for source, u in self.common.items()
+            if u is not None
+        }
 
     def inputs(self) -> dict[str, Input]:
         """Return what stands behind the sources of uncertainty that all properties share."""
@@ -223,7 +234,7 @@ class Sheet:
         towards = self.with_motion(read)
         return {
             "clock": self.with_clock(read),
-            **({} if towards is None else {"motion towards the camera": towards}),
+            **({} if towards is None else {"motion towards the camera": bounded(towards)}),
             **self._of_camera(read),
         }
 
@@ -259,9 +270,12 @@ class Sheet:
 
     def _of_camera(self, read: Callable[[Loading], float]) -> dict[str, float]:
         """Return the contributions of the camera's errors that all frames share."""
-        found = {}
+        found: dict[str, float] = {}
         if np.isfinite(self.curve.u_axis_deg):
-            found["axis angle"] = change(read, self.loading, of_axis(self.loading, self.curve.u_axis_deg))
+            off = change(read, self.loading, of_axis(self.loading, self.curve.u_axis_deg))
+            # The reading has the error already, and the truth lies on its other side.
+            lacking = -off / sqrt(3) * copysign(1.0, read(self.loading))
+            found["axis angle"] = Contribution(abs(off), (Effect(0.0, lacking),))
         if self._left:
             found["interpolation"] = changes(read, self.loading, self._left)
         if self.curve.left_edges is not None:
@@ -275,7 +289,7 @@ class Sheet:
         """Return the contribution of a window that was chosen rather than asked for."""
         if self.section.modulus != "auto":
             return {}
-        return {"window choice": abs(value) * window_choice(self.loading, self.elastic.window)}
+        return {"window choice": bounded(abs(value) * window_choice(self.loading, self.elastic.window))}
 
     @cached_property
     def _left(self) -> list[FalseStrain]:
@@ -293,7 +307,8 @@ class Sheet:
         A reading that is not to be had with the clock moved says nothing; the other side then stands
         for both.
         """
-        return float(np.hypot.reduce([_moved(read, self.loading, sides) for sides in self._later]))
+        moved = tuple(_moved(read, self.loading, sides) for sides in self._later)
+        return Contribution(hypot(*(one.linear for one in moved)), moved)
 
     @cached_property
     def _later(self) -> tuple[tuple[Loading, Loading], ...]:
@@ -329,17 +344,20 @@ class Sheet:
         }
 
 
-def _moved(read: Callable[[Loading], float], here: Loading, sides: tuple[Loading, Loading]) -> float:
-    """Return half the difference of a reading on both sides, or what one side alone shows."""
+def _moved(read: Callable[[Loading], float], here: Loading, sides: tuple[Loading, Loading]) -> Effect:
+    """Return the parabola through a reading and those on both sides, or what one side alone shows."""
     values = []
     for side in sides:
         try:
             values.append(read(side))
         except Undetermined:
             values.append(nan)
+    middle = read(here)
     if np.isfinite(values).all():
-        return abs(values[0] - values[1]) / 2
-    return float(np.nanmax(np.abs(np.array(values) - read(here)))) if np.isfinite(values).any() else nan
+        # Only its bend has a sign that matters: either side is as likely as the other.
+        bend = (values[0] + values[1]) / 2 - middle
+        return Effect(abs(values[0] - values[1]) / 2, bend * copysign(1.0, middle))
+    return Effect(float(np.nanmax(np.abs(np.array(values) - middle))) if np.isfinite(values).any() else nan)
 
 
 def bounds(values: Floats) -> tuple[float, float]:

@@ -30,12 +30,12 @@ class FalseStrain:
 
 
 def change(read: Read, loading: Loading, false: FalseStrain) -> float:
-    """Return how far a false strain moves a reading; NaN where it cannot be had with it."""
+    """Return how a false strain changes a reading; NaN where it cannot be had with it."""
     moved = replace(
         loading, strain=loading.strain + false.axial, transverse=loading.transverse + false.transverse
     )
     try:
-        return abs(read(moved) - read(loading))
+        return read(moved) - read(loading)
     except Undetermined:
         return nan
 

@@ -14,6 +14,7 @@ from dic.properties.loading import Undetermined
 from dic.properties.peak import highest_around
 from dic.properties.result import Dense
 from dic.properties.sheet import Entry, Reading, Sheet
+from dic.uncertainty import bounded
 
 Floats = NDArray[np.float64]
 
@@ -195,7 +196,7 @@ def _extension(sheet: Sheet, found: Yielding) -> Reading:
         sign * value,
         "strain from the upper yield point to where the level of yielding meets the line of hardening "
         "(ISO 6892-1)",
-        {"knee": u_knee, "strain at the upper yield point": u_upper},
+        {"knee": u_knee, "strain at the upper yield point": bounded(u_upper)},
         {"strain": (sign * found.strain, sign * knee)},
         sheet.left_out_of_strain(),
     )

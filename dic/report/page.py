@@ -26,7 +26,7 @@ from dic.report.maps import draw_maps, draw_scene
 from dic.report.moments import choose_moments
 from dic.report.optics import camera_rows
 from dic.report.stress import draw_stress
-from dic.rounding import COVERAGE_FACTOR, uncertainty_alone, with_uncertainty
+from dic.rounding import COVERAGE_FACTOR, decimals_for, fixed, uncertainty_alone, with_uncertainty
 from dic.store.folder import FIGURES
 from dic.store.results import encoded, write_whole
 from dic.store.tables import absent_in, called, found_in, shown_in, stated
@@ -211,8 +211,19 @@ def _entry(item: Property) -> dict[str, Any]:
         "short_window": words.window(dict(list(item.window.items())[:1])),
         "notes": item.notes,
         "contributions": _contributions(item),
+        "interval": _interval(item),
         "missing": [row.source for row in item.budget if not row.included],
     }
+
+
+def _interval(item: Property) -> str:
+    """Return the ends of the interval by draws, to two digits of the uncertainty; empty where unknown."""
+    if not isfinite(item.interval_95[0]) or not item.standard_uncertainty > 0:
+        return ""
+    scale, unit = shown_in(item)
+    decimals = decimals_for(COVERAGE_FACTOR * item.standard_uncertainty * scale)
+    low, high = (fixed(end * scale, decimals) for end in item.interval_95)
+    return f"{low} to {high} {unit}".rstrip()
 
 
 def _contributions(item: Property) -> list[tuple[str, str, str, str, float]]:

@@ -175,6 +175,8 @@ def _property(item: Property) -> dict[str, Any]:
         "coverage_factor": COVERAGE_FACTOR,
         "expanded_uncertainty": COVERAGE_FACTOR * item.standard_uncertainty,
         "coverage_probability": COVERAGE_PROBABILITY,
+        "interval_95": item.interval_95,
+        "draws_standard_deviation": item.draws_standard_deviation,
         "contributions": item.contributions,
         "budget": [asdict(row) for row in item.budget],
     }

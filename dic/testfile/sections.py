@@ -82,14 +82,21 @@ class Specimen(Section):
         return given
 
     @property
+    def side_errors(self) -> tuple[tuple[float, int, bool], ...]:
+        """The dimensions' relative standard uncertainties, powers in S0, and whether a digit bounds them.
+
+        Those whose uncertainty is not given are left out.
+        """
+        return tuple(
+            (u / value, power, getattr(self, f"{side}_uncertainty") is None)
+            for side, power in (("width", 1), ("thickness", 1), ("diameter", 2))
+            if (value := getattr(self, side)) and (u := self.side_uncertainty(side))
+        )
+
+    @property
     def area_uncertainty(self) -> float | None:
         """Relative standard uncertainty of S0, or None where no dimension's uncertainty is given."""
-        parts = [
-            (self.width, self.side_uncertainty("width"), 1),
-            (self.thickness, self.side_uncertainty("thickness"), 1),
-            (self.diameter, self.side_uncertainty("diameter"), 2),
-        ]
-        shares = [power * u / value for value, u, power in parts if value and u]
+        shares = [power * u for u, power, _ in self.side_errors]
         return sum(share**2 for share in shares) ** 0.5 if shares else None
 
 

@@ -118,6 +118,19 @@ def test_every_property_with_its_uncertainties(page, measurement):
     assert "k = 2" in page.text
 
 
+def test_the_interval_by_draws_stands_under_its_table(page, measurement, fields, tmp_path):
+    assert "Monte Carlo" not in page.text
+    known = {
+        name: dataclasses.replace(item, interval_95=(69.0e3, 71.5e3), standard_uncertainty=500.0)
+        for name, item in measurement.properties.items()
+        if name == "youngs_modulus"
+    }
+    changed = dataclasses.replace(measurement, properties=measurement.properties | known)
+    text = Page(write_report(changed, fields, tmp_path).read_text(encoding="utf-8")).text
+    # Shown in GPa, to two digits of the expanded uncertainty of 1.0 GPa.
+    assert "Monte Carlo 95 % interval: 69.0 to 71.5 GPa" in text
+
+
 def test_what_is_absent_for_one_reason_stands_on_one_line(page, lost, fields, tmp_path):
     only = page.text[page.text.index("Not determined in this test") :]
     assert re.match(r"Not determined in this test 5 % proof stress \S+.*: the strain never reached", only)
