@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from functools import cache
+from math import copysign
 
 import numpy as np
 from numpy.typing import NDArray
@@ -13,7 +14,7 @@ from dic.properties.fits import WORDS, scatter
 from dic.properties.hooke import bulk_modulus, lame_constant, shear_modulus
 from dic.properties.loading import Loading, Undetermined
 from dic.properties.sheet import Entry, Reading, Sheet
-from dic.uncertainty import combine, line_with_errors_in_both
+from dic.uncertainty import Contribution, Effect, combine, line_with_errors_in_both
 
 Floats = NDArray[np.float64]
 #: A constant from E and ν.
@@ -155,8 +156,11 @@ def _isotropic(sheet: Sheet, law: Law, formula: str) -> Reading:
         window,
     )
     value = of_slopes(axial, across)
+    # Where the volume hardly changes, these constants bend strongly with the slope across.
+    moved = abs(weighed / by_across)
+    bend = (of_slopes(axial, across + moved) + of_slopes(axial, across - moved)) / 2 - value
     statistics = {
-        "scatter": weighed,
+        "scatter": Contribution(weighed, (Effect(weighed, bend * copysign(1.0, value)),)),
         **sheet.shifted(value_of),
     }
     return Reading(

@@ -6,7 +6,7 @@ in a quotient, like force and section, enters as it stands there; all else by it
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Mapping
 from dataclasses import dataclass
 from functools import cache
 from math import copysign, floor, hypot, isfinite, log10, sqrt
@@ -51,12 +51,7 @@ class Factor:
 class Contribution(float):
     """A standard uncertainty that is more than the spread of a normal, linear effect.
 
-    Parameters
-    ----------
-    u
-        The standard uncertainty itself, in the property's unit.
-    effects, factors
-        What stands behind it.
+    The number itself is in the property's unit; `effects` and `factors` stand behind it.
     """
 
     effects: tuple[Effect, ...]
@@ -112,16 +107,18 @@ def monte_carlo(value: float, contributions: Mapping[str, float]) -> Draws | Non
     # The sum of normal effects is normal itself.
     spread = hypot(*(one for one in contributions.values() if not isinstance(one, Contribution)))
     effects = [Effect(spread), *(effect for one in behind for effect in one.effects)]
-    drawn: Iterator[int] = iter(range(len(effects) + sum(len(one.factors) for one in behind)))
+    factors = [factor for one in behind for factor in one.factors]
     outcome, outward = np.full(DRAWS, value), copysign(1.0, value)
-    for factor in (factor for one in behind for factor in one.factors):
-        grown = (1 + factor.u * _standard(next(drawn), factor.bounded)) ** abs(factor.power)
+    for number, factor in enumerate(factors):
+        grown = (1 + factor.u * _standard(number, factor.bounded)) ** abs(factor.power)
         outcome = outcome * grown if factor.power > 0 else outcome / grown
-    for effect in effects:
-        z = _standard(next(drawn), effect.bounded)
+    for number, effect in enumerate(effects, start=len(factors)):
+        z = _standard(number, effect.bounded)
         outcome += outward * effect.linear * z
         if effect.square:
             outcome += outward * effect.square * z**2
+    if not np.isfinite(outcome).all():
+        return None
     ordered = np.sort(outcome)
     beyond = round((1 - COVERAGE) / 2 * DRAWS)
     return Draws(float(ordered[beyond - 1]), float(ordered[-beyond]), float(outcome.std()))

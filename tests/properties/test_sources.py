@@ -74,3 +74,15 @@ def test_an_axis_that_is_off_only_ever_raises_the_modulus(pull, sign):
     # Terms of second order in θ² are 0.4 % of it.
     assert effect.square == pytest.approx(-mean, rel=0.02)
     assert high - told.value < told.value - low
+
+
+def test_the_bulk_modulus_bends_with_its_scatter(pull):
+    """K is one over a sum of slopes: moved by its share e either way, their mean is K·e²/(1 - e²) off."""
+    drawn = pull(strain_noise=3e-5)
+    found = evaluate(drawn.curve, drawn.specimen, None, drawn.clock, Properties()).properties["bulk_modulus"]
+    (effect,) = found.contributions["scatter"].effects
+    share = effect.linear / found.value
+    # The derivatives are taken over steps of a millionth.
+    assert effect.square == pytest.approx(found.value * share**2 / (1 - share**2), rel=1e-3)
+    low, high = found.interval_95
+    assert high - found.value > found.value - low

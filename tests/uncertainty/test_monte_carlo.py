@@ -109,6 +109,7 @@ def test_tolerance_is_half_a_unit_of_the_last_digit(u, expected):
 def test_what_is_not_known_has_no_interval():
     assert monte_carlo(nan, {"scatter": 1.0}) is None
     assert monte_carlo(1.0, {"scatter": 1.0, "clock": bounded(nan)}) is None
+    assert monte_carlo(1.0, {"clock": Contribution(1.0, (Effect(1.0, nan),))}) is None
     assert isnan(bounded(nan))
 
 
