@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dic.properties.doubts import GOOD_SLOPE
-from dic.properties.fits import WORDS, scatter
+from dic.properties.fits import WORDS
 from dic.properties.hooke import bulk_modulus, lame_constant, shear_modulus
 from dic.properties.loading import Loading, Undetermined
 from dic.properties.sheet import Entry, Reading, Sheet
@@ -52,15 +52,13 @@ def _youngs_modulus(sheet: Sheet) -> Reading:
     if relative > GOOD_SLOPE:
         quality.append(f"the slope scatters by more than the {100 * GOOD_SLOPE:g} % of ISO 6892-1")
     value = elastic.modulus
-    noise = scatter(sheet.loading, sheet.loading.strain, sheet.loading.u_strain, elastic.window)
 
     def modulus(loading: Loading) -> float:
         return 1 / sheet.line(loading).slope
 
     statistics = {
-        "scatter": value * noise / line.slope,
+        **sheet.of_lines(sheet.loading.strain, sheet.loading.u_strain, value / line.slope),
         **sheet.shifted(modulus),
-        **sheet.of_window(value),
     }
     return Reading(
         value,
@@ -72,26 +70,24 @@ def _youngs_modulus(sheet: Sheet) -> Reading:
 
 
 def _poissons_ratio(sheet: Sheet) -> Reading:
-    """Read ν from both slopes; its scatter is that of εt + ν·εa, in which the force's noise cancels."""
+    """Read ν from both slopes; it changes as the slope of εt + ν·εa, in which the force's noise cancels."""
     elastic, loading = sheet.elastic, sheet.loading
 
     def ratio(loading: Loading) -> float:
         return -sheet.line(loading, "transverse").slope / sheet.line(loading).slope
 
     value = ratio(loading)
-    rest = scatter(
-        loading,
+    own = sheet.of_lines(
         loading.transverse + value * loading.strain,
         np.hypot(loading.u_transverse, value * loading.u_strain),
-        elastic.window,
+        elastic.modulus,
     )
-    noise = rest * elastic.modulus
     return Reading(
         value,
         f"slopes of transverse and axial strain against the same force (ASTM E132), {elastic.rule}",
-        {"scatter": noise, **sheet.shifted(ratio)},
+        {**own, **sheet.shifted(ratio)},
         sheet.window(),
-        (*_against_axial(sheet, value, noise), *elastic.notes, *sheet.left_out_of_strain()),
+        (*_against_axial(sheet, value, own["scatter"]), *elastic.notes, *sheet.left_out_of_strain()),
     )
 
 
@@ -134,10 +130,10 @@ def _isotropic(sheet: Sheet, law: Law, formula: str) -> Reading:
     """Read a constant from E and ν.
 
     Both come from the slopes of two strains on one stress.  Weighed by the constant's derivatives by
-    these slopes, the strains make one whose slope scatters as the constant does: so the correlation of
+    these slopes, the strains make one whose slope changes as the constant does: so the correlation of
     E and ν is in it.
     """
-    loading, window = sheet.loading, sheet.elastic.window
+    loading = sheet.loading
 
     def of_slopes(axial: float, across: float) -> float:
         return law(1 / axial, -across / axial)
@@ -149,20 +145,20 @@ def _isotropic(sheet: Sheet, law: Law, formula: str) -> Reading:
     step = 1e-6 * axial
     by_axial = (of_slopes(axial + step, across) - of_slopes(axial - step, across)) / (2 * step)
     by_across = (of_slopes(axial, across + step) - of_slopes(axial, across - step)) / (2 * step)
-    weighed = scatter(
-        loading,
+    own = sheet.of_lines(
         by_axial * loading.strain + by_across * loading.transverse,
         np.hypot(by_axial * loading.u_strain, by_across * loading.u_transverse),
-        window,
     )
     value = of_slopes(axial, across)
-    # Where the volume hardly changes, these constants bend strongly with the slope across.
-    moved = abs(weighed / by_across)
-    bend = (of_slopes(axial, across + moved) + of_slopes(axial, across - moved)) / 2 - value
-    statistics = {
-        "scatter": Contribution(weighed, (Effect(weighed, bend * copysign(1.0, value)),)),
-        **sheet.shifted(value_of),
-    }
+
+    def bent(u: float) -> Contribution:
+        # Where the volume hardly changes, these constants bend strongly with the slope across.
+        moved = abs(u / by_across)
+        bend = (of_slopes(axial, across + moved) + of_slopes(axial, across - moved)) / 2 - value
+        within = isinstance(u, Contribution) and u.effects[0].bounded
+        return Contribution(u, (Effect(u, bend * copysign(1.0, value), within),))
+
+    statistics = {source: bent(u) for source, u in own.items()} | sheet.shifted(value_of)
     return Reading(
         value,
         f"{formula}, for an isotropic material",

@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from dic.errors import Notice
 from dic.properties.doubts import missing_uncertainties
-from dic.properties.fits import fit
+from dic.properties.fits import fit, scatter
 from dic.properties.loading import Loading, Undetermined, loading_of, require_section
 from dic.properties.modulus import Elastic, fit_elastic
 from dic.properties.moments import fracture_of
@@ -285,11 +285,24 @@ class Sheet:
             )
         return found
 
-    def of_window(self, value: float) -> dict[str, float]:
-        """Return the contribution of a window that was chosen rather than asked for."""
-        if self.section.modulus != "auto":
-            return {}
-        return {"window choice": bounded(abs(value) * window_choice(self.loading, self.elastic.window))}
+    def of_lines(self, strain: Floats, u_strain: Floats, by: float = 1.0) -> dict[str, float]:
+        """Return what the scatter and the choice of the window do to a constant read from slopes.
+
+        Parameters
+        ----------
+        strain, u_strain
+            Both strains, weighed by the constant's derivatives by their slopes on stress, with its
+            standard uncertainty, shape (n,): its slope changes as the constant does, so what both slopes
+            have in common is in it.
+        by
+            What the changes of that slope are multiplied by.
+        """
+        given = (self.loading, strain, u_strain, self.elastic.window)
+        found: dict[str, float] = {"scatter": abs(by) * scatter(*given)}
+        # A window that was asked for is no choice.
+        if self.section.modulus == "auto":
+            found["window choice"] = bounded(abs(by) * window_choice(*given))
+        return found
 
     @cached_property
     def _left(self) -> list[FalseStrain]:

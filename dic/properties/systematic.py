@@ -57,24 +57,29 @@ def of_axis(loading: Loading, u_axis_deg: float) -> FalseStrain:
     return FalseStrain(-lacking, lacking)
 
 
-def window_choice(loading: Loading, window: Window) -> float:
-    """Return the standard uncertainty of the line's slope from where the window's ends are put, relative.
+def window_choice(loading: Loading, strain: Floats, u_strain: Floats, window: Window) -> float:
+    """Return the standard uncertainty of a line's slope from where the window's ends are put.
 
-    Each end is moved by a tenth of the frames, inwards and outwards.  Fewer frames and more scatter by
-    what the difference of both slopes' variances says; only a clearly larger change is that of the curve.
-    Half the spread bounds a rectangular distribution.
+    The strain is one as for `dic.properties.fits.fit`, or a sum of both.  Each end is moved by a tenth of
+    the frames, inwards and outwards.  Fewer frames and more scatter by what the difference of both slopes'
+    variances says; only a clearly larger change is that of the curve.  Half the spread bounds a rectangular
+    distribution.
     """
     frames = window.frames
     step = max(round(MOVED_SHARE * window.count), 1)
-    here = fit(loading, loading.strain, loading.u_strain, window)
+    here = fit(loading, strain, u_strain, window)
     worst = 0.0
     for first, last in ((step, 0), (-step, 0), (0, step), (0, -step)):
         moved = slice(frames.start + first, frames.stop + last)
-        if moved.start < 0 or moved.stop > len(loading.strain) or moved.stop - moved.start < MIN_FRAMES:
+        if moved.start < 0 or moved.stop > len(strain) or moved.stop - moved.start < MIN_FRAMES:
             continue
-        other = fit(loading, loading.strain, loading.u_strain, replace(window, frames=moved))
+        try:
+            other = fit(loading, strain, u_strain, replace(window, frames=moved))
+        except Undetermined:
+            # The transverse strain may be missing in too many frames.
+            continue
         off = abs(other.slope - here.slope)
         noise = sqrt(abs(other.u_slope**2 - here.u_slope**2))
         if off > CLEAR * noise:
             worst = max(worst, off)
-    return worst / sqrt(3) / abs(here.slope)
+    return worst / sqrt(3)
