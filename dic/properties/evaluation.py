@@ -8,6 +8,7 @@ from dic.properties.course import energy_entries, rate_entries
 from dic.properties.cycles import cycle_entries
 from dic.properties.elastic import elastic_entries
 from dic.properties.hardening import hardening_entries
+from dic.properties.plastics import plastics_entries
 from dic.properties.result import Curve, Evaluation, Property
 from dic.properties.sheet import Sheet
 from dic.properties.strength import proof_entries, strength_entries
@@ -65,6 +66,7 @@ def evaluate(
         *elastic_entries(sheet),
         *proof_entries(sheet),
         *yielding_entries(sheet),
+        *plastics_entries(sheet),
         *strength_entries(sheet),
         *hardening_entries(sheet),
         *energy_entries(sheet),

@@ -82,15 +82,9 @@ def find_yielding(sheet: Sheet) -> Yielding:
     Undetermined
         If there is none.
     """
-    elastic, loading, dense = sheet.elastic, sheet.loading, sheet.curve.dense
-    if dense is None:
-        raise Undetermined("there is no load record in which a yield point could show")
-    inside = (dense.time_s >= loading.time_s[0]) & (dense.time_s <= sheet.last_time_s)
-    dense = Dense(dense.time_s[inside], loading.sign * dense.force_N[inside], dense.noise_N[inside])
-    whole = sheet.whole
-    strain = np.interp(dense.time_s, whole.time_s, whole.strain)
-    area = sheet.curve.area_mm2
-    top = _first_fall(dense, strain)
+    elastic, area = sheet.elastic, sheet.curve.area_mm2
+    dense, strain = force_and_strain(sheet)
+    top = first_fall(dense, strain)
     plastic = strain[top] - elastic.line.at(dense.force_N[top] / area)
     if plastic > EARLY:
         raise Undetermined(
@@ -112,8 +106,19 @@ def find_yielding(sheet: Sheet) -> Yielding:
     )
 
 
-def _first_fall(dense: Dense, strain: Floats) -> int:
-    """Return the sample of the upper yield point."""
+def force_and_strain(sheet: Sheet) -> tuple[Dense, Floats]:
+    """Return the load record up to the fracture, counted positive along the loading, and its strains."""
+    loading, dense = sheet.loading, sheet.curve.dense
+    if dense is None:
+        raise Undetermined("there is no load record in which a yield point could show")
+    inside = (dense.time_s >= loading.time_s[0]) & (dense.time_s <= sheet.last_time_s)
+    dense = Dense(dense.time_s[inside], loading.sign * dense.force_N[inside], dense.noise_N[inside])
+    whole = sheet.whole
+    return dense, np.interp(dense.time_s, whole.time_s, whole.strain)
+
+
+def first_fall(dense: Dense, strain: Floats) -> int:
+    """Return the sample of the first maximum after which the force falls while the coupon stretches on."""
     force, noise = dense.force_N, NOISE * float(np.median(dense.noise_N))
     highest = np.maximum.accumulate(force)
     fallen = np.flatnonzero(highest - force > np.maximum(DROP * highest, noise))

@@ -32,6 +32,8 @@ TITLES = {
     "upper_yield": "Upper yield strength",
     "lower_yield": "Lower yield strength",
     "yield_point_extension": "Yield point extension",
+    "yield_stress": "Yield stress",
+    "strain_at_yield": "Strain at yield",
     "tensile_strength": "Tensile strength",
     "strain_at_maximum": "Strain at maximum force",
     "plastic_strain_at_maximum": "Plastic strain at maximum force",
