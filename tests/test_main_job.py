@@ -19,11 +19,18 @@ GRAVEL = {"youngs_modulus": 0.5, "poissons_ratio": 1.5}
 RENDERED = [pytest.param(name, marks=pytest.mark.xdist_group(name)) for name in ("demo", "gravel")]
 
 
-@pytest.fixture(scope="module", params=RENDERED)
+#: What each gave; kept here because a worker takes fixtures down while it waits for more tests.
+DONE = {}
+
+
+@pytest.fixture(params=RENDERED)
 def rendered(request, tmp_path_factory):
-    folder = tmp_path_factory.mktemp(request.param)
-    test = render(load_scenario(scenarios()[request.param]), folder / "test")
-    return request.param, test, dic.measure(test, folder / "results")
+    name = request.param
+    if name not in DONE:
+        folder = tmp_path_factory.mktemp(name)
+        test = render(load_scenario(scenarios()[name]), folder / "test")
+        DONE[name] = name, test, dic.measure(test, folder / "results")
+    return DONE[name]
 
 
 def test_properties_are_true_and_their_intervals_hold_the_truth(rendered):
@@ -182,7 +189,8 @@ def overwrite_frames(test, image_of):
 def spoil_force(test):
     record = test.with_name("machine.csv")
     lines = record.read_text().splitlines()
-    lines[30] = lines[30].rsplit(",", 1)[0] + ",overload"
+    # A few rows would be left out with a word; a third of them is no record any more.
+    lines[1::3] = [line.rsplit(",", 1)[0] + ",overload" for line in lines[1::3]]
     record.write_text("\n".join(lines))
 
 
