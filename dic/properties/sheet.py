@@ -280,9 +280,8 @@ class Sheet:
             found["interpolation"] = changes(read, self.loading, self._left)
         if self.curve.left_edges is not None:
             across = self.curve.left_edges[self.loading.rows]
-            found["pattern on the edges"] = change(
-                read, self.loading, FalseStrain(np.zeros_like(across), across)
-            )
+            off = change(read, self.loading, FalseStrain(np.zeros_like(across), across))
+            found["pattern on the edges"] = abs(off)
         return found
 
     def of_lines(self, strain: Floats, u_strain: Floats, by: float = 1.0) -> dict[str, float]:
