@@ -93,6 +93,13 @@ def lay_grid(mask: NDArray[np.bool_], subset: int, step: int) -> Grid:
         empty = np.empty(0, np.int64)
         return Grid(empty, empty, np.empty((0, 0), bool), side, step)
     y, x = _spread(rows[0], rows[-1], step), _spread(columns[0], columns[-1], step)
+    if not fits[np.ix_(y, x)].any():
+        # Hardly larger than a subset, with the only places that fit between the grid's.
+        best = np.unravel_index(np.argmax(np.where(fits, covered, 0.0)), fits.shape)
+        y, x = (
+            np.arange(lines[0] + (at - lines[0]) % step, lines[-1] + 1, step)
+            for lines, at in zip((rows, columns), best, strict=True)
+        )
     return Grid(x, y, fits[np.ix_(y, x)], side, step)
 
 

@@ -1,6 +1,6 @@
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import example, given
 from hypothesis import strategies as st
 
 from dic.correlation import lay_grid
@@ -11,6 +11,7 @@ from dic.correlation.grid import LEAST_COVERED
     left=st.integers(0, 40), top=st.integers(0, 40), width=st.integers(1, 60), height=st.integers(1, 60),
     subset=st.sampled_from([9, 15, 21]), step=st.integers(1, 20),
 )  # fmt: skip
+@example(left=0, top=6, width=21, height=21, subset=21, step=13)
 def test_every_inside_subset_has_its_centre_and_most_of_itself_on_the_mask(
     left, top, width, height, subset, step
 ):
