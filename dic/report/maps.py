@@ -178,7 +178,9 @@ def colour_bar(axes: Axes, picture: AxesImage, tall: bool) -> None:
 
 def _certainty(field: xr.Dataset) -> str:
     """Say how sure a point is and which share of the points leans on part of a window."""
-    u = float(np.nanmedian(field["u_strain_axial"].values))
+    known = field["u_strain_axial"].values
+    known = known[np.isfinite(known)]
+    u = float(np.median(known)) if known.size else float("nan")
     flag = field["map_flag"].values
     made = int((flag <= MapFlag.ONE_SIDED).sum())
     if not (made and isfinite(u)):
