@@ -155,9 +155,11 @@ def _specimen(record: Path) -> Iterator[str]:
 def _frames(seen: FramesSurvey, source: str) -> Iterator[str]:
     yield ""
     yield "[frames]"
+    frames = seen.source
+    rows, columns = frames.shape
     yield from _comment(
-        f"{seen.count} frames of {seen.shape[1]} × {seen.shape[0]} px with {seen.depth_bits} bits in use, "
-        f"from {seen.first} to {seen.last}."
+        f"{len(frames)} frames of {columns} × {rows} px with {frames.depth.bits} bits in use, "
+        f"from {frames.names[0]} to {frames.names[-1]}."
     )
     yield from _notes(seen.notices)
     yield f"source = {_quoted(source)}"

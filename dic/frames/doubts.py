@@ -135,8 +135,6 @@ class RepeatWatch:
     def __init__(self, *, alike_at_rest: bool = False) -> None:
         self._last: NDArray[Any] | None = None
         self._noisy: bool | None = False if alike_at_rest else None
-        #: Frames whose picture is that of the frame before, frozen camera or not.
-        self.repeats = 0
 
     def frozen(self, frame: NDArray[Any]) -> bool:
         """Whether the next frame repeats the one before it in a source that has noise."""
@@ -144,7 +142,6 @@ class RepeatWatch:
         if last is None:
             return False
         same = same_picture(last, frame)
-        self.repeats += same
         if self._noisy is None:
             self._noisy = not same
         return same and self._noisy

@@ -2,6 +2,7 @@
 the published formats, read to identical values."""
 
 import struct
+import sys
 
 import av
 import cv2
@@ -337,7 +338,7 @@ def test_video_at_a_rate_of_its_own(folder):
 
 def test_video_without_its_library_is_said(folder, monkeypatch):
     film(folder / "test.avi", [picture() for _ in range(4)], "ffv1")
-    monkeypatch.setitem(__import__("sys").modules, "av", None)
+    monkeypatch.setitem(sys.modules, "av", None)
     with pytest.raises(FrameError, match=r"PyAV, which is not installed; install it with: pip install"):
         open_frames(Frames(source="test.avi"), folder)
 
@@ -391,4 +392,4 @@ def test_frames_at_rest_in_a_video_with_loss_are_measured(folder):
     watch = source.watch()
     assert source.lossy
     assert not any(watch.frozen(source[k]) for k in range(4))
-    assert watch.repeats > 0
+    assert (source[1] == source[2]).all()
