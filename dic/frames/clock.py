@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from bisect import bisect_left
 from collections.abc import Sequence
 from dataclasses import dataclass
 from datetime import datetime
@@ -17,7 +18,8 @@ from dic.frames import instants
 from dic.frames.doubts import gap_doubts, listed, number_doubts, order_doubts
 from dic.frames.even import even_rate
 from dic.frames.names import name_pattern, times_in_names
-from dic.frames.tags import Place, Tags, read_tags
+from dic.frames.page import Page
+from dic.frames.tags import Tags, read_tags
 from dic.frames.times import times_from_file
 from dic.testfile import Frames
 
@@ -57,7 +59,7 @@ class _Stamps:
 
 
 def frame_clock(
-    section: Frames, folder: Path, pages: Sequence[Place], tags: Sequence[Tags] | None = None
+    section: Frames, folder: Path, pages: Sequence[Page], tags: Sequence[Tags] | None = None
 ) -> FrameClock:
     """Return the time of each frame.
 
@@ -65,7 +67,8 @@ def frame_clock(
     ----------
     section
         ``[frames]`` of the test file: a fixed ``rate``; ``times``, a table, see
-        `dic.frames.times`; a ``clock`` that the files carry themselves; or nothing, for a video.
+        `dic.frames.times`; a ``clock`` that the files carry themselves; or nothing, for a video.  Of other
+        frames of which nothing is said yet, the times are NaN.
     folder
         What relative paths start from.
     pages
@@ -81,20 +84,21 @@ def frame_clock(
     names = [page.path.name for page in pages]
     if section.own_times:
         return _from_film(section, pages)
-    if section.clock is None and section.times is None:
-        assert section.rate is not None  # noqa: S101  (the test file's check)
-        time_s = section.start + np.arange(len(names)) / section.rate
-        return FrameClock(np.arange(len(names)), time_s, None, tuple(number_doubts(names)))
     if section.times is not None:
         found = times_from_file(folder / section.times, names)
         stamps = _Stamps(found.ns, section.times, "correct the times file", found.dated)
         return _ordered(names, stamps, section.start, zero=None if found.dated else 0, keep=not found.named)
-    if section.clock == "names":
-        return _ordered(names, _from_names(section, names), section.start)
+    if section.name_time is not None:
+        return _ordered(names, _from_names(section.name_time, names, section.rate), section.start)
     if section.clock == "modified":
         return _ordered(names, _from_dates(pages), section.start, keep=True)
-    damaged = [bool(getattr(page, "damage", "")) for page in pages]
-    return _from_tags(section, names, read_tags(pages) if tags is None else tags, damaged)
+    if section.clock == "tags":
+        damaged = [bool(page.damage) for page in pages]
+        return _from_tags(section, names, read_tags(pages) if tags is None else tags, damaged)
+    if section.rate is None:
+        return FrameClock(np.arange(len(names)), np.full(len(names), np.nan))
+    time_s = section.start + np.arange(len(names)) / section.rate
+    return FrameClock(np.arange(len(names)), time_s, None, tuple(number_doubts(names)))
 
 
 def _ordered(
@@ -138,9 +142,9 @@ def _epoch(first: int, start: float) -> datetime | None:
         return None
 
 
-def _from_film(section: Frames, pages: Sequence[Place]) -> FrameClock:
+def _from_film(section: Frames, pages: Sequence[Page]) -> FrameClock:
     """Take the times that a video gives its own frames."""
-    times = np.array([getattr(page, "time_s", None) for page in pages], dtype=float)
+    times = np.array([page.time_s for page in pages], dtype=float)
     if not (np.diff(times) > 0).all():
         raise FrameError(
             "gives its frames no increasing times", where=section.source, remedy="give frames.rate"
@@ -150,25 +154,22 @@ def _from_film(section: Frames, pages: Sequence[Place]) -> FrameClock:
     return FrameClock(np.arange(len(pages)), time_s, None, tuple(gap_doubts(names, time_s)))
 
 
-def _from_names(section: Frames, names: list[str]) -> _Stamps:
-    assert section.name_time is not None  # noqa: S101  (the test file's check)
+def _from_names(name_time: str, names: list[str], rate: float | None) -> _Stamps:
     try:
-        pattern = name_pattern(section.name_time)
+        pattern = name_pattern(name_time)
     except ValueError as error:
         raise FrameError(str(error), where="frames.name_time") from error
-    ns = times_in_names(pattern, names, section.rate)
+    ns = times_in_names(pattern, names, rate)
     remedy = "correct frames.name_time so that it says the whole time, or give frames.rate"
-    return _Stamps(ns, f"frames.name_time = '{section.name_time}'", remedy, pattern.dated)
+    return _Stamps(ns, f"frames.name_time = '{name_time}'", remedy, pattern.dated)
 
 
-def _from_dates(pages: Sequence[Place]) -> _Stamps:
+def _from_dates(pages: Sequence[Page]) -> _Stamps:
     ns = []
     for page in pages:
         state = page.path.stat()
         local = datetime.fromtimestamp(state.st_mtime_ns // instants.SECOND)
-        whole = instants.from_parts(*local.timetuple()[:6])
-        assert whole is not None  # noqa: S101  (a date that the system gave)
-        ns.append(whole + state.st_mtime_ns % instants.SECOND)
+        ns.append(instants.from_datetime(local) + state.st_mtime_ns % instants.SECOND)
     notice = Notice(
         "clock_modified",
         "Frame times are the files' modification dates, which say when a file was written, not when the "
@@ -220,14 +221,14 @@ def best_stamps(tags: Sequence[Tags], damaged: Sequence[bool]) -> list[int | Non
 
 def _filled(stamps: Sequence[int | None]) -> list[int]:
     """Fill in the instants that are missing, evenly between those that are known and on beyond them."""
-    filled, known = list(stamps), [k for k, instant in enumerate(stamps) if instant is not None]
-    for k in range(len(filled)):
-        if filled[k] is None:
-            after = next((place for place in known if place > k), known[-1])
-            before = next((place for place in reversed(known) if place < after), known[0])
-            first, last = stamps[before] or 0, stamps[after] or 0
-            filled[k] = first + (last - first) * (k - before) // max(after - before, 1)
-    return [instant or 0 for instant in filled]
+    known = {k: instant for k, instant in enumerate(stamps) if instant is not None}
+    places = list(known)
+    filled = []
+    for k in range(len(stamps)):
+        after = min(max(bisect_left(places, k), 1), len(places) - 1)
+        one, other = places[max(after - 1, 0)], places[after]
+        filled.append(known[one] + (known[other] - known[one]) * (k - one) // max(other - one, 1))
+    return filled
 
 
 def _from_whole_seconds(names: list[str], stamps: list[int | None], start: float) -> FrameClock:
@@ -263,6 +264,6 @@ def _two_digits(value: float) -> str:
     return f"{ceil(value / unit - 1e-9) * unit:.2g}"
 
 
-def exposure_of(section: Frames, pages: Sequence[Place]) -> float | None:
+def exposure_of(section: Frames, pages: Sequence[Page]) -> float | None:
     """Return the exposure time, s: as given, else as the first file says it; None where it does not."""
     return section.exposure if section.exposure is not None else read_tags(pages[:1])[0].exposure_s

@@ -53,10 +53,14 @@ def from_parts(
 ) -> int | None:
     """Return the instant of a date and a time of day; None where the calendar has no such day or time."""
     try:
-        whole = datetime(year, month, day, hour, minute, second) - _ZERO
+        return from_datetime(datetime(year, month, day, hour, minute, second)) + nanoseconds
     except ValueError:
         return None
-    return (whole // timedelta(seconds=1)) * SECOND + nanoseconds
+
+
+def from_datetime(moment: datetime) -> int:
+    """Return the instant of a date and time, to the second."""
+    return (moment - _ZERO) // timedelta(seconds=1) * SECOND
 
 
 def fraction(digits: str) -> int:

@@ -13,9 +13,10 @@ from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from itertools import groupby
 from pathlib import Path
-from typing import Any, Protocol
+from typing import Any
 
 from dic.frames import instants
+from dic.frames.page import Page
 
 #: Tags that hold a stamp and the tags that hold its sub-seconds, the one nearest to the shutter first.
 _STAMPS = ((36867, 37521), (36868, 37522), (306, 37520))
@@ -29,18 +30,6 @@ _NAMED = {
     "SubsecTimeDigitized": 37522,
     "ExposureTime": _EXPOSURE,
 }
-
-
-class Place(Protocol):
-    """Where a picture lies."""
-
-    @property
-    def path(self) -> Path:
-        """Its file."""
-
-    @property
-    def index(self) -> int:
-        """Its page in it."""
 
 
 @dataclass(frozen=True)
@@ -59,7 +48,7 @@ class Tags:
     exposure_s: float | None = None
 
 
-def read_tags(pages: Sequence[Place]) -> list[Tags]:
+def read_tags(pages: Sequence[Page]) -> list[Tags]:
     """Read what picture files say of themselves; damaged or foreign tags count as absent.
 
     Parameters

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator
-from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -93,13 +92,7 @@ def _attempt(read: Callable[[], Any], errors: list[str]) -> Any:
 
 def _opened_frames(sections: dict[str, Any], path: Path) -> FrameSource | None:
     section: Frames | None = sections.get("frames")
-    if section is None:
-        return None
-    if section.rate or section.times or section.clock or section.own_times:
-        return open_frames(section, path.parent)
-    # Whatever else the frames are can be told without a clock.
-    source = open_frames(section.model_copy(update={"rate": 1.0}), path.parent)
-    return replace(source, time_s=np.full(len(source), np.nan), notices=())
+    return None if section is None else open_frames(section, path.parent)
 
 
 def _check_damage(damage: dict[int, str], source: FrameSource, section: Frames) -> None:

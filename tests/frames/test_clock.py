@@ -134,6 +134,14 @@ def test_a_damaged_frame_without_a_stamp_leaves_the_others_their_times(folder, e
     assert list(source.damage) == [empty]
 
 
+def test_a_damaged_first_frame_is_what_is_said(folder):
+    for k, moment in enumerate(moments(0, 0.2, 0.4, 0.6)):
+        write_tiff(folder / "frames" / f"f{k}.tif", moment)
+    (folder / "frames" / "f0.tif").write_bytes(b"")
+    with pytest.raises(FrameError, match=r"f0\.tif: cannot be read as a picture"):
+        opened(folder, clock="tags")
+
+
 def test_equal_stamps_are_named(folder):
     for k, moment in enumerate(moments(0, 0.2, 0.2, 0.4)):
         write_tiff(folder / "frames" / f"f{k}.tif", moment)
