@@ -10,7 +10,7 @@ from scipy import ndimage
 
 from dic.errors import PatternError, TestFileError
 from dic.pattern.edges import Edges, Found, Profile, between, long_edges
-from dic.pattern.given import Given
+from dic.pattern.given import NOTHING_GIVEN, Given
 from dic.pattern.outline import Mask, outline_direction
 from dic.pattern.texture import missed, speckle_size, textured_area
 
@@ -18,8 +18,6 @@ from dic.pattern.texture import missed, speckle_size, textured_area
 EDGE_MARGIN_PX = 2.0
 #: Clarity of the outline's direction below which it is not taken for the pull's: sides 1.5 times the ends.
 LEAST_CLARITY = 0.2
-#: Edges whose stations scatter by more than this about their line are not straight, px.
-MOST_SCATTER_PX = 1.0
 
 _GIVE_AXIS = 'give gauge.axis, for example "vertical"'
 
@@ -73,7 +71,7 @@ def find_coupon(
     image: NDArray[np.generic],
     axis_angle_deg: float | None = None,
     region: Mask | None = None,
-    given: Given = Given(),  # noqa: B008  (frozen)
+    given: Given = NOTHING_GIVEN,
 ) -> Coupon:
     """Find the speckled coupon in the reference picture.
 
@@ -215,7 +213,7 @@ def _width(found: Found) -> tuple[float, float]:
     if left is None or right is None:
         return float("nan"), float("nan")
     middle = (left.along + right.along) / 2
-    wide = float(right.at(middle) - left.at(middle))
+    wide = right.at(middle) - left.at(middle)
     turned = float(np.cos(np.arctan((left.slope + right.slope) / 2)))
     # One blur moves both edges inwards alike.
     blur = 2 * found.blur_shift * (found.u_blur if np.isfinite(found.u_blur) else 0.0)

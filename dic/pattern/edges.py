@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
+from typing import TypeVar
 
 import numpy as np
 from numpy.typing import NDArray
@@ -40,6 +41,10 @@ WIDE_PX, NARROW_PX = 9.0, 4.0
 SHARP_PX = 0.85
 
 
+#: One place along the axis or many, px.
+Along = TypeVar("Along", float, Floats)
+
+
 @dataclass(frozen=True)
 class Edge:
     """The straight part of a long edge in coupon axes, counted from the picture's middle.
@@ -64,7 +69,7 @@ class Edge:
     u_offset: float = 0.0
     u_slope: float = 0.0
 
-    def at(self, along: Floats | float) -> Floats | float:
+    def at(self, along: Along) -> Along:
         """Return the offset at a place along the axis, px."""
         return self.offset + self.slope * along
 
@@ -176,7 +181,7 @@ def long_edges(grey: NDArray[np.float32], mask: Mask, angle_deg: float, *, turn:
     turn
         Whether the axis may turn until it agrees with the edges.
     """
-    sides: tuple[Floats, Floats] = rough_sides(mask, angle_deg)
+    sides: list[Floats] = list(rough_sides(mask, angle_deg))
     blur, u_blur, shift = SHARP_PX, float("nan"), 0.0
     for done in range(MOST_ROUNDS):
         traces = [
@@ -195,10 +200,10 @@ def long_edges(grey: NDArray[np.float32], mask: Mask, angle_deg: float, *, turn:
         step = found.turn_deg()
         if done >= 2 and (not turn or abs(step) < max(SETTLED_DEG, SETTLED_SHARE * found.u_angle_deg())):
             return _centred(grey, found, turn)
-        sides = tuple(  # type: ignore[assignment]
+        sides = [
             points if place is None else _in_picture(grey.shape, angle_deg, *place)
             for points, place in zip(sides, stations, strict=True)
-        )
+        ]
         if turn:
             angle_deg += step if abs(step) > GENTLE_DEG else step / 2
     swings = abs(step) > SWING_SIGMAS * found.u_angle_deg()
@@ -225,40 +230,46 @@ def between(
 
 
 def _centred(grey: NDArray[np.float32], found: Found, turn: bool) -> Found:
-    """Move each line to where all its rays together find the edge likeliest.
-
-    A station sees a few speckles only, and the likeliest place of so few is a little one-sided.
-    """
-    axial, transverse = axes(found.angle_deg)
-    edges: list[Edge | None] = []
-    for edge, side, offset in zip(
-        found.edges, (-1, 1), (found.profile.left, found.profile.right), strict=True
-    ):
-        trace = None
-        if edge is not None and found.parallel is not None:
-            there = found.profile.along[np.isfinite(offset)]
-            there = there[(there >= found.parallel[0]) & (there <= found.parallel[1])]
-            if len(there) > 1:
-                there = np.linspace(there[0] - STATION_PX / 2, there[-1] + STATION_PX / 2, 3 * len(there))
-                points = centre(grey.shape) + there[:, None] * axial + edge.at(there)[:, None] * transverse  # type: ignore[index]
-                trace = Trace.along(grey, points, found.angle_deg, side, NARROW_PX)
-        if trace is None or edge is None:
-            edges.append(edge)
-            continue
-        inward, lean = trace.likeliest_line(found.blur)
-        slope = edge.slope - side * lean
-        middle = float(edge.at(float(trace.place.mean()))) - side * inward
-        edges.append(replace(edge, offset=middle - slope * float(trace.place.mean()), slope=slope))
-    found = replace(found, edges=(edges[0], edges[1]))
+    """Move each line to where all its rays together find the edge likeliest, and the axis between them."""
+    left, right = (
+        None if edge is None else _likeliest(grey, found, edge, side, offset)
+        for edge, side, offset in zip(
+            found.edges, (-1, 1), (found.profile.left, found.profile.right), strict=True
+        )
+    )
+    found = replace(found, edges=(left, right))
     if not turn:
         return found
     step = found.turn_deg()
     # So small a turn about the picture's middle changes slopes only.
-    level = tuple(
+    left, right = (
         None if edge is None else replace(edge, slope=edge.slope - float(np.tan(np.radians(step))))
         for edge in found.edges
     )
-    return replace(found, angle_deg=found.angle_deg + step, edges=level)  # type: ignore[arg-type]
+    return replace(found, angle_deg=found.angle_deg + step, edges=(left, right))
+
+
+def _likeliest(grey: NDArray[np.float32], found: Found, edge: Edge, side: int, offset: Floats) -> Edge:
+    """Return an edge where all its rays together find it; as it is where too little of it is seen.
+
+    A station sees a few speckles only, and the likeliest place of so few is a little one-sided.
+    """
+    if found.parallel is None:
+        return edge
+    there = found.profile.along[np.isfinite(offset)]
+    there = there[(there >= found.parallel[0]) & (there <= found.parallel[1])]
+    if len(there) < 2:
+        return edge
+    axial, transverse = axes(found.angle_deg)
+    there = np.linspace(there[0] - STATION_PX / 2, there[-1] + STATION_PX / 2, 3 * len(there))
+    points = centre(grey.shape) + there[:, None] * axial + edge.at(there)[:, None] * transverse
+    trace = Trace.along(grey, points, found.angle_deg, side, NARROW_PX)
+    if trace is None:
+        return edge
+    inward, lean = trace.likeliest_line(found.blur)
+    slope, place = edge.slope - side * lean, float(trace.place.mean())
+    middle = edge.at(place) - side * inward
+    return replace(edge, offset=middle - slope * place, slope=slope)
 
 
 def _blur(traces: list[Trace | None], edges: Edges, start: float) -> tuple[float, float, float]:
@@ -325,11 +336,11 @@ def _straight(stations: list[tuple[Floats, Floats] | None], angle_deg: float) ->
     )
     section = np.zeros(len(profile.along), bool)
     section[first : last + 1] = True
-    edges = tuple(
+    left, right = (
         None if line is None else _fit(profile.along, offset, mark & section)
         for line, offset, mark in zip(lines, (profile.left, profile.right), on, strict=True)
     )
-    return Found(angle_deg, edges, profile, parallel)  # type: ignore[arg-type]
+    return Found(angle_deg, (left, right), profile, parallel)
 
 
 def _profile(stations: list[tuple[Floats, Floats] | None]) -> Profile:

@@ -62,42 +62,9 @@ class Given:
                     remedy=f"{size}; a hole is [x, y, radius]",
                 )
         if self.mask is not None:
-            self._check_mask(shape)
+            _check_mask(self.mask, shape)
         if self.edges is not None:
-            self._check_crossing(shape)
-
-    def _check_mask(self, shape: tuple[int, ...]) -> None:
-        assert self.mask is not None  # noqa: S101  (the caller has looked)
-        if self.mask.shape != shape:
-            raise TestFileError(
-                f"the mask is {self.mask.shape[1]} px wide and {self.mask.shape[0]} px high",
-                where="coupon.mask",
-                remedy=f"it must be as large as the frames, {shape[1]} by {shape[0]} px",
-            )
-        if not self.mask.any():
-            raise TestFileError(
-                "the mask leaves nothing of the picture, because it is black everywhere",
-                where="coupon.mask",
-                remedy="make the coupon white (more than half of the grey scale)",
-            )
-
-    def _check_crossing(self, shape: tuple[int, ...]) -> None:
-        assert self.edges is not None  # noqa: S101  (the caller has looked)
-        (a, along), (b, beside) = (_ray(line) for line in self.edges)
-        steep = along[0] * beside[1] - along[1] * beside[0]
-        if abs(steep) < 1e-9:
-            if abs(along[0] * (b - a)[1] - along[1] * (b - a)[0]) < 1:
-                raise TestFileError(
-                    "both edges are the same line", where="coupon.edges", remedy="give one edge on each side"
-                )
-            return
-        x, y = a + along * float((b[0] - a[0]) * beside[1] - (b[1] - a[1]) * beside[0]) / steep
-        if 0 <= x < shape[1] and 0 <= y < shape[0]:
-            raise TestFileError(
-                f"the two edges cross inside the picture, at x {x:.0f}, y {y:.0f} px",
-                where="coupon.edges",
-                remedy="give two points [x1, y1, x2, y2] on each long side of the coupon",
-            )
+            _check_crossing(self.edges, shape)
 
     def axis_deg(self) -> float | None:
         """Return the direction half way between both edges, deg from the vertical; None without edges."""
@@ -108,8 +75,9 @@ class Given:
         return float((np.degrees(np.arctan2(x, -y)) + 90.0) % 180.0 - 90.0)
 
     def lines(self, shape: tuple[int, ...], angle_deg: float) -> Edges:
-        """Return the given edges in coupon axes."""
-        assert self.edges is not None  # noqa: S101  (asked for only where they are given)
+        """Return the given edges in coupon axes; none where they are to be found."""
+        if self.edges is None:
+            return None, None
         found = sorted((_edge(line, shape, angle_deg) for line in self.edges), key=lambda one: one.offset)
         return found[0], found[1]
 
@@ -127,6 +95,43 @@ class Given:
         for hole_x, hole_y, radius in self.holes:
             marked |= (x - hole_x) ** 2 + (y - hole_y) ** 2 < (radius + margin) ** 2
         return marked
+
+
+#: Everything is to be found.
+NOTHING_GIVEN = Given()
+
+
+def _check_mask(mask: Mask, shape: tuple[int, ...]) -> None:
+    if mask.shape != shape:
+        raise TestFileError(
+            f"the mask is {mask.shape[1]} px wide and {mask.shape[0]} px high",
+            where="coupon.mask",
+            remedy=f"it must be as large as the frames, {shape[1]} by {shape[0]} px",
+        )
+    if not mask.any():
+        raise TestFileError(
+            "the mask leaves nothing of the picture, because it is black everywhere",
+            where="coupon.mask",
+            remedy="make the coupon white (more than half of the grey scale)",
+        )
+
+
+def _check_crossing(edges: tuple[Line, Line], shape: tuple[int, ...]) -> None:
+    (a, along), (b, beside) = (_ray(line) for line in edges)
+    steep = along[0] * beside[1] - along[1] * beside[0]
+    if abs(steep) < 1e-9:
+        if abs(along[0] * (b - a)[1] - along[1] * (b - a)[0]) < 1:
+            raise TestFileError(
+                "both edges are the same line", where="coupon.edges", remedy="give one edge on each side"
+            )
+        return
+    x, y = a + along * float((b[0] - a[0]) * beside[1] - (b[1] - a[1]) * beside[0]) / steep
+    if 0 <= x < shape[1] and 0 <= y < shape[0]:
+        raise TestFileError(
+            f"the two edges cross inside the picture, at x {x:.0f}, y {y:.0f} px",
+            where="coupon.edges",
+            remedy="give two points [x1, y1, x2, y2] on each long side of the coupon",
+        )
 
 
 def _ray(line: Line) -> tuple[Floats, Floats]:

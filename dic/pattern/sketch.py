@@ -51,13 +51,11 @@ def sketch(coupon: Coupon) -> Sketch:
             edges.append(place(profile.along[seen], side[seen]))
         elif edge is not None:
             along = np.array([-reach, reach])
-            edges.append(place(along, np.asarray(edge.at(along))))
+            edges.append(place(along, edge.at(along)))
     left, right = coupon.edges
     for end in coupon.parallel:
         if np.isfinite(end):
-            across = [
-                float(edge.at(end)) if edge else sign * reach for edge, sign in ((left, -1), (right, 1))
-            ]
+            across = [edge.at(end) if edge else sign * reach for edge, sign in ((left, -1), (right, 1))]
             ends.append(place(np.array([end, end]), np.array(across)))
     return Sketch(tuple(edges), tuple(ends), tuple(_outlines(coupon.holes)))
 

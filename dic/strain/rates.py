@@ -16,7 +16,6 @@ from dic.strain.maps import Window
 
 Floats = NDArray[np.float64]
 Bools = NDArray[np.bool_]
-Powers = tuple[tuple[int, int], ...]
 
 #: Stations along the gauge and points across it, at the most; fewer where subsets are few.
 MOST_STATIONS, MOST_POINTS = 5, 7
