@@ -13,6 +13,7 @@ from rich.table import Table
 
 from dic.errors import printable
 from dic.quantities import for_people
+from dic.rounding import COVERAGE_FACTOR
 from dic.store.tables import absent_in, called, found_in, short_list, stated
 
 if TYPE_CHECKING:
@@ -54,8 +55,9 @@ def _plain(text: str) -> str:
 def show_measurement(measurement: Measurement) -> None:
     """Print the properties, the warnings and where the report lies."""
     table = Table(title=_plain(measurement.test.specimen.label), title_justify="left")
-    for heading in ("property", "symbol", "value (k = 2)"):
-        table.add_column(heading)
+    table.add_column("property")
+    for heading in ("symbol", f"value (k = {COVERAGE_FACTOR:g})"):
+        table.add_column(heading, no_wrap=True)
     for item in found_in(measurement.properties):
         table.add_row(called(item), item.symbol, stated(item)[0])
     console.print(table)
@@ -72,8 +74,9 @@ def show_measurement(measurement: Measurement) -> None:
 def show_comparison(rows: Iterable[Compared]) -> None:
     """Print measured beside true values, and whether the stated interval holds the truth."""
     table = Table(title="measured beside true", title_justify="left")
-    for heading in ("property", "measured (k = 2)", "true", "off by", "truth inside"):
-        table.add_column(heading, justify="left" if heading == "property" else "right")
+    table.add_column("property")
+    for heading in (f"measured (k = {COVERAGE_FACTOR:g})", "true", "off by", "truth inside"):
+        table.add_column(heading, justify="right", no_wrap=True)
     for row in rows:
         value, unit = for_people(row.true, row.item.unit, row.item.name)
         table.add_row(

@@ -6,7 +6,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from dic.rounding import decimals_for, fixed, uncertainty_alone, with_uncertainty
+from dic.rounding import decimals_for, fixed, power_of_ten, three_digits, uncertainty_alone, with_uncertainty
 
 positive = st.floats(min_value=1e-12, max_value=1e12)
 values = st.floats(min_value=-1e12, max_value=1e12)
@@ -23,6 +23,11 @@ values = st.floats(min_value=-1e12, max_value=1e12)
         (1.0, 0.0996, "1.00 ± 0.10 g"),
         (-0.0004, 0.21, "0.00 ± 0.21 g"),
         (1.0, 99.6, "0 ± 100 g"),
+        # One power of ten for both, outside the brackets (common practice).
+        (0.00083914, 0.00000093, "(8.3914 ± 0.0093) × 10⁻⁴ g"),
+        (-0.00083914, 0.00000093, "(-8.3914 ± 0.0093) × 10⁻⁴ g"),
+        (0.0, 3.02e-9, "(0.0 ± 3.0) × 10⁻⁹ g"),
+        (9.9999999e-5, 3e-7, "(1.0000 ± 0.0030) × 10⁻⁴ g"),
     ],
 )
 def test_written_as_the_gum_asks(value, u, written):
@@ -39,7 +44,26 @@ def test_without_value_or_uncertainty_says_so():
 
 def test_an_uncertainty_alone():
     assert uncertainty_alone(0.1049, "GPa") == "0.10 GPa"
-    assert uncertainty_alone(1.14e-8) == "1.1e-08"
+    assert uncertainty_alone(0.02, "°") == "0.020°"
+    assert uncertainty_alone(1.14e-8) == "1.1 × 10⁻⁸"
+    assert uncertainty_alone(9.999e-8, "m") == "1.0 × 10⁻⁷ m"
+    # With the power of ten of its value.
+    assert uncertainty_alone(4.7e-7, "1/s", power_of_ten(0.00083914, 9.4e-7)) == "0.0047 × 10⁻⁴ 1/s"
+
+
+@pytest.mark.parametrize(
+    ("value", "written"),
+    [
+        (4.0216e-5, "4.02 × 10⁻⁵"),
+        (-9.999e-8, "-1 × 10⁻⁷"),
+        (9.999e-5, "0.0001"),
+        (0.0, "0"),
+        (71234.0, "71200"),
+        (float("nan"), "nan"),
+    ],
+)
+def test_three_digits(value, written):
+    assert three_digits(value) == written
 
 
 @given(positive)

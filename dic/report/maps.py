@@ -18,7 +18,7 @@ from numpy.typing import NDArray
 from dic.measurement import Measurement, Scene
 from dic.report.figures import WIDTH, Drawing, legend_above, sheet, strain_unit
 from dic.report.moments import Moment
-from dic.rounding import three_digits, uncertainty_alone
+from dic.rounding import fixed, three_digits, uncertainty_alone
 from dic.strain import MapFlag, measures
 
 if TYPE_CHECKING:
@@ -108,7 +108,8 @@ def draw_scene(measurement: Measurement) -> Drawing:
     legend_above(axes, 1 if rows > columns else 2)
     reading = (
         "The reference picture with the region whose strain is averaged (outline) and the direction of "
-        f"loading (arrow, {scene.axis_angle_deg:.2f}° clockwise from the vertical; {scene.axis_method}). "
+        f"loading (arrow, {fixed(scene.axis_angle_deg, 2)}° clockwise from the vertical; "
+        f"{scene.axis_method}). "
         f"{_SKETCHED if scene.sketch is not None else ''}"
         f"The filled squares show one subset ({scene.subset_px} px, the patch that is recognised again) "
         f"and the window over which a point of the strain maps is formed ({_gauge_size(scene)}). The "

@@ -14,6 +14,7 @@ from markupsafe import Markup
 
 from dic.comparison import ClipOn
 from dic.measurement import Measurement, Scene
+from dic.properties.evaluation import NOT_INCLUDED
 from dic.properties.result import Property
 from dic.report import words
 from dic.report.alignment import draw_alignment, sentences, sides, verdict
@@ -26,10 +27,18 @@ from dic.report.maps import draw_maps, draw_scene
 from dic.report.moments import choose_moments
 from dic.report.optics import camera_rows
 from dic.report.stress import draw_stress
-from dic.rounding import COVERAGE_FACTOR, decimals_for, fixed, uncertainty_alone, with_uncertainty
+from dic.rounding import (
+    COVERAGE_FACTOR,
+    decimals_for,
+    fixed,
+    three_digits,
+    times_ten_to,
+    uncertainty_alone,
+    with_uncertainty,
+)
 from dic.store.folder import FIGURES
 from dic.store.results import encoded, write_whole
-from dic.store.tables import absent_in, called, found_in, shown_in, stated
+from dic.store.tables import absent_in, called, found_in, stated, written_with
 from dic.uncertainty import Row
 
 if TYPE_CHECKING:
@@ -117,7 +126,7 @@ def _page(measurement: Measurement, pictures: dict[str, list[Picture]], no_stres
     )
     environment.filters.update(breakable=words.breakable, share=words.share)
     template = environment.from_string(room.joinpath("page.html").read_text(encoding="utf-8"))
-    test = measurement.test
+    test, shown = measurement.test, found_in(measurement.properties)
     return template.render(
         style=Markup(room.joinpath("page.css").read_text(encoding="utf-8")),  # noqa: S704  (our own file)
         specimen=test.specimen,
@@ -126,7 +135,8 @@ def _page(measurement: Measurement, pictures: dict[str, list[Picture]], no_stres
         frames=len(measurement.history),
         area=f"{measurement.curve.area_mm2:.4g} mm²",
         k=f"{COVERAGE_FACTOR:g}",
-        properties=[_entry(item) for item in found_in(measurement.properties)],
+        properties=[_entry(item) for item in shown],
+        left_out=_left_out(shown),
         absent=[
             (reason, [(called(item), words.symbol(item.symbol)) for item in items])
             for reason, items in absent_in(measurement.properties)
@@ -192,13 +202,13 @@ def _worked_out(scene: Scene) -> list[tuple[str, str]]:
         ("scale in force", f"{scene.scale_mm:.5g} mm/px" if isfinite(scene.scale_mm) else "unknown"),
         ("subset in force", f"{scene.subset_px} px, one every {scene.step_px} px"),
         ("strain window of the maps", f"{scene.map_gauge_px:g} px"),
-        ("axis in force", f"{scene.axis_angle_deg:.3f}° from the vertical, {scene.axis_method}"),
+        ("axis in force", f"{fixed(scene.axis_angle_deg, 3)}° from the vertical, {scene.axis_method}"),
     ]
 
 
 def _entry(item: Property) -> dict[str, Any]:
     """Return a property as the template shows it."""
-    value, standard = stated(item)
+    value, standard = map(words.unbroken, stated(item))
     return {
         "anchor": words.identifier(item.name),
         "title": called(item),
@@ -209,34 +219,44 @@ def _entry(item: Property) -> dict[str, Any]:
         "window": words.window(item.window),
         # One range names the window; the others say the same in other quantities.
         "short_window": words.window(dict(list(item.window.items())[:1])),
-        "notes": item.notes,
+        "notes": [note for note in item.notes if not note.startswith(NOT_INCLUDED)],
         "contributions": _contributions(item),
         "interval": _interval(item),
-        "missing": [row.source for row in item.budget if not row.included],
     }
+
+
+def _left_out(items: list[Property]) -> list[tuple[str, list[Markup]]]:
+    """Return what uncertainties do not include, each once, with the symbols of the properties concerned."""
+    found: dict[str, list[Markup]] = {}
+    for item in items:
+        for note in item.notes:
+            if note.startswith(NOT_INCLUDED):
+                found.setdefault(note.removeprefix(NOT_INCLUDED), []).append(words.symbol(item.symbol))
+    return list(found.items())
 
 
 def _interval(item: Property) -> str:
     """Return the ends of the interval by draws, to two digits of the uncertainty; empty where unknown."""
     if not isfinite(item.interval_95[0]) or not item.standard_uncertainty > 0:
         return ""
-    scale, unit = shown_in(item)
+    scale, unit, power = written_with(item)
     decimals = decimals_for(COVERAGE_FACTOR * item.standard_uncertainty * scale)
-    low, high = (fixed(end * scale, decimals) for end in item.interval_95)
-    return f"{low} to {high} {unit}".rstrip()
+    low, high = (fixed(end * scale, decimals, power) for end in item.interval_95)
+    both = f"({low} to {high})" if power else f"{low} to {high}"
+    return both + words.unbroken(times_ten_to(power, unit))
 
 
 def _contributions(item: Property) -> list[tuple[str, str, str, str, float]]:
     """Return source, input, sensitivity, contribution and share in percent, the largest first."""
     known = {source: abs(u) for source, u in item.contributions.items() if isfinite(u)}
     total = sum(u**2 for u in known.values())
-    scale, unit = shown_in(item)
+    scale, unit, power = written_with(item)
     behind = {row.source: _input(row, unit, scale) for row in item.budget if row.included}
     return [
         (
             source,
             *behind.get(source, ("", "")),
-            uncertainty_alone(u * scale, unit),
+            words.unbroken(uncertainty_alone(u * scale, unit, power)),
             100 * u**2 / total if total else 0.0,
         )
         for source, u in sorted(known.items(), key=lambda pair: -pair[1])
@@ -249,5 +269,8 @@ def _input(row: Row, unit: str, scale: float) -> tuple[str, str]:
         return "the readings themselves", "1"
     said = f"{row.value:.6g} {row.unit}".rstrip()
     per = f"{unit}/{row.unit}" if row.unit else unit
-    sensitivity = f"{row.sensitivity * scale:.3g} {per}".rstrip() if isfinite(row.sensitivity) else ""
-    return f"{said} ({uncertainty_alone(row.standard_uncertainty, row.unit)})", sensitivity
+    sensitivity = (
+        f"{three_digits(row.sensitivity * scale)} {per}".rstrip() if isfinite(row.sensitivity) else ""
+    )
+    alone = uncertainty_alone(row.standard_uncertainty, row.unit)
+    return f"{words.unbroken(said)} ({words.unbroken(alone)})", words.unbroken(sensitivity)

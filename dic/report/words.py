@@ -12,7 +12,10 @@ import numpy as np
 from markupsafe import Markup
 
 from dic.report.figures import strain_unit
-from dic.rounding import COVERAGE_FACTOR, three_digits, with_uncertainty
+from dic.rounding import COVERAGE_FACTOR, fixed, three_digits, uncertainty_alone, with_uncertainty
+
+#: Keeps a number and its unit in one line.
+NO_BREAK = "\N{NO-BREAK SPACE}"
 
 #: Units that the end of a name stands for.
 _UNITS = {
@@ -127,7 +130,7 @@ CAUTIONS = (
     "falsifies strains; where that matters, measure the opposite face as well.",
     "Motion of the coupon towards or away from the camera looks like strain, the same amount in both "
     "directions.",
-    "Uncertainties contain what their tables list and nothing else; notes name what was left out.",
+    "Uncertainties contain what their tables list and nothing else; above them stands what is not included.",
 )
 
 
@@ -147,6 +150,11 @@ def breakable(text: str) -> Markup:
     return Markup("<wbr>").join(pieces)
 
 
+def unbroken(text: str) -> str:
+    """Keep a number with its uncertainty and unit in one line."""
+    return text.replace(" ", NO_BREAK)
+
+
 def share(percent: float) -> str:
     """Say a share, a small one without pretending that it is none."""
     return "< 1 %" if 0 < percent < 1 else f"{percent:.0f} %"
@@ -164,7 +172,7 @@ def _range(name: str, low: float, high: float) -> str:
         scale, unit = strain_unit(np.array([low, high]))
     low_text, high_text = f"{low * scale:.4g}", f"{high * scale:.4g}"
     bounds = low_text if low_text == high_text else f"{low_text} to {high_text}"
-    return f"{stem if unit and stem else name} {bounds} {unit}".rstrip()
+    return f"{stem if unit and stem else name} {bounds}{NO_BREAK if unit else ''}{unit}"
 
 
 def labelled(
@@ -197,13 +205,15 @@ def _labelled(name: str, value: Any, u: float | None) -> tuple[str, str, str]:
         return label, "yes" if value else "no", meaning
     if u is not None:
         return label, with_uncertainty(float(value), COVERAGE_FACTOR * u, unit), meaning
+    if name.startswith("u_"):
+        return label, uncertainty_alone(float(value), unit), meaning
     if ending == "fraction":
         return label, f"{100 * value:.3g} %", meaning
     if "strain" in name and not unit:
         scale, unit = strain_unit(float(value))
         return label, f"{three_digits(value * scale)} {unit}", meaning
     if unit == "°":
-        return label, f"{value:.2f}°", meaning
+        return label, f"{fixed(float(value), 2)}°", meaning
     # Whole numbers are counts; of the rest three digits tell enough.
     text = f"{value:.0f}" if float(value).is_integer() else three_digits(float(value))
     return label, f"{text} {unit}".rstrip(), meaning

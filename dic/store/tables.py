@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from dic.quantities import for_people
-from dic.rounding import COVERAGE_FACTOR, uncertainty_alone, with_uncertainty
+from dic.rounding import COVERAGE_FACTOR, power_of_ten, uncertainty_alone, with_uncertainty
 
 if TYPE_CHECKING:
     from collections.abc import Mapping, Sequence
@@ -155,6 +155,12 @@ def shown_in(item: Property) -> tuple[float, str]:
     return (value / item.value if item.value and isfinite(item.value) else 1.0), unit
 
 
+def written_with(item: Property) -> tuple[float, str, int]:
+    """Return `shown_in`, and the power of ten that all figures of a property are written with; 0 for none."""
+    scale, unit = shown_in(item)
+    return scale, unit, power_of_ten(item.value * scale, COVERAGE_FACTOR * item.standard_uncertainty * scale)
+
+
 def stated(item: Property) -> tuple[str, str]:
     """Return a property as people read it.
 
@@ -164,10 +170,10 @@ def stated(item: Property) -> tuple[str, str]:
         The value with its qualifier and its expanded uncertainty (k = 2), and the standard uncertainty
         alone.
     """
-    scale, unit = shown_in(item)
+    scale, unit, power = written_with(item)
     standard = item.standard_uncertainty * scale
     expanded = with_uncertainty(item.value * scale, COVERAGE_FACTOR * standard, unit)
-    return f"{item.qualifier} {expanded}".lstrip(), uncertainty_alone(standard, unit)
+    return f"{item.qualifier} {expanded}".lstrip(), uncertainty_alone(standard, unit, power)
 
 
 def properties_text(measurement: Measurement) -> str:

@@ -90,7 +90,9 @@ def test_scale_bar_is_round_and_fits(length):
 
 def test_windows_in_words():
     bounds = {"strain": (0.0005, 0.0025), "stress_MPa": (20.0, 120.0), "time_s": (3.5, 3.5)}
-    assert words.window(bounds) == "strain 500 to 2500 µm/m; stress 20 to 120 MPa; time 3.5 s"
+    said = words.window(bounds)
+    assert said.replace(words.NO_BREAK, " ") == "strain 500 to 2500 µm/m; stress 20 to 120 MPa; time 3.5 s"
+    assert said.count(words.NO_BREAK) == 3  # one before each unit
     assert words.window({}) == ""
 
 
@@ -131,7 +133,7 @@ def test_a_figure_and_its_uncertainty_make_one_row():
     """Expanded, k = 2, and rounded to two of its digits."""
     figures = {"bending_percent": -6.0731, "u_bending_percent": 0.12, "u_axis_deg": 0.02, "x_corrected": 0.0}
     rows = words.labelled(figures, {"left": "upper", "right": "lower", "near": "right", "far": "left"})
-    assert [row[1] for row in rows] == ["-6.07 ± 0.24 %", "0.02°", "no"]
+    assert [row[1] for row in rows] == ["-6.07 ± 0.24 %", "0.020°", "no"]
     assert "the lower edge" in rows[0][2]
 
 

@@ -11,6 +11,7 @@ import numpy as np
 import pytest
 from PIL import Image
 
+from dic.properties.evaluation import NOT_INCLUDED
 from dic.properties.result import ModulusLine
 from dic.report import write_report
 from dic.store.folder import FIGURES
@@ -138,6 +139,35 @@ def test_what_is_absent_for_one_reason_stands_on_one_line(page, lost, fields, tm
     [line] = re.findall(r"Young's modulus[^.:]*: no elastic part was found\.", other.text)
     assert re.search("Poisson's ratio .*Shear modulus", line)
     assert other.text.count("no elastic part was found") == 1
+
+
+def test_what_is_not_included_stands_once(measurement, fields, tmp_path):
+    lacking = f"{NOT_INCLUDED}false strain from somewhere"
+    noted = {
+        name: dataclasses.replace(item, notes=(*item.notes, lacking))
+        for name, item in measurement.properties.items()
+        if name in ("youngs_modulus", "poissons_ratio")
+    }
+    changed = dataclasses.replace(measurement, properties=measurement.properties | noted)
+    text = Page(write_report(changed, fields, tmp_path).read_text(encoding="utf-8")).text
+    assert text.count("false strain from somewhere") == 1
+    assert "false strain from somewhere: E, ν." in text
+
+
+def test_no_number_is_parted_from_its_unit(folder, measurement):
+    source = (folder / "report.html").read_text(encoding="utf-8")
+    for item in found_in(measurement.properties):
+        for words in stated(item):
+            assert words.replace(" ", "\N{NO-BREAK SPACE}") in source
+    assert "strain 400 to 1600\N{NO-BREAK SPACE}µm/m" in source
+
+
+def test_zero_has_no_sign(measurement, fields, tmp_path):
+    straight = dataclasses.replace(measurement.scene, axis_angle_deg=-0.0004)
+    other = dataclasses.replace(measurement, scene=straight)
+    text = Page(write_report(other, fields, tmp_path).read_text(encoding="utf-8")).text
+    assert "Direction of loading 0.00°" in text
+    assert "-0.00" not in text
 
 
 def test_shares_of_the_uncertainty_are_shares_of_the_variance(page):
