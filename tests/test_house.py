@@ -70,3 +70,11 @@ def test_the_readmes_keys_are_all_there():
         model = (get_args(section.annotation) or (section.annotation,))[-1]
         for key in (field.alias or key for key, field in model.model_fields.items()):
             assert key in example.get(name, {}) or key in named, f"{name}.{key} is not in the README"
+
+
+def test_every_benchmark_is_named_for_developers():
+    source = (ROOT / "tests/benchmarks/__main__.py").read_text()
+    [names] = [ast.literal_eval(node.value) for node in ast.parse(source).body
+               if isinstance(node, ast.Assign) and node.targets[0].id == "NAMES"]  # fmt: skip
+    command = (ROOT / "DEVELOPERS.md").read_text().split("tests/benchmarks accuracy")[1].split("```")[0]
+    assert {name for name in names[1:] if not re.search(rf"\b{name}\b", command)} == set()
