@@ -11,7 +11,7 @@ from typing import TYPE_CHECKING, Any
 from rich.table import Table
 from rich.text import Text
 
-from dic.errors import printable
+from dic.errors import listed, printable
 from dic_cli.screen import console
 
 if TYPE_CHECKING:
@@ -73,7 +73,7 @@ def _frame_rows(seen: FramesSeen) -> Iterable[tuple[str, str]]:
         yield "interval", _intervals(seen)
         yield "gaps in time", _some([f"{one} to {other}" for one, other in seen.gaps])
     yield "doubles", _some(seen.doubles)
-    yield "unreadable", _some(seen.unreadable)
+    yield "unreadable", _some(list(seen.unreadable))
     yield "brightness drift", f"{seen.brightness_drift:.1%} at the most"
 
 
@@ -93,10 +93,8 @@ def _intervals(seen: FramesSeen | RecordSeen) -> str:
     return f"{seen.interval_s:.4g} s, from {seen.shortest_s:.4g} s to {seen.longest_s:.4g} s"
 
 
-def _some(names: Iterable[str], most: int = 3) -> str:
-    names = list(names)
-    more = f" and {len(names) - most} more" if len(names) > most else ""
-    return ", ".join(names[:most]) + more if names else "none"
+def _some(names: Sequence[str], most: int = 3) -> str:
+    return listed(names, most) or "none"
 
 
 def _show_exposures(seen: FramesSeen) -> None:

@@ -12,7 +12,7 @@ from pydantic import ValidationError
 
 from dic.errors import FrameError, Notice, StoreError, TestFileError, printable
 from dic.frames import FramesSurvey, look_at_frames
-from dic.quantities import factor
+from dic.quantities import measures
 from dic.sync import ColumnSurvey, RecordSurvey, look_at_record
 
 #: Clocks of the frames, from the best; files' dates are too easily changed to be taken unasked.
@@ -257,7 +257,7 @@ def _columns(read: RecordSurvey) -> Iterator[str]:
         found = tuple(column for column in read.candidates(quantity) if column.unit is not None)
         if len(found) == 1:
             yield f"{quantity} = {_named(found[0], read)}"
-            if quantity == "extensometer" and _is_length(found[0].unit):
+            if quantity == "extensometer" and measures(found[0].unit or "", "length"):
                 yield 'extensometer_length = ""    # its gauge length, for example "50 mm"'
     if unitless:
         yield "# The headers do not say these units:"
@@ -271,14 +271,6 @@ def _named(column: ColumnSurvey, read: RecordSurvey) -> str:
     alike = sum(other.header.strip() == header.strip() for other in read.columns)
     plain = header.isprintable() and header.strip() and len(header) <= _LONGEST_HEADER
     return _quoted(header.strip()) if plain and alike == 1 else str(column.number)
-
-
-def _is_length(unit: str | None) -> bool:
-    try:
-        factor(unit or "", "length")
-    except ValueError:
-        return False
-    return True
 
 
 def _ending() -> Iterator[str]:

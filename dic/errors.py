@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from difflib import get_close_matches
 
@@ -107,3 +107,9 @@ def nearest(word: str, known: Iterable[str]) -> str:
     if close:
         return f"did you mean '{close[0]}'?"
     return "choose from: " + ", ".join(known)
+
+
+def listed(items: Sequence[object], most: int = 3) -> str:
+    """Return the first few of many items, and how many more there are."""
+    more = f" and {len(items) - most} more" if len(items) > most else ""
+    return ", ".join(map(str, items[:most])) + more

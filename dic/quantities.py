@@ -119,8 +119,8 @@ def _taken_apart(written: str, kind: str) -> tuple[float, str | None]:
 
 
 #: Names joined by * and /, each with a one-digit exponent at most: what pint is given to evaluate must
-#: not be able to grow.
-_NAME = r"[^\W\d_][^\W\d]*(?:(?:\^|\*\*)-?\d)?"
+#: not be able to grow.  Raised digits, which would be exponents too, count as letters of a name otherwise.
+_NAME = r"[^\W\d_⁰¹²³⁴-⁹][^\W\d⁰¹²³⁴-⁹]*(?:(?:\^|\*\*)-?\d)?"
 _UNIT = re.compile(rf"(?:1\s*/\s*)?{_NAME}(?:\s*[*/·]\s*{_NAME}|\s+{_NAME})*$")
 
 
@@ -152,6 +152,20 @@ def factor(unit: str, kind: str) -> float:
         raise ValueError(
             f"'{unit}' is not a unit of {kind}; write for example \"{EXAMPLES[kind]}\""
         ) from error
+
+
+def measures(unit: str, kind: str) -> bool:
+    """Tell whether a text is a unit of a kind of quantity."""
+    try:
+        factor(unit, kind)
+    except ValueError:
+        return False
+    return True
+
+
+def is_unit(text: str) -> bool:
+    """Tell whether a text is a unit of any kind; one of a column's header is never longer than 20 letters."""
+    return len(text) <= 20 and any(measures(text, kind) for kind in UNITS)
 
 
 def _target(kind: str) -> str:

@@ -61,6 +61,13 @@ def test_hostile_units_are_refused_at_once(unit):
         factor(unit, "force")
 
 
+@pytest.mark.parametrize("unit", ["Kicount⁹⁹", "Kicount·Kicount¹²"])
+def test_raised_digits_are_no_exponents_that_grow(unit):
+    """1024 to a power of ten digits, all of which Python would work out."""
+    with pytest.raises(ValueError, match="is not a unit;"):
+        factor(unit, "strain")
+
+
 def test_a_decimal_comma_is_told_so():
     with pytest.raises(ValueError, match="write a point"):
         parse("12,50 mm", "length")

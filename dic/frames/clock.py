@@ -13,9 +13,9 @@ from pathlib import Path
 import numpy as np
 from numpy.typing import NDArray
 
-from dic.errors import FrameError, Notice
+from dic.errors import FrameError, Notice, listed
 from dic.frames import instants
-from dic.frames.doubts import gap_doubts, listed, number_doubts, order_doubts
+from dic.frames.doubts import gap_doubts, number_doubts, order_doubts
 from dic.frames.even import even_rate
 from dic.frames.names import name_pattern, times_in_names
 from dic.frames.page import Page

@@ -12,12 +12,10 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from dic.errors import Notice
+from dic.errors import Notice, listed
 
 #: An interval longer than this many usual ones is a gap: one dropped frame makes two of it.
 GAP = 1.5
-#: How many cases a notice names.
-_NAMED = 3
 #: Every this many rows are compared first: pictures that differ nearly always differ there.
 _ROWS_APART = 61
 
@@ -111,12 +109,6 @@ def order_doubts(names: Sequence[str], order: Sequence[int]) -> Iterator[Notice]
             f"The order of names is not the order of times; frames were put in order of time: {listed(out)} "
             "would have come earlier by name. Check that the times are right.",
         )
-
-
-def listed(items: Sequence[str]) -> str:
-    """Return the first few of many items, and how many more there are."""
-    more = len(items) - _NAMED
-    return ", ".join(items[:_NAMED]) + (f" and {more} more" if more > 0 else "")
 
 
 class RepeatWatch:

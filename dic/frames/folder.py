@@ -7,13 +7,11 @@ from pathlib import Path
 
 from natsort import natsorted, ns
 
-from dic.errors import FrameError, Notice
+from dic.errors import FrameError, Notice, listed
 from dic.frames.readers import READERS, reader_of
 
 #: What operating systems leave in folders.
 _HIDDEN = {"thumbs.db", "desktop.ini"}
-#: Names that a notice lists before it counts.
-_NAMED = 3
 
 
 def find_frames(source: Path, beside: Path | None = None) -> tuple[list[Path], list[Notice]]:
@@ -89,26 +87,25 @@ def _one_of_each(paths: list[Path]) -> list[Path]:
     return list(best.values())
 
 
-def _listed(names: list[str]) -> str:
-    shown = ", ".join(natsorted(names)[:_NAMED])
-    return shown + (f" and {len(names) - _NAMED} more" if len(names) > _NAMED else "")
+def _names(paths: list[Path]) -> list[str]:
+    return natsorted(path.name for path in paths)
 
 
 def _foreign(paths: list[Path]) -> Iterator[Notice]:
     if paths:
         yield Notice(
             "files_ignored",
-            f"Among the frames lie files that are none and were ignored: {_listed([p.name for p in paths])}.",
+            f"Among the frames lie files that are none and were ignored: {listed(_names(paths))}.",
         )
 
 
 def _twins(paths: list[Path], kept: list[Path]) -> Iterator[Notice]:
-    left = [path.name for path in paths if path not in set(kept)]
+    left = _names([path for path in paths if path not in set(kept)])
     if left:
         yield Notice(
             "frames_twice",
             f"Some frames are there in two formats; the one without loss was taken, and left out were: "
-            f"{_listed(left)}.",
+            f"{listed(left)}.",
         )
 
 

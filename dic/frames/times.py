@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 from pathlib import Path
 
-from dic.errors import FrameError
+from dic.errors import FrameError, listed
 from dic.frames import instants
 from dic.frames.readers import READERS
 from dic.quantities import factor, split_header
@@ -116,9 +116,8 @@ def _rows_by_name(table: Table, names: list[str]) -> list[int] | None:
         rows = {name: row for row, name in enumerate(cells)}
         missing = [name for name in names if name not in rows]
         if missing:
-            more = f" and {len(missing) - 1} more" if len(missing) > 1 else ""
             raise FrameError(
-                f"has no row for frame {missing[0]}{more}",
+                f"has no row for frame {listed(missing, 1)}",
                 where=f"{table.path}, column '{header}'",
                 remedy="name every frame as its file is named",
             )

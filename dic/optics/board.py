@@ -10,7 +10,7 @@ import cv2
 import numpy as np
 from numpy.typing import NDArray
 
-from dic.errors import FrameError, Notice, TestFileError
+from dic.errors import FrameError, Notice, TestFileError, listed
 from dic.frames.readers import list_pages, read_page
 from dic.optics.lens import Lens
 from dic.testfile import Board
@@ -93,7 +93,7 @@ def calibrate(board: Board, folder: Path, shape: tuple[int, int]) -> Calibration
     if len(found) < LEAST_BOARDS:
         raise TestFileError(
             f"the board was found in {len(found)} of {len(found) + len(missed)} pictures"
-            + (f" (not in {_listed(missed)})" if missed else ""),
+            + (f" (not in {listed(missed, 5)})" if missed else ""),
             where=f"{WHERE}.source",
             remedy=f"at least {LEAST_BOARDS} are needed, tilted differently: {_advice(board)}",
         )
@@ -129,7 +129,7 @@ def calibrate(board: Board, folder: Path, shape: tuple[int, int]) -> Calibration
 def _doubts(rms: float, missed: list[str]) -> list[Notice]:
     doubts = []
     if missed:
-        names = _listed(missed)
+        names = listed(missed, 5)
         doubts.append(Notice("board_missed", f"The board was not found in {names}; the others were used."))
     if rms > GOOD_RMS_PX:
         doubts.append(
@@ -222,10 +222,6 @@ def _grey(path: Path, shape: tuple[int, int]) -> NDArray[np.uint8]:
         )
     low, high = float(grey.min()), float(grey.max())
     return np.rint((grey - low) * (255 / max(high - low, 1.0))).astype(np.uint8)
-
-
-def _listed(names: list[str]) -> str:
-    return ", ".join(names[:5]) + (f" and {len(names) - 5} more" if len(names) > 5 else "")
 
 
 def _advice(board: Board) -> str:

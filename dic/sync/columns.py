@@ -10,7 +10,7 @@ from pathlib import Path
 from textwrap import shorten
 
 from dic.errors import LoadRecordError, nearest
-from dic.quantities import EXAMPLES, factor, split_header
+from dic.quantities import EXAMPLES, factor, is_unit, measures, split_header
 from dic.tables import Table
 from dic.testfile import Column
 
@@ -88,11 +88,11 @@ class Header:
 
     def fits(self, quantity: str) -> bool:
         """Tell whether the unit, where there is one, is one of the quantity."""
-        if self.unit is None or not reads_as_unit(self.unit):
+        if self.unit is None or not is_unit(self.unit):
             return True
         if quantity == "trigger":
-            return not any(_is_of(self.unit, kind) for kind in ("time", "force", "length"))
-        return any(_is_of(self.unit, kind) for kind in KINDS[quantity])
+            return not any(measures(self.unit, kind) for kind in ("time", "force", "length"))
+        return any(measures(self.unit, kind) for kind in KINDS[quantity])
 
 
 def headers_of(table: Table) -> list[Header]:
@@ -100,7 +100,7 @@ def headers_of(table: Table) -> list[Header]:
     found = []
     for position, text in enumerate(table.headers):
         name, unit = split_header(text)
-        if unit and text.endswith(unit) and not (reads_as_unit(unit) or _is_clock_unit(unit)):
+        if unit and text.endswith(unit) and not (is_unit(unit) or _is_clock_unit(unit)):
             name, unit = text, None  # "Date/Time"
         below = table.units[position] if position < len(table.units) else None
         found.append(Header(position, text, name, below or unit, unit if below else None))
@@ -108,7 +108,7 @@ def headers_of(table: Table) -> list[Header]:
 
 
 def find_columns(
-    table: Table, named: Mapping[str, Column | None], headers: list[Header], path: Path
+    table: Table, named: Mapping[str, Column | None], headers: list[Header]
 ) -> dict[str, Header]:
     """Return the column of each quantity: as named, and time and force by their headers if not named.
 
@@ -118,35 +118,65 @@ def find_columns(
         If a named column is not there, or time or force cannot be told.
     """
     taken = {
-        quantity: headers[_position(column, headers, quantity, path)]
+        quantity: _numbered(table, quantity, column, headers)
+        if isinstance(column, int)
+        else _named(table, quantity, column.strip(), headers)
         for quantity, column in named.items()
         if column is not None
     }
     for quantity in ("time", "force"):
         if quantity not in taken:
             used = {header.position for header in taken.values()}
-            taken[quantity] = _the_one(table, quantity, headers, used, path)
+            taken[quantity] = _told(table, quantity, headers, used)
     return {quantity: taken[quantity] for quantity in KINDS if quantity in taken}
 
 
-def _the_one(table: Table, quantity: str, headers: list[Header], used: set[int], path: Path) -> Header:
+def _numbered(table: Table, quantity: str, number: int, headers: list[Header]) -> Header:
+    """Return the column of this number, counted from 1."""
+    if 1 <= number <= len(headers):
+        return headers[number - 1]
+    raise LoadRecordError(
+        f"there is no column {number}, the file has {len(headers)} ({_shown(headers)})",
+        where=_key(table, quantity),
+        remedy="count from 1",
+    )
+
+
+def _named(table: Table, quantity: str, name: str, headers: list[Header]) -> Header:
+    """Return the column with this header, with the unit or without."""
+    found = [h for h in headers if h.text == name] or [h for h in headers if h.name == name]
+    if found:
+        return _only(table, quantity, found, f"'{name}' fits {len(found)} columns")
+    _refuse_without_headers(table)
+    hint = nearest(name, [header.text for header in headers])
+    raise LoadRecordError(
+        f"there is no column '{name}', only {_shown(headers)}",
+        where=_key(table, quantity),
+        remedy=hint if hint.endswith("?") else "name one of them, or give its number counted from 1",
+    )
+
+
+def _told(table: Table, quantity: str, headers: list[Header], used: set[int]) -> Header:
     """Return the one column whose header says that it is this quantity."""
     found = recognised(quantity, [header for header in headers if header.position not in used])
-    where = f"{path}, load_record.{quantity}"
+    if found:
+        return _only(table, quantity, found, f"{len(found)} columns could be the {quantity}")
+    _refuse_without_headers(table)
+    raise LoadRecordError(
+        f"no column can be told to be the {quantity} ({_shown(headers)})",
+        where=_key(table, quantity),
+        remedy=f"name it, or give its number, as load_record.{quantity}",
+    )
+
+
+def _only(table: Table, quantity: str, found: list[Header], several: str) -> Header:
+    """Return the one column that was found, or raise with what is said of several."""
     if len(found) == 1:
         return found[0]
-    if found:
-        raise LoadRecordError(
-            f"{len(found)} columns could be the {quantity}: {listed(found)}",
-            where=where,
-            remedy=f"say which, for example load_record.{quantity} = {found[0].position + 1}",
-        )
-    if not any(table.headers):
-        raise _no_headers(table.path)
     raise LoadRecordError(
-        f"no column can be told to be the {quantity} ({listed(headers)})",
-        where=where,
-        remedy=f"name it, or give its number, as load_record.{quantity}",
+        f"{several}: {_shown(found)}",
+        where=_key(table, quantity),
+        remedy=f"say which, for example load_record.{quantity} = {found[0].position + 1}",
     )
 
 
@@ -156,46 +186,22 @@ def recognised(quantity: str, headers: list[Header]) -> list[Header]:
     return [header for header in there if header.words & _KNOWN[quantity]] or there
 
 
-def listed(headers: list[Header]) -> str:
+def _key(table: Table, quantity: str) -> str:
+    return f"{table.path}, load_record.{quantity}"
+
+
+def _shown(headers: list[Header]) -> str:
     """Return columns with their numbers, for messages."""
     return shorten(", ".join(f"{h.position + 1} '{h.text}'" for h in headers), 300, placeholder=" …")
 
 
-def _no_headers(path: Path) -> LoadRecordError:
-    return LoadRecordError(
-        "has no line of column headers at its top",
-        where=str(path),
-        remedy="export it with headers, or give the columns' numbers and load_record.units",
-    )
-
-
-def _position(column: Column, headers: list[Header], quantity: str, path: Path) -> int:
-    """Return where a column stands, counted from 0."""
-    where = f"{path}, load_record.{quantity}"
-    there = shorten(", ".join(f"'{header.text}'" for header in headers), 300, placeholder=" …")
-    if isinstance(column, int):
-        if 1 <= column <= len(headers):
-            return column - 1
+def _refuse_without_headers(table: Table) -> None:
+    if not any(table.headers):
         raise LoadRecordError(
-            f"there is no column {column}, the file has {len(headers)} ({there})",
-            where=where,
-            remedy="count from 1",
+            "has no line of column headers at its top",
+            where=str(table.path),
+            remedy="export it with headers, or give the columns' numbers and load_record.units",
         )
-    if not any(header.text for header in headers):
-        raise _no_headers(path)
-    found = [h.position for h in headers if h.text == column.strip()]
-    found = found or [h.position for h in headers if h.name == column.strip()]
-    if len(found) == 1:
-        return found[0]
-    if found:
-        raise LoadRecordError(
-            f"'{column}' fits {len(found)} columns ({there})",
-            where=where,
-            remedy="give the column's number, counted from 1",
-        )
-    hint = nearest(column, [header.text for header in headers])
-    remedy = hint if hint.endswith("?") else "name one of them, or give its number counted from 1"
-    raise LoadRecordError(f"there is no column '{column}', only {there}", where=where, remedy=remedy)
 
 
 def refuse_stray_units(units: Mapping[str, str], headers: list[Header], path: Path) -> None:
@@ -247,7 +253,7 @@ def unit_of(quantity: str, header: Header, units: Mapping[str, str], path: Path)
             where=where,
             remedy=f'add load_record.units = {{ {quantity} = "{EXAMPLES[kinds[0]].split()[-1]}" }}',
         )
-    kind = next((kind for kind in kinds if _is_of(text, kind)), kinds[0])
+    kind = next((kind for kind in kinds if measures(text, kind)), kinds[0])
     try:
         worth = _worth(text, kind)
     except ValueError as error:
@@ -273,37 +279,8 @@ def unit_of(quantity: str, header: Header, units: Mapping[str, str], path: Path)
 
 
 def _worth(unit: str, kind: str) -> float:
-    """Return what one `unit` is worth in the internal unit of `kind`.
-
-    No unit of time, force, length or strain needs an exponent, and one from a stranger's header could
-    be large enough to keep the unit library busy for ever.
-    """
-    if kind == "strain" and unit.strip() in ("1", "-", "--"):
-        return 1.0
-    if not all(part.strip().isalpha() or part.strip() == "%" for part in unit.split("/")):
-        raise ValueError(f"'{unit}' is not a unit of {kind}; write for example \"{EXAMPLES[kind]}\"")
-    return factor(unit, kind)
-
-
-def _is_of(unit: str, kind: str) -> bool:
-    try:
-        _worth(unit, kind)
-    except ValueError:
-        return False
-    return True
-
-
-def reads_as_unit(unit: str) -> bool:
-    """Tell a unit from a remark such as "(filtered)"."""
-    if len(unit) > 20:
-        return False
-    for kind in EXAMPLES:
-        try:
-            factor(unit, kind)
-        except ValueError:
-            continue
-        return True
-    return False
+    """Return what one `unit` is worth in the internal unit of `kind`; a strain may be a bare number."""
+    return 1.0 if kind == "strain" and unit.strip() in ("1", "-", "--") else factor(unit, kind)
 
 
 def _is_clock_unit(unit: str | None) -> bool:

@@ -11,7 +11,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from dic.errors import LoadRecordError, Notice
+from dic.errors import LoadRecordError, Notice, listed
 from dic.tables import Break
 
 Floats = NDArray[np.float64]
@@ -177,9 +177,6 @@ def refuse_backwards(time_s: Floats, lines: NDArray[np.int64], path: Path) -> No
     back = np.flatnonzero(np.diff(time_s) < 0) + 1
     if not back.size:
         return
-    rows = ", ".join(str(lines[i]) for i in back[:5]) + (
-        f" and {back.size - 5} more" if back.size > 5 else ""
-    )
     if 2 * back.size > len(time_s):
         raise LoadRecordError(
             f"time runs backwards, from {time_s[0]:g} s to {time_s[-1]:g} s",
@@ -189,7 +186,7 @@ def refuse_backwards(time_s: Floats, lines: NDArray[np.int64], path: Path) -> No
     here = back[0]
     raise LoadRecordError(
         f"time does not increase (from {time_s[here - 1]:g} s to {time_s[here]:g} s)",
-        where=f"{path}, row{'s' if back.size > 1 else ''} {rows}",
+        where=f"{path}, row{'s' if back.size > 1 else ''} {listed(lines[back].tolist(), 5)}",
         remedy="correct or remove these rows, or export one test only",
     )
 

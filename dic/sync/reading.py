@@ -10,7 +10,7 @@ from pathlib import Path
 import numpy as np
 from numpy.typing import NDArray
 
-from dic.errors import LoadRecordError, Notice
+from dic.errors import LoadRecordError, Notice, listed
 from dic.sync.columns import Header, Unit, find_columns, headers_of, refuse_stray_units, unit_of
 from dic.sync.idle import tared
 from dic.sync.instants import (
@@ -68,7 +68,7 @@ def read_load_record(section: Section, path: Path) -> LoadRecord:
     table = open_record(path, section.decimal, section.sheet)
     headers = headers_of(table)
     named = {q: getattr(section, q) for q in ("time", "force", "displacement", "extensometer", "trigger")}
-    columns = find_columns(table, named, headers, path)
+    columns = find_columns(table, named, headers)
     refuse_stray_units(section.units, headers, path)
     units = {
         quantity: unit_of(quantity, header, section.units, path)
@@ -196,10 +196,10 @@ def _missing(
     found = []
     if not whole.all():
         rows = [int(row) for row in table.cells.index[~whole]]
-        named = ", ".join(map(str, rows[:10])) + (f" and {len(rows) - 10} more" if len(rows) > 10 else "")
         text = (
-            f"{table.path.name}: row{'s' if len(rows) > 1 else ''} {named} left out, as time or force is no "
-            "number there; if the load cell was overloaded, the largest force is not in the record."
+            f"{table.path.name}: row{'s' if len(rows) > 1 else ''} {listed(rows, 10)} left out, as time or "
+            "force is no number there; if the load cell was overloaded, the largest force is not in the "
+            "record."
         )
         found.append(Notice("record_rows_left_out", text))
     for quantity in values.keys() - {"force"}:
@@ -225,7 +225,7 @@ def _one_clock(
     if isinstance(wanted, int):
         if wanted > len(segments):
             raise LoadRecordError(
-                f"there is no segment {wanted}, only {len(segments)}: {listed(segments, time, lines)}",
+                f"there is no segment {wanted}, only {len(segments)}: {_in_words(segments, time, lines)}",
                 where=f"{table.path}, load_record.segment",
             )
         part = segments[wanted - 1]
@@ -239,7 +239,7 @@ def _one_clock(
         segments = [Segment(0, len(rows))]
     elif len(segments) > 1 and wanted is None:
         raise LoadRecordError(
-            f"time starts anew, so there are {len(segments)} segments: {listed(segments, time, lines)}",
+            f"time starts anew, so there are {len(segments)} segments: {_in_words(segments, time, lines)}",
             where=f"{table.path}, row {lines[segments[1].first]}",
             remedy='say which with load_record.segment = 1, or "all" to put them end to end',
         )
@@ -279,7 +279,7 @@ def _end_to_end(time: Floats, segments: list[Segment]) -> Floats:
     return shifted
 
 
-def listed(segments: list[Segment], time: Floats, lines: NDArray[np.int64]) -> str:
+def _in_words(segments: list[Segment], time: Floats, lines: NDArray[np.int64]) -> str:
     """Return segments with rows and times, for messages."""
     shown = [
         f"{k} (rows {lines[s.first]} to {lines[s.last - 1]}, {time[s.first]:g} to {time[s.last - 1]:g} s)"

@@ -11,7 +11,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dic.errors import LoadRecordError, Notice
-from dic.sync.columns import Header, headers_of, reads_as_unit, recognised, unit_of
+from dic.quantities import is_unit
+from dic.sync.columns import Header, headers_of, recognised, unit_of
 from dic.sync.instants import Segment, find_segments, refuse_backwards
 from dic.sync.reading import decimals_assumed, open_record, read_instants
 from dic.tables import Table
@@ -186,7 +187,7 @@ def _column(table: Table, header: Header, is_time: bool) -> ColumnSurvey:
     return ColumnSurvey(
         number=position + 1,
         header=header.text,
-        unit=header.unit if header.unit and reads_as_unit(header.unit) else None,
+        unit=header.unit if header.unit and is_unit(header.unit) else None,
         quantity="time" if is_time else guess if guess != "time" else None,
         low=float(there.min()) if there.size else float("nan"),
         high=float(there.max()) if there.size else float("nan"),

@@ -8,7 +8,7 @@ from collections import Counter
 from collections.abc import Iterator, Sequence
 from typing import TypeVar
 
-from dic.quantities import factor
+from dic.quantities import is_unit
 
 #: In order of preference where two explain the rows equally well; a blank stands for any white space.
 SEPARATORS = ("\t", ";", "|", ",", " ")
@@ -185,21 +185,12 @@ def bare_unit(cell: str) -> str:
 
 _NO_UNIT = ("", "-", "--", "1")
 _CLOCK_UNITS = frozenset({"hh:mm:ss", "mm:ss", "h:m:s", "hms", "°c", "°f", "c", "v", "mv", "a", "bar", "#"})
-_KINDS = ("time", "force", "length", "strain", "stress", "rate", "speed", "stiffness", "angle")
 
 
 def _is_unit(text: str) -> bool:
     if text in _NO_UNIT or text.lower() in _CLOCK_UNITS or text.lower().startswith("hh:mm"):
         return True
-    if len(text) > 20:
-        return False
-    for kind in _KINDS:
-        try:
-            factor(text, kind)
-        except ValueError:
-            continue
-        return True
-    return False
+    return is_unit(text)
 
 
 def headers_by_blanks(line: str, width: int) -> list[str]:
