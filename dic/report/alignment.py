@@ -5,13 +5,12 @@ from __future__ import annotations
 from math import isfinite
 
 import numpy as np
-from matplotlib.axes import Axes
 from numpy.typing import NDArray
 
 from dic.measurement import Measurement, Scene
 from dic.pattern import axes as coupon_axes
-from dic.report.figures import AID, AXIAL, FAINT, TRANSVERSE, WIDTH, Drawing, legend_above, sheet
-from dic.report.maps import extent_of, photograph_on, zero_colours
+from dic.report.figures import AID, AXIAL, FAINT, TRANSVERSE, Drawing, legend_above, sheet
+from dic.report.photograph import extent_of, lay_over, panels_over, zero_colours
 from dic.rounding import with_uncertainty
 from dic.strain.alignment import BEYOND, LIMITS, WITHIN, Alignment, Estimate
 from dic.testfile import TestFile
@@ -289,13 +288,16 @@ def _contrast(measurement: Measurement) -> Drawing:
     found, scene = measurement.alignment, measurement.scene
     rows, columns = scene.photograph.shape
     tall = rows > columns
-    height = float(np.clip((WIDTH / 2 if tall else WIDTH) * rows / columns + 0.9, 2.4, 6.0))
-    figure, panels = sheet(*((1, 2) if tall else (2, 1)), height=height if tall else min(2 * height, 7.5))
+    figure, panels = panels_over(scene, (0, columns, 0, rows), 2)
     left, right, near, far = sides(scene)
     places = ("on the left", "on the right") if tall else ("above", "below")
     titles = (f"{left} against {right}, %", f"{far} against {near}, %")
+    extent = extent_of(found.columns, found.rows, scene.step_px)
     for axes, values, title in zip(panels, (found.sides, found.ends), titles, strict=True):
-        _panel(axes, measurement, 100 * values, title, tall)
+        axes.set_title(title, fontsize=8)
+        if np.isfinite(values).any():
+            most = 100 * float(np.nanpercentile(np.abs(values), 98))
+            lay_over(axes, 100 * values, extent, (-most, most), zero_colours())
     reading = (
         "Local axial strain less that of the point opposite, halved, in percent of the mean strain: "
         f"{places[0]} mirrored at the coupon's axis, {places[1]} at the middle of its length. Brown is "
@@ -304,20 +306,3 @@ def _contrast(measurement: Measurement) -> Drawing:
     )
     alt = "Contrast maps of axial strain over the photograph: side against side, and end against end."
     return Drawing("alignment-contrast", "What is not symmetric", reading, alt, figure, vector=False)
-
-
-def _panel(axes: Axes, measurement: Measurement, values: NDArray[np.float64], title: str, tall: bool) -> None:
-    scene = measurement.scene
-    rows, columns = scene.photograph.shape
-    photograph_on(axes, scene, (0, columns, 0, rows), fade=0.55)
-    axes.set_title(title, fontsize=8)
-    if not np.isfinite(values).any():
-        return
-    most = float(np.nanpercentile(np.abs(values), 98)) or 1.0
-    picture = axes.imshow(
-        values, extent=extent_of(measurement.alignment.columns, measurement.alignment.rows, scene.step_px),
-        cmap=zero_colours(), vmin=-most, vmax=most, interpolation="nearest", alpha=0.9,
-    )  # fmt: skip
-    place = "bottom" if tall else "right"
-    bar = axes.figure.colorbar(picture, ax=axes, location=place, extend="both", fraction=0.05, pad=0.02)
-    bar.ax.tick_params(labelsize=7)

@@ -5,13 +5,11 @@ from __future__ import annotations
 from math import isfinite
 
 import numpy as np
-from matplotlib.axes import Axes
-from matplotlib.ticker import MaxNLocator
 
 from dic.gauges import NamedHistory
 from dic.measurement import Measurement
-from dic.report.figures import WIDTH, Drawing, legend_above, sheet, strain_unit, thinned
-from dic.report.maps import photograph_on
+from dic.report.figures import Drawing, legend_above, sheet, strain_unit, thinned
+from dic.report.photograph import colour_bar, middle_of, of_some_width, whole_photograph
 from dic.rounding import COVERAGE_FACTOR, three_digits, with_uncertainty
 from dic.store.results import largest
 
@@ -51,8 +49,7 @@ def _look(number: int) -> tuple[str, str]:
 def _on_coupon(measurement: Measurement, gauges: list[NamedHistory]) -> Drawing:
     scene = measurement.scene
     rows, columns = scene.photograph.shape
-    figure, (axes,) = sheet(height=float(np.clip(WIDTH * rows / columns, 2.2, 5.4)) + 0.5)
-    photograph_on(axes, scene, (0, columns, 0, rows), fade=0.45)
+    figure, axes = whole_photograph(scene, fade=0.45)
     for number, one in enumerate(gauges):
         colour, style = _look(number)
         for first, outline in enumerate(one.gauge.outlines):
@@ -92,14 +89,13 @@ def _line(measurement: Measurement, one: NamedHistory, number: int) -> Drawing:
     places = np.array(one.gauge.places_px) * by
     strain = np.ma.masked_invalid(one.parts.T)
     scale, strain_in = strain_unit(one.parts)
-    low, high = (float(end) for end in np.nanpercentile(one.parts * scale, [1, 99]))
-    margin = 0.0 if high > low else max(abs(high) * 1e-3, 1e-6)
+    low, high = of_some_width(*middle_of(one.parts * scale))
     axes.grid(visible=False)
     picture = axes.pcolormesh(
-        time, places, strain * scale, cmap="cividis", vmin=low - margin, vmax=high + margin,
+        time, places, strain * scale, cmap="cividis", vmin=low, vmax=high,
         shading="nearest", rasterized=True,
     )  # fmt: skip
-    _colour_bar(axes, picture, strain_in)
+    colour_bar(axes, picture, tall=False).set_label(f"strain, {strain_in}")
     axes.set(xlabel="time on the machine's clock, s", ylabel=f"place along {one.gauge.name}, {unit}")
     reading = (
         f"Strain along the line, from its first end (0) to its last, against time; {one.gauge.note}. Level "
@@ -110,13 +106,6 @@ def _line(measurement: Measurement, one: NamedHistory, number: int) -> Drawing:
     return Drawing(
         f"line-{number}", f"Strain along the line {one.gauge.name}", reading, alt, figure, vector=False
     )
-
-
-def _colour_bar(axes: Axes, picture: object, unit: str) -> None:
-    bar = axes.figure.colorbar(picture, ax=axes, extend="both", fraction=0.05, pad=0.02)  # type: ignore[arg-type]
-    bar.locator = MaxNLocator(nbins=5)
-    bar.set_label(f"strain, {unit}")
-    bar.update_ticks()
 
 
 def gauge_rows(measurement: Measurement) -> list[tuple[str, str, str]]:

@@ -2,35 +2,37 @@
 
 from __future__ import annotations
 
-from functools import cache
-from math import floor, isfinite, log10
-from typing import TYPE_CHECKING
+from math import isfinite
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from matplotlib.axes import Axes
-from matplotlib.colors import Colormap, ListedColormap
-from matplotlib.figure import Figure
-from matplotlib.image import AxesImage
-from matplotlib.patches import Polygon, Rectangle
-from matplotlib.ticker import MaxNLocator
-from numpy.typing import NDArray
+from matplotlib.colors import Colormap
+from matplotlib.patches import Rectangle
 
 from dic.measurement import Measurement, Scene
-from dic.report.figures import WIDTH, Drawing, legend_above, sheet, strain_unit
+from dic.report.figures import AXIAL, TRANSVERSE, Drawing, legend_above, strain_unit
 from dic.report.moments import Moment
+from dic.report.photograph import (
+    lay_over,
+    map_extent,
+    middle_of,
+    outline,
+    panels_over,
+    scale_bar,
+    view_of,
+    whole_photograph,
+    zero_colours,
+)
 from dic.rounding import fixed, three_digits, uncertainty_alone
 from dic.strain import MapFlag, measures
 
 if TYPE_CHECKING:
     import xarray as xr
 
-#: Pixels of the photograph that a printed panel can show across.
-_MOST_PIXELS = 900
-
 #: Colours span at least this many standard deviations of the map at rest.
 NOISE_SPAN = 12.0
 
-_HIGHLIGHT = "#b8560f"
 #: Lines of the coupon as it was found.
 _FOUND = "#1f78b4"
 _SKETCHED = (
@@ -96,14 +98,13 @@ def _at_rest(measurement: Measurement, fields: xr.Dataset) -> dict[str, float]:
 def draw_scene(measurement: Measurement) -> Drawing:
     """Draw gauge region, axis, subset and strain window on the reference photograph."""
     scene = measurement.scene
-    rows, columns = scene.photograph.shape
-    figure, (axes,) = sheet(height=float(np.clip(WIDTH * rows / columns, 2.2, 5.4)) + 0.5)
-    photograph_on(axes, scene, (0, columns, 0, rows), fade=0.25)
+    figure, axes = whole_photograph(scene, fade=0.25)
     _coupon_lines(axes, scene)
     axes.add_patch(outline(scene, lw=1.6, label="gauge region"))
     _arrow(axes, scene)
     _squares(axes, scene)
     scale_bar(axes, scene)
+    rows, columns = scene.photograph.shape
     # The picture's frame is narrower than the sheet for a tall coupon; the legend then needs one column.
     legend_above(axes, 1 if rows > columns else 2)
     reading = (
@@ -123,13 +124,11 @@ def draw_scene(measurement: Measurement) -> Drawing:
 
 def _map(measurement: Measurement, field: xr.Dataset, moment: Moment, rest: dict[str, float]) -> Drawing:
     scene, curve, history = measurement.scene, measurement.curve, measurement.history
-    left, right, top, bottom = view = view_of(field, scene)
-    tall = bottom - top > right - left
-    figure, panels = maps_sheet(view)
+    left, _, top, _ = view = view_of(field, scene)
+    figure, panels = panels_over(scene, view, 3)
     spreads = []
     for axes, component in zip(panels, ("axial", "transverse", "shear"), strict=True):
-        photograph_on(axes, scene, view, fade=0.55)
-        spreads.append(_panel(axes, field, component, tall, rest.get(component, 0.0)))
+        spreads.append(_panel(axes, field, component, rest.get(component, 0.0)))
         axes.add_patch(outline(scene, lw=0.9))
     scale_bar(panels[0], scene)
     panels[-1].add_patch(_square(scene.map_gauge_px, left, top, view, fill=False, ec="black", lw=1.0))
@@ -152,31 +151,6 @@ def _map(measurement: Measurement, field: xr.Dataset, moment: Moment, rest: dict
     return Drawing(f"map-{moment.letter.lower()}", title, reading, alt, figure, vector=False)
 
 
-def maps_sheet(view: tuple[float, float, float, float]) -> tuple[Figure, list[Axes]]:
-    """Return a figure with three panels for one part of the photograph, side by side if it is tall."""
-    left, right, top, bottom = view
-    ratio = (bottom - top) / (right - left)
-    if ratio > 1:
-        return sheet(1, 3, height=float(np.clip(WIDTH / 3 * ratio + 0.9, 2.4, 6.0)))
-    return sheet(3, 1, height=float(np.clip(3 * (WIDTH * ratio + 0.45), 3.0, 7.5)))
-
-
-def colour_bar(axes: Axes, picture: AxesImage, tall: bool) -> None:
-    """Put the colours' scale below a tall panel or beside a wide one."""
-    bar = axes.figure.colorbar(
-        picture,
-        ax=axes,
-        location="bottom" if tall else "right",
-        extend="both",
-        fraction=0.05,
-        pad=0.02,
-        aspect=14,
-    )
-    bar.locator = MaxNLocator(nbins=2 if tall else 4)
-    bar.ax.tick_params(labelsize=7)
-    bar.update_ticks()
-
-
 def _certainty(field: xr.Dataset) -> str:
     """Say how sure a point is and which share of the points leans on part of a window."""
     known = field["u_strain_axial"].values
@@ -194,33 +168,24 @@ def _certainty(field: xr.Dataset) -> str:
     )
 
 
-def _panel(axes: Axes, field: xr.Dataset, component: str, tall: bool, noise: float) -> str:
+def _panel(axes: Axes, field: xr.Dataset, component: str, noise: float) -> str:
     """Draw one component; return its scatter in words."""
     strain = field[f"strain_{component}"].values
     if not np.isfinite(strain).any():
         axes.set_title(f"{component}: not measured", fontsize=8)
         return f"{component} not measured"
-    low, high = np.nanpercentile(strain, [1, 99])
+    low, high = middle_of(strain)
     # Colours that span less than the noise would show nothing else.
     missing = max(0.0, NOISE_SPAN * noise - (high - low)) / 2
     low, high = low - missing, high + missing
+    colours: Colormap | str = "cividis"
     if component == "shear":
         # Zero has a meaning for shear: its sign is a direction.  Axial and transverse run one way.
-        low, high = -max(abs(low), abs(high)), max(abs(low), abs(high))
+        high = max(abs(low), abs(high))
+        low, colours = -high, zero_colours()
     scale, unit = strain_unit(np.array([low, high]))
-    # A field without any variation still needs a colour scale of some width.
-    margin = 0.0 if high > low else max(abs(high) * 1e-3, 1e-6)
-    picture = axes.imshow(
-        strain * scale,
-        extent=map_extent(field),
-        cmap=zero_colours() if component == "shear" else "cividis",
-        vmin=(low - margin) * scale,
-        vmax=(high + margin) * scale,
-        interpolation="nearest",
-        alpha=0.9,
-    )
+    lay_over(axes, strain * scale, map_extent(field), (low * scale, high * scale), colours)
     axes.set_title(f"{component}, {unit}", fontsize=8)
-    colour_bar(axes, picture, tall)
     spread = float(np.nanstd(strain))
     scale, unit = strain_unit(spread)
     return f"{component} {uncertainty_alone(spread * scale, unit)}"
@@ -229,74 +194,6 @@ def _panel(axes: Axes, field: xr.Dataset, component: str, tall: bool, noise: flo
 def _sized(strain: float) -> str:
     scale, unit = strain_unit(strain)
     return f"{three_digits(strain * scale)} {unit}"
-
-
-@cache
-def zero_colours() -> Colormap:
-    """Return a colour map from blue over near-white to brown, even on both sides of the middle.
-
-    Straight lines in CIELAB make equal steps of value equal steps to the eye, and the two ends differ
-    for colour-blind people as well.
-    """
-    from skimage.color import lab2rgb
-
-    side = np.linspace(1.0, 0.0, 128)[:, np.newaxis]
-    middle, blue, brown = (
-        np.array([95.0, 0.0, 0.0]),
-        np.array([35.0, 0.0, -36.0]),
-        np.array([35.0, 20.0, 38.0]),
-    )
-    halves = [middle + side * (blue - middle), (middle + side * (brown - middle))[::-1]]
-    return ListedColormap(np.clip(lab2rgb(np.concatenate(halves)), 0.0, 1.0), name="about_zero")
-
-
-def map_extent(field: xr.Dataset) -> tuple[float, float, float, float]:
-    """Return left, right, bottom and top of one frame's map, px."""
-    return extent_of(field["x"].values, field["y"].values, float(field.attrs["step_px"]))
-
-
-def extent_of(
-    x: NDArray[np.float64], y: NDArray[np.float64], step_px: float
-) -> tuple[float, float, float, float]:
-    """Return left, right, bottom and top of a map, px: half a step beyond the outer subset centres."""
-    half = 0.5 * step_px
-    return float(x.min()) - half, float(x.max()) + half, float(y.max()) + half, float(y.min()) - half
-
-
-def view_of(field: xr.Dataset, scene: Scene) -> tuple[float, float, float, float]:
-    """Return left, right, top and bottom of the part of the photograph that is shown, px."""
-    left, right, bottom, top = map_extent(field)
-    border = 0.12 * min(right - left, bottom - top)
-    rows, columns = scene.photograph.shape
-    return (
-        max(left - border, 0),
-        min(right + border, columns),
-        max(top - border, 0),
-        min(bottom + border, rows),
-    )
-
-
-def photograph_on(axes: Axes, scene: Scene, view: tuple[float, float, float, float], fade: float) -> None:
-    """Show the photograph, lightened by `fade` so that what lies on it stands out."""
-    left, right, top, bottom = view
-    stride = max(1, round(max(right - left, bottom - top) / _MOST_PIXELS))
-    grey = scene.photograph[::stride, ::stride] / 255.0
-    rows, columns = scene.photograph.shape
-    axes.imshow(
-        fade + (1.0 - fade) * grey,
-        extent=(-0.5, columns - 0.5, rows - 0.5, -0.5),
-        cmap="gray",
-        vmin=0.0,
-        vmax=1.0,
-    )
-    axes.set(xlim=(left, right), ylim=(bottom, top), xticks=[], yticks=[], aspect="equal", autoscale_on=False)
-    axes.grid(visible=False)
-    axes.spines[:].set_visible(False)
-
-
-def outline(scene: Scene, lw: float, label: str = "") -> Polygon:
-    """Return the outline of the gauge region."""
-    return Polygon(scene.region, closed=True, fill=False, ec=_HIGHLIGHT, lw=lw, label=label)
 
 
 def _coupon_lines(axes: Axes, scene: Scene) -> None:
@@ -318,7 +215,7 @@ def _arrow(axes: Axes, scene: Scene) -> None:
     along = np.array([-np.sin(angle), np.cos(angle)])
     centre = scene.region.mean(axis=0)
     half = 0.4 * np.ptp(scene.region @ along)
-    style = {"arrowstyle": "<->", "color": _HIGHLIGHT, "lw": 1.6, "shrinkA": 0, "shrinkB": 0}
+    style = {"arrowstyle": "<->", "color": TRANSVERSE, "lw": 1.6, "shrinkA": 0, "shrinkB": 0}
     axes.annotate("", centre + half * along, centre - half * along, arrowprops=style)
 
 
@@ -327,7 +224,7 @@ def _squares(axes: Axes, scene: Scene) -> None:
     centre = scene.region.mean(axis=0)
     sizes = [
         (scene.map_gauge_px, "strain window of the maps", "#f4e3c8"),
-        (scene.subset_px, "subset", "#14506e"),
+        (scene.subset_px, "subset", AXIAL),
     ]
     for size, label, colour in sizes:
         if isfinite(size):
@@ -338,33 +235,10 @@ def _squares(axes: Axes, scene: Scene) -> None:
 
 
 def _square(
-    size: float, left: float, top: float, view: tuple[float, float, float, float], **style: object
+    size: float, left: float, top: float, view: tuple[float, float, float, float], **style: Any
 ) -> Rectangle:
     inset = 0.02 * (view[3] - view[2])
-    return Rectangle((left + inset, top + inset), size, size, **style)  # type: ignore[arg-type]
-
-
-def scale_bar(axes: Axes, scene: Scene) -> None:
-    """Draw a bar of a round number of millimetres, where the scale is known."""
-    if not (isfinite(scene.scale_mm) and scene.scale_mm > 0):
-        return
-    (left, right), (bottom, top) = axes.get_xlim(), axes.get_ylim()
-    length = _round_length(0.4 * (right - left) * scene.scale_mm)
-    start, level = left + 0.06 * (right - left), bottom - 0.03 * (bottom - top)
-    axes.plot(
-        [start, start + length / scene.scale_mm], [level, level], color="black", lw=2.5, solid_capstyle="butt"
-    )
-    text = axes.annotate(
-        f"{length:g} mm", (start, level), xytext=(1, 5), textcoords="offset points", fontsize=7
-    )
-    text.set_bbox({"boxstyle": "square,pad=0.15", "fc": "white", "ec": "none", "alpha": 0.8})
-
-
-def _round_length(length: float) -> float:
-    """Return the largest of 1, 2, 5, 10, ... that is not longer."""
-    power = 10.0 ** floor(log10(length))
-    # Just below a power of ten the logarithm rounds up, and that power is the answer as nearly as can be.
-    return max((step * power for step in (1.0, 2.0, 5.0) if step * power <= length), default=power)
+    return Rectangle((left + inset, top + inset), size, size, **style)
 
 
 def _gauge_size(scene: Scene) -> str:

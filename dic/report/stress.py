@@ -11,7 +11,7 @@ from dic.errors import InputError
 from dic.measurement import Measurement
 from dic.properties import elastic_stress
 from dic.report.figures import Drawing
-from dic.report.maps import colour_bar, map_extent, maps_sheet, outline, photograph_on, scale_bar, view_of
+from dic.report.photograph import lay_over, map_extent, middle_of, outline, panels_over, scale_bar, view_of
 from dic.rounding import three_digits
 
 if TYPE_CHECKING:
@@ -56,25 +56,11 @@ def draw_stress(measurement: Measurement, fields: xr.Dataset) -> tuple[list[Draw
 
 def _drawing(measurement: Measurement, field: xr.Dataset, found: xr.Dataset, row: int) -> Drawing:
     scene, curve, history = measurement.scene, measurement.curve, measurement.history
-    left, right, top, bottom = view = view_of(field, scene)
-    tall = bottom - top > right - left
-    figure, panels = maps_sheet(view)
+    figure, panels = panels_over(scene, view_of(field, scene), len(PANELS))
     for axes, (name, title) in zip(panels, PANELS.items(), strict=True):
-        photograph_on(axes, scene, view, fade=0.55)
         values = found[f"stress_{name}"].values
-        low, high = np.nanpercentile(values, [1, 99])
-        margin = 0.0 if high > low else max(abs(high) * 1e-3, 1e-6)
-        picture = axes.imshow(
-            values,
-            extent=map_extent(field),
-            cmap="cividis",
-            vmin=low - margin,
-            vmax=high + margin,
-            interpolation="nearest",
-            alpha=0.9,
-        )
+        lay_over(axes, values, map_extent(field), middle_of(values))
         axes.set_title(f"{title}, MPa", fontsize=8)
-        colour_bar(axes, picture, tall)
         axes.add_patch(outline(scene, lw=0.9))
     scale_bar(panels[0], scene)
     stress = found["stress_axial"].values

@@ -8,7 +8,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 from skimage.color import rgb2lab
 
-from dic.report import figures, maps, words
+from dic.report import figures, photograph, words
 from dic.report.clocks import draw_clocks
 from dic.report.curves import draw_curves, proof_stresses
 from dic.report.moments import choose_moments, loading
@@ -69,7 +69,7 @@ def test_long_histories_are_thinned_for_drawing_only():
 
 def test_colours_about_zero_are_even_to_the_eye():
     # CIE 1976 L*a*b* distance between neighbours (CIE 015): even on each side, darkest at both ends alike.
-    lab = rgb2lab(maps.zero_colours().colors[np.newaxis])[0]
+    lab = rgb2lab(photograph.zero_colours().colors[np.newaxis])[0]
     steps = np.linalg.norm(np.diff(lab, axis=0), axis=1)
     for side in (steps[:127], steps[128:]):
         # The way back from colour to CIELAB rounds in the fourth digit; a clipped colour would show at once.
@@ -80,7 +80,7 @@ def test_colours_about_zero_are_even_to_the_eye():
 
 @given(st.floats(min_value=1e-6, max_value=1e6))
 def test_scale_bar_is_round_and_fits(length):
-    bar = maps._round_length(length)
+    bar = photograph._round_length(length)
     # 1, 2 and 5 leave gaps of at most 2.5; the last digits belong to floating point.
     assert length / 2.5 < bar * (1 + 1e-9)
     assert bar <= length * (1 + 1e-9)
