@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -43,8 +44,6 @@ def look_at_frames(source: FrameSource, section: Frames, progress: Progress | No
             before = grey
         if progress is not None:
             progress(index + 1, len(source))
-    step = np.diff(source.time_s)
-    usual = float(np.median(step))
     return FramesSeen(
         count=len(source),
         rows=source.shape[0],
@@ -53,11 +52,7 @@ def look_at_frames(source: FrameSource, section: Frames, progress: Progress | No
         full_scale=full_scale,
         first=source.names[0],
         last=source.names[-1],
-        first_s=float(source.time_s[0]),
-        last_s=float(source.time_s[-1]),
-        interval_s=usual,
-        shortest_s=float(step.min()),
-        longest_s=float(step.max()),
+        **_times(source.time_s),
         clock=_clock_in_words(section),
         gaps=tuple((gap.after, gap.before) for gap in gaps(source.names, source.time_s)),
         doubles=tuple(doubles),
@@ -65,6 +60,18 @@ def look_at_frames(source: FrameSource, section: Frames, progress: Progress | No
         exposures=tuple(exposures),
         brightness_drift=_drift(means),
     )
+
+
+def _times(time_s: NDArray[np.float64]) -> dict[str, Any]:
+    """Return first and last time, and the usual, shortest and longest interval, s."""
+    step = np.diff(time_s)
+    return {
+        "first_s": float(time_s[0]),
+        "last_s": float(time_s[-1]),
+        "interval_s": float(np.median(step)),
+        "shortest_s": float(step.min()),
+        "longest_s": float(step.max()),
+    }
 
 
 def _drift(means: list[float]) -> float:
@@ -115,7 +122,6 @@ _ARRAYS = (
 
 def look_at_record(record: LoadRecord, section: RecordSection) -> RecordSeen:
     """Return rates, ranges and columns of a load record, and how its file is written."""
-    step = np.diff(record.time_s)
     columns = []
     for quantity, attribute, unit in _ARRAYS:
         values = getattr(record, attribute)
@@ -123,19 +129,8 @@ def look_at_record(record: LoadRecord, section: RecordSection) -> RecordSeen:
             there = values[np.isfinite(values)]
             low, high = (float(there.min()), float(there.max())) if there.size else (np.nan, np.nan)
             columns.append(ColumnSeen(quantity, record.columns.get(quantity, quantity), low, high, unit))
-    survey = tell_of_record(record.path, section.sheet, section.decimal)
-    return RecordSeen(
-        file=str(record.path),
-        rows=len(record.time_s),
-        first_s=float(record.time_s[0]),
-        last_s=float(record.time_s[-1]),
-        interval_s=float(np.median(step)),
-        shortest_s=float(step.min()),
-        longest_s=float(step.max()),
-        columns=tuple(columns),
-        written=survey.in_words(),
-        headers=tuple(column.header for column in survey.columns),
-    )
+    told = survey_record(record.path, section)
+    return replace(told, rows=len(record.time_s), columns=tuple(columns), **_times(record.time_s))
 
 
 def survey_record(path: Path, section: RecordSection) -> RecordSeen:

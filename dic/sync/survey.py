@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from datetime import datetime
 from pathlib import Path
 from typing import Any
 
@@ -68,8 +67,8 @@ class RecordSurvey:
 
     Attributes
     ----------
-    path, sheet
-        The file, and the workbook's sheet that was read.
+    sheet
+        The workbook's sheet that was read; None for a text file.
     encoding, separator, decimal
         How it is written; the separator in words, the decimal mark of most columns.
     heading
@@ -84,13 +83,10 @@ class RecordSurvey:
         Median, least and largest time between stamps that differ, s; NaN where time is unknown.
     start_s, end_s
         First and last time, s; NaN where time is unknown.
-    epoch
-        Date and wall-clock time at the time zero, where the record holds dates.
     notices
         Doubts, with remedies.
     """
 
-    path: Path
     sheet: str | None
     encoding: str
     separator: str
@@ -102,7 +98,6 @@ class RecordSurvey:
     interval_s: tuple[float, float, float]
     start_s: float
     end_s: float
-    epoch: datetime | None
     notices: tuple[Notice, ...]
 
     def in_words(self) -> str:
@@ -141,13 +136,13 @@ def look_at_record(path: Path, sheet: str | None = None, decimal: str | None = N
     columns = tuple(_column(table, header, header in called) for header in headers)
     numbers = [header for header in headers if columns[header.position].missing < len(table.cells)]
     notices = [*table.notices, *decimals_assumed(table, [h for h in numbers if not _mixed(table, h)])]
-    time_s, epoch = np.full(len(table.cells), np.nan), None
+    time_s = np.full(len(table.cells), np.nan)
     if len(called) == 1:
         try:
             instant = table.is_instant(called[0].position)
             unit = None if instant else unit_of("time", called[0], {}, table.path)
             read = read_instants(table, called[0], unit)
-            time_s, epoch = read.time_s, read.epoch
+            time_s = read.time_s
             notices += read.notices
         except LoadRecordError as error:
             notices.append(Notice("record_time", str(error)))
@@ -159,7 +154,6 @@ def look_at_record(path: Path, sheet: str | None = None, decimal: str | None = N
             notices.append(Notice("record_time", str(error)))
     marks = [table.decimal_of(h.position).mark for h in numbers if not _mixed(table, h)]
     return RecordSurvey(
-        path=table.path,
         sheet=table.sheet,
         encoding=table.encoding,
         separator=NAMES[table.separator],
@@ -168,7 +162,6 @@ def look_at_record(path: Path, sheet: str | None = None, decimal: str | None = N
         columns=columns,
         rows=len(table.cells),
         **_timing(lines, time, segments),
-        epoch=epoch,
         notices=tuple(notices),
     )
 

@@ -102,12 +102,16 @@ def to_numbers(cells: Sequence[str], mark: str) -> Floats:
             else cell.replace(other, "?")
             for cell in together.split("\n")
         )
-    text = np.array(together.replace(mark, ".").split("\n"), dtype=object)
-    try:
-        values = pd.to_numeric(pd.Series(text), errors="coerce").to_numpy(dtype=np.float64)
-    except (OverflowError, ValueError, TypeError):
-        values = np.array([_number(cell) for cell in text])
+    values = _numbers(together.replace(mark, ".").split("\n"))
     return np.where(np.isfinite(values), values, np.nan)
+
+
+def _numbers(cells: list[str]) -> Floats:
+    """Return cells with decimal points as numbers, NaN where a cell is none."""
+    try:
+        return pd.to_numeric(pd.Series(cells, dtype=object), errors="coerce").to_numpy(dtype=np.float64)
+    except (OverflowError, ValueError, TypeError):
+        return np.array([_number(cell) for cell in cells])
 
 
 def _number(cell: str) -> float:
@@ -131,9 +135,4 @@ def looks_like_value(cells: Sequence[str]) -> NDArray[np.bool_]:
     together = "\n".join(cells)
     if cells and all(cells) and not together.translate(_NO_NUMBER):
         return np.ones(len(cells), dtype=bool)
-    text = np.array(together.translate(_NO_MARKS).split("\n"), dtype=object)
-    try:
-        values = pd.to_numeric(pd.Series(text), errors="coerce").to_numpy(dtype=np.float64)
-    except (OverflowError, ValueError, TypeError):
-        values = np.array([_number(cell) for cell in text])
-    return ~np.isnan(values)
+    return ~np.isnan(_numbers(together.translate(_NO_MARKS).split("\n")))

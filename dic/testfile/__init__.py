@@ -1,8 +1,8 @@
 """One test's description (TOML) as a validated model; the only place that knows its keys."""
 
-from dic.testfile.gauges import GaugeName, NamedGauge, Place
+from dic.testfile.gauges import NamedGauge, Place
 from dic.testfile.properties import PRESETS, ModulusWindow, Properties
-from dic.testfile.reading import MAX_BYTES, bare_quantities, load, read_toml, sound_sections
+from dic.testfile.reading import bare_quantities, load, read_toml, sound_sections
 from dic.testfile.sections import (
     VIDEO_ENDINGS,
     Alignment,
@@ -15,13 +15,11 @@ from dic.testfile.sections import (
     Sync,
 )
 from dic.testfile.values import Column, Section, in_px, quantity
-from dic.testfile.views import TELECENTRIC, Board, Camera, CouponSection, Distortion, Marks
+from dic.testfile.views import Board, Camera, CouponSection, Distortion, Marks
 from dic.testfile.whole import TestFile
 
 __all__ = [
-    "MAX_BYTES",
     "PRESETS",
-    "TELECENTRIC",
     "VIDEO_ENDINGS",
     "Alignment",
     "Board",
@@ -32,7 +30,6 @@ __all__ = [
     "Distortion",
     "Frames",
     "Gauge",
-    "GaugeName",
     "LoadRecord",
     "Maps",
     "Marks",

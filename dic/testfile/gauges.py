@@ -4,21 +4,13 @@ from __future__ import annotations
 
 from typing import Annotated, Literal
 
-from pydantic import AfterValidator, Field, model_validator
+from pydantic import Field, model_validator
 
 from dic.errors import nearest
-from dic.testfile.values import (
-    Section,
-    _is_length,
-    _is_positive_length,
-    quantity,
-)
+from dic.testfile.values import Section, Size, Stretch, quantity
 
 Pixels = Annotated[float, Field(ge=-1e5, le=1e5, allow_inf_nan=False)]
 Share = Annotated[float, Field(ge=0, le=1)]
-#: A length in the picture: px where it is a number or says so, else mm by the scale.
-Size = Annotated[float, Field(gt=0, le=1e5)] | Annotated[str, AfterValidator(_is_positive_length)]
-Stretch = Annotated[str, AfterValidator(_is_length)]
 #: A place: x and y in the reference picture, px; or, as lengths in quotes, across and along the coupon from
 #: the middle of the gauge region.
 Place = tuple[Pixels, Pixels] | tuple[Stretch, Stretch]

@@ -7,11 +7,7 @@ from typing import Any, Literal
 from pydantic import model_validator
 
 from dic.quantities import parse
-from dic.testfile.values import (
-    Section,
-    Strain,
-    Stress,
-)
+from dic.testfile.values import Section, Strain, Stress
 
 
 class ModulusWindow(Section):

@@ -17,9 +17,7 @@ from pydantic import BaseModel, BeforeValidator, ValidationError
 from dic.errors import TestFileError, nearest
 from dic.quantities import UNITS
 from dic.testfile.sections import Frames
-from dic.testfile.values import (
-    Section,
-)
+from dic.testfile.values import Section
 from dic.testfile.whole import TestFile
 
 #: A test file is a page of text; anything larger is something else.

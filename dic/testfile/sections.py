@@ -6,13 +6,14 @@ from math import pi, sqrt
 from pathlib import Path
 from typing import Annotated, Literal
 
-from pydantic import AfterValidator, Field, model_validator
+from pydantic import Field, model_validator
 
 from dic.quantities import parse
 from dic.testfile.values import (
     Column,
     Duration,
     FileName,
+    ForceClass,
     Fraction,
     Length,
     Rate,
@@ -20,7 +21,6 @@ from dic.testfile.values import (
     Segment,
     Time,
     Unit,
-    _is_force_class,
 )
 
 #: Files that bring their own frame times.
@@ -159,7 +159,7 @@ class LoadRecord(Section):
     units: dict[str, Unit] = Field(default_factory=dict)
     tare: bool | Annotated[Time, Field(gt=0)] = False
     force_uncertainty: Fraction | None = None
-    force_class: Annotated[float, AfterValidator(_is_force_class)] | None = None
+    force_class: ForceClass | None = None
 
     @model_validator(mode="after")
     def _one_calibration(self) -> LoadRecord:

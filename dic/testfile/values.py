@@ -38,8 +38,8 @@ def in_px(written: str) -> float | None:
     return float(text.removesuffix("px")) if text.endswith("px") else None
 
 
-def _is_length(written: str) -> str:
-    """Return a length in the picture as written, once it is known to be one."""
+def _size(written: str) -> float:
+    """Return how long a length in the picture is, in px or mm."""
     try:
         size = in_px(written)
     except ValueError:
@@ -47,12 +47,17 @@ def _is_length(written: str) -> str:
     size = parse(written, "length") if size is None else size
     if not abs(size) <= LARGEST:
         raise ValueError(f"'{written}' is far too long")
+    return size
+
+
+def _is_length(written: str) -> str:
+    """Return a length in the picture as written, once it is known to be one."""
+    _size(written)
     return written
 
 
 def _is_positive_length(written: str) -> str:
-    size = in_px(_is_length(written))
-    if not (parse(written, "length") if size is None else size) > 0:
+    if not _size(written) > 0:
         raise ValueError(f"'{written}' is not longer than zero")
     return written
 
@@ -79,20 +84,29 @@ Stress = Annotated[float, quantity("stress"), Field(allow_inf_nan=False)]
 FileName = Annotated[
     str, BeforeValidator(lambda written: _filled_in(written, "frames")), AfterValidator(_is_name)
 ]
+#: A length in the picture, as written: in px or, by the scale, in mm.
+Stretch = Annotated[str, AfterValidator(_is_length)]
+#: The same of something that has a size; px where it is a number.
+Size = Annotated[float, Field(gt=0, le=1e5)] | Annotated[str, AfterValidator(_is_positive_length)]
 Column = Annotated[str | int, BeforeValidator(lambda written: _filled_in(written, "Force"))]
 Segment = Annotated[
     Literal["all"] | Annotated[int, Field(ge=1)],
     BeforeValidator(lambda written: _filled_in(written, "all")),
 ]
+Unit = Annotated[str, BeforeValidator(lambda written: _filled_in(written, "kN"))]
+
+
 #: Classes of force measurement (ISO 7500-1 [from memory]).
 FORCE_CLASSES = (0.5, 1, 2, 3)
-Unit = Annotated[str, BeforeValidator(lambda written: _filled_in(written, "kN"))]
 
 
 def _is_force_class(written: float) -> float:
     if written not in FORCE_CLASSES:
         raise ValueError(f"ISO 7500-1 has no class {written:g}; its classes are 0.5, 1, 2 and 3")
     return written
+
+
+ForceClass = Annotated[float, AfterValidator(_is_force_class)]
 
 
 class Section(BaseModel):

@@ -9,13 +9,7 @@ from pydantic import BeforeValidator, Field, model_validator
 
 from dic.errors import nearest
 from dic.quantities import parse
-from dic.testfile.values import (
-    FileName,
-    Fraction,
-    Length,
-    Scale,
-    Section,
-)
+from dic.testfile.values import FileName, Fraction, Length, Scale, Section
 
 Picture = Annotated[float, Field(ge=-1e6, le=1e6)]
 

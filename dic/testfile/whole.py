@@ -18,13 +18,8 @@ from dic.testfile.sections import (
     Specimen,
     Sync,
 )
-from dic.testfile.values import (
-    Section,
-)
-from dic.testfile.views import (
-    Camera,
-    CouponSection,
-)
+from dic.testfile.values import Section
+from dic.testfile.views import Camera, CouponSection
 
 
 class TestFile(Section):

@@ -14,7 +14,8 @@ from PIL import Image
 
 from dic.errors import FrameError
 from dic.frames import open_frames
-from dic.testfile import Frames
+from dic.frames.video import CONTAINERS
+from dic.testfile import VIDEO_ENDINGS, Frames
 
 RNG = np.random.default_rng(3)
 ROWS, COLUMNS = 30, 44
@@ -334,6 +335,10 @@ def test_video_at_a_rate_of_its_own(folder):
     film(folder / "test.avi", [picture() for _ in range(4)], "ffv1")
     source = open_frames(Frames(source="test.avi", rate="1 kHz"), folder)
     np.testing.assert_allclose(source.time_s, [0, 0.001, 0.002, 0.003])
+
+
+def test_what_brings_its_own_times_is_what_is_read_as_video():
+    assert set(VIDEO_ENDINGS) == set(CONTAINERS)
 
 
 def test_video_without_its_library_is_said(folder, monkeypatch):
