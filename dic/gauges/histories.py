@@ -10,10 +10,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dic.correlation.matching import Match
+from dic.gauges.between import Between
 from dic.gauges.placing import Placed
 from dic.gauges.probes import Subsets
 from dic.gauges.reading import FrameReadings, NamedReader
-from dic.gauges.silhouette import Silhouette, Widths, pattern_px
+from dic.gauges.silhouette import Silhouette, Widths
 from dic.strain.history import GaugeHistory
 from dic.strain.periodic import Periodic
 
@@ -22,8 +23,6 @@ Floats = NDArray[np.float64]
 #: Why a gauge has no reading in a frame.
 LOST = "the gauge's subsets were lost"
 UNCLEAR = "the edges are out of view or not clear"
-#: Share of an edge's stations that has to be seen.
-LEAST_SEEN = 0.5
 
 
 @dataclass(frozen=True)
@@ -110,8 +109,8 @@ class NamedReadings:
         histories, first, number = [], 0, 0
         for gauge in self._gauges:
             length_mm = gauge.length_px * scale_mm
-            if gauge.along_px is not None:
-                histories.append(self._between_edges(gauge, gauge.along_px, length_mm))
+            if gauge.between is not None:
+                histories.append(self._between_edges(gauge, gauge.between, length_mm))
                 continue
             here = slice(first, first + len(gauge.probes))
             first = here.stop
@@ -126,11 +125,12 @@ class NamedReadings:
             )
         return histories
 
-    def _between_edges(self, gauge: Placed, along_px: tuple[float, float], length_mm: float) -> NamedHistory:
-        strain, u, _, lost = self._edge_strain(along_px)
+    def _between_edges(self, gauge: Placed, between: Between, length_mm: float) -> NamedHistory:
+        strain, u, _, lost = between.strain(self._widths, self._noise)
+        stations = len(between.stations)
         status = tuple(
-            _said(count, len(self._stations(along_px))) if np.isfinite(one) else UNCLEAR
-            for one, count in zip(strain, lost, strict=True)
+            _said(count, stations) if np.isfinite(one) else UNCLEAR
+            for one, count in zip(strain, lost.tolist(), strict=True)
         )
         nothing = np.empty((len(strain), 0))
         return NamedHistory(gauge, strain, u, status, nothing, nothing, length_mm)
@@ -148,7 +148,8 @@ class NamedReadings:
         if not self._silhouette.plain:
             nowhere = np.full_like(history.transverse, np.nan)
             return replace(history, transverse=nowhere, u_transverse=nowhere)
-        strain, u, pattern, _ = self._edge_strain(self._silhouette.range_px)
+        edges = Between(self._silhouette, *self._silhouette.range_px)
+        strain, u, pattern, _ = edges.strain(self._widths, self._noise)
         # The interpolation between pixels has no part in it.
         left = None if history.left_transverse is None else np.zeros_like(history.left_transverse)
         return replace(
@@ -157,37 +158,6 @@ class NamedReadings:
             u_transverse=u,
             left_transverse=left,
             left_edges=np.nan_to_num(pattern),
-        )
-
-    def _stations(self, along_px: tuple[float, float]) -> NDArray[np.intp]:
-        """Return the stations between two places at which the reference shows both edges clearly."""
-        assert self._silhouette is not None  # noqa: S101  (gauges between edges are placed on it)
-        seen = np.isfinite(self._silhouette.reference.px)
-        return np.flatnonzero(seen & self._silhouette.stations(*along_px))
-
-    def _edge_strain(self, along_px: tuple[float, float]) -> tuple[Floats, Floats, Floats, list[int]]:
-        """Return the mean change of width per width, its u, the pattern's part in that, and stations lost."""
-        assert self._silhouette is not None  # noqa: S101  (gauges between edges are placed on it)
-        here = self._stations(along_px)
-        first = self._silhouette.reference.px[here]
-        measured = np.array([one.px[here] for one in self._widths])
-        own = np.array([one.u_per_grey[here] for one in self._widths])
-        seen = np.isfinite(measured)
-        count = seen.sum(axis=1)
-        enough = count >= max(LEAST_SEEN * len(here), 1)
-        # Each station against itself: what the pattern does to the edge's place stays out of it.
-        change = np.where(seen, measured - first, np.nan)
-        noise = np.where(seen, own, np.nan) * np.array(self._noise)[:, None]
-        few = np.maximum(count, 1)
-        strain = np.nansum(change / first, axis=1) / few
-        grey = np.sqrt(np.nansum((noise / first) ** 2, axis=1)) / few
-        along, width = self._silhouette.along[here], float(first.mean()) if here.size else np.nan
-        pattern = np.array([pattern_px(along, *one) for one in zip(change, noise, strict=True)]) / width
-        return (
-            np.where(enough, strain, np.nan),
-            np.where(enough, np.hypot(grey, pattern), np.nan),
-            np.where(enough, pattern, np.nan),
-            (len(here) - count).tolist(),
         )
 
 

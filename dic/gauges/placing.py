@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 from skimage.measure import points_in_poly
 
 from dic.errors import TestFileError
+from dic.gauges.between import Between
 from dic.gauges.probes import Ints, Probe, Spanning, Stretching, Subsets
 from dic.gauges.silhouette import MOST_UNEVEN, Silhouette
 from dic.pattern import axes
@@ -58,8 +59,8 @@ class Placed:
         Length that the strain refers to, px.
     places_px
         Places along a line, px from its start, shape (p,); empty for other kinds.
-    along_px
-        For a width between the edges: from and to, along the axis from the region's middle, px.
+    between
+        What is read of the edges; None for what is read from the pattern.
     note
         What was chosen for the user; empty where nothing was.
     """
@@ -71,8 +72,13 @@ class Placed:
     outlines: tuple[Floats, ...]
     length_px: float
     places_px: tuple[float, ...] = ()
-    along_px: tuple[float, float] | None = None
+    between: Between | None = None
     note: str = ""
+
+    @property
+    def is_angle(self) -> bool:
+        """Whether an angle is read, which does not change as the picture grows."""
+        return any(isinstance(one, Stretching) and one.component == "shear" for one in self.probes)
 
 
 def place_gauges(
@@ -189,7 +195,7 @@ class _Placer:
             if not len(band) or away.min() > depth:
                 raise self.off_coupon(end)
             bands.append(band)
-            outlines.append(_rectangle(end, direction * depth / 2, across * width / 2))
+            outlines.append(Region(end, depth, width, direction, across).corners())
         return Spanning(self.subsets, first, last, (bands[0], bands[1])), tuple(outlines)
 
     def area(self, name: str, gauge: NamedGauge) -> Placed:
@@ -229,8 +235,10 @@ class _Placer:
             along = self.px(station) if isinstance(station, str) else (station - 0.5) * region.length
             centre = region.centre + along * region.axial
             self.inside_picture(centre[None])
-            given = gauge.length is not None
-            length = self.px(gauge.length) if given else self._room(centre, region.transverse, width)
+            if gauge.length is not None:
+                length = self.px(gauge.length)
+            else:
+                length = self._room(centre, region.transverse, width)
             half = region.transverse * length / 2
             probe, drawn = self._spanning(centre - half, centre + half, width)
             probes.append(probe)
@@ -244,11 +252,10 @@ class _Placer:
         return Placed(name, gauge.kind, tuple(probes), labels, tuple(outlines), mean, note=note)
 
     def pair(self, name: str, gauge: NamedGauge) -> Placed:
-        assert gauge.start is not None and gauge.end is not None  # noqa: S101, PT018  (validated)
-        ends = self.point(gauge.start), self.point(gauge.end)
-        self.long_enough(*ends)
+        first, last, _ = self._ends(gauge)
+        length = self.long_enough(first, last)
         bands = []
-        for end in ends:
+        for end in (first, last):
             self.inside_picture(end[None])
             away = np.linalg.norm(self.subsets.places - end, axis=1)
             away = np.where(self.subsets.reference.usable, away, np.inf)
@@ -256,13 +263,11 @@ class _Placer:
             if not away[nearest] <= self.subsets.grid.step:
                 raise self.off_coupon(end)
             bands.append(np.array([nearest]))
-        probe = Spanning(self.subsets, ends[0], ends[1], (bands[0], bands[1]))
-        length = float(np.linalg.norm(ends[1] - ends[0]))
-        return Placed(name, gauge.kind, (probe,), (), (np.stack(ends),), length)
+        probe = Spanning(self.subsets, first, last, (bands[0], bands[1]))
+        return Placed(name, gauge.kind, (probe,), (), (np.stack([first, last]),), length)
 
     def line(self, name: str, gauge: NamedGauge) -> Placed:
-        assert gauge.start is not None and gauge.end is not None  # noqa: S101, PT018  (validated)
-        first, last = self.point(gauge.start), self.point(gauge.end)
+        first, last, _ = self._ends(gauge)
         self.inside_picture(np.stack([first, last]))
         total = self.long_enough(first, last)
         direction = (last - first) / total
@@ -319,14 +324,12 @@ class _Placer:
                 where=self.where,
                 remedy=f"from the middle of the region, they are seen from {low:.0f} px to {high:.0f} px",
             )
-        outlines = self.silhouette.outlines(first, last)
-        return Placed(
-            name, gauge.kind, (), (), outlines, self.silhouette.width_px(first, last), along_px=(first, last)
-        )
+        outlines, width = self.silhouette.outlines(first, last), self.silhouette.width_px(first, last)
+        between = Between(self.silhouette, first, last)
+        return Placed(name, gauge.kind, (), (), outlines, width, between=between)
 
-    def px(self, size: float | str | None) -> float:
+    def px(self, size: float | str) -> float:
         """Return a length in px."""
-        assert size is not None  # noqa: S101  (asked for only where given)
         if not isinstance(size, str):
             return float(size)
         if (said := in_px(size)) is not None:
@@ -385,14 +388,3 @@ def _polygon_area(corners: Floats) -> float:
     """Return the area inside a polygon, px² (Gauss' formula)."""
     x, y = corners.T
     return float(abs(x @ np.roll(y, -1) - y @ np.roll(x, -1)) / 2)
-
-
-def _rectangle(centre: Floats, along: Floats, across: Floats) -> Floats:
-    return np.array(
-        [
-            centre - along - across,
-            centre - along + across,
-            centre + along + across,
-            centre + along - across,
-        ]
-    )

@@ -100,7 +100,7 @@ def corrected_gauges(gauges: list[NamedHistory], apparent: Floats, u: Floats) ->
     """Take the same off the named gauges; an angle is not changed by it."""
     return [
         one
-        if any(getattr(probe, "component", "") == "shear" for probe in one.gauge.probes)
+        if one.gauge.is_angle
         else replace(
             one,
             strain=without(one.strain, apparent),
