@@ -122,7 +122,12 @@ def calibrate(board: Board, folder: Path, shape: tuple[int, int]) -> Calibration
         )
     tilt = float("nan")
     if board.plane is not None:
-        lens, tilt = _tilted(lens, matrix, coefficients, board, folder, shape)
+        points = find_board(_grey(folder / board.plane, shape), board)
+        if points is None:
+            raise TestFileError(
+                f"the board was not found in {board.plane}", where=f"{WHERE}.plane", remedy=_advice(board)
+            )
+        lens, tilt = _tilted(lens, matrix, coefficients, points, shape)
     return Calibration(lens, float(rms), len(pairs), tilt, tuple(_doubts(rms, missed)))
 
 
@@ -144,7 +149,8 @@ def _doubts(rms: float, missed: list[str]) -> list[Notice]:
 
 def find_board(grey: NDArray[np.uint8], board: Board) -> tuple[Points, Points] | None:
     """Return the corners on the board (mm, z = 0) and in a picture (px); None where it is not found."""
-    if board.kind == "chessboard":
+    target = charuco(board)
+    if target is None:
         size = (board.columns - 1, board.rows - 1)
         flags = cv2.CALIB_CB_EXHAUSTIVE | cv2.CALIB_CB_ACCURACY
         there, corners = cv2.findChessboardCornersSB(grey, size, flags=flags)
@@ -153,7 +159,6 @@ def find_board(grey: NDArray[np.uint8], board: Board) -> tuple[Points, Points] |
         solid = np.zeros((size[0] * size[1], 3), np.float32)
         solid[:, :2] = board.square * np.mgrid[: size[0], : size[1]].T.reshape(-1, 2)
         return solid, np.asarray(corners, np.float32).reshape(-1, 2)
-    target = charuco(board)
     corners, numbers, _, _ = cv2.aruco.CharucoDetector(target).detectBoard(grey)
     if numbers is None or len(numbers) < LEAST_CORNERS:
         return None
@@ -163,23 +168,18 @@ def find_board(grey: NDArray[np.uint8], board: Board) -> tuple[Points, Points] |
     return np.asarray(at, np.float32).reshape(-1, 3), np.asarray(seen, np.float32).reshape(-1, 2)
 
 
-def charuco(board: Board) -> cv2.aruco.CharucoBoard:
-    """Return OpenCV's description of a ChArUco board."""
-    assert board.marker is not None  # noqa: S101  (validated with the test file)
+def charuco(board: Board) -> cv2.aruco.CharucoBoard | None:
+    """Return OpenCV's description of a ChArUco board; None for a chessboard."""
+    if board.marker is None:
+        return None
     markers = cv2.aruco.getPredefinedDictionary(getattr(cv2.aruco, f"DICT_{board.dictionary}"))
     return cv2.aruco.CharucoBoard((board.columns, board.rows), board.square, board.marker, markers)
 
 
 def _tilted(
-    lens: Lens, matrix: Any, coefficients: Any, board: Board, folder: Path, shape: tuple[int, int]
+    lens: Lens, matrix: Any, coefficients: Any, points: tuple[Points, Points], shape: tuple[int, int]
 ) -> tuple[Lens, float]:
     """Return the lens with the coupon's plane, in mm on the board, and the tilt in deg."""
-    assert board.plane is not None  # noqa: S101  (the caller asks only then)
-    points = find_board(_grey(folder / board.plane, shape), board)
-    if points is None:
-        raise TestFileError(
-            f"the board was not found in {board.plane}", where=f"{WHERE}.plane", remedy=_advice(board)
-        )
     _, turning, place = cv2.solvePnP(*points, matrix, coefficients)
     turn, _ = cv2.Rodrigues(turning)
     view = np.column_stack([turn[:, 0], turn[:, 1], np.ravel(place)])
