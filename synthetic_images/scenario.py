@@ -141,10 +141,9 @@ class TextureLook(Section):
         given = self.model_dump(exclude={"kind", "photograph"}, exclude_none=True)
         if self.kind == "dots":
             return Dots(**given, area=area, seed=seed)
-        if self.kind == "cosines":
-            return Cosines(**given, seed=seed)
-        assert self.photograph is not None  # noqa: S101  (validated above)
-        return Photograph.named(self.photograph, **given)
+        if self.photograph is not None:
+            return Photograph.named(self.photograph, **given)
+        return Cosines(**given, seed=seed)
 
 
 class View(Section):
