@@ -123,7 +123,7 @@ class Measurement:
         """Return the history as a table, the columns those of ``history.csv``."""
         from dic.store.tables import history_table
 
-        return history_table(self.history, self.curve, self)
+        return history_table(self)
 
     def to_xarray(self) -> xr.Dataset:
         """Open the displacement and strain fields, on (frame, y, x)."""

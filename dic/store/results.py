@@ -41,7 +41,7 @@ def write_results(measurement: Measurement, folder: Path) -> None:
     StoreError
         If the folder cannot be written.
     """
-    table = history_table(measurement.history, measurement.curve, measurement)
+    table = history_table(measurement)
     table["name"] = [as_text(name) for name in table["name"]]
     rows = table.to_csv(index=False, na_rep="NaN", lineterminator="\n")
     text = json.dumps(results_of(measurement), indent=2, ensure_ascii=False, allow_nan=False)

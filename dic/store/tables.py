@@ -17,8 +17,7 @@ if TYPE_CHECKING:
     import pandas as pd
 
     from dic.measurement import Measurement
-    from dic.properties.result import Curve, Property
-    from dic.strain.history import GaugeHistory
+    from dic.properties.result import Property
 
 #: From more properties on, symbols are easier to read than names.
 _MANY = 3
@@ -49,19 +48,13 @@ TITLES = {
 }
 
 
-def history_table(
-    history: GaugeHistory, curve: Curve, measurement: Measurement | None = None
-) -> pd.DataFrame:
+def history_table(measurement: Measurement) -> pd.DataFrame:
     """Put the gauge readings and the stress at the same instants side by side, one row per frame.
 
     Parameters
     ----------
-    history
-        Gauge readings, n frames.
-    curve
-        Stress at the same frames, n instants.
     measurement
-        For the gauges that the test file names, and the clip-on extensometer; None for neither.
+        With gauge readings of n frames, and the stress at the same instants.
 
     Returns
     -------
@@ -71,7 +64,7 @@ def history_table(
     """
     import pandas as pd
 
-    further = {} if measurement is None else _further(measurement)
+    history, curve = measurement.history, measurement.curve
     return pd.DataFrame(
         {
             "frame": history.frame,
@@ -98,7 +91,7 @@ def history_table(
             "hencky_transverse": np.log1p(history.transverse),
             "stretch_axial": 1 + history.axial,
             "stretch_transverse": 1 + history.transverse,
-            **further,
+            **_further(measurement),
         }
     )
 

@@ -25,13 +25,13 @@ CONTRACT = [
 
 
 def test_columns_are_those_promised_and_more_stand_behind(measurement):
-    table = history_table(measurement.history, measurement.curve)
+    table = history_table(measurement)
     assert list(table.columns[: len(CONTRACT)]) == CONTRACT
     assert {"machine_time_s", "strain_extensometer", "strain_bending", "name"} <= set(table.columns)
 
 
 def test_every_frame_has_its_row_and_a_lost_one_says_why(measurement):
-    table = history_table(measurement.history, measurement.curve)
+    table = history_table(measurement)
     assert len(table) == len(measurement.history)
     lost = table[table["strain_axial"].isna()]
     assert lost["status"].tolist() == ["too few subsets measured"]
@@ -41,7 +41,7 @@ def test_every_frame_has_its_row_and_a_lost_one_says_why(measurement):
 
 
 def test_stress_is_force_over_section(measurement):
-    table = history_table(measurement.history, measurement.curve)
+    table = history_table(measurement)
     # Force = stress x area was rounded once, so one division brings the stress back to an ulp or two.
     np.testing.assert_allclose(table["force_N"] / 25.0, table["stress_MPa"], rtol=1e-15)
 
@@ -107,12 +107,12 @@ def test_text_without_properties_still_names_the_coupon(measurement):
 
 
 def test_no_gauge_may_be_named_after_a_column(measurement):
-    assert set(history_table(measurement.history, measurement.curve)) <= RESERVED
+    assert set(history_table(measurement)) <= RESERVED
 
 
 def test_large_strain_measures_stand_beside_engineering_strain(measurement):
     """λ = 1 + ε and Hencky strain ln λ, by definition."""
-    table = history_table(measurement.history, measurement.curve)
+    table = history_table(measurement)
     there = table["strain_axial"].notna()
     np.testing.assert_allclose(table["stretch_axial"][there], 1 + measurement.history.axial[there])
     np.testing.assert_allclose(np.exp(table["hencky_transverse"]), table["stretch_transverse"])
