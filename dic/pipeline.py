@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dic import provenance
-from dic.comparison import compare
+from dic.comparison import ClipOn, compare
 from dic.comparison import doubts as clip_on_doubts
 from dic.errors import ClockError, InputError
 from dic.frames import open_frames, unreadable_frames
@@ -33,16 +33,8 @@ from dic.store import fields
 from dic.store.folder import claim_folder, remove_results
 from dic.store.results import write_results
 from dic.strain import GaugeHistory, gather, gauge_size
-from dic.strain.alignment import (
-    LEAST_FRAMES,
-    MOST_FRAMES,
-    U_AXIS_DEG,
-    Alignment,
-    elastic_part,
-    find_alignment,
-    limit_of,
-)
-from dic.strain.rates import Moved, gather_rates
+from dic.strain.alignment import Alignment, elastic_part, find_alignment, frames_to_read, limit_of
+from dic.strain.rates import gather_rates
 from dic.sync import Clock, LoadRecord, fit_clock, known_clock, read_load_record
 from dic.testfile import TestFile, load
 
@@ -114,7 +106,7 @@ def read_gauges(
 ) -> tuple[GaugeHistory, list[NamedHistory]]:
     """Track the frames, or take up what was tracked before, and read the gauges in each."""
     reader, readings, still = setup.reader(), [], []
-    named = NamedReadings(setup.subsets(), setup.gauges, setup.silhouette)
+    named = NamedReadings(setup.subsets, setup.gauges, setup.silhouette)
     for done, followed in enumerate(tracked_or_stored(test, setup, folder), start=1):
         match = setup.optics.straight(followed.match, setup.reference.x, setup.reference.y)
         readings.append(reader.read(match))
@@ -163,13 +155,7 @@ def judged(
     folder: Path,
 ) -> Measurement:
     """Go from gauge histories to properties."""
-    curve = replace(
-        make_curve(
-            history, record, clock, test.specimen.area, setup.source.exposure_s, setup.coupon.u_axis_deg
-        ),
-        u_towards=bound(test.camera),
-        straightened=setup.optics.lens is not None,
-    )
+    curve = _curve(test, setup, history, record, clock)
     found = evaluate(
         curve,
         test.specimen,
@@ -178,16 +164,7 @@ def judged(
         test.properties,
         force_bounded=test.load_record.force_class is not None,
     )
-    first = test.frames.first_reference
-    clip_on = compare(
-        record,
-        clock,
-        history,
-        curve,
-        found.properties["youngs_modulus"],
-        reference=slice(first, first + setup.reference.frames),
-        length_mm=test.load_record.extensometer_length,
-    )
+    clip_on = _clip_on(test, setup, history, record, clock, curve, found)
     straight = _alignment(test, setup, history, curve, found, folder)
     return Measurement(
         test=test,
@@ -220,6 +197,35 @@ def judged(
     )
 
 
+def _curve(test: TestFile, setup: Setup, history: GaugeHistory, record: LoadRecord, clock: Clock) -> Curve:
+    """Lay stress beside strain, with what the camera may have falsified."""
+    area, exposure_s = test.specimen.area, setup.source.exposure_s
+    curve = make_curve(history, record, clock, area, exposure_s, setup.coupon.u_axis_deg)
+    return replace(curve, u_towards=bound(test.camera), straightened=setup.optics.lens is not None)
+
+
+def _clip_on(
+    test: TestFile,
+    setup: Setup,
+    history: GaugeHistory,
+    record: LoadRecord,
+    clock: Clock,
+    curve: Curve,
+    found: Evaluation,
+) -> ClipOn | None:
+    """Compare with the clip-on extensometer in the load record, if there is one."""
+    first = test.frames.first_reference
+    return compare(
+        record,
+        clock,
+        history,
+        curve,
+        found.properties["youngs_modulus"],
+        reference=slice(first, first + setup.reference.frames),
+        length_mm=test.load_record.extensometer_length,
+    )
+
+
 def _optics(test: TestFile, setup: Setup) -> dict[str, Any]:
     """Say what is known of the camera, and what was taken off the strains."""
     false = bound(test.camera)
@@ -236,27 +242,13 @@ def _alignment(
 ) -> Alignment:
     """Judge how straight the coupon was pulled, from the stored fields of the elastic part."""
     inside = elastic_part(history, found.line.low, found.line.high)
-    window, grid = map_window(test, setup.grid), setup.grid
+    frames, grid = frames_to_read(inside), setup.grid
     rates = None
-    if inside.sum() >= LEAST_FRAMES:
-        frames = np.flatnonzero(inside)
-        frames = frames[:: -(-len(frames) // MOST_FRAMES)]
-        moved = (_straight(one, setup) for one in fields.stored_motion(folder, frames))
-        rates = gather_rates(moved, history.axial[frames], grid, setup.region, window)
+    if len(frames):
+        moved = (setup.optics.straight_motion(one, grid) for one in fields.stored_motion(folder, frames))
+        rates = gather_rates(moved, history.axial[frames], grid, setup.region, map_window(test, grid))
     limit = limit_of(test.alignment.limit, test.alignment.standard)
-    stated = setup.coupon.u_axis_deg
-    u_axis = stated if np.isfinite(stated) else U_AXIS_DEG
-    return find_alignment(history, curve.force_N, inside, rates, limit, u_axis)
-
-
-def _straight(moved: Moved, setup: Setup) -> Moved:
-    """Return one frame's displacements freed from the lens' distortion."""
-    lens = setup.optics.lens
-    if lens is None:
-        return moved
-    x, y = np.meshgrid(setup.grid.columns, setup.grid.rows)
-    u, v = lens.displaced(x, y, moved.u, moved.v)
-    return moved._replace(u=u, v=v)
+    return find_alignment(history, curve.force_N, inside, rates, limit, setup.coupon.u_axis_deg)
 
 
 def _scene(test: TestFile, setup: Setup, folder: Path) -> Scene:

@@ -17,7 +17,7 @@ from dic.frames.readers import list_pages, read_page
 from dic.gauges import Placed, Silhouette, facing, place_gauges
 from dic.gauges.probes import Subsets
 from dic.optics import Lens, Optics, StillPatch, lay_patch, lens_of, settle_scale
-from dic.pattern import Coupon, Given, axes, axis_doubts, doubts, find_coupon, picture_quality
+from dic.pattern import Coupon, Given, axes, axis_doubts, doubts, find_coupon, picture_quality, rectangle
 from dic.strain import GaugeReader, Region
 from dic.testfile import Correlation, TestFile
 
@@ -47,7 +47,9 @@ class Setup:
     region
         Where strain is averaged.
     grid, reference
-        The subsets, and all that matching needs of them.
+        Where subsets lie, and all that matching needs of them.
+    subsets
+        Both as the gauges see them, in straight coordinates.
     extensometer_px
         Gauge length as asked for, px; None for the whole region.
     quality
@@ -68,6 +70,7 @@ class Setup:
     region: Region
     grid: Grid
     reference: Reference
+    subsets: Subsets
     optics: Optics
     extensometer_px: float | None
     quality: dict[str, float]
@@ -77,12 +80,9 @@ class Setup:
 
     def reader(self) -> GaugeReader:
         """Return a fresh reader of the gauges."""
-        places = self.optics.places(self.reference.x, self.reference.y)
-        return GaugeReader(self.reference, self.grid, self.region, self.extensometer_px, places)
-
-    def subsets(self) -> Subsets:
-        """Return the subsets as the named gauges see them."""
-        return Subsets(self.reference, self.grid, self.optics.places(self.reference.x, self.reference.y))
+        return GaugeReader(
+            self.reference, self.grid, self.region, self.extensometer_px, self.subsets.straight
+        )
 
     @property
     def scale_mm(self) -> float:
@@ -132,6 +132,7 @@ def set_up(test: TestFile, source: FrameSource) -> Setup:
         region=region,
         grid=grid,
         reference=reference,
+        subsets=subsets,
         optics=optics,
         extensometer_px=length,
         quality={**quality, "reference_frames": float(reference.frames)},
@@ -315,18 +316,7 @@ def given_region(shape: tuple[int, ...], region: Any) -> NDArray[np.bool_] | Non
     """Mark the rectangle that the test file gives; None where it gives none."""
     if region == "auto":
         return None
-    x, y, width, height = region
-    if not (
-        width > 0 and height > 0 and x >= 0 and x + width <= shape[1] and y >= 0 and y + height <= shape[0]
-    ):
-        raise TestFileError(
-            f"the region x {x:g} to {x + width:g}, y {y:g} to {y + height:g} px is not inside the picture",
-            where="gauge.region",
-            remedy=f"the picture is {shape[1]} px wide and {shape[0]} px high",
-        )
-    mask = np.zeros(shape, bool)
-    mask[round(y) : round(y + height), round(x) : round(x + width)] = True
-    return mask
+    return rectangle(shape, region, "the region", "gauge.region")
 
 
 def _gauge_length(test: TestFile, scale_mm: float) -> float | None:

@@ -4,19 +4,17 @@ from __future__ import annotations
 
 import hashlib
 import json
-from collections import deque
 from collections.abc import Iterator
 from concurrent.futures import ThreadPoolExecutor
 from itertools import repeat
 from pathlib import Path
-from typing import NamedTuple
+from typing import Any, NamedTuple
 
 import numpy as np
-from numpy.typing import NDArray
 from threadpoolctl import threadpool_limits
 
 from dic import provenance
-from dic.correlation import Grid, Match, track
+from dic.correlation import Grid, Match, Tracker
 from dic.correlation.flags import Flag
 from dic.errors import FrameError, TrackingError
 from dic.frames import FrameSource, check_damage
@@ -90,20 +88,11 @@ def map_window(test: TestFile, grid: Grid) -> Window:
 def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[Followed]:
     grid, source = setup.grid, setup.source
     window = map_window(test, grid)
-    attributes = {
-        "tracking_key": key,
-        "subset_px": grid.subset,
-        "step_px": grid.step,
-        "map_gauge_px": window.size_px,
-        "map_gauge_mm": window.size_px * setup.scale_mm,
-        **window.attributes(),
-        "strain_measure": "engineering, in coupon axes",
-        "axis_angle_deg": setup.coupon.axis_angle_deg,
-    }
-    mapper = StrainMapper(window, (setup.region.axial, setup.region.transverse), _unbending(setup))
-    measured, edges, patch = 0, setup.silhouette, setup.optics.patch
-    still = patch.tracker() if patch is not None else None
-    seen: deque[Grey | Flag] = deque(maxlen=1)
+    axes, optics = (setup.region.axial, setup.region.transverse), setup.optics
+    mapper = StrainMapper(window, axes, optics.unbending(grid))
+    tracker = Tracker(setup.reference, grid.neighbours())
+    still = optics.patch.follower() if optics.patch is not None else None
+    measured, edges = 0, setup.silhouette
     damage: dict[int, str] = {}
     with (
         # BLAS threads spin for a while after each small product, on the cores that the kernels need.
@@ -113,24 +102,17 @@ def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[F
             folder,
             grid,
             source.time_s,
-            attributes,
+            {"tracking_key": key, **_attributes(setup, window)},
             edges.along if edges is not None else None,
-            patch is not None,
+            still is not None,
         ) as writer,
     ):
         hashed = hashing.submit(source.sha256)
-        for match in track(
-            _remembered(_read_ahead(source, damage), seen), setup.reference, grid.neighbours()
-        ):
-            widths = _widths(edges, setup, seen[0], match) if edges is not None else None
-            apparent = None
-            if patch is not None and still is not None:
-                frame = seen[0]
-                if isinstance(frame, Flag):
-                    apparent = Apparent(np.nan, np.nan)
-                else:
-                    apparent = patch.apparent(still.follow(frame))
-            flat = setup.optics.straight(match, setup.reference.x, setup.reference.y)
+        for frame in _read_ahead(source, damage):
+            match = tracker.follow(frame)
+            widths = _widths(edges, setup, frame, match) if edges is not None else None
+            apparent = still(frame) if still is not None else None
+            flat = optics.straight(match, setup.reference.x, setup.reference.y)
             parts = (flat.u, flat.v, match.sigma_u, match.sigma_v)
             writer.put(
                 match,
@@ -152,13 +134,17 @@ def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[F
         writer.note("unreadable_frames", json.dumps(damage))
 
 
-def _unbending(setup: Setup) -> NDArray[np.float64] | None:
-    """Return slopes of picture coordinates in straight ones on the grid; None where no lens is known."""
-    if setup.optics.lens is None:
-        return None
-    x, y = np.meshgrid(setup.grid.columns, setup.grid.rows)
-    slopes = setup.optics.lens.straight(x, y)[1]
-    return np.asarray(np.linalg.inv(slopes), float)
+def _attributes(setup: Setup, window: Window) -> dict[str, Any]:
+    """Return the settings that readers of the fields need."""
+    return {
+        "subset_px": setup.grid.subset,
+        "step_px": setup.grid.step,
+        "map_gauge_px": window.size_px,
+        "map_gauge_mm": window.size_px * setup.scale_mm,
+        **window.attributes(),
+        "strain_measure": "engineering, in coupon axes",
+        "axis_angle_deg": setup.coupon.axis_angle_deg,
+    }
 
 
 def unreadable(folder: Path) -> dict[int, str]:
@@ -167,19 +153,11 @@ def unreadable(folder: Path) -> dict[int, str]:
     return {int(index): str(why) for index, why in said.items()}
 
 
-def _remembered(frames: Iterator[Grey | Flag], seen: deque[Grey | Flag]) -> Iterator[Grey | Flag]:
-    """Pass the frames on, and keep the one that is being matched."""
-    for frame in frames:
-        seen.append(frame)
-        yield frame
-
-
 def _widths(edges: Silhouette, setup: Setup, frame: Grey | Flag, match: Match) -> Widths:
     """Measure the width between the edges where the subsets' mean motion has carried them."""
     found, reference = match.converged, setup.reference
-    places = np.stack([reference.x, reference.y], axis=1)[found]
     moved = np.stack([match.u, match.v], axis=1)[found]
-    motion = mean_motion(places, moved, setup.region.centre)
+    motion = mean_motion(reference.places[found], moved, setup.region.centre)
     if isinstance(frame, Flag) or not np.isfinite(motion).all():
         nowhere = np.full(len(edges.along), np.nan)
         return Widths(nowhere, nowhere)

@@ -124,7 +124,7 @@ def test_a_second_run_with_other_dimensions_does_not_track_again(copy, monkeypat
     first = dic.measure(copy)
     edited(copy, 'thickness = "2 mm"', 'thickness = "4 mm"')
 
-    monkeypatch.setattr("dic.sequence.track", tracked_again)
+    monkeypatch.setattr("dic.sequence.Tracker", tracked_again)
     second = dic.measure(copy)
     np.testing.assert_array_equal(first.history.axial, second.history.axial)
     ratio = first.properties["youngs_modulus"].value / second.properties["youngs_modulus"].value
@@ -147,7 +147,7 @@ def brighter(k, image):
 def test_changed_frames_or_settings_are_tracked_again(copy, monkeypatch, change):
     dic.measure(copy)
     change(copy)
-    monkeypatch.setattr("dic.sequence.track", tracked_again)
+    monkeypatch.setattr("dic.sequence.Tracker", tracked_again)
     with pytest.raises(TrackedAgainError):
         dic.measure(copy)
 
@@ -294,7 +294,7 @@ def test_damaged_frames_are_missing_and_the_rest_is_measured(copy, monkeypatch):
         assert words in said
     with first.to_xarray() as fields:
         assert (fields.flag.values[lost] != 0).all()
-    monkeypatch.setattr("dic.sequence.track", tracked_again)
+    monkeypatch.setattr("dic.sequence.Tracker", tracked_again)
     again = dic.measure(copy)
     assert again.notices == first.notices
     assert again.history.status == history.status
@@ -374,7 +374,7 @@ def test_named_gauges_read_the_truth_and_come_back_from_the_store(copy, monkeypa
     assert np.abs(np.mean(width)) < 0.02
     assert found["edges"].gauge.length_px == pytest.approx(130, rel=0.004)  # as the scale is good to
 
-    monkeypatch.setattr("dic.sequence.track", tracked_again)
+    monkeypatch.setattr("dic.sequence.Tracker", tracked_again)
     second = dic.measure(copy)
     for one, other in zip(first.gauges, second.gauges, strict=True):
         np.testing.assert_array_equal(one.strain, other.strain)

@@ -4,7 +4,7 @@ from dic.correlation.flags import MEANING, Flag
 from dic.correlation.grid import Grid, lay_grid
 from dic.correlation.matching import Match, match_frame
 from dic.correlation.reference import Reference, Settings, prepare_reference
-from dic.correlation.splines import Prefilter, SplineImage, spline_image
+from dic.correlation.splines import Prefilter, spline_image
 from dic.correlation.tracking import Tracker, track
 
 __all__ = [
@@ -15,7 +15,6 @@ __all__ = [
     "Prefilter",
     "Reference",
     "Settings",
-    "SplineImage",
     "Tracker",
     "lay_grid",
     "match_frame",

@@ -87,6 +87,11 @@ class Match:
         """Which subsets were measured."""
         return self.flag == Flag.CONVERGED
 
+    def noise_against(self, averaged: int) -> float:
+        """Return the grey noise of a frame against a reference averaged over so many, grey levels."""
+        # Each further link is matched between two single frames.
+        return float(self.noise_grey * np.sqrt(1.0 + 1.0 / averaged + 2.0 * self.links))
+
     def with_noise(self, felt: float) -> Match:
         """Return this match with the noise as the matching feels it (`dic.correlation.noise`)."""
         if not (np.isfinite(felt) and self.noise_grey > 0):

@@ -186,6 +186,11 @@ class Reference:
         return self.unusable == Flag.CONVERGED
 
     @property
+    def places(self) -> Floats:
+        """Centres of the subsets, x and y, px, shape (n, 2)."""
+        return np.stack([self.x, self.y], axis=1).astype(float)
+
+    @property
     def subset(self) -> int:
         """Side of a subset, px."""
         return 2 * self.half + 1

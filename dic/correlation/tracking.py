@@ -56,9 +56,7 @@ def track(frames: Iterable[Frame | Flag], reference: Reference, neighbours: Ints
         One per frame, in order, displacements from the reference.  A frame in which all is lost does
         not harm the next one, which is predicted from the last good frames or seeded anew.
     """
-    tracker = Tracker(reference, neighbours)
-    for frame in frames:
-        yield tracker.pass_over(frame) if isinstance(frame, Flag) else tracker.follow(frame)
+    yield from map(Tracker(reference, neighbours).follow, frames)
 
 
 class Tracker:
@@ -80,8 +78,10 @@ class Tracker:
         self._fresh = np.nan  # correlation that the reference starts with
         self._missed, self._patience = 0, 1
 
-    def follow(self, frame: Frame) -> Match:
-        """Match the next frame."""
+    def follow(self, frame: Frame | Flag) -> Match:
+        """Match the next frame; for one that is missing stands the flag that says why."""
+        if isinstance(frame, Flag):
+            return self._pass_over(frame)
         match, spline = self._match(frame)
         match = match.with_noise(self._probe.felt(self._reference, spline, match.parameters, self._gain))
         if match.converged.any():
@@ -94,7 +94,7 @@ class Tracker:
         self._renew(frame, match, whole)
         return whole
 
-    def pass_over(self, why: Flag) -> Match:
+    def _pass_over(self, why: Flag) -> Match:
         """Go on over a frame that is missing; the next one is predicted from what the motion was."""
         if self._last is not None and self._pace is not None:
             self._last = self._last + self._pace

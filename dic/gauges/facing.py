@@ -6,7 +6,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dic.errors import Notice
-from dic.pattern import Coupon, axes
+from dic.pattern import Coupon, axes, centre
 
 #: Share of the radius to either side of the axis that counts as facing: there the surface is turned away by
 #: asin(0.5) = 30° at the most, and its pattern appears no narrower than cos 30° = 87 %.
@@ -49,10 +49,10 @@ def facing(coupon: Coupon, shape: str, automatic: bool) -> tuple[NDArray[np.bool
         )
     axial, transverse = axes(coupon.axis_angle_deg)
     rows, columns = coupon.mask.shape
-    y = np.arange(rows)[:, None] - (rows - 1) / 2
-    x = np.arange(columns) - (columns - 1) / 2
+    middle = centre(coupon.mask.shape)
+    y, x = np.arange(rows)[:, None] - middle[1], np.arange(columns) - middle[0]
     along = x * axial[0] + y * axial[1]
     across = x * transverse[0] + y * transverse[1]
-    offsets = [edge.offset + edge.slope * along for edge in (left, right)]
+    offsets = [edge.at(along) for edge in (left, right)]
     away = np.abs(across - (offsets[0] + offsets[1]) / 2)
     return coupon.mask & (away <= FACING_SHARE * (offsets[1] - offsets[0]) / 2), ()

@@ -68,9 +68,7 @@ class Subsets:
     @cached_property
     def places(self) -> Floats:
         """Centres x and y, px, shape (n, 2)."""
-        if self.straight is not None:
-            return self.straight
-        return np.stack([self.reference.x, self.reference.y], axis=1).astype(float)
+        return self.reference.places if self.straight is None else self.straight
 
     @cached_property
     def information(self) -> Floats:

@@ -56,7 +56,7 @@ class NamedReader:
     def read(self, match: Match) -> FrameReadings:
         """Return the readings of one frame."""
         reference = self.subsets.reference
-        noise = match.noise_grey * np.sqrt(1.0 + 1.0 / reference.frames + 2.0 * match.links)
+        noise = match.noise_against(reference.frames)
         probes = [probe for gauge in self.gauges for probe in gauge.probes]
         strain, u = np.full(len(probes), np.nan), np.full(len(probes), np.nan)
         response = np.full((len(probes), len(HARMONICS)), np.nan)

@@ -17,7 +17,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy import ndimage
 
-from dic.pattern import Coupon, axes
+from dic.pattern import Coupon, axes, centre
 from dic.strain import Region
 
 Floats = NDArray[np.float64]
@@ -94,15 +94,14 @@ class Silhouette:
         if left is None or right is None:
             raise ValueError("both edges are needed")
         axial, transverse = axes(coupon.axis_angle_deg)
-        middle = np.array([image.shape[1] - 1, image.shape[0] - 1]) / 2.0
+        middle = centre(image.shape)
         start = float((region.centre - middle) @ axial)
         blocks = max(int(region.length // BLOCK), 1)
         self.along: Floats = np.asarray((np.arange(blocks) - (blocks - 1) / 2) * BLOCK, float)
         rays = start + (self.along[:, None] + np.arange(BLOCK) - (BLOCK - 1) / 2).ravel()
         self._axial, self._transverse = axial, transverse
         self._edges = [
-            middle + rays[:, None] * axial + (edge.offset + edge.slope * rays)[:, None] * transverse
-            for edge in (left, right)
+            middle + rays[:, None] * axial + edge.at(rays)[:, None] * transverse for edge in (left, right)
         ]
         self._centre = region.centre
         still = np.zeros((2, 3))

@@ -1,18 +1,16 @@
 """Scale, lens distortion, camera tilt, and motion towards the camera."""
 
-from dic.optics.board import Calibration, calibrate
+from dic.optics.board import calibrate
 from dic.optics.front import Optics, lens_of
 from dic.optics.lens import Lens
 from dic.optics.patch import Apparent, StillPatch, lay_patch
-from dic.optics.scale import Scale, settle_scale
+from dic.optics.scale import settle_scale
 from dic.optics.towards import bound, corrected, corrected_gauges, receding
 
 __all__ = [
     "Apparent",
-    "Calibration",
     "Lens",
     "Optics",
-    "Scale",
     "StillPatch",
     "bound",
     "calibrate",

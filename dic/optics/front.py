@@ -9,12 +9,14 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from dic.correlation.grid import Grid
 from dic.correlation.matching import Match
 from dic.errors import TestFileError
 from dic.optics.board import Calibration, calibrate
 from dic.optics.lens import Lens
 from dic.optics.patch import StillPatch
 from dic.optics.scale import Scale
+from dic.strain.rates import Moved
 from dic.testfile import TestFile
 
 Floats = NDArray[np.float64]
@@ -48,6 +50,20 @@ class Optics:
     def places(self, x: Any, y: Any) -> Floats | None:
         """Return straight coordinates of subsets, shape (n, 2); None where no lens is known."""
         return None if self.lens is None else self.lens.straight(x, y)[0]
+
+    def straight_motion(self, moved: Moved, grid: Grid) -> Moved:
+        """Return one frame's displacements on the grid in straight coordinates."""
+        if self.lens is None:
+            return moved
+        u, v = self.lens.displaced(*np.meshgrid(grid.columns, grid.rows), moved.u, moved.v)
+        return moved._replace(u=u, v=v)
+
+    def unbending(self, grid: Grid) -> Floats | None:
+        """Return slopes of picture coordinates in straight ones on the grid; None where no lens is known."""
+        if self.lens is None:
+            return None
+        slopes = self.lens.straight(*np.meshgrid(grid.columns, grid.rows))[1]
+        return np.asarray(np.linalg.inv(slopes), float)
 
     def figures(self) -> dict[str, Any]:
         """Return what ``results.json`` says."""

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from typing import NamedTuple
 
@@ -9,9 +10,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dic.correlation import Grid, Match, Reference, Settings, Tracker, lay_grid, prepare_reference
+from dic.correlation.flags import Flag
 from dic.errors import PatternError, TestFileError
+from dic.frames.readers import Grey
 from dic.optics.lens import Lens
-from dic.pattern import axes
+from dic.pattern import axes, rectangle
 from dic.strain import GaugeReader, Region
 
 Floats = NDArray[np.float64]
@@ -34,9 +37,10 @@ class StillPatch:
     reader: GaugeReader
     lens: Lens | None
 
-    def tracker(self) -> Tracker:
-        """Return what follows the patch from frame to frame."""
-        return Tracker(self.reference, self.grid.neighbours())
+    def follower(self) -> Callable[[Grey | Flag], Apparent]:
+        """Return what reads the patch in one frame after the other."""
+        tracker = Tracker(self.reference, self.grid.neighbours())
+        return lambda frame: self.apparent(tracker.follow(frame))
 
     def apparent(self, match: Match) -> Apparent:
         """Return what the patch seems to have grown by.
@@ -53,7 +57,7 @@ class StillPatch:
 
 def lay_patch(
     image: Floats,
-    rectangle: tuple[float, float, float, float],
+    sides: tuple[float, float, float, float],
     coupon: NDArray[np.bool_],
     *,
     subset: int,
@@ -68,7 +72,7 @@ def lay_patch(
     ----------
     image
         Reference picture, grey values.
-    rectangle
+    sides
         x, y, width, height, px.
     coupon
         True on the coupon, shape of the picture.
@@ -84,17 +88,9 @@ def lay_patch(
     TestFileError
         If the patch is outside the picture, on the coupon, too small, or without texture.
     """
-    x, y, width, height = rectangle
+    x, y, width, height = sides
     said = f"the patch x {x:g} to {x + width:g}, y {y:g} to {y + height:g} px"
-    rows, columns = image.shape
-    if not (width > 0 and height > 0 and x >= 0 and y >= 0 and x + width <= columns and y + height <= rows):
-        raise TestFileError(
-            f"{said} is not inside the picture",
-            where=WHERE,
-            remedy=f"the picture is {columns} px wide and {rows} px high",
-        )
-    mask = np.zeros(image.shape, bool)
-    mask[round(y) : round(y + height), round(x) : round(x + width)] = True
+    mask = rectangle(image.shape, sides, "the patch", WHERE)
     if (mask & coupon).any():
         on_y, on_x = np.nonzero(mask & coupon)
         raise TestFileError(

@@ -1,8 +1,8 @@
 """The pattern: where the coupon is, and how well its speckle can be tracked."""
 
 from dic.pattern.coupon import Coupon, find_coupon
-from dic.pattern.given import Given
-from dic.pattern.outline import axes
+from dic.pattern.given import Given, rectangle
+from dic.pattern.outline import axes, centre
 from dic.pattern.quality import axis_doubts, doubts, picture_quality
 from dic.pattern.sketch import Sketch, sketch
 
@@ -12,8 +12,10 @@ __all__ = [
     "Sketch",
     "axes",
     "axis_doubts",
+    "centre",
     "doubts",
     "find_coupon",
     "picture_quality",
+    "rectangle",
     "sketch",
 ]

@@ -101,6 +101,30 @@ class Given:
 NOTHING_GIVEN = Given()
 
 
+def rectangle(
+    shape: tuple[int, ...], sides: tuple[float, float, float, float], what: str, where: str
+) -> Mask:
+    """Mark a rectangle of the test file, x, y, width, height in px, in a picture of this shape.
+
+    Raises
+    ------
+    TestFileError
+        If it is not inside the picture.
+    """
+    x, y, width, height = sides
+    if not (
+        width > 0 and height > 0 and x >= 0 and x + width <= shape[1] and y >= 0 and y + height <= shape[0]
+    ):
+        raise TestFileError(
+            f"{what} x {x:g} to {x + width:g}, y {y:g} to {y + height:g} px is not inside the picture",
+            where=where,
+            remedy=f"the picture is {shape[1]} px wide and {shape[0]} px high",
+        )
+    mask = np.zeros(shape, bool)
+    mask[round(y) : round(y + height), round(x) : round(x + width)] = True
+    return mask
+
+
 def _check_mask(mask: Mask, shape: tuple[int, ...]) -> None:
     if mask.shape != shape:
         raise TestFileError(

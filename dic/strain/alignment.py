@@ -8,6 +8,7 @@ and so does the reference picture's noise.
 from __future__ import annotations
 
 from dataclasses import dataclass, field, replace
+from math import isfinite, nan
 from typing import Any, NamedTuple
 
 import numpy as np
@@ -180,6 +181,14 @@ def elastic_part(history: GaugeHistory, low: float, high: float) -> NDArray[np.b
     return np.asarray(before & (history.axial >= low) & (history.axial <= high))
 
 
+def frames_to_read(inside: NDArray[np.bool_]) -> NDArray[np.intp]:
+    """Return the frames from which the rates are read, evenly spread; none where there are too few."""
+    frames = np.flatnonzero(inside)
+    if len(frames) < LEAST_FRAMES:
+        return frames[:0]
+    return frames[:: -(-len(frames) // MOST_FRAMES)]
+
+
 def limit_of(limit: float | None, standard: str | None) -> tuple[float | None, str]:
     """Return the limit of percent bending in force and who says so."""
     if limit is not None:
@@ -194,7 +203,7 @@ def find_alignment(
     inside: NDArray[np.bool_],
     rates: Rates | None,
     limit: tuple[float | None, str] = (None, ""),
-    u_axis_deg: float = U_AXIS_DEG,
+    u_axis_deg: float = nan,
 ) -> Alignment:
     """Work out how straight the coupon was pulled.
 
@@ -207,11 +216,11 @@ def find_alignment(
     inside
         Which frames belong to the elastic part.
     rates
-        From `dic.strain.rates.gather_rates` over these frames; None where they are fewer than `LEAST_FRAMES`.
+        From `dic.strain.rates.gather_rates` over `frames_to_read`; None where there are none.
     limit
         From `limit_of`.
     u_axis_deg
-        Standard uncertainty of the coupon's axis, deg.
+        Standard uncertainty of the coupon's axis, deg; NaN where nothing states it.
 
     Returns
     -------
@@ -224,6 +233,7 @@ def find_alignment(
     if not rates.enough:
         return replace(nothing, reason="the measured patches do not span the gauge's length and width")
     shape = _Shape(rates)
+    u_axis_deg = u_axis_deg if isfinite(u_axis_deg) else U_AXIS_DEG
     motion = _motion(history, inside, shape.sagitta_px, u_axis_deg)
     observed, covariance = shape.observed(motion)
     ratio = -linregress(history.axial[inside], history.transverse[inside]).slope

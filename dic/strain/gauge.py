@@ -70,6 +70,11 @@ class Region:
             dx * self.transverse[0] + dy * self.transverse[1],
         )
 
+    def holds(self, x: NDArray[np.generic], y: NDArray[np.generic]) -> NDArray[np.bool_]:
+        """Tell which points lie in the rectangle."""
+        along, across = self.coordinates(x, y)
+        return (abs(along) <= self.length / 2) & (abs(across) <= self.width / 2)
+
     def corners(self) -> Floats:
         """Return the four corners in order, shape (4, 2), columns x and y."""
         along, across = self.axial * self.length / 2, self.transverse * self.width / 2
@@ -139,11 +144,9 @@ class GaugeReader:
     _kept: tuple[bytes, _Weights] | None = field(default=None, repr=False)
 
     def __post_init__(self) -> None:
-        along, across = self.region.coordinates(self.reference.x, self.reference.y)
-        self._member = (abs(along) <= self.region.length / 2) & (abs(across) <= self.region.width / 2)
-        if self.places is None:
-            self.places = np.stack([self.reference.x, self.reference.y], axis=1).astype(float)
-        self._along, self._across = self.region.coordinates(*self.places.T)
+        self._member = self.region.holds(self.reference.x, self.reference.y)
+        self._places = self.reference.places if self.places is None else self.places
+        self._along, self._across = self.region.coordinates(*self._places.T)
         if self._member.sum() < LEAST_SUBSETS:
             raise PatternError(
                 f"the gauge region holds only {self._member.sum()} subsets",
@@ -175,8 +178,7 @@ class GaugeReader:
         whole = np.einsum("pmk,mk->p", weights.motion, affine).reshape(2, 3)
         mean, gradient = whole[:, 0], whole[:, 1:]
         axial, transverse, shear = engineering(gradient, self.region.axial, self.region.transverse)
-        # Each further link is matched between two single frames.
-        noise = match.noise_grey * np.sqrt(1.0 + 1.0 / self.reference.frames + 2.0 * match.links)
+        noise = match.noise_against(self.reference.frames)
         matched = match.as_matched[valid]
         false = periodic_error(matched, self.reference.subset)
         return Reading(
@@ -211,8 +213,7 @@ class GaugeReader:
         return self._kept[1]
 
     def _make_weights(self, valid: NDArray[np.bool_]) -> _Weights:
-        assert self.places is not None  # noqa: S101  (filled in above)
-        x, y = (self.places[valid] - self.region.centre).T
+        x, y = (self._places[valid] - self.region.centre).T
         along, across, depth = self._along[valid], self._across[valid], self.reference.subset
         information = self.reference.estimator.information()[valid]
         motion = pooled(x, y, information * even_weights(self.grid, valid)[:, None, None])

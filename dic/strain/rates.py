@@ -177,9 +177,9 @@ def gather_rates(
     for weight, frame in zip(weights, frames, strict=True):
         sums += weight * np.stack([frame.u, frame.v, frame.strain])
         variances += weight**2 * np.square([frame.sigma_u, frame.sigma_v])
-    along, across = region.coordinates(*np.meshgrid(grid.columns, grid.rows))
-    member = (abs(along) <= region.length / 2) & (abs(across) <= region.width / 2)
-    member &= np.isfinite(sums[:2]).all(axis=0)
+    places = np.meshgrid(grid.columns, grid.rows)
+    along, across = region.coordinates(*places)
+    member = region.holds(*places) & np.isfinite(sums[:2]).all(axis=0)
     moved = sums[:2, member]
     spread = variances[:, member].mean(axis=1) if member.any() else np.full(2, np.nan)
     # A window as wide as can be, so that every overlap is in it.

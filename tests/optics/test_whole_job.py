@@ -54,6 +54,6 @@ def test_patch_and_lens_come_back_from_the_store(with_patch, monkeypatch, withou
     missing = [one for one in first.properties["youngs_modulus"].notes if one.startswith("not included")]
     assert not any("lens" in one for one in missing)
 
-    monkeypatch.setattr("dic.sequence.track", None)
+    monkeypatch.setattr("dic.sequence.Tracker", None)
     second = dic.measure(with_patch)
     np.testing.assert_array_equal(first.history.axial, second.history.axial)
