@@ -19,7 +19,7 @@ from dic.properties.result import Curve, Property
 from dic.strain.history import GaugeHistory
 from dic.sync.contact import contact_strain_at
 from dic.sync.record import Clock, LoadRecord
-from dic.uncertainty import combine, few_readings, line_of_both
+from dic.uncertainty import combine, few_readings, line_with_errors_in_both
 
 Floats = NDArray[np.float64]
 Mask = NDArray[np.bool_]
@@ -299,7 +299,7 @@ class _Bench:
         if np.ptp(x) < LEAST_RANGE * float(np.median(np.hypot(u_x, u_y))):
             return Agreement(frames=count, strain=ends, note="the strain hardly rises above its noise")
         try:
-            line = line_of_both(x, u_x, y, u_y)
+            line = line_with_errors_in_both(x, y, u_x, u_y, scaled=False)
         except ValueError as error:
             return Agreement(frames=count, strain=ends, note=str(error))
         # Where the points scatter more than stated, the scatter is believed, few points the less.
@@ -342,8 +342,8 @@ class _Bench:
             if here.sum() < LEAST_FRAMES:
                 return nan, nan
             lines.append(
-                line_of_both(
-                    self.camera[here], self.u_camera[here], contact[here], np.maximum(spread[here], _LEAST_U)
+                line_with_errors_in_both(
+                    self.camera[here], contact[here], self.u_camera[here], np.maximum(spread[here], _LEAST_U)
                 )
             )
         first, last = lines

@@ -9,15 +9,14 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dic.properties.loading import MIN_FRAMES, Loading, Undetermined
+from dic.properties.modulus import YIELD_OFFSET
 from dic.properties.moments import fracture_of, strain_at
 from dic.properties.proof import Crossing, crossing
 from dic.properties.sheet import Entry, Reading, Sheet
-from dic.uncertainty import Line, few_readings, straight_line
+from dic.uncertainty import Line, combine, few_readings, straight_line
 
 Floats = NDArray[np.float64]
 
-#: Offset of the proof stress that stands for yielding.
-YIELD_OFFSET = 0.002
 #: Strain rates of ISO 6892-1, method A, in 1/s, each with a tolerance of 20 % [from memory].
 RANGES = (0.00007, 0.00025, 0.002, 0.0067)
 TOLERANCE = 0.2
@@ -54,13 +53,9 @@ def _to_yield(sheet: Sheet) -> Reading:
         return float(np.trapezoid(stress, strain))
 
     found, strain, stress = course(loading, line)
-    # A steeper line turns about its own middle and meets the curve elsewhere.
-    turned = replace(
-        line, slope=line.slope + line.u_slope, intercept=line.intercept - line.u_slope * line.mean_x
-    )
     grow = few_readings(line.n - 2)
     contributions = {
-        "modulus line": abs(energy(loading, turned) - energy(loading, line)) * grow,
+        "modulus line": abs(energy(loading, line.steeper()) - energy(loading, line)) * grow,
         **sheet.shifted(lambda moved: energy(moved, sheet.line(moved))),
     }
     u_end = found.u_curve / elastic.modulus
@@ -78,7 +73,7 @@ def _to_break(sheet: Sheet) -> Reading:
         sheet,
         np.append(whole.strain[before], end.strain),
         np.append(whole.stress[before], whole.stress[before][-1]),
-        float(np.hypot.reduce(list(contributions.values()))),
+        combine(contributions),
         "area under the curve up to the fracture",
         {},
     )

@@ -155,9 +155,9 @@ def _ramberg_osgood(sheet: Sheet) -> Reading:
     plastic[: elastic.end] = 0.0
     frames = passage(plastic, low, RAMBERG_OSGOOD[1])
 
-    def law(loading: Loading, slope: float, intercept: float) -> Line:
+    def law(loading: Loading, modulus: Line) -> Line:
         part = loading.part(frames)
-        plastic = part.strain - intercept - slope * part.stress
+        plastic = part.strain - modulus.intercept - modulus.slope * part.stress
         there = (plastic > low / 2) & (part.stress > 0)
         if there.sum() < MIN_FRAMES:
             raise Undetermined(
@@ -168,24 +168,16 @@ def _ramberg_osgood(sheet: Sheet) -> Reading:
         scatter = max(elastic.line.residual_s, 1e-12) / plastic
         return _line(np.log(stress), np.log(plastic), 0.0, scatter)
 
-    line = law(loading, elastic.line.slope, elastic.line.intercept)
+    line = law(loading, elastic.line)
     if not line.slope > 1:
         raise Undetermined("the stress does not grow as a power of the plastic strain")
-    # A steeper modulus line turns about its own middle.
-    steeper = elastic.line.slope + elastic.line.u_slope
-    turned = law(loading, steeper, elastic.line.intercept - elastic.line.u_slope * elastic.line.mean_x)
-
-    def shifted(loading: Loading) -> float:
-        moved = sheet.line(loading)
-        return law(loading, moved.slope, moved.intercept).slope
-
     return Reading(
         line.slope,
         "exponent of Ramberg and Osgood (NACA TN 902), line of ln plastic strain on ln stress",
         {
             "scatter": line.u_slope * few_readings(line.n - 2),
-            "modulus line": abs(turned.slope - line.slope),
-            **sheet.shifted(shifted),
+            "modulus line": abs(law(loading, elastic.line.steeper()).slope - line.slope),
+            **sheet.shifted(lambda moved: law(moved, sheet.line(moved)).slope),
         },
         sheet.window_of(frames),
         (f"r² = {line.r_squared:.6f}, {line.n} frames", *elastic.notes, *sheet.left_out_of_strain()),

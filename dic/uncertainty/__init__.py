@@ -1,6 +1,5 @@
 """Contributions to a standard uncertainty, and the straight lines that most of them come from."""
 
-from dic.uncertainty.both import LineOfBoth, line_of_both
 from dic.uncertainty.budget import Input, Row, budget_of, combine, few_readings
 from dic.uncertainty.line import Line, line_with_errors_in_both, straight_line
 from dic.uncertainty.monte_carlo import Contribution, Draws, Effect, Factor, agrees, bounded, monte_carlo
@@ -12,14 +11,12 @@ __all__ = [
     "Factor",
     "Input",
     "Line",
-    "LineOfBoth",
     "Row",
     "agrees",
     "bounded",
     "budget_of",
     "combine",
     "few_readings",
-    "line_of_both",
     "line_with_errors_in_both",
     "monte_carlo",
     "straight_line",
