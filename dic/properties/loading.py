@@ -52,9 +52,9 @@ class Loading:
         rate = np.gradient(self.stress, self.time_s)
         return replace(self, stress=self.stress + seconds * rate)
 
-    def stretched(self, false: Floats) -> Loading:
-        """Return the same frames with a false strain in both directions alike, shape (n,)."""
-        return replace(self, strain=self.strain + false, transverse=self.transverse + false)
+    def stretched(self, axial: Floats | float, transverse: Floats | float) -> Loading:
+        """Return the same frames with false strains, shape (n,)."""
+        return replace(self, strain=self.strain + axial, transverse=self.transverse + transverse)
 
     def counted_from(self, strain: float, transverse: float = 0.0) -> Loading:
         """Return the same frames with the strains counted from other zeros."""

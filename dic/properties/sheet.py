@@ -17,7 +17,7 @@ from dic.properties.loading import Loading, Undetermined, loading_of, require_se
 from dic.properties.modulus import Elastic, fit_elastic
 from dic.properties.moments import fracture_of
 from dic.properties.result import Curve, ModulusLine, Property
-from dic.properties.systematic import FalseStrain, change, changes, of_axis, window_choice
+from dic.properties.systematic import off_axis, tried, window_choice
 from dic.properties.zero import Zero, frames_at_rest, seating_slack, take_off_toe, zero_of
 from dic.sync.record import Clock
 from dic.testfile import Properties, Specimen
@@ -224,7 +224,7 @@ class Sheet:
         known = (self.curve.u_towards is not None, self.curve.straightened)
         lacking = [text for text, there in zip((_TOWARDS, _LENS), known, strict=True) if not there]
         told = [f"false strain from {one}" for one in lacking]
-        told += [] if self._left else [_INTERPOLATION]
+        told += [] if self._waves else [_INTERPOLATION]
         told += [] if np.isfinite(self.curve.u_axis_deg) else [_AXIS]
         told += [] if self.clock.offset_standard_uncertainty_s > 0 else [_CLOCK]
         return tuple(f"not included: {one}" for one in told)
@@ -246,12 +246,7 @@ class Sheet:
         """
         if not self._stretched:
             return None
-        here, moved = read(self.loading), []
-        for stretched in self._stretched:
-            try:
-                moved.append(abs(read(stretched) - here))
-            except Undetermined:
-                moved.append(nan)
+        moved = np.abs([tried(read, one) - read(self.loading) for one in self._stretched])
         return float(np.nanmax(moved)) if np.isfinite(moved).any() else nan
 
     @cached_property
@@ -266,23 +261,44 @@ class Sheet:
             [frames.start, max(frames.stop - 1, frames.start + 1)],
             [0, 1],
         )
-        return self.loading.stretched(u * grown), self.loading.stretched(-u * grown)
+        return tuple(self.loading.stretched(one, one) for one in (u * grown, -u * grown))
 
     def _of_camera(self, read: Callable[[Loading], float]) -> dict[str, float]:
         """Return the contributions of the camera's errors that all frames share."""
         found: dict[str, float] = {}
-        if np.isfinite(self.curve.u_axis_deg):
-            off = change(read, self.loading, of_axis(self.loading, self.curve.u_axis_deg))
+        here = read(self.loading)
+        if self._off_axis is not None:
+            off = tried(read, self._off_axis) - here
             # The reading has the error already, and the truth lies on its other side.
-            lacking = -off / sqrt(3) * copysign(1.0, read(self.loading))
+            lacking = -off / sqrt(3) * copysign(1.0, here)
             found["axis angle"] = Contribution(abs(off), (Effect(0.0, lacking),))
-        if self._left:
-            found["interpolation"] = changes(read, self.loading, self._left)
-        if self.curve.left_edges is not None:
-            across = self.curve.left_edges[self.loading.rows]
-            off = change(read, self.loading, FalseStrain(np.zeros_like(across), across))
-            found["pattern on the edges"] = abs(off)
+        if self._waves:
+            found["interpolation"] = hypot(*(tried(read, wave) - here for wave in self._waves))
+        if self._off_edges is not None:
+            found["pattern on the edges"] = abs(tried(read, self._off_edges) - here)
         return found
+
+    @cached_property
+    def _off_axis(self) -> Loading | None:
+        """The loading along an axis that is off; None where its uncertainty is not known."""
+        u = self.curve.u_axis_deg
+        return off_axis(self.loading, u) if np.isfinite(u) else None
+
+    @cached_property
+    def _waves(self) -> tuple[Loading, ...]:
+        """The loading with what may be left of the interpolation's periodic error, its waves one by one."""
+        axial, transverse = self.curve.left_axial, self.curve.left_transverse
+        if axial is None or transverse is None:
+            return ()
+        rows = self.loading.rows
+        waves = zip(axial[rows].T, transverse[rows].T, strict=True)
+        return tuple(self.loading.stretched(*wave) for wave in waves if np.isfinite(wave).all())
+
+    @cached_property
+    def _off_edges(self) -> Loading | None:
+        """The loading with what the pattern on the edges may do to the width; None where nothing is known."""
+        across = self.curve.left_edges
+        return None if across is None else self.loading.stretched(0.0, across[self.loading.rows])
 
     def of_lines(self, strain: Floats, u_strain: Floats, by: float = 1.0) -> dict[str, float]:
         """Return what the scatter and the choice of the window do to a constant read from slopes.
@@ -302,16 +318,6 @@ class Sheet:
         if self.section.modulus == "auto":
             found["window choice"] = bounded(abs(by) * window_choice(*given))
         return found
-
-    @cached_property
-    def _left(self) -> list[FalseStrain]:
-        """What may be left of the interpolation's periodic error, its waves one by one."""
-        axial, transverse = self.curve.left_axial, self.curve.left_transverse
-        if axial is None or transverse is None:
-            return []
-        rows = self.loading.rows
-        waves = zip(axial[rows].T, transverse[rows].T, strict=True)
-        return [FalseStrain(*wave) for wave in waves if np.isfinite(wave).all()]
 
     def with_clock(self, read: Callable[[Loading], float]) -> float:
         """Return how far the clock's standard uncertainty moves a reading.
@@ -358,12 +364,7 @@ class Sheet:
 
 def _moved(read: Callable[[Loading], float], here: Loading, sides: tuple[Loading, Loading]) -> Effect:
     """Return the parabola through a reading and those on both sides, or what one side alone shows."""
-    values = []
-    for side in sides:
-        try:
-            values.append(read(side))
-        except Undetermined:
-            values.append(nan)
+    values = [tried(read, side) for side in sides]
     middle = read(here)
     if np.isfinite(values).all():
         # Only its bend has a sign that matters: either side is as likely as the other.

@@ -2,9 +2,9 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
-from dataclasses import dataclass, replace
-from math import hypot, nan, radians, sqrt
+from collections.abc import Callable
+from dataclasses import replace
+from math import nan, radians, sqrt
 
 import numpy as np
 from numpy.typing import NDArray
@@ -21,32 +21,16 @@ MOVED_SHARE = 0.1
 CLEAR = 2.0
 
 
-@dataclass(frozen=True)
-class FalseStrain:
-    """False strains of one standard uncertainty, the same error in all frames, shape (n,)."""
-
-    axial: Floats
-    transverse: Floats
-
-
-def change(read: Read, loading: Loading, false: FalseStrain) -> float:
-    """Return how a false strain changes a reading; NaN where it cannot be had with it."""
-    moved = replace(
-        loading, strain=loading.strain + false.axial, transverse=loading.transverse + false.transverse
-    )
+def tried(read: Read, loading: Loading) -> float:
+    """Return a reading; NaN where it cannot be had."""
     try:
-        return read(moved) - read(loading)
+        return read(loading)
     except Undetermined:
         return nan
 
 
-def changes(read: Read, loading: Loading, false: Sequence[FalseStrain]) -> float:
-    """Return the root sum of squares of the changes by independent false strains."""
-    return hypot(*(change(read, loading, one) for one in false))
-
-
-def of_axis(loading: Loading, u_axis_deg: float) -> FalseStrain:
-    """Return what an axis that is off by its standard uncertainty does to the strains.
+def off_axis(loading: Loading, u_axis_deg: float) -> Loading:
+    """Return the strains along an axis that is off by its standard uncertainty.
 
     Strain along a direction that is off by θ lacks (εa - εt)·sin²θ, and the strain across has as much too
     much.  The effect has one sign and no correction is made, so its mean, u², is part of it as much as its
@@ -54,7 +38,7 @@ def of_axis(loading: Loading, u_axis_deg: float) -> FalseStrain:
     sign).
     """
     lacking = sqrt(3) * radians(u_axis_deg) ** 2 * (loading.strain - loading.transverse)
-    return FalseStrain(-lacking, lacking)
+    return loading.stretched(-lacking, lacking)
 
 
 def window_choice(loading: Loading, strain: Floats, u_strain: Floats, window: Window) -> float:
