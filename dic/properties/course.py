@@ -77,7 +77,7 @@ def _to_break(sheet: Sheet) -> Reading:
         "area under the curve up to the fracture",
         {},
     )
-    return replace(found, notes=(*end.notes, *found.notes))
+    return replace(found, notes=end.notes)
 
 
 def _energy(
@@ -95,7 +95,7 @@ def _energy(
         | others
         | sheet.of_stress(value),
         {"strain": (0.0, sign * float(strain[-1]))},
-        (*sheet.left_out(), *sheet.left_out_of_strain()),
+        missing=(*sheet.left_out(), *sheet.left_out_of_strain()),
     )
 
 

@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dic.properties.loading import MIN_FRAMES, Loading, Undetermined
-from dic.properties.sheet import Entry, Reading, Sheet, bounds
+from dic.properties.sheet import Entry, Reading, Sheet, window_of
 from dic.uncertainty import few_readings, straight_line
 
 Floats = NDArray[np.float64]
@@ -96,12 +96,9 @@ def _reader(sheet: Sheet, branch: Loading, which: str) -> Callable[[], Reading]:
             f"line of strain on stress over {which}, in the stresses of the modulus' window",
             {"scatter": value * line.u_slope / line.slope * few_readings(line.n - 2)}
             | sheet.of_stress(value),
-            {
-                "strain": bounds(branch.sign * branch.strain),
-                "stress_MPa": bounds(branch.sign * branch.stress),
-                "time_s": bounds(branch.time_s),
-            },
-            (f"r² = {line.r_squared:.6f}, {line.n} frames", *sheet.left_out()),
+            window_of(branch),
+            (f"r² = {line.r_squared:.6f}, {line.n} frames",),
+            missing=sheet.left_out(),
         )
 
     return read

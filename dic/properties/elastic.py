@@ -65,7 +65,8 @@ def _youngs_modulus(sheet: Sheet) -> Reading:
         f"{WORDS[elastic.window.kind]}, {elastic.rule}",
         statistics | sheet.of_stress(value),
         sheet.window(),
-        (*quality, *elastic.notes, *sheet.left_out(), *sheet.left_out_of_strain()),
+        (*quality, *elastic.notes),
+        missing=(*sheet.left_out(), *sheet.left_out_of_strain()),
     )
 
 
@@ -87,7 +88,8 @@ def _poissons_ratio(sheet: Sheet) -> Reading:
         f"slopes of transverse and axial strain against the same force (ASTM E132), {elastic.rule}",
         {**own, **sheet.shifted(ratio)},
         sheet.window(),
-        (*_against_axial(sheet, value, own["scatter"]), *elastic.notes, *sheet.left_out_of_strain()),
+        (*_against_axial(sheet, value, own["scatter"]), *elastic.notes),
+        missing=sheet.left_out_of_strain(),
     )
 
 
@@ -164,10 +166,6 @@ def _isotropic(sheet: Sheet, law: Law, formula: str) -> Reading:
         f"{formula}, for an isotropic material",
         statistics | sheet.of_stress(value),
         sheet.window(),
-        (
-            "the correlation of E and ν is included",
-            *sheet.elastic.notes,
-            *sheet.left_out(),
-            *sheet.left_out_of_strain(),
-        ),
+        ("the correlation of E and ν is included", *sheet.elastic.notes),
+        missing=(*sheet.left_out(), *sheet.left_out_of_strain()),
     )

@@ -15,10 +15,7 @@ from dic.properties.strength import proof_entries, strength_entries
 from dic.properties.yielding import yielding_entries
 from dic.sync.record import Clock
 from dic.testfile import Properties, Specimen
-from dic.uncertainty import agrees, budget_of, monte_carlo
-
-#: How a note begins that names what an uncertainty lacks.
-NOT_INCLUDED = "not included: "
+from dic.uncertainty import agrees, monte_carlo
 
 
 def evaluate(
@@ -73,17 +70,12 @@ def evaluate(
         *rate_entries(sheet),
         *cycle_entries(sheet),
     ]
+    inputs = sheet.inputs()
     return Evaluation(
-        {entry.name: _checked(_with_budget(entry.property(), sheet)) for entry in entries},
+        {entry.name: _checked(entry.property(inputs)) for entry in entries},
         sheet.modulus_line(),
         sheet.notices(),
     )
-
-
-def _with_budget(item: Property, sheet: Sheet) -> Property:
-    """Add the table of contributions; what the notes say is not included stands in it too."""
-    missing = tuple(note.removeprefix(NOT_INCLUDED) for note in item.notes if note.startswith(NOT_INCLUDED))
-    return replace(item, budget=budget_of(item.contributions, item.unit, sheet.inputs(), missing))
 
 
 def _checked(item: Property) -> Property:

@@ -100,7 +100,7 @@ def _hollomon(sheet: Sheet, *, exponent: bool) -> Reading:
     line = law(sheet.loading)
     window, grow = sheet.window_of(frames), few_readings(line.n - 2)
     assumed = f"section by {sheet.section.true_stress}"
-    notes = (f"r² = {line.r_squared:.6f}, {line.n} frames", *sheet.left_out_of_strain())
+    notes, missing = (f"r² = {line.r_squared:.6f}, {line.n} frames",), sheet.left_out_of_strain()
     if exponent:
         return Reading(
             line.slope,
@@ -108,6 +108,7 @@ def _hollomon(sheet: Sheet, *, exponent: bool) -> Reading:
             {"scatter": line.u_slope * grow, **sheet.shifted(lambda one: law(one).slope)},
             window,
             notes,
+            missing=missing,
         )
     value = exp(line.intercept)
     statistics = {
@@ -119,7 +120,8 @@ def _hollomon(sheet: Sheet, *, exponent: bool) -> Reading:
         f"true stress at a true strain of 1 by the power law of n (ISO 10275), {assumed}",
         statistics | sheet.of_stress(value),
         window,
-        (*notes, *sheet.left_out()),
+        notes,
+        missing=(*missing, *sheet.left_out()),
     )
 
 
@@ -143,7 +145,8 @@ def _plastic_strain_ratio(sheet: Sheet) -> Reading:
         "slope of plastic width on plastic length strain, true, at constant volume (ISO 10113)",
         {"scatter": line.u_slope / (1 + line.slope) ** 2 * few_readings(line.n - 2)},
         sheet.window_of(frames),
-        (*elastic.notes, *sheet.left_out_of_strain()),
+        elastic.notes,
+        missing=sheet.left_out_of_strain(),
     )
 
 
@@ -180,5 +183,6 @@ def _ramberg_osgood(sheet: Sheet) -> Reading:
             **sheet.shifted(lambda moved: law(moved, sheet.line(moved)).slope),
         },
         sheet.window_of(frames),
-        (f"r² = {line.r_squared:.6f}, {line.n} frames", *elastic.notes, *sheet.left_out_of_strain()),
+        (f"r² = {line.r_squared:.6f}, {line.n} frames", *elastic.notes),
+        missing=sheet.left_out_of_strain(),
     )

@@ -4,9 +4,9 @@ from __future__ import annotations
 
 from functools import cache
 
-from dic.properties.moments import strain_at
 from dic.properties.peak import Top, highest_around
 from dic.properties.sheet import Entry, Reading, Sheet
+from dic.properties.strength import strain_when
 from dic.properties.yielding import first_fall, force_and_strain
 
 
@@ -44,16 +44,10 @@ def _stress(sheet: Sheet, top: Top) -> Reading:
         "first maximum of the stress after which the coupon stretches on (ISO 527-1)",
         {"scatter": top.u_value / area} | sheet.of_stress(value),
         {"time_s": (top.time, top.time)},
-        sheet.left_out(),
+        missing=sheet.left_out(),
     )
 
 
 def _strain(sheet: Sheet, top: Top) -> Reading:
-    found = strain_at(sheet.whole, top.time, "the yield point")
-    return Reading(
-        sheet.loading.sign * found.strain,
-        "strain at the first maximum of the stress (ISO 527-1)",
-        found.contributions(top.u_time, sheet.u_clock_at(top.time)),
-        {"time_s": (top.time, top.time)},
-        (*found.notes, *sheet.left_out_of_strain()),
-    )
+    method = "strain at the first maximum of the stress (ISO 527-1)"
+    return strain_when(sheet, top.time, top.u_time, "the yield point", method)

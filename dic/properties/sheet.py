@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from functools import cached_property
 from math import copysign, hypot, nan, sqrt
@@ -21,7 +21,7 @@ from dic.properties.systematic import off_axis, tried, window_choice
 from dic.properties.zero import Zero, frames_at_rest, seating_slack, take_off_toe, zero_of
 from dic.sync.record import Clock
 from dic.testfile import Properties, Specimen
-from dic.uncertainty import Contribution, Effect, Factor, Input, Line, bounded, combine
+from dic.uncertainty import Contribution, Effect, Factor, Input, Line, bounded, budget_of, combine
 
 Floats = NDArray[np.float64]
 
@@ -34,7 +34,10 @@ _CLOCK = "the clocks, whose offset was given without an uncertainty (sync.offset
 
 @dataclass(frozen=True)
 class Reading:
-    """What a property's own function knows; its name and symbol are added outside."""
+    """What a property's own function knows; its name and symbol are added outside.
+
+    `missing` names what is not included in the uncertainty.
+    """
 
     value: float
     method: str
@@ -42,6 +45,7 @@ class Reading:
     window: dict[str, tuple[float, float]]
     notes: tuple[str, ...] = ()
     qualifier: str = ""
+    missing: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -53,8 +57,8 @@ class Entry:
     unit: str
     read: Callable[[], Reading]
 
-    def property(self) -> Property:
-        """Read it, or say why it is missing."""
+    def property(self, inputs: Mapping[str, Input] | None = None) -> Property:
+        """Read it, or say why it is missing; `inputs` stand behind the sources in its budget."""
         try:
             reading = self.read()
         except (Undetermined, np.linalg.LinAlgError) as reason:
@@ -69,9 +73,10 @@ class Entry:
             standard_uncertainty=combine(reading.contributions),
             method=reading.method,
             window=reading.window,
-            notes=reading.notes,
+            notes=(*reading.notes, *(f"not included: {one}" for one in reading.missing)),
             contributions=reading.contributions,
             qualifier=reading.qualifier,
+            budget=budget_of(reading.contributions, self.unit, inputs or {}, reading.missing),
         )
 
 
@@ -214,7 +219,7 @@ class Sheet:
     def left_out(self) -> tuple[str, ...]:
         """Say what a stress' uncertainty lacks."""
         return tuple(
-            f"not included: {source}, whose uncertainty is not wholly given ({', '.join(keys)} missing)"
+            f"{source}, whose uncertainty is not wholly given ({', '.join(keys)} missing)"
             for source, keys in self.gaps.items()
             if keys
         )
@@ -227,7 +232,7 @@ class Sheet:
         told += [] if self._waves else [_INTERPOLATION]
         told += [] if np.isfinite(self.curve.u_axis_deg) else [_AXIS]
         told += [] if self.clock.offset_standard_uncertainty_s > 0 else [_CLOCK]
-        return tuple(f"not included: {one}" for one in told)
+        return tuple(told)
 
     def shifted(self, read: Callable[[Loading], float]) -> dict[str, float]:
         """Return the contributions of what shifts strain and stress together in all frames."""
@@ -354,12 +359,7 @@ class Sheet:
 
     def window_of(self, frames: slice) -> dict[str, tuple[float, float]]:
         """Return the bounds of some frames in strain, stress and time."""
-        loading = self.loading
-        return {
-            "strain": bounds(loading.sign * loading.strain[frames]),
-            "stress_MPa": bounds(loading.sign * loading.stress[frames]),
-            "time_s": bounds(loading.time_s[frames]),
-        }
+        return window_of(self.loading.part(frames))
 
 
 def _moved(read: Callable[[Loading], float], here: Loading, sides: tuple[Loading, Loading]) -> Effect:
@@ -371,6 +371,15 @@ def _moved(read: Callable[[Loading], float], here: Loading, sides: tuple[Loading
         bend = (values[0] + values[1]) / 2 - middle
         return Effect(abs(values[0] - values[1]) / 2, bend * copysign(1.0, middle))
     return Effect(float(np.nanmax(np.abs(np.array(values) - middle))) if np.isfinite(values).any() else nan)
+
+
+def window_of(loading: Loading) -> dict[str, tuple[float, float]]:
+    """Return the bounds of all frames in strain, stress and time."""
+    return {
+        "strain": bounds(loading.sign * loading.strain),
+        "stress_MPa": bounds(loading.sign * loading.stress),
+        "time_s": bounds(loading.time_s),
+    }
 
 
 def bounds(values: Floats) -> tuple[float, float]:

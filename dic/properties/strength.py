@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from dataclasses import replace
 
 import numpy as np
 
@@ -54,12 +55,8 @@ def _proof(sheet: Sheet, offset: float) -> Callable[[], Reading]:
             f"modulus line shifted by {100 * offset:g} % strain from its own zero (ISO 6892-1)",
             statistics | sheet.of_stress(found.stress),
             {"strain": bounds(loading.sign * np.array([found.low, found.high]))},
-            (
-                *([bends] if gradual else []),
-                *elastic.notes,
-                *sheet.left_out(),
-                *sheet.left_out_of_strain(),
-            ),
+            (*([bends] if gradual else []), *elastic.notes),
+            missing=(*sheet.left_out(), *sheet.left_out_of_strain()),
         )
 
     return read
@@ -82,54 +79,62 @@ def _strength(sheet: Sheet) -> Reading:
         + (" (ISO 6892-1)" if value > 0 else ""),
         statistics | sheet.of_stress(value),
         {"time_s": (curve.peak_time_s, curve.peak_time_s)},
-        (*notes, *sheet.left_out()),
+        tuple(notes),
+        missing=sheet.left_out(),
         qualifier=_at_least(sheet),
+    )
+
+
+def strain_when(
+    sheet: Sheet,
+    time_s: float,
+    u_time_s: float,
+    what: str,
+    method: str,
+    notes: tuple[str, ...] = (),
+    qualifier: str = "",
+) -> Reading:
+    """Read the strain at an instant of the record, at which `what` happens."""
+    found = strain_at(sheet.whole, time_s, what)
+    return Reading(
+        sheet.loading.sign * found.strain,
+        method,
+        found.contributions(u_time_s, sheet.u_clock_at(time_s)),
+        {"time_s": (time_s, time_s)},
+        (*notes, *found.notes),
+        qualifier,
+        missing=sheet.left_out_of_strain(),
     )
 
 
 def _at_maximum(sheet: Sheet) -> Reading:
     sheet.require_load()
-    curve, sign = sheet.curve, sheet.loading.sign
-    found = strain_at(sheet.whole, curve.peak_time_s, "the largest force")
-    return Reading(
-        sign * found.strain,
-        "strain at the largest force of the record (ISO 6892-1)",
-        found.contributions(curve.u_peak_time_s, sheet.u_clock_at(curve.peak_time_s)),
-        {"time_s": (curve.peak_time_s, curve.peak_time_s)},
-        (*_unbroken(sheet), *found.notes, *sheet.left_out_of_strain()),
-        qualifier=_at_least(sheet),
-    )
+    curve = sheet.curve
+    method = "strain at the largest force of the record (ISO 6892-1)"
+    return strain_when(
+        sheet, curve.peak_time_s, curve.u_peak_time_s, "the largest force", method, _unbroken(sheet),
+        _at_least(sheet),
+    )  # fmt: skip
 
 
 def _plastic_at_maximum(sheet: Sheet) -> Reading:
     total, strength, elastic = _at_maximum(sheet), _strength(sheet), sheet.elastic
     share = abs(strength.value) / elastic.modulus
     slope = elastic.line.u_slope / elastic.line.slope * few_readings(elastic.line.n - 2)
-    return Reading(
-        total.value - strength.value / elastic.modulus,
-        "strain at the largest force less its elastic part, Rm/E (ISO 6892-1)",
-        total.contributions | {"modulus": share * slope},
-        total.window,
-        total.notes,
-        total.qualifier,
+    return replace(
+        total,
+        value=total.value - strength.value / elastic.modulus,
+        method="strain at the largest force less its elastic part, Rm/E (ISO 6892-1)",
+        contributions=total.contributions | {"modulus": share * slope},
     )
 
 
 def _at_break(sheet: Sheet) -> Reading:
     sheet.require_load()
-    broken, sign = fracture_of(sheet.curve), sheet.loading.sign
-    found = strain_at(sheet.whole, broken.time_s, "the fracture")
-    return Reading(
-        sign * found.strain,
-        "mean strain of the gauge when the force falls away (ISO 6892-1)",
-        found.contributions(broken.u_time_s, sheet.u_clock_at(broken.time_s)),
-        {"time_s": (broken.time_s, broken.time_s)},
-        (
-            "beyond the largest force strain gathers in a neck, and its mean depends on the gauge's length",
-            *found.notes,
-            *sheet.left_out_of_strain(),
-        ),
-    )
+    broken = fracture_of(sheet.curve)
+    method = "mean strain of the gauge when the force falls away (ISO 6892-1)"
+    neck = "beyond the largest force strain gathers in a neck, and its mean depends on the gauge's length"
+    return strain_when(sheet, broken.time_s, broken.u_time_s, "the fracture", method, (neck,))
 
 
 def _unbroken(sheet: Sheet) -> tuple[str, ...]:

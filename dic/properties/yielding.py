@@ -177,7 +177,7 @@ def _stress(sheet: Sheet, found: Yielding, *, upper: bool) -> Reading:
         words,
         {"scatter": scatter} | sheet.of_stress(value),
         {"time_s": (when, when)},
-        sheet.left_out(),
+        missing=sheet.left_out(),
     )
 
 
@@ -203,7 +203,7 @@ def _extension(sheet: Sheet, found: Yielding) -> Reading:
         "(ISO 6892-1)",
         {"knee": u_knee, "strain at the upper yield point": bounded(u_upper)},
         {"strain": (sign * found.strain, sign * knee)},
-        sheet.left_out_of_strain(),
+        missing=sheet.left_out_of_strain(),
     )
 
 
