@@ -121,11 +121,16 @@ def _regression(stress: Floats, strain: Floats, u_stress: Floats, u_strain: Floa
 
 @dataclass(frozen=True)
 class _Bend:
-    """A parabola of strain over stress: value and slope at a stress, and how it scatters."""
+    """A parabola of strain over stress: value and slope at a stress, and how it scatters.
+
+    `clear` is how much it bends, in standard uncertainties of that.
+    """
 
     value: float
     slope: float
-    covariance: Floats
+    u_value: float
+    u_slope: float
+    clear: float
     residual_s: float
     r_squared: float
     n: int
@@ -133,16 +138,8 @@ class _Bend:
 
 def bend_of(loading: Loading, frames: slice) -> float:
     """Return the bend of strain over stress in some frames, either way, in standard uncertainties of it."""
-    stress, strain = loading.stress[frames], loading.strain[frames]
-    width = float(np.ptp(stress))
-    if width == 0:
-        return 0.0
-    design = np.vander((stress - stress.mean()) / width, 3)
-    found = np.linalg.lstsq(design, strain, rcond=None)[0]
-    residuals = strain - design @ found
-    variance = float(residuals @ residuals) / max(len(strain) - 3, 1)
-    u = sqrt(float(np.linalg.inv(design.T @ design)[0, 0]) * variance)
-    return abs(float(found[0])) / u if u else 0.0
+    stress = loading.stress[frames]
+    return _bend(stress, loading.strain[frames], float(stress.mean())).clear
 
 
 def _bend(stress: Floats, strain: Floats, at: float) -> _Bend:
@@ -154,11 +151,14 @@ def _bend(stress: Floats, strain: Floats, at: float) -> _Bend:
     residuals = strain - design @ found
     square = float(residuals @ residuals)
     variance = square / max(len(strain) - 3, 1)
+    u = np.sqrt(np.diag(np.linalg.inv(design.T @ design)) * variance)
     spread = float(np.sum((strain - strain.mean()) ** 2))
     return _Bend(
         value=float(found[2]),
         slope=float(found[1]) / width,
-        covariance=np.asarray(np.linalg.inv(design.T @ design) * variance, dtype=np.float64),
+        u_value=float(u[2]),
+        u_slope=float(u[1]) / width,
+        clear=abs(float(found[0] / u[0])) if u[0] else 0.0,
         residual_s=sqrt(variance),
         r_squared=1 - square / spread if spread else 1.0,
         # One coefficient more than a line's two.
@@ -168,11 +168,8 @@ def _bend(stress: Floats, strain: Floats, at: float) -> _Bend:
 
 def _tangent(stress: Floats, strain: Floats, at: float) -> Line:
     """Lay the tangent of a parabola at a stress."""
-    bend, width = _bend(stress, strain, at), float(np.ptp(stress))
-    return _line(
-        bend, slope=bend.slope, u_slope=sqrt(bend.covariance[1, 1]) / width,
-        at=(at, bend.value, sqrt(bend.covariance[2, 2])),
-    )  # fmt: skip
+    bend = _bend(stress, strain, at)
+    return _line(bend, slope=bend.slope, u_slope=bend.u_slope, at=(at, bend.value, bend.u_value))
 
 
 def _chord(loading: Loading, strain: Floats, window: Window) -> Line:

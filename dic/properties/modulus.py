@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Literal
 
 from dic.properties.fits import Kind, Window, bend_of, end_line, fit
 from dic.properties.loading import MIN_FRAMES, Loading, Undetermined, passage
@@ -63,7 +64,7 @@ class Elastic:
         return self.window.frames.stop
 
 
-def fit_elastic(loading: Loading, wanted: ModulusWindow | str, source: str = "as given") -> Elastic:
+def fit_elastic(loading: Loading, wanted: ModulusWindow | Literal["auto"], source: str) -> Elastic:
     """Fit the elastic part.
 
     Strain is laid over stress, not stress over strain: the force, averaged from a dense record, is the
@@ -94,7 +95,7 @@ def fit_elastic(loading: Loading, wanted: ModulusWindow | str, source: str = "as
     Undetermined
         If the window holds too few frames, or strain does not grow with stress in it.
     """
-    if isinstance(wanted, str):
+    if wanted == "auto":
         try:
             return _between_shares_of_yield(loading)
         except Undetermined as reason:
@@ -107,10 +108,9 @@ def fit_elastic(loading: Loading, wanted: ModulusWindow | str, source: str = "as
                 "strain 0.0005 to 0.0025 (ISO 527-1)",
                 notes=(f"the window is that for plastics: {reason}",),
             )
-    bounds = wanted.strain if wanted.strain is not None else wanted.stress
-    assert bounds is not None  # noqa: S101  (the model holds one of the two)
-    low, high = _along(loading, bounds)
-    if wanted.strain is not None:
+    [(bounded, window)] = wanted.given.items()
+    low, high = _along(loading, window)
+    if bounded == "strain":
         frames, rule = passage(loading.strain, low, high), f"strain {low:g} to {high:g}, {source}"
         return _fit(loading, frames, rule, wanted.kind, strains=(low, high))
     frames, rule = passage(loading.stress, low, high), f"stress {low:g} MPa to {high:g} MPa, {source}"
@@ -126,16 +126,16 @@ def _along(loading: Loading, window: tuple[float, float]) -> tuple[float, float]
 def _between_shares_of_yield(loading: Loading) -> Elastic:
     """Fit between shares of the yield point; raise with the reason why that cannot be."""
     yield_point = _first_guess(loading)
-    found: Elastic | None = None
+    last = None
     for _ in range(ROUNDS):
         frames = passage(loading.stress, *(share * yield_point for share in SHARES))
-        if found is not None and frames == found.window.frames:
+        if frames == last:
             break
+        last = frames
         found = _fit(
             loading, frames, "10 % to 40 % of the 0.2 % proof stress (ISO 6892-1, annex on the modulus)"
         )
         yield_point = crossing(loading, found.line, found.end, YIELD_OFFSET).stress
-    assert found is not None  # noqa: S101  (there is a first round)
     if yield_point / found.modulus >= LARGEST_YIELD_STRAIN:
         raise Undetermined("the curve bends all along and shows no yield point like a metal's")
     # A gradual yield leaves plastic strain below its bend, too little to see and enough to falsify ν.
@@ -182,9 +182,8 @@ def _widened(loading: Loading, narrow: Elastic, full: float, of: str) -> Elastic
 
 def _first_guess(loading: Loading) -> float:
     """Return a stress that is below, or not far above, any metal's yield point, with frames beneath it."""
-    early = loading.stress[passage(loading.strain, -1.0, FIRST_GUESS)]
     highest = float(loading.stress.max(initial=0.0))
-    guess = float(early.max(initial=0.0))
+    guess = _highest_before(loading, FIRST_GUESS)
     while 0 < guess < highest:
         window = passage(loading.stress, *(share * guess for share in SHARES))
         if window.stop - window.start >= MIN_FRAMES:

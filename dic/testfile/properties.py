@@ -19,12 +19,18 @@ class ModulusWindow(Section):
 
     @model_validator(mode="after")
     def _one_window(self) -> ModulusWindow:
-        given = [window for window in (self.strain, self.stress) if window is not None]
+        given = list(self.given.values())
         if len(given) != 1 or not given[0][0] < given[0][1]:
             raise ValueError("give one of strain = [low, high] or stress = [low, high], low before high")
         if self.kind == "secant" and 0 not in given[0]:
             raise ValueError("a secant starts from zero; write for example strain = [0, 0.0025]")
         return self
+
+    @property
+    def given(self) -> dict[str, tuple[float, float]]:
+        """The window under the name of what it bounds, ``strain`` or ``stress``."""
+        both = {"strain": self.strain, "stress": self.stress}
+        return {name: window for name, window in both.items() if window is not None}
 
 
 #: What each preset sets where the test file says nothing else, and the standard that it follows.
