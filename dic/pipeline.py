@@ -25,7 +25,7 @@ from dic.measurement import Measurement, Scene
 from dic.optics import bound, corrected, corrected_gauges, receding
 from dic.pattern import sketch
 from dic.preparation import Setup, set_up
-from dic.properties import Curve, Evaluation, evaluate, make_curve
+from dic.properties import Curve, Evaluation, Sheet, evaluate, make_curve
 from dic.properties import doubts as property_doubts
 from dic.report import write_report
 from dic.sequence import map_window, tracked_or_stored, unreadable
@@ -157,12 +157,14 @@ def judged(
     """Go from gauge histories to properties."""
     curve = _curve(test, setup, history, record, clock)
     found = evaluate(
-        curve,
-        test.specimen,
-        test.load_record.relative_uncertainty,
-        clock,
-        test.properties,
-        force_bounded=test.load_record.force_class is not None,
+        Sheet(
+            curve,
+            test.specimen,
+            test.load_record.relative_uncertainty,
+            clock,
+            test.properties,
+            force_bounded=test.load_record.force_class is not None,
+        )
     )
     clip_on = _clip_on(test, setup, history, record, clock, curve, found)
     straight = _alignment(test, setup, history, curve, found, folder)

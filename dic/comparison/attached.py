@@ -7,6 +7,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from dic.sync.noise import NORMAL_MEDIAN
+
 Floats = NDArray[np.float64]
 
 #: A jump is this many times the usual change of the difference from frame to frame ...
@@ -19,8 +21,6 @@ FOLLOWS = 2.0
 STILL = 0.1
 #: Standard deviations within which a reading that stands still stays.
 STILL_NOISE = 5.0
-#: Median of the absolute value of a standard normal variable.
-_NORMAL_MEDIAN = 0.6745
 
 
 @dataclass(frozen=True)
@@ -59,7 +59,7 @@ def attached(camera: Floats, contact: Floats, noise: float) -> Attached:
         it stands still for the rest while the camera sees strain.
     """
     change = np.abs(np.diff(contact - camera))
-    usual = max(float(np.median(change)) / _NORMAL_MEDIAN, noise)
+    usual = max(float(np.median(change)) / NORMAL_MEDIAN, noise)
     jumps = np.flatnonzero(change > max(JUMP_NOISE * usual, JUMP_SHARE * float(np.ptp(camera))))
     slips: list[int] = []
     for last in jumps.tolist():

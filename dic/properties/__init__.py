@@ -5,6 +5,7 @@ from dic.properties.doubts import doubts
 from dic.properties.evaluation import evaluate
 from dic.properties.peak import peak_force
 from dic.properties.result import Curve, Evaluation, ModulusLine, Property
+from dic.properties.sheet import Sheet
 from dic.properties.stress_map import elastic_stress
 
 __all__ = [
@@ -12,6 +13,7 @@ __all__ = [
     "Evaluation",
     "ModulusLine",
     "Property",
+    "Sheet",
     "doubts",
     "elastic_stress",
     "evaluate",

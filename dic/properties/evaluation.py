@@ -9,41 +9,20 @@ from dic.properties.cycles import cycle_entries
 from dic.properties.elastic import elastic_entries
 from dic.properties.hardening import hardening_entries
 from dic.properties.plastics import plastics_entries
-from dic.properties.result import Curve, Evaluation, Property
+from dic.properties.result import Evaluation, Property
 from dic.properties.sheet import Sheet
 from dic.properties.strength import proof_entries, strength_entries
 from dic.properties.yielding import yielding_entries
-from dic.sync.record import Clock
-from dic.testfile import Properties, Specimen
 from dic.uncertainty import agrees, monte_carlo
 
 
-def evaluate(
-    curve: Curve,
-    specimen: Specimen,
-    force_uncertainty: float | None,
-    clock: Clock,
-    section: Properties,
-    *,
-    force_bounded: bool = False,
-) -> Evaluation:
+def evaluate(sheet: Sheet) -> Evaluation:
     """Read the properties from a curve.
 
     Parameters
     ----------
-    curve
-        Stress and strain at the frames.
-    specimen
-        The coupon, for the uncertainty of its section.
-    force_uncertainty
-        Relative standard uncertainty of the force (its calibration), or None if not given.
-    clock
-        For the uncertainty of its offset.
-    section
-        Windows and offsets.
-    force_bounded
-        Whether the force's error lies anywhere within bounds, as a class says, rather than normally
-        distributed.
+    sheet
+        The curve, and what its readings need to know beside it.
 
     Returns
     -------
@@ -58,7 +37,6 @@ def evaluate(
     half the change that a shift by plus and minus one standard uncertainty makes.  The same budget is
     propagated by draws (JCGM 101:2008); where the linear interval differs from theirs, a note says so.
     """
-    sheet = Sheet(curve, specimen, force_uncertainty, clock, section, force_bounded=force_bounded)
     entries = [
         *elastic_entries(sheet),
         *proof_entries(sheet),

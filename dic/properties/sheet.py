@@ -85,8 +85,19 @@ class Sheet:
 
     Parameters
     ----------
-    curve, specimen, force_uncertainty, clock, section, force_bounded
-        As for `dic.properties.evaluate`.
+    curve
+        Stress and strain at the frames.
+    specimen
+        The coupon, for the uncertainty of its section.
+    force_uncertainty
+        Relative standard uncertainty of the force (its calibration), or None if not given.
+    clock
+        For the uncertainty of its offset.
+    section
+        Windows and offsets.
+    force_bounded
+        Whether the force's error lies anywhere within bounds, as a class says, rather than normally
+        distributed.
     """
 
     def __init__(

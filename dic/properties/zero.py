@@ -44,8 +44,6 @@ class Zero:
         The frames with their strains counted from there.
     strain, transverse
         The strains, as measured, that count as zero.
-    toe
-        How much of `strain` is a toe that was taken off.
     notices
         What people should know about it.
     """
@@ -53,7 +51,6 @@ class Zero:
     loading: Loading
     strain: float = 0.0
     transverse: float = 0.0
-    toe: float = 0.0
     notices: tuple[Notice, ...] = ()
 
 
@@ -195,7 +192,7 @@ def take_off_toe(
         ),
     )
     return (
-        Zero(loading, zero.strain + toe, zero.transverse + across, toe, zero.notices + told),
+        Zero(loading, zero.strain + toe, zero.transverse + across, zero.notices + told),
         elastic,
     )
 

@@ -87,53 +87,31 @@ def known_clock(
     ClockError
         If frames and record do not overlap on it, or what `sync.source` asks for is not there.
     """
-    if section.offset != "auto" or section.source == "absolute":
-        return given_clock(camera_time_s, record, section, epoch)
-    if section.source == "trigger" and record.trigger is None:
-        raise ClockError(
-            "there is no trigger column",
-            where='sync.source = "trigger"',
-            remedy="name it in load_record.trigger, or leave out sync.source",
-        )
-    if section.source == "loading" or record.trigger is None:
+    if section.offset != "auto":
+        clock = _given(section.offset, "given in the test file", "given offset", section)
+    elif section.source == "absolute":
+        offset = _apart(record, epoch)
+        clock = _given(offset, "from the dates in frames and record", "two clocks' setting", section)
+    elif section.source == "loading":
         return None
-    try:
-        clock = trigger_clock(camera_time_s, record, section)
-    except ClockError:
-        if section.source == "trigger":
-            raise
-        return None
+    else:
+        try:
+            clock = trigger_clock(camera_time_s, record, section)
+        except ClockError:
+            if section.source == "trigger":
+                raise
+            return None
     _require_overlap(clock, camera_time_s, record)
     return clock
 
 
-def given_clock(
-    camera_time_s: Floats, record: LoadRecord, section: Sync, epoch: datetime | None = None
-) -> Clock | None:
-    """Return the clock that the test file gives, or None where the offset has to be found.
-
-    Raises
-    ------
-    ClockError
-        If frames and record do not overlap on it, or absolute time is asked for and not there.
-    """
-    if section.offset != "auto":
-        offset, method, whose = section.offset, "given in the test file", "given offset"
-    elif section.source == "absolute":
-        offset, method, whose = (
-            _apart(record, epoch),
-            "from the dates in frames and record",
-            "two clocks' setting",
-        )
-    else:
-        return None
+def _given(offset_s: float, method: str, whose: str, section: Sync) -> Clock:
+    """Return the clock of an offset that needs no finding, and say if its uncertainty is not known."""
     u = section.offset_uncertainty
     notes = (
         () if u is not None else (f"not included: the uncertainty of the {whose} (sync.offset_uncertainty)",)
     )
-    clock = Clock(offset, u or 0.0, section.assumed_drift, method, notes)
-    _require_overlap(clock, camera_time_s, record)
-    return clock
+    return Clock(offset_s, u or 0.0, section.assumed_drift, method, notes)
 
 
 def _apart(record: LoadRecord, epoch: datetime | None) -> float:

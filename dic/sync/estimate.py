@@ -20,6 +20,7 @@ from dic.sync.locate import (
     within,
 )
 from dic.sync.misfit import Course
+from dic.sync.noise import NORMAL_MEDIAN
 from dic.sync.record import Clock, LoadRecord
 from dic.testfile import Sync
 
@@ -35,8 +36,6 @@ BROKEN = 0.3
 UNLOADED, END_ROWS = 0.5, 5
 #: Rows within which the force has fallen at fracture.
 FALL_ROWS = 4
-#: Median of the absolute value of a standard normal variable.
-_NORMAL_MEDIAN = 0.6745
 
 _NEXT_TIME = "next time film two seconds of rest before the pull"
 
@@ -156,7 +155,7 @@ def _by_travel(seen: Seen, record: LoadRecord, words: str) -> Located | None:
 def _noise(signal: Floats) -> float:
     """Estimate a signal's noise from how it misses the line between its neighbours."""
     bend = np.diff(signal[np.isfinite(signal)], 2)
-    return float(np.median(np.abs(bend))) / (_NORMAL_MEDIAN * sqrt(6)) if bend.size else 0.0
+    return float(np.median(np.abs(bend))) / (NORMAL_MEDIAN * sqrt(6)) if bend.size else 0.0
 
 
 def end_of_unloading(seen: Seen, record: LoadRecord) -> Located | None:

@@ -7,6 +7,7 @@ from math import hypot, inf, sqrt
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.integrate import cumulative_trapezoid
 from scipy.interpolate import make_interp_spline
 from scipy.optimize import minimize_scalar
 
@@ -109,7 +110,7 @@ class Misfit:
         square = np.full(len(offset), np.inf)
         if enough.any():
             total, count = self.residuals(offset[enough])
-            square[enough] = total / (np.maximum(count, DEGREE + 3) - DEGREE - 2)
+            square[enough] = _mean(total, count)
         return square
 
     def refined(self, near: float) -> float:
@@ -161,8 +162,7 @@ class Misfit:
         for one in noise:
             again = signal + r.normal(0.0, spread, len(signal))
             total, count = _squares(force + one, again, course.same_sign)
-            square = total / (np.maximum(count, DEGREE + 3) - DEGREE - 2)
-            misses.append(_lowest(tried, square) - offset)
+            misses.append(_lowest(tried, _mean(total, count)) - offset)
         return float(np.sqrt(np.mean(np.square(misses)))) * few_readings(REPETITIONS - 1)
 
     def _smooth_noise(self, own: Misfit, tried: Floats, r: np.random.Generator) -> Floats:
@@ -179,8 +179,7 @@ class Misfit:
             low = np.maximum(np.arange(len(time)) - half, 0)
             high = np.minimum(np.arange(len(time)) + half + 1, len(time))
             smooth = (total[high] - total[low]) / (high - low)
-            steps = np.diff(time) * (smooth[1:] + smooth[:-1]) / 2
-            integral = np.concatenate([[0.0], np.cumsum(steps)])
+            integral = cumulative_trapezoid(smooth, time, initial=0.0)
             reach = own.spacing / 2
             draws.append(
                 (np.interp(at + reach, time, integral) - np.interp(at - reach, time, integral)) / own.spacing
@@ -209,6 +208,11 @@ def _lowest(x: Floats, y: Floats) -> float:
         return float(x[k])
     bend = y[k - 1] - 2 * y[k] + y[k + 1]
     return float(x[k] + (0.5 * (y[k - 1] - y[k + 1]) / bend if bend > 0 else 0.0) * (x[1] - x[0]))
+
+
+def _mean(total: Floats, count: Floats) -> Floats:
+    """Return residual variances: a curve's coefficients and the offset are fitted."""
+    return total / (np.maximum(count, DEGREE + 3) - DEGREE - 2)
 
 
 def _squares(force: Floats, signal: Floats, same_sign: bool) -> tuple[Floats, Floats]:

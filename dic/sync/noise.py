@@ -18,7 +18,7 @@ SPIKE_SAMPLES = 3
 #: two samples makes √6 of them, and four of those come up once in 30 000.
 SPIKE_NOISE = 10
 #: Median of the absolute value of a standard normal variable.
-_NORMAL_MEDIAN = 0.6745
+NORMAL_MEDIAN = 0.6745
 
 
 def noise_of(time_s: Floats, force: Floats) -> Floats:
@@ -42,7 +42,7 @@ def noise_of(time_s: Floats, force: Floats) -> Floats:
     miss = force[1:-1] - ((1 - share) * force[:-2] + share * force[2:])
     own = np.abs(miss) / np.sqrt(1 + share**2 + (1 - share) ** 2)
     size = min(NOISE_WINDOW, len(own))
-    typical = median_filter(own, size=size) / _NORMAL_MEDIAN
+    typical = median_filter(own, size=size) / NORMAL_MEDIAN
     # The filter's running sum can end a rounding error below zero.
     spread = np.sqrt(np.maximum(uniform_filter1d(np.minimum(own, 4 * typical) ** 2, size), 0))
     return np.pad(spread, 1, mode="edge")

@@ -44,7 +44,7 @@ def trigger_clock(camera_time_s: Floats, record: LoadRecord, section: Sync) -> C
     camera_time_s
         Times of the frames on the camera's clock, s, shape (n,).
     record
-        The load record with its trigger column.
+        The load record, with its trigger column.
     section
         The test file's wishes; its drift, where given.
 
@@ -57,9 +57,15 @@ def trigger_clock(camera_time_s: Floats, record: LoadRecord, section: Sync) -> C
     Raises
     ------
     ClockError
-        If the column marks no frames, or their times contradict the camera's.
+        If there is no such column, it marks no frames, or their times contradict the camera's.
     """
-    marks = _marks(record, len(camera_time_s))
+    if record.trigger is None:
+        raise ClockError(
+            "there is no trigger column",
+            where='sync.source = "trigger"',
+            remedy="name it in load_record.trigger, or leave out sync.source",
+        )
+    marks = _marks(record, record.trigger, len(camera_time_s))
     known = (marks.frame >= 0) & (marks.frame < len(camera_time_s))
     if not known.any():
         raise _unfit(record, "marks none of the frames")
@@ -94,10 +100,9 @@ def trigger_clock(camera_time_s: Floats, record: LoadRecord, section: Sync) -> C
     )
 
 
-def _marks(record: LoadRecord, frames: int) -> Marks:
-    assert record.trigger is not None  # noqa: S101  (the caller has looked)
-    there = np.isfinite(record.trigger)
-    value, time = record.trigger[there], record.time_s[there]
+def _marks(record: LoadRecord, column: Floats, frames: int) -> Marks:
+    there = np.isfinite(column)
+    value, time = column[there], record.time_s[there]
     if value.size < 2 or np.ptp(value) == 0:
         raise _unfit(record, "never changes")
     steps = np.diff(value)

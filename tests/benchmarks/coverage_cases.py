@@ -11,7 +11,7 @@ import numpy as np
 from dic.frames import open_frames
 from dic.pipeline import _clock, read_gauges
 from dic.preparation import set_up
-from dic.properties import evaluate, make_curve
+from dic.properties import Sheet, evaluate, make_curve
 from dic.strain.history import GaugeHistory
 from dic.strain.periodic import Periodic
 from dic.sync import fit_clock, read_load_record
@@ -39,7 +39,9 @@ def pictureless(seed: int) -> list[dict[str, Any]]:
     record = LoadRecord(Path("machine.csv"), time, force, displacement_mm=travel)
     clock = fit_clock(history.time_s, history.axial, history.u_axial, record, test.sync)
     curve = make_curve(history, record, clock, test.specimen.area)
-    found = evaluate(curve, test.specimen, test.load_record.relative_uncertainty, clock, test.properties)
+    found = evaluate(
+        Sheet(curve, test.specimen, test.load_record.relative_uncertainty, clock, test.properties)
+    )
     return _rows(virtual, seed, found.properties, clock, len(history))
 
 
@@ -56,7 +58,9 @@ def with_pictures(seed: int) -> list[dict[str, Any]]:
         history, _ = read_gauges(test, setup, results, None)
         clock = _clock(test, setup, history, record)
         curve = make_curve(history, record, clock, test.specimen.area, u_axis_deg=setup.coupon.u_axis_deg)
-        found = evaluate(curve, test.specimen, test.load_record.relative_uncertainty, clock, test.properties)
+        found = evaluate(
+            Sheet(curve, test.specimen, test.load_record.relative_uncertainty, clock, test.properties)
+        )
     return _rows(virtual, seed, found.properties, clock, len(history))
 
 

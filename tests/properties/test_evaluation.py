@@ -10,7 +10,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy import stats
 
-from dic.properties import doubts, evaluate
+from dic.properties import Sheet, doubts, evaluate
 from dic.sync import LoadRecord
 from dic.testfile import ModulusWindow, Properties, Specimen
 
@@ -21,7 +21,7 @@ SHEET = Properties(proof=(0.002, 0.001))
 
 
 def sheet(drawn, section=SHEET, u_force=None):
-    return evaluate(drawn.curve, drawn.specimen, u_force, drawn.clock, section)
+    return evaluate(Sheet(drawn.curve, drawn.specimen, u_force, drawn.clock, section))
 
 
 #: What depends on the instant of fracture.
@@ -169,7 +169,7 @@ def test_what_is_not_given_is_named(pull):
 )
 def test_each_dimension_without_an_uncertainty_is_named(pull, specimen, gap):
     drawn = pull()
-    found = evaluate(drawn.curve, specimen, 0.001, drawn.clock, SHEET).properties
+    found = evaluate(Sheet(drawn.curve, specimen, 0.001, drawn.clock, SHEET)).properties
     named = [note for note in found["youngs_modulus"].notes if "specimen." in note]
     warned = [one.text for one in doubts(found, specimen, 0.001) if one.code == "uncertainty_incomplete"]
     assert len(named) == len(warned) == (gap is not None)
@@ -432,7 +432,9 @@ def test_a_sharp_yield_point(pull):
     plateau = replace(
         curve, stress_MPa=stress, force_N=25 * stress, peak_force_N=5250.0, peak_time_s=curve.time_s[-12]
     )
-    found = evaluate(plateau, drawn.specimen, None, drawn.clock, Properties(proof=(0.002, 0.0002))).properties
+    found = evaluate(
+        Sheet(plateau, drawn.specimen, None, drawn.clock, Properties(proof=(0.002, 0.0002)))
+    ).properties
     for name in ("proof_stress_0_2", "proof_stress_0_02"):
         # On a flat curve without noise in stress, only the chord around the corner could be off: a frame
         # of 8e-5 strain at most, and there not at all, because the line meets the plateau.

@@ -5,7 +5,7 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
-from dic.properties import evaluate
+from dic.properties import Sheet, evaluate
 from dic.properties.loading import Undetermined, loading_of
 from dic.properties.moments import fracture_of, strain_at
 from dic.sync import LoadRecord
@@ -23,7 +23,7 @@ def ending(drawn, record_s, frames_s):
 
 
 def evaluated(drawn):
-    return evaluate(drawn.curve, drawn.specimen, None, drawn.clock, Properties()).properties
+    return evaluate(Sheet(drawn.curve, drawn.specimen, None, drawn.clock, Properties())).properties
 
 
 def test_no_strain_is_told_for_an_instant_long_after_the_last_frame(pull):

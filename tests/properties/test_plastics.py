@@ -7,7 +7,7 @@ import numpy as np
 import pytest
 from scipy import stats
 
-from dic.properties import evaluate
+from dic.properties import Sheet, evaluate
 from dic.testfile import Properties
 
 #: σ = E·ε·exp(-ε/ε0) has its maximum at ε0 and is E·ε0/e there; far beyond, chains that are drawn harden.
@@ -44,7 +44,7 @@ def evaluated(pull, law=ductile, end=BREAK, sign=1.0, seed=4, **keys):
     force = 25 * law(strain_at(machine)) + r.normal(0, 0.5, len(machine))
     record = replace(drawn.record, time_s=machine, force_N=sign * force)
     curve = replace(drawn, history=history, record=record).curve
-    return evaluate(curve, drawn.specimen, None, drawn.clock, Properties(**keys)).properties
+    return evaluate(Sheet(curve, drawn.specimen, None, drawn.clock, Properties(**keys))).properties
 
 
 @pytest.mark.parametrize("sign", [1, -1])

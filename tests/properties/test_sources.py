@@ -5,7 +5,7 @@ from math import isfinite, radians, sqrt
 
 import pytest
 
-from dic.properties import evaluate
+from dic.properties import Sheet, evaluate
 from dic.testfile import Properties
 
 #: Sources of UNCERT CoP 07 (tensile) and CoP 16 (Poisson's ratio), 2000 [from memory], and the word under
@@ -25,7 +25,7 @@ COP_16 = {"alignment": "axis", "readings": "scatter", "strain measurement": "int
 )
 def test_every_listed_source_is_accounted_for(pull, name, sources):
     drawn = pull()
-    found = evaluate(drawn.curve, drawn.specimen, None, drawn.clock, Properties()).properties[name]
+    found = evaluate(Sheet(drawn.curve, drawn.specimen, None, drawn.clock, Properties())).properties[name]
     told = [row.source for row in found.budget]
     for source, word in sources.items():
         assert any(word in one for one in told), (source, told)
@@ -36,7 +36,9 @@ def test_every_listed_source_is_accounted_for(pull, name, sources):
 
 
 def checked(drawn, specimen, **keys):
-    return evaluate(drawn.curve, specimen, 0.01, drawn.clock, Properties(modulus="auto"), **keys).properties
+    return evaluate(
+        Sheet(drawn.curve, specimen, 0.01, drawn.clock, Properties(modulus="auto"), **keys)
+    ).properties
 
 
 def test_the_budget_is_checked_by_draws(pull):
@@ -67,7 +69,9 @@ def test_an_axis_that_is_off_only_ever_raises_the_modulus(pull, sign):
     """Strain lacks (1 + ν)·θ² of itself, so E is that much too high: the draws lie below, never above."""
     drawn = pull(sign=sign)
     curve = replace(drawn.curve, u_axis_deg=3.0)
-    told = evaluate(curve, drawn.specimen, None, drawn.clock, Properties()).properties["youngs_modulus"]
+    told = evaluate(Sheet(curve, drawn.specimen, None, drawn.clock, Properties())).properties[
+        "youngs_modulus"
+    ]
     low, high = told.interval_95
     mean = (1 + 0.33) * radians(3.0) ** 2 * told.value
     (effect,) = told.contributions["axis angle"].effects
@@ -79,7 +83,9 @@ def test_an_axis_that_is_off_only_ever_raises_the_modulus(pull, sign):
 def test_the_bulk_modulus_bends_with_its_scatter(pull):
     """K is one over a sum of slopes: moved by its share e either way, their mean is K·e²/(1 - e²) off."""
     drawn = pull(strain_noise=3e-5)
-    found = evaluate(drawn.curve, drawn.specimen, None, drawn.clock, Properties()).properties["bulk_modulus"]
+    found = evaluate(Sheet(drawn.curve, drawn.specimen, None, drawn.clock, Properties())).properties[
+        "bulk_modulus"
+    ]
     (effect,) = found.contributions["scatter"].effects
     share = effect.linear / found.value
     # The derivatives are taken over steps of a millionth.

@@ -4,14 +4,14 @@ from dataclasses import replace
 
 import numpy as np
 
-from dic.properties import evaluate
+from dic.properties import Sheet, evaluate
 from dic.testfile import Properties
 
 
 def test_the_budget_holds_what_a_motion_in_the_window_does(pull):
     """A false strain that grows over the elastic part, by the bound's half width: k = 2 holds E and ν."""
     drawn, half = pull(), 200e-6
-    plain = evaluate(drawn.curve, drawn.specimen, 0.001, drawn.clock, Properties())
+    plain = evaluate(Sheet(drawn.curve, drawn.specimen, 0.001, drawn.clock, Properties()))
     strain = drawn.curve.axial
     low, high = plain.line.low, plain.line.high
     for way in (half, -half):
@@ -23,7 +23,9 @@ def test_the_budget_holds_what_a_motion_in_the_window_does(pull):
             u_towards=half / np.sqrt(3),
         )
         window = {"stress": plain.properties["youngs_modulus"].window["stress_MPa"]}
-        found = evaluate(curve, drawn.specimen, 0.001, drawn.clock, Properties(modulus=window)).properties
+        found = evaluate(
+            Sheet(curve, drawn.specimen, 0.001, drawn.clock, Properties(modulus=window))
+        ).properties
         for name in ("youngs_modulus", "poissons_ratio"):
             one, true = found[name], plain.properties[name]
             assert one.contributions["motion towards the camera"] > 0

@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 
 from dic.errors import InputError
-from dic.properties import elastic_stress, evaluate, make_curve
+from dic.properties import Sheet, elastic_stress, evaluate, make_curve
 from dic.properties.hooke import principal_strains
 from dic.strain.history import GaugeHistory
 from dic.strain.periodic import Periodic
@@ -35,7 +35,7 @@ def evaluated(time, axial, across, dense, force, *, noise=0.0, force_noise=0.0, 
     r = np.random.default_rng(1000 + seed)
     record = LoadRecord(Path("machine.csv"), dense, force + r.normal(0, force_noise, len(force)))
     curve = make_curve(history(time, axial, across, noise, seed), record, CLOCK, COUPON.area)
-    return evaluate(curve, COUPON, None, CLOCK, Properties(**keys))
+    return evaluate(Sheet(curve, COUPON, None, CLOCK, Properties(**keys)))
 
 
 STEEL = {"upper": 300.0, "lower": 270.0, "plateau": 0.015, "transient": 255.0}
@@ -164,7 +164,7 @@ def test_moduli_of_each_cycle():
 
 def test_a_test_without_cycles_has_none(pull):
     drawn = pull()
-    found = evaluate(drawn.curve, drawn.specimen, None, drawn.clock, Properties()).properties
+    found = evaluate(Sheet(drawn.curve, drawn.specimen, None, drawn.clock, Properties())).properties
     assert not [name for name in found if "loading_modulus" in name]
 
 
@@ -177,7 +177,7 @@ def test_times_that_run_back_leave_the_strength(pull):
     time = drawn.history.time_s.copy()
     time[20] = time[18]
     back = replace(drawn.curve, time_s=time)
-    found = evaluate(back, drawn.specimen, None, drawn.clock, Properties())
+    found = evaluate(Sheet(back, drawn.specimen, None, drawn.clock, Properties()))
     said = reasons(found)
     assert "times do not grow from frame 19 to frame 20" in said["youngs_modulus"]
     assert found.properties["tensile_strength"].value > 0
@@ -186,7 +186,9 @@ def test_times_that_run_back_leave_the_strength(pull):
 def test_a_section_that_is_none_leaves_nothing_false(pull):
     drawn = pull()
     for area in (-25.0, 0.0, float("nan")):
-        found = evaluate(replace(drawn.curve, area_mm2=area), drawn.specimen, None, drawn.clock, Properties())
+        found = evaluate(
+            Sheet(replace(drawn.curve, area_mm2=area), drawn.specimen, None, drawn.clock, Properties())
+        )
         assert "section of" in reasons(found)["youngs_modulus"]
         assert "section of" in reasons(found)["tensile_strength"]
 
@@ -194,7 +196,7 @@ def test_a_section_that_is_none_leaves_nothing_false(pull):
 def test_a_force_that_falls_before_yield(pull):
     """The coupon breaks in its elastic part: strength and modulus stand, yielding has its reason."""
     drawn = pull(fracture=0.0025)
-    found = evaluate(drawn.curve, drawn.specimen, None, drawn.clock, Properties())
+    found = evaluate(Sheet(drawn.curve, drawn.specimen, None, drawn.clock, Properties()))
     said = reasons(found)
     assert "never reaches" in said["proof_stress_0_2"]
     assert "does not fall" in said["upper_yield"]
@@ -208,7 +210,7 @@ def test_a_record_that_ends_early_has_no_break(pull):
     early = drawn.record.time_s < 40
     cut = LoadRecord(drawn.record.path, drawn.record.time_s[early], drawn.record.force_N[early])
     one = replace(drawn, record=cut)
-    found = evaluate(one.curve, drawn.specimen, None, drawn.clock, Properties())
+    found = evaluate(Sheet(one.curve, drawn.specimen, None, drawn.clock, Properties()))
     assert "ends before the coupon breaks" in reasons(found)["strain_at_break"]
 
 
@@ -216,7 +218,7 @@ def test_strain_that_was_lost_before_the_break(pull):
     drawn = pull()
     lost = np.where(drawn.history.time_s > 50, np.nan, drawn.history.axial)
     one = replace(drawn, history=replace(drawn.history, axial=lost))
-    said = reasons(evaluate(one.curve, drawn.specimen, None, drawn.clock, Properties()))
+    said = reasons(evaluate(Sheet(one.curve, drawn.specimen, None, drawn.clock, Properties())))
     assert "last measured frame was taken" in said["strain_at_maximum"]
     for name in ("strain_at_break", "strain_energy_to_break"):
         assert "s before the fracture" in said[name]
@@ -225,7 +227,7 @@ def test_strain_that_was_lost_before_the_break(pull):
 def test_elastic_stress_map(pull):
     xarray = pytest.importorskip("xarray")
     drawn = pull(strain_noise=0.0, force_noise=0.0)
-    sheet = evaluate(drawn.curve, drawn.specimen, None, drawn.clock, Properties()).properties
+    sheet = evaluate(Sheet(drawn.curve, drawn.specimen, None, drawn.clock, Properties())).properties
     e_, nu = sheet["youngs_modulus"].value, sheet["poissons_ratio"].value
     stress = np.linspace(50, 270, 12).reshape(3, 4)
     axial, across, _ = principal_strains(e_, nu, np.stack([stress, 20 + 0 * stress, 0 * stress], -1)).T

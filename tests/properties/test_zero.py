@@ -7,14 +7,14 @@ from math import isnan
 import numpy as np
 import pytest
 
-from dic.properties import evaluate
+from dic.properties import Sheet, evaluate
 from dic.testfile import ModulusWindow, Properties
 
 WINDOW = ModulusWindow(strain=(0.0005, 0.0025))
 
 
 def evaluated(drawn, **keys):
-    return evaluate(drawn.curve, drawn.specimen, None, drawn.clock, Properties(**keys))
+    return evaluate(Sheet(drawn.curve, drawn.specimen, None, drawn.clock, Properties(**keys)))
 
 
 def codes(found):

@@ -5,7 +5,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from dic.properties import evaluate, make_curve
+from dic.properties import Sheet, evaluate, make_curve
 from dic.strain.history import GaugeHistory
 from dic.strain.periodic import Periodic
 from dic.sync import Clock, LoadRecord
@@ -52,7 +52,7 @@ def test_ramberg_osgood(youngs_modulus, yield_point, exponent):
     transverse = -0.3 * stress / youngs_modulus - plastic / 2
     offsets = (0.002, 0.001, 0.01)
     found = evaluate(
-        curve(strain, transverse, stress), COUPON, None, CLOCK, Properties(proof=offsets)
+        Sheet(curve(strain, transverse, stress), COUPON, None, CLOCK, Properties(proof=offsets))
     ).properties
     # At 40 % of the proof stress the plastic strain is 0.002·0.4ⁿ, for n = 11 a share of 1e-4 of the
     # window's strain, and far less for the others.
@@ -73,7 +73,7 @@ def test_hollomon(strength, exponent):
     true_strain = np.linspace(1e-6, 2 * exponent, 20_001)
     stress = strength * true_strain**exponent * np.exp(-true_strain)
     measured = curve(np.expm1(true_strain), np.expm1(-true_strain / 2), stress)
-    found = evaluate(measured, COUPON, None, CLOCK, Properties(modulus="auto")).properties
+    found = evaluate(Sheet(measured, COUPON, None, CLOCK, Properties(modulus="auto"))).properties
     # Within 2 % of the maximum, rounding alone hides the cubic term of the law only in a window where it is
     # worth less than this.
     exact = strength * (exponent / np.e) ** exponent
@@ -90,7 +90,7 @@ def test_neo_hookean(shear):
     stress = shear * (stretch - stretch**-2)
     measured = curve(stretch - 1, stretch**-0.5 - 1, stress)
     middle = 0.0015
-    found = evaluate(measured, COUPON, None, CLOCK, Properties()).properties
+    found = evaluate(Sheet(measured, COUPON, None, CLOCK, Properties())).properties
     # The default window 0.0005 to 0.0025 sees the slope at its middle, dσ/dε = μ(1 + 2λ⁻³); the curve's
     # third derivative changes a line's slope there by less than 1e-5.
     exact = shear * (1 + 2 * (1 + middle) ** -3)
@@ -101,7 +101,7 @@ def test_neo_hookean(shear):
     # -dε_t/dε = λ^(-3/2)/2.
     assert found["poissons_ratio"].value == pytest.approx(0.5 * (1 + middle) ** -1.5, rel=2e-5)
     small = Properties(modulus=ModulusWindow(strain=(0.0, 0.0002)))
-    found = evaluate(measured, COUPON, None, CLOCK, small).properties
+    found = evaluate(Sheet(measured, COUPON, None, CLOCK, small)).properties
     # Middle of the window 1e-4: tangent 3μ(1 - 2e-4).
     assert found["youngs_modulus"].value == pytest.approx(3 * shear, rel=2.5e-4)
     assert found["shear_modulus"].value == pytest.approx(shear, rel=2.5e-4)
