@@ -35,7 +35,7 @@ class Property:
     window
         Bounds of the data used, with their meaning, for example ``{"strain": (0.0005, 0.0025)}``.
     notes
-        What was assumed or left out, a sentence each.
+        What was assumed, a sentence each.
     contributions
         Standard uncertainty contributions in `unit` by source; their root sum of squares is
         `standard_uncertainty`.
@@ -60,6 +60,11 @@ class Property:
     budget: tuple[Row, ...] = ()
     interval_95: tuple[float, float] = (nan, nan)
     draws_standard_deviation: float = nan
+
+    @property
+    def missing(self) -> tuple[str, ...]:
+        """What the uncertainty does not include, in words."""
+        return tuple(row.source for row in self.budget if not row.included)
 
 
 @dataclass(frozen=True)

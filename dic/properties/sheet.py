@@ -73,7 +73,7 @@ class Entry:
             standard_uncertainty=combine(reading.contributions),
             method=reading.method,
             window=reading.window,
-            notes=(*reading.notes, *(f"not included: {one}" for one in reading.missing)),
+            notes=reading.notes,
             contributions=reading.contributions,
             qualifier=reading.qualifier,
             budget=budget_of(reading.contributions, self.unit, inputs or {}, reading.missing),

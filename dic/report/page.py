@@ -14,7 +14,6 @@ from markupsafe import Markup
 
 from dic.comparison import ClipOn
 from dic.measurement import Measurement, Scene
-from dic.properties.evaluation import NOT_INCLUDED
 from dic.properties.result import Property
 from dic.report import words
 from dic.report.alignment import draw_alignment, sentences, sides, verdict
@@ -219,7 +218,7 @@ def _entry(item: Property) -> dict[str, Any]:
         "window": words.window(item.window),
         # One range names the window; the others say the same in other quantities.
         "short_window": words.window(dict(list(item.window.items())[:1])),
-        "notes": [note for note in item.notes if not note.startswith(NOT_INCLUDED)],
+        "notes": item.notes,
         "contributions": _contributions(item),
         "interval": _interval(item),
     }
@@ -229,9 +228,8 @@ def _left_out(items: list[Property]) -> list[tuple[str, list[Markup]]]:
     """Return what uncertainties do not include, each once, with the symbols of the properties concerned."""
     found: dict[str, list[Markup]] = {}
     for item in items:
-        for note in item.notes:
-            if note.startswith(NOT_INCLUDED):
-                found.setdefault(note.removeprefix(NOT_INCLUDED), []).append(words.symbol(item.symbol))
+        for source in item.missing:
+            found.setdefault(source, []).append(words.symbol(item.symbol))
     return list(found.items())
 
 

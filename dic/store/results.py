@@ -170,7 +170,7 @@ def _property(item: Property) -> dict[str, Any]:
         "standard_uncertainty": item.standard_uncertainty,
         "method": item.method,
         "window": item.window,
-        "notes": notes,
+        "notes": [*notes, *(f"not included: {one}" for one in item.missing)],
         "symbol": item.symbol,
         "coverage_factor": COVERAGE_FACTOR,
         "expanded_uncertainty": COVERAGE_FACTOR * item.standard_uncertainty,

@@ -141,21 +141,20 @@ def test_contributions_make_up_the_uncertainty(pull):
             assert one.contributions["section"] == pytest.approx(
                 one.value * 0.01 / drawn.specimen.thickness, rel=1e-12
             )
-            assert not any("force calibration" in note or "specimen" in note for note in one.notes)
+            assert not any("force calibration" in source or "specimen" in source for source in one.missing)
 
 
 def test_what_is_not_given_is_named(pull):
     for one in determined(sheet(pull())):
-        missing = [note for note in one.notes if note.startswith("not included:")]
         section = "specimen.width_uncertainty, specimen.thickness_uncertainty"
-        assert any("force calibration" in note for note in missing) == (one.unit in STRESSES)
-        assert any(section in note for note in missing) == (one.unit in STRESSES)
+        assert any("force calibration" in note for note in one.missing) == (one.unit in STRESSES)
+        assert any(section in note for note in one.missing) == (one.unit in STRESSES)
         if one.name.startswith("strain_rate"):
             continue  # a rate counts neither from the record nor from the camera's distance alone
         # The clock of these tests is given, and force does not need it to find its maximum.
-        assert any("sync.offset" in note for note in missing) == (one.name not in BY_FORCE), one.name
+        assert any("sync.offset" in note for note in one.missing) == (one.name not in BY_FORCE), one.name
         for source in ("interpolation", "axis"):
-            assert any(source in note for note in missing) == (one.name not in BY_FORCE)
+            assert any(source in note for note in one.missing) == (one.name not in BY_FORCE)
 
 
 @pytest.mark.parametrize(
@@ -170,7 +169,7 @@ def test_what_is_not_given_is_named(pull):
 def test_each_dimension_without_an_uncertainty_is_named(pull, specimen, gap):
     drawn = pull()
     found = evaluate(Sheet(drawn.curve, specimen, 0.001, drawn.clock, SHEET)).properties
-    named = [note for note in found["youngs_modulus"].notes if "specimen." in note]
+    named = [source for source in found["youngs_modulus"].missing if "specimen." in source]
     warned = [one.text for one in doubts(found, specimen, 0.001) if one.code == "uncertainty_incomplete"]
     assert len(named) == len(warned) == (gap is not None)
     for said in (*named, *warned):
@@ -179,7 +178,7 @@ def test_each_dimension_without_an_uncertainty_is_named(pull, specimen, gap):
 
 def test_a_found_clock_is_not_named_as_left_out(pull):
     drawn = pull(u_clock=0.01)
-    assert not any("sync.offset" in note for note in sheet(drawn).properties["youngs_modulus"].notes)
+    assert not any("sync.offset" in one for one in sheet(drawn).properties["youngs_modulus"].missing)
 
 
 def test_spikes_and_unseen_fracture_stand_on_the_strength(pull):

@@ -30,4 +30,4 @@ def test_the_budget_holds_what_a_motion_in_the_window_does(pull):
             one, true = found[name], plain.properties[name]
             assert one.contributions["motion towards the camera"] > 0
             assert abs(one.value - true.value) < 2 * one.standard_uncertainty
-            assert not any("motion towards" in note for note in one.notes)
+            assert not any("motion towards" in source for source in one.missing)

@@ -11,11 +11,11 @@ import numpy as np
 import pytest
 from PIL import Image
 
-from dic.properties.evaluation import NOT_INCLUDED
 from dic.properties.result import ModulusLine
 from dic.report import write_report
 from dic.store.folder import FIGURES
 from dic.store.tables import called, found_in, stated
+from dic.uncertainty import budget_of
 
 #: What the tests share is made once, also where workers share the tests.
 pytestmark = pytest.mark.xdist_group("page")
@@ -142,9 +142,9 @@ def test_what_is_absent_for_one_reason_stands_on_one_line(page, lost, fields, tm
 
 
 def test_what_is_not_included_stands_once(measurement, fields, tmp_path):
-    lacking = f"{NOT_INCLUDED}false strain from somewhere"
+    lacking = budget_of({}, "", {}, ("false strain from somewhere",))
     noted = {
-        name: dataclasses.replace(item, notes=(*item.notes, lacking))
+        name: dataclasses.replace(item, budget=(*item.budget, *lacking))
         for name, item in measurement.properties.items()
         if name in ("youngs_modulus", "poissons_ratio")
     }

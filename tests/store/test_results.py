@@ -25,7 +25,7 @@ def test_json_says_what_was_measured(measurement, tmp_path):
         shown = read["properties"][name]
         assert {"value", "unit", "standard_uncertainty", "method", "window", "notes"} <= set(shown)
         assert shown["unit"] == item.unit
-        assert shown["notes"] == list(item.notes)
+        assert shown["notes"] == [*item.notes, *(f"not included: {one}" for one in item.missing)]
         if np.isfinite(item.value):
             assert shown["value"] == item.value
             assert shown["standard_uncertainty"] == item.standard_uncertainty
