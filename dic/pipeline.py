@@ -108,9 +108,8 @@ def read_gauges(
     reader, readings, still = setup.reader(), [], []
     named = NamedReadings(setup.subsets, setup.gauges, setup.silhouette)
     for done, followed in enumerate(tracked_or_stored(test, setup, folder), start=1):
-        match = setup.optics.straight(followed.match, setup.reference.x, setup.reference.y)
-        readings.append(reader.read(match))
-        named.read(match, followed.widths)
+        readings.append(reader.read(followed.match))
+        named.read(followed.match, followed.widths)
         still.append(followed.patch)
         if progress is not None:
             progress(done, len(setup.source))

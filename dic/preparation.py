@@ -9,7 +9,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from dic.correlation import Grid, Reference, Settings, Tracker, lay_grid, prepare_reference
+from dic.correlation import Grid, Match, Reference, Settings, Tracker, lay_grid, prepare_reference
 from dic.errors import FrameError, Notice, PatternError, TestFileError
 from dic.frames import FrameSource
 from dic.frames.doubts import same_picture
@@ -83,6 +83,10 @@ class Setup:
         return GaugeReader(
             self.reference, self.grid, self.region, self.extensometer_px, self.subsets.straight
         )
+
+    def straight(self, match: Match) -> Match:
+        """Return a match of the frames in straight coordinates."""
+        return self.optics.straight(match, self.reference.x, self.reference.y)
 
     @property
     def scale_mm(self) -> float:

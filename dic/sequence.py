@@ -6,7 +6,7 @@ import hashlib
 import json
 from collections.abc import Iterator
 from concurrent.futures import ThreadPoolExecutor
-from itertools import repeat
+from itertools import repeat, starmap
 from pathlib import Path
 from typing import Any, NamedTuple
 
@@ -23,7 +23,7 @@ from dic.gauges.silhouette import Silhouette, Widths, clear, mean_motion
 from dic.optics import Apparent, Lens
 from dic.preparation import Setup
 from dic.store import fields
-from dic.strain import StrainMapper, Window
+from dic.strain import StrainMap, StrainMapper, Window
 from dic.testfile import TestFile
 
 
@@ -36,22 +36,25 @@ class Followed(NamedTuple):
 
 
 def tracked_or_stored(test: TestFile, setup: Setup, folder: Path) -> Iterator[Followed]:
-    """Yield what each frame gives, displacements in the picture as it is.
+    """Yield what each frame gives, displacements in straight coordinates.
 
     From the store if it holds this very tracking, else by tracking.
     """
     key = tracking_key(test, setup.source, setup.optics.lens)
     if fields.stored_attributes(folder).get("tracking_key") == key:
-        nothing = repeat(None)  # without end, because both may draw on it
-        edges, patch = setup.silhouette is not None, setup.optics.patch is not None
-        yield from map(
-            Followed,
-            fields.stored_matches(folder, setup.grid),
-            (Widths(*one) for one in fields.stored_edges(folder)) if edges else nothing,
-            (Apparent(*one) for one in fields.stored_patch(folder)) if patch else nothing,
-        )
+        yield from _stored(setup, folder)
     else:
         yield from _tracked(test, setup, folder, key)
+
+
+def _stored(setup: Setup, folder: Path) -> Iterator[Followed]:
+    nothing = repeat(None)  # without end, because both may draw on it
+    yield from map(
+        Followed,
+        map(setup.straight, fields.stored_matches(folder, setup.grid)),
+        starmap(Widths, fields.stored_edges(folder)) if setup.silhouette is not None else nothing,
+        starmap(Apparent, fields.stored_patch(folder)) if setup.optics.patch is not None else nothing,
+    )
 
 
 def tracking_key(test: TestFile, source: FrameSource, lens: Lens | None = None) -> str:
@@ -86,14 +89,12 @@ def map_window(test: TestFile, grid: Grid) -> Window:
 
 
 def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[Followed]:
-    grid, source = setup.grid, setup.source
+    """Track the frames into the store."""
+    source, grid, edges, optics = setup.source, setup.grid, setup.silhouette, setup.optics
     window = map_window(test, grid)
-    axes, optics = (setup.region.axial, setup.region.transverse), setup.optics
-    mapper = StrainMapper(window, axes, optics.unbending(grid))
-    tracker = Tracker(setup.reference, grid.neighbours())
-    still = optics.patch.follower() if optics.patch is not None else None
-    measured, edges = 0, setup.silhouette
+    mapper = StrainMapper(window, (setup.region.axial, setup.region.transverse), optics.unbending(grid))
     damage: dict[int, str] = {}
+    measured = 0
     with (
         # BLAS threads spin for a while after each small product, on the cores that the kernels need.
         threadpool_limits(1, user_api="blas"),
@@ -103,25 +104,17 @@ def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[F
             grid,
             source.time_s,
             {"tracking_key": key, **_attributes(setup, window)},
-            edges.along if edges is not None else None,
-            still is not None,
+            stations=edges.along if edges is not None else None,
+            patch=optics.patch is not None,
         ) as writer,
     ):
         hashed = hashing.submit(source.sha256)
-        for frame in _read_ahead(source, damage):
-            match = tracker.follow(frame)
-            widths = _widths(edges, setup, frame, match) if edges is not None else None
-            apparent = still(frame) if still is not None else None
-            flat = optics.straight(match, setup.reference.x, setup.reference.y)
-            parts = (flat.u, flat.v, match.sigma_u, match.sigma_v)
+        for followed in _followed(setup, _read_ahead(source, damage)):
             writer.put(
-                match,
-                mapper.strain(*(fields.spread(part, grid.inside) for part in parts)),
-                (widths.px, widths.u_per_grey) if widths is not None else None,
-                apparent,
+                followed.match, _strains(mapper, followed.match, grid), followed.widths, followed.patch
             )
-            measured += bool(match.converged.any())
-            yield Followed(match, widths, apparent)
+            measured += bool(followed.match.converged.any())
+            yield followed
         check_damage(damage, len(source), test.frames.source)
         # The frames of the reference always match; alone they say nothing.
         if measured <= setup.reference.frames:
@@ -153,15 +146,34 @@ def unreadable(folder: Path) -> dict[int, str]:
     return {int(index): str(why) for index, why in said.items()}
 
 
+def _followed(setup: Setup, frames: Iterator[Grey | Flag]) -> Iterator[Followed]:
+    """Follow the subsets, and edges and still patch where there are any, from frame to frame."""
+    tracker = Tracker(setup.reference, setup.grid.neighbours())
+    edges, patch = setup.silhouette, setup.optics.patch
+    still = patch.follower() if patch is not None else None
+    for frame in frames:
+        match = setup.straight(tracker.follow(frame))
+        yield Followed(
+            match,
+            _widths(edges, setup, frame, match) if edges is not None else None,
+            still(frame) if still is not None else None,
+        )
+
+
 def _widths(edges: Silhouette, setup: Setup, frame: Grey | Flag, match: Match) -> Widths:
     """Measure the width between the edges where the subsets' mean motion has carried them."""
-    found, reference = match.converged, setup.reference
-    moved = np.stack([match.u, match.v], axis=1)[found]
-    motion = mean_motion(reference.places[found], moved, setup.region.centre)
+    found = match.converged
+    moved = match.as_matched[found][:, [0, 3]]  # the edges are looked for in the picture as it is
+    motion = mean_motion(setup.reference.places[found], moved, setup.region.centre)
     if isinstance(frame, Flag) or not np.isfinite(motion).all():
         nowhere = np.full(len(edges.along), np.nan)
         return Widths(nowhere, nowhere)
     return clear(edges.measure(frame, motion), match.noise_grey)
+
+
+def _strains(mapper: StrainMapper, match: Match, grid: Grid) -> StrainMap:
+    parts = (match.u, match.v, match.sigma_u, match.sigma_v)
+    return mapper.strain(*(fields.spread(part, grid.inside) for part in parts))
 
 
 def _read_ahead(source: FrameSource, damage: dict[int, str]) -> Iterator[Grey | Flag]:

@@ -12,6 +12,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from math import hypot, sqrt
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -60,8 +61,7 @@ LEAST_STEP = 3.0
 MOST_UNEVEN = 0.05
 
 
-@dataclass(frozen=True)
-class Widths:
+class Widths(NamedTuple):
     """The distance between the edges in one frame.
 
     Attributes

@@ -152,7 +152,7 @@ class FieldsWriter:
         """Append the next frame; `edges` as `EDGES` and `patch` as `PATCH`, where they are followed."""
         inside = self._grid.inside
         values: dict[str, NDArray[Any]] = {
-            **{name: spread(part, inside) for name, part in zip(AFFINE, match.affine.T, strict=True)},
+            **{name: spread(part, inside) for name, part in zip(AFFINE, match.as_matched.T, strict=True)},
             "strain_axial": strains.axial,
             "strain_transverse": strains.transverse,
             "strain_shear": strains.shear,
