@@ -86,9 +86,7 @@ def record_doubts(record: LoadRecord) -> Iterator[Notice]:
 def missing_uncertainties(specimen: Specimen, force_uncertainty: float | None) -> Iterator[Notice]:
     """Warn of uncertainties that are not given and will not be in the budget."""
     blank = [] if force_uncertainty is not None else ["load_record.force_uncertainty"]
-    for side in ("width", "thickness", "diameter"):
-        if getattr(specimen, side) is not None and specimen.side_uncertainty(side) is None:
-            blank.append(f"specimen.{side}_uncertainty")
+    blank += specimen.unstated
     if blank:
         yield Notice(
             "uncertainty_not_given",
@@ -112,10 +110,8 @@ def dimension_doubts(
     picture
         The longer side of the pictures, px.
     """
-    for side in ("width", "thickness", "diameter"):
-        value, u = getattr(specimen, side), getattr(specimen, f"{side}_uncertainty")
-        if value is None:
-            continue
+    for side, value in specimen.sides.items():
+        u = getattr(specimen, f"{side}_uncertainty")
         if not SIDES_MM[0] <= value <= SIDES_MM[1]:
             yield Notice("dimension_odd", f"specimen.{side} is {value:g} mm; check its unit.")
         if u is not None and u > MOST_UNCERTAIN * value:

@@ -12,8 +12,7 @@ GOOD_SLOPE = 0.01
 
 def missing_uncertainties(specimen: Specimen) -> list[str]:
     """Return the keys of those dimensions whose uncertainty is not given."""
-    measured = ("diameter",) if specimen.shape == "round" else ("width", "thickness")
-    return [f"specimen.{side}_uncertainty" for side in measured if specimen.side_uncertainty(side) is None]
+    return specimen.unstated
 
 
 def doubts(

@@ -2,14 +2,14 @@
 
 from __future__ import annotations
 
-from math import pi, sqrt
+from math import pi, prod, sqrt
 from pathlib import Path
 from typing import Annotated, Literal
 
 from pydantic import Field, model_validator
 
-from dic.quantities import parse
 from dic.testfile.values import (
+    Axis,
     Column,
     Duration,
     FileName,
@@ -21,10 +21,13 @@ from dic.testfile.values import (
     Segment,
     Time,
     Unit,
+    axis_angle,
 )
 
 #: Files that bring their own frame times.
 VIDEO_ENDINGS = (".avi", ".mp4", ".mov", ".mkv")
+#: What is measured of a coupon by its shape; the camera sees the first.
+SIDES = {"flat": ("width", "thickness"), "round": ("diameter",)}
 
 
 class Specimen(Section):
@@ -43,8 +46,8 @@ class Specimen(Section):
 
     @model_validator(mode="after")
     def _dimensions_of_its_shape(self) -> Specimen:
-        flat, circular = ("width", "thickness"), ("diameter",)
-        needed, foreign = (circular, flat) if self.shape == "round" else (flat, circular)
+        needed = SIDES[self.shape]
+        foreign = [key for keys in SIDES.values() for key in keys if key not in needed]
         missing = [key for key in needed if getattr(self, key) is None]
         if missing:
             raise ValueError(
@@ -57,19 +60,19 @@ class Specimen(Section):
         return self
 
     @property
+    def sides(self) -> dict[str, float]:
+        """The dimensions by name, mm, first the one that the camera sees."""
+        return {side: getattr(self, side) for side in SIDES[self.shape]}
+
+    @property
     def area(self) -> float:
         """Original cross-section S0, mm²."""
-        if self.shape == "round":
-            return pi * self.visible_width**2 / 4
-        assert self.thickness is not None  # noqa: S101  (validated above)
-        return self.visible_width * self.thickness
+        return pi * self.visible_width**2 / 4 if self.shape == "round" else prod(self.sides.values())
 
     @property
     def visible_width(self) -> float:
         """Width (or diameter) that the camera sees, mm."""
-        seen = self.width if self.shape == "flat" else self.diameter
-        assert seen is not None  # noqa: S101  (validated above)
-        return seen
+        return next(iter(self.sides.values()))
 
     def side_uncertainty(self, side: str) -> float | None:
         """Return a dimension's standard uncertainty, mm; for want of another the calliper's.
@@ -82,15 +85,20 @@ class Specimen(Section):
         return given
 
     @property
+    def unstated(self) -> list[str]:
+        """The keys of those dimensions whose uncertainty is not given."""
+        return [f"specimen.{side}_uncertainty" for side in self.sides if self.side_uncertainty(side) is None]
+
+    @property
     def side_errors(self) -> tuple[tuple[float, int, bool], ...]:
         """The dimensions' relative standard uncertainties, powers in S0, and whether a digit bounds them.
 
         Those whose uncertainty is not given are left out.
         """
         return tuple(
-            (u / value, power, getattr(self, f"{side}_uncertainty") is None)
-            for side, power in (("width", 1), ("thickness", 1), ("diameter", 2))
-            if (value := getattr(self, side)) and (u := self.side_uncertainty(side))
+            (u / value, 2 if side == "diameter" else 1, getattr(self, f"{side}_uncertainty") is None)
+            for side, value in self.sides.items()
+            if (u := self.side_uncertainty(side))
         )
 
     @property
@@ -182,23 +190,15 @@ class LoadRecord(Section):
 class Gauge(Section):
     """Where strain is averaged."""
 
-    axis: str = "auto"
+    axis: Axis = "auto"
     region: Literal["auto"] | tuple[float, float, float, float] = "auto"
     subsets: Literal["everywhere", "ends"] = "everywhere"
     length: Length | None = None
 
-    @model_validator(mode="after")
-    def _axis_is_known(self) -> Gauge:
-        self.axis_angle  # noqa: B018  (raises when it cannot be read)
-        return self
-
     @property
     def axis_angle(self) -> float | None:
         """Angle of the pull from the picture's vertical, deg clockwise as seen; None for ``auto``."""
-        named = {"auto": None, "vertical": 0.0, "horizontal": 90.0}
-        if self.axis in named:
-            return named[self.axis]
-        return parse(self.axis, "angle")
+        return axis_angle(self.axis)
 
 
 class Correlation(Section):

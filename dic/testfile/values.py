@@ -62,6 +62,18 @@ def _is_positive_length(written: str) -> str:
     return written
 
 
+def axis_angle(written: str) -> float | None:
+    """Return the angle of an axis from the picture's vertical, deg clockwise as seen; None for ``auto``."""
+    named = {"auto": None, "vertical": 0.0, "horizontal": 90.0}
+    return named[written] if written in named else parse(written, "angle")
+
+
+def _is_axis(written: str) -> str:
+    """Return an axis as written, once it is known to be one."""
+    axis_angle(written)
+    return written
+
+
 def _is_name(written: str) -> str:
     """Return what was written if a file or a column could be called so."""
     if any(ord(letter) < ord(" ") or letter == "\x7f" for letter in written):
@@ -88,6 +100,7 @@ FileName = Annotated[
 Stretch = Annotated[str, AfterValidator(_is_length)]
 #: The same of something that has a size; px where it is a number.
 Size = Annotated[float, Field(gt=0, le=1e5)] | Annotated[str, AfterValidator(_is_positive_length)]
+Axis = Annotated[str, AfterValidator(_is_axis)]
 Column = Annotated[str | int, BeforeValidator(lambda written: _filled_in(written, "Force"))]
 Segment = Annotated[
     Literal["all"] | Annotated[int, Field(ge=1)],
