@@ -114,7 +114,11 @@ def read_gauges(
         if progress is not None:
             progress(done, len(setup.source))
     history = gather(
-        readings, setup.source.names, setup.source.time_s, correct=test.correlation.periodic != "off"
+        readings,
+        setup.source.names,
+        setup.source.time_s,
+        correct=test.correlation.periodic != "off",
+        averaged=setup.averaged(test.frames.first_reference),
     )
     if test.specimen.shape == "round":
         history = named.of_round_bar(history)

@@ -88,6 +88,10 @@ class Setup:
         """Return a match of the frames in straight coordinates."""
         return self.optics.straight(match, self.reference.x, self.reference.y)
 
+    def averaged(self, first: int) -> range:
+        """Return the frames that were averaged into the reference."""
+        return range(first, first + self.reference.frames)
+
     @property
     def scale_mm(self) -> float:
         """Size of a pixel, mm, NaN where unknown."""

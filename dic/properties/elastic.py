@@ -42,7 +42,7 @@ def elastic_entries(sheet: Sheet) -> list[Entry]:
 
 def _youngs_modulus(sheet: Sheet) -> Reading:
     elastic, line = sheet.elastic, sheet.elastic.line
-    relative = line.u_slope / line.slope
+    relative = line.relative_error
     frames = elastic.window.frames
     rows = sheet.loading.rows[[frames.start, frames.stop - 1]]
     quality = [

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from math import hypot, sqrt
 from typing import Literal
 
@@ -88,16 +88,13 @@ def scatter(loading: Loading, strain: Floats, u_strain: Floats, window: Window) 
     """Return the standard uncertainty of a line's slope from the scatter of its points.
 
     An even bend of the curve is no scatter: it belongs to what the window's line is, and comes again in the
-    next test.  So where there are frames enough, the residuals of a parabola measure the scatter of a
-    regression.
+    next test.  Where there are frames enough it was taken off the regression, at the cost of one more degree
+    of freedom.
     """
     line = fit(loading, strain, u_strain, window)
     if window.kind != "regression" or line.n < BEND_FRAMES:
         return line.u_slope * few_readings(line.n - 2)
-    here = _measured(strain, window.frames)
-    stress = loading.stress[here]
-    bend = _bend(stress, strain[here], float(stress.mean()))
-    return line.u_slope * bend.residual_s / line.residual_s * few_readings(line.n - 3)
+    return line.u_slope * sqrt((line.n - 2) / (line.n - 3)) * few_readings(line.n - 3)
 
 
 def _measured(strain: Floats, frames: slice) -> NDArray[np.intp]:
@@ -111,12 +108,29 @@ def _measured(strain: Floats, frames: slice) -> NDArray[np.intp]:
 
 
 def _regression(stress: Floats, strain: Floats, u_stress: Floats, u_strain: Floats) -> Line:
+    """Lay the line through all points, an even bend of the curve taken off first.
+
+    With errors in both, a bend would be shared out among strain and stress as if it were noise, and a curved
+    material's slope would depend on how much noise either has.
+    """
     try:
-        if np.all(u_stress**2 + u_strain**2 > 0):
-            return line_with_errors_in_both(stress, strain, u_stress, u_strain)
-        return straight_line(stress, strain)
+        plain = straight_line(stress, strain)
+        if not np.all(u_strain > 0):  # nothing is known about the strain's noise
+            return plain
+        level = strain - _even_bend(stress, strain)
+        line = line_with_errors_in_both(stress, level, u_stress, u_strain)
     except ValueError as error:
         raise Undetermined("the stress is the same in all frames of the window") from error
+    return replace(line, r_squared=plain.r_squared)
+
+
+def _even_bend(stress: Floats, strain: Floats) -> Floats:
+    """Return the part of a parabola that neither shifts nor turns the line of least squares; none of few."""
+    if len(strain) < BEND_FRAMES:
+        return np.zeros_like(strain)
+    powers = np.vander((stress - stress.mean()) / np.ptp(stress), 3, increasing=True)
+    bend = np.linalg.qr(powers)[0][:, 2]
+    return np.asarray(bend * (bend @ strain))
 
 
 @dataclass(frozen=True)

@@ -7,6 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from dic.strain.aliasing import aliasing
 from dic.strain.gauge import Reading
 from dic.strain.periodic import HARMONICS, Periodic, determine
 
@@ -42,8 +43,9 @@ class GaugeHistory:
     periodic
         The interpolation's periodic error, and whether the strains were corrected for it.
     left_axial, left_transverse
-        What may be left of that error's parts in the strains, one standard uncertainty, the same error in
-        all frames, shape (n, h); None where unknown.
+        What may be left of that error's parts, and of the aliasing of this very pattern
+        (`dic.strain.aliasing`), in the strains, one standard uncertainty each, the same error in all
+        frames, shape (n, h + 2); None where unknown.
     left_edges
         As much for what the pattern on the edges leaves in the transverse strain, shape (n,); None where
         that is not read from the edges.
@@ -76,7 +78,12 @@ class GaugeHistory:
 
 
 def gather(
-    readings: list[Reading], names: tuple[str, ...], time_s: Floats, *, correct: bool = True
+    readings: list[Reading],
+    names: tuple[str, ...],
+    time_s: Floats,
+    *,
+    correct: bool = True,
+    averaged: range = range(1),
 ) -> GaugeHistory:
     """Put the frames' readings one below the other, corrected for the periodic error where it is known.
 
@@ -88,6 +95,8 @@ def gather(
         The frames' names and camera times.
     correct
         Whether to take off the periodic error where the test determines it.
+    averaged
+        Frames that were averaged into the reference.
 
     Returns
     -------
@@ -100,15 +109,17 @@ def gather(
         return np.array([getattr(reading, key) for reading in readings], dtype=float)
 
     columns = {key: column(key) for key in ("bending", "shift_px", "valid_fraction")}
+    motion = dict(zip(("axial", "transverse"), columns["shift_px"].T, strict=True))
     for key in ("axial", "transverse", "shear", "extensometer"):
         columns[key], columns[f"u_{key}"] = column(key), column(f"u_{key}")
         nowhere = np.full(len(HARMONICS), np.nan)
         response = np.array([reading.response.get(key, nowhere) for reading in readings])
         size, spread = periodic.correction(response)
         columns[key] = columns[key] - size
+        if key in motion:
+            own = aliasing(columns[f"u_{key}"], motion[key], averaged)
+            columns[f"left_{key}"] = np.column_stack([periodic.left(response), own])
         columns[f"u_{key}"] = np.hypot(columns[f"u_{key}"], spread)
-        if key in ("axial", "transverse"):
-            columns[f"left_{key}"] = periodic.left(response)
     return GaugeHistory(
         frame=np.arange(len(readings)),
         name=names,

@@ -62,6 +62,11 @@ class Line:
         """Return the standard uncertainty of the line's value at x."""
         return hypot(self.u_mean, self.u_slope * (x - self.mean_x))
 
+    @property
+    def relative_error(self) -> float:
+        """Standard error of the slope that all residuals of the straight line give, relative to the slope."""
+        return sqrt((1 / self.r_squared - 1) / (self.n - 2)) if self.r_squared > 0 else nan
+
     def steeper(self) -> Line:
         """Return the line turned about its own middle by its slope's standard uncertainty."""
         return replace(

@@ -6,6 +6,8 @@ import numpy as np
 import pytest
 from pydantic import ValidationError
 
+from dic.properties.fits import Window, fit
+from dic.properties.loading import loading_of
 from dic.testfile import PRESETS, ModulusWindow, Properties
 
 
@@ -43,6 +45,20 @@ def test_kinds_against_the_curves_own_formula(bent, kind):
     assert found.value == pytest.approx(exact, rel=2.5e-3 if kind == "secant" else 1e-4)
     assert ratio.value == pytest.approx(0.3, rel=1e-9)
     assert kind in found.method
+
+
+@pytest.mark.parametrize("u_strain", [1e-9, 3e-6, 1e-3])
+def test_a_curve_has_one_slope_however_the_noise_is_shared(bent, u_strain):
+    loading = loading_of(bent.curve)
+    n = len(loading.strain)
+    here = np.flatnonzero((loading.stress > 20) & (loading.stress < 120))
+    frames = slice(here[0], here[-1] + 1)
+    stress, strain = loading.stress[frames], loading.strain[frames]
+    noisy = replace(loading, u_stress=np.full(n, 0.1))
+    line = fit(noisy, loading.strain, np.full(n, u_strain), Window(frames, (20.0, 120.0)))
+    # Ordinary least squares, which takes no side: only the iteration's rounding differs.
+    assert line.slope == pytest.approx(np.polyfit(stress, strain, 1)[0], rel=1e-9)
+    assert line.r_squared == pytest.approx(np.corrcoef(stress, strain)[0, 1] ** 2, rel=1e-12)
 
 
 def test_a_strain_window_ends_where_it_says(bent):
