@@ -14,11 +14,13 @@ from numpy.typing import NDArray
 
 Floats = NDArray[np.float64]
 
-#: Before the sum of the waves' squares is this large, 2 for each frame on the mean, it tells no size.
+#: Frames up to this strain show the size: at larger ones the residuals hold more than aliasing.
+SMALL = 0.01
+#: While the waves' squares add up to less, 2 for each frame on the mean, they tell no size.
 LEAST_SEEN = 0.1
 
 
-def aliasing(u: Floats, shift_px: Floats, averaged: range) -> Floats:
+def aliasing(u: Floats, shift_px: Floats, axial: Floats, averaged: range) -> Floats:
     """Return what aliasing may leave in a strain, one standard uncertainty, the same error in all frames.
 
     Parameters
@@ -29,6 +31,8 @@ def aliasing(u: Floats, shift_px: Floats, averaged: range) -> Floats:
     shift_px
         Mean motion of the gauge in the strain's direction, px, shape (n,); what motion across does to it is
         small.
+    axial
+        Axial strain, shape (n,).
     averaged
         Frames that were averaged into the reference.
 
@@ -39,13 +43,11 @@ def aliasing(u: Floats, shift_px: Floats, averaged: range) -> Floats:
     """
     phase = 2 * np.pi * np.nan_to_num(shift_px)
     waves = np.stack([np.sin(phase), np.cos(phase) - 1.0], axis=1)
-    shown = np.isfinite(u)
+    shown = np.isfinite(u) & (np.abs(axial) < SMALL)
     shown[averaged.start : averaged.stop] = False
-    excess = np.where(shown, u**2 - _at_rest(u, averaged) ** 2, 0.0)
-    seen = np.where(shown, (waves**2).sum(axis=1), 0.0)
-    # Only the frames up to each one: at large strains the residuals hold more than aliasing.
-    size = np.sqrt(np.clip(excess.cumsum(), 0.0, None) / np.maximum(seen.cumsum(), LEAST_SEEN))
-    return np.asarray(size[:, None] * waves)
+    excess = float(np.sum(u[shown] ** 2 - _at_rest(u, averaged) ** 2))
+    seen = float(np.sum(waves[shown] ** 2))
+    return np.asarray(np.sqrt(max(excess, 0.0) / max(seen, LEAST_SEEN)) * waves)
 
 
 def _at_rest(u: Floats, averaged: range) -> float:

@@ -117,7 +117,7 @@ def gather(
         size, spread = periodic.correction(response)
         columns[key] = columns[key] - size
         if key in motion:
-            own = aliasing(columns[f"u_{key}"], motion[key], averaged)
+            own = aliasing(columns[f"u_{key}"], motion[key], columns["axial"], averaged)
             columns[f"left_{key}"] = np.column_stack([periodic.left(response), own])
         columns[f"u_{key}"] = np.hypot(columns[f"u_{key}"], spread)
     return GaugeHistory(
