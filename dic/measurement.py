@@ -12,10 +12,12 @@ from numpy.typing import NDArray
 from dic.comparison import ClipOn
 from dic.errors import Notice
 from dic.gauges import NamedHistory
-from dic.pattern import Sketch
+from dic.pattern import Sketch, sketch
+from dic.preparation import Setup
 from dic.properties.result import Curve, ModulusLine, Property
+from dic.store import fields
+from dic.strain import GaugeHistory, gauge_size
 from dic.strain.alignment import Alignment
-from dic.strain.history import GaugeHistory
 from dic.sync.record import Clock, LoadRecord
 from dic.testfile import TestFile
 
@@ -135,3 +137,45 @@ class Measurement:
         from dic.store.tables import properties_text
 
         return properties_text(self)
+
+
+def scene_of(test: TestFile, setup: Setup, folder: Path) -> Scene:
+    """Return the coupon in the reference picture; the noise is that of the fields in the folder."""
+    grid = setup.grid
+    return Scene(
+        photograph=_eight_bits(setup.image, setup.source.full_scale()),
+        axis_angle_deg=setup.coupon.axis_angle_deg,
+        axis_method=setup.coupon.axis_method,
+        scale_mm=setup.scale_mm,
+        region=setup.region.corners(),
+        subset_px=grid.subset,
+        step_px=grid.step,
+        map_gauge_px=gauge_size(test.maps.window, grid.step, grid.subset),
+        noise_grey=fields.median_noise(folder),
+        sketch=sketch(setup.coupon),
+    )
+
+
+def quality_of(setup: Setup, history: GaugeHistory) -> dict[str, float]:
+    """Return the figures on how well the coupon could be tracked."""
+    periodic = history.periodic
+    return {
+        **setup.quality,
+        "gauge_region_length_px": setup.region.length,
+        "gauge_region_width_px": setup.region.width,
+        "extensometer_length_px": setup.reader().extensometer_px,
+        "pixel_mm": setup.scale_mm,
+        "coupon_width_px": setup.coupon.width_px,
+        "u_coupon_width_px": setup.coupon.u_width_px,
+        "u_axis_deg": setup.coupon.u_axis_deg,
+        "subsets": float(setup.grid.inside.sum()),
+        "valid_fraction": float(np.nanmedian(history.valid_fraction)),
+        "periodic_error_px": periodic.amplitudes_px[0],
+        "u_periodic_error_px": periodic.u_amplitudes_px[0],
+        "periodic_error_second_px": periodic.amplitudes_px[1],
+        "periodic_error_corrected": float(any(periodic.applied)),
+    }
+
+
+def _eight_bits(image: NDArray[np.float64], full_scale: float) -> NDArray[np.uint8]:
+    return np.clip(np.rint(image * (255.0 / full_scale)), 0, 255).astype(np.uint8)

@@ -9,10 +9,6 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import replace
 from pathlib import Path
-from typing import Any
-
-import numpy as np
-from numpy.typing import NDArray
 
 from dic import provenance
 from dic.comparison import ClipOn, compare
@@ -21,9 +17,8 @@ from dic.errors import ClockError, InputError
 from dic.frames import open_frames, unreadable_frames
 from dic.gauges import NamedHistory, NamedReadings
 from dic.judgement import loading_doubts, reading_doubts
-from dic.measurement import Measurement, Scene
+from dic.measurement import Measurement, quality_of, scene_of
 from dic.optics import bound, corrected, corrected_gauges, receding
-from dic.pattern import sketch
 from dic.preparation import Setup, set_up
 from dic.properties import Curve, Evaluation, Sheet, evaluate, make_curve
 from dic.properties import doubts as property_doubts
@@ -32,7 +27,7 @@ from dic.sequence import map_window, tracked_or_stored, unreadable
 from dic.store import fields
 from dic.store.folder import claim_folder, remove_results
 from dic.store.results import write_results
-from dic.strain import GaugeHistory, gather, gauge_size
+from dic.strain import GaugeHistory, gather
 from dic.strain.alignment import Alignment, elastic_part, find_alignment, frames_to_read, limit_of
 from dic.strain.rates import gather_rates
 from dic.sync import Clock, LoadRecord, fit_clock, known_clock, read_load_record
@@ -67,17 +62,22 @@ def measure(
         If the input is at fault; the message says what, where, and what to do.
     """
     test, folder = _opened(test, out)
+    measurement = take_measurement(test, folder, progress)
+    write_results(measurement, folder)
+    with measurement.to_xarray() as stored:
+        write_report(measurement, stored, folder)
+    return measurement
+
+
+def take_measurement(test: TestFile, folder: Path, progress: Progress | None = None) -> Measurement:
+    """Go through all stages up to the report; the fields are written into the folder, which is there."""
     source = open_frames(test.frames, test.path.parent)
     record = read_load_record(test.load_record, test.beside(test.load_record.source))
     known_clock(source.time_s, record, test.sync, source.epoch)  # before tracking, which takes longest
     setup = set_up(test, source)
     history, named = read_gauges(test, setup, folder, progress)
     clock = _clock(test, setup, history, record)
-    measurement = judged(test, setup, history, named, record, clock, folder)
-    write_results(measurement, folder)
-    with measurement.to_xarray() as stored:
-        write_report(measurement, stored, folder)
-    return measurement
+    return judged(test, setup, history, named, record, clock, folder)
 
 
 def _opened(test: TestFile | str | Path, out: str | Path | None) -> tuple[TestFile, Path]:
@@ -173,7 +173,7 @@ def judged(
     straight = _alignment(test, setup, history, curve, found, folder)
     return Measurement(
         test=test,
-        scene=_scene(test, setup, folder),
+        scene=scene_of(test, setup, folder),
         history=history,
         record=record,
         clock=clock,
@@ -181,7 +181,7 @@ def judged(
         line=found.line,
         properties=found.properties,
         alignment=straight,
-        quality=_quality(setup, history),
+        quality=quality_of(setup, history),
         notices=(
             *setup.source.notices,
             *unreadable_frames(setup.source.names, unreadable(folder)),
@@ -198,7 +198,7 @@ def judged(
         folder=folder,
         clip_on=clip_on,
         gauges=tuple(named),
-        optics=_optics(test, setup),
+        optics=setup.optics.figures(test.camera, test.specimen),
     )
 
 
@@ -231,17 +231,6 @@ def _clip_on(
     )
 
 
-def _optics(test: TestFile, setup: Setup) -> dict[str, Any]:
-    """Say what is known of the camera, and what was taken off the strains."""
-    false = bound(test.camera)
-    return {
-        **setup.optics.figures(),
-        "still_patch_px": test.camera.still_patch,
-        "u_strain_towards_camera": false,
-        "thinning_corrected": receding(test.camera, test.specimen) > 0,
-    }
-
-
 def _alignment(
     test: TestFile, setup: Setup, history: GaugeHistory, curve: Curve, found: Evaluation, folder: Path
 ) -> Alignment:
@@ -254,43 +243,3 @@ def _alignment(
         rates = gather_rates(moved, history.axial[frames], grid, setup.region, map_window(test, grid))
     limit = limit_of(test.alignment.limit, test.alignment.standard)
     return find_alignment(history, curve.force_N, inside, rates, limit, setup.coupon.u_axis_deg)
-
-
-def _scene(test: TestFile, setup: Setup, folder: Path) -> Scene:
-    grid = setup.grid
-    return Scene(
-        photograph=_eight_bits(setup.image, setup.source.full_scale()),
-        axis_angle_deg=setup.coupon.axis_angle_deg,
-        axis_method=setup.coupon.axis_method,
-        scale_mm=setup.scale_mm,
-        region=setup.region.corners(),
-        subset_px=grid.subset,
-        step_px=grid.step,
-        map_gauge_px=gauge_size(test.maps.window, grid.step, grid.subset),
-        noise_grey=fields.median_noise(folder),
-        sketch=sketch(setup.coupon),
-    )
-
-
-def _quality(setup: Setup, history: GaugeHistory) -> dict[str, float]:
-    periodic = history.periodic
-    return {
-        **setup.quality,
-        "gauge_region_length_px": setup.region.length,
-        "gauge_region_width_px": setup.region.width,
-        "extensometer_length_px": setup.reader().extensometer_px,
-        "pixel_mm": setup.scale_mm,
-        "coupon_width_px": setup.coupon.width_px,
-        "u_coupon_width_px": setup.coupon.u_width_px,
-        "u_axis_deg": setup.coupon.u_axis_deg,
-        "subsets": float(setup.grid.inside.sum()),
-        "valid_fraction": float(np.nanmedian(history.valid_fraction)),
-        "periodic_error_px": periodic.amplitudes_px[0],
-        "u_periodic_error_px": periodic.u_amplitudes_px[0],
-        "periodic_error_second_px": periodic.amplitudes_px[1],
-        "periodic_error_corrected": float(any(periodic.applied)),
-    }
-
-
-def _eight_bits(image: NDArray[np.float64], full_scale: float) -> NDArray[np.uint8]:
-    return np.clip(np.rint(image * (255.0 / full_scale)), 0, 255).astype(np.uint8)

@@ -16,8 +16,9 @@ from dic.optics.board import Calibration, calibrate
 from dic.optics.lens import Lens
 from dic.optics.patch import StillPatch
 from dic.optics.scale import Scale
+from dic.optics.towards import bound, receding
 from dic.strain.rates import Moved
-from dic.testfile import TestFile
+from dic.testfile import Camera, Specimen, TestFile
 
 Floats = NDArray[np.float64]
 
@@ -65,8 +66,8 @@ class Optics:
         slopes = self.lens.straight(*np.meshgrid(grid.columns, grid.rows))[1]
         return np.asarray(np.linalg.inv(slopes), float)
 
-    def figures(self) -> dict[str, Any]:
-        """Return what ``results.json`` says."""
+    def figures(self, camera: Camera, specimen: Specimen) -> dict[str, Any]:
+        """Return what ``results.json`` says: what is known, and what was taken off the strains."""
         said: dict[str, Any] = {
             "scale_mm_per_px": self.scale.mm,
             "u_scale_relative": self.scale.u_relative,
@@ -82,7 +83,12 @@ class Optics:
             said["boards"] = self.calibration.boards
             said["reprojection_rms_px"] = self.calibration.rms_px
             said["tilt_deg"] = self.calibration.tilt_deg
-        return said
+        return {
+            **said,
+            "still_patch_px": camera.still_patch,
+            "u_strain_towards_camera": bound(camera),
+            "thinning_corrected": receding(camera, specimen) > 0,
+        }
 
 
 def lens_of(
