@@ -8,17 +8,15 @@ from typing import Any
 
 import numpy as np
 
-from dic.frames import open_frames
-from dic.pipeline import _clock, read_gauges
-from dic.preparation import set_up
+from dic.pipeline import take_measurement
 from dic.properties import Sheet, evaluate, make_curve
 from dic.strain.history import GaugeHistory
-from dic.strain.periodic import Periodic
-from dic.sync import fit_clock, read_load_record
+from dic.sync import fit_clock
 from dic.sync.record import LoadRecord
 from dic.testfile import TestFile, load
 from synthetic_images.files import render, test_file
 from synthetic_images.materials import Elastic, Material
+from synthetic_images.readings import gauge_history
 from synthetic_images.variety import varied
 from synthetic_images.virtual_test import VirtualTest
 
@@ -50,18 +48,10 @@ def with_pictures(seed: int) -> list[dict[str, Any]]:
     virtual = VirtualTest(varied(seed))
     with tempfile.TemporaryDirectory() as folder:
         test = load(render(virtual.scenario, Path(folder)))
-        source = open_frames(test.frames, test.path.parent)
-        record = read_load_record(test.load_record, test.beside(test.load_record.source))
-        setup = set_up(test, source)
         results = Path(folder) / "results"
         results.mkdir()
-        history, _ = read_gauges(test, setup, results, None)
-        clock = _clock(test, setup, history, record)
-        curve = make_curve(history, record, clock, test.specimen.area, u_axis_deg=setup.coupon.u_axis_deg)
-        found = evaluate(
-            Sheet(curve, test.specimen, test.load_record.relative_uncertainty, clock, test.properties)
-        )
-    return _rows(virtual, seed, found.properties, clock, len(history))
+        found = take_measurement(test, results)
+    return _rows(virtual, seed, found.properties, found.clock, len(found.history))
 
 
 def _history(virtual: VirtualTest, seed: int) -> GaugeHistory:
@@ -78,13 +68,9 @@ def _history(virtual: VirtualTest, seed: int) -> GaugeHistory:
     broken = time >= virtual.fracture_time
     axial, across = (np.where(broken, np.nan, strain + wave) for strain in (axial, across))
     u_axial, u_across = (np.full(n, u) for u in noise)
-    return GaugeHistory(
-        frame=np.arange(n), name=tuple(f"{k:04d}.tif" for k in range(n)),
-        time_s=time - scenario.camera.offset,
-        axial=axial, transverse=across, shear=np.zeros(n), extensometer=axial,
-        u_axial=u_axial, u_transverse=u_across, u_shear=u_axial, u_extensometer=u_axial,
-        shift_px=np.zeros((n, 2)), valid_fraction=np.ones(n), status=("ok",) * n, bending=np.zeros(n),
-        periodic=Periodic(),
+    return gauge_history(
+        time - scenario.camera.offset, axial, across, u_axial,
+        name=tuple(f"{k:04d}.tif" for k in range(n)), u_transverse=u_across,
     )  # fmt: skip
 
 

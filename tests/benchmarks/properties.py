@@ -15,10 +15,9 @@ from numpy.typing import NDArray
 from table import Bench
 
 from dic.properties import Sheet, evaluate, make_curve
-from dic.strain.history import GaugeHistory
-from dic.strain.periodic import Periodic
 from dic.sync import Clock, LoadRecord
 from dic.testfile import Properties, Specimen
+from synthetic_images.readings import gauge_history
 
 Floats = NDArray[np.float64]
 DRAWS = 50
@@ -115,13 +114,7 @@ def drawn(material: Material, seed: int, frames: int | None = None, samples: int
     if "proof_stress_0_2" not in material.truth:
         across = (1 + axial) ** -0.5 - 1 if ratio > 0.45 else -ratio * axial
     n, noise = len(camera), SIZES["strain"]
-    u, nothing = np.full(n, noise), np.zeros(n)
-    history = GaugeHistory(
-        frame=np.arange(n), name=("",) * n, time_s=camera, axial=axial + r.normal(0, noise, n),
-        transverse=across + r.normal(0, noise, n), shear=nothing, extensometer=nothing, u_axial=u,
-        u_transverse=u, u_shear=u, u_extensometer=u, shift_px=np.zeros((n, 2)), valid_fraction=np.ones(n),
-        status=("ok",) * n, bending=nothing, periodic=Periodic(),
-    )  # fmt: skip
+    history = gauge_history(camera, axial + r.normal(0, noise, n), across + r.normal(0, noise, n), noise)
     thickness = 2.0 * (1 + SIZES["section"] * r.normal())
     specimen = Specimen(
         width=12.5, thickness=thickness, width_uncertainty=1e-9, thickness_uncertainty=2.0 * SIZES["section"]

@@ -9,8 +9,8 @@ import pytest
 from dic.comparison import compare
 from dic.properties.result import Curve, Property
 from dic.strain.history import GaugeHistory
-from dic.strain.periodic import Periodic
 from dic.sync import Clock, LoadRecord
+from synthetic_images.readings import gauge_history
 
 REST, RATE, FRAMES, REFERENCE = 3.0, 4e-4, 120, 12
 
@@ -57,13 +57,7 @@ def bench():
         if spoil is not None:
             clip = spoil(machine, clip)
         force = 25.0 * 7e4 * true
-        nothing = np.zeros(FRAMES)
-        history = GaugeHistory(
-            frame=np.arange(FRAMES), name=("",) * FRAMES, time_s=camera, axial=axial, transverse=-0.3 * axial,
-            shear=nothing, extensometer=axial, u_axial=u, u_transverse=u, u_shear=u, u_extensometer=u,
-            shift_px=np.zeros((FRAMES, 2)), valid_fraction=nothing + 1, status=("ok",) * FRAMES,
-            bending=nothing, periodic=Periodic(),
-        )  # fmt: skip
+        history = gauge_history(camera, axial, -0.3 * axial, u)
         clock = Clock(lag, u_clock, 0.0, "drawn")
         time = clock.machine_time(camera)
         curve = Curve(

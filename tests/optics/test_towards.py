@@ -8,9 +8,8 @@ from pydantic import ValidationError
 
 from dic.optics import Apparent, bound, corrected, receding
 from dic.optics.towards import PATCH_LOST, false_strain, without
-from dic.strain import GaugeHistory
-from dic.strain.periodic import Periodic
 from dic.testfile import Camera, Specimen
+from synthetic_images.readings import gauge_history
 
 FLAT = Specimen(width="10 mm", thickness="2 mm")
 
@@ -19,13 +18,8 @@ FLAT = Specimen(width="10 mm", thickness="2 mm")
 def drawn():
     """Return twenty readings of a coupon that stretches by 2 % and contracts by 0.6 %."""
     n = 20
-    u, strain = np.full(n, 3e-6), np.linspace(0, 0.02, n)
-    return GaugeHistory(
-        frame=np.arange(n), name=("",) * n, time_s=np.arange(n, dtype=float),
-        axial=strain, transverse=-0.3 * strain, shear=0 * strain, extensometer=strain,
-        u_axial=u, u_transverse=u, u_shear=u, u_extensometer=u, shift_px=np.zeros((n, 2)),
-        valid_fraction=np.ones(n), status=("ok",) * n, bending=0 * strain, periodic=Periodic(),
-    )  # fmt: skip
+    strain = np.linspace(0, 0.02, n)
+    return gauge_history(np.arange(n, dtype=float), strain, -0.3 * strain, 3e-6)
 
 
 def test_the_published_case_is_met():

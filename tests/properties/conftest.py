@@ -11,9 +11,9 @@ from dic.properties.elastic import elastic_entries
 from dic.properties.sheet import Sheet
 from dic.properties.strength import proof_entries
 from dic.strain.history import GaugeHistory
-from dic.strain.periodic import Periodic
 from dic.sync import Clock, LoadRecord
 from dic.testfile import Specimen
+from synthetic_images.readings import gauge_history
 
 E, NU, RP02, EXPONENT = 70e3, 0.33, 280.0, 20
 STRESS = np.linspace(0, 1.3 * RP02, 40_001)
@@ -90,25 +90,7 @@ def pull():
         across = -(NU * elastic + 0.5 * plastic)
         axial = strain_at(camera) + r.normal(0, strain_noise, n)
         across = across + r.normal(0, strain_noise, n) + transverse_bias
-        u = np.full(n, strain_noise)
-        history = GaugeHistory(
-            frame=np.arange(n),
-            name=tuple(f"{i:04d}.tif" for i in range(n)),
-            time_s=camera,
-            axial=sign * axial,
-            transverse=sign * across,
-            shear=np.zeros(n),
-            extensometer=sign * axial,
-            u_axial=u,
-            u_transverse=u,
-            u_shear=u,
-            u_extensometer=u,
-            shift_px=np.zeros((n, 2)),
-            valid_fraction=np.ones(n),
-            status=("ok",) * n,
-            bending=np.zeros(n),
-            periodic=Periodic(),
-        )
+        history = gauge_history(camera, sign * axial, sign * across, strain_noise)
         peak = float(np.interp(fracture, STRAIN, STRESS))
         return Pull(
             history=history,

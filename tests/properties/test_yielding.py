@@ -10,10 +10,9 @@ import pytest
 from dic.errors import InputError
 from dic.properties import Sheet, elastic_stress, evaluate, make_curve
 from dic.properties.hooke import principal_strains
-from dic.strain.history import GaugeHistory
-from dic.strain.periodic import Periodic
 from dic.sync import Clock, LoadRecord
 from dic.testfile import Properties, Specimen
+from synthetic_images.readings import gauge_history
 
 COUPON = Specimen(width=12.5, thickness=2.0)
 CLOCK = Clock(0.0, 0.0, 0.0, "one clock")
@@ -21,13 +20,7 @@ CLOCK = Clock(0.0, 0.0, 0.0, "one clock")
 
 def history(time, axial, across, noise=0.0, seed=0):
     r, n = np.random.default_rng(seed), len(time)
-    u, exact = np.full(n, noise), np.zeros(n)
-    return GaugeHistory(
-        frame=np.arange(n), name=("",) * n, time_s=time, axial=axial + r.normal(0, noise, n),
-        transverse=across + r.normal(0, noise, n), shear=exact, extensometer=exact, u_axial=u, u_transverse=u,
-        u_shear=u, u_extensometer=u, shift_px=np.zeros((n, 2)), valid_fraction=np.ones(n),
-        status=("ok",) * n, bending=exact, periodic=Periodic(),
-    )  # fmt: skip
+    return gauge_history(time, axial + r.normal(0, noise, n), across + r.normal(0, noise, n), noise)
 
 
 def evaluated(time, axial, across, dense, force, *, noise=0.0, force_noise=0.0, seed=0, **keys):

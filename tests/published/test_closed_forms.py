@@ -6,10 +6,10 @@ import numpy as np
 import pytest
 
 from dic.properties import Sheet, evaluate, make_curve
-from dic.strain.history import GaugeHistory
 from dic.strain.periodic import Periodic
 from dic.sync import Clock, LoadRecord
 from dic.testfile import ModulusWindow, Properties, Specimen
+from synthetic_images.readings import gauge_history
 
 COUPON = Specimen(width=12.5, thickness=2.0)
 CLOCK = Clock(0.0, 0.0, 0.0, "one clock")
@@ -18,24 +18,8 @@ CLOCK = Clock(0.0, 0.0, 0.0, "one clock")
 def curve(strain, transverse, stress):
     """Join frames and record, both with one sample per point on one clock, as the program itself does."""
     n = len(strain)
-    exact, nothing = np.zeros(n), np.full(n, np.nan)
-    history = GaugeHistory(
-        frame=np.arange(n),
-        name=("",) * n,
-        time_s=np.arange(n, dtype=float),
-        axial=strain,
-        transverse=transverse,
-        shear=exact,
-        extensometer=nothing,
-        u_axial=exact,
-        u_transverse=exact,
-        u_shear=exact,
-        u_extensometer=nothing,
-        shift_px=np.zeros((n, 2)),
-        valid_fraction=np.ones(n),
-        status=("ok",) * n,
-        bending=exact,
-        periodic=Periodic(np.nan, np.nan, 0, False),
+    history = gauge_history(
+        np.arange(n, dtype=float), strain, transverse, 0.0, periodic=Periodic(np.nan, np.nan, 0, False)
     )
     record = LoadRecord(Path("machine.csv"), history.time_s, stress * COUPON.area)
     return make_curve(history, record, CLOCK, COUPON.area)

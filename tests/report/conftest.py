@@ -13,11 +13,10 @@ from dic.measurement import Measurement, Scene
 from dic.properties.result import Curve, ModulusLine, Property
 from dic.strain.alignment import Alignment, Estimate
 from dic.strain.causes import Causes
-from dic.strain.history import GaugeHistory
-from dic.strain.periodic import Periodic
 from dic.strain.rates import Stations
 from dic.sync.record import Clock, LoadRecord
 from dic.testfile import TestFile
+from synthetic_images.readings import gauge_history
 
 # An invented aluminium-like sheet: Ramberg-Osgood, strain = s/E + 0.002 (s/s02)^n.
 E, S02, EXPONENT, NU, AREA = 70_000.0, 250.0, 14.0, 0.33, 25.0
@@ -46,23 +45,20 @@ def make_histories():
     axial = strain + rng.normal(0, 4e-6, n)
     axial[LOST] = transverse[LOST] = np.nan
     u = np.where(np.isfinite(axial), 4e-6, np.nan)
-    history = GaugeHistory(
-        frame=np.arange(n),
+    history = gauge_history(
+        camera,
+        axial,
+        transverse,
+        u,
         name=tuple(f"cam_{k:05d}.tif" for k in range(n)),
-        time_s=camera,
-        axial=axial,
-        transverse=transverse,
         shear=rng.normal(0, 6e-6, n),
         extensometer=axial + 1e-6,
-        u_axial=u,
-        u_transverse=u,
         u_shear=1.5 * u,
         u_extensometer=1.2 * u,
         shift_px=np.stack([-4000 * strain, 0.1 * camera], axis=1),
         valid_fraction=np.where(np.isfinite(axial), 0.998, 0.2),
         status=tuple("too few subsets measured" if k == LOST else "ok" for k in range(n)),
         bending=0.04 * axial,
-        periodic=Periodic(),
     )
     clock = Clock(3.37, 0.0041, 0.0, "found from when loading starts", ("The drift was taken as zero.",))
     times = clock.machine_time(camera)

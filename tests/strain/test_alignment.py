@@ -7,11 +7,11 @@ import pytest
 
 from dic.correlation.grid import Grid
 from dic.pattern import axes
-from dic.strain import GaugeHistory, Region, Window
+from dic.strain import Region, Window
 from dic.strain.alignment import UNTOLD, Alignment, Estimate, elastic_part, find_alignment, limit_of
 from dic.strain.causes import OBSERVED, explain
-from dic.strain.periodic import Periodic
 from dic.strain.rates import Moved, gather_rates, mirrored
+from synthetic_images.readings import gauge_history
 
 POISSON, SIGMA, STEP, SUBSET = 0.3, 0.004, 15, 15  # subsets side by side: independent noise
 LENGTH, WIDTH = 900.0, 180.0
@@ -77,12 +77,10 @@ def measured(*, angle=0.0, moving_deg=0.0, noise=0.0, seed=0, **shapes):
 
 def history(shift, bending):
     n = len(STRAINS)
-    zero, wobble = np.zeros(n), 1e-9 * np.cos(np.arange(n))
-    return GaugeHistory(
-        frame=np.arange(n), name=("",) * n, time_s=zero, axial=STRAINS, transverse=-POISSON * STRAINS,
-        shear=wobble, extensometer=STRAINS, u_axial=zero, u_transverse=zero, u_shear=zero,
-        u_extensometer=zero, shift_px=shift, valid_fraction=zero + 1, status=("ok",) * n,
-        bending=bending + wobble, periodic=Periodic(),
+    wobble = 1e-9 * np.cos(np.arange(n))
+    return gauge_history(
+        np.zeros(n), STRAINS, -POISSON * STRAINS, 0.0,
+        shear=wobble, shift_px=shift, bending=bending + wobble,
     )  # fmt: skip
 
 
