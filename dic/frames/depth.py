@@ -26,13 +26,10 @@ class Depth:
         Depth in use.
     full_scale
         Stored value of a saturated pixel.
-    left_aligned
-        Whether the low bits are empty.
     """
 
     bits: int
     full_scale: float
-    left_aligned: bool = False
 
 
 def depth_in_use(page: Page, pictures: Iterable[NDArray[np.integer]]) -> Depth:
@@ -63,6 +60,6 @@ def depth_in_use(page: Page, pictures: Iterable[NDArray[np.integer]]) -> Depth:
     empty = (seen & -seen).bit_length() - 1 if seen else 0
     shift = max((count for count in EMPTY if count <= empty), default=0)
     if shift:
-        return Depth(16 - shift, float(65535 >> shift << shift), left_aligned=True)
+        return Depth(16 - shift, float(65535 >> shift << shift))
     bits = next(bits for bits in DEPTHS if brightest < 2**bits)
     return Depth(bits, float(2**bits - 1))

@@ -12,7 +12,7 @@ from typing import Any
 
 import numpy as np
 
-from dic.correlation.compiling import serial
+from dic.correlation.compiling import exactly_inlined, serial
 
 
 @serial
@@ -32,6 +32,20 @@ def normals(valid: Any, tops: Any, lefts: Any, basis: Any, weight: Any) -> Any:
     return out
 
 
+@exactly_inlined
+def _shares(valid: Any, top: Any, left: Any, basis: Any, weight: Any, solving: Any) -> Any:
+    """Return what each point of one window adds to the slopes along x and y, shape (window, window, 2)."""
+    size, terms = weight.shape[0], basis.shape[2]
+    share = np.zeros((size, size, 2))
+    for i in range(size):
+        for j in range(size):
+            counts = weight[i, j] * valid[top + i, left + j]
+            for k in range(terms):
+                share[i, j, 0] += counts * solving[0, k] * basis[i, j, k]
+                share[i, j, 1] += counts * solving[1, k] * basis[i, j, k]
+    return share
+
+
 @serial
 def slopes(field: Any, valid: Any, tops: Any, lefts: Any, basis: Any, weight: Any, solving: Any) -> Any:
     """Return the slopes of fitted polynomials.
@@ -48,22 +62,16 @@ def slopes(field: Any, valid: Any, tops: Any, lefts: Any, basis: Any, weight: An
     ndarray
         Shape (m, c, 2).
     """
-    size, terms = weight.shape[0], basis.shape[2]
+    size = weight.shape[0]
     out = np.zeros((tops.size, field.shape[0], 2))
     for n in range(tops.size):
-        for i in range(size):
-            for j in range(size):
-                share = weight[i, j] * valid[tops[n] + i, lefts[n] + j]
-                if share == 0.0:
-                    continue
-                along_x, along_y = 0.0, 0.0
-                for k in range(terms):
-                    along_x += solving[n, 0, k] * basis[i, j, k]
-                    along_y += solving[n, 1, k] * basis[i, j, k]
-                for c in range(field.shape[0]):
-                    value = share * field[c, tops[n] + i, lefts[n] + j]
-                    out[n, c, 0] += along_x * value
-                    out[n, c, 1] += along_y * value
+        share = _shares(valid, tops[n], lefts[n], basis, weight, solving[n])
+        for c in range(field.shape[0]):
+            for i in range(size):
+                for j in range(size):
+                    value = field[c, tops[n] + i, lefts[n] + j]
+                    out[n, c, 0] += share[i, j, 0] * value
+                    out[n, c, 1] += share[i, j, 1] * value
     return out
 
 
@@ -86,16 +94,10 @@ def covariances(
     ndarray
         Variance along x, covariance, variance along y, shape (m, 3).
     """
-    size, terms, reach = weight.shape[0], basis.shape[2], overlap.shape[0]
+    size, reach = weight.shape[0], overlap.shape[0]
     out = np.zeros((tops.size, 3))
     for n in range(tops.size):
-        share = np.zeros((size, size, 2))
-        for i in range(size):
-            for j in range(size):
-                counts = weight[i, j] * valid[tops[n] + i, lefts[n] + j]
-                for k in range(terms):
-                    share[i, j, 0] += counts * solving[n, 0, k] * basis[i, j, k]
-                    share[i, j, 1] += counts * solving[n, 1, k] * basis[i, j, k]
+        share = _shares(valid, tops[n], lefts[n], basis, weight, solving[n])
         for i in range(size):
             for j in range(size):
                 along_x, along_y = 0.0, 0.0

@@ -15,10 +15,9 @@ import tempfile
 from pathlib import Path
 from typing import Any
 
-import numpy as np
 import tifffile
 from scenes import clean, noisy
-from speed import BIG, PULL, motion_at
+from speed import BIG, ENDS, EVERYWHERE, PULL, motion_at, write_record, write_test_file
 from table import Bench
 
 FEW, MANY = 50, 500
@@ -98,21 +97,12 @@ def _write_test(pictures: Path, folder: Path, count: int) -> None:
         which = k % 2 if k < REST + 1 else there_and_back[(k - REST - 1) % len(there_and_back)]
         os.link(pictures / f"picture{which}.tif", folder / "frames" / f"f{k:04d}.tif")
         strain.append(PULL * max(which - 1, 0))
-    time_s = np.arange(0, count / 5, 0.02)
-    force = 70_000 * 20 * np.interp(time_s, np.arange(count) / 5, strain)
-    table = np.column_stack([time_s, force])
-    np.savetxt(folder / "machine.csv", table, delimiter=",", header="Time (s),Force (N)", comments="")
+    write_record(folder, strain)
 
 
 def run_test(folder: Path, correlation: str, gauge: str) -> dict[str, Any]:
     """Measure a test in a process of its own; times in s, peak memory in MiB."""
-    test = folder / "test.toml"
-    test.write_text(
-        '[specimen]\nwidth = "10 mm"\nthickness = "2 mm"\n[frames]\nsource = "frames"\nrate = "5 Hz"\n'
-        '[load_record]\nsource = "machine.csv"\ntime = "Time"\nforce = "Force"\n'
-        f'[camera]\nscale = "0.005 mm/px"\n[correlation]\n{correlation}\n'
-        f'[gauge]\naxis = "vertical"\nregion = [40, 40, 2368, 1968]\n{gauge}\n[sync]\noffset = "0 s"\n'
-    )
+    test = write_test_file(folder, correlation, gauge)
     with tempfile.TemporaryDirectory() as out:
         command = [sys.executable, "-c", _CHILD, str(test), f"{out}/results"]
         said = subprocess.run(command, check=True, capture_output=True, text=True).stdout
@@ -124,10 +114,7 @@ def run() -> Bench:
     with tempfile.TemporaryDirectory() as place:
         folder = Path(place)
         write_tests(folder)
-        for name, correlation, gauge in (
-            ("gauge bands, at most 400 subsets", "step = 44", 'subsets = "ends"'),
-            ("full field, about 20,000 subsets", "step = 15", ""),
-        ):
+        for name, correlation, gauge in (ENDS, EVERYWHERE):
             run_test(folder / str(FEW), correlation, gauge)  # compiles, and fills the file cache
             found = {count: run_test(folder / str(count), correlation, gauge) for count in (FEW, MANY)}
             for count, one in found.items():

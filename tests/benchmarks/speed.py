@@ -148,7 +148,7 @@ def against_flow(bench: Bench) -> None:
     bench.add("root mean square error against it, bias included", total[0] / total[1], "×")
 
 
-def write_test(folder: Path, frames: int) -> Path:
+def write_frames(folder: Path, frames: int) -> None:
     """Write a run of 5-megapixel frames: a few pictures, pulled and let go again and again."""
     pictures = [noisy(clean("sharp", motion_at(k, BIG), BIG), k) for k in range(8)]
     (folder / "frames").mkdir()
@@ -158,18 +158,32 @@ def write_test(folder: Path, frames: int) -> Path:
         which = 0 if k < 4 else order[(k - 4) % len(order)]
         tifffile.imwrite(folder / "frames" / f"f{k:04d}.tif", pictures[which], photometric="minisblack")
         strain.append(PULL * which)
-    time_s = np.arange(0, frames / 5, 0.02)
-    force = 70_000 * 20 * np.interp(time_s, np.arange(frames) / 5, strain)
+    write_record(folder, strain)
+
+
+def write_record(folder: Path, strain: list[float]) -> None:
+    """Write the load record of frames that were taken at 5 Hz at these strains."""
+    time_s = np.arange(0, len(strain) / 5, 0.02)
+    force = 70_000 * 20 * np.interp(time_s, np.arange(len(strain)) / 5, strain)
     table = np.column_stack([time_s, force])
     np.savetxt(folder / "machine.csv", table, delimiter=",", header="Time (s),Force (N)", comments="")
+
+
+def write_test_file(folder: Path, correlation: str, gauge: str) -> Path:
+    """Write the test file beside its load record, with further keys of two sections."""
     test = folder / "test.toml"
     test.write_text(
         '[specimen]\nwidth = "10 mm"\nthickness = "2 mm"\n[frames]\nsource = "frames"\nrate = "5 Hz"\n'
         '[load_record]\nsource = "machine.csv"\ntime = "Time"\nforce = "Force"\n'
-        '[camera]\nscale = "0.005 mm/px"\n'
-        '[gauge]\naxis = "vertical"\nregion = [40, 40, 2368, 1968]\n[sync]\noffset = "0 s"\n'
+        f'[camera]\nscale = "0.005 mm/px"\n[correlation]\n{correlation}\n'
+        f'[gauge]\naxis = "vertical"\nregion = [40, 40, 2368, 1968]\n{gauge}\n[sync]\noffset = "0 s"\n'
     )
     return test
+
+
+#: What is measured where, as keys of the sections on correlation and gauge.
+EVERYWHERE = ("full field, about 20,000 subsets", "step = 15", "")
+ENDS = ("gauge bands only, at most 400 subsets", "step = 44", 'subsets = "ends"')
 
 
 def whole_run(bench: Bench) -> None:
@@ -181,14 +195,9 @@ def whole_run(bench: Bench) -> None:
 
     with tempfile.TemporaryDirectory() as place:
         folder, count = Path(place), 60
-        path = write_test(folder, count)
-        base = path.read_text()
-        for name, keys, gauge, low in (
-            ("full field, about 20,000 subsets", "step = 15", "", 10),
-            ("gauge bands only, at most 400 subsets", "step = 44", 'subsets = "ends"\n', 60),
-        ):
-            path.write_text(base.replace("[gauge]\n", f"[correlation]\n{keys}\n[gauge]\n{gauge}"))
-            test = load(path)
+        write_frames(folder, count)
+        for (name, correlation, gauge), low in ((EVERYWHERE, 10), (ENDS, 60)):
+            test = load(write_test_file(folder, correlation, gauge))
             source = open_frames(test.frames, folder)
             setup = set_up(test, source)
             stamps: list[float] = []
