@@ -21,6 +21,7 @@ from dic.sync.locate import (
 )
 from dic.sync.misfit import Course
 from dic.sync.noise import NORMAL_MEDIAN
+from dic.sync.reach import ABOVE, BELOW, FACTOR
 from dic.sync.record import Clock, LoadRecord
 from dic.testfile import Sync
 
@@ -119,10 +120,14 @@ def start_of_loading(seen: Seen, record: LoadRecord) -> Located:
 
 
 def _by_force(seen: Seen, record: LoadRecord, words: str) -> Located:
-    course = beginning(seen.time_s, seen.axial, seen.u_axial, record, limit=BEGINNING, same_sign=True)
-    reach = f"{words}, {len(course.time_s)} frames up to a strain of {np.abs(course.signal).max():.2g}"
+    def up_to(limit: float) -> Course:
+        return beginning(seen.time_s, seen.axial, seen.u_axial, record, limit=limit, same_sign=True)
+
+    course = up_to(BEGINNING)
+    usual = max(BEGINNING, float(np.abs(course.signal).max()))
+    others = [up_to(usual * FACTOR**k) for k in range(-BELOW, ABOVE + 1)]
     try:
-        found = locate(course, seen.film, reach)
+        found = locate(course, seen.film, words, others)
     except ClockError:
         _refuse_turned(course, seen, record)
         raise

@@ -2,14 +2,16 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, field
-from math import sqrt
+from math import hypot, sqrt
 
 import numpy as np
 from numpy.typing import NDArray
 
 from dic.errors import ClockError
 from dic.sync.misfit import DEGREE, REST_FRAMES, Course, Misfit, turned
+from dic.sync.reach import settled, shortened, unsaid_s
 from dic.sync.record import LoadRecord
 
 Floats = NDArray[np.float64]
@@ -110,7 +112,7 @@ def _first_passage(steady: Floats, limit: float) -> int:
     return int(np.argmax(above)) if above.any() else len(steady)
 
 
-def locate(course: Course, film: tuple[float, float], words: str) -> Located:
+def locate(course: Course, film: tuple[float, float], words: str, others: Sequence[Course] = ()) -> Located:
     """Find the offset with which the machine's signal explains the camera's, or the range of those that do.
 
     Parameters
@@ -121,6 +123,8 @@ def locate(course: Course, film: tuple[float, float], words: str) -> Located:
         Camera times of the first and the last frame, s.
     words
         What the event is called.
+    others
+        The event over more and fewer frames, of which the longest that serves is used.
 
     Raises
     ------
@@ -143,17 +147,22 @@ def locate(course: Course, film: tuple[float, float], words: str) -> Located:
     # Three standard deviations of a variance with that many degrees of freedom.
     rivals = found < found[best] * (1 + 3 * sqrt(2 / max(len(course.time_s) - DEGREE - 2, 1)))
     if np.ptp(grid[rivals]) > 2 * misfit.interval:
+        shorter = shortened(misfit, others, float(grid[best]))
+        if shorter is not None:
+            return locate(shorter, film, words, others)
         return _range(misfit, grid, film, words, "many offsets explain the frames alike")
     offset = misfit.refined(float(grid[best]))
-    u = misfit.uncertainty(offset)
+    if others:
+        misfit = settled(misfit, others, offset)
+        course, offset = misfit.course, misfit.refined(offset)
+    u = hypot(misfit.uncertainty(offset), unsaid_s(misfit, offset))
     if not u < misfit.interval:
         return _range(misfit, grid, film, words, "it is seen too indistinctly")
     tried = offset + np.linspace(-2, 2, 81) * misfit.interval
     square = misfit.mean_square(tried)
     at = float(course.time_s[misfit.at_rest][-1]) if misfit.at_rest.any() else float(course.time_s[0])
-    return Located(
-        offset, u, at, words, tried_s=tried, misfit=np.sqrt(square / misfit.mean_square(np.array([offset])))
-    )
+    relative = np.sqrt(square / misfit.mean_square(np.array([offset])))
+    return Located(offset, u, at, course.reach(words), tried_s=tried, misfit=relative)
 
 
 def _range(misfit: Misfit, grid: Floats, film: tuple[float, float], words: str, why: str) -> Located:
@@ -178,7 +187,7 @@ def _range(misfit: Misfit, grid: Floats, film: tuple[float, float], words: str, 
     if not possible.any():
         raise does_not_follow()
     low, high = float(grid[possible][0]) - misfit.interval, float(grid[possible][-1]) + misfit.interval
-    return within(Located(0.0, 0.0, float(course.time_s[0]), words, why), low, high)
+    return within(Located(0.0, 0.0, float(course.time_s[0]), course.reach(words), why), low, high)
 
 
 def within(found: Located, low: float, high: float) -> Located:

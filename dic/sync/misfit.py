@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from copy import copy
 from dataclasses import dataclass, replace
 from math import hypot, inf, sqrt
 
@@ -28,12 +29,15 @@ SMOOTHING = 1.0
 #: on where between two samples a frame falls (weights 1/4, 1/2, 1/4 on a sample, 1/16, 7/16, 7/16, 1/16
 #: midway), so the offset is not drawn to where the noise is least, as it is with one or none.
 SPACINGS = 2
+#: Share of a frame interval over which it is averaged at the least: near the corner, where the windows
+#: shrink, this leaves less noise in the frames that tell most, and rounds no more.
+AVERAGED = 1 / 3
 #: The machine's signal is a polynomial of this degree in the model: constant, slope and a gentle curvature.
 DEGREE = 2
 #: Repetitions of the fit with fresh noise: they tell a standard deviation to some 10 %.
 REPETITIONS = 48
 #: Frames to either side of the offset that the repetitions search, and steps per frame.
-REACH, STEPS = 2, 20
+REACH, STEPS = 2, 10
 #: Offsets tried at once, so that the memory for a long record is bounded.
 _BLOCK = 2000
 
@@ -65,25 +69,47 @@ class Course:
         """Usual time between frames, s."""
         return frame_interval(self.time_s)
 
+    def reach(self, words: str) -> str:
+        """Return an event's words with the frames that tell it."""
+        if not self.same_sign:
+            return words
+        return f"{words}, {len(self.time_s)} frames up to a strain of {np.abs(self.signal).max():.2g}"
+
 
 class Misfit:
     """The residuals of signal = a + b·force + c·force² over the offset.
 
-    `widening` doubles the smoothing, to see what it does to the corner where loading starts.
+    `widening` doubles the smoothing, to see what it does to the corner where loading starts; `degree` is that
+    of the polynomial.
     """
 
-    def __init__(self, course: Course, *, widening: int = 1) -> None:
-        self.course, self.widening = course, widening
+    def __init__(self, course: Course, *, widening: int = 1, degree: int = DEGREE) -> None:
+        self.course, self.widening, self.degree = course, widening, degree
         self.interval = course.interval_s
         record = course.record
         smooth = smoothed_force(record, widening * SMOOTHING * self.interval)
         # In units of its largest value, so that force and its square are of one size.
         self.unit = float(np.abs(smooth).max(initial=np.finfo(float).tiny))
         self.force = smooth / self.unit
-        self.spacing = widening * SPACINGS * float(np.median(np.diff(record.time_s)))
+        rows = SPACINGS * float(np.median(np.diff(record.time_s)))
+        self.spacing = widening * max(rows, AVERAGED * self.interval)
         self._integral = make_interp_spline(record.time_s, self.force, k=1).antiderivative()
-        self.size = float(np.abs(course.signal).max())
-        self.at_rest = np.abs(course.signal) < max(AT_REST * self.size, 3 * course.noise)
+
+    @property
+    def size(self) -> float:
+        """Largest signal of the camera."""
+        return float(np.abs(self.course.signal).max())
+
+    @property
+    def at_rest(self) -> NDArray[np.bool_]:
+        """True for frames at rest, shape (n,)."""
+        return np.abs(self.course.signal) < max(AT_REST * self.size, 3 * self.course.noise)
+
+    def over(self, course: Course, degree: int = DEGREE) -> Misfit:
+        """Return the misfit over more or fewer frames of the same event, with the same smoothed force."""
+        other = copy(self)
+        other.course, other.degree = course, degree
+        return other
 
     def force_at(self, offset: Floats) -> Floats:
         """Return the force of each frame at each offset, NaN outside the record, shape (k, n)."""
@@ -96,7 +122,7 @@ class Misfit:
     def residuals(self, offset: Floats) -> tuple[Floats, Floats]:
         """Return the sum of squares at each offset, inf where the signs differ, and the frames in it."""
         blocks = [
-            _squares(self.force_at(offset[k : k + _BLOCK]), self.course.signal, self.course.same_sign)
+            _squares(self.force_at(offset[k : k + _BLOCK]), self.course, self.degree)
             for k in range(0, len(offset), _BLOCK)
         ]
         return np.concatenate([one[0] for one in blocks]), np.concatenate([one[1] for one in blocks])
@@ -110,7 +136,7 @@ class Misfit:
         square = np.full(len(offset), np.inf)
         if enough.any():
             total, count = self.residuals(offset[enough])
-            square[enough] = _mean(total, count)
+            square[enough] = _mean(total, count, self.degree)
         return square
 
     def refined(self, near: float) -> float:
@@ -161,8 +187,8 @@ class Misfit:
         misses = []
         for one in noise:
             again = signal + r.normal(0.0, spread, len(signal))
-            total, count = _squares(force + one, again, course.same_sign)
-            misses.append(_lowest(tried, _mean(total, count)) - offset)
+            total, count = _squares(force + one, replace(course, signal=again), self.degree)
+            misses.append(_lowest(tried, _mean(total, count, self.degree)) - offset)
         return float(np.sqrt(np.mean(np.square(misses)))) * few_readings(REPETITIONS - 1)
 
     def _smooth_noise(self, own: Misfit, tried: Floats, r: np.random.Generator) -> Floats:
@@ -210,24 +236,24 @@ def _lowest(x: Floats, y: Floats) -> float:
     return float(x[k] + (0.5 * (y[k - 1] - y[k + 1]) / bend if bend > 0 else 0.0) * (x[1] - x[0]))
 
 
-def _mean(total: Floats, count: Floats) -> Floats:
+def _mean(total: Floats, count: Floats, degree: int) -> Floats:
     """Return residual variances: a curve's coefficients and the offset are fitted."""
-    return total / (np.maximum(count, DEGREE + 3) - DEGREE - 2)
+    return total / (np.maximum(count, degree + 3) - degree - 2)
 
 
-def _squares(force: Floats, signal: Floats, same_sign: bool) -> tuple[Floats, Floats]:
+def _squares(force: Floats, course: Course, degree: int) -> tuple[Floats, Floats]:
     """Return residual sums of squares per row of forces, inf where signal falls with force, and frames."""
     inside = np.isfinite(force)
     n = inside.sum(axis=1)
-    there = np.where(inside, signal, 0.0)
+    there = np.where(inside, course.signal, 0.0)
     left = (there - there.sum(axis=1, keepdims=True) / np.maximum(n, 1)[:, None]) * inside
     rises = np.ones(len(n), dtype=bool)
     basis: list[Floats] = []
-    for power in range(1, DEGREE + 1):
+    for power in range(1, degree + 1):
         column = _less_projections(np.where(inside, force, 0.0) ** power, inside, basis)
         basis.append(column)
         share = (left * column).sum(axis=1, keepdims=True)
-        if power == 1 and same_sign:
+        if power == 1 and course.same_sign:
             rises = share[:, 0] > 0
         left = left - share * column
     return np.where(rises, (left**2).sum(axis=1), np.inf), n
