@@ -35,10 +35,10 @@ def fit_clock(
     one with which the force explains the strain of the frames best (least squares, which is maximum
     likelihood for normal noise).  a, b and c follow for each offset linearly, which leaves one unknown; it
     is searched on a grid over all offsets that overlap, then refined.  The curvature c keeps elastomers
-    and a slightly bent coupon from shifting the clock; as many frames are used as it describes (`reach.settled`).  Rigid motion while grips seat does not disturb:
-    neither strain nor force knows of it.  The same is done with time running backwards for the unloading
-    at the end, which gives the drift; and with the gauge's motion and the crosshead's travel where strain
-    and force do not tell.
+    and a slightly bent coupon from shifting the clock; as many frames are used as it describes (see
+    `dic.sync.reach`).  Rigid motion while grips seat does not disturb: neither strain nor force knows of
+    it.  The same is done with time running backwards for the unloading at the end, which gives the drift;
+    and with the gauge's motion and the crosshead's travel where strain and force do not tell.
 
     Parameters
     ----------

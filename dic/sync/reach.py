@@ -105,5 +105,8 @@ def shortened(misfit: Misfit, courses: Sequence[Course], offset_s: float) -> Cou
 
 
 def unsaid_s(misfit: Misfit, offset_s: float) -> float:
-    """Return the standard uncertainty from ending the polynomial where it ends: what one degree more moves, s."""
-    return abs(misfit.over(misfit.course, DEGREE + 1).refined(offset_s) - offset_s)
+    """Return the standard uncertainty from ending the polynomial where it ends, s.
+
+    One degree more moves the offset by so much: half the width of a rectangular distribution.
+    """
+    return abs(misfit.over(misfit.course, DEGREE + 1).refined(offset_s) - offset_s) / sqrt(3)
