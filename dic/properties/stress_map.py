@@ -40,7 +40,8 @@ def elastic_stress(dataset: xr.Dataset, frame: int, properties: Mapping[str, Pro
     Raises
     ------
     InputError
-        If a constant is missing, or most of the coupon is beyond the elastic range in that frame.
+        If a constant is missing, or that frame has no strain, or most of the coupon is beyond the elastic
+        range in it.
 
     Notes
     -----
@@ -58,7 +59,13 @@ def elastic_stress(dataset: xr.Dataset, frame: int, properties: Mapping[str, Pro
     equivalent = np.sqrt(axial**2 - axial * across + across**2 + 3 * shear**2)
     measured = np.isfinite(equivalent)
     beyond = measured & (equivalent > limit)
-    if measured.any() and beyond.sum() > measured.sum() / 2:
+    if not measured.any():
+        raise InputError(
+            "the strain maps have no point with enough subsets around it for a stress map",
+            where=f"frame {frame}",
+            remedy="lower correlation.step, or set gauge.subsets to everywhere",
+        )
+    if beyond.sum() > measured.sum() / 2:
         raise InputError(
             f"most of the coupon is beyond the elastic range of {limit:.4g} MPa, and Hooke's law ends there",
             where=f"frame {frame}",

@@ -124,7 +124,7 @@ class Stations:
     along_px
         Middle of each station, from the gauge's centre, shape (n,).
     strain, u_strain
-        Mean at each station, and its standard uncertainty.
+        Mean at each station, and its standard uncertainty; NaN where no two rows of subsets are.
     bending, u_bending
         (ε_edge − ε_mean)/ε_mean at the edge on the side of the transverse axis.
     across_px
@@ -219,6 +219,8 @@ def read_stations(rates: Rates) -> Stations:
     for k, middle in enumerate(middles):
         a, t = rates.along - middle, rates.across
         here = abs(a) <= length / (2 * count) * (1 + 1e-9)
+        if _levels(a[here], rates.step) < 2:  # no length to measure a strain over
+            continue
         design = np.column_stack([np.ones_like(a), a, t, a * t, t**2])
         value, covariance = rates.fit(rates.moved_along, rates.u_along, design, here)
         half = rates.region.width / 2

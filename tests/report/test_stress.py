@@ -53,4 +53,6 @@ def test_a_map_that_would_be_false_is_left_out_with_its_reason(measurement, fiel
 
 def test_without_an_elastic_part_or_frames_there_is_none(measurement, lost, fields):
     assert "without an elastic part" in draw_stress(lost, fields)[1]
+    empty = fields.assign(strain_axial=np.nan * fields["strain_axial"])
+    assert "no point with enough subsets" in draw_stress(measurement, empty)[1]
     assert "no frame" in draw_stress(measurement, fields.isel(frame=slice(0, 0)))[1]

@@ -10,7 +10,7 @@ from dic.pattern import axes
 from dic.strain import Region, Window
 from dic.strain.alignment import UNTOLD, Alignment, Estimate, elastic_part, find_alignment, limit_of
 from dic.strain.causes import OBSERVED, explain
-from dic.strain.rates import Moved, gather_rates, mirrored
+from dic.strain.rates import Moved, gather_rates, mirrored, read_stations
 from synthetic_images.readings import gauge_history
 
 POISSON, SIGMA, STEP, SUBSET = 0.3, 0.004, 15, 15  # subsets side by side: independent noise
@@ -97,6 +97,18 @@ def test_uniform_bending_is_read_at_every_station(angle, size):
     turned = found.turning_ends[1].value - found.turning_ends[0].value
     length = LENGTH if angle == 0 else 700.0
     assert turned == pytest.approx(-expected / (width / 2) * length, rel=1e-6)
+
+
+def test_a_station_without_subsets_says_nothing():
+    _, rates = measured(bent=0.05)
+    kept = abs(rates.along) > LENGTH / 6  # the middle one of five is gone, its neighbours are not
+    member = rates.member.copy()
+    member[rates.member] = kept
+    parts = {key: getattr(rates, key)[kept] for key in ("along", "across", "moved_along", "moved_across")}
+    stations = read_stations(replace(rates, member=member, **parts))
+    for values in (stations.strain, stations.bending, stations.u_strain, stations.u_bending):
+        np.testing.assert_array_equal(np.isfinite(values), [True, True, False, True, True])
+    np.testing.assert_allclose(stations.strain[[0, 1, 3, 4]], 1.0, rtol=1e-6)
 
 
 def test_an_s_is_largest_at_the_ends():
