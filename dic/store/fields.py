@@ -7,7 +7,8 @@ looks like a result.
 from __future__ import annotations
 
 import os
-from collections.abc import Iterable, Iterator
+from collections.abc import Collection, Iterable, Iterator
+from enum import IntEnum
 from pathlib import Path
 from types import TracebackType
 from typing import Any
@@ -21,7 +22,7 @@ from dic.correlation.grid import Grid
 from dic.correlation.matching import Match
 from dic.errors import StoreError
 from dic.strain.maps import MEANING as MAP_MEANING
-from dic.strain.maps import MapFlag, StrainMap
+from dic.strain.maps import StrainMap
 from dic.strain.measures import GRADIENT
 from dic.strain.rates import Moved
 
@@ -106,38 +107,12 @@ class FieldsWriter:
             raise StoreError(
                 f"cannot be written ({error})", where=str(folder), remedy="choose another --out"
             ) from error
-        file = self._file
-        file.dimensions = {"frame": len(time_s), "y": grid.shape[0], "x": grid.shape[1]}
-        file.create_variable("frame", ("frame",), data=np.arange(len(time_s)))
-        file.create_variable("time", ("frame",), data=time_s).attrs["long_name"] = "camera time in seconds"
-        file.create_variable("y", ("y",), data=grid.rows).attrs["units"] = "px"
-        file.create_variable("x", ("x",), data=grid.columns).attrs["units"] = "px"
-        for name, (dtype, unit, meaning) in VARIABLES.items():
-            # A fill value would make xarray read the flags as floats, and every frame is written whole.
-            fill = None if dtype == "u1" else np.nan
-            variable = file.create_variable(
-                name, ("frame", "y", "x"), dtype, fillvalue=fill, chunks=(1, *grid.shape)
-            )
-            variable.attrs.update({"units": unit, "long_name": meaning})
-        names: tuple[tuple[str, list[Flag] | list[MapFlag]], ...]
-        names = ("flag", list(MEANING)), ("map_flag", list(MAP_MEANING))
-        for name, flags in names:
-            file[name].attrs["flag_values"] = np.array(flags, np.uint8)
-            file[name].attrs["flag_meanings"] = " ".join(flag.name.lower() for flag in flags)
-        noise = file.create_variable("noise_grey", ("frame",), "f8", fillvalue=np.nan)
-        noise.attrs["long_name"] = "grey noise of one frame, median over the subsets, in grey levels"
-        links = file.create_variable("links", ("frame",), "i4")
-        links.attrs["long_name"] = "references between the first one and the frame"
-        for name, meaning in PATCH.items() if patch else ():
-            file.create_variable(name, ("frame",), "f8", fillvalue=np.nan).attrs["long_name"] = meaning
+        _lay_out(self._file, grid, time_s)
+        if patch:
+            _lay_out_patch(self._file)
         if stations is not None:
-            file.dimensions["station"] = len(stations)
-            place = file.create_variable("station", ("station",), data=stations)
-            place.attrs.update({"units": "px", "long_name": "along the axis from the gauge region's middle"})
-            for name, meaning in EDGES.items():
-                variable = file.create_variable(name, ("frame", "station"), "f8", fillvalue=np.nan)
-                variable.attrs.update({"units": "px", "long_name": meaning})
-        file.attrs.update(attributes)
+            _lay_out_edges(self._file, stations)
+        self._file.attrs.update(attributes)
 
     def __enter__(self) -> FieldsWriter:
         return self
@@ -197,6 +172,48 @@ class FieldsWriter:
             os.replace(self._partial, self._final)
         else:
             self._partial.unlink(missing_ok=True)
+
+
+def _lay_out(file: h5netcdf.File, grid: Grid, time_s: NDArray[np.float64]) -> None:
+    """Make the variables that every test has."""
+    file.dimensions = {"frame": len(time_s), "y": grid.shape[0], "x": grid.shape[1]}
+    file.create_variable("frame", ("frame",), data=np.arange(len(time_s)))
+    file.create_variable("time", ("frame",), data=time_s).attrs["long_name"] = "camera time in seconds"
+    file.create_variable("y", ("y",), data=grid.rows).attrs["units"] = "px"
+    file.create_variable("x", ("x",), data=grid.columns).attrs["units"] = "px"
+    for name, (dtype, unit, meaning) in VARIABLES.items():
+        # A fill value would make xarray read the flags as floats, and every frame is written whole.
+        fill = None if dtype == "u1" else np.nan
+        variable = file.create_variable(
+            name, ("frame", "y", "x"), dtype, fillvalue=fill, chunks=(1, *grid.shape)
+        )
+        variable.attrs.update({"units": unit, "long_name": meaning})
+    _explain(file["flag"], MEANING)
+    _explain(file["map_flag"], MAP_MEANING)
+    noise = file.create_variable("noise_grey", ("frame",), "f8", fillvalue=np.nan)
+    noise.attrs["long_name"] = "grey noise of one frame, median over the subsets, in grey levels"
+    links = file.create_variable("links", ("frame",), "i4")
+    links.attrs["long_name"] = "references between the first one and the frame"
+
+
+def _explain(variable: h5netcdf.Variable, flags: Collection[IntEnum]) -> None:
+    """Say what the values of a flag mean, as the CF conventions have it."""
+    variable.attrs["flag_values"] = np.array(list(flags), np.uint8)
+    variable.attrs["flag_meanings"] = " ".join(flag.name.lower() for flag in flags)
+
+
+def _lay_out_patch(file: h5netcdf.File) -> None:
+    for name, meaning in PATCH.items():
+        file.create_variable(name, ("frame",), "f8", fillvalue=np.nan).attrs["long_name"] = meaning
+
+
+def _lay_out_edges(file: h5netcdf.File, stations: NDArray[np.float64]) -> None:
+    file.dimensions["station"] = len(stations)
+    place = file.create_variable("station", ("station",), data=stations)
+    place.attrs.update({"units": "px", "long_name": "along the axis from the gauge region's middle"})
+    for name, meaning in EDGES.items():
+        variable = file.create_variable(name, ("frame", "station"), "f8", fillvalue=np.nan)
+        variable.attrs.update({"units": "px", "long_name": meaning})
 
 
 def spread(values: NDArray[np.float64], inside: NDArray[np.bool_]) -> NDArray[np.float64]:
