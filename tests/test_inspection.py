@@ -136,7 +136,9 @@ def test_each_odd_force_is_a_doubt(laid_out, force, code):
 
 
 def test_what_is_given_is_not_assumed(laid_out):
-    assert any("sync.offset" in sentence for sentence in inspect(laid_out()).assumed)
+    assumed = inspect(laid_out()).assumed
+    for key in ("sync.offset", "correlation.subset", "properties.proof"):
+        assert any(key in sentence for sentence in assumed)
     found = inspect(laid_out(("[frames]", '[sync]\noffset = "1 s"\n[frames]')))
     assert not any("sync.offset" in sentence for sentence in found.assumed)
     assert found.overlap.startswith("8 of 8 frames lie within the record")

@@ -14,7 +14,19 @@ from dic.inspection.doubts import dimension_doubts, frame_doubts, missing_uncert
 from dic.inspection.looking import Progress, look_at_frames, look_at_record, survey_record
 from dic.inspection.seen import FramesSeen, Inspection, RecordSeen
 from dic.sync import LoadRecord, known_clock, read_load_record
-from dic.testfile import Frames, Specimen, Sync, TestFile, bare_quantities, load, sound_sections
+from dic.testfile import (
+    Camera,
+    Correlation,
+    Frames,
+    Gauge,
+    Properties,
+    Specimen,
+    Sync,
+    TestFile,
+    bare_quantities,
+    load,
+    sound_sections,
+)
 from dic.testfile import LoadRecord as RecordSection
 
 
@@ -223,29 +235,31 @@ def assumptions(sections: dict[str, Any]) -> Iterator[str]:
     sections
         The sections of a test file that are right, under their names.
     """
-    frames, camera, gauge = (sections.get(name) for name in ("frames", "camera", "gauge"))
-    sync, properties, correlation = (sections.get(name) for name in ("sync", "properties", "correlation"))
+    frames = sections.get("frames")
+    # Of these every key has a default, so that a section that is left out holds them all.
+    camera, gauge = sections.get("camera", Camera()), sections.get("gauge", Gauge())
+    correlation, sync = sections.get("correlation", Correlation()), sections.get("sync", Sync())
+    properties = sections.get("properties", Properties())
     if frames is not None and frames.reference is None:
         yield "Strain counts from the frames at rest at the beginning, up to 16 of them (frames.reference)."
-    if camera is None or camera.scale is None:
+    if camera.scale is None:
         yield "The scale follows from the coupon's width between its long edges (camera.scale)."
-    if gauge is None or gauge.axis == "auto":
+    if gauge.axis == "auto":
         yield "The direction of the pull is found from the coupon's long edges (gauge.axis)."
-    if gauge is None or gauge.region == "auto":
+    if gauge.region == "auto":
         yield "Strain is averaged over the whole textured part of the coupon (gauge.region)."
-    if gauge is None or gauge.length is None:
+    if gauge.length is None:
         yield "No extensometer length is asked for: its reading covers the whole region (gauge.length)."
-    if correlation is not None and correlation.subset % 2 == 0:
+    if correlation.subset % 2 == 0:
         taken = correlation.subset + 1
         yield f"A patch has a middle pixel: correlation.subset = {correlation.subset} is taken as {taken}."
-    elif correlation is not None:
+    else:
         yield f"Patches of {correlation.subset} px are followed (correlation.subset)."
-    if sync is None or sync.offset == "auto":
+    if sync.offset == "auto":
         yield "The clocks are joined where loading starts; some rest must be filmed first (sync.offset)."
-    if sync is None or sync.drift == "auto":
+    if sync.drift == "auto":
         yield "Camera and machine clock run equally fast unless the test's end says otherwise (sync.drift)."
-    if properties is None or properties.modulus == "auto":
+    if properties.modulus == "auto":
         yield "The modulus window is found from the curve (properties.modulus)."
-    if properties is not None:
-        shown = ", ".join(f"{100 * offset:g} %" for offset in properties.proof) or "none"
-        yield f"Proof stresses at offsets of {shown} (properties.proof)."
+    shown = ", ".join(f"{100 * offset:g} %" for offset in properties.proof) or "none"
+    yield f"Proof stresses at offsets of {shown} (properties.proof)."
