@@ -13,7 +13,7 @@ from dic.errors import TestFileError
 from dic.gauges.between import Between
 from dic.gauges.probes import Ints, Probe, Spanning, Stretching, Subsets
 from dic.gauges.silhouette import MOST_UNEVEN, Silhouette
-from dic.pattern import axes
+from dic.pattern import axes, perpendicular
 from dic.quantities import parse
 from dic.strain import Region
 from dic.testfile import NamedGauge, Place, in_px
@@ -185,7 +185,7 @@ class _Placer:
         direction = (last - first) / max(float(np.linalg.norm(last - first)), 1e-9)
         self.inside_picture(np.stack([first, last]))
         self.long_enough(first, last)
-        across, depth = np.array([-direction[1], direction[0]]), self.subsets.size
+        across, depth = perpendicular(direction), self.subsets.size
         bands: list[Ints] = []
         outlines = [np.stack([first, last])]
         for end in (first, last):
@@ -271,7 +271,7 @@ class _Placer:
         self.inside_picture(np.stack([first, last]))
         total = self.long_enough(first, last)
         direction = (last - first) / total
-        across = np.array([-direction[1], direction[0]])
+        across = perpendicular(direction)
         grid = self.subsets.grid
         window = LINE_WINDOW * grid.subset if gauge.length is None else self.px(gauge.length)
         window = min(max(window, 2.0 * grid.step), total)

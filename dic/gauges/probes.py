@@ -17,6 +17,7 @@ from numpy.typing import NDArray
 
 from dic.correlation.grid import Grid
 from dic.correlation.reference import Reference
+from dic.pattern import perpendicular
 from dic.strain.gauge import even_weights, pooled
 from dic.strain.tensors import engineering
 
@@ -98,7 +99,7 @@ class Subsets:
     def in_rectangle(self, centre: Floats, along: Floats, length: float, width: float) -> Ints:
         """Return the subsets whose centres lie in a rectangle `length` long along a unit vector."""
         away = self.places - centre
-        across = np.array([-along[1], along[0]])
+        across = perpendicular(along)
         inside = (np.abs(away @ along) <= length / 2) & (np.abs(away @ across) <= width / 2)
         return np.flatnonzero(inside & self.reference.usable)
 

@@ -18,7 +18,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy import ndimage
 
-from dic.pattern import Coupon, axes, centre
+from dic.pattern import Coupon, axes, centre, perpendicular
 from dic.strain import Region
 
 Floats = NDArray[np.float64]
@@ -172,7 +172,7 @@ class Silhouette:
         direction = deformation @ self._axial
         direction /= np.linalg.norm(direction)
         # Across the coupon as it stands now, so that its turning is no widening.
-        across = np.array([-direction[1], direction[0]])
+        across = perpendicular(direction)
         # Zones shrink with the coupon, so that they keep the same pattern.
         scale = max(float(across @ deformation @ self._transverse), LEAST_SCALE)
         laid = []

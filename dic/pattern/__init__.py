@@ -2,7 +2,7 @@
 
 from dic.pattern.coupon import Coupon, find_coupon
 from dic.pattern.given import Given, rectangle
-from dic.pattern.outline import axes, centre
+from dic.pattern.outline import axes, centre, perpendicular
 from dic.pattern.quality import axis_doubts, doubts, picture_quality
 from dic.pattern.sketch import Sketch, sketch
 
@@ -15,6 +15,7 @@ __all__ = [
     "centre",
     "doubts",
     "find_coupon",
+    "perpendicular",
     "picture_quality",
     "rectangle",
     "sketch",

@@ -21,7 +21,13 @@ def axes(angle_deg: float) -> tuple[Floats, Floats]:
     At 0° the axial vector points up the picture (0, −1) and the transverse one to the right (1, 0).
     """
     a = np.radians(angle_deg)
-    return np.array([np.sin(a), -np.cos(a)]), np.array([np.cos(a), np.sin(a)])
+    axial = np.array([np.sin(a), -np.cos(a)])
+    return axial, perpendicular(axial)
+
+
+def perpendicular(direction: Floats) -> Floats:
+    """Return the direction across another one, on that side of it on which `axes` has the transverse one."""
+    return np.array([-direction[1], direction[0]])
 
 
 def centre(shape: tuple[int, ...]) -> Floats:
