@@ -16,6 +16,9 @@ from dic.testfile import Sync
 
 Floats = NDArray[np.float64]
 
+#: Time by which two computers' times of day are commonly apart, s; dates beyond contradict the loading.
+OTHER_DATES_S = 120.0
+
 
 def fit_clock(
     camera_time_s: Floats,
@@ -74,7 +77,8 @@ def fit_clock(
     if known is not None:
         return known
     clock = estimate(Seen(camera_time_s, axial, u_axial, shift_px), record, section)
-    return replace(clock, notices=(*_unused_trigger(camera_time_s, record, section), *clock.notices))
+    doubts = (*_unused_trigger(camera_time_s, record, section), *_other_dates(clock, record, epoch))
+    return replace(clock, notices=(*doubts, *clock.notices))
 
 
 def known_clock(
@@ -136,6 +140,21 @@ def _unused_trigger(camera_time_s: Floats, record: LoadRecord, section: Sync) ->
     except ClockError as error:
         return (Notice("trigger_unused", f"The clocks were joined by the loading instead: {error}"),)
     return ()
+
+
+def _other_dates(clock: Clock, record: LoadRecord, epoch: datetime | None) -> tuple[Notice, ...]:
+    """Say so where the dates in frames and record put the clocks far from where they were found."""
+    if epoch is None or record.epoch is None:
+        return ()
+    apart = _apart(record, epoch) - clock.offset_s
+    if abs(apart) <= OTHER_DATES_S + 2 * clock.offset_standard_uncertainty_s:
+        return ()
+    text = (
+        f"The dates in frames and load record put the frames {abs(apart):.3g} s "
+        f"{'later' if apart > 0 else 'earlier'} than the loading does: one computer's time of day is wrong "
+        "(a time zone makes whole hours), or the record is of another test; check that both belong together."
+    )
+    return (Notice("clock_dates", text),)
 
 
 def _require_overlap(clock: Clock, camera_time_s: Floats, record: LoadRecord) -> None:

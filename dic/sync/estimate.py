@@ -38,6 +38,9 @@ UNLOADED, END_ROWS = 0.5, 5
 #: Rows within which the force has fallen at fracture.
 FALL_ROWS = 4
 
+#: What the event is called.
+FRACTURE = "the fracture"
+
 _NEXT_TIME = "next time film two seconds of rest before the pull"
 
 
@@ -256,17 +259,17 @@ def _wide(start: Located, seen: Seen, record: LoadRecord, drift: float) -> Clock
 
 
 def _with_end(start: Located, seen: Seen, record: LoadRecord, section: Sync) -> Clock:
-    """Return the clock from the start of loading, its drift from the end of unloading where that tells it."""
+    """Return the clock from the start of loading, its drift from the test's end where that tells it."""
     given = section.assumed_drift
     notes = ["strain is taken as a smooth function of force where loading starts"]
     method, drift, u_drift = f"from {start.words}", 0.0, 0.0
-    end = end_of_unloading(seen, record) if section.drift == "auto" else None
-    if end is not None and end.at_s > start.at_s:
-        span = end.at_s - start.at_s
-        found, u = (end.offset_s - start.offset_s) / span, hypot(end.u_s, start.u_s) / span
-        if u <= TELLING_DRIFT or abs(found) > CONTRADICTION * u:
-            drift, u_drift, method = found, u, f"{method}, and from {end.words.split(',')[0]}"
-    if section.drift == "auto" and drift == 0:
+    told = _told_drift(start, seen, record) if section.drift == "auto" else None
+    if told is not None:
+        drift, u_drift, words = told
+        method = f"{method}, and from {words}"
+        if words == FRACTURE:
+            notes.append("the frames are taken to be lost at the coupon's fracture, not before")
+    elif section.drift == "auto":
         notes.append("both clocks are taken to run equally fast")
     return Clock(
         start.offset_s - drift * start.at_s,
@@ -279,6 +282,34 @@ def _with_end(start: Located, seen: Seen, record: LoadRecord, section: Sync) -> 
         start.tried_s - drift * start.at_s,
         start.misfit,
     )
+
+
+def _told_drift(start: Located, seen: Seen, record: LoadRecord) -> tuple[float, float, str] | None:
+    """Return drift, standard uncertainty and event from unloading or fracture; None where neither tells it.
+
+    Frames may be lost before the coupon breaks, so a fracture counts only where it does not contradict
+    clocks that run equally fast; it then says how equally.
+    """
+    # A coupon that broke was not unloaded, and looking for it in a long film takes long.
+    broke = _fracture_event(seen, record)
+    end = end_of_unloading(seen, record) if broke is None else broke
+    if broke is not None and _contradicted(start, 0.0, seen, record):
+        return None
+    if end is None or end.at_s <= start.at_s:
+        return None
+    span = end.at_s - start.at_s
+    found, u = (end.offset_s - start.offset_s) / span, hypot(end.u_s, start.u_s) / span
+    if u <= TELLING_DRIFT or (broke is None and abs(found) > CONTRADICTION * u):
+        return found, u, end.words.split(",")[0]
+    return None
+
+
+def _fracture_event(seen: Seen, record: LoadRecord) -> Located | None:
+    """Return the fracture with the middle of its offsets and a rectangular distribution's uncertainty."""
+    lost, broke = _frames_lost(seen), fracture(seen, record)
+    if lost is None or broke is None:
+        return None
+    return within(Located(0.0, 0.0, (lost[0] + lost[1]) / 2, FRACTURE), *broke)
 
 
 def _contradicted(start: Located, drift: float, seen: Seen, record: LoadRecord) -> tuple[Notice, ...]:

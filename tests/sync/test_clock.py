@@ -1,6 +1,7 @@
 """The clock from the start of loading: right to within what it claims, and wide where it cannot know."""
 
 from dataclasses import replace
+from datetime import datetime, timedelta
 from pathlib import Path
 
 import numpy as np
@@ -336,6 +337,48 @@ def test_a_fracture_that_contradicts_the_start_is_said():
     said = fit_clock(*broken(drift=0.09), AUTO).notices
     assert [one.code for one in said] == ["clock_fracture"]
     assert "before the force falls" in said[0].text
+
+
+def long_and_broken(seed, drift, *, lost_early=0.0):
+    """Return an hour's test, 5 Hz and 10 Hz, whose coupon breaks at a random phase of both."""
+    r = np.random.default_rng(seed)
+    camera, dense = np.arange(0, 3600, 0.2), np.arange(-1, 3700, 0.1)
+    start, end = 2 + r.uniform(0, 0.2), 3590 + r.uniform(0, 0.2)
+
+    def strain_at(time):
+        return 4e-4 * np.clip(time - start, 0, 5) + 2e-6 * np.clip(time - start - 5, 0, None)
+
+    force = np.where(dense < end, 25 * 70e3 * strain_at(dense), 0) + r.normal(0, 5, len(dense))
+    axial = np.where(camera < end - lost_early, strain_at(camera), np.nan) + r.normal(0, 3e-6, len(camera))
+    record = LoadRecord(Path("machine.csv"), OFFSET + (1 + drift) * dense, force)
+    return camera, axial, np.full(len(camera), 3e-6), record
+
+
+@pytest.mark.parametrize("drift", [3e-5, -2e-5])
+def test_fracture_tells_the_drift_of_a_long_test(drift):
+    for seed in range(3):
+        found = fit_clock(*long_and_broken(seed, drift), AUTO)
+        # A frame and five rows bracket the fracture: ± 0.35 s in an hour, for which a rectangle gives 56 ppm.
+        assert abs(found.drift - drift) < 2 * found.drift_standard_uncertainty < 2 * 57e-6
+        assert found.method.endswith("and from the fracture")
+        assert found.notices == ()
+
+
+def test_frames_lost_long_before_the_fracture_tell_no_drift():
+    found = fit_clock(*long_and_broken(0, 0.0, lost_early=3.0), AUTO)
+    assert (found.drift, found.drift_standard_uncertainty) == (0.0, 0.0)
+    assert [one.code for one in found.notices] == ["clock_fracture"]
+
+
+def test_dates_that_contradict_the_loading_are_said():
+    time, axial, u, record = pull()
+    noon = datetime(2024, 5, 6, 12, 0, 0)
+    dated = replace(record, epoch=noon)
+    agree = fit_clock(time, axial, u, dated, AUTO, epoch=noon + timedelta(seconds=OFFSET + 40))
+    assert agree.notices == ()
+    said = fit_clock(time, axial, u, dated, AUTO, epoch=noon + timedelta(hours=1, seconds=OFFSET)).notices
+    assert [one.code for one in said] == ["clock_dates"]
+    assert "3.6e+03 s later" in said[0].text
 
 
 @pytest.mark.parametrize("turned", [1, -1])
