@@ -35,6 +35,10 @@ ROUGH_PX = 1.5
 LEAST_FOR_PLANE = 6
 #: Subsets matched roughly around the place that seeding found.
 SEEDS = 9
+#: Subsets that are tried before all others: where a start is wrong, each takes all its iterations.
+PROBES = 40
+#: ... where they are at the most one in so many, so that they cost little.
+LEAST_PER_PROBE = 10
 
 
 def track(frames: Iterable[Frame | Flag], reference: Reference, neighbours: Ints) -> Iterator[Match]:
@@ -123,7 +127,21 @@ class Tracker:
 
     def _from(self, frame: Frame, start: Floats) -> tuple[Match, SplineImage]:
         spline = self._prefilter(frame, boxes(self._reference, start))
-        return match_frame(self._reference, spline, start), spline
+        hopeless = self._probed(spline, start)
+        return match_frame(self._reference, spline, start) if hopeless is None else hopeless, spline
+
+    def _probed(self, spline: SplineImage, start: Floats) -> Match | None:
+        """Return a match in which all is lost, if that is what a few subsets all over the field find."""
+        usable = np.flatnonzero(self._reference.usable)
+        if len(usable) < LEAST_PER_PROBE * PROBES:
+            return None
+        probed = usable[:: len(usable) // PROBES]
+        few = np.full_like(start, np.nan)
+        few[probed] = start[probed]
+        match = match_frame(self._reference, spline, few)
+        # Subsets out of view take no time, so that each may as well be flagged as such.
+        unseen = (match.flag == Flag.OUT_OF_VIEW).sum()
+        return match if not match.converged.any() and 2 * unseen < len(probed) else None
 
     def _searched(self, frame: Frame, spline: SplineImage, best: Match | None) -> Match:
         """Look for the coupon anew; after each failure twice as many frames pass before the next search."""

@@ -3,7 +3,7 @@
 import numpy as np
 import pytest
 
-from dic.correlation import Flag, Tracker, lay_grid
+from dic.correlation import Flag, Tracker, lay_grid, tracking
 from dic.correlation import track as track_frames
 from dic.correlation.tracking import seed, settle
 from synthetic_images import Affine, homogeneous, rigid
@@ -62,6 +62,28 @@ def test_a_patch_that_was_hidden_is_found_again(photograph, prepared, track):
     assert not found[2].converged.all()
     assert found[3].converged.all()
     np.testing.assert_allclose(found[3].u, 0.6, atol=ALIASING)
+
+
+def test_where_the_coupon_has_gone_only_a_few_subsets_are_tried(photograph, prepared, track, monkeypatch):
+    """Each that fails takes all its iterations; without a sample, a broken coupon's frames took 50 times."""
+    shape = (400, 400)
+    reference = prepared(photograph(shape=shape))
+    tried = []
+    solve = tracking.match_frame
+
+    def counted(*arguments):
+        match = solve(*arguments)
+        tried.append(int((match.iterations > 0).sum()))
+        return match
+
+    frames = [photograph(shape=shape), photograph(seed=2, shape=shape), photograph(shape=shape)]
+    following = track(frames, reference)
+    next(following)
+    monkeypatch.setattr(tracking, "match_frame", counted)
+    lost = next(following)
+    assert not lost.converged.any()
+    assert max(tried) < len(reference.x) / 8
+    assert next(following).converged.all()
 
 
 def in_view(reference, motion):
