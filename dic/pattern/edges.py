@@ -188,15 +188,15 @@ def long_edges(grey: NDArray[np.float32], mask: Mask, angle_deg: float, *, turn:
             Trace.along(grey, points, angle_deg, side, WIDE_PX if done == 0 else NARROW_PX)
             for points, side in zip(sides, (-1, 1), strict=True)
         ]
-        found = _straight([None if trace is None else trace.stations(blur) for trace in traces], angle_deg)
-        if found.edges == (None, None):
-            return found
-        if done == 2:
-            blur, u_blur, shift = _blur(traces, found.edges, blur)
         stations = [None if trace is None else trace.stations(blur) for trace in traces]
-        found = replace(_straight(stations, angle_deg), blur=blur, u_blur=u_blur, blur_shift=shift)
+        found = _straight(stations, angle_deg)
+        if done == 2 and found.edges != (None, None):
+            blur, u_blur, shift = _blur(traces, found.edges, blur)
+            stations = [None if trace is None else trace.stations(blur) for trace in traces]
+            found = _straight(stations, angle_deg)
         if found.edges == (None, None):
             return found
+        found = replace(found, blur=blur, u_blur=u_blur, blur_shift=shift)
         step = found.turn_deg()
         if done >= 2 and (not turn or abs(step) < max(SETTLED_DEG, SETTLED_SHARE * found.u_angle_deg())):
             return _centred(grey, found, turn)
