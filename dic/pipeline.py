@@ -10,6 +10,8 @@ from collections.abc import Callable
 from dataclasses import replace
 from pathlib import Path
 
+from threadpoolctl import threadpool_limits
+
 from dic import provenance
 from dic.comparison import ClipOn, compare
 from dic.comparison import doubts as clip_on_doubts
@@ -62,10 +64,12 @@ def measure(
         If the input is at fault; the message says what, where, and what to do.
     """
     test, folder = _opened(test, out)
-    measurement = take_measurement(test, folder, progress)
-    write_results(measurement, folder)
-    with measurement.to_xarray() as stored:
-        write_report(measurement, stored, folder)
+    # BLAS threads spin for a while after each small product, on the cores that the kernels need.
+    with threadpool_limits(1, user_api="blas"):
+        measurement = take_measurement(test, folder, progress)
+        write_results(measurement, folder)
+        with measurement.to_xarray() as stored:
+            write_report(measurement, stored, folder)
     return measurement
 
 

@@ -2,7 +2,13 @@
 
 from __future__ import annotations
 
+import os
+
 from numba import njit
+
+# OpenMP's threads else spin between kernels, on the cores that all other work needs.  It is read when the
+# first kernel runs.
+os.environ.setdefault("OMP_WAIT_POLICY", "passive")
 
 #: Reassociation and contraction let sums vectorise; NaN and infinity keep their meaning.
 _FAST = {"reassoc", "contract", "nsz", "arcp"}
