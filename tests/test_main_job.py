@@ -341,7 +341,9 @@ def test_a_clip_on_in_the_record_is_compared(tmp_path, small_scenario):
     whole = dic.measure(render(load_scenario(scenario), tmp_path / "test"), tmp_path / "out").clip_on.whole
     assert whole.slope == pytest.approx(1.02, abs=3 * whole.u_slope)
     assert whole.offset == pytest.approx(5e-5, abs=3 * whole.u_offset)
-    assert whole.u_slope < 0.01
+    # 5 µm/m and the frames' own 3 µm/m on 12 frames evenly over 780 µm/m: 6 / (√12 · 780/√12) = 0.8 %.  What
+    # the clocks bring on top is theirs.
+    assert whole.contributions["slope"]["scatter"] < 0.008
     said = json.loads((tmp_path / "out" / "results.json").read_text())["clip_on"]
     assert said["slope"] == whole.slope
 

@@ -10,18 +10,13 @@ from dic.testfile import Specimen
 GOOD_SLOPE = 0.01
 
 
-def missing_uncertainties(specimen: Specimen) -> list[str]:
-    """Return the keys of those dimensions whose uncertainty is not given."""
-    return specimen.unstated
-
-
 def doubts(
     properties: dict[str, Property], specimen: Specimen, force_uncertainty: float | None
 ) -> list[Notice]:
     """Return a warning, with its remedy, for what the uncertainties leave out and for a poor modulus."""
     found = []
     left_out = ["the force calibration (load_record.force_uncertainty)"] if force_uncertainty is None else []
-    if keys := missing_uncertainties(specimen):
+    if keys := specimen.unstated:
         left_out.append(f"the section ({' and '.join(keys)})")
     if left_out:
         found.append(

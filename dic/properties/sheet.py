@@ -11,7 +11,6 @@ import numpy as np
 from numpy.typing import NDArray
 
 from dic.errors import Notice
-from dic.properties.doubts import missing_uncertainties
 from dic.properties.fits import fit, scatter
 from dic.properties.loading import Loading, Undetermined, loading_of, require_section
 from dic.properties.modulus import Elastic, fit_elastic
@@ -121,7 +120,7 @@ class Sheet:
         #: The keys that each of them lacks.
         self.gaps = {
             "force calibration": ["load_record.force_uncertainty"] if force_uncertainty is None else [],
-            "section": missing_uncertainties(specimen),
+            "section": specimen.unstated,
         }
         self._zero: Zero | None = None
         self._reason: Undetermined | None = None
