@@ -469,7 +469,8 @@ def solve_subsets(taps: Any, shape: Any, c: Any, sampling: Any, stride: Any, pla
             if zncc < least:
                 state = _DECORRELATED
             else:
-                p[i] = q
+                for a in range(size):  # numba takes two seconds to compile the assignment of a whole row
+                    p[i, a] = q[a]
                 residual[i] = left * scale * scale
         flag[i] = state
     return p, correlation, residual, flag, iterations

@@ -229,7 +229,8 @@ class StrainMapper:
         self._share = ndimage.uniform_filter(valid.astype(float), size, mode="constant")
         count = np.rint(self._share * size**2)
         part = np.nonzero(valid & (count < size**2) & (count >= LEAST_SHARE * size**2))
-        normal = normals(padded, *part, self._basis, self._weight)
+        # As they come, the indices lie in strides, for which the kernel would be compiled once more.
+        normal = normals(padded, *map(np.ascontiguousarray, part), self._basis, self._weight)
         total = np.maximum(normal[:, :1, :1], 1e-300)  # the first term is the constant
         spans = np.linalg.eigvalsh(normal / total)[:, 0] >= LEAST_SPAN
         part, normal = (part[0][spans], part[1][spans]), normal[spans]
