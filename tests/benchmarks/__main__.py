@@ -23,7 +23,8 @@ def main(
     name: Annotated[str, typer.Argument(help="One of " + ", ".join(NAMES) + ", or all.")],
     json: Annotated[Path | None, typer.Option(help="Write figures and targets as JSON.")] = None,
     plot: Annotated[Path | None, typer.Option(help="Draw the curves behind the figures (PNG).")] = None,
-    quick: Annotated[bool, typer.Option(help="With coverage: 20 tests in place of 200.")] = False,
+    tests: Annotated[int, typer.Option(help="With coverage: how many tests.")] = 200,
+    first: Annotated[int, typer.Option(help="With coverage: the first one's seed.")] = 0,
     drawn: Annotated[bool, typer.Option(help="With coverage: drawn readings, no pictures.")] = False,
     rows: Annotated[Path | None, typer.Option(help="With coverage: what each test gave, as JSON.")] = None,
 ) -> None:
@@ -35,7 +36,8 @@ def main(
     wanted = NAMES if name == "all" else (name,)
     results: dict[str, Bench] = {}
     for one in wanted:
-        further = {"quick": quick, "drawn": drawn, "rows": rows} if one == "coverage" else {}
+        asked = {"tests": tests, "first": first, "drawn": drawn, "rows": rows}
+        further = asked if one == "coverage" else {}
         results[one] = import_module(MODULES.get(one, one)).run(**further)
         show(one, results[one])
     if json is not None:
