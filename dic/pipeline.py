@@ -64,15 +64,15 @@ def measure(
         If the input is at fault; the message says what, where, and what to do.
     """
     test, folder = _opened(test, out)
-    # BLAS threads spin for a while after each small product, on the cores that the kernels need.
-    with threadpool_limits(1, user_api="blas"):
-        measurement = take_measurement(test, folder, progress)
-        write_results(measurement, folder)
-        with measurement.to_xarray() as stored:
-            write_report(measurement, stored, folder)
+    measurement = take_measurement(test, folder, progress)
+    write_results(measurement, folder)
+    with measurement.to_xarray() as stored:
+        write_report(measurement, stored, folder)
     return measurement
 
 
+# BLAS threads spin for a while after each small product, on the cores that the kernels need.
+@threadpool_limits.wrap(1, user_api="blas")
 def take_measurement(test: TestFile, folder: Path, progress: Progress | None = None) -> Measurement:
     """Go through all stages up to the report; the fields are written into the folder, which is there."""
     source = open_frames(test.frames, test.path.parent)

@@ -11,7 +11,6 @@ from pathlib import Path
 from typing import Any, NamedTuple
 
 import numpy as np
-from threadpoolctl import threadpool_limits
 
 from dic import provenance
 from dic.correlation import Grid, Match, Tracker
@@ -96,8 +95,6 @@ def _tracked(test: TestFile, setup: Setup, folder: Path, key: str) -> Iterator[F
     damage: dict[int, str] = {}
     measured = 0
     with (
-        # BLAS threads spin for a while after each small product, on the cores that the kernels need.
-        threadpool_limits(1, user_api="blas"),
         ThreadPoolExecutor(1) as hashing,
         fields.FieldsWriter(
             folder,

@@ -276,7 +276,7 @@ def _cos_sin(angle_deg: float) -> tuple[float, float]:
 
 # No fast-math here: the same seed must give the same bytes on every processor.
 @njit(nogil=True, cache=True)
-def _unbend(X, Y, centre, cos_sin, back, curvature, contraction):  # type: ignore[no-untyped-def]
+def _unbend(X, Y, centre, cos_sin, back, curvature, contraction):  # type: ignore[no-untyped-def]  # Numba finds the types
     """Take bending out of points whose homogeneous part has been undone, in place.
 
     The straight motion S and the bow b give x = S(X) + b(X); with X' the inverse of S at x, that is

@@ -226,7 +226,7 @@ def _flat(values: ArrayLike) -> Floats:
 
 # No fast-math here: the same seed must give the same bytes on every processor.
 @njit(nogil=True, cache=True)
-def _dots_at(X, Y, starts, near, clear, cells, reach2, out):  # type: ignore[no-untyped-def]
+def _dots_at(X, Y, starts, near, clear, cells, reach2, out):  # type: ignore[no-untyped-def]  # Numba finds the types
     """Multiply what the dots near each point let through; beyond its reach a dot is wholly clear."""
     width, height = cells[0] * _CELL, cells[1] * _CELL
     per_width, per_height, per_cell = 1 / width, 1 / height, 1 / _CELL

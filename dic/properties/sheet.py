@@ -246,14 +246,15 @@ class Sheet:
 
     def shifted(self, read: Callable[[Loading], float]) -> dict[str, float]:
         """Return the contributions of what shifts strain and stress together in all frames."""
-        towards = self.with_motion(read)
+        here = read(self.loading)
+        towards = self._with_motion(read, here)
         return {
-            "clock": self.with_clock(read),
+            "clock": self._with_clock(read, here),
             **({} if towards is None else {"motion towards the camera": bounded(towards)}),
-            **self._of_camera(read),
+            **self._of_camera(read, here),
         }
 
-    def with_motion(self, read: Callable[[Loading], float]) -> float | None:
+    def _with_motion(self, read: Callable[[Loading], float], here: float) -> float | None:
         """Return how far false strain from motion towards the camera moves a reading; None where unknown.
 
         When the coupon moved is not known, so all of it is laid where it does most harm: it grows over the
@@ -261,7 +262,7 @@ class Sheet:
         """
         if not self._stretched:
             return None
-        moved = np.abs([tried(read, one) - read(self.loading) for one in self._stretched])
+        moved = np.abs([tried(read, one) - here for one in self._stretched])
         return float(np.nanmax(moved)) if np.isfinite(moved).any() else nan
 
     @cached_property
@@ -278,10 +279,9 @@ class Sheet:
         )
         return tuple(self.loading.stretched(one, one) for one in (u * grown, -u * grown))
 
-    def _of_camera(self, read: Callable[[Loading], float]) -> dict[str, float]:
+    def _of_camera(self, read: Callable[[Loading], float], here: float) -> dict[str, float]:
         """Return the contributions of the camera's errors that all frames share."""
         found: dict[str, float] = {}
-        here = read(self.loading)
         if self._off_axis is not None:
             off = tried(read, self._off_axis) - here
             # The reading has the error already, and the truth lies on its other side.
@@ -334,13 +334,13 @@ class Sheet:
             found["window choice"] = bounded(abs(by) * window_choice(*given))
         return found
 
-    def with_clock(self, read: Callable[[Loading], float]) -> float:
+    def _with_clock(self, read: Callable[[Loading], float], here: float) -> float:
         """Return how far the clock's standard uncertainty moves a reading.
 
         A reading that is not to be had with the clock moved says nothing; the other side then stands
         for both.
         """
-        moved = tuple(_moved(read, self.loading, sides) for sides in self._later)
+        moved = tuple(_moved(read, here, sides) for sides in self._later)
         return Contribution(hypot(*(one.linear for one in moved)), moved)
 
     @cached_property
@@ -372,15 +372,14 @@ class Sheet:
         return window_of(self.loading.part(frames))
 
 
-def _moved(read: Callable[[Loading], float], here: Loading, sides: tuple[Loading, Loading]) -> Effect:
+def _moved(read: Callable[[Loading], float], here: float, sides: tuple[Loading, Loading]) -> Effect:
     """Return the parabola through a reading and those on both sides, or what one side alone shows."""
     values = [tried(read, side) for side in sides]
-    middle = read(here)
     if np.isfinite(values).all():
         # Only its bend has a sign that matters: either side is as likely as the other.
-        bend = (values[0] + values[1]) / 2 - middle
-        return Effect(abs(values[0] - values[1]) / 2, bend * copysign(1.0, middle))
-    return Effect(float(np.nanmax(np.abs(np.array(values) - middle))) if np.isfinite(values).any() else nan)
+        bend = (values[0] + values[1]) / 2 - here
+        return Effect(abs(values[0] - values[1]) / 2, bend * copysign(1.0, here))
+    return Effect(float(np.nanmax(np.abs(np.array(values) - here))) if np.isfinite(values).any() else nan)
 
 
 def window_of(loading: Loading) -> dict[str, tuple[float, float]]:

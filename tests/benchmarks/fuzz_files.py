@@ -17,6 +17,7 @@ from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
+from numpy.typing import NDArray
 
 from dic.errors import FrameError, InputError
 
@@ -312,7 +313,10 @@ def damaged(rng: np.random.Generator, content: bytes) -> bytes:
     # Half of the damage goes where sizes and offsets stand, at either end.
     ends = rng.random() < 0.5
     places = np.concatenate([np.arange(min(len(out), 300)), np.arange(max(len(out) - 300, 0), len(out))])
-    choose = lambda n: rng.choice(places, n) if ends else rng.integers(0, len(out), n)  # noqa: E731
+
+    def choose(n: int) -> NDArray[np.integer]:
+        return rng.choice(places, n) if ends else rng.integers(0, len(out), n)
+
     if way <= 2:
         for at in choose(rng.integers(1, 9)):
             out[at] = rng.choice([0, 1, 127, 128, 255, int(rng.integers(256))])
